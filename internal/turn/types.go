@@ -32,14 +32,14 @@ func (t *Turn) Valid() bool { return t.Reason == "" }
 
 // Throw is one throw's revolution: from its own head-end dead centre to the next, padded by PadDeg on both sides.
 type Throw struct {
-	T0, T1 float64     // sample positions of the head-end dead centres at 0° and 360°
-	RPM    float64     // mean speed between them
-	U      float64     // standard uncertainty of the angle scale, degrees
-	Grid   Grid        // of all angle-domain slices below
-	Pos    []float64   // sample position (fractional sample number) of every grid angle, strictly increasing
-	Omega  []float64   // instantaneous shaft speed at every grid angle, rad/s
+	T0, T1 float64      // sample positions of the head-end dead centres at 0° and 360°
+	RPM    float64      // mean speed between them
+	U      float64      // standard uncertainty of the angle scale, degrees
+	Grid   Grid         // of all angle-domain slices below
+	Pos    []float64    // sample position (fractional sample number) of every grid angle, strictly increasing
+	Omega  []float64    // instantaneous shaft speed at every grid angle, rad/s
 	P      [2][]float64 // Pa absolute; 0 head end, 1 crank end; nil where the end has no pressure channel
-	Vib    []Vib       // one per accelerometer of the throw, in skid order
+	Vib    []Vib        // one per accelerometer of the throw, in skid order
 }
 
 // SampleAt gives the sample position of an angle in degrees (linear between grid points; the grid is fine).
