@@ -17,6 +17,8 @@ type Skid struct {
 	Name string // for people
 	Site string // for people
 
+	Rate float64 // samples per second and channel that the acquisition is meant to give, 0: taken from the source
+
 	Machine   Machine
 	Phase     Phase
 	Gas       Gas
@@ -29,6 +31,9 @@ type Skid struct {
 	Tape      Tape
 	Uplink    Uplink
 	Panel     Panel
+
+	at        map[string]Place // where each path of the file stands; for messages after parsing
+	defaulted []string         // settings that the file left out, "path = value", for the check
 }
 
 // Machine is what is common to all throws.
@@ -69,8 +74,8 @@ type Gas struct {
 // Throw is one cylinder on its crank throw.
 type Throw struct {
 	ID         string
-	Stage      int     // 1-based; throws of one stage share line pressures and temperatures
-	DeadCentre float64 // degrees of crank rotation from the phase mark to this throw's head-end dead centre, 0 <= . < 360
+	Stage      int            // 1-based; throws of one stage share line pressures and temperatures
+	DeadCentre float64        // degrees of crank rotation from the phase mark to this throw's head-end dead centre, 0 <= . < 360
 	Cylinder   crank.Cylinder // with no pocket open
 	Ends       [2]End         // head end, crank end
 	Accel      []string       // accelerometer channel ids
@@ -86,10 +91,10 @@ type End struct {
 
 // Valve is one valve of a group. ID is <throw>.<he|ce>.<s|d><n>.
 type Valve struct {
-	ID        string
-	Cover     string  // process tag of its cover temperature, empty when not measured
-	FlowArea  float64 // m², effective at full lift, 0 unknown
-	Lift      float64 // m, 0 unknown
+	ID                               string
+	Cover                            string  // process tag of its cover temperature, empty when not measured
+	FlowArea                         float64 // m², effective at full lift, 0 unknown
+	Lift                             float64 // m, 0 unknown
 	StiffnessNPerM, PreloadN, MassKg float64 // of plate with springs; 0 unknown: the model takes typical values
 }
 
@@ -143,31 +148,31 @@ type Detection struct {
 
 // Limit is an absolute limit on one measure, beside the findings: throw or end name, measure name, bounds.
 type Limit struct {
-	Subject  string  // e.g. t1, t1.he
-	Measure  string  // a name of measure.Definitions
-	High     float64 // NaN: none
-	Low      float64 // NaN: none
-	Deadband float64
+	Subject           string  // e.g. t1, t1.he
+	Measure           string  // a name of measure.Definitions
+	High              float64 // NaN: none
+	Low               float64 // NaN: none
+	Deadband          float64
 	OnDelay, OffDelay time.Duration
-	Severity string // advisory, alert, danger
+	Severity          string // advisory, alert, danger
 }
 
 // Tape bounds the rolling raw buffer.
 type Tape struct {
-	MaxBytes int64
-	MaxAge   time.Duration
+	MaxBytes  int64
+	MaxAge    time.Duration
 	Pre, Post time.Duration // what an alarm protects before and after it
 	ClipBytes int64         // quota of protected clips
 }
 
 // Uplink is the MQTT side. Secrets live in files, never here.
 type Uplink struct {
-	Broker       string // tcp://host:port or tls://…; empty: no uplink
-	Root         string // topic root, default "lapwing"
-	ClientID     string
+	Broker                                            string // tcp://host:port or tls://…; empty: no uplink
+	Root                                              string // topic root, default "lapwing"
+	ClientID                                          string
 	UserFile, PasswordFile, CAFile, CertFile, KeyFile string
-	FeaturesEvery time.Duration // condensed features, default 10 s
-	HealthEvery   time.Duration // default 30 s
+	FeaturesEvery                                     time.Duration // condensed features, default 10 s
+	HealthEvery                                       time.Duration // default 30 s
 }
 
 // Panel is the local page.

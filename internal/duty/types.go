@@ -1,0 +1,45 @@
+package duty
+
+// State says what the machine is doing as far as judging it goes.
+type State uint8
+
+// The duty states. Unknown never counts as steady.
+const (
+	Unknown  State = iota
+	Stopped        // no turns
+	Starting       // first turns, or speed outside the stated range
+	Changing       // speed, pressure or load step moving faster than a fair comparison allows
+	Steady
+)
+
+// Point is the duty of one turn as seen by one throw: what it is asked to do.
+type Point struct {
+	State    State
+	Step     int // load-step code; inferred from the traces (idle ends) when the process values do not give it
+	RPM      float64
+	Ps, Pd   float64 // Pa, line pressures of the throw's stage (own plateau when the process does not give them)
+	Inferred bool    // true when process values were missing or stale
+}
+
+// Deviation is one feature of one turn or block against its baseline. Residuals are in the feature's SI unit.
+type Deviation struct {
+	Feature  int     // index in the layout
+	Value    float64 // as measured (block: median)
+	Expected float64 // for this duty
+	Residual float64 // Value − Expected (block: median of the turns' residuals)
+	Spread   float64 // robust standard deviation of such a residual when healthy (turn or block, as the case is), with a floor for the duty model's own error
+	Z        float64 // Residual/Spread
+	N        int     // turns behind it
+	Seen     bool    // the baseline has seen this duty; when false Z must not be used
+}
+
+// Block is the evidence of one throw over a stretch of turns at seen duty.
+type Block struct {
+	Throw        int
+	Turn0, Turn1 int64 // first and last turn
+	Seq0, Seq1   int64 // raw sample range
+	Time         float64
+	Point        Point       // median duty
+	Settled      bool        // every turn was steady
+	Dev          []Deviation // the throw's features that have enough valid turns, in layout order
+}
