@@ -1,0 +1,68 @@
+# Lapwing: everything a developer or CI runs.
+#   make demo   the main job on the built-in demo machine
+#   make test   everything CI runs; installs what it needs by apt when it is missing
+SHELL      := /bin/bash
+GO         ?= go
+STATICCHECK = honnef.co/go/tools/cmd/staticcheck@v0.8.2
+SHARED     ?= $(abspath ../shared)
+
+.PHONY: demo test build check-format vet lint unit fuzz system bench setup clean
+
+build: bin/lapwing bin/lapwingd
+
+.PHONY: bin/lapwing bin/lapwingd
+bin/lapwing bin/lapwingd:
+	CGO_ENABLED=0 $(GO) build -trimpath -o $@ ./cmd/$(@F)
+
+# The demo needs Go only: the machine is modelled, the broker runs inside.
+demo: bin/lapwing
+	bin/lapwing demo --once --fast --out out/demo
+
+test: setup check-format vet lint unit fuzz system
+	@echo "all tests passed"
+
+check-format:
+	@bad=$$(gofmt -l $$(git ls-files '*.go' 2>/dev/null || find . -name '*.go')); \
+	if [ -n "$$bad" ]; then echo "gofmt would change: $$bad"; exit 1; fi
+
+vet:
+	$(GO) vet ./...
+
+lint:
+	$(GO) run $(STATICCHECK) ./...
+
+# -race needs cgo and a C compiler.
+unit:
+	CGO_ENABLED=1 LAPWING_SHARED="$(SHARED)" $(GO) test -race -timeout 20m ./...
+
+# Each parser for a few seconds; corpora of past findings run in unit.
+FUZZTIME ?= 5s
+fuzz:
+	@set -e; for p in $$($(GO) list ./...); do \
+	  for f in $$($(GO) test -list '^Fuzz' $$p 2>/dev/null | grep '^Fuzz' || true); do \
+	    echo "fuzz $$p $$f"; $(GO) test -run '^$$' -fuzz "^$$f$$" -fuzztime $(FUZZTIME) $$p; \
+	  done; done
+
+# The programs as their users run them: real broker, real clients, other programs opening what we wrote.
+system: build
+	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/...
+
+bench:
+	$(GO) test -run '^$$' -bench . -benchmem ./internal/...
+
+# Tools that the tests need and a plain Debian with Go, make and git has not.
+NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox
+setup:
+	@missing=""; for n in $(NEED); do \
+	  PATH="$$PATH:/usr/sbin" command -v $${n%%:*} >/dev/null 2>&1 || missing="$$missing $${n##*:}"; done; \
+	if [ -n "$$missing" ]; then \
+	  if [ "$$(id -u)" = 0 ]; then as=""; elif command -v sudo >/dev/null 2>&1; then as="sudo"; \
+	  else echo "missing:$$missing. Run as root, or install sudo, or: apt-get install$$missing"; exit 1; fi; \
+	  command -v apt-get >/dev/null 2>&1 || { echo "missing:$$missing, and there is no apt-get here: install them by hand"; exit 1; }; \
+	  echo "installing:$$missing"; \
+	  $$as apt-get update -q >/dev/null && DEBIAN_FRONTEND=noninteractive $$as apt-get install -y -q --no-install-recommends $$missing >/dev/null \
+	    || { echo "could not install:$$missing"; exit 1; }; fi
+	@command -v $(GO) >/dev/null || { echo "no Go here: install Go 1.26 or newer"; exit 1; }
+
+clean:
+	rm -rf bin out

@@ -1,0 +1,11 @@
+// Package uplink carries alarm transitions, standing alarms, condensed features and health to an MQTT broker.
+//
+// needs: an outbox that survives a restart (alarm transitions are put there in the same transaction as the journal),
+// and the newest features and health as they come; waits: for nothing, everything here is best effort and slows
+// nobody; emits: MQTT 3.1.1 messages at QoS 1. A transition leaves the outbox on the broker's acknowledgement only,
+// so a receiver may see it twice and drops the repeat by its id. While the broker is away, transitions wait in
+// the outbox and only the newest features and health are kept.
+//
+// Every connection is a new client: a client that reconnects by itself reports a publish as done that no broker has
+// acknowledged.
+package uplink
