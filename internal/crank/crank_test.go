@@ -185,9 +185,9 @@ func TestValidate(t *testing.T) {
 		t.Fatalf("a sound machine is refused: %v", err)
 	}
 	for _, v := range []struct {
-		name string
+		name  string
 		spoil func(*Cylinder)
-		want string
+		want  string
 	}{
 		{"no bore", func(c *Cylinder) { c.Bore = 0 }, "bore is missing"},
 		{"short rod", func(c *Cylinder) { c.ConRod = .05 }, "not longer than the crank radius"},
