@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"io"
 	"strings"
+
+	"lapwing/internal/wire"
 )
 
 // Reader prints messages as a control room would read them: alarms in full, standing alarms when it joins, health
@@ -39,14 +41,14 @@ func (r *Reader) Show(m Received) {
 	}
 }
 
-// wire is Alarm with its detail read back as a finding.
-type wire struct {
-	Alarm
-	Detail *Finding `json:"detail"`
+// received is an alarm with its detail read back as a finding.
+type received struct {
+	wire.Alarm
+	Detail *wire.Finding `json:"detail"`
 }
 
 func (r *Reader) alarm(m Received, standing bool) {
-	var a wire
+	var a received
 	if err := json.Unmarshal(m.Payload, &a); err != nil {
 		fmt.Fprintf(r.W, "%s: unreadable: %v\n", m.Topic, err)
 		return
@@ -113,7 +115,7 @@ func (r *Reader) showHealth(skid string, m Received) {
 }
 
 func (r *Reader) showFeatures(skid, throw string, m Received) {
-	var f Features
+	var f wire.Features
 	if err := json.Unmarshal(m.Payload, &f); err != nil {
 		fmt.Fprintf(r.W, "%s: unreadable: %v\n", m.Topic, err)
 		return

@@ -1,0 +1,47 @@
+package main
+
+import (
+	"fmt"
+
+	"github.com/spf13/cobra"
+
+	"lapwing/internal/skid"
+)
+
+func checkCommand() *cobra.Command {
+	var rate float64
+	cmd := &cobra.Command{
+		Use:   "check FILE",
+		Short: "Say what a skid file was understood to mean, and every doubt",
+		Long: `check reads a skid file strictly. What is wrong is refused with file, line, column and what to
+write instead. What is right is printed back as the machine it describes: swept and clearance
+volumes, expected rod load, opening angles, sampling per degree. Doubts are things that are
+possible but odd; each says what it means and how people usually find out.`,
+		Args: cobra.ExactArgs(1),
+		RunE: func(cmd *cobra.Command, args []string) error {
+			sk, err := skid.Load(args[0])
+			if err != nil {
+				return err
+			}
+			out := cmd.OutOrStdout()
+			if rate == 0 {
+				rate = sk.Rate
+			}
+			if err := skid.Report(out, sk, rate); err != nil {
+				return err
+			}
+			doubts := skid.Doubts(sk)
+			if len(doubts) == 0 {
+				fmt.Fprintln(out, "\nno doubts")
+				return nil
+			}
+			fmt.Fprintf(out, "\n%d doubts\n", len(doubts))
+			for _, d := range doubts {
+				fmt.Fprintf(out, "  %s\n", d.Error())
+			}
+			return nil
+		},
+	}
+	cmd.Flags().Float64Var(&rate, "rate", 0, "sampling rate in Hz instead of the file's")
+	return cmd
+}

@@ -1,0 +1,60 @@
+package wire
+
+import "time"
+
+// Now is one immutable snapshot of everything's present state: what the page, the API and the health message show.
+type Now struct {
+	Skid     string    `json:"skid"`
+	Name     string    `json:"name"`
+	Site     string    `json:"site,omitempty"`
+	At       time.Time `json:"at"`
+	Health   Health    `json:"health"`
+	Latest   *Turn     `json:"latest,omitempty"` // newest turn record
+	Findings []Finding `json:"findings"`
+	Standing []Alarm   `json:"standing"` // alarm points that are not normal
+	Journal  []Alarm   `json:"journal"`  // newest first, the last few
+	Clips    []Clip    `json:"clips"`
+	Caution  string    `json:"caution"`
+}
+
+// Health is what the daemon knows of itself. State is "running", "standstill", "starting", "no samples", "offline".
+type Health struct {
+	Version     int        `json:"v"`
+	Skid        string     `json:"skid"`
+	At          time.Time  `json:"at"`
+	State       string     `json:"state"`
+	Line        string     `json:"line"` // one clause for people: learning, watching, why not
+	Turns       int64      `json:"turns"`
+	BadTurns    int64      `json:"turns_not_valid"`
+	RPM         *float64   `json:"speed_rpm,omitempty"`
+	Learned     bool       `json:"baseline"`
+	LearnLeft   int        `json:"learning_turns_left"`
+	SamplesLost int64      `json:"samples_lost"`
+	QueueFull   int64      `json:"blocks_dropped_before_line"`
+	Tape        TapeHealth `json:"tape"`
+	Uplink      any        `json:"uplink,omitempty"`
+	Trouble     []string   `json:"trouble,omitempty"` // what somebody should look at, in plain words
+}
+
+// TapeHealth is the raw buffer's part of health.
+type TapeHealth struct {
+	Bytes    int64     `json:"bytes"`
+	Limit    int64     `json:"limit_bytes"`
+	Oldest   time.Time `json:"oldest,omitzero"`
+	Newest   time.Time `json:"newest,omitzero"`
+	Dropped  int64     `json:"blocks_dropped"`
+	Clips    int       `json:"clips"`
+	Problems []string  `json:"problems,omitempty"`
+}
+
+// Clip is one protected stretch of raw samples.
+type Clip struct {
+	ID       string    `json:"id"`
+	Reason   string    `json:"reason"`
+	Alarms   []uint64  `json:"alarms,omitempty"`
+	From     time.Time `json:"from"`
+	To       time.Time `json:"to"`
+	Samples  [2]int64  `json:"samples"`
+	Complete bool      `json:"complete"`
+	Bytes    int64     `json:"bytes"`
+}

@@ -1,0 +1,183 @@
+package wire
+
+import (
+	"math"
+
+	"lapwing/internal/duty"
+	"lapwing/internal/measure"
+	"lapwing/internal/skid"
+	"lapwing/internal/turn"
+	"lapwing/internal/window"
+)
+
+// Turn is the record of one revolution: one line of a review file.
+// The angles of one event share one scale, so that its window always reads low to high: near a dead centre they may
+// lie a little under 0 or over 360 degrees.
+type Turn struct {
+	Type    string      `json:"type"` // "turn"
+	Turn    int64       `json:"turn"`
+	TimeS   float64     `json:"t_s"` // head-end dead centre of the first throw, from the start of the recording
+	Valid   bool        `json:"valid"`
+	Reason  string      `json:"reason,omitempty"`
+	RPM     *float64    `json:"speed_rpm,omitempty"`
+	Samples [2]int64    `json:"samples"` // raw sample range, half open
+	Throws  []TurnThrow `json:"throws,omitempty"`
+}
+
+// TurnThrow is one throw's part of a turn.
+type TurnThrow struct {
+	ID     string                        `json:"throw"`
+	TimeS  float64                       `json:"t_s"` // its own head-end dead centre
+	RPM    *float64                      `json:"speed_rpm,omitempty"`
+	AngleU *float64                      `json:"angle_uncertainty_deg,omitempty"`
+	Duty   string                        `json:"duty"`
+	Step   int                           `json:"load_step"`
+	Values map[string]float64            `json:"values,omitempty"`
+	Ends   []TurnEnd                     `json:"ends"`
+	Paths  map[string]map[string]float64 `json:"paths,omitempty"` // leak paths and valves: subject → values
+}
+
+// TurnEnd is one cylinder end's part of a turn.
+type TurnEnd struct {
+	End    string             `json:"end"` // he, ce
+	State  string             `json:"state"`
+	Values map[string]float64 `json:"values"`
+	Absent map[string]string  `json:"absent,omitempty"` // measure → why it cannot be known
+	Events []TurnEvent        `json:"events"`
+}
+
+// TurnEvent is one valve event with its window.
+type TurnEvent struct {
+	Event    string             `json:"event"`
+	State    string             `json:"state"`
+	Angle    *float64           `json:"angle_deg,omitempty"`    // where the pressure leaves the closed line
+	Crossing *float64           `json:"crossing_deg,omitempty"` // closed line extended to the plateau
+	Expected *float64           `json:"expected_deg,omitempty"` // if every valve sealed, from this turn's plateaus
+	Window   *[2]float64        `json:"window_deg,omitempty"`
+	Conf     float64            `json:"confidence"`
+	Shared   bool               `json:"shared,omitempty"`
+	Why      string             `json:"why,omitempty"`
+	Values   map[string]float64 `json:"values,omitempty"` // peak, RMS and what else was heard in the window
+}
+
+// EndNames are the ends' short names, indexed by crank.HE and crank.CE.
+var EndNames = [2]string{"he", "ce"}
+
+// EventNames name the events in subjects and records, indexed by window.Event.
+var EventNames = [window.Events]string{"discharge.closes", "suction.opens", "suction.closes", "discharge.opens"}
+
+// Recorder makes turn records for one skid; it holds where each feature goes.
+type Recorder struct {
+	sk     *skid.Skid
+	layout measure.Layout
+	rate   float64
+}
+
+// NewRecorder prepares records of vectors in the given layout; rate in samples per second.
+func NewRecorder(sk *skid.Skid, layout measure.Layout, rate float64) *Recorder {
+	return &Recorder{sk: sk, layout: layout, rate: rate}
+}
+
+// Record makes the record of one turn. An invalid turn has a reason and no throws.
+func (r *Recorder) Record(t *turn.Turn, w window.Result, v *measure.Vector, points []duty.Point) Turn {
+	rec := Turn{Type: "turn", Turn: t.Number, TimeS: round(t.Time, 7), Valid: t.Valid(), Reason: t.Reason, RPM: opt(round(t.RPM, 4)), Samples: [2]int64{t.Seq0, t.Seq1}}
+	if !t.Valid() {
+		return rec
+	}
+	for i := range t.Throws {
+		rec.Throws = append(rec.Throws, r.throw(i, &t.Throws[i], &w.Throws[i], v, points[i]))
+	}
+	return rec
+}
+
+func (r *Recorder) throw(i int, t *turn.Throw, w *window.Throw, v *measure.Vector, p duty.Point) TurnThrow {
+	sk := &r.sk.Throws[i]
+	out := TurnThrow{ID: sk.ID, TimeS: round(t.T0/r.rate, 7), RPM: opt(round(t.RPM, 4)), AngleU: opt(t.U), Duty: p.State.String(), Step: p.Step,
+		Values: map[string]float64{}, Paths: map[string]map[string]float64{}}
+	events := [2][window.Events]map[string]float64{}
+	values := [2]map[string]float64{{}, {}}
+	absent := [2]map[string]string{{}, {}}
+	for k := range r.layout {
+		f := &r.layout[k]
+		if f.Throw != i {
+			continue
+		}
+		x := opt(v.V[k]*f.Scale + f.Shift)
+		e, ev := r.place(sk.ID, f)
+		switch {
+		case e < 0 && f.Subject == sk.ID:
+			put(out.Values, f.Name, x)
+		case e < 0:
+			if x != nil {
+				if out.Paths[f.Subject] == nil {
+					out.Paths[f.Subject] = map[string]float64{}
+				}
+				put(out.Paths[f.Subject], f.Name, x)
+			}
+		case ev < 0:
+			put(values[e], f.Name, x)
+			if x == nil {
+				absent[e][f.Name] = v.Why[k]
+			}
+		default:
+			if events[e][ev] == nil {
+				events[e][ev] = map[string]float64{}
+			}
+			put(events[e][ev], f.Name, x)
+		}
+	}
+	for e := range w.Ends {
+		end := &w.Ends[e]
+		if end.NotPresent {
+			continue
+		}
+		te := TurnEnd{End: EndNames[e], State: end.State.String(), Values: values[e], Absent: absent[e]}
+		for ev := range end.W {
+			x := &end.W[ev]
+			rec := TurnEvent{Event: EventNames[ev], State: x.State.String(), Angle: angle(x.Angle), Crossing: angle(x.Thermo), Expected: angle(x.Expected),
+				Conf: round(x.Conf, 3), Shared: x.Shared, Why: x.Why, Values: events[e][ev]}
+			if !math.IsNaN(x.Lo) && !math.IsNaN(x.Hi) {
+				rec.Window = &[2]float64{round(x.Lo, 3), round(x.Hi, 3)}
+			}
+			te.Events = append(te.Events, rec)
+		}
+		out.Ends = append(out.Ends, te)
+	}
+	return out
+}
+
+// place says to which end and event a feature belongs by its subject; -1 where to none.
+func (r *Recorder) place(throw string, f *measure.Feature) (end, event int) {
+	for e, n := range EndNames {
+		base := throw + "." + n
+		if f.Subject == base {
+			return e, -1
+		}
+		for ev, en := range EventNames {
+			if f.Subject == base+"."+en {
+				return e, ev
+			}
+		}
+	}
+	return -1, -1
+}
+
+func put(m map[string]float64, name string, x *float64) {
+	if x != nil {
+		m[name] = significant(*x)
+	}
+}
+
+// significant keeps nine figures: more than any sensor, and a record stays readable.
+func significant(x float64) float64 {
+	if x == 0 {
+		return 0
+	}
+	d := 8 - int(math.Floor(math.Log10(math.Abs(x))))
+	if d < 0 || d > 15 {
+		return x
+	}
+	return round(x, d)
+}
+
+func angle(deg float64) *float64 { return opt(round(deg, 4)) }
