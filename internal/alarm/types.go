@@ -14,6 +14,8 @@ const (
 	ReturnedUnacked // condition gone, not acknowledged
 	Shelved         // by an operator, for a limited time
 	Suppressed      // by design: machine stopped, starting, unloaded, duty not seen
+	LatchedUnacked  // a latching point: condition gone, neither acknowledged nor reset
+	LatchedAcked    // a latching point: condition gone, acknowledged, waits for a reset
 )
 
 // Severity ranks alarms: advisory, alert, danger.
@@ -58,5 +60,7 @@ type Transition struct {
 	Sentence string    `json:"sentence"`
 	By       string    `json:"by,omitempty"` // who acknowledged or shelved
 	Note     string    `json:"note,omitempty"`
+	Order    int       `json:"order,omitempty"` // place in the first-up order: 1 came first since nothing stood; 0 not standing
+	Flood    bool      `json:"flood,omitempty"` // more activations than a person can follow are coming in
 	Detail   any       `json:"detail,omitempty"`
 }
