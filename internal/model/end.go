@@ -1,0 +1,381 @@
+package model
+
+import (
+	"math"
+
+	"lapwing/internal/crank"
+	"lapwing/internal/skid"
+)
+
+// Sub-steps: fine while a plate moves, coarse while all rest.
+const (
+	fineStep   = 5e-6  // s
+	coarseStep = 20e-6 // s
+	heatEvery  = 8     // samples between two looks at the wall heat coefficient
+)
+
+// group is the valves of one function at one end.
+type group struct {
+	discharge bool
+	plates    []plate
+	mean      float64 // mean lift, share
+	above     bool    // mean lift has passed 30 % and no plate has sat since
+	wanted    bool    // its closing crossing is still to be booked
+	flow      float64 // kg/s into the end, mean of the last interval
+}
+
+// end is one working side of a cylinder: one volume of gas and its valves.
+type end struct {
+	name       string
+	side       int     // crank.HE or crank.CE
+	area       float64 // m², of the piston on this side
+	swept      float64
+	clear0, vc float64 // m³, clearance volume without and with the pocket
+	bore       float64
+	noz        *nozzle
+	gas        *Gas
+	par        *Params
+
+	p, m, t float64 // Pa, kg, K
+	v       float64 // m³
+	suction group
+	disch   group
+	idle    bool
+	late    float64 // degrees after the outer dead centre; 0: none
+	hA      float64 // W/K, wall heat coefficient times surface
+	wall    float64 // K
+	ring    float64 // kg/s into the end past the rings
+	ringT   float64 // K, of that gas
+	ringA   float64 // m²
+	packing float64 // m²; 0 at the head end
+	packJet float64 // sound power scale of the packing's leak, kg/s·(m/s)²
+	diary   diary
+}
+
+// load puts a load step in force. Gas that a pocket adds or takes with it is at the cylinder's state.
+func (e *end) load(s skid.Step, first bool) {
+	vc := e.clear0 + s.Pocket[e.name]*e.swept
+	if !first {
+		e.m *= (e.v - e.vc + vc) / e.v
+	}
+	e.v += vc - e.vc
+	e.vc = vc
+	e.idle = s.Idle[e.name]
+	e.late = s.Late[e.name]
+	for i := range e.suction.plates {
+		q := &e.suction.plates[i]
+		q.hold = 0
+		if e.idle {
+			q.hold = q.d.Lift
+			q.x, q.v = q.d.Lift, 0
+		}
+	}
+}
+
+// volume at a piston travel from the head-end dead centre; stroke in m.
+func (e *end) volume(travel, stroke float64) float64 {
+	if e.side == crank.HE {
+		return e.vc + e.area*travel
+	}
+	return e.vc + e.area*(stroke-travel)
+}
+
+// powk is r^k for a ratio near 1.
+func powk(r, k float64) float64 {
+	x := r - 1
+	if x > 0.03 || x < -0.03 {
+		return math.Pow(r, k)
+	}
+	k1, k2, k3, k4 := k-1, (k-2)/3, (k-3)/4, (k-4)/5
+	return 1 + k*x*(1+0.5*k1*x*(1+k2*x*(1+k3*x*(1+k4*x))))
+}
+
+// heat refreshes the wall heat coefficient: Nu = 0.053·Re^0.8·Pr^0.6 on the hydraulic diameter 6V/A with a swirl speed that
+// follows the crank (Adair, Qvale and Pearson, 1972; constants as repeated by later comparisons, the swirl from memory).
+func (e *end) heat(deg, omega float64) {
+	if e.par.WallHeat == 0 {
+		e.hA = 0
+		return
+	}
+	own := deg
+	if e.side == crank.CE {
+		own += 180
+	}
+	surface := 2*e.area + math.Pi*e.bore*e.v/e.area
+	de := 6 * e.v / surface
+	c := math.Cos(own * math.Pi / 180)
+	swirl := omega * (1.04 + 2*c*c - 1)
+	if c > 0 {
+		swirl *= 2
+	}
+	g := e.gas
+	mu := g.Viscosity * math.Pow(e.t/300, 0.75)
+	re := e.m / e.v * swirl * de * de / (2 * mu)
+	cp := g.K / (g.K - 1) * g.R
+	nu := 0.053 * math.Pow(re, 0.8) * math.Pow(g.Prandtl, 0.6)
+	e.hA = e.par.WallHeat * nu * mu * cp / g.Prandtl / de * surface
+}
+
+// path is one opening of the end to a neighbouring space during one sub-step.
+type path struct {
+	area, p, t, rt float64 // m², Pa and K of the neighbour, √(R·T)
+	in, slope      float64 // kg/s into the end and its derivative to the end's pressure
+}
+
+func (c *path) eval(n *nozzle, p, rt float64) {
+	if c.area <= 0 {
+		c.in, c.slope = 0, 0
+		return
+	}
+	in, sl := n.flow(p, rt, c.p, c.rt)
+	c.in, c.slope = in*c.area, sl*c.area
+}
+
+// advance moves the end by one sampling interval. v0, vm, v1 are its volumes at the beginning, the middle and the end of it;
+// deg0 and ddeg the throw's unwrapped angle at the beginning and its advance.
+func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
+	k, r := e.gas.K, e.gas.R
+	busy := e.busy(t)
+	n := int(math.Ceil(m.dt / coarseStep * 0.999))
+	if busy {
+		n = int(math.Ceil(m.dt / fineStep * 0.999))
+	}
+	h := 1 / float64(n)
+	dt := m.dt * h
+	b, c := -3*v0+4*vm-v1, 2*v0-4*vm+2*v1
+	va := v0
+	s := path{p: t.ps, t: t.suctionT, rt: t.suctionRT}
+	d := path{p: t.pd, t: t.dischT, rt: t.dischRT}
+	pk := path{area: e.packing, p: t.atm, t: 300, rt: math.Sqrt(r * 300)}
+	book := e.diary.cur
+	var sumS, sumD, sumPack, work float64
+	leakS, leakD := 0.0, 0.0
+	for i := range n {
+		f := (float64(i) + 0.5) * h
+		vb := v0 + f*(b+f*c)
+		f = float64(i+1) * h
+		vc := v0 + f*(b+f*c)
+		pa := e.p
+		// Adiabatic to the middle of the sub-step, then what flows and heats at constant volume, then adiabatic to its end.
+		pb := pa * powk(va/vb, k)
+		tb := pb * vb / (e.m * r)
+		rt := math.Sqrt(r * tb)
+		s.area, d.area = e.suction.area(), e.disch.area()
+		s.eval(e.noz, pb, rt)
+		d.eval(e.noz, pb, rt)
+		pk.eval(e.noz, pb, rt)
+		// Energy of an ideal gas at constant volume: dp/dt = kR/V·Σ ṁT + (k−1)/V·Q.
+		ring := e.ring
+		ringT := e.ringT
+		if ring < 0 {
+			ringT = tb
+		}
+		up := func(c *path) float64 {
+			if c.in < 0 {
+				return tb
+			}
+			return c.t
+		}
+		ts, td, tk := up(&s), up(&d), up(&pk)
+		kr := k * r / vb
+		rate := kr*(s.in*ts+d.in*td+pk.in*tk+ring*ringT) + (k-1)/vb*e.hA*(e.wall-tb)
+		stiff := -kr * (s.slope*ts + d.slope*td + pk.slope*tk)
+		// Exponential step of the linearised equation: second order, and stable however large the open area is.
+		z := stiff * dt
+		phi := 1 - z*(0.5-z/6)
+		if z > 1e-3 {
+			phi = -math.Expm1(-z) / z
+		}
+		dp := rate * dt * phi
+		mean := 0.0 // the pressure change at which the linearised flows have their mean over the sub-step
+		if stiff > 0 {
+			mean = (rate - dp/dt) / stiff
+		}
+		fs, fd, fp := s.in+s.slope*mean, d.in+d.slope*mean, pk.in+pk.slope*mean
+		e.m += (fs + fd + fp + ring) * dt
+		pd := pb + dp
+		e.p = pd * powk(vb/vc, k)
+		work -= 0.5*(pa+pb)*(vb-va) + 0.5*(pd+e.p)*(vc-vb)
+		sumS += fs * dt
+		sumD += fd * dt
+		sumPack -= fp * dt
+		if s.area > 0 {
+			leakS -= fs * dt * e.suction.leakArea() / s.area
+		}
+		if d.area > 0 {
+			leakD += fd * dt * e.disch.leakArea() / d.area
+		}
+		va = vc
+		if busy {
+			at := (float64(i)) * h
+			e.suction.step(m, t, e, t.ps-e.p, t.ps, dt, deg0, ddeg, at, h)
+			e.disch.step(m, t, e, e.p-t.pd, t.pd, dt, deg0, ddeg, at, h)
+		}
+	}
+	e.v = va
+	e.t = e.p * e.v / (e.m * r)
+	inv := 1 / m.dt
+	e.suction.flow, e.disch.flow = sumS*inv, sumD*inv
+	e.suction.voice(e, t.ps, sumS*inv, s.area, leakS*inv, m.dt)
+	e.disch.voice(e, t.pd, sumD*inv, d.area, leakD*inv, m.dt)
+	e.packJet = 0
+	if e.packing > 0 {
+		e.packJet = math.Abs(sumPack) * inv * jetEnergy(e.gas, e.p, t.atm, e.t)
+	}
+	t.suctionIn(sumS, e.t)
+	t.dischIn(-sumD, e.t)
+	if book == nil {
+		return
+	}
+	book.Work += work
+	book.Taken += sumS
+	book.Delivered -= sumD
+	book.Leaked.Suction += leakS
+	book.Leaked.Discharge += leakD
+	book.Leaked.Packing += sumPack
+	book.Leaked.Rings -= e.ring * m.dt
+	if sumS > 0 {
+		book.flowS += sumS
+		book.psSum += sumS * t.ps
+	}
+	if sumD < 0 {
+		book.flowD -= sumD
+		book.pdSum -= sumD * t.pd
+	}
+}
+
+// busy tells whether the end needs fine steps in this interval.
+func (e *end) busy(t *throw) bool {
+	for i := range e.suction.plates {
+		if e.suction.plates[i].busy(t.ps-e.p, t.ps) {
+			return true
+		}
+	}
+	for i := range e.disch.plates {
+		if e.disch.plates[i].busy(e.p-t.pd, t.pd) {
+			return true
+		}
+	}
+	return false
+}
+
+func (g *group) area() float64 {
+	a := 0.0
+	for i := range g.plates {
+		a += g.plates[i].area() + g.plates[i].leak
+	}
+	return a
+}
+
+// leakArea is that of the closed plates: what flows through the seat of an open valve is no leak.
+func (g *group) leakArea() float64 {
+	a := 0.0
+	for i := range g.plates {
+		if g.plates[i].x == 0 {
+			a += g.plates[i].leak
+		}
+	}
+	return a
+}
+
+// jetEnergy is the square of the ideal speed of gas at t expanding between two pressures, (m/s)², up to a ratio of 4.
+func jetEnergy(g *Gas, from, to, t float64) float64 {
+	if from <= to {
+		return 0
+	}
+	d := math.Min(1-to/from, 0.75)
+	cp := g.K / (g.K - 1) * g.R
+	e := (g.K - 1) / g.K
+	// 1 − (1−d)^e by its series with the tail lumped: within 2 per cent, enough for a sound level.
+	return 2 * cp * t * e * d * (1 + 0.5*(1-e)*d*(1+(2-e)/3*d*(1+(3-e)/4*d*(1+1.9*d))))
+}
+
+// voice shares the group's flow among its valves for noise and cover temperatures. Sound power goes as mass flow times the
+// square of its speed.
+func (g *group) voice(e *end, line, flow, area, leak, dt float64) {
+	from, to := line, e.p
+	if flow < 0 {
+		from, to = e.p, line
+	}
+	u2 := jetEnergy(e.gas, from, to, e.t)
+	closed := g.leakArea()
+	for i := range g.plates {
+		q := &g.plates[i]
+		q.leakRate, q.jet, q.open = 0, 0, 0
+		if q.x == 0 {
+			if closed > 0 {
+				q.leakRate = leak * q.leak / closed
+				q.leaked += q.leakRate * dt
+				q.jet = math.Abs(q.leakRate) * u2
+			}
+		} else if area > 0 {
+			q.open = math.Abs(flow) * (q.area() + q.leak) / area * u2
+		}
+	}
+}
+
+// step moves the group's plates by one sub-step and books crossings and impacts. at and h place the sub-step in the interval.
+func (g *group) step(m *Machine, t *throw, e *end, dp, line, dt, deg0, ddeg, at, h float64) {
+	before := g.mean
+	sum := 0.0
+	for i := range g.plates {
+		q := &g.plates[i]
+		hit := q.move(dp, line, dt, m.scatter, m.par.Scatter)
+		sum += q.x / q.d.Lift
+		if hit.speed > heard {
+			g.impact(m, t, e, q, hit, deg0, ddeg, at+h*hit.at)
+		}
+	}
+	g.mean = sum / float64(len(g.plates))
+	const open = 0.1
+	switch {
+	case before < open && g.mean >= open:
+		f := at + h*(open-before)/(g.mean-before)
+		g.cross(m, e, false, deg0+ddeg*f, f)
+	case before >= open && g.mean < open:
+		f := at + h*(open-before)/(g.mean-before)
+		g.cross(m, e, true, deg0+ddeg*f, f)
+	}
+	if before < 0.3 && g.mean >= 0.3 {
+		g.above, g.wanted = true, true
+	}
+}
+
+// cross books the mean lift passing 10 %. An opening counts only in the half turn in which this group opens, so that a bounce
+// after a late closing is none; a closing counts until the plates have sat.
+func (g *group) cross(m *Machine, e *end, closing bool, deg, f float64) {
+	b, in := e.diary.of(deg, g.discharge, closing)
+	if b == nil {
+		return
+	}
+	ev := b.group(g.discharge)
+	at := (float64(m.n-1) + f) * m.dt
+	second := g.discharge == (e.side == crank.HE) // opens between 180° and 360°
+	switch {
+	case closing && g.wanted:
+		ev.Close.Lift, ev.Close.LiftTime = in, at
+		g.wanted = g.above
+	case !closing && math.IsNaN(ev.Open.Lift) && (in >= 180) == second:
+		ev.Open.Lift, ev.Open.LiftTime = in, at
+	}
+}
+
+// impact books a plate's contact and sends it to the accelerometers.
+func (g *group) impact(m *Machine, t *throw, e *end, q *plate, h hit, deg0, ddeg, f float64) {
+	deg := deg0 + ddeg*f
+	at := float64(m.n-1) + f // in samples
+	t.strike(m, q, h, at)
+	b, in := e.diary.of(deg, g.discharge, !h.stop)
+	if b == nil {
+		return
+	}
+	b.Impacts = append(b.Impacts, Impact{Valve: q.id, Stop: h.stop, Deg: in, Time: at * m.dt, Speed: h.speed})
+	ev := b.group(g.discharge)
+	switch {
+	case h.stop && math.IsNaN(ev.Open.Impact) && !math.IsNaN(ev.Open.Lift):
+		ev.Open.Impact, ev.Open.ImpactTime, ev.Open.Speed = in, at*m.dt, h.speed
+	case !h.stop && g.above:
+		g.above = false
+		ev.Close.Impact, ev.Close.ImpactTime, ev.Close.Speed = in, at*m.dt, h.speed
+	}
+}

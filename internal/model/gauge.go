@@ -1,0 +1,201 @@
+package model
+
+import (
+	"fmt"
+	"math"
+	"math/rand/v2"
+
+	"lapwing/internal/skid"
+)
+
+// Noise and standing errors of the instruments, as shares.
+const (
+	gaugeNoise = 0.0003 // of the transmitter's span, rms per sample
+	gaugeZero  = 0.003  // of suction pressure, one standard deviation between transmitters
+	gaugeGain  = 0.002  // likewise, of the reading
+	adcNoise   = 3e-6   // of full scale, rms
+	phaseNoise = 0.004  // of the pulse height, rms
+)
+
+// channel is one converter input.
+type channel struct {
+	id    string
+	input int
+	kind  skid.Kind
+	// counts = (value/Gain + ZeroV)/volts per count
+	perValue, offset float64
+	top              float64 // largest code
+	noise            float64 // counts rms from the converter
+
+	// pressure
+	src        *end
+	passage    *section
+	gain, zero float64
+	drift      float64 // Pa, scripted
+	grass      float64 // Pa rms
+	// acceleration
+	accel *shaker
+	rnd   *rand.Rand
+}
+
+// marker is the once-per-turn mark as a voltage.
+type marker struct {
+	lo, hi float64 // V, idle and inside the pulse
+	half   float64 // degrees, half the length of an edge
+	width  float64 // degrees between the mid-levels
+	per    float64 // degrees between marks
+	back   bool    // the pulse lies before the mark: its trailing edge is the active one
+	volts  float64
+	noise  float64 // V rms
+}
+
+func (m *Machine) buildChannels(seed uint64) error {
+	errs := stream(seed, 3)
+	for i := range m.sk.Channels {
+		sc := &m.sk.Channels[i]
+		if sc.Gain == 0 || sc.VoltsFull <= 0 {
+			return fmt.Errorf("model: channel %s has no scaling", sc.ID)
+		}
+		gain, off := sc.Scale(m.bits)
+		c := &channel{id: sc.ID, input: sc.Input, kind: sc.Kind, perValue: 1 / gain, offset: -off / gain,
+			top: float64(int64(1)<<(m.bits-1)) - 1, gain: 1, rnd: stream(seed, 1000+uint64(sc.Input))}
+		c.noise = adcNoise * c.top * m.par.Noise
+		m.inputs = max(m.inputs, sc.Input+1)
+		switch sc.Kind {
+		case skid.Pressure:
+			z, g := errs.NormFloat64(), errs.NormFloat64()
+			if err := c.tap(m, sc, z, g); err != nil {
+				return err
+			}
+		case skid.Acceleration:
+			for _, t := range m.throws {
+				for _, a := range t.accels {
+					if a.id == sc.ID {
+						c.accel = a
+					}
+				}
+			}
+		case skid.PhaseMark:
+			if sc.ID == m.sk.Phase.Channel {
+				m.mark = newMarker(&m.sk.Phase, sc)
+				m.mark.noise *= m.par.Noise
+			}
+		}
+		m.chans = append(m.chans, c)
+	}
+	return nil
+}
+
+// tap connects a pressure channel to its end, with the transmitter's standing errors.
+func (c *channel) tap(m *Machine, sc *skid.Channel, z, g float64) error {
+	for _, t := range m.throws {
+		for side, e := range t.ends {
+			if e == nil || t.sk.Ends[side].Pressure != sc.ID {
+				continue
+			}
+			c.src = e
+			c.zero = gaugeZero * t.stage.ps * m.par.GaugeError * z
+		}
+	}
+	c.gain = 1 + gaugeGain*m.par.GaugeError*g
+	span := sc.Max - sc.Min
+	if !(span > 0) || math.IsInf(span, 0) {
+		span = math.Abs(sc.VoltsFull * sc.Gain)
+	}
+	c.grass = gaugeNoise * span * m.par.Noise
+	if sc.Passage > 0 {
+		if sc.Passage > 0.2*m.rate {
+			return nil // far above anything that passes the converter
+		}
+		q := sc.PassageQ
+		if q <= 0 {
+			q = 8
+		}
+		s := passage(sc.Passage, q, m.rate)
+		c.passage = &s
+	}
+	return nil
+}
+
+func (c *channel) slow(m *Machine, now float64) {
+	if tr := m.plan.zero[c.id]; tr != nil {
+		c.drift = tr.at(now)
+	}
+}
+
+// convert reads the channel's quantity at the present sample and gives the converter's code.
+func (c *channel) convert(m *Machine) (int32, bool) {
+	v := 0.0
+	switch {
+	case c.src != nil:
+		v = c.src.p
+		if c.passage != nil {
+			if m.n == 1 {
+				c.passage.settle(v)
+			}
+			v = c.passage.next(v)
+		}
+		v = v*c.gain + c.zero + c.drift
+		if c.grass > 0 {
+			v += c.grass * c.rnd.NormFloat64()
+		}
+	case c.accel != nil:
+		v = c.accel.out
+	case c.kind == skid.PhaseMark && m.mark != nil:
+		v = m.mark.volts
+		if m.mark.noise > 0 {
+			v += m.mark.noise * c.rnd.NormFloat64()
+		}
+	}
+	x := v*c.perValue + c.offset
+	if c.noise > 0 {
+		x += c.noise * c.rnd.NormFloat64()
+	}
+	x = math.RoundToEven(x)
+	switch {
+	case x > c.top:
+		return int32(c.top), true
+	case x < -c.top-1:
+		return int32(-c.top - 1), true
+	}
+	return int32(x), false
+}
+
+// settle puts the filter at rest on a constant input.
+func (s *section) settle(x float64) {
+	// y = x at rest for a passage of unit gain.
+	s.z2 = s.b2*x - s.a2*x
+	s.z1 = s.b1*x - s.a1*x + s.z2
+}
+
+func newMarker(p *skid.Phase, c *skid.Channel) *marker {
+	per := 360.0
+	if p.MarksPerTurn > 1 {
+		per /= float64(p.MarksPerTurn)
+	}
+	k := &marker{lo: 0.05 * c.VoltsFull, hi: 0.45 * c.VoltsFull, half: 0.15, width: min(4, 0.4*per), per: per, back: p.Falling}
+	if !p.AutoLevel && p.Threshold != 0 {
+		// A stated threshold is the middle of the pulse.
+		h := max(0.3*c.VoltsFull, math.Abs(p.Threshold)*0.8)
+		h = min(h, 0.95*c.VoltsFull-math.Abs(p.Threshold))
+		k.lo, k.hi = p.Threshold-h, p.Threshold+h
+	}
+	k.noise = phaseNoise * (k.hi - k.lo)
+	return k
+}
+
+// read gives the mark's voltage at the present shaft angle: a trapezoid whose active edge is at mid-level exactly on the mark.
+func (k *marker) read(m *Machine) {
+	a := math.Mod(m.theta*180/math.Pi, k.per) // after the mark
+	if k.back {
+		a = math.Mod(k.per-a, k.per)
+	}
+	if a > k.per/2+k.width/2 {
+		a -= k.per
+	}
+	// Rises through the mark at a = 0, falls at a = width.
+	up := (a + k.half) / (2 * k.half)
+	down := (k.width + k.half - a) / (2 * k.half)
+	f := min(max(min(up, down), 0), 1)
+	k.volts = k.lo + (k.hi-k.lo)*f
+}

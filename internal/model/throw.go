@@ -1,0 +1,304 @@
+package model
+
+import (
+	"fmt"
+	"math"
+
+	"lapwing/internal/crank"
+	"lapwing/internal/skid"
+)
+
+// stage is the lines that the throws of one stage share: slow means, moved linearly between two looks at the script.
+type stage struct {
+	ps, pd, ts    float64
+	dps, dpd, dts float64 // per sample
+}
+
+func (s *stage) aim(l skid.Line) {
+	s.dps, s.dpd, s.dts = (l.Ps-s.ps)/slowEvery, (l.Pd-s.pd)/slowEvery, (l.Ts-s.ts)/slowEvery
+}
+
+func (s *stage) move() {
+	s.ps += s.dps
+	s.pd += s.dpd
+	s.ts += s.dts
+}
+
+func (m *Machine) buildStages() {
+	for i := range m.plan.ps {
+		l := m.plan.line(i, 0)
+		m.stages = append(m.stages, &stage{ps: l.Ps, pd: l.Pd, ts: l.Ts})
+	}
+}
+
+// throw is one cylinder with its two passages, between the lines and the valves.
+type throw struct {
+	index  int
+	sk     *skid.Throw
+	stage  *stage
+	ends   [2]*end // nil: does not work
+	atm    float64
+	travel float64 // m, at the present sample
+
+	pulseS, pulseD []harmonic
+	ps, pd         float64 // Pa, in the passages now, pulsation in
+	// Passages are well mixed: hot gas that leaks back into the suction passage is drawn in again.
+	suctionT, suctionRT float64 // K, √(R·T)
+	dischT, dischRT     float64
+	passage             float64 // m³, each
+	r                   float64 // gas constant
+	discharge           float64 // K, what the discharge thermometer has got to (lagged)
+	next                int64   // number of the next head-end dead centre
+
+	accels []*shaker
+}
+
+func (m *Machine) buildThrows(seed uint64) error {
+	for i := range m.sk.Throws {
+		st := &m.sk.Throws[i]
+		cyl := st.Cylinder
+		t := &throw{index: i, sk: st, stage: m.stages[st.Stage-1], atm: m.sk.Machine.Atmosphere, r: m.par.Gas.R}
+		if t.atm == 0 {
+			t.atm = 101325
+		}
+		t.passage = m.par.Passage * cyl.Swept(crank.HE)
+		td := t.adiabatic(m)
+		t.suctionT, t.dischT, t.discharge = t.stage.ts, td, td
+		t.suctionRT, t.dischRT = math.Sqrt(t.r*t.suctionT), math.Sqrt(t.r*t.dischT)
+		// Each throw hears its own pulsation: the phase moves with its dead centre.
+		t.pulseS = pulses(m.par.SuctionPulse, st.DeadCentre)
+		t.pulseD = pulses(m.par.DischargePulse, st.DeadCentre)
+		for _, p := range append(append([]Pulsation{}, m.par.SuctionPulse...), m.par.DischargePulse...) {
+			if p.Order < 1 || p.Order > maxOrder {
+				return fmt.Errorf("model: pulsation order %d is outside 1 to %d", p.Order, maxOrder)
+			}
+		}
+		count := 0
+		for side := range t.ends {
+			se := &st.Ends[side]
+			if !se.Works {
+				continue
+			}
+			if len(se.Suction) == 0 || len(se.Discharge) == 0 {
+				return fmt.Errorf("model: throw %s: a working end needs suction and discharge valves", st.ID)
+			}
+			e := &end{name: st.ID + [2]string{".he", ".ce"}[side], side: side, area: cyl.Area(side), swept: cyl.Swept(side),
+				clear0: cyl.ClearanceVolume(side), bore: cyl.Bore, noz: m.noz, gas: &m.par.Gas, par: &m.par}
+			e.vc = e.clear0
+			e.diary = diary{throw: i, end: side}
+			e.disch.discharge = true
+			for _, v := range se.Suction {
+				e.suction.plates = append(e.suction.plates, m.newPlate(v, count, false))
+				count++
+			}
+			for _, v := range se.Discharge {
+				e.disch.plates = append(e.disch.plates, m.newPlate(v, count, true))
+				count++
+			}
+			t.ends[side] = e
+		}
+		m.throws = append(m.throws, t)
+	}
+	for i, t := range m.throws {
+		for a, id := range t.sk.Accel {
+			t.accels = append(t.accels, newShaker(m, t, id, seed, uint64(100+16*i+a)))
+		}
+	}
+	return nil
+}
+
+func (m *Machine) newPlate(v skid.Valve, index int, discharge bool) plate {
+	q := plate{id: v.ID, index: index, discharge: discharge, measured: v.Cover != "", healthy: m.par.Valves[v.ID], sticks: 1}
+	// Two valves of a group never are quite alike.
+	f := 1 + 0.02*m.par.Scatter*m.scatter.NormFloat64()
+	q.healthy.Mass *= f
+	q.healthy.Preload *= 1 + 0.03*m.par.Scatter*m.scatter.NormFloat64()
+	q.refresh()
+	q.leak, q.adhesion = q.healthy.BaseLeak, q.healthy.Adhesion
+	return q
+}
+
+func pulses(ps []Pulsation, dc float64) []harmonic {
+	var out []harmonic
+	for _, p := range ps {
+		ph := (p.Phase + float64(p.Order)*dc) * math.Pi / 180
+		out = append(out, harmonic{p.Order, p.Amp * math.Cos(ph), p.Amp * math.Sin(ph)})
+	}
+	return out
+}
+
+func (t *throw) adiabatic(m *Machine) float64 {
+	g := &m.par.Gas
+	return t.stage.ts * math.Pow(math.Max(t.stage.pd/t.stage.ps, 1), (g.K-1)/g.K)
+}
+
+// place sets both ends on the ideal cycle at the starting angle.
+func (t *throw) place(m *Machine) {
+	deg := m.angle() - t.sk.DeadCentre
+	t.next = int64(math.Floor(deg/360)) + 1
+	t.travel = t.sk.Cylinder.Travel(deg)
+	t.lines(m)
+	for side, e := range t.ends {
+		if e == nil {
+			continue
+		}
+		e.v = e.volume(t.travel, t.sk.Cylinder.Stroke)
+		own := math.Mod(deg+180*float64(side)+720, 360)
+		k := m.par.Gas.K
+		if own < 180 { // expanding from the discharge line
+			e.p = max(t.ps, t.pd*math.Pow(e.vc/e.v, k))
+		} else {
+			e.p = min(t.pd, t.ps*math.Pow((e.vc+e.swept)/e.v, k))
+		}
+		if e.idle {
+			e.p = t.ps
+		}
+		e.t = t.stage.ts * math.Pow(e.p/t.ps, (k-1)/k)
+		e.m = e.p * e.v / (t.r * e.t)
+	}
+}
+
+// lines gives the pressures in the passages at the present angle.
+func (t *throw) lines(m *Machine) {
+	fs, fd := 1.0, 1.0
+	for _, h := range t.pulseS {
+		fs += h.a*m.cosN[h.order] + h.b*m.sinN[h.order]
+	}
+	for _, h := range t.pulseD {
+		fd += h.a*m.cosN[h.order] + h.b*m.sinN[h.order]
+	}
+	t.ps, t.pd = t.stage.ps*fs, t.stage.pd*fd
+}
+
+// advance moves the throw by one interval; before is the shaft's angle at its beginning.
+func (t *throw) advance(m *Machine, before, ddeg float64) {
+	deg0 := before - t.sk.DeadCentre
+	cyl := &t.sk.Cylinder
+	x0 := t.travel
+	xm := cyl.Travel(deg0 + 0.5*ddeg)
+	x1 := cyl.Travel(deg0 + ddeg)
+	t.travel = x1
+	t.lines(m)
+	t.rings(m)
+	for _, e := range t.ends {
+		if e == nil {
+			continue
+		}
+		if m.n%heatEvery == 0 {
+			e.heat(deg0, m.omega)
+		}
+		e.fingers(deg0 + ddeg)
+		s := cyl.Stroke
+		e.advance(m, t, e.volume(x0, s), e.volume(xm, s), e.volume(x1, s), deg0, ddeg)
+	}
+	if deg := deg0 + ddeg; deg >= float64(t.next)*360 {
+		f := (float64(t.next)*360 - deg0) / ddeg
+		at := (float64(m.n-1) + f) * m.dt
+		for _, e := range t.ends {
+			if e != nil {
+				e.diary.finish(at, e.m, e.idle, m.step)
+				if t.next >= 0 {
+					e.diary.begin(t.next, at, e.m)
+				}
+			}
+		}
+		t.next++
+	}
+	if m.n%slowEvery == 0 {
+		for _, e := range t.ends {
+			if e != nil {
+				m.truths = e.diary.give(deg0+ddeg, m.truths)
+			}
+		}
+	}
+}
+
+// fingers holds the suction plates open for late closing: from 60° before the outer dead centre, once a plate is up, to the set
+// angle behind it. Idle ends are held by load.
+func (e *end) fingers(deg float64) {
+	if e.late <= 0 || e.idle {
+		return
+	}
+	after := math.Mod(deg+float64(1-e.side)*180+7200, 360) // degrees after this end's outer dead centre
+	if after > 300 {
+		after -= 360
+	}
+	for i := range e.suction.plates {
+		q := &e.suction.plates[i]
+		switch {
+		case after >= -60 && after < e.late:
+			if q.x >= q.d.Lift {
+				q.hold = q.d.Lift
+			}
+		default:
+			q.hold = 0
+		}
+	}
+}
+
+// rings passes gas between the ends, upstream state, same nozzle law.
+func (t *throw) rings(m *Machine) {
+	a, b := t.ends[crank.HE], t.ends[crank.CE]
+	if a == nil || b == nil {
+		return
+	}
+	in, _ := m.noz.flow(a.p, math.Sqrt(t.r*a.t), b.p, math.Sqrt(t.r*b.t))
+	a.ring = in * a.ringA
+	b.ring = -a.ring
+	a.ringT, b.ringT = b.t, a.t
+}
+
+// suctionIn mixes the suction passage: taken is what went into a cylinder end in this interval, kg; negative came back at temperature tt.
+func (t *throw) suctionIn(taken, tt float64) {
+	if taken == 0 {
+		return
+	}
+	mass := t.ps * t.passage / (t.r * t.suctionT)
+	if taken < 0 {
+		t.suctionT += (tt - t.suctionT) * math.Min(1, -taken/mass)
+	} else {
+		t.suctionT += (t.stage.ts - t.suctionT) * math.Min(1, taken/mass)
+	}
+	t.suctionRT = math.Sqrt(t.r * t.suctionT)
+}
+
+// dischIn mixes the discharge passage: out is what an end delivered, kg, at temperature tt; negative went back into it.
+func (t *throw) dischIn(out, tt float64) {
+	if out <= 0 {
+		return // the line's gas is the passage's own
+	}
+	mass := t.pd * t.passage / (t.r * t.dischT)
+	t.dischT += (tt - t.dischT) * math.Min(1, out/mass)
+	t.dischRT = math.Sqrt(t.r * t.dischT)
+}
+
+// slow follows faults and wall temperatures.
+func (t *throw) slow(m *Machine, now float64) {
+	ring := m.plan.ring[t.sk.ID].at(now)
+	ad := t.adiabatic(m)
+	for side, e := range t.ends {
+		if e == nil {
+			continue
+		}
+		e.ringA = ring
+		if side == crank.CE {
+			e.packing = m.plan.packing[t.sk.ID].at(now)
+		}
+		e.wall = t.stage.ts + m.par.WallAt*(ad-t.stage.ts)
+		for _, g := range []*group{&e.suction, &e.disch} {
+			for i := range g.plates {
+				q := &g.plates[i]
+				q.leak = m.plan.valveLeak[q.id].at(now)
+				q.adhesion = m.plan.sticky[q.id].at(now)
+				if b := m.plan.broken[q.id].at(now); b != q.broken {
+					q.broken = min(b, 1)
+					q.refresh()
+				}
+			}
+		}
+	}
+	t.warm(m)
+	for _, a := range t.accels {
+		a.slow(m, now)
+	}
+}
