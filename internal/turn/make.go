@@ -1,0 +1,134 @@
+package turn
+
+import (
+	"math"
+
+	"lapwing/internal/frame"
+)
+
+// refuse emits a record without a turn.
+func (c *Converter) refuse(r *record, why string, emit func(*Turn)) {
+	c.out = Turn{
+		Number: r.turn, Seq0: r.seq0, Seq1: ceil(r.mark1), Time: r.mark0 / c.cfg.Rate,
+		RPM: math.NaN(), Reason: why, Quality: r.q,
+	}
+	if r.q&(frame.Missing|frame.Gap) == 0 && r.mark1 > r.mark0 {
+		c.out.RPM = 60 * c.cfg.Rate / (r.mark1 - r.mark0)
+	}
+	emit(&c.out)
+}
+
+// make emits the turn of recs[i], or the reason why there is none.
+func (c *Converter) make(i int, emit func(*Turn)) {
+	r := c.recs[i]
+	why := r.why()
+	if why == "" && i == 0 {
+		why = c.begin
+	}
+	if why == "" {
+		why = c.convert(c.recs[i-1 : i+ahead+1])
+	}
+	if why != "" {
+		c.refuse(r, why, emit)
+		return
+	}
+	emit(&c.out)
+}
+
+// convert fills c.out from four consecutive revolutions, of which the second is in hand. It returns why it cannot.
+func (c *Converter) convert(recs []*record) string {
+	r := recs[1]
+	c.out = Turn{Number: r.turn, Seq0: math.MaxInt64, Throws: c.throws}
+	for _, n := range recs {
+		if why := n.why(); why != "" {
+			return why + neighbour
+		}
+		c.out.Quality |= n.q
+	}
+	if why := c.m.lay(recs); why != "" {
+		return why
+	}
+	u := c.cfg.Marks.U
+	if u == 0 {
+		u = Uncertainty(c.m.inTurn, c.cfg.Marks.knowsRipple())
+	}
+	for k := range c.throws {
+		t, g := &c.throws[k], &c.grids[k]
+		if why := c.m.walk(g, t.Pos, c.perDeg); why != "" {
+			return why
+		}
+		lo, hi := c.reach(g, t.Pos)
+		if lo < c.base || hi > c.next {
+			return whyShort
+		}
+		overload := false
+		for _, n := range recs {
+			overload = overload || n.q&frame.Clipped != 0 && n.mark0 < float64(hi) && n.mark1 > float64(lo)
+		}
+		c.pressures(k, lo, hi, overload)
+		c.vibration(k, lo, hi, overload)
+		for j, d := range c.perDeg {
+			t.Pos[j] += float64(c.m.ref)
+			t.Omega[j] = math.Pi / 180 * c.cfg.Rate / d
+		}
+		t.T0, t.T1 = t.Pos[g.zero], t.Pos[g.full]
+		t.RPM, t.U = 60*c.cfg.Rate/(t.T1-t.T0), u
+		c.out.Seq0, c.out.Seq1 = min(c.out.Seq0, lo), max(c.out.Seq1, hi)
+	}
+	c.out.Time, c.out.RPM = c.throws[0].T0/c.cfg.Rate, c.throws[0].RPM
+	return ""
+}
+
+// reach gives the half-open range of sample numbers that the kernels and bins of a grid touch; pos is relative.
+func (c *Converter) reach(g *grid, pos []float64) (lo, hi int64) {
+	n := len(pos) - 1
+	edge := func(i int) float64 { return reachSigmas*width(g.Step*c.perDeg[i]) + 2 }
+	lo = min(int64(math.Floor(pos[0]-edge(0))), first(pos))
+	hi = max(ceil(pos[n]+edge(n)), end(pos)) + 1
+	return lo + c.m.ref, hi + c.m.ref
+}
+
+// pressures fills in the pressures of throw k. Positions are relative to the map's reference sample.
+func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
+	t, g := &c.throws[k], &c.grids[k]
+	var ends [2]*stream
+	for e := range ends {
+		t.Bad[e] = ""
+		if at := c.throw[k][e]; at >= 0 {
+			ends[e] = c.press[at]
+			t.Bad[e] = ends[e].suspect(lo, hi, overload)
+		}
+	}
+	if ends[0] == nil && ends[1] == nil {
+		return
+	}
+	off := c.m.ref - c.base
+	for i, p := range t.Pos {
+		c.k.lay(p, width(g.Step*c.perDeg[i]))
+		for e, s := range ends {
+			if s != nil {
+				t.P[e][i] = c.k.value(s.x[c.k.first+off:])
+			}
+		}
+	}
+}
+
+// vibration fills in the accelerometers of throw k.
+func (c *Converter) vibration(k int, lo, hi int64, overload bool) {
+	t := &c.throws[k]
+	from, to := first(t.Pos), end(t.Pos)
+	off := c.m.ref - c.base
+	for j := range t.Vib {
+		v, s := &t.Vib[j], c.vib[c.throw[k][2]+j]
+		v.Suspect = s.suspect(lo, hi, overload)
+		if s.impact == nil {
+			continue
+		}
+		var leak []float64
+		if s.leak != nil {
+			leak = s.leak.y
+		}
+		v.bin(t.Pos, s.impact.y, leak, -off)
+		v.Seq0, v.X = from+c.m.ref, s.impact.y[from+off:to+off:to+off]
+	}
+}
