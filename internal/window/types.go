@@ -57,6 +57,10 @@ type End struct {
 	Closed     [2]Run  // Compression, Expansion
 	Ps, Pd     float64 // Pa, own suction and discharge plateau; NaN when unknown
 	NotPresent bool    // the end has no pressure channel or does no work by design
+	// Trapped is, for each closed stroke, the volume at which its line meets the plateau it starts from, m³: what
+	// suction traps (Compression) and what discharge leaves behind (Expansion). NaN unknown. Under pulsation it may
+	// lie a little beyond the dead centre.
+	Trapped [2]float64
 }
 
 // Throw is both ends; index crank.HE, crank.CE.
