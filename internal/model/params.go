@@ -62,12 +62,12 @@ type Params struct {
 const (
 	typicalFlow     = 0.075  // effective area of a group at full lift, of the piston area (5 to 10 % is usual)
 	typicalForce    = 1.25   // force area over flow area
-	typicalAreal    = 14     // kg per m² of force area: thin plate with its share of the springs
-	typicalSpring   = 0.45   // spring force at full lift over the greatest gas force at rated speed
-	typicalPreload  = 0.3    // share of that at zero lift
+	typicalAreal    = 10     // kg per m² of force area: thin plate with its share of the springs
+	typicalSpring   = 0.30   // spring force at full lift over the greatest gas force at rated speed
+	typicalPreload  = 0.27   // share of that at zero lift
 	typicalAdhesion = 0.02   // extra share of line pressure to break off a dry clean seat
 	typicalLeak     = 1.2e-4 // leak area over full-lift flow area of a healthy valve
-	typicalSwing    = 11     // degrees of crank at rated speed the springs alone need to close the valve
+	typicalSwing    = 11.2   // degrees of crank at rated speed the springs alone need to close the valve
 )
 
 // Typical derives plausible valves and losses from bore, stroke and rated speed, for the lines given (nil: the skid's
@@ -120,7 +120,7 @@ func Typical(sk *skid.Skid, lines []skid.Line) (Params, error) {
 			}
 		}
 		ap := t.Cylinder.Area(crank.HE)
-		p.Ring = max(p.Ring, 1.2e-5*ap)
+		p.Ring = max(p.Ring, 6e-5*ap)
 		p.Packing = max(p.Packing, 2e-6*ap)
 	}
 	return p, nil
@@ -153,7 +153,7 @@ func typicalValve(sk *skid.Skid, t *skid.Throw, end int, v skid.Valve, n int, rh
 	if d.Stiffness == 0 {
 		d.Stiffness = max(force-d.Preload, 0.2*force) / d.Lift
 	}
-	d.Damping = 0.06 * 2 * math.Sqrt(d.Stiffness*d.Mass)
+	d.Damping = 0.12 * 2 * math.Sqrt(d.Stiffness*d.Mass)
 	d.BaseLeak = typicalLeak * d.FlowArea
 	return d
 }

@@ -98,7 +98,7 @@ func newShaker(m *Machine, t *throw, id string, seed, use uint64) *shaker {
 // newBell draws a valve's modes: 4 to 6 between 2 and 15 kHz, ring-down 0.5 to 2 ms, shorter when higher.
 func newBell(r *rand.Rand, rate float64) bell {
 	n := 4 + r.IntN(3)
-	b := bell{peak: 35 + 35*r.Float64(), delay: (0.05e-3 + 0.35e-3*r.Float64()) * rate, jet: 0.7 + 0.6*r.Float64()}
+	b := bell{peak: 22 + 26*r.Float64(), delay: (0.05e-3 + 0.35e-3*r.Float64()) * rate, jet: 0.7 + 0.6*r.Float64()}
 	for i := range n {
 		f := 2000 * math.Pow(7.5, (float64(i)+r.Float64())/float64(n))
 		f = min(f, 0.42*rate)
