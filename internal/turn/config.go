@@ -52,6 +52,7 @@ type Channel struct {
 	Input        int // index into frame.Frame.Counts; -1 where there is no channel
 	Gain, Offset float64
 	Min, Max     float64 // values outside make the channel suspect; both zero: not checked
+	Passage      Passage // of a pressure channel: undone where known
 }
 
 // None gives the channel of an end that has no pressure transducer.
@@ -128,6 +129,9 @@ func (c Config) fill() (Config, error) {
 			}
 			if ch.Input >= 0 && !(ch.Gain != 0 && finite(ch.Gain) && finite(ch.Offset)) {
 				return c, fmt.Errorf("throw %d: channel %q: gain %g, offset %g", i+1, ch.ID, ch.Gain, ch.Offset)
+			}
+			if p := ch.Passage; p != (Passage{}) && !(p.Hz > 0 && p.Hz < c.Rate/4 && p.Q > 0 && finite(p.Q)) {
+				return c, fmt.Errorf("throw %d: channel %q: passage of %g Hz, Q %g; want 0 < Hz < a quarter of the rate, Q > 0", i+1, ch.ID, p.Hz, p.Q)
 			}
 			if ch.Min != 0 && !(ch.Max > ch.Min) || ch.Max != 0 && !(ch.Max > ch.Min) {
 				return c, fmt.Errorf("throw %d: channel %q: valid range %g..%g", i+1, ch.ID, ch.Min, ch.Max)

@@ -23,6 +23,7 @@ type Converter struct {
 	m       angleMap
 	k       kernel
 	perDeg  []float64
+	least   float64 // widest of all streams' least σ
 	out     Turn
 	throws  []Throw
 }
@@ -75,7 +76,8 @@ func New(cfg Config) (*Converter, error) {
 		for e, ch := range t.Pressure {
 			if ch.Input >= 0 {
 				at[e] = len(c.press)
-				c.press = append(c.press, &stream{ch: ch})
+				c.press = append(c.press, &stream{ch: ch, least: ch.Passage.sigma(cfg.Rate)})
+				c.least = max(c.least, ch.Passage.sigma(cfg.Rate))
 				out.P[e] = make([]float64, g.N)
 			}
 		}
@@ -212,15 +214,35 @@ func (c *Converter) cut(why string, emit func(*Turn)) {
 		why += neighbour
 	}
 	for ; c.pending < len(c.recs); c.pending++ {
-		r := c.recs[c.pending]
-		if own := r.why(); own != "" {
-			c.refuse(r, own, emit)
-		} else {
-			c.refuse(r, why, emit)
+		own := c.amiss(c.pending)
+		if own == "" {
+			own = why
 		}
+		c.refuse(c.recs[c.pending], own, emit)
 	}
 	c.begin = why
+	if n := len(c.recs); n > 0 {
+		if last := c.recs[n-1].why(); last != "" {
+			c.begin = last + neighbour
+		}
+	}
 	c.forget()
+}
+
+// amiss says what is wrong with recs[i] or, failing that, with those of its neighbours that are there.
+func (c *Converter) amiss(i int) string {
+	if why := c.recs[i].why(); why != "" {
+		return why
+	}
+	if i == 0 {
+		return c.begin
+	}
+	for _, r := range c.recs[i-1 : min(i+ahead+1, len(c.recs))] {
+		if why := r.why(); why != "" {
+			return why + neighbour
+		}
+	}
+	return ""
 }
 
 func (c *Converter) forget() {

@@ -15,7 +15,8 @@
 // Pressure. At each grid angle a line is fitted to the samples around it under a Gaussian weight of σ = half a grid
 // step, but at least 0.8 samples: anti-aliasing, interpolation and no delay in one. It is -3 dB at 0.265/step cycles
 // per degree (0.53 cycles per degree, order 191, for 0.5°; 2.2 kHz at 700 rpm), or at 0.166 of the sampling rate
-// where that is lower, and -11 dB at the grid's Nyquist. A ramp has no bias, a curved stroke σ²p″/2p′, under 0.003°.
+// where that is lower, and -10.7 dB at the grid's Nyquist. A ramp has no bias, a curved stroke σ²p″/2p′, under 0.003°.
+// A known gauge passage is undone in the same step (Passage).
 //
 // Vibration. A causal Butterworth band-pass of order 2 per edge runs through all samples, across turns; nothing is
 // decimated before detection. Its delay at an impact's onset is under 0.06 ms (0.25° at 700 rpm) and is not taken

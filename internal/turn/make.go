@@ -21,10 +21,7 @@ func (c *Converter) refuse(r *record, why string, emit func(*Turn)) {
 // make emits the turn of recs[i], or the reason why there is none.
 func (c *Converter) make(i int, emit func(*Turn)) {
 	r := c.recs[i]
-	why := r.why()
-	if why == "" && i == 0 {
-		why = c.begin
-	}
+	why := c.amiss(i)
 	if why == "" {
 		why = c.convert(c.recs[i-1 : i+ahead+1])
 	}
@@ -40,9 +37,6 @@ func (c *Converter) convert(recs []*record) string {
 	r := recs[1]
 	c.out = Turn{Number: r.turn, Seq0: math.MaxInt64, Throws: c.throws}
 	for _, n := range recs {
-		if why := n.why(); why != "" {
-			return why + neighbour
-		}
 		c.out.Quality |= n.q
 	}
 	if why := c.m.lay(recs); why != "" {
@@ -82,7 +76,7 @@ func (c *Converter) convert(recs []*record) string {
 // reach gives the half-open range of sample numbers that the kernels and bins of a grid touch; pos is relative.
 func (c *Converter) reach(g *grid, pos []float64) (lo, hi int64) {
 	n := len(pos) - 1
-	edge := func(i int) float64 { return reachSigmas*width(g.Step*c.perDeg[i]) + 2 }
+	edge := func(i int) float64 { return reachSigmas*max(width(g.Step*c.perDeg[i]), c.least) + 2 }
 	lo = min(int64(math.Floor(pos[0]-edge(0))), first(pos))
 	hi = max(ceil(pos[n]+edge(n)), end(pos)) + 1
 	return lo + c.m.ref, hi + c.m.ref
@@ -104,10 +98,20 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 	}
 	off := c.m.ref - c.base
 	for i, p := range t.Pos {
-		c.k.lay(p, width(g.Step*c.perDeg[i]))
+		laid := 0.0 // both ends share the kernel unless their passages ask for different widths
 		for e, s := range ends {
-			if s != nil {
+			if s == nil {
+				continue
+			}
+			sigma := max(width(g.Step*c.perDeg[i]), s.least)
+			if sigma != laid {
+				c.k.lay(p, sigma)
+				laid = sigma
+			}
+			if s.ch.Passage.Hz == 0 {
 				t.P[e][i] = c.k.value(s.x[c.k.first+off:])
+			} else {
+				t.P[e][i] = c.k.inverse(s.x[c.k.first+off:], s.ch.Passage, sigma, c.cfg.Rate)
 			}
 		}
 	}

@@ -8,6 +8,7 @@ type stream struct {
 	ch           Channel
 	accel        bool
 	x            []float64 // pressure history; scratch for an accelerometer
+	least        float64   // samples, the least σ of a pressure's kernel
 	impact, leak *band     // nil where the sampling rate does not allow them
 	bad          []span    // where values lay outside the valid range
 }
