@@ -1,0 +1,128 @@
+package leak
+
+import "math"
+
+// unknowns of the fit after the five areas.
+const (
+	phase = Paths + iota
+	zeroHE
+	zeroCE
+	unknowns
+)
+
+// normal is the least-squares problem as its normal equations. With nine columns of like size their condition is no
+// concern (the singular values span four decades at most).
+type normal struct {
+	a   [unknowns][unknowns]float64 // Σ x xᵀ
+	b   [unknowns]float64           // Σ x y
+	yy  float64                     // Σ y²
+	n   int
+	use [unknowns]bool
+}
+
+func (q *normal) add(x *[unknowns]float64, y float64) {
+	for i := range unknowns {
+		if !q.use[i] {
+			continue
+		}
+		for j := 0; j <= i; j++ {
+			q.a[i][j] += x[i] * x[j]
+		}
+		q.b[i] += x[i] * y
+	}
+	q.yy += y * y
+	q.n++
+}
+
+// solution of a problem; unused unknowns are zero.
+type solution struct {
+	x   [unknowns]float64
+	inv [unknowns]float64 // diagonal of the inverse of the normal matrix: variances for unit noise
+	ss  float64           // Σ residual² of the data, priors left out
+}
+
+// leastPivot is the share of a column's square that must not be explained by the columns before it.
+const leastPivot = 1e-9
+
+// solve adds to each unknown a prior of precision prior[i] (1/variance, in units of the noise variance) centred on
+// centre[i], and solves by Cholesky after scaling every column to length one. Not ok: two columns are the same.
+func (q *normal) solve(prior, centre *[unknowns]float64) (s solution, ok bool) {
+	var scale [unknowns]float64
+	var l [unknowns][unknowns]float64
+	for i := range unknowns {
+		if !q.use[i] {
+			continue
+		}
+		d := q.a[i][i] + prior[i]
+		if !(d > 0) || math.IsInf(d, 0) {
+			return s, false
+		}
+		scale[i] = 1 / math.Sqrt(d)
+	}
+	for i := range unknowns {
+		if !q.use[i] {
+			l[i][i] = 1
+			continue
+		}
+		for j := 0; j <= i; j++ {
+			v := 0.0
+			if q.use[j] {
+				v = q.a[i][j] * scale[i] * scale[j]
+			}
+			if i == j {
+				v = 1
+			}
+			for k := range j {
+				v -= l[i][k] * l[j][k]
+			}
+			if i != j {
+				l[i][j] = v / l[j][j]
+				continue
+			}
+			if !(v >= leastPivot) {
+				return s, false
+			}
+			l[i][i] = math.Sqrt(v)
+		}
+	}
+	back := func(rhs [unknowns]float64) [unknowns]float64 {
+		for i := range unknowns {
+			for k := range i {
+				rhs[i] -= l[i][k] * rhs[k]
+			}
+			rhs[i] /= l[i][i]
+		}
+		for i := unknowns - 1; i >= 0; i-- {
+			for k := i + 1; k < unknowns; k++ {
+				rhs[i] -= l[k][i] * rhs[k]
+			}
+			rhs[i] /= l[i][i]
+		}
+		return rhs
+	}
+	var rhs [unknowns]float64
+	for i := range unknowns {
+		if q.use[i] {
+			rhs[i] = (q.b[i] + prior[i]*centre[i]) * scale[i]
+		}
+	}
+	z := back(rhs)
+	for i := range unknowns {
+		if !q.use[i] {
+			continue
+		}
+		s.x[i] = z[i] * scale[i]
+		var unit [unknowns]float64
+		unit[i] = 1
+		s.inv[i] = back(unit)[i] * scale[i] * scale[i]
+	}
+	s.ss = q.yy
+	for i := range unknowns {
+		s.ss -= 2 * s.x[i] * q.b[i]
+		for j := range unknowns {
+			s.ss += s.x[i] * s.x[j] * q.a[max(i, j)][min(i, j)]
+		}
+	}
+	s.ss = max(s.ss, 0)
+	return s, true
+}
