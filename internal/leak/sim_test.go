@@ -19,9 +19,10 @@ type sim struct {
 	idle        [2]bool        // suction valves held open all turn
 	stepDeg     float64
 	revolutions int
-	td          float64      // result: mass-mean temperature of the delivered gas
-	delivered   float64      // kg per turn, both ends
-	p, v        [2][]float64 // result on a 0.5° grid from −60° to 420°
+	td          float64        // result: mass-mean temperature of the delivered gas
+	delivered   float64        // kg per turn, both ends
+	leaked      [Paths]float64 // kg per turn through each leak: out through suction, in through discharge, both ways through rings
+	p, v        [2][]float64   // result on a 0.5° grid from −60° to 420°
 	closed      [2][2]Range
 }
 
