@@ -19,6 +19,10 @@ type Point struct {
 	RPM      float64
 	Ps, Pd   float64 // Pa, line pressures of the throw's stage (own plateau when the process does not give them)
 	Inferred bool    // true when process values were missing or stale
+
+	// The same duty as the traces alone show it: what a baseline falls back on when the process values go.
+	OwnStep      int
+	OwnPs, OwnPd float64 // Pa, own plateaus; NaN unknown
 }
 
 // Deviation is one feature of one turn or block against its baseline. Residuals are in the feature's SI unit.
@@ -31,6 +35,7 @@ type Deviation struct {
 	Z        float64 // Residual/Spread
 	N        int     // turns behind it
 	Seen     bool    // the baseline has seen this duty; when false Z must not be used
+	Drift    float64 // blocks only: two-sided CUSUM of Z as a share of its decision limit, signed; beyond ±1 is a slow change
 }
 
 // Block is the evidence of one throw over a stretch of turns at seen duty.

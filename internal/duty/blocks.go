@@ -1,0 +1,137 @@
+package duty
+
+import (
+	"math"
+
+	"lapwing/internal/measure"
+)
+
+// BlockConfig sets the size of the evidence. Zero values take the defaults.
+type BlockConfig struct {
+	Turns    int // usable turns per block; default 15
+	Spacing  int // take every n-th usable turn; default 1
+	MinValid int // turns a feature needs in a block; default half of Turns, rounded up
+	MaxSpan  int // turns from first to last above which a block is stale and begun anew; default 20·Turns·Spacing
+}
+
+// Blocks gathers turns at seen duty into blocks, per throw.
+type Blocks struct {
+	cfg    BlockConfig
+	ref    *Reference
+	throws map[int]*gather
+}
+
+type gather struct {
+	first, last          int64
+	seq0, seq1           int64
+	time                 float64
+	n, skip              int
+	settled              bool
+	point                Point
+	rpm, ps, pd          []float64
+	value, expected, res map[int][]float64 // by feature
+	drift                map[int]*Cusum
+}
+
+// NewBlocks gathers against a reference.
+func NewBlocks(ref *Reference, cfg BlockConfig) *Blocks {
+	if cfg.Turns <= 0 {
+		cfg.Turns = 15
+	}
+	if cfg.Spacing <= 0 {
+		cfg.Spacing = 1
+	}
+	if cfg.MinValid <= 0 {
+		cfg.MinValid = (cfg.Turns + 1) / 2
+	}
+	if cfg.MaxSpan <= 0 {
+		cfg.MaxSpan = 20 * cfg.Turns * cfg.Spacing
+	}
+	return &Blocks{cfg: cfg, ref: ref, throws: map[int]*gather{}}
+}
+
+// Add takes a throw's turn with its deviations; ok tells that a block is complete. Turns that are neither steady nor
+// changing, or whose duty was not seen, are passed over. A load step begins a new block.
+func (b *Blocks) Add(throw int, p Point, v *measure.Vector, devs []Deviation) (blk Block, ok bool) {
+	if p.State != Steady && p.State != Changing {
+		return blk, false
+	}
+	if seen, _ := b.ref.Seen(throw, p); !seen {
+		return blk, false
+	}
+	g := b.throws[throw]
+	if g == nil {
+		g = &gather{value: map[int][]float64{}, expected: map[int][]float64{}, res: map[int][]float64{}, drift: map[int]*Cusum{}}
+		b.throws[throw] = g
+	}
+	if g.n > 0 && (p.Step != g.point.Step || p.Inferred != g.point.Inferred || v.Turn-g.first > int64(b.cfg.MaxSpan)) {
+		g.clear()
+	}
+	if g.n > 0 {
+		if g.skip++; g.skip < b.cfg.Spacing {
+			return blk, false
+		}
+	}
+	g.skip = 0
+	if g.n == 0 {
+		g.first, g.seq0, g.time, g.settled = v.Turn, v.Seq0, v.Time, true
+	}
+	g.n++
+	g.last, g.seq1, g.point = v.Turn, v.Seq1, p
+	g.settled = g.settled && p.State == Steady
+	g.rpm, g.ps, g.pd = append(g.rpm, p.RPM), append(g.ps, p.Ps), append(g.pd, p.Pd)
+	for _, d := range devs {
+		if d.Seen {
+			g.value[d.Feature] = append(g.value[d.Feature], d.Value)
+			g.expected[d.Feature] = append(g.expected[d.Feature], d.Expected)
+			g.res[d.Feature] = append(g.res[d.Feature], d.Residual)
+		}
+	}
+	if g.n < b.cfg.Turns {
+		return blk, false
+	}
+	blk = b.close(throw, g)
+	g.clear()
+	return blk, true
+}
+
+func (b *Blocks) close(throw int, g *gather) Block {
+	blk := Block{Throw: throw, Turn0: g.first, Turn1: g.last, Seq0: g.seq0, Seq1: g.seq1, Time: g.time, Settled: g.settled, Point: g.point}
+	blk.Point.RPM, blk.Point.Ps, blk.Point.Pd = median(g.rpm), median(g.ps), median(g.pd)
+	if !g.settled {
+		blk.Point.State = Changing
+	}
+	for i := range b.ref.layout {
+		res := g.res[i]
+		if len(res) < b.cfg.MinValid {
+			continue
+		}
+		m := b.ref.modelOf(throw, g.point, i)
+		if m == nil {
+			continue
+		}
+		d := Deviation{Feature: i, Value: median(g.value[i]), Expected: median(g.expected[i]), Residual: median(res), N: len(res), Seen: true}
+		d.Spread = m.blockSpread(len(res))
+		d.Z = d.Residual / d.Spread
+		c := g.drift[i]
+		if c == nil {
+			c = &Cusum{}
+			g.drift[i] = c
+		}
+		d.Drift = c.Step(d.Z)
+		if math.IsNaN(d.Z) {
+			continue
+		}
+		blk.Dev = append(blk.Dev, d)
+	}
+	return blk
+}
+
+// clear begins a new block; the slow test goes on.
+func (g *gather) clear() {
+	g.n, g.skip = 0, 0
+	g.rpm, g.ps, g.pd = g.rpm[:0], g.ps[:0], g.pd[:0]
+	for i := range g.res {
+		g.value[i], g.expected[i], g.res[i] = g.value[i][:0], g.expected[i][:0], g.res[i][:0]
+	}
+}

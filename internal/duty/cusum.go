@@ -1,0 +1,45 @@
+package duty
+
+import "math"
+
+// Cusum is a two-sided cumulative-sum test on standardised values: it finds a small lasting shift that no single block
+// shows. The zero value is ready.
+type Cusum struct {
+	Up, Down float64 // both >= 0
+}
+
+// The test's constants, in spreads. A large reference value K, since spreads hold the duty model's own error and only
+// shifts that matter shall count; CusumLimit gives a run of RunLength(K, Limit)/2, about 2·10⁷ blocks, between false
+// signals when blocks are independent and Gaussian. They are neither: correlated neighbours shorten it (a lag-1
+// correlation of 0.3 by about a factor of 20 at these settings' neighbours, reference/methods.md 6.2), values are
+// clipped at CusumClip so that one wild block cannot signal.
+const (
+	CusumK     = 1.0
+	CusumLimit = 8.0
+	CusumClip  = 4.0
+)
+
+// Step takes one value; NaN changes nothing. It returns the larger side as a share of the limit, with its sign.
+func (c *Cusum) Step(z float64) float64 {
+	if !math.IsNaN(z) {
+		z = math.Max(-CusumClip, math.Min(CusumClip, z))
+		// Capped at twice the limit: after a repair it comes back in finite time.
+		c.Up = math.Min(2*CusumLimit, math.Max(0, c.Up+z-CusumK))
+		c.Down = math.Min(2*CusumLimit, math.Max(0, c.Down-z-CusumK))
+	}
+	if c.Down > c.Up {
+		return -c.Down / CusumLimit
+	}
+	return c.Up / CusumLimit
+}
+
+// RunLength is the mean number of values between false signals of a one-sided test with reference k and limit h, by
+// Siegmund's approximation (D. Siegmund, Sequential Analysis, 1985): b = h + 1.166,
+//
+//	ARL = (e^(2kb) − 2kb − 1) / (2k²)
+//
+// A two-sided test has half of it.
+func RunLength(k, h float64) float64 {
+	b := h + 1.166
+	return (math.Exp(2*k*b) - 2*k*b - 1) / (2 * k * k)
+}

@@ -1,0 +1,192 @@
+package duty
+
+import (
+	"math"
+
+	"lapwing/internal/window"
+)
+
+// Step is a load step as the throw's traces show it.
+type Step struct {
+	Code int
+	Idle [2]bool // ends whose suction valves are held open
+}
+
+// WatchConfig belongs to one throw. Zero values take the defaults.
+type WatchConfig struct {
+	MinRPM, MaxRPM float64 // stated speed range; 0, 0: any speed
+	Steps          []Step
+	WarmTurns      int     // turns before anything is called steady; default 10
+	StartTurns     int     // turns called Starting after a stop; default 60
+	SettleTurns    int     // turns called Changing after a load step; default 30
+	Drift          float64 // relative lead of the last 4 turns over the last 20 that is a change; default 0.01
+}
+
+// Input is what one throw's turn says about its duty. NaN: not known.
+type Input struct {
+	Turn         int64
+	Valid        bool // the turn can be measured
+	RPM          float64
+	ProcessKnown bool // the process values below are fresh
+	Step         int
+	Ps, Pd       float64 // Pa, line
+	OwnPs, OwnPd [2]float64
+	Ends         [2]window.State
+}
+
+// Watch classifies the duty of one throw, turn by turn.
+type Watch struct {
+	cfg     WatchConfig
+	turns   int // valid turns since the last stop or gap
+	stopped bool
+	start   int // turns still to be called Starting
+	settle  int // turns still to be called Changing
+	step    int
+	haveSt  bool
+	inf     bool
+	idle    [2]bool
+	rpm     lead
+	ps, pd  lead
+	last    int64
+}
+
+// NewWatch gives a watch that has seen nothing.
+func NewWatch(cfg WatchConfig) *Watch {
+	def := func(p *int, v int) {
+		if *p <= 0 {
+			*p = v
+		}
+	}
+	def(&cfg.WarmTurns, 10)
+	def(&cfg.StartTurns, 60)
+	def(&cfg.SettleTurns, 30)
+	if cfg.Drift <= 0 {
+		cfg.Drift = 0.01
+	}
+	return &Watch{cfg: cfg}
+}
+
+// Stopped says that the machine makes no turns.
+func (w *Watch) Stopped() Point {
+	w.stopped, w.turns = true, 0
+	nan := math.NaN()
+	return Point{State: Stopped, Ps: nan, Pd: nan, OwnPs: nan, OwnPd: nan}
+}
+
+// Classify takes one turn. A turn that cannot be measured is Unknown and leaves the watch as it was.
+func (w *Watch) Classify(in Input) Point {
+	p := Point{RPM: in.RPM, Step: in.Step, Ps: in.Ps, Pd: in.Pd}
+	w.noteIdle(in.Ends)
+	p.OwnStep = w.inferStep()
+	p.OwnPs, p.OwnPd = own(in.OwnPs, in.Ends), own(in.OwnPd, in.Ends)
+	if !in.ProcessKnown {
+		p.Step = p.OwnStep
+	}
+	if !in.ProcessKnown || !known(in.Ps) || !known(in.Pd) {
+		p.Inferred, p.Ps, p.Pd = true, p.OwnPs, p.OwnPd
+	}
+	if !in.Valid || !known(in.RPM) {
+		return p // Unknown
+	}
+	if w.turns > 0 && in.Turn-w.last > 200 { // a long hole: what came before says nothing
+		w.turns = 0
+	}
+	w.last = in.Turn
+	if w.turns == 0 {
+		w.rpm, w.ps, w.pd, w.settle, w.haveSt = lead{}, lead{}, lead{}, 0, false
+		w.start = w.cfg.WarmTurns
+		if w.stopped {
+			w.start = w.cfg.StartTurns
+		}
+		w.stopped = false
+	}
+	w.turns++
+
+	if w.haveSt && (p.Step != w.step || p.Inferred != w.inf) {
+		w.ps, w.pd = lead{}, lead{} // other taps, another level: no drift of the machine
+		if p.Step != w.step {
+			w.settle = w.cfg.SettleTurns
+		}
+	}
+	w.step, w.inf, w.haveSt = p.Step, p.Inferred, true
+	if w.rpm.move(in.RPM, w.cfg.Drift) || w.ps.move(p.Ps, w.cfg.Drift) || w.pd.move(p.Pd, w.cfg.Drift) {
+		w.settle = max(w.settle, w.cfg.SettleTurns/3)
+	}
+
+	out := w.cfg.MaxRPM > 0 && (in.RPM < w.cfg.MinRPM || in.RPM > w.cfg.MaxRPM)
+	switch {
+	case out:
+		w.start = max(w.start, w.cfg.WarmTurns)
+		p.State = Starting
+	case w.start > 0:
+		w.start--
+		p.State = Starting
+	case !known(p.Ps) || !known(p.Pd) || p.Ps <= 0 || p.Pd <= 0:
+		p.State = Unknown
+	case w.settle > 0:
+		w.settle--
+		p.State = Changing
+	default:
+		p.State = Steady
+	}
+	return p
+}
+
+// noteIdle keeps the last known pattern of idle ends; a lost window says nothing.
+func (w *Watch) noteIdle(ends [2]window.State) {
+	for e, s := range ends {
+		switch s {
+		case window.Idle:
+			w.idle[e] = true
+		case window.Following, window.Holding, window.NotDelivering:
+			w.idle[e] = false
+		}
+	}
+}
+
+// inferStep names the first load step with the pattern of idle ends. Pockets do not show in the pattern, so steps that
+// differ by a pocket only are one to it. A pattern that no step has gets a negative code of its own.
+func (w *Watch) inferStep() int {
+	for _, s := range w.cfg.Steps {
+		if s.Idle == w.idle {
+			return s.Code
+		}
+	}
+	code := -1
+	if w.idle[0] {
+		code--
+	}
+	if w.idle[1] {
+		code -= 2
+	}
+	return code
+}
+
+// own takes the plateau of the first end that works and knows it.
+func own(p [2]float64, ends [2]window.State) float64 {
+	for e, v := range p {
+		if known(v) && ends[e] != window.Idle {
+			return v
+		}
+	}
+	return math.NaN()
+}
+
+func known(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }
+
+// lead compares a fast mean with a slow one: their difference is 16 turns' worth of a ramp.
+type lead struct {
+	fast, slow float64
+	n          int
+}
+
+func (l *lead) move(v, limit float64) bool {
+	if !known(v) {
+		return false
+	}
+	l.n++
+	// Plain means at first, so that the start is no ramp.
+	l.fast += (v - l.fast) / float64(min(l.n, 4))
+	l.slow += (v - l.slow) / float64(min(l.n, 20))
+	return math.Abs(l.fast-l.slow) > limit*math.Abs(l.slow)
+}

@@ -1,0 +1,125 @@
+package duty
+
+import (
+	"math"
+	"strconv"
+	"strings"
+	"testing"
+
+	"lapwing/internal/window"
+)
+
+var nan = math.NaN()
+
+func steadyInput(turn int64) Input {
+	return Input{Turn: turn, Valid: true, RPM: 750, ProcessKnown: true, Step: 1, Ps: 20e5, Pd: 50e5,
+		OwnPs: [2]float64{19.8e5, 19.7e5}, OwnPd: [2]float64{50.4e5, 50.3e5}, Ends: [2]window.State{window.Following, window.Following}}
+}
+
+var stateLetter = map[State]byte{Unknown: '?', Stopped: 'O', Starting: 'S', Changing: 'C', Steady: '='}
+
+// squeeze writes runs as letter and length.
+func squeeze(s []byte) string {
+	var b strings.Builder
+	for i := 0; i < len(s); {
+		j := i
+		for j < len(s) && s[j] == s[i] {
+			j++
+		}
+		b.WriteByte(s[i])
+		if j-i > 1 {
+			b.WriteString(strconv.Itoa(j - i))
+		}
+		i = j
+	}
+	return b.String()
+}
+
+func TestWatchScenarios(t *testing.T) {
+	for name, c := range map[string]struct {
+		turns int
+		do    func(i int, in *Input)
+		stop  map[int]bool
+		want  string
+	}{
+		"a running machine warms up quickly":     {40, func(int, *Input) {}, nil, "S10=30"},
+		"after a stop it starts slowly":          {120, func(int, *Input) {}, map[int]bool{20: true}, "S10=10OS60=39"},
+		"a load step settles":                    {100, func(i int, in *Input) { in.Step = 1 + i/50 }, nil, "S10=40C30=20"},
+		"an invalid turn is unknown and no more": {40, func(i int, in *Input) { in.Valid = i != 20 }, nil, "S10=10?=19"},
+		"speed outside its range is starting": {60, func(i int, in *Input) {
+			if i >= 20 && i < 30 {
+				in.RPM = 300
+			}
+		}, nil, "S30C30"}, // the ramp back keeps it changing
+		"slow ramp is steady": {200, func(i int, in *Input) { in.Pd = 50e5 * (1 + 0.0004*float64(i)) }, nil, "S10=190"},
+		"fast ramp is changing": {100, func(i int, in *Input) {
+			if i >= 40 {
+				in.Pd = 50e5 * (1 + 0.004*float64(i-40))
+			}
+		}, nil, "S10=33C57"},
+		"no pressures anywhere": {30, func(i int, in *Input) {
+			in.Ps, in.Pd, in.OwnPs, in.OwnPd = nan, nan, [2]float64{nan, nan}, [2]float64{nan, nan}
+		}, nil, "S10?20"},
+		"a lasting hole begins anew": {40, func(i int, in *Input) {
+			if i >= 20 {
+				in.Turn += 500
+			}
+		}, nil, "S10=10S10=10"},
+		"lost process values change nothing by themselves": {60, func(i int, in *Input) { in.ProcessKnown = i < 30 }, nil, "S10=50"},
+	} {
+		t.Run(name, func(t *testing.T) {
+			w := NewWatch(WatchConfig{MinRPM: 500, MaxRPM: 1000, Steps: []Step{{Code: 1}, {Code: 2, Idle: [2]bool{false, true}}}})
+			var got []byte
+			for i := range c.turns {
+				if c.stop[i] {
+					got = append(got, stateLetter[w.Stopped().State])
+					continue
+				}
+				in := steadyInput(int64(i))
+				c.do(i, &in)
+				got = append(got, stateLetter[w.Classify(in).State])
+			}
+			if name == "fast ramp is changing" { // where it begins depends on the filter; that it begins within 10 turns and lasts is the point
+				k := strings.IndexByte(string(got[10:]), 'C') + 10
+				if k < 40 || k > 50 || strings.ContainsAny(string(got[k:]), "=?SO") {
+					t.Errorf("got %s", squeeze(got))
+				}
+				return
+			}
+			if name == "speed outside its range is starting" {
+				if s := string(got); strings.ContainsAny(s[20:30], "=C") || s[30] == '=' {
+					t.Errorf("got %s", squeeze(got))
+				}
+				return
+			}
+			if s := squeeze(got); s != c.want {
+				t.Errorf("got %s, want %s", s, c.want)
+			}
+		})
+	}
+}
+
+func TestStepIsInferredFromIdleEnds(t *testing.T) {
+	w := NewWatch(WatchConfig{Steps: []Step{{Code: 3}, {Code: 7, Idle: [2]bool{false, true}}}})
+	in := steadyInput(0)
+	in.ProcessKnown = false
+	if p := w.Classify(in); p.Step != 3 || !p.Inferred || p.Ps != 19.8e5 {
+		t.Errorf("both ends work: %+v", p)
+	}
+	in.Turn, in.Ends[1] = 1, window.Idle
+	if p := w.Classify(in); p.Step != 7 {
+		t.Errorf("crank end idle: step %d, want 7", p.Step)
+	}
+	in.Turn, in.Ends[1] = 2, window.Lost // says nothing: stays
+	if p := w.Classify(in); p.Step != 7 {
+		t.Errorf("lost window: step %d, want 7", p.Step)
+	}
+	in.Turn, in.Ends[0], in.Ends[1] = 3, window.Idle, window.Following
+	if p := w.Classify(in); p.Step >= 0 || p.Ps != 19.7e5 {
+		t.Errorf("a pattern no step has: step %d, Ps %g", p.Step, p.Ps)
+	}
+	in.Turn, in.ProcessKnown, in.Step = 4, true, 3
+	if p := w.Classify(in); p.Step != 3 || p.Inferred || p.OwnStep >= 0 {
+		t.Errorf("with process values: %+v", p)
+	}
+}
