@@ -16,8 +16,8 @@ import (
 	"strings"
 )
 
-// Fraction is one component's share of a gas. Name is as in GERG-2008 ("methane", "carbon_dioxide", "n_butane"; blanks and
-// hyphens do as well) or the usual formula ("CH4", "CO2", "nC4"). X is a mole fraction.
+// Fraction is one component's share of a gas. Name is as in GERG-2008 ("methane", "carbon_dioxide", "n_butane"; blanks
+// and hyphens do as well) or the usual formula ("CH4", "CO2", "nC4"). X is a mole fraction.
 type Fraction struct {
 	Name string
 	X    float64
@@ -32,8 +32,8 @@ type Mixture struct {
 // tolerance is how far the sum of the fractions may be from one.
 const tolerance = 0.005
 
-// New makes a mixture. Fractions that sum to 1 within 0.5 % are normalised, and Note says so; anything further off, negative, unknown
-// or named twice is refused.
+// New makes a mixture. Fractions that sum to 1 within 0.5 % are normalised, and Note says so; anything further off,
+// negative, unknown or named twice is refused.
 func New(composition []Fraction) (*Mixture, error) {
 	co, err := load()
 	if err != nil {
@@ -116,6 +116,7 @@ func (c *coefficients) find(name string) int {
 var formulae = [nComponents]string{
 	"ch4 c1", "n2", "co2", "c2h6 c2", "c3h8 c3",
 	"ic4h10 ic4", "nc4h10 nc4 c4h10 butane", "ic5h12 ic5", "nc5h12 nc5 c5h12 pentane", "nc6h14 nc6 c6h14 c6 hexane",
-	"nc7h16 nc7 c7h16 c7 heptane", "nc8h18 nc8 c8h18 c8 octane", "nc9h20 nc9 c9h20 c9 nonane", "nc10h22 nc10 c10h22 c10 decane", "h2",
+	"nc7h16 nc7 c7h16 c7 heptane", "nc8h18 nc8 c8h18 c8 octane", "nc9h20 nc9 c9h20 c9 nonane",
+	"nc10h22 nc10 c10h22 c10 decane", "h2",
 	"o2", "co", "h2o", "h2s hydrogensulphide", "he", "ar",
 }

@@ -10,8 +10,8 @@ type named struct {
 	composition []Fraction
 }
 
-// gases are the gases that can be called by name. The compositions of the mixtures are examples made for this project; a
-// machine's own analysis is always better.
+// gases are the gases that can be called by name. The compositions of the mixtures are examples made for this
+// project; a machine's own analysis is always better.
 func gases() []named {
 	one := func(name string) []Fraction { return []Fraction{{name, 1}} }
 	return []named{

@@ -46,9 +46,9 @@ const (
 )
 
 // condenses reports whether a liquid of some composition would be more stable than the gas at this density:
-// Michelsen's tangent plane test by successive substitution, started from the liquid of the gas's own composition
-// and from the nearly pure liquids of its least volatile components. A search that does not come to rest proves nothing and counts as
-// no.
+// Michelsen's tangent plane test (Fluid Phase Equilib. 9 (1982) 1, from memory) by successive substitution, started
+// from the liquid of the gas's own composition and from the nearly pure liquids of its least volatile components. A
+// search that does not come to rest proves nothing and counts as no.
 func (s *isotherm) condenses(p, density float64) bool {
 	lnPhi := s.lnFugacity(density)
 	var goal [nComponents]float64
@@ -93,8 +93,8 @@ func (s *isotherm) condenses(p, density float64) bool {
 	return false
 }
 
-// attraction is a rough −ln(saturation pressure / critical pressure) of a pure component (the corresponding-states slope 5.37 of
-// simple fluids); it only orders the trials.
+// attraction is a rough −ln(saturation pressure / critical pressure) of a pure component (the corresponding-states
+// slope 5.37 of simple fluids); it only orders the trials.
 func (s *isotherm) attraction(i int) float64 { return 5.37 * (s.co.comp[i].tc/s.t - 1) }
 
 // trial follows one trial phase from composition y and reports whether it ends below the tangent plane.

@@ -100,7 +100,7 @@ func (s *sim) countLeaks(deg float64, p, m [2]float64, dt float64) {
 
 func (s *sim) run() {
 	if s.stepDeg == 0 { // half of it changes no area by more than 0.01 %
-		s.stepDeg = .25
+		s.stepDeg = .5
 	}
 	if s.revolutions == 0 {
 		s.revolutions = 3
