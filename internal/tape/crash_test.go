@@ -1,0 +1,3 @@
+package tape
+
+func runChild() bool { return false }
