@@ -3,6 +3,7 @@ package model
 import (
 	"fmt"
 
+	"lapwing/internal/acq"
 	"lapwing/internal/crank"
 	"lapwing/internal/gas"
 	"lapwing/internal/skid"
@@ -56,3 +57,10 @@ func demo() *skid.Skid {
 }
 
 func methane() gas.Fixed { return gas.Fixed{M: 0.01604, Zs: 0.985, Zd: 0.985, KV: 1.29, KT: 1.27} }
+
+// fill runs a machine for some seconds and gives the last block.
+func fill(m *Machine, seconds float64) *acq.Block {
+	var b acq.Block
+	m.Fill(&b, int(seconds*m.rate))
+	return &b
+}
