@@ -141,7 +141,7 @@ func (o *object) pressure(stem string, b bounds, needed bool, atm float64) float
 		return v*1e5 + atm
 	case o.has(abs):
 		return o.num(abs, b, false) * 1e5
-	case needed:
+	case needed && !o.meant[abs]:
 		o.r.problem(o.at, join2(o.path, abs), "write `"+abs+": …` or `"+gauge+": …`", "missing")
 	}
 	return math.NaN()
@@ -150,7 +150,7 @@ func (o *object) pressure(stem string, b bounds, needed bool, atm float64) float
 func (r *reader) phase(o *object, sk *Skid) {
 	p := &sk.Phase
 	p.MarksPerTurn, p.AutoLevel = 1, true
-	if !o.has("phase") {
+	if !o.has("phase") && !o.meant["phase"] {
 		o.r.problem(o.at, "phase", "write `phase:` with `channel: …` below it; without a mark on the shaft there is no crank angle and nothing can be watched", "the phase reference is missing")
 		return
 	}

@@ -31,6 +31,7 @@ func (r *reader) channels(o *object, sk *Skid) {
 	}
 	const fix = "list the inputs in use: - {id: …, input: 0, kind: phase | pressure | acceleration, range_v: …}"
 	names, inputs := map[string]int{}, map[int]int{}
+	sk.channelAt = map[string]string{}
 	for i, n := range o.list("channels", 1, 256, true, fix) {
 		path := fmt.Sprintf("channels[%d]", i)
 		s := r.object(n, path, known...)
@@ -44,6 +45,7 @@ func (r *reader) channels(o *object, sk *Skid) {
 				s.wrong("id", "give each channel its own name", "channels[%d] is already called %s", j, c.ID)
 			}
 			names[c.ID] = i
+			sk.channelAt[c.ID] = path
 		}
 		if c.Input, ok = s.whole("input", 0, 255, true); ok {
 			if j, double := inputs[c.Input]; double {
@@ -129,7 +131,7 @@ func (r *reader) pressureScale(s *object, c *Channel, atm float64) {
 	b := bounds{-2, 5000}
 	min := "valid_min_bar_abs"
 	if c.Min = s.pressure("valid_min", b, false, atm); math.IsNaN(c.Min) && !s.has(min) && !s.has("valid_min_bar_gauge") {
-		c.Min = s.numOr(min, b, -0.005*full/1e5) * 1e5 // half a per cent of full scale under vacuum is still drift
+		c.Min = s.numOr(min, b, 0) * 1e5
 	}
 	max := "valid_max_bar_abs"
 	if c.Max = s.pressure("valid_max", b, false, atm); math.IsNaN(c.Max) && !s.has(max) && !s.has("valid_max_bar_gauge") {
@@ -197,15 +199,16 @@ func (r *reader) twoPoints(s *object, c *Channel, atm float64) bool {
 	return true
 }
 
-// refer checks that a channel named elsewhere exists and is of the right kind.
-func (r *reader) refer(sk *Skid, path string, n *yaml.Node, id string, kind Kind) {
+// refer checks that a channel named elsewhere exists and is of the right kind, and says whether it may be used.
+func (r *reader) refer(sk *Skid, path string, n *yaml.Node, id string, kind Kind) bool {
 	var ids []string
 	for _, c := range sk.Channels {
 		if c.ID == id {
 			if c.Kind != "" && c.Kind != kind {
 				r.problem(place(n), path, "name a channel of kind "+string(kind), "channel %s is of kind %s", id, c.Kind)
+				return false
 			}
-			return
+			return true
 		}
 		ids = append(ids, c.ID)
 	}
@@ -216,6 +219,7 @@ func (r *reader) refer(sk *Skid, path string, n *yaml.Node, id string, kind Kind
 		fix = "known: " + list(ids)
 	}
 	r.problem(place(n), path, fix, "there is no channel %s", id)
+	return false
 }
 
 // channelUse refuses one transducer on two places.

@@ -6,6 +6,7 @@ import (
 	"net"
 	"net/url"
 	"regexp"
+	"slices"
 	"strconv"
 	"strings"
 	"time"
@@ -94,7 +95,7 @@ func (r *reader) limits(o *object, sk *Skid) {
 		l := Limit{High: s.num("high", any, false), Low: s.num("low", any, false)}
 		var ok bool
 		if l.Subject, ok = s.text("of", nil, "a throw or an end: t1 or t1.he", true); ok && !sk.isSubject(l.Subject) {
-			s.wrong("of", "write a throw or an end that works: "+list(sk.subjects()), "there is no %q", clip(l.Subject))
+			s.wrong("of", "write a throw, an end that works ("+list(sk.subjects())+") or a valve group of one", "there is no %q", clip(l.Subject))
 		}
 		l.Measure, _ = s.text("measure", measureName, "the name of a measure", true)
 		if !s.has("high") && !s.has("low") {
@@ -126,13 +127,50 @@ func (sk *Skid) subjects() []string {
 	return all
 }
 
+// isSubject accepts a throw, an end that works, or something below one of them (t1.he.suction): whether a measure
+// exists there is known to CheckLimits only.
 func (sk *Skid) isSubject(name string) bool {
 	for _, s := range sk.subjects() {
-		if s == name {
-			return true
+		if name == s || strings.HasPrefix(name, s+".") {
+			return !sk.idleEnd(name)
 		}
 	}
 	return false
+}
+
+// idleEnd reports whether a name lies at an end that does not work.
+func (sk *Skid) idleEnd(name string) bool {
+	for t := range sk.Throws {
+		for e := range endIDs {
+			n := sk.EndName(t, e)
+			if !sk.Throws[t].Ends[e].Works && (name == n || strings.HasPrefix(name, n+".")) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// CheckLimits checks the limits against the measures there are: names gives those of one subject (nil: no such
+// subject). The error is the joined Problems. It stands apart from Parse because the measures are made from the Skid.
+func (sk *Skid) CheckLimits(names func(subject string) []string) error {
+	r := &reader{file: sk.File}
+	for i, l := range sk.Limits {
+		path := fmt.Sprintf("limits[%d]", i)
+		known := names(l.Subject)
+		if len(known) == 0 {
+			r.problem(sk.at[path+".of"], path+".of", "subjects are "+list(sk.subjects())+" and what lies below them", "nothing is measured at %q", l.Subject)
+			continue
+		}
+		if !slices.Contains(known, l.Measure) {
+			fix := "known here: " + list(known)
+			if near := nearest(l.Measure, known); near != "" {
+				fix = "did you mean " + near + "?"
+			}
+			r.problem(sk.at[path+".measure"], path+".measure", fix, "%s has no measure %s", l.Subject, l.Measure)
+		}
+	}
+	return join(r.problems)
 }
 
 func (r *reader) tape(o *object, t *Tape) {

@@ -5,6 +5,8 @@ import (
 	"math"
 	"strings"
 
+	"go.yaml.in/yaml/v3"
+
 	"lapwing/internal/gas"
 )
 
@@ -59,19 +61,16 @@ func (r *reader) named(s *object, g *Gas) {
 func (r *reader) composition(s *object, g *Gas) {
 	const fix = "list the components: methane: 96.5"
 	keys, values := s.entries("mole_percent", true, fix)
+	if len(keys) > 30 {
+		s.wrong("mole_percent", fix, "%d components; 21 are known", len(keys))
+		return
+	}
 	var all []gas.Fraction
-	sum, good := 0.0, len(keys) > 0
+	before := len(r.problems)
+	r.components(s, keys)
+	sum, good := 0.0, len(keys) > 0 && len(r.problems) == before
 	for i, k := range keys {
 		path := join2(join2(s.path, "mole_percent"), clip(k.Value))
-		if len(k.Value) > 40 || i >= 40 {
-			r.problem(place(k), path, fix, "not a component of a gas")
-			return
-		}
-		if _, err := gas.New([]gas.Fraction{{Name: k.Value, X: 1}}); err != nil {
-			r.problem(place(k), path, "a component that is not known cannot be computed; add a trace to the one most like it", "%s", strings.TrimPrefix(err.Error(), "gas: "))
-			good = false
-			continue
-		}
 		v, ok := r.number(values[i], path, unit{name: "mole per cent"})
 		if !ok {
 			good = false
@@ -106,6 +105,27 @@ func (r *reader) composition(s *object, g *Gas) {
 	g.Mixture = m
 	if g.Name == "" {
 		g.Name = "a mixture"
+	}
+}
+
+// components notes every component that is not known. All at once is the quick way; only when that fails each is tried.
+func (r *reader) components(s *object, keys []*yaml.Node) {
+	var all []gas.Fraction
+	for _, k := range keys {
+		all = append(all, gas.Fraction{Name: k.Value, X: 1 / float64(len(keys))})
+	}
+	if _, err := gas.New(all); err == nil {
+		return
+	}
+	for _, k := range keys {
+		if len(k.Value) > 40 {
+			r.problem(place(k), s.path+".mole_percent", "write the name or formula of a component", "%q is no component of a gas", clip(k.Value))
+			continue
+		}
+		if _, err := gas.New([]gas.Fraction{{Name: k.Value, X: 1}}); err != nil {
+			r.problem(place(k), join2(join2(s.path, "mole_percent"), clip(k.Value)),
+				"a component that is not known cannot be computed; add a trace to the one most like it", "%s", strings.TrimPrefix(err.Error(), "gas: "))
+		}
 	}
 }
 

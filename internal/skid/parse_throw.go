@@ -23,7 +23,7 @@ func (r *reader) throws(o *object, sk *Skid) {
 	for i, n := range o.list("throws", 1, 12, true, fix) {
 		path := fmt.Sprintf("throws[%d]", i)
 		s := r.object(n, path, "id", "stage", "dead_centre_deg", "bore_mm", "stroke_mm", "rod_length_mm", "piston_rod_mm",
-			"tail_rod_mm", "mass_piston_kg", "mass_crosshead_kg", "accelerometers", "head_end", "crank_end")
+			"tail_rod_mm", "mass_piston_kg", "mass_crosshead_kg", "accelerometers", "head_end", "crank_end", "blind_end")
 		if s == nil {
 			continue
 		}
@@ -44,12 +44,18 @@ func (r *reader) throws(o *object, sk *Skid) {
 			p := fmt.Sprintf("%s.accelerometers[%d]", path, j)
 			if id, ok := r.word(a, p, inputID, "a channel id"); ok {
 				r.at[p] = place(a)
-				r.refer(sk, p, a, id, Acceleration)
+				if !r.refer(sk, p, a, id, Acceleration) {
+					id = "" // keeps the place in the list
+				}
 				t.Accel = append(t.Accel, id)
 			}
 		}
 		for e := range t.Ends {
 			r.end(s, sk, &t, e)
+		}
+		t.BlindAtSuction = s.choice("blind_end", "atmosphere", "atmosphere", "suction") == "suction"
+		if s.has("blind_end") && s.has("head_end") && s.has("crank_end") {
+			s.wrong("blind_end", "delete it", "both ends work, so there is no blind end")
 		}
 		if !s.has("head_end") && !s.has("crank_end") {
 			r.problem(s.at, path, "write head_end: and, for a double-acting cylinder, crank_end:", "neither end works")
@@ -105,8 +111,9 @@ func (r *reader) end(s *object, sk *Skid, t *Throw, e int) {
 		t.Cylinder.Clearance[e] = o.num("clearance_percent", bounds{1, 300}, true) / 100
 	}
 	if id, ok := o.text("pressure", inputID, "the id of this end's pressure channel", false); ok {
-		r.refer(sk, join2(o.path, "pressure"), o.fields["pressure"], id, Pressure)
-		end.Pressure = id
+		if r.refer(sk, join2(o.path, "pressure"), o.fields["pressure"], id, Pressure) {
+			end.Pressure = id
+		}
 	}
 	end.Suction = r.group(o, "suction", t.ID+"."+endIDs[e]+".s", t.Cylinder.Area(e))
 	end.Discharge = r.group(o, "discharge", t.ID+"."+endIDs[e]+".d", t.Cylinder.Area(e))

@@ -32,8 +32,9 @@ type Skid struct {
 	Uplink    Uplink
 	Panel     Panel
 
-	at        map[string]Place // where each path of the file stands; for messages after parsing
-	defaulted []string         // settings that the file left out, "path = value", for the check
+	at        map[string]Place  // where each path of the file stands; for messages after parsing
+	channelAt map[string]string // path of each channel by id: Channels is sorted, the file is not
+	defaulted []string          // settings that the file left out, "path = value", for the check
 }
 
 // Machine is what is common to all throws.
@@ -79,6 +80,9 @@ type Throw struct {
 	Cylinder   crank.Cylinder // with no pocket open
 	Ends       [2]End         // head end, crank end
 	Accel      []string       // accelerometer channel ids
+
+	// BlindAtSuction: the end that does not work stands at suction pressure, not at the atmosphere.
+	BlindAtSuction bool
 }
 
 // End is one working side of a cylinder. A single-acting cylinder has Works false on its other end.
@@ -146,10 +150,11 @@ type Detection struct {
 	LearnTurns int        // turns of the declared-healthy run that a fresh baseline wants, default 600
 }
 
-// Limit is an absolute limit on one measure, beside the findings: throw or end name, measure name, bounds.
+// Limit is an absolute limit on one measure, beside the findings: subject, measure name, and bounds in the unit that
+// stands in the measure's name.
 type Limit struct {
-	Subject           string  // e.g. t1, t1.he
-	Measure           string  // a name of measure.Definitions
+	Subject           string  // e.g. t1, t1.he, t1.he.suction
+	Measure           string  // a name of the measure layout, checked by CheckLimits
 	High              float64 // NaN: none
 	Low               float64 // NaN: none
 	Deadband          float64

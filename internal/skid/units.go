@@ -108,8 +108,9 @@ func (u unit) from(b float64) float64 { return (b - u.offset) / u.factor }
 // sameDim reports whether a number can be carried from one unit to the other without knowing more.
 func sameDim(a, b unit) bool { return a.dim != "" && a.dim == b.dim }
 
-// advise says what to write instead of an unknown key, given the keys that would be known there.
-func advise(key, value string, known []string) string {
+// advise says what to write instead of an unknown key, given the keys that would be known there, and names the keys
+// that were probably meant.
+func advise(key, value string, known []string) (fix string, meant []string) {
 	stem, u := split(key)
 	var same []string
 	for _, k := range known {
@@ -119,7 +120,7 @@ func advise(key, value string, known []string) string {
 	}
 	if len(same) > 0 {
 		if len(same) == 2 && (u.dim == "" || u.dim == "pressure?") {
-			return fmt.Sprintf("say whether the pressure is absolute or gauge: write %s or %s", same[0], same[1])
+			return fmt.Sprintf("say whether the pressure is absolute or gauge: write %s or %s", same[0], same[1]), same
 		}
 		want := same[0]
 		_, wu := split(want)
@@ -129,14 +130,14 @@ func advise(key, value string, known []string) string {
 			}
 		}
 		if v, err := strconv.ParseFloat(value, 64); err == nil && sameDim(u, wu) {
-			return fmt.Sprintf("write %s: %s (%s %s in %s)", want, short(wu.from(u.base(v))), value, u.name, wu.name)
+			return fmt.Sprintf("write %s: %s (%s %s in %s)", want, short(wu.from(u.base(v))), clip(value), u.name, wu.name), same
 		}
-		return fmt.Sprintf("write %s, in %s", want, wu.name)
+		return fmt.Sprintf("write %s, in %s", want, wu.name), same
 	}
 	if near := nearest(key, known); near != "" {
-		return "did you mean " + near + "?"
+		return "did you mean " + near + "?", []string{near}
 	}
-	return "known here: " + strings.Join(known, ", ")
+	return "known here: " + strings.Join(known, ", "), nil
 }
 
 // short writes a number with the digits a person would.
@@ -144,7 +145,7 @@ func short(v float64) string { return strconv.FormatFloat(v, 'g', 6, 64) }
 
 // nearest gives the known word closest to w, or "" when none is close: at most a third of its letters changed.
 func nearest(w string, known []string) string {
-	best, at := len(w)/3+1, ""
+	best, at := (len(w)+1)/3+1, ""
 	if best > 5 {
 		best = 5
 	}

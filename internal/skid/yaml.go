@@ -122,6 +122,7 @@ type object struct {
 	known  []string
 	fields map[string]*yaml.Node
 	keys   map[string]Place
+	meant  map[string]bool // keys that an unknown one was probably meant to be: not reported missing as well
 }
 
 // object opens a mapping with a fixed set of keys; unknown and double keys are noted. A node that is no mapping is
@@ -131,7 +132,7 @@ func (r *reader) object(n *yaml.Node, path string, known ...string) *object {
 		r.problem(place(n), path, "write keys below it: "+strings.Join(known, ", "), "%s where settings belong", what(n))
 		return nil
 	}
-	o := &object{r: r, path: path, at: place(n), known: known, fields: map[string]*yaml.Node{}, keys: map[string]Place{}}
+	o := &object{r: r, path: path, at: place(n), known: known, fields: map[string]*yaml.Node{}, keys: map[string]Place{}, meant: map[string]bool{}}
 	r.at[path] = o.at
 	for i := 0; i+1 < len(n.Content); i += 2 {
 		k, v := n.Content[i], n.Content[i+1]
@@ -139,7 +140,11 @@ func (r *reader) object(n *yaml.Node, path string, known ...string) *object {
 		case k.Kind != yaml.ScalarNode:
 			r.problem(place(k), path, "write one word as a key", "%s cannot be a key", what(k))
 		case !o.knows(k.Value):
-			r.problem(place(k), join2(path, clip(k.Value)), advise(k.Value, v.Value, known), "unknown key")
+			fix, meant := advise(k.Value, v.Value, known)
+			r.problem(place(k), join2(path, clip(k.Value)), fix, "unknown key")
+			for _, m := range meant {
+				o.meant[m] = true
+			}
 		case o.fields[k.Value] != nil:
 			first := o.keys[k.Value]
 			r.problem(place(k), join2(path, k.Value), fmt.Sprintf("keep one; the first is on line %d", first.Line), "given twice")
@@ -207,7 +212,7 @@ func (o *object) node(key string, needed bool, fix string) *yaml.Node {
 	}
 	n := o.fields[key]
 	if n == nil {
-		if needed {
+		if needed && !o.meant[key] {
 			o.wrong(key, fix, "missing")
 		}
 		return nil

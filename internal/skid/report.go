@@ -1,0 +1,405 @@
+package skid
+
+import (
+	"bytes"
+	"fmt"
+	"io"
+	"math"
+	"strings"
+	"text/tabwriter"
+	"unicode/utf8"
+
+	"lapwing/internal/crank"
+)
+
+// Report writes what the machine was understood to be, for `lapwing check`: geometry, gas, expected angles and rod
+// loads of every load step, channels, edges, the defaults in use, and every doubt. rate is the sampling rate in
+// samples per second when it is known from elsewhere; 0 takes the file's. The error is the writer's.
+func Report(w io.Writer, sk *Skid, rate float64) error {
+	if rate > 0 {
+		other := *sk
+		other.Rate = rate
+		sk = &other
+	}
+	var b bytes.Buffer
+	p := &page{&b}
+	p.head(sk)
+	p.gas(sk)
+	p.cylinders(sk)
+	p.valves(sk)
+	p.steps(sk)
+	p.sampling(sk)
+	p.channels(sk)
+	p.edges(sk)
+	p.defaults(sk)
+	p.doubts(sk)
+	if _, err := w.Write(b.Bytes()); err != nil {
+		return fmt.Errorf("skid: report: %w", err)
+	}
+	return nil
+}
+
+// page writes aligned text.
+type page struct{ w io.Writer }
+
+func (p *page) title(format string, args ...any) {
+	fmt.Fprintf(p.w, "\n"+format+"\n", args...)
+}
+
+// table aligns rows of cells that are parted by tabs.
+func (p *page) table(rows []string) {
+	var b bytes.Buffer
+	t := tabwriter.NewWriter(&b, 0, 0, 2, ' ', 0)
+	for _, r := range rows {
+		fmt.Fprintln(t, "  "+r)
+	}
+	t.Flush() // into memory: cannot fail
+	for _, line := range strings.Split(strings.TrimRight(b.String(), "\n"), "\n") {
+		fmt.Fprintln(p.w, strings.TrimRight(line, " "))
+	}
+}
+
+// wrapped writes text in lines of at most width characters, indent included.
+func (p *page) wrapped(text, indent string, width int) {
+	line := indent
+	for _, word := range strings.Fields(text) {
+		if line != indent && utf8.RuneCountInString(line)+1+utf8.RuneCountInString(word) > width {
+			fmt.Fprintln(p.w, line)
+			line = indent
+		}
+		if line != indent {
+			line += " "
+		}
+		line += word
+	}
+	fmt.Fprintln(p.w, line)
+}
+
+// row joins cells.
+func row(cells ...string) string { return strings.Join(cells, "\t") }
+
+func f(format string, args ...any) string { return fmt.Sprintf(format, args...) }
+
+func bar(pa float64) string {
+	if math.IsNaN(pa) {
+		return "not known"
+	}
+	return f("%.4g bar", pa/1e5)
+}
+
+func celsius(k float64) string {
+	if math.IsNaN(k) {
+		return "not known"
+	}
+	return f("%.0f °C", k-273.15)
+}
+
+func deg(v float64) string {
+	if math.IsNaN(v) {
+		return "–"
+	}
+	return f("%.1f°", v)
+}
+
+// known writes a number that is 0 when it is not known.
+func known(v float64, format string) string {
+	if v == 0 || math.IsNaN(v) {
+		return "not stated"
+	}
+	return f(format, v)
+}
+
+func (p *page) head(sk *Skid) {
+	m, ph := sk.Machine, sk.Phase
+	fmt.Fprintf(p.w, "%s: %s\n", sk.ID, sk.Name)
+	edge := "rising"
+	if ph.Falling {
+		edge = "falling"
+	}
+	threshold := "threshold found from the signal"
+	if !ph.AutoLevel {
+		threshold = f("threshold %s V", short(ph.Threshold))
+	}
+	rows := []string{}
+	if sk.Site != "" {
+		rows = append(rows, row("site", sk.Site))
+	}
+	rows = append(rows,
+		row("file", f("%s, sha256 %.12s…", sk.File, sk.Hash)),
+		row("speed", f("%s rpm rated, %s to %s", short(m.RatedRPM), short(m.MinRPM), short(m.MaxRPM))),
+		row("atmosphere", bar(m.Atmosphere)+" absolute"),
+		row("rated rod load", f("compression %s, tension %s", known(m.RodLoadCompression/1e3, "%.4g kN"), known(m.RodLoadTension/1e3, "%.4g kN"))),
+		row("shaft mark", f("channel %s, %s edge, %s", ph.Channel, edge, threshold)),
+	)
+	for _, h := range ph.Ripple {
+		rows = append(rows, row("ripple", f("order %d: %s %% at %s°", h.Order, short(h.Amp*100), short(h.Phase))))
+	}
+	rows = append(rows, row("angle uncertainty", known(ph.Uncertainty, "%.2g° standard")))
+	p.table(rows)
+}
+
+func (p *page) gas(sk *Skid) {
+	p.title("Gas: %s", sk.Gas.Name)
+	var rows []string
+	if m := sk.Gas.Mixture; m != nil {
+		var parts []string
+		for _, c := range m.Composition() {
+			parts = append(parts, f("%s %.4g %%", c.Name, c.X*100))
+		}
+		rows = append(rows, row("composition", strings.Join(parts, ", ")), row("molar mass", f("%.2f g/mol", m.M()*1e3)))
+	} else if g := sk.Gas.Fixed; g != nil {
+		rows = append(rows, row("given by numbers", f("molar mass %.2f g/mol", g.M*1e3)))
+	}
+	for n := 1; n <= sk.Stages(); n++ {
+		l, g, err := sk.duty(n)
+		if err != nil {
+			rows = append(rows, row(f("stage %d", n), err.Error()))
+			continue
+		}
+		rows = append(rows,
+			row(f("stage %d", n), f("%s %s → %s absolute, ratio %.2f", bar(l.Ps), celsius(l.Ts), bar(l.Pd), l.Pd/l.Ps)),
+			row("", f("Z %.4f suction, %.4f discharge; volume exponent %.4f, temperature exponent %.4f", g.Zs, g.Zd, g.KV, g.KT)),
+			row("", f("loss-free discharge temperature %s", celsius(g.T2s))))
+	}
+	p.table(rows)
+}
+
+func (p *page) cylinders(sk *Skid) {
+	p.title("Cylinders (all pockets closed)")
+	rows := []string{row("throw", "stage", "dead centre", "bore", "stroke", "rods", "conn. rod / radius", "piston speed", "masses")}
+	for _, t := range sk.Throws {
+		c := t.Cylinder
+		rods := f("%s mm", short(c.PistonRod*1e3))
+		if c.TailRod > 0 {
+			rods += f(" and %s mm tail", short(c.TailRod*1e3))
+		}
+		rows = append(rows, row(t.ID, f("%d", t.Stage), f("%s° after the mark", short(t.DeadCentre)),
+			f("%s mm", short(c.Bore*1e3)), f("%s mm", short(c.Stroke*1e3)), rods, f("%.2f", c.ConRod/c.Radius()),
+			f("%.2f m/s", c.MeanPistonSpeed(sk.Machine.RatedRPM)),
+			f("%s + %s", known(c.MassPiston, "%.4g kg"), known(c.MassCrosshead, "%.4g kg"))))
+	}
+	p.table(rows)
+	fmt.Fprintln(p.w)
+	rows = []string{row("end", "piston area", "swept", "clearance", "displacement at rated speed", "pressure channel")}
+	for i, t := range sk.Throws {
+		for e, end := range t.Ends {
+			if !end.Works {
+				at := "at the atmosphere"
+				if t.BlindAtSuction {
+					at = "at suction pressure"
+				}
+				rows = append(rows, row(sk.EndName(i, e), "blind, "+at))
+				continue
+			}
+			c := t.Cylinder
+			ch := end.Pressure
+			if ch == "" {
+				ch = "none"
+			}
+			rows = append(rows, row(sk.EndName(i, e), f("%.2f cm²", c.Area(e)*1e4), f("%.4g l", c.Swept(e)*1e3),
+				f("%.4g l (%.4g %%)", c.ClearanceVolume(e)*1e3, c.Clearance[e]*100),
+				f("%.4g m³/h", c.Swept(e)*sk.Machine.RatedRPM*60), ch))
+		}
+	}
+	p.table(rows)
+}
+
+func (p *page) valves(sk *Skid) {
+	p.title("Valves")
+	rows := []string{row("group", "valves", "flow area", "of piston", "lift", "cover temperatures")}
+	for i, t := range sk.Throws {
+		for e, end := range t.Ends {
+			for k, g := range [2][]Valve{end.Suction, end.Discharge} {
+				if len(g) == 0 {
+					continue
+				}
+				var ids, covers []string
+				area := 0.0
+				for _, v := range g {
+					ids = append(ids, v.ID[strings.LastIndexByte(v.ID, '.')+1:])
+					area += v.FlowArea
+					if v.Cover == "" {
+						covers = append(covers, "none")
+					} else {
+						covers = append(covers, v.Cover)
+					}
+				}
+				share := "–"
+				if area > 0 {
+					share = f("%.1f %%", 100*area/t.Cylinder.Area(e))
+				}
+				rows = append(rows, row(sk.EndName(i, e)+"."+[2]string{"suction", "discharge"}[k], strings.Join(ids, " "),
+					known(area*1e4, "%.4g cm²"), share, known(g[0].Lift*1e3, "%.3g mm"), strings.Join(covers, " ")))
+			}
+		}
+	}
+	p.table(rows)
+}
+
+func (p *page) steps(sk *Skid) {
+	p.title("Load steps: the ideal cycle at the stated process values and %s rpm", short(sk.Machine.RatedRPM))
+	fmt.Fprintln(p.w, "  Straight lines, tight valves, no losses: real openings come a little later, real loads differ by the valve losses.")
+	if !sk.Process.Known {
+		fmt.Fprintln(p.w, "  Not computed: the file gives no process values.")
+	}
+	for _, s := range sk.Steps {
+		fmt.Fprintf(p.w, "\n  step %d: %s\n", s.Code, s.Name)
+		ends := []string{row("end", "suction opens", "closes", "discharge opens", "closes", "volumetric efficiency", "indicated", "")}
+		rods := []string{row("throw", "gas load", "pin load", "of rated", "pin reversal", "indicated", "mass flow")}
+		for i := range sk.Throws {
+			l, g, err := sk.duty(sk.Throws[i].Stage)
+			if err != nil {
+				ends = append(ends, row(sk.Throws[i].ID, "not computed: "+err.Error()))
+				continue
+			}
+			it := sk.ideal(i, s, l, g)
+			for e, end := range it.ends {
+				if end.works {
+					ends = append(ends, p.endRow(sk, i, e, s, end))
+				}
+			}
+			rods = append(rods, rodRow(sk, i, it))
+		}
+		p.table(ends)
+		if len(rods) > 1 {
+			p.table(rods)
+		}
+	}
+}
+
+func (p *page) endRow(sk *Skid, i, e int, s Step, end idealEnd) string {
+	name := sk.EndName(i, e)
+	note := ""
+	if v, ok := s.Pocket[name]; ok {
+		note = f("pocket +%.4g %%, clearance %.4g l", v*100, end.clearance*1e3)
+	}
+	if v, ok := s.Late[name]; ok {
+		note = strings.TrimPrefix(note+f(", suction held %s°", short(v)), ", ")
+	}
+	switch {
+	case end.idle:
+		return row(name, "–", "–", "–", "–", "–", "–", strings.TrimSuffix("idle, suction valves held open, "+note, ", "))
+	case !end.delivers():
+		return row(name, "–", "–", "–", "–", "–", "–", strings.TrimSuffix("delivers nothing, the clearance takes back all gas, "+note, ", "))
+	}
+	return row(name, deg(end.suctionOpens), deg(end.suctionCloses), deg(end.dischargeOpens), deg(end.dischargeCloses),
+		f("%.1f %%", 100*end.ve), f("%.1f kW", end.work*sk.Machine.RatedRPM/60/1e3), note)
+}
+
+func rodRow(sk *Skid, i int, it idealThrow) string {
+	m := sk.Machine
+	span := func(r crank.Reversal) string { return f("+%.1f/−%.1f kN", r.MaxCompression/1e3, r.MaxTension/1e3) }
+	rated := "–"
+	if m.RodLoadCompression > 0 && m.RodLoadTension > 0 {
+		rated = f("%.0f/%.0f %%", 100*it.pin.MaxCompression/m.RodLoadCompression, 100*it.pin.MaxTension/m.RodLoadTension)
+	}
+	return row(sk.Throws[i].ID, span(it.gas), span(it.pin), rated, f("%.0f°, %.0f %%", it.pin.Longest, 100*it.pin.Share),
+		f("%.1f kW", it.power/1e3), f("%.0f kg/h", it.flow*3600))
+}
+
+func (p *page) sampling(sk *Skid) {
+	p.title("Sampling")
+	if sk.Rate <= 0 {
+		p.table([]string{"rate not stated: it comes from the source"})
+		return
+	}
+	rows := []string{row("rate", f("%s samples/s per channel", short(sk.Rate)))}
+	m, seen := sk.Machine, map[float64]bool{}
+	for _, rpm := range []float64{m.MinRPM, m.RatedRPM, m.MaxRPM} {
+		if !seen[rpm] {
+			seen[rpm] = true
+			per := sk.Rate / (rpm * 6)
+			rows = append(rows, row(f("at %s rpm", short(rpm)), f("%.1f samples per degree, %.1f per grid step of %s°", per, per*sk.Detection.GridDeg, short(sk.Detection.GridDeg))))
+		}
+	}
+	d := sk.Detection
+	rows = append(rows, row("bands", f("impacts %s to %s Hz, leak noise %s to %s Hz", short(d.ImpactBand[0]), short(d.ImpactBand[1]), short(d.LeakBand[0]), short(d.LeakBand[1]))),
+		row("evidence", f("blocks of %d turns; a baseline wants %d turns", d.BlockTurns, d.LearnTurns)))
+	p.table(rows)
+}
+
+func (p *page) channels(sk *Skid) {
+	p.title("Channels")
+	rows := []string{row("input", "id", "kind", "scale", "at 0 V", "at full scale", "believed", "gauge passage")}
+	for _, c := range sk.Channels {
+		value := func(v float64) string { // v in SI
+			switch c.Kind {
+			case Pressure:
+				return f("%.4g", v/1e5)
+			case Acceleration:
+				return f("%.4g", v/standardGravity)
+			}
+			return f("%.4g", v)
+		}
+		unit, scale, passage := "V", "1 V/V", ""
+		switch c.Kind {
+		case Pressure:
+			unit, scale = "bar abs", f("%.4g mV/bar, 0 bar abs at %.4g V", 1e8/c.Gain, c.ZeroV)
+			passage = known(c.Passage, "%.4g Hz")
+		case Acceleration:
+			unit, scale = "g", f("%.4g mV/g", 1e3*standardGravity/c.Gain)
+		}
+		rows = append(rows, row(f("%d", c.Input), c.ID, string(c.Kind), scale, value(0-c.ZeroV*c.Gain)+" "+unit,
+			f("%s %s at %s V", value((c.VoltsFull-c.ZeroV)*c.Gain), unit, short(c.VoltsFull)),
+			f("%s to %s %s", value(c.Min), value(c.Max), unit), passage))
+	}
+	p.table(rows)
+}
+
+func (p *page) edges(sk *Skid) {
+	p.title("Limits, record and messages")
+	var rows []string
+	for _, l := range sk.Limits {
+		bound := ""
+		if !math.IsNaN(l.High) {
+			bound += " above " + short(l.High)
+		}
+		if !math.IsNaN(l.Low) {
+			bound += " below " + short(l.Low)
+		}
+		rows = append(rows, row("limit", f("%s of %s%s: %s after %s, off %s under it for %s", l.Measure, l.Subject, bound, l.Severity, l.OnDelay, short(l.Deadband), l.OffDelay)))
+	}
+	if len(sk.Limits) == 0 {
+		rows = append(rows, row("limits", "none; findings come from the baseline"))
+	}
+	tape := f("at most %.4g GB and %.4g h", float64(sk.Tape.MaxBytes)/1e9, sk.Tape.MaxAge.Hours())
+	if h := sk.tapeHours(); h > 0 {
+		tape += f("; full after about %.3g h (3 bytes a sample, before packing)", h)
+	}
+	rows = append(rows, row("tape", tape),
+		row("clips", f("%s before to %s after an alarm, %.4g GB in all", sk.Tape.Pre, sk.Tape.Post, float64(sk.Tape.ClipBytes)/1e9)))
+	if u := sk.Uplink; u.Broker != "" {
+		rows = append(rows, row("uplink", f("%s as %s, topics %s/%s/…", u.Broker, u.ClientID, u.Root, sk.ID)),
+			row("", f("features every %s, health every %s", u.FeaturesEvery, u.HealthEvery)))
+	} else {
+		rows = append(rows, row("uplink", "none"))
+	}
+	if sk.Panel.Listen == "" {
+		rows = append(rows, row("page", "none"))
+	} else {
+		rows = append(rows, row("page", "http://"+sk.Panel.Listen))
+	}
+	p.table(rows)
+}
+
+func (p *page) defaults(sk *Skid) {
+	if len(sk.defaulted) == 0 {
+		return
+	}
+	p.title("Left out of the file, so taken")
+	p.table(sk.defaulted)
+}
+
+func (p *page) doubts(sk *Skid) {
+	all := Doubts(sk)
+	if len(all) == 0 {
+		p.title("No doubts.")
+	} else {
+		p.title("Doubts (%d): possible, but odd", len(all))
+	}
+	for _, d := range all {
+		fmt.Fprintf(p.w, "  line %d, %s: %s.\n", d.Line, d.Path, d.Msg)
+		p.wrapped(d.Fix, "      ", 110)
+	}
+	fmt.Fprintln(p.w, "\nMonitoring only: never a substitute for protection. Isolate, depressurise and lock out before touching a transducer,\na valve or a cover; site permits, local codes and licensed practice apply.")
+}
