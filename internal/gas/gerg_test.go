@@ -3,6 +3,7 @@ package gas
 import (
 	"errors"
 	"math"
+	"slices"
 	"testing"
 )
 
@@ -155,6 +156,49 @@ func TestPublishedAGA8Part2(t *testing.T) {
 	}
 	if len(tab.rows) < 44 {
 		t.Errorf("%d rows, want 44", len(tab.rows))
+	}
+}
+
+// TestPublishedAGA8Part1 reads the tables of compressibility factor and speed of sound of the five AGA gases.
+func TestPublishedAGA8Part1(t *testing.T) {
+	tab := readShared(t, "published_aga8_part1_tables_SI.csv")
+	checked := 0
+	for _, row := range tab.rows {
+		if row["model"] != "GERG2008" {
+			continue
+		}
+		iso, d, err := tab.gases[row["gas"]].root(num(t, row, "T_K"), num(t, row, "P_MPa")*1e6)
+		if err != nil {
+			t.Error(err)
+			continue
+		}
+		got := iso.state(d).Z
+		if row["quantity"] != "Z" {
+			got = iso.state(d).W
+		}
+		near(t, row["gas"]+" "+row["quantity"], got, num(t, row, "published"), 2e-6)
+		checked++
+	}
+	if checked < 100 {
+		t.Errorf("only %d values checked", checked)
+	}
+}
+
+// TestPublishedNISTSheet reads states along the saturation boundary, where derivatives are steep. The sheet prints
+// T with three decimals; next to the critical point that, and some outliers of its own, cost more than elsewhere.
+func TestPublishedNISTSheet(t *testing.T) {
+	tab := readShared(t, "published_nist_testdata_subset.csv")
+	var devP []float64
+	for _, row := range tab.rows {
+		m := tab.gases["gas "+row["gas"]]
+		s := m.blend.at(num(t, row, "T_K")).state(num(t, row, "D_mol_per_l") * 1e3)
+		devP = append(devP, math.Abs(s.P/1e6/num(t, row, "P_GERG")-1))
+		near(t, "cv", s.Cv*s.M, num(t, row, "Cv_GERG"), 2e-3)
+	}
+	slices.Sort(devP)
+	t.Logf("%d states, pressure off by %.1e (median), %.1e (worst)", len(devP), devP[len(devP)/2], devP[len(devP)-1])
+	if len(devP) < 150 || devP[len(devP)/2] > 1e-5 {
+		t.Errorf("%d states, median deviation %g", len(devP), devP[len(devP)/2])
 	}
 }
 
