@@ -1,0 +1,59 @@
+package measure
+
+import (
+	"lapwing/internal/crank"
+)
+
+// loadsOf gives the rod loads of a throw and their reversal. An end that does no work by design and has no transducer
+// is taken to be at suction pressure; a working end without one leaves the loads unknown.
+func (m *Measurer) loadsOf(c *throwCtx) {
+	n := c.i1 - c.i0
+	var p [2]crank.Pressure
+	for e := range p {
+		switch {
+		case c.th.P[e] != nil && allPositive(c.th.P[e]):
+			p[e].P = c.th.P[e][c.i0:c.i1]
+		case c.th.P[e] == nil && c.ix.end[e] < 0 && known(c.in.LinePs):
+			p[e].Held = c.in.LinePs
+		case c.th.P[e] == nil && c.ix.end[e] < 0 && known(c.w.Ends[1-e].Ps):
+			p[e].Held = c.w.Ends[1-e].Ps
+		default:
+			m.noLoads(c, whyOtherEnd)
+			return
+		}
+	}
+	g := c.th.Grid
+	if len(c.th.Omega) != g.N {
+		m.noLoads(c, whySpeed)
+		return
+	}
+	err := c.in.Cylinder.RodLoads(&m.loads, p[crank.HE], p[crank.CE], g.At(c.i0), g.Step, n, m.cfg.Atmosphere, c.th.Omega[c.i0:c.i1])
+	if err != nil {
+		m.noLoads(c, whySpeed)
+		return
+	}
+	at := c.ix.throw
+	lo, hi := extremes(m.loads.Pin)
+	c.dst.set(at+tRodMax, hi)
+	c.dst.set(at+tRodMin, lo)
+	lo, hi = extremes(m.loads.Gas)
+	c.dst.set(at+tGasMax, hi)
+	c.dst.set(at+tGasMin, lo)
+	r := crank.Reverse(m.loads.Pin)
+	c.dst.set(at+tReversal, r.Longest)
+	c.dst.set(at+tReversalShare, r.Share)
+}
+
+func (m *Measurer) noLoads(c *throwCtx, why string) {
+	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalShare} {
+		c.dst.absent(c.ix.throw+k, why)
+	}
+}
+
+func extremes(x []float64) (lo, hi float64) {
+	lo, hi = x[0], x[0]
+	for _, v := range x {
+		lo, hi = min(lo, v), max(hi, v)
+	}
+	return lo, hi
+}
