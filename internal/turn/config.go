@@ -62,7 +62,7 @@ func None() Channel { return Channel{Input: -1} }
 type ThrowConfig struct {
 	DeadCentreDeg float64    // degrees of rotation from the phase mark to this throw's head-end dead centre, 0 <= . < 360
 	Pressure      [2]Channel // head end, crank end
-	Accel         []Channel
+	Accel         []Channel  // one list per throw; a sensor that serves two throws stands in both
 }
 
 // Uncertainty gives the angle uncertainty in degrees for a number of evenly spaced marks per turn, and whether the

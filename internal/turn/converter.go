@@ -16,7 +16,8 @@ type Converter struct {
 
 	recs    []*record // consecutive revolutions, oldest first
 	spare   []*record
-	pending int // index into recs of the next revolution to emit
+	lone    *record // the newest frame, when it was refused at once
+	pending int     // index into recs of the next revolution to emit
 	begin   string
 	base    int64 // sample number of the history's first sample
 	next    int64 // sample number after its last
@@ -28,30 +29,8 @@ type Converter struct {
 	throws  []Throw
 }
 
-// record is what is kept of a frame besides its samples.
-type record struct {
-	turn, seq0   int64
-	mark0, mark1 float64
-	inner        []float64
-	q            frame.Quality
-}
-
 // ahead is how many revolutions after the one in hand must have come.
 const ahead = 2
-
-// Why a revolution gives no turn. The first four are said of the revolution itself.
-const (
-	whyGap      = "samples missing"
-	whyMissing  = "phase: pulse missing"
-	whyStarting = "starting: speed not established"
-	whyUneven   = "phase: speed changed more than the machine can"
-	whyInput    = "frame: inputs missing or of unequal length"
-	whyBegin    = "start: no revolution before it"
-	whyEnd      = "end: the revolutions after it did not come"
-	whyCount    = "phase: revolutions not counted"
-	whyShort    = "samples missing at the ends of the turn"
-	neighbour   = " (in a neighbouring revolution)"
-)
 
 // New checks the configuration and gives a converter at rest.
 func New(cfg Config) (*Converter, error) {
@@ -107,23 +86,15 @@ func New(cfg Config) (*Converter, error) {
 // Flush, whichever comes first; Clone what must live longer. Only f's contents are used, f may be reused.
 func (c *Converter) Add(f *frame.Frame, emit func(*Turn)) {
 	n := c.samples(f)
-	switch {
-	case len(c.recs) == 0:
-	case f.Seq0 > c.next || f.Seq0 < c.base:
-		c.cut(whyGap, emit)
-	default:
-		if l := c.recs[len(c.recs)-1]; f.Turn != l.turn+1 || f.Mark0 != l.mark1 {
-			c.cut(whyCount, emit)
-		}
-	}
+	c.join(f, emit)
 	if n < 0 || f.Q&frame.Gap != 0 { // nothing can be leant on this one from either side
 		why := whyGap
 		if n < 0 {
 			why = whyInput
 		}
 		c.cut(why, emit)
-		c.refuse(c.record(f), why, emit)
-		c.forget()
+		c.lone = c.record(f)
+		c.refuse(c.lone, why, emit)
 		return
 	}
 	c.push(f, n)
@@ -136,8 +107,7 @@ func (c *Converter) Add(f *frame.Frame, emit func(*Turn)) {
 // Flush emits what is left, which cannot be turns any more, and puts the converter at rest.
 func (c *Converter) Flush(emit func(*Turn)) {
 	c.cut(whyEnd, emit)
-	c.begin = whyBegin
-	c.forget()
+	c.begin, c.lone = whyBegin, nil
 }
 
 // samples gives the number of samples per input of a frame, -1 when an input that is needed is missing or differs.
@@ -183,17 +153,6 @@ func (c *Converter) push(f *frame.Frame, n int) {
 	c.next = f.Seq0 + int64(n)
 }
 
-func (c *Converter) record(f *frame.Frame) *record {
-	var r *record
-	if n := len(c.spare); n > 0 {
-		r, c.spare = c.spare[n-1], c.spare[:n-1]
-	} else {
-		r = new(record)
-	}
-	*r = record{turn: f.Turn, seq0: f.Seq0, mark0: f.Mark0, mark1: f.Mark1, inner: append(r.inner[:0], f.Inner...), q: f.Q}
-	return r
-}
-
 // drop forgets samples before seq.
 func (c *Converter) drop(seq int64) {
 	n := int(seq - c.base)
@@ -208,49 +167,6 @@ func (c *Converter) drop(seq int64) {
 	c.base = seq
 }
 
-// cut emits all pending revolutions without a turn and ends the run of consecutive ones.
-func (c *Converter) cut(why string, emit func(*Turn)) {
-	if why != whyEnd {
-		why += neighbour
-	}
-	for ; c.pending < len(c.recs); c.pending++ {
-		own := c.amiss(c.pending)
-		if own == "" {
-			own = why
-		}
-		c.refuse(c.recs[c.pending], own, emit)
-	}
-	c.begin = why
-	if n := len(c.recs); n > 0 {
-		if last := c.recs[n-1].why(); last != "" {
-			c.begin = last + neighbour
-		}
-	}
-	c.forget()
-}
-
-// amiss says what is wrong with recs[i] or, failing that, with those of its neighbours that are there.
-func (c *Converter) amiss(i int) string {
-	if why := c.recs[i].why(); why != "" {
-		return why
-	}
-	if i == 0 {
-		return c.begin
-	}
-	for _, r := range c.recs[i-1 : min(i+ahead+1, len(c.recs))] {
-		if why := r.why(); why != "" {
-			return why + neighbour
-		}
-	}
-	return ""
-}
-
-func (c *Converter) forget() {
-	c.spare = append(c.spare, c.recs...)
-	c.recs = c.recs[:0]
-	c.pending = 0
-}
-
 // restart empties the history and begins it at sample seq. The filters begin settled on their first sample; the first
 // turn that can be made begins 300° later or more, far beyond their memory.
 func (c *Converter) restart(seq int64) {
@@ -260,19 +176,4 @@ func (c *Converter) restart(seq int64) {
 		}
 	}
 	c.base, c.next = seq, seq
-}
-
-// why says what is wrong with a revolution itself.
-func (r *record) why() string {
-	switch {
-	case r.q&frame.Gap != 0:
-		return whyGap
-	case r.q&frame.Missing != 0:
-		return whyMissing
-	case r.q&frame.Starting != 0:
-		return whyStarting
-	case r.q&frame.Uneven != 0:
-		return whyUneven
-	}
-	return ""
 }

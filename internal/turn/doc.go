@@ -4,7 +4,7 @@
 // It needs: every revolution's frame in order, with the marks of the shaft reference as sample positions.
 // It waits: until the second revolution after the one it emits has come, because a throw's turn, padded by 60 degrees
 // on both sides, may begin in the frame before and end two frames later.
-// It emits: exactly one Turn for every frame, in order.
+// It emits: exactly one Turn for every revolution, in order; a frame that spans several gives one for each.
 // When it cannot (a pulse or samples missing in that revolution or in those it leans on, no neighbours at the start
 // and at the end): a Turn with a Reason and no throws.
 //
@@ -19,6 +19,7 @@
 // A known gauge passage is undone in the same step (Passage).
 //
 // Vibration. A causal Butterworth band-pass of order 2 per edge runs through all samples, across turns; nothing is
-// decimated before detection. Its delay at an impact's onset is under 0.06 ms (0.25° at 700 rpm) and is not taken
-// out. Lost samples reset the filters.
+// decimated before detection. It adds 0.02 to 0.03 ms to the onset of an impact (0.1° at 700 rpm); with what the onset
+// rule itself takes, rings of 12 to 3 kHz are found 0.035 to 0.065 ms after they began. That is not taken out. Lost
+// samples reset the filters.
 package turn

@@ -126,7 +126,8 @@ func TestOneRecordPerFrame(t *testing.T) {
 	})
 }
 
-// One missing pulse: the frame that spans two revolutions and its neighbours get a reason, one record each.
+// One missing pulse: both revolutions of the frame that spans two, and those that lean on it, get a reason, one record
+// each.
 func TestMissingPulse(t *testing.T) {
 	cfg, frames := machine(t, 12)
 	f, g := frames[5], frames[6]
@@ -138,32 +139,33 @@ func TestMissingPulse(t *testing.T) {
 		both.Counts = append(both.Counts, append(append([]int32(nil), f.Counts[k]...), g.Counts[k][shared:]...))
 	}
 	list := append(append([]*frame.Frame(nil), frames[:5]...), &both)
-	for i, f := range frames[7:] { // the assembler counts on by one
-		h := *f
-		h.Turn = int64(6 + i)
-		list = append(list, &h)
-	}
-	turns := run(converter(t, cfg), list)
-	if len(turns) != len(list) {
-		t.Fatalf("%d frames, %d records", len(list), len(turns))
-	}
-	for i, turn := range turns {
-		want := ""
-		switch {
-		case i == 0:
-			want = whyBegin
-		case i == 5:
-			want = whyMissing
-		case i == 3 || i == 4 || i == 6:
-			want = whyMissing + neighbour
-		case i >= len(turns)-2:
-			want = whyEnd
+	list = append(list, frames[7:]...) // the frame after it is numbered by the shaft: 7 after 5
+	for _, q := range []frame.Quality{frame.Missing, frame.Missing | frame.Gap, 0} {
+		both.Q = q
+		own := map[frame.Quality]string{frame.Missing: whyMissing, frame.Missing | frame.Gap: whyGap, 0: whyCount}[q]
+		turns := run(converter(t, cfg), list)
+		if len(turns) != len(frames) {
+			t.Fatalf("%d revolutions, %d records", len(frames), len(turns))
 		}
-		if turn.Reason != want || turn.Number != int64(i) {
-			t.Errorf("record %d: turn %d, %q, want %q", i, turn.Number, turn.Reason, want)
-		}
-		if (i == 5) != math.IsNaN(turn.RPM) {
-			t.Errorf("record %d: %g rpm", i, turn.RPM)
+		for i, turn := range turns {
+			want := ""
+			switch {
+			case i == 0:
+				want = whyBegin
+			case i == 5, i == 6 && q&frame.Gap == 0:
+				want = own
+			case i == 3 && q == 0: // emitted before the next number told
+			case i == 3, i == 4, i == 6, i == 7:
+				want = own + neighbour
+			case i >= len(turns)-2:
+				want = whyEnd
+			}
+			if turn.Reason != want || turn.Number != int64(i) {
+				t.Errorf("quality %b, record %d: turn %d, %q, want %q", q, i, turn.Number, turn.Reason, want)
+			}
+			if (i == 5 || i == 6) != math.IsNaN(turn.RPM) {
+				t.Errorf("quality %b, record %d: %g rpm", q, i, turn.RPM)
+			}
 		}
 	}
 }

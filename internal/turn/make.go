@@ -6,16 +6,18 @@ import (
 	"lapwing/internal/frame"
 )
 
-// refuse emits a record without a turn.
+// refuse emits a record without a turn, one for each revolution that the frame spans.
 func (c *Converter) refuse(r *record, why string, emit func(*Turn)) {
-	c.out = Turn{
-		Number: r.turn, Seq0: r.seq0, Seq1: ceil(r.mark1), Time: r.mark0 / c.cfg.Rate,
-		RPM: math.NaN(), Reason: why, Quality: r.q,
+	for n := range r.revs {
+		c.out = Turn{
+			Number: r.turn + n, Seq0: r.seq0, Seq1: ceil(r.mark1), Time: r.mark0 / c.cfg.Rate,
+			RPM: math.NaN(), Reason: why, Quality: r.q,
+		}
+		if r.q&(frame.Missing|frame.Gap) == 0 && r.revs == 1 && r.mark1 > r.mark0 {
+			c.out.RPM = 60 * c.cfg.Rate / (r.mark1 - r.mark0)
+		}
+		emit(&c.out)
 	}
-	if r.q&(frame.Missing|frame.Gap) == 0 && r.mark1 > r.mark0 {
-		c.out.RPM = 60 * c.cfg.Rate / (r.mark1 - r.mark0)
-	}
-	emit(&c.out)
 }
 
 // make emits the turn of recs[i], or the reason why there is none.

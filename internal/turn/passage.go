@@ -11,7 +11,8 @@ type Passage struct {
 }
 
 // What the inverse may lift: noise grows with (f/f₀)², so the Gaussian is held at -3 dB at min(2.5 f₀, 5 kHz) or below
-// (reference/windows.md section 2).
+// (reference/windows.md section 2). White noise then comes out 1.4 to 2.2 times as strong as it went in, against 0.2 to
+// 0.35 times without an inverse (700 and 1500 rpm, f₀ 400 to 2000 Hz, 51.2 kHz, 0.5°).
 const (
 	passageSpan   = 2.5
 	passageTop    = 5000.0
