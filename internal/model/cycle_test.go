@@ -63,7 +63,7 @@ func settle(t *testing.T, m *Machine, th, side, turns int) loop {
 			l.v = append(l.v, e.v)
 		}
 	}
-	m.Fill(&b, int(1.7*period*m.rate))
+	m.Fill(&b, int(0.6*period*m.rate))
 	for _, tr := range m.Truths() {
 		if tr.Throw == th && tr.End == side && tr.Rev == rev {
 			l.truth = tr
@@ -134,6 +134,7 @@ var (
 // TestIdealCycle compares a machine with nearly ideal valves with the closed-form cycle: work per turn, mass per turn and
 // both opening angles (worked example 2, computed with scipy from the exact slider-crank).
 func TestIdealCycle(t *testing.T) {
+	t.Parallel()
 	cases := []struct {
 		name        string
 		cyl         crank.Cylinder
@@ -149,6 +150,7 @@ func TestIdealCycle(t *testing.T) {
 	}
 	for _, c := range cases {
 		t.Run(c.name, func(t *testing.T) {
+			t.Parallel()
 			sk := bench(c.cyl, c.rpm, c.ps, c.pd, 303.15, perfect(), 1, 1)
 			p, err := Typical(sk, nil)
 			if err != nil {
@@ -160,7 +162,7 @@ func TestIdealCycle(t *testing.T) {
 			if err != nil {
 				t.Fatal(err)
 			}
-			l := settle(t, m, 0, c.side, 4)
+			l := settle(t, m, 0, c.side, 2)
 			within(t, "work, J", l.truth.Work, c.work, 0.003*c.work)
 			within(t, "delivered, kg", l.truth.Delivered, c.mass, 0.004*c.mass)
 			off := 180 * float64(c.side)
@@ -226,6 +228,7 @@ func rows(t *testing.T, name string) []map[string]float64 {
 // TestWorkedLeaks compares leaking valves with an independent simulation of one adiabatic head end with massless check valves
 // of 30 and 24 cm² (worked example 8, Runge-Kutta with 0.02° steps): exponents, work, net mass.
 func TestWorkedLeaks(t *testing.T) {
+	t.Parallel()
 	for _, r := range rows(t, "ex8_leak_simulation_M1_HE.csv") {
 		area := r["leak_area_mm2"]
 		sk := bench(worked1, 900, 20e5, 50e5, 303.15, perfect(), 1, 1)
@@ -242,11 +245,11 @@ func TestWorkedLeaks(t *testing.T) {
 		v := p.Valves[id]
 		v.BaseLeak = area * MM2
 		p.Valves[id] = v
-		m, err := New(sk, Script{}, Options{Seed: 1, Params: &p})
+		m, err := New(sk, Script{}, Options{Seed: 1, Params: &p, Rate: 25600})
 		if err != nil {
 			t.Fatal(err)
 		}
-		l := settle(t, m, 0, crank.HE, 14)
+		l := settle(t, m, 0, crank.HE, 8)
 		what := id + " " + strconv.FormatFloat(area, 'f', 0, 64) + " mm²: "
 		lo, hi := 1.15*20e5, 0.87*50e5
 		within(t, what+"compression exponent", l.exponent(0, true, lo, hi), r["n_comp"], 0.004+0.02*math.Abs(r["n_comp"]-1.3))

@@ -13,18 +13,22 @@ import (
 // and is shut near its dead centre; nothing flutters. Bounds: stop impacts of 3 to 7 m/s are what models of the trade's valves
 // give; at the low end of speed they are softer.
 func TestHealthyValvesBehave(t *testing.T) {
+	t.Parallel()
 	for _, rpm := range []float64{500, 740, 1000} {
 		for _, ratio := range []float64{1.8, 2.75, 3.6} {
+			if (rpm == 740) != (ratio == 2.75) {
+				continue // the corners and the middle are enough for a quick test
+			}
 			sk := demo()
 			sk.Process.Stages[0].Pd = sk.Process.Stages[0].Ps * ratio
 			m, err := New(sk, Script{RPM: rpm}, Options{Seed: 1, Rate: 25600})
 			if err != nil {
 				t.Fatal(err)
 			}
-			fill(m, 8*60/rpm)
+			fill(m, 5*60/rpm)
 			seen := 0
 			for _, tr := range m.Truths() {
-				if tr.Rev < 3 {
+				if tr.Rev < 2 {
 					continue
 				}
 				seen++
@@ -57,7 +61,7 @@ func TestHealthyValvesBehave(t *testing.T) {
 					t.Errorf("%g rev/min, ratio %g, throw %d end %d turn %d: %d hard impacts", rpm, ratio, tr.Throw+1, tr.End, tr.Rev, hard)
 				}
 			}
-			if seen < 12 {
+			if seen < 8 {
 				t.Errorf("%g rev/min: only %d turns", rpm, seen)
 			}
 		}
@@ -67,8 +71,9 @@ func TestHealthyValvesBehave(t *testing.T) {
 // TestOpeningOvershoot: a healthy group opens when the pressure is some per cent beyond the line; 5 to 15 % is the trade's rule for
 // break-away (Bloch and Hoefner, p. 137), counted here to the extreme of the overshoot.
 func TestOpeningOvershoot(t *testing.T) {
-	m := newDemo(t, Script{}, Options{Seed: 1})
-	l := settle(t, m, 0, crank.HE, 5)
+	t.Parallel()
+	m := newDemo(t, Script{}, Options{Seed: 1, Rate: 25600})
+	l := settle(t, m, 0, crank.HE, 2)
 	top, bottom := slices.Max(l.p)/22e5-1, 1-slices.Min(l.p)/8e5
 	if top < 0.04 || top > 0.16 {
 		t.Errorf("discharge overshoots by %.3f of line pressure", top)
@@ -93,9 +98,10 @@ func last(t *testing.T, m *Machine, th, side int) Truth {
 
 // TestLoadSteps: pocket, unloader and late closing do what they do on a machine.
 func TestLoadSteps(t *testing.T) {
+	t.Parallel()
 	run := func(step int) Truth {
-		m := newDemo(t, Script{Step: step}, Options{Seed: 1})
-		fill(m, 0.9)
+		m := newDemo(t, Script{Step: step}, Options{Seed: 1, Rate: 25600})
+		fill(m, 0.45)
 		return last(t, m, 0, crank.HE)
 	}
 	full, pocket, idle, late := run(0), run(1), run(2), run(3)
@@ -129,12 +135,13 @@ func TestLoadSteps(t *testing.T) {
 
 // TestFaults: each scripted fault shows where it should.
 func TestFaults(t *testing.T) {
+	t.Parallel()
 	mean := func(s Script) (hardest, lift float64) {
-		m := newDemo(t, s, Options{Seed: 1})
-		fill(m, 0.9)
+		m := newDemo(t, s, Options{Seed: 1, Rate: 25600})
+		fill(m, 0.5)
 		n := 0.0
 		for _, tr := range m.Truths() {
-			if tr.Throw == 0 && tr.End == crank.HE && tr.Rev >= 3 {
+			if tr.Throw == 0 && tr.End == crank.HE && tr.Rev >= 2 {
 				hardest += tr.Discharge.Open.Speed
 				lift += tr.Discharge.Open.Lift
 				n++
@@ -153,10 +160,10 @@ func TestFaults(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		x := scaled(sk, "a.t1", collect(m, int(m.rate), []int{5120}), 24)
+		x := scaled(sk, "a.t1", collect(m, int(0.42*m.rate), []int{5120}), 24)
 		var tops []float64
 		for _, tr := range m.Truths() {
-			if tr.Throw == 0 && tr.End == crank.HE && tr.Rev >= 3 {
+			if tr.Throw == 0 && tr.End == crank.HE && tr.Rev >= 2 {
 				i := int(tr.Discharge.Open.ImpactTime * m.rate)
 				top := 0.0
 				for _, v := range x[i : i+120] {
@@ -180,6 +187,7 @@ func TestFaults(t *testing.T) {
 
 // TestZeroDrift: a transmitter's drift moves its channel and nothing else.
 func TestZeroDrift(t *testing.T) {
+	t.Parallel()
 	sk := demo()
 	run := func(s Script) [][]int32 {
 		m, err := New(sk, s, Options{Seed: 1})
@@ -205,6 +213,7 @@ func TestZeroDrift(t *testing.T) {
 
 // TestProcess: ramps arrive, a leaking valve's cover leaves its group, the discharge is as hot as the compression makes it.
 func TestProcess(t *testing.T) {
+	t.Parallel()
 	s := Script{}.Add(0, 1, DischargePressure, "", 24e5).Add(0, 0, ValveLeak, "t1.he.s2", 30*MM2).Add(1, 0, LoadStep, "", 1)
 	sk := demo()
 	p, err := Typical(sk, nil)
@@ -216,7 +225,7 @@ func TestProcess(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	fill(m, 3)
+	fill(m, 2)
 	start, mid, end := m.Process(0), m.Process(0.5), m.Process(100)
 	within(t, "discharge pressure at first", start.Stages[0].Pd, 22e5, 5e3)
 	within(t, "discharge pressure half way", mid.Stages[0].Pd, 23e5, 8e3)

@@ -66,7 +66,7 @@ const (
 	typicalSpring   = 0.30   // spring force at full lift over the greatest gas force at rated speed
 	typicalPreload  = 0.27   // share of that at zero lift
 	typicalAdhesion = 0.02   // extra share of line pressure to break off a dry clean seat
-	typicalLeak     = 1.2e-4 // leak area over full-lift flow area of a healthy valve
+	typicalLeak     = 0.7e-4 // leak area over full-lift flow area of a healthy valve
 	typicalSwing    = 11.2   // degrees of crank at rated speed the springs alone need to close the valve
 )
 

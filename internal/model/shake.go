@@ -10,13 +10,13 @@ import (
 // Levels of the vibration model. They are of the size the trade reports (valve events 10 to 100 m/s² peak at the
 // cylinder, leak hiss well below); a real mounting would need its own.
 const (
-	refSpeed   = 4.0   // m/s, stop impact that gives a valve's reference peak
-	hissRef    = 0.16  // m/s² rms in the leak band from a jet of one per cent of a throw's throughput at a fully choked ratio
-	flowShare  = 0.015 // acoustic efficiency of open-valve flow against a leak jet
-	floorWhite = 0.2   // m/s² rms, accelerometer and cable, whole band
-	floorWork  = 0.5   // m/s² rms at rated speed, running gear, falling above about 2 kHz
-	shaftOrder = 3.0   // m/s², first shaft order at rated speed
-	crossShare = 0.06  // of the other throws' impacts
+	refSpeed   = 4.0  // m/s, stop impact that gives a valve's reference peak
+	hissRef    = 0.40 // m/s² rms in the leak band from a jet of one per cent of a throw's throughput at a fully choked ratio
+	flowShare  = 0.08 // acoustic efficiency of open-valve flow against a leak jet
+	floorWhite = 0.2  // m/s² rms, accelerometer and cable, whole band
+	floorWork  = 0.5  // m/s² rms at rated speed, running gear, falling above about 2 kHz
+	shaftOrder = 3.0  // m/s², first shaft order at rated speed
+	crossShare = 0.06 // of the other throws' impacts
 	crossDelay = 1.1e-3
 	contact    = 90e-6 // s, length of a contact
 )
@@ -113,7 +113,7 @@ func newBell(r *rand.Rand, rate float64) bell {
 	// Scale both mixes so that a unit impact, contact length in, peaks at one.
 	for _, stop := range []bool{true, false} {
 		top := 0.0
-		for t := -contact; t < 3e-3; t += 4e-6 {
+		for t := 0.0; t < 1.5e-3; t += 8e-6 {
 			y := 0.0
 			for _, c := range contactShape {
 				tt := t - c.at*contact
