@@ -18,6 +18,7 @@ import (
 	"path/filepath"
 	"runtime/debug"
 	"sort"
+	"strings"
 	"time"
 
 	bolt "go.etcd.io/bbolt"
@@ -121,7 +122,11 @@ func Guard(f func() error) (err error) {
 	old := debug.SetPanicOnFault(true)
 	defer debug.SetPanicOnFault(old)
 	defer func() {
-		if r := recover(); r != nil {
+		switch r := recover().(type) {
+		case nil:
+		case interface{ Addr() uintptr }: // a memory fault
+			err = fmt.Errorf("%w: a page of it is not there or cannot be read", ErrDamaged)
+		default:
 			err = fmt.Errorf("%w: %v", ErrDamaged, r)
 		}
 	}()
@@ -218,7 +223,7 @@ func classify(err error) error {
 	case errors.Is(err, berrors.ErrTimeout):
 		return ErrHeld
 	case errors.Is(err, berrors.ErrInvalid), errors.Is(err, berrors.ErrChecksum), errors.Is(err, berrors.ErrVersionMismatch),
-		errors.Is(err, berrors.ErrInvalidMapping):
+		errors.Is(err, berrors.ErrInvalidMapping), strings.HasPrefix(err.Error(), "file size too small"): // bbolt has no value for this one
 		return fmt.Errorf("%w: %w", ErrDamaged, err)
 	}
 	return err
