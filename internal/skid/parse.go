@@ -50,6 +50,10 @@ func Parse(name string, raw []byte) (*Skid, error) {
 	if root := r.root(raw); root != nil {
 		r.skid(root, sk)
 	}
+	if n := r.more - len(r.problems); n > 0 {
+		last := r.problems[len(r.problems)-1]
+		r.problems = append(r.problems, Problem{name, last.Place, "", fmt.Sprintf("%d problems more", n), "is this a skid file?"})
+	}
 	if err := join(r.problems); err != nil {
 		return nil, err
 	}

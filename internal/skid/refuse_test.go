@@ -190,6 +190,14 @@ func TestWhatIsNotYAMLIsRefusedWithItsLine(t *testing.T) {
 	}
 }
 
+func TestAFileOfRubbishGetsAShortAnswer(t *testing.T) {
+	_, err := Parse("m.yaml", []byte(strings.Repeat("a: b\n", 50000)))
+	ps := Problems(err)
+	if len(ps) != mostProblems+1 || !strings.Contains(err.Error(), "problems more; is this a skid file?") {
+		t.Errorf("%d problems", len(ps))
+	}
+}
+
 func TestLoadNamesTheFileThatIsMissing(t *testing.T) {
 	_, err := Load(filepath.Join(t.TempDir(), "none.yaml"))
 	if err == nil || !strings.Contains(err.Error(), "none.yaml") || !os.IsNotExist(unwrapped(err)) {

@@ -16,16 +16,23 @@ import (
 // maxFile bounds a skid file: the longest sensible one is a tenth of it.
 const maxFile = 256 << 10
 
+// mostProblems bounds the answer to a file that is no skid file at all.
+const mostProblems = 200
+
 // reader walks a YAML tree by hand, so that every message knows its place, and collects problems instead of
 // stopping at the first.
 type reader struct {
 	file      string
 	problems  []Problem
+	more      int // problems in all, those beyond mostProblems included
 	at        map[string]Place
 	defaulted []string
 }
 
 func (r *reader) problem(at Place, path, fix, format string, args ...any) {
+	if r.more++; r.more > mostProblems {
+		return
+	}
 	r.problems = append(r.problems, Problem{r.file, at, path, fmt.Sprintf(format, args...), fix})
 }
 
