@@ -274,3 +274,53 @@ func TestTrack(t *testing.T) {
 		within(t, "track", tr.at(c.t), c.want, 1e-12)
 	}
 }
+
+// TestFinerSteps: four times the sampling rate moves neither angles nor masses noticeably.
+func TestFinerSteps(t *testing.T) {
+	t.Parallel()
+	run := func(rate float64) Truth {
+		p, err := Typical(demo(), nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		p.Scatter = 0
+		sk := demo()
+		sk.Throws = sk.Throws[:1]
+		m, err := New(sk, Script{}, Options{Rate: rate, Params: &p})
+		if err != nil {
+			t.Fatal(err)
+		}
+		fill(m, 0.3)
+		return last(t, m, 0, crank.HE)
+	}
+	a, b := run(25600), run(102400)
+	within(t, "suction opening", a.Suction.Open.Lift, b.Suction.Open.Lift, 0.03)
+	within(t, "discharge opening", a.Discharge.Open.Lift, b.Discharge.Open.Lift, 0.03)
+	within(t, "suction stop", a.Suction.Open.Impact, b.Suction.Open.Impact, 0.05)
+	within(t, "discharge stop", a.Discharge.Open.Impact, b.Discharge.Open.Impact, 0.05)
+	within(t, "suction seat", a.Suction.Close.Impact, b.Suction.Close.Impact, 0.2)
+	within(t, "discharge seat", a.Discharge.Close.Impact, b.Discharge.Close.Impact, 0.2)
+	within(t, "stop speed", a.Discharge.Open.Speed, b.Discharge.Open.Speed, 0.1)
+	within(t, "delivered", a.Delivered, b.Delivered, 1e-3*b.Delivered)
+	within(t, "work", a.Work, b.Work, 1e-3*b.Work)
+}
+
+// TestSingleActing: a throw with one working end runs, and its rings leak to the blind side.
+func TestSingleActing(t *testing.T) {
+	t.Parallel()
+	for _, blindAtSuction := range []bool{false, true} {
+		sk := demo()
+		sk.Throws = sk.Throws[:1]
+		sk.Throws[0].Ends[crank.CE].Works = false
+		sk.Throws[0].BlindAtSuction = blindAtSuction
+		m, err := New(sk, Script{}, Options{Rate: 25600})
+		if err != nil {
+			t.Fatal(err)
+		}
+		fill(m, 0.3)
+		tr := last(t, m, 0, crank.HE)
+		if tr.Leaked.Rings <= 0 || math.IsNaN(tr.Discharge.Open.Impact) {
+			t.Errorf("blind at suction %v: rings lose %g kg, discharge opens %v", blindAtSuction, tr.Leaked.Rings, tr.Discharge.Open)
+		}
+	}
+}

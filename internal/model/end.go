@@ -21,7 +21,6 @@ type group struct {
 	mean      float64 // mean lift, share
 	above     bool    // mean lift has passed 30 % and no plate has sat since
 	wanted    bool    // its closing crossing is still to be booked
-	flow      float64 // kg/s into the end, mean of the last interval
 }
 
 // end is one working side of a cylinder: one volume of gas and its valves.
@@ -47,6 +46,7 @@ type end struct {
 	ring    float64 // kg/s into the end past the rings
 	ringT   float64 // K, of that gas
 	ringA   float64 // m²
+	ringJet float64 // sound power scale of the ring leak; of the pair, booked at the head end
 	packing float64 // m²; 0 at the head end
 	packJet float64 // sound power scale of the packing's leak, kg/s·(m/s)²
 	diary   diary
@@ -215,7 +215,6 @@ func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
 	e.v = va
 	e.t = e.p * e.v / (e.m * r)
 	inv := 1 / m.dt
-	e.suction.flow, e.disch.flow = sumS*inv, sumD*inv
 	e.suction.voice(e, t.ps, sumS*inv, s.area, leakS*inv, m.dt)
 	e.disch.voice(e, t.pd, sumD*inv, d.area, leakD*inv, m.dt)
 	e.packJet = 0

@@ -30,6 +30,9 @@ const slowEvery = 64
 // historyKept is how many process readings are remembered.
 const historyKept = 7200
 
+// truthsKept bounds the truths nobody has asked for.
+const truthsKept = 1 << 15
+
 // Options are what is not physics.
 type Options struct {
 	Seed   uint64
@@ -256,6 +259,9 @@ func (m *Machine) slow() {
 	for _, c := range m.chans {
 		c.slow(m, t)
 	}
+	if len(m.truths) > truthsKept {
+		m.truths = append([]Truth(nil), m.truths[truthsKept/2:]...)
+	}
 	if m.n%m.historyEvery == 0 {
 		if len(m.history) == historyKept {
 			m.forgotten += historyKept / 2
@@ -283,7 +289,8 @@ func (m *Machine) setStep(code int, first bool) {
 	}
 }
 
-// Truths gives the truths completed since the last call, in the order of their completion; the caller owns them.
+// Truths gives the truths completed since the last call, in the order of their completion; the caller owns them. Of those never
+// asked for, only the newest some ten thousand are kept.
 func (m *Machine) Truths() []Truth {
 	out := m.truths
 	m.truths = nil

@@ -55,9 +55,8 @@ type shaker struct {
 	long   int // samples a mode is followed
 	rated  float64
 	gain   float64
-	out    float64 // m/s², at the present sample
-	own    float64 // impact part, for the neighbour
-	past   []float64
+	out    float64   // m/s², at the present sample
+	past   []float64 // its impacts, for the neighbours to hear later
 	cross  []*shaker
 	wait   int
 	low    float64 // one-pole state of crosstalk
@@ -230,15 +229,10 @@ func (t *throw) shake(m *Machine) {
 					open += q.open
 				}
 			}
-			if e.side == crank.HE && e.ring != 0 {
-				o := t.ends[crank.CE]
-				hi, lo := max(e.p, o.p), min(e.p, o.p)
-				jet += 0.6 * math.Abs(e.ring) * jetEnergy(e.gas, hi, lo, e.ringT)
-			}
+			jet += e.ringJet
 		}
 		speed := m.omega / s.rated
 		y := s.impacts(n)
-		s.own = y
 		s.past[n%int64(len(s.past))] = y
 		// Leak hiss and flow noise: band-limited noise whose power follows the jets over the turn.
 		y += s.hiss.next(s.rnd.NormFloat64()) * hissRef * math.Sqrt(jet*s.jetRef)

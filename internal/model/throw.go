@@ -236,16 +236,37 @@ func (e *end) fingers(deg float64) {
 	}
 }
 
-// rings passes gas between the ends, upstream state, same nozzle law.
+// rings passes gas between the ends, upstream state, same nozzle law. A blind end stands at the atmosphere or at suction
+// pressure; what goes there is lost to the working end.
 func (t *throw) rings(m *Machine) {
 	a, b := t.ends[crank.HE], t.ends[crank.CE]
-	if a == nil || b == nil {
-		return
+	switch {
+	case a != nil && b != nil:
+		in, _ := m.noz.flow(a.p, math.Sqrt(t.r*a.t), b.p, math.Sqrt(t.r*b.t))
+		a.ring = in * a.ringA
+		b.ring = -a.ring
+		a.ringT, b.ringT = b.t, a.t
+		a.ringJet = ringJet(a, b.p)
+	case a == nil:
+		t.blind(m, b)
+	default:
+		t.blind(m, a)
 	}
-	in, _ := m.noz.flow(a.p, math.Sqrt(t.r*a.t), b.p, math.Sqrt(t.r*b.t))
-	a.ring = in * a.ringA
-	b.ring = -a.ring
-	a.ringT, b.ringT = b.t, a.t
+}
+
+func (t *throw) blind(m *Machine, e *end) {
+	pl := t.atm
+	if t.sk.BlindAtSuction {
+		pl = t.ps
+	}
+	in, _ := m.noz.flow(e.p, math.Sqrt(t.r*e.t), pl, t.suctionRT)
+	e.ring, e.ringT = in*e.ringA, t.suctionT
+	e.ringJet = ringJet(e, pl)
+}
+
+// ringJet is the sound power scale of the flow past the rings; they hiss less loudly outside than a valve does.
+func ringJet(e *end, other float64) float64 {
+	return 0.6 * math.Abs(e.ring) * jetEnergy(e.gas, max(e.p, other), min(e.p, other), e.t)
 }
 
 // suctionIn mixes the suction passage: taken is what went into a cylinder end in this interval, kg; negative came back at temperature tt.
