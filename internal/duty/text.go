@@ -1,0 +1,10 @@
+package duty
+
+var stateNames = [...]string{"unknown", "stopped", "starting", "changing", "steady"}
+
+func (s State) String() string {
+	if int(s) < len(stateNames) {
+		return stateNames[s]
+	}
+	return "invalid"
+}
