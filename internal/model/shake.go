@@ -23,10 +23,10 @@ const (
 
 // mode is one structural mode as a turning and shrinking pointer; its output is the imaginary part.
 type mode struct {
-	re, im   float64
-	cr, ci   float64 // pointer's step per sample
-	decay, w float64 // 1/s, rad/s
-	stop, st float64 // amplitude per unit impact at stop and at seat
+	re, im     float64
+	cr, ci     float64 // pointer's step per sample
+	decay, w   float64 // 1/s, rad/s
+	stop, seat float64 // amplitude per unit impact at stop and at seat
 }
 
 // bell is one valve's way to one accelerometer: its own modes, peak level and delay.
@@ -106,36 +106,27 @@ func newBell(r *rand.Rand, rate float64) bell {
 		g := math.Exp(-mo.decay / rate)
 		mo.cr, mo.ci = g*math.Cos(mo.w/rate), g*math.Sin(mo.w/rate)
 		mo.stop = 0.4 + r.Float64()
-		mo.st = 0.4 + r.Float64()
+		mo.seat = 0.4 + r.Float64()
 		b.modes = append(b.modes, mo)
 	}
 	// Scale both mixes so that a unit impact, contact length in, peaks at one.
-	for _, stop := range []bool{true, false} {
-		top := 0.0
-		for t := 0.0; t < 1.5e-3; t += 8e-6 {
-			y := 0.0
-			for _, c := range contactShape {
-				tt := t - c.at*contact
-				if tt <= 0 {
-					continue
-				}
+	var stop, seat float64
+	for t := 0.0; t < 1.2e-3; t += 10e-6 {
+		var a, c float64
+		for _, part := range contactShape {
+			if tt := t - part.at*contact; tt > 0 {
 				for _, mo := range b.modes {
-					a := mo.st
-					if stop {
-						a = mo.stop
-					}
-					y += c.share * a * math.Exp(-mo.decay*tt) * math.Sin(mo.w*tt)
+					y := part.share * math.Exp(-mo.decay*tt) * math.Sin(mo.w*tt)
+					a += mo.stop * y
+					c += mo.seat * y
 				}
 			}
-			top = max(top, math.Abs(y))
 		}
-		for i := range b.modes {
-			if stop {
-				b.modes[i].stop /= top
-			} else {
-				b.modes[i].st /= top
-			}
-		}
+		stop, seat = max(stop, math.Abs(a)), max(seat, math.Abs(c))
+	}
+	for i := range b.modes {
+		b.modes[i].stop /= stop
+		b.modes[i].seat /= seat
 	}
 	return b
 }
@@ -178,7 +169,7 @@ func (s *shaker) impacts(n int64) float64 {
 			dt := (now - b.due) / s.rate
 			for i := range bl.modes {
 				mo := &bl.modes[i]
-				a := b.amp * mo.st
+				a := b.amp * mo.seat
 				if b.stop {
 					a = b.amp * mo.stop
 				}
