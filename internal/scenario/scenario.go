@@ -78,23 +78,27 @@ func Get(name string, sk *skid.Skid) (Run, error) {
 // victim is the valve that fails in the demo: the first suction valve of the first throw's head end.
 func victim(sk *skid.Skid) string { return sk.Throws[0].Ends[0].Suction[0].ID }
 
-// swing moves the first stage's discharge pressure, the suction pressure and the speed through their range in one
-// round of the given length; share scales how far.
-func swing(s model.Script, sk *skid.Skid, at, round, share float64) model.Script {
+// duty is one point of the machine's field, as shares of what the skid file states: discharge and suction pressure,
+// and the way from rated speed (0) to the slowest the scenario runs (1).
+type duty struct{ pd, ps, slow float64 }
+
+// field is a walk through the duties that a learning run must have seen: corners, middles, and back.
+var field = []duty{
+	{0, 0, 0}, {0.16, 0, 0}, {0.16, 0.1, 0.5}, {0, 0.1, 1}, {-0.16, 0.1, 1}, {-0.16, 0, 0.5}, {-0.16, -0.08, 0}, {0, -0.08, 0.5},
+	{0.16, -0.08, 1}, {0.08, 0.05, 0.7}, {-0.08, -0.04, 0.3}, {0.1, 0, 1}, {0, 0, 0.2},
+}
+
+// walk visits duties one after the other from at on, share of the way out: a second's change, then a hold.
+func walk(s model.Script, sk *skid.Skid, at, each, share float64, through []duty) model.Script {
 	l, rpm := sk.Process.Stages[0], sk.Machine.RatedRPM
 	slow := max(sk.Machine.MinRPM, rpm*0.85)
-	leg := round / 6
-	pd := func(x float64) float64 { return l.Pd * (1 + share*x) }
-	ps := func(x float64) float64 { return l.Ps * (1 + share*x) }
-	return s.
-		Add(at, leg, model.DischargePressure, "1", pd(0.16)).
-		Add(at+leg, leg, model.Speed, "", rpm+share*(slow-rpm)).
-		Add(at+2*leg, leg, model.DischargePressure, "1", pd(-0.16)).
-		Add(at+2.5*leg, leg, model.SuctionPressure, "1", ps(0.10)).
-		Add(at+3.5*leg, leg, model.Speed, "", rpm).
-		Add(at+4*leg, leg, model.SuctionPressure, "1", ps(-0.08)).
-		Add(at+4.5*leg, leg, model.DischargePressure, "1", pd(0)).
-		Add(at+5*leg, leg, model.SuctionPressure, "1", ps(0))
+	for k, d := range through {
+		t := at + float64(k)*each
+		s = s.Add(t, 1, model.DischargePressure, "1", l.Pd*(1+share*d.pd)).
+			Add(t, 1, model.SuctionPressure, "1", l.Ps*(1+share*d.ps)).
+			Add(t, 1, model.Speed, "", rpm+share*d.slow*(slow-rpm))
+	}
+	return s
 }
 
 // second is a load step other than the first that leaves every end at work, or the first step's own code.
@@ -110,30 +114,30 @@ func second(sk *skid.Skid) int {
 func grow(sk *skid.Skid) Run {
 	full, part := float64(sk.Steps[0].Code), float64(second(sk))
 	s := model.Script{Step: sk.Steps[0].Code}
-	s = swing(s, sk, 4, 24, 1)
-	s = swing(s, sk, 28, 24, 0.6)
-	s = s.Add(54, 0, model.LoadStep, "", part)
-	s = swing(s, sk, 56, 24, 1)
-	s = s.Add(82, 0, model.LoadStep, "", full)
-	// What follows is judged: other paths through the same region.
-	s = swing(s, sk, 90, 18, 0.8)
-	s = s.Add(110, 0, model.LoadStep, "", part).Add(118, 0, model.LoadStep, "", full)
-	s = s.Add(126, 30, model.ValveLeak, victim(sk), 30*model.MM2)
-	s = swing(s, sk, 132, 24, 0.5)
-	return Run{Script: s, Duration: 175, Chapters: []Chapter{
+	s = walk(s, sk, 4, 5, 1, field) // to 69 s
+	s = s.Add(69, 0, model.LoadStep, "", part)
+	s = walk(s, sk, 69, 5, 1, field[:9]) // to 114 s
+	s = s.Add(114, 0, model.LoadStep, "", full)
+	// What follows is judged: other ways through the same field.
+	s = walk(s, sk, 118, 4, 0.8, []duty{{0.12, 0.02, 0.3}, {-0.1, 0.06, 0.8}, {0, -0.05, 0}})
+	s = s.Add(130, 0, model.LoadStep, "", part)
+	s = s.Add(138, 0, model.LoadStep, "", full)
+	s = s.Add(142, 25, model.ValveLeak, victim(sk), 30*model.MM2)
+	s = walk(s, sk, 150, 8, 0.5, []duty{{0.1, 0, 0}, {-0.1, 0.05, 0.5}, {0, 0, 0}})
+	return Run{Script: s, Duration: 195, Chapters: []Chapter{
 		{0, "The machine is declared healthy. Lapwing learns what each measure does as the load moves."},
-		{88, "Learnt. The load swings again: pressures, speed, pockets. Watch the windows follow."},
-		{126, "Suction valve " + victim(sk) + " begins to leak: 30 mm² over half a minute."},
-		{158, "The leak has stopped growing."},
+		{116, "The load moves again: pressures, speed, pockets. The windows follow; nothing may be said."},
+		{142, "Suction valve " + victim(sk) + " begins to leak: 30 mm² over 25 s, while the load goes on moving."},
+		{168, "The leak has stopped growing."},
 	}}
 }
 
 func swings(sk *skid.Skid) Run {
 	s := model.Script{Step: sk.Steps[0].Code}
-	for k := range 200 { // more than a day's watching is not what the model is for
-		s = swing(s, sk, 5+30*float64(k), 30, 0.8)
+	for k := range 60 { // an hour; the model is not for more
+		s = walk(s, sk, 4+60*float64(k), 4, 0.8, field)
 	}
-	return Run{Script: s, Chapters: []Chapter{{0, "A healthy machine under swinging load."}}}
+	return Run{Script: s, Chapters: []Chapter{{0, "A healthy machine under moving load."}}}
 }
 
 func standing(sk *skid.Skid) Run {

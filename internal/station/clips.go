@@ -1,0 +1,45 @@
+package station
+
+import (
+	"context"
+	"fmt"
+	"os"
+	"path/filepath"
+	"time"
+
+	"lapwing/internal/tape"
+	"lapwing/internal/wire"
+)
+
+// openState opens the tape of a daemon that is down.
+func openState(state string) (*tape.Tape, error) {
+	path := filepath.Join(state, "tape.db")
+	if _, err := os.Stat(path); err != nil {
+		return nil, fmt.Errorf("station: no tape in %s: %w", state, err)
+	}
+	t, err := tape.Open(path, tape.Options{})
+	if err != nil {
+		return nil, fmt.Errorf("%w (is the daemon running? then leave --state out)", err)
+	}
+	return t, nil
+}
+
+// ClipsIn lists the clips of a daemon that is down.
+func ClipsIn(state string) ([]wire.Clip, error) {
+	t, err := openState(state)
+	if err != nil {
+		return nil, err
+	}
+	defer t.Close()
+	return wireClips(t, 0, time.Time{}), nil
+}
+
+// ExportFrom writes a clip of a daemon that is down into dir.
+func ExportFrom(_ context.Context, state, clip, dir string) error {
+	t, err := openState(state)
+	if err != nil {
+		return err
+	}
+	defer t.Close()
+	return exportClip(t, clip, dir)
+}

@@ -1,0 +1,368 @@
+package station
+
+import (
+	"context"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"maps"
+	"math"
+	"path/filepath"
+	"slices"
+	"sync"
+	"time"
+
+	"lapwing/internal/alarm"
+	"lapwing/internal/duty"
+	"lapwing/internal/ledger"
+	"lapwing/internal/panel"
+	"lapwing/internal/tape"
+	"lapwing/internal/uplink"
+	"lapwing/internal/verdict"
+	"lapwing/internal/wire"
+)
+
+// desk holds what is shown and said, apart from the line: the last of the journal, standing alarms, the newest turn.
+type desk struct {
+	mu       sync.Mutex
+	journal  []wire.Alarm          // newest first
+	open     map[string]wire.Alarm // by key, what stands
+	findings []wire.Finding
+	latest   *wire.Turn
+	learned  bool
+	trouble  map[string]string // by cause
+	featureT time.Time         // sample time of the last features sent
+}
+
+const journalShown = 40
+
+// restore reads back what stood when the daemon stopped.
+func (d *desk) restore(l *ledger.Ledger, alarms *alarm.Annunciator, skidID string) error {
+	d.open, d.trouble = map[string]wire.Alarm{}, map[string]string{}
+	last := l.Stats().LastJournal
+	from := uint64(0)
+	if last > 2000 {
+		from = last - 2000
+	}
+	trs, err := l.Journal(from, 2001)
+	if err != nil {
+		d.trouble["journal"] = "parts of the alarm journal cannot be read: " + err.Error()
+	}
+	for i := range trs {
+		d.note(wire.FromTransition(skidID, &trs[i], ""))
+	}
+	for _, p := range alarms.Open() {
+		if _, known := d.open[p.Key]; !known {
+			d.open[p.Key] = wire.FromPoint(skidID, &p)
+		}
+	}
+	return nil
+}
+
+// note keeps a transition for display.
+func (d *desk) note(a wire.Alarm) {
+	d.journal = slices.Insert(d.journal, 0, a)
+	if len(d.journal) > journalShown {
+		d.journal = d.journal[:journalShown]
+	}
+	if a.Open {
+		d.open[a.Key] = a
+	} else {
+		delete(d.open, a.Key)
+	}
+}
+
+// take books everything that one turn brought: first what must not be lost, then what is shown.
+func (s *Station) take(o *Output) error {
+	err := s.book(o)
+	s.publish(o, s.line.utc(o.Record.TimeS))
+	if s.o.OnTurn != nil {
+		s.o.OnTurn(&o.Record)
+	}
+	return err
+}
+
+// book commits transitions, alarm states and messages in one transaction, so that a crash loses none and repeats none.
+func (s *Station) book(o *Output) error {
+	if o.LearnError != nil {
+		s.log.Error("the learning run gave no baseline", "err", o.LearnError)
+		s.desk.say("learning", "the learning run gave no baseline: "+o.LearnError.Error())
+	}
+	if o.Baseline != nil {
+		if err := s.keepBaseline(o.Baseline); err != nil {
+			return err
+		}
+	}
+	if len(o.Transitions) == 0 {
+		return nil
+	}
+	said := make([]wire.Alarm, len(o.Transitions))
+	for i := range o.Transitions {
+		t := &o.Transitions[i]
+		said[i] = wire.FromTransition(s.sk.ID, t, s.protect(t))
+	}
+	err := s.ledger.Commit(func(tx *ledger.Tx) error {
+		for i := range said {
+			if err := tx.Journal(o.Transitions[i]); err != nil {
+				return err
+			}
+			payload, err := json.Marshal(said[i])
+			if err != nil {
+				return fmt.Errorf("station: alarm %d: %w", said[i].ID, err)
+			}
+			if _, err := tx.Enqueue(ledger.Alarm, s.topics.Alarm(), payload, false); err != nil {
+				return err
+			}
+			if !said[i].Open {
+				payload = nil // an empty retained message takes the standing alarm off the board
+			}
+			if _, err := tx.Enqueue(ledger.Alarm, s.topics.Standing(said[i].Key), payload, true); err != nil {
+				return err
+			}
+		}
+		return tx.AlarmSnapshot(s.line.Alarms().Snapshot())
+	})
+	if err != nil {
+		return err
+	}
+	for i := range said {
+		s.log.Info("alarm", "id", said[i].ID, "point", said[i].Key, "from", said[i].From, "to", said[i].To, "severity", said[i].Severity, "said", said[i].Sentence)
+	}
+	s.desk.mu.Lock()
+	for i := range said {
+		s.desk.note(said[i])
+	}
+	s.desk.mu.Unlock()
+	if s.pub != nil {
+		s.pub.Wake()
+	}
+	return nil
+}
+
+func (s *Station) keepBaseline(b *duty.Baseline) error {
+	raw, err := b.Encode()
+	if err != nil {
+		return fmt.Errorf("station: baseline: %w", err)
+	}
+	if _, err := s.ledger.PutBaseline("learning run", json.RawMessage(raw)); err != nil {
+		return err
+	}
+	s.log.Info("baseline learnt", "first_turn", b.Turn0, "last_turn", b.Turn1, "load_steps", len(b.Cells))
+	return nil
+}
+
+// protect asks the tape for the raw samples around an alarm that is raised or grows worse.
+func (s *Station) protect(t *alarm.Transition) string {
+	if t.To != alarm.Unacked || t.Seq1 == 0 {
+		return ""
+	}
+	from := max(0, t.Seq0-int64(s.sk.Tape.Pre.Seconds()*s.info.Rate))
+	c, err := s.tape.Protect(tape.Clip{
+		ID:     fmt.Sprintf("%s-%d", t.At.UTC().Format("20060102T150405Z"), t.ID),
+		Reason: fmt.Sprintf("alarm %d: %s %s, %s", t.ID, t.Subject, t.Kind, t.Severity), AlarmID: t.ID,
+		From: from, To: t.Seq1 + int64(s.sk.Tape.Post.Seconds()*s.info.Rate),
+	})
+	if err != nil {
+		s.log.Error("raw samples of an alarm are not protected", "alarm", t.ID, "err", err)
+		s.desk.say("clip", fmt.Sprintf("the raw samples of alarm %d are not protected: %v", t.ID, err))
+		return ""
+	}
+	return c.ID
+}
+
+// say keeps a plain sentence about the monitor itself for page and health; an empty one takes it back.
+func (d *desk) say(cause, sentence string) {
+	d.mu.Lock()
+	defer d.mu.Unlock()
+	if sentence == "" {
+		delete(d.trouble, cause)
+		return
+	}
+	d.trouble[cause] = sentence
+}
+
+// publish swaps in a new snapshot and offers features when they are due. at is the sample time of the turn.
+func (s *Station) publish(o *Output, at time.Time) {
+	d := &s.desk
+	d.mu.Lock()
+	if o.Record.Type != "" {
+		rec := o.Record
+		d.latest = &rec
+	}
+	if o.Judged {
+		d.findings = wireFindings(o.Findings, s.line)
+	}
+	n := &wire.Now{Skid: s.sk.ID, Name: s.sk.Name, Site: s.sk.Site, At: at, Latest: d.latest, Findings: d.findings,
+		Standing: d.standing(), Journal: slices.Clone(d.journal), Clips: s.clips(), Caution: wire.Caution}
+	d.mu.Unlock()
+	n.Health = s.health(at)
+	s.now.Store(n)
+	if s.pub != nil && o.Record.Valid && at.Sub(d.featureT).Abs() >= s.sk.Uplink.FeaturesEvery {
+		d.featureT = at
+		for i := range s.sk.Throws {
+			id := s.sk.Throws[i].ID
+			b, err := wire.FromVector(s.sk.ID, id, i, s.line.Layout(), o.Vector, at, o.Points[i].State.String())
+			if err != nil {
+				s.log.Error("features", "err", err)
+				continue
+			}
+			s.pub.Offer(s.topics.Features(id), b, false)
+		}
+	}
+}
+
+// standing lists open alarms, worst first, then oldest.
+func (d *desk) standing() []wire.Alarm {
+	out := make([]wire.Alarm, 0, len(d.open))
+	for _, a := range d.open {
+		out = append(out, a)
+	}
+	rank := map[string]int{"danger": 0, "alert": 1, "advisory": 2}
+	slices.SortFunc(out, func(a, b wire.Alarm) int {
+		ra, rb := rank[a.Severity], rank[b.Severity]
+		if ra != rb {
+			return ra - rb
+		}
+		if c := a.At.Compare(b.At); c != 0 {
+			return c
+		}
+		return int(int64(a.ID) - int64(b.ID))
+	})
+	return out
+}
+
+func wireFindings(fs []verdict.Finding, l *Line) []wire.Finding {
+	out := make([]wire.Finding, 0, len(fs))
+	for i := range fs {
+		if fs[i].Grade > verdict.None {
+			out = append(out, wire.FromFinding(&fs[i], l.Layout()))
+		}
+	}
+	return out
+}
+
+// health gathers what the daemon knows of itself.
+func (s *Station) health(at time.Time) wire.Health {
+	st, c := s.tape.Stats(), s.line.Count()
+	phase := s.line.Phase()
+	h := wire.Health{Version: 1, Skid: s.sk.ID, At: at, State: phase.State.String(), Turns: c.Turns, BadTurns: c.Invalid,
+		SamplesLost: c.Lost, QueueFull: s.dropped.Load(), Learned: s.line.Judging()}
+	if !math.IsNaN(phase.RPM) {
+		rpm := math.Round(phase.RPM*10) / 10
+		h.RPM = &rpm
+	}
+	have, want := s.line.Learnt()
+	switch {
+	case want > 0:
+		h.LearnLeft = want - have
+		h.Line = fmt.Sprintf("learning, %d of %d steady turns", have, want)
+	case s.line.Judging():
+		h.Line = "watching"
+	default:
+		h.Line = "measuring only: no baseline yet (declare the machine healthy with --learn)"
+	}
+	h.Tape = wire.TapeHealth{Bytes: st.LiveBytes, Limit: s.sk.Tape.MaxBytes, Oldest: st.OldestUTC, Newest: st.NewestUTC, Dropped: int64(st.QueueDroppedBlocks), Clips: st.Clips}
+	if s.pub != nil {
+		h.Uplink = s.pub.Status()
+	}
+	s.desk.mu.Lock()
+	for _, k := range slices.Sorted(maps.Keys(s.desk.trouble)) {
+		h.Trouble = append(h.Trouble, s.desk.trouble[k])
+	}
+	s.desk.mu.Unlock()
+	if n := s.dropped.Load(); n > 0 {
+		h.Trouble = append(h.Trouble, fmt.Sprintf("the line was too slow for %d blocks: the tape has them, they were not analysed", n))
+	}
+	return h
+}
+
+func (s *Station) offerHealth() {
+	n := s.Now()
+	h := s.health(n.At)
+	if s.pub == nil {
+		return
+	}
+	if b, err := json.Marshal(h); err == nil {
+		s.pub.Offer(s.topics.Health(), b, true)
+	}
+}
+
+// offline is the last will and the message of a clean stop.
+func (s *Station) offline() []byte {
+	b, err := json.Marshal(wire.Health{Version: 1, Skid: s.sk.ID, At: time.Now().UTC(), State: "offline", Line: "the daemon is not connected"})
+	if err != nil {
+		return []byte(`{"v":1,"state":"offline"}`)
+	}
+	return b
+}
+
+// standing renews the retained standing alarms after a connection is made.
+func (s *Station) standing() []uplink.Message {
+	s.desk.mu.Lock()
+	defer s.desk.mu.Unlock()
+	var out []uplink.Message
+	for _, a := range s.desk.standing() {
+		if b, err := json.Marshal(a); err == nil {
+			out = append(out, uplink.Message{Topic: s.topics.Standing(a.Key), Payload: b, Retain: true})
+		}
+	}
+	return out
+}
+
+// drainUplink gives the last messages a moment to leave at the end of a source that ends.
+func (s *Station) drainUplink(limit time.Duration) {
+	for end := time.Now().Add(limit); time.Now().Before(end); time.Sleep(20 * time.Millisecond) {
+		m, err := s.ledger.Next(0, 1)
+		if err != nil || len(m) == 0 {
+			return
+		}
+	}
+}
+
+// outbox lets the publisher read the ledger.
+type outbox struct{ l *ledger.Ledger }
+
+func (o outbox) Next(after uint64, max int) ([]uplink.Message, error) {
+	ms, err := o.l.Next(after, max)
+	out := make([]uplink.Message, len(ms))
+	for i, m := range ms {
+		out[i] = uplink.Message{ID: m.ID, Topic: m.Topic, Payload: m.Payload, Retain: m.Retain}
+	}
+	return out, err
+}
+
+func (o outbox) Ack(ids []uint64) error { return o.l.Ack(ids) }
+
+func (s *Station) clips() []wire.Clip { return wireClips(s.tape, s.info.Rate, s.info.Start) }
+
+func wireClips(t *tape.Tape, rate float64, start time.Time) []wire.Clip {
+	var out []wire.Clip
+	for _, c := range t.Clips() {
+		w := wire.Clip{ID: c.ID, Reason: c.Reason, Alarms: c.Alarms, Samples: [2]int64{c.From, c.To}, Complete: c.Complete}
+		if !start.IsZero() {
+			w.From = start.Add(time.Duration(float64(c.From) / rate * 1e9)).UTC()
+			w.To = start.Add(time.Duration(float64(c.To) / rate * 1e9)).UTC()
+		}
+		out = append(out, w)
+	}
+	return out
+}
+
+// Export writes a clip into dir: WAV, skid file, process values, note.
+func (s *Station) Export(ctx context.Context, clip, dir string) error {
+	if err := s.tape.Flush(ctx); err != nil {
+		return err
+	}
+	return exportClip(s.tape, clip, dir)
+}
+
+func exportClip(t *tape.Tape, clip, dir string) error {
+	if clip == "" || clip != filepath.Base(clip) {
+		return fmt.Errorf("station: clip %q: %w", clip, panel.ErrNoClip)
+	}
+	_, err := t.ExportClip(filepath.Join(dir, clip), clip)
+	if errors.Is(err, tape.ErrNoClip) {
+		return fmt.Errorf("station: clip %q: %w", clip, panel.ErrNoClip)
+	}
+	return err
+}

@@ -1,0 +1,469 @@
+package station
+
+import (
+	"fmt"
+	"math"
+	"time"
+
+	"lapwing/internal/acq"
+	"lapwing/internal/alarm"
+	"lapwing/internal/crank"
+	"lapwing/internal/duty"
+	"lapwing/internal/frame"
+	"lapwing/internal/measure"
+	"lapwing/internal/skid"
+	"lapwing/internal/turn"
+	"lapwing/internal/verdict"
+	"lapwing/internal/window"
+	"lapwing/internal/wire"
+)
+
+// Line is the pure middle in one piece: blocks in, turn records, findings and alarm transitions out. The daemon and
+// the offline review run this same code; it has no clock, file or goroutine.
+type Line struct {
+	sk     *skid.Skid
+	info   acq.Info
+	proc   processAt
+	layout measure.Layout
+
+	frames   *frame.Assembler
+	turns    *turn.Converter
+	windows  *window.Tracker
+	measures *measure.Measurer
+	gas      *gasBook
+	watches  []*duty.Watch
+	record   *wire.Recorder
+	learn    LearnPlan
+	learner  *duty.Learner
+	learnt   int // steady turns that every throw has given to the learner
+	ref      *duty.Reference
+	base     *duty.Baseline
+	blocks   *duty.Blocks
+	judge    *verdict.Judge
+	alarms   *alarm.Annunciator
+	limits   []limitWatch
+
+	vec    measure.Vector
+	win    []window.Input
+	mea    []measure.Input
+	points []duty.Point
+	devs   []duty.Deviation
+	out    func(*Output)
+	count  Count
+	steady []int
+}
+
+// LearnPlan says which turns a person has declared healthy: a range of turn numbers, or the next Steady turns.
+type LearnPlan struct {
+	From, To int64 // turn numbers, To not included; used when Steady is 0
+	Steady   int   // this many steady turns of every throw, from now on
+}
+
+func (p LearnPlan) wanted() bool { return p.Steady > 0 || p.To > p.From }
+
+// Count is what has passed through the line.
+type Count struct {
+	Turns, Invalid int64
+	Reasons        map[string]int64 // why turns were not valid
+	Samples, Lost  int64
+	Blocks         int64 // evidence blocks judged
+}
+
+// Output is what one turn brought.
+type Output struct {
+	Record      wire.Turn
+	Vector      *measure.Vector   // valid until the next turn
+	Points      []duty.Point      // per throw, likewise
+	Findings    []verdict.Finding // all that stand, when Judged
+	Judged      bool              // at least one throw's evidence block closed with this turn
+	News        []verdict.Finding // what the judge said of the throws whose block closed, ended findings with grade None
+	Transitions []alarm.Transition
+	Baseline    *duty.Baseline // set on the turn on which a learning run ended
+	LearnError  error          // why a learning run that ended gave no baseline
+}
+
+// NewLine builds the line for a skid and a source. base may be nil; alarms may be a restored annunciator.
+func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base *duty.Baseline, alarms *alarm.Annunciator) (*Line, error) {
+	l := &Line{sk: sk, info: info, proc: proc, learn: learn, alarms: alarms, gas: newGasBook(sk.Gas)}
+	l.count.Reasons = map[string]int64{}
+	var err error
+	if l.frames, err = frame.New(frameConfig(sk, info)); err != nil {
+		return nil, err
+	}
+	if l.turns, err = turn.New(turnConfig(sk, info)); err != nil {
+		return nil, err
+	}
+	l.measures = measure.New(measure.Config{Machine: measureMachine(sk), Atmosphere: sk.Machine.Atmosphere})
+	l.layout = l.measures.Layout()
+	l.windows = window.NewTracker(window.Config{Works: works(sk)})
+	l.record = wire.NewRecorder(sk, l.layout, info.Rate)
+	for i := range sk.Throws {
+		l.watches = append(l.watches, duty.NewWatch(duty.WatchConfig{MinRPM: sk.Machine.MinRPM * 0.97, MaxRPM: sk.Machine.MaxRPM * 1.03, Steps: dutySteps(sk, i)}))
+	}
+	n := len(sk.Throws)
+	l.win, l.mea, l.points, l.steady = make([]window.Input, n), make([]measure.Input, n), make([]duty.Point, n), make([]int, n)
+	if l.limits, err = limitWatches(sk, l.layout); err != nil {
+		return nil, err
+	}
+	if learn.wanted() {
+		l.learner = duty.NewLearner(l.layout, duty.LearnConfig{Steps: stepCodes(sk), Throws: n, Want: sk.Detection.LearnTurns})
+	} else if base != nil {
+		if err := l.judgeBy(base); err != nil {
+			return nil, err
+		}
+	}
+	return l, nil
+}
+
+// Layout is the order of the features.
+func (l *Line) Layout() measure.Layout { return l.layout }
+
+// Count is what has passed so far.
+func (l *Line) Count() Count { return l.count }
+
+// Phase is the state of the shaft reference.
+func (l *Line) Phase() frame.Status { return l.frames.Status() }
+
+// Learnt gives the steady turns learnt so far and how many are wanted; 0, 0 when no learning run is on.
+func (l *Line) Learnt() (have, want int) {
+	if l.learner == nil {
+		return 0, 0
+	}
+	if l.learn.Steady > 0 {
+		return l.learnt, l.learn.Steady
+	}
+	return l.learnt, int(l.learn.To - l.learn.From)
+}
+
+// Judging reports whether a baseline is in force.
+func (l *Line) Judging() bool { return l.ref != nil }
+
+// Coverage tells what the learning run has seen; nil when none is on.
+func (l *Line) Coverage() []duty.Coverage {
+	if l.learner == nil {
+		return nil
+	}
+	return l.learner.Coverage()
+}
+
+// Memory is what the windows have learnt, for a restart.
+func (l *Line) Memory() window.Memory { return l.windows.Snapshot() }
+
+// Remember restores it.
+func (l *Line) Remember(m window.Memory) error { return l.windows.Restore(m) }
+
+// Alarms is the annunciator.
+func (l *Line) Alarms() *alarm.Annunciator { return l.alarms }
+
+// judgeBy puts a baseline in force.
+func (l *Line) judgeBy(b *duty.Baseline) error {
+	ref, err := b.Reference(l.layout)
+	if err != nil {
+		return err
+	}
+	l.base, l.ref = b, ref
+	l.blocks = duty.NewBlocks(ref, duty.BlockConfig{Turns: l.sk.Detection.BlockTurns})
+	l.judge = verdict.New(l.layout, verdict.Config{Channels: judgeChannels(l.sk)})
+	return nil
+}
+
+// Add passes a block through the line; emit hears of every turn that is complete.
+func (l *Line) Add(b *acq.Block, emit func(*Output)) error {
+	l.count.Samples += int64(b.N)
+	l.count.Lost += b.Lost
+	l.out = emit
+	return l.frames.Add(b, l.frame)
+}
+
+// Flush ends the stream: the last turns come out as far as they can be had.
+func (l *Line) Flush(emit func(*Output)) {
+	l.out = emit
+	l.frames.Flush(l.frame)
+	l.turns.Flush(l.turn)
+}
+
+func (l *Line) frame(f *frame.Frame) { l.turns.Add(f, l.turn) }
+
+// utc is the time of a sample; without a stated start the recording begins in 1970 and says nothing about the day.
+func (l *Line) utc(seconds float64) time.Time {
+	start := l.info.Start
+	if start.IsZero() {
+		start = time.Unix(0, 0).UTC()
+	}
+	return start.Add(time.Duration(math.Round(seconds * 1e9)))
+}
+
+func (l *Line) turn(t *turn.Turn) {
+	o := Output{Vector: &l.vec, Points: l.points}
+	l.count.Turns++
+	proc := l.proc(t.Time)
+	l.prepare(t, proc)
+	w := l.windows.Track(t, l.win)
+	if t.Valid() {
+		l.refine(w)
+		l.measures.Measure(&l.vec, t, w, l.mea)
+	} else {
+		l.count.Invalid++
+		l.count.Reasons[t.Reason]++
+	}
+	for i := range l.points {
+		l.points[i] = l.classify(i, t, proc, w)
+	}
+	o.Record = l.record.Record(t, w, &l.vec, l.points)
+	if t.Valid() {
+		l.teach(t, &o)
+		l.decide(t, &o)
+	}
+	l.out(&o)
+}
+
+// prepare sets what windows and measures are told about this turn: cylinder with its pockets, lines, gas.
+func (l *Line) prepare(t *turn.Turn, proc skid.Process) {
+	step, _ := l.sk.FindStep(proc.Step)
+	nan := math.NaN()
+	for i := range l.sk.Throws {
+		th := &l.sk.Throws[i]
+		line := skid.Line{Ps: nan, Pd: nan, Ts: nan, Td: nan}
+		if proc.Known && th.Stage-1 < len(proc.Stages) {
+			line = proc.Stages[th.Stage-1]
+		}
+		in := window.Input{Cylinder: l.sk.Throws[i].Cylinder, LinePs: line.Ps, LinePd: line.Pd}
+		if proc.Known {
+			in.Cylinder = l.sk.CylinderAt(i, proc.Step)
+			for e := range in.IdleHint {
+				name := l.sk.EndName(i, e)
+				in.IdleHint[e], in.Late[e] = step.Idle[name], step.Late[name]
+			}
+		}
+		if p, ok := l.gas.at(line.Ps, line.Ts, line.Pd); ok {
+			in.K = p.KV
+		} else {
+			in.K = l.nominalK()
+		}
+		l.win[i] = in
+		l.mea[i] = measure.Input{Cylinder: in.Cylinder, LinePs: line.Ps, LinePd: line.Pd, Ts: line.Ts, Td: line.Td, Covers: proc.Covers}
+	}
+}
+
+// refine gives the measures the gas at this turn's duty: the line's, or the plateaus where the line is not known.
+func (l *Line) refine(w window.Result) {
+	for i := range l.mea {
+		in := &l.mea[i]
+		ps, pd := in.LinePs, in.LinePd
+		for e := range w.Throws[i].Ends {
+			if math.IsNaN(ps) {
+				ps = w.Throws[i].Ends[e].Ps
+			}
+			if math.IsNaN(pd) {
+				pd = w.Throws[i].Ends[e].Pd
+			}
+		}
+		ts := in.Ts
+		if math.IsNaN(ts) && len(l.sk.Process.Stages) >= l.sk.Throws[i].Stage {
+			ts = l.sk.Process.Stages[l.sk.Throws[i].Stage-1].Ts
+		}
+		if p, ok := l.gas.at(ps, ts, pd); ok {
+			in.Gas = measure.Gas{R: p.R, Zs: p.Zs, Zd: p.Zd, KV: p.KV, KT: p.KT}
+		}
+	}
+}
+
+// nominalK is the volume exponent at the skid file's own duty, for turns whose duty is not known.
+func (l *Line) nominalK() float64 {
+	for _, s := range l.sk.Process.Stages {
+		if p, ok := l.gas.at(s.Ps, s.Ts, s.Pd); ok {
+			return p.KV
+		}
+	}
+	return 0 // the windows take their own default
+}
+
+func (l *Line) classify(i int, t *turn.Turn, proc skid.Process, w window.Result) duty.Point {
+	in := duty.Input{Turn: t.Number, Valid: t.Valid(), RPM: t.RPM, ProcessKnown: proc.Known && proc.Age < processTooOld,
+		Step: proc.Step, Ps: l.win[i].LinePs, Pd: l.win[i].LinePd}
+	for e := range in.OwnPs {
+		in.OwnPs[e], in.OwnPd[e] = math.NaN(), math.NaN()
+		if i < len(w.Throws) {
+			end := &w.Throws[i].Ends[e]
+			in.OwnPs[e], in.OwnPd[e], in.Ends[e] = end.Ps, end.Pd, end.State
+		}
+	}
+	return l.watches[i].Classify(in)
+}
+
+// processTooOld is the age beyond which process values no longer say what the machine is asked to do.
+const processTooOld = 30 * time.Second
+
+// teach adds a turn to a learning run and ends the run when it is due.
+func (l *Line) teach(t *turn.Turn, o *Output) {
+	if l.learner == nil {
+		return
+	}
+	byRange := l.learn.Steady == 0
+	if !byRange || (t.Number >= l.learn.From && t.Number < l.learn.To) {
+		least := math.MaxInt
+		for i := range l.points {
+			l.learner.Add(i, l.points[i], &l.vec)
+			if l.points[i].State == duty.Steady {
+				l.steady[i]++
+			}
+			least = min(least, l.steady[i])
+		}
+		l.learnt = least
+	}
+	if (byRange && t.Number < l.learn.To-1) || (!byRange && l.learnt < l.learn.Steady) {
+		return
+	}
+	l.endLearning(t.Time, o)
+}
+
+func (l *Line) endLearning(at float64, o *Output) {
+	b, err := l.learner.Fit(duty.Header{SkidHash: l.sk.Hash, Created: l.utc(at)})
+	l.learner = nil
+	if err == nil {
+		err = l.judgeBy(b)
+	}
+	if err != nil {
+		o.LearnError = err
+		return
+	}
+	o.Baseline = b
+}
+
+// decide gathers evidence, judges complete blocks and steps the alarms.
+func (l *Line) decide(t *turn.Turn, o *Output) {
+	var conds []alarm.Condition
+	now := l.utc(t.Time)
+	conds = l.limitConditions(conds, t)
+	if l.ref != nil {
+		for i := range l.points {
+			l.devs = l.ref.Deviate(l.devs[:0], i, l.points[i], &l.vec)
+			block, ok := l.blocks.Add(i, l.points[i], &l.vec, l.devs)
+			if !ok {
+				continue
+			}
+			l.count.Blocks++
+			o.Judged = true
+			findings := l.judge.Judge(block)
+			o.News = append(o.News, findings...)
+			conds = l.findingConditions(conds, i, &block, findings)
+		}
+		if o.Judged {
+			o.Findings = l.judge.Findings()
+		}
+	}
+	if len(conds) > 0 {
+		o.Transitions = l.alarms.Step(now, conds)
+	}
+}
+
+func frameConfig(sk *skid.Skid, info acq.Info) frame.Config {
+	ch, _ := sk.ChannelByID(sk.Phase.Channel)
+	perCount := ch.VoltsFull / float64(int64(1)<<(info.Bits-1))
+	c := frame.Config{Rate: info.Rate, Inputs: info.Channels, Channel: ch.Input, Auto: sk.Phase.AutoLevel, Threshold: sk.Phase.Threshold / perCount,
+		Hysteresis: sk.Phase.Hysteresis / perCount, MarksPerTurn: sk.Phase.MarksPerTurn}
+	if sk.Phase.Falling {
+		c.Edge = frame.Falling
+	}
+	if sk.Machine.MaxRPM > 0 {
+		c.MaxRPM = 1.5 * sk.Machine.MaxRPM
+	}
+	return c
+}
+
+func turnConfig(sk *skid.Skid, info acq.Info) turn.Config {
+	c := turn.Config{Rate: info.Rate, Step: sk.Detection.GridDeg, Marks: turn.Marks{U: sk.Phase.Uncertainty},
+		ImpactBand: sk.Detection.ImpactBand, LeakBand: sk.Detection.LeakBand}
+	for _, r := range sk.Phase.Ripple {
+		c.Marks.Ripple = append(c.Marks.Ripple, turn.Ripple{Order: r.Order, Amp: r.Amp, PhaseDeg: r.Phase})
+	}
+	channel := func(id string) turn.Channel {
+		ch, ok := sk.ChannelByID(id)
+		if !ok {
+			return turn.None()
+		}
+		gain, offset := ch.Scale(info.Bits)
+		return turn.Channel{ID: ch.ID, Input: ch.Input, Gain: gain, Offset: offset, Min: ch.Min, Max: ch.Max, Passage: turn.Passage{Hz: ch.Passage, Q: ch.PassageQ}}
+	}
+	for i := range sk.Throws {
+		t := &sk.Throws[i]
+		tc := turn.ThrowConfig{DeadCentreDeg: t.DeadCentre}
+		for e := range t.Ends {
+			tc.Pressure[e] = turn.None()
+			if t.Ends[e].Works {
+				tc.Pressure[e] = channel(t.Ends[e].Pressure)
+			}
+		}
+		for _, a := range t.Accel {
+			tc.Accel = append(tc.Accel, channel(a))
+		}
+		c.Throws = append(c.Throws, tc)
+	}
+	return c
+}
+
+func measureMachine(sk *skid.Skid) measure.Machine {
+	var m measure.Machine
+	valves := func(vs []skid.Valve) (out []measure.Valve) {
+		for _, v := range vs {
+			out = append(out, measure.Valve{ID: v.ID, Cover: v.Cover != ""})
+		}
+		return out
+	}
+	for i := range sk.Throws {
+		t := &sk.Throws[i]
+		mt := measure.Throw{ID: t.ID, Stage: t.Stage, Acoustic: len(t.Accel) > 0}
+		for e := range t.Ends {
+			mt.Ends[e] = measure.End{Works: t.Ends[e].Works && t.Ends[e].Pressure != "", Suction: valves(t.Ends[e].Suction), Discharge: valves(t.Ends[e].Discharge)}
+		}
+		m.Throws = append(m.Throws, mt)
+	}
+	return m
+}
+
+// judgeChannels names the sensors, so that a finding against one names it.
+func judgeChannels(sk *skid.Skid) (out []verdict.ThrowChannel) {
+	for i := range sk.Throws {
+		t := &sk.Throws[i]
+		c := verdict.ThrowChannel{Pressure: [2]string{t.Ends[crank.HE].Pressure, t.Ends[crank.CE].Pressure}}
+		if len(t.Accel) > 0 {
+			c.Accel = t.Accel[0]
+		}
+		out = append(out, c)
+	}
+	return out
+}
+
+func works(sk *skid.Skid) (out [][2]bool) {
+	for i := range sk.Throws {
+		t := &sk.Throws[i]
+		out = append(out, [2]bool{t.Ends[crank.HE].Works, t.Ends[crank.CE].Works})
+	}
+	return out
+}
+
+func dutySteps(sk *skid.Skid, throw int) (out []duty.Step) {
+	for _, s := range sk.Steps {
+		out = append(out, duty.Step{Code: s.Code, Idle: [2]bool{s.Idle[sk.EndName(throw, crank.HE)], s.Idle[sk.EndName(throw, crank.CE)]}})
+	}
+	return out
+}
+
+func stepCodes(sk *skid.Skid) (out []int) {
+	for _, s := range sk.Steps {
+		out = append(out, s.Code)
+	}
+	return out
+}
+
+// checkMachine says what the line cannot do without.
+func checkMachine(sk *skid.Skid) error {
+	for i := range sk.Throws {
+		for e := range sk.Throws[i].Ends {
+			if sk.Throws[i].Ends[e].Works && sk.Throws[i].Ends[e].Pressure != "" {
+				return nil
+			}
+		}
+	}
+	return fmt.Errorf("station: skid %s has no cylinder pressure channel: there is nothing to follow a valve by", sk.ID)
+}

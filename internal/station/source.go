@@ -1,0 +1,95 @@
+package station
+
+import (
+	"fmt"
+	"os"
+	"strings"
+	"time"
+
+	"lapwing/internal/acq"
+	"lapwing/internal/acq/model"
+	"lapwing/internal/acq/wav"
+	"lapwing/internal/plant"
+	"lapwing/internal/scenario"
+	"lapwing/internal/skid"
+)
+
+// Scenarios lists the modelled scenarios, for help texts.
+func Scenarios() string { return scenario.Help() }
+
+// processAt gives the process values in force at t seconds of sample clock.
+type processAt func(t float64) skid.Process
+
+// openSource opens what a source string names, and the process values that go with it.
+func openSource(o *Options, sk *skid.Skid) (acq.Source, processAt, error) {
+	kind, arg, ok := strings.Cut(o.Source, ":")
+	if !ok || arg == "" {
+		return nil, nil, fmt.Errorf("station: source %q: write wav:FILE or model:NAME", o.Source)
+	}
+	var src acq.Source
+	var proc processAt
+	switch kind {
+	case "wav":
+		w, err := wav.Open(arg, wav.Options{})
+		if err != nil {
+			return nil, nil, err
+		}
+		src, proc = w, fixed(sk)
+	case "model":
+		run, err := scenario.Get(arg, sk)
+		if err != nil {
+			return nil, nil, err
+		}
+		start := o.Start
+		if start.IsZero() {
+			start = time.Now().UTC().Truncate(time.Second)
+		}
+		m, err := model.Open(sk, run.Script, model.Options{Seed: o.Seed, Duration: time.Duration(run.Duration * float64(time.Second)), Start: start})
+		if err != nil {
+			return nil, nil, err
+		}
+		src, proc = m, m.Process
+	default:
+		return nil, nil, fmt.Errorf("station: source %q: %q is not a kind of source; write wav:FILE or model:NAME", o.Source, kind)
+	}
+	if o.ProcessCSV != "" {
+		p, err := readProcess(o.ProcessCSV, sk)
+		if err != nil {
+			_ = src.Close()
+			return nil, nil, err
+		}
+		proc = p
+	}
+	if n := inputs(sk); src.Info().Channels < n {
+		_ = src.Close()
+		return nil, nil, fmt.Errorf("station: source %s has %d channels, the skid file uses input %d (inputs count from 0)", src.Info().Name, src.Info().Channels, n-1)
+	}
+	if !o.Fast {
+		src = acq.Paced(src, acq.WallClock{})
+	}
+	return src, proc, nil
+}
+
+// inputs is how many converter inputs the skid file needs.
+func inputs(sk *skid.Skid) int {
+	n := 0
+	for _, c := range sk.Channels {
+		n = max(n, c.Input+1)
+	}
+	return n
+}
+
+func fixed(sk *skid.Skid) processAt { return plant.Fixed(sk).At }
+
+func readProcess(path string, sk *skid.Skid) (processAt, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, fmt.Errorf("station: process values: %w", err)
+	}
+	defer f.Close()
+	s, err := plant.ReadCSV(f, sk)
+	if err != nil {
+		return nil, fmt.Errorf("station: process values %s: %w", path, err)
+	}
+	return s.At, nil
+}

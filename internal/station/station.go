@@ -1,0 +1,366 @@
+// Package station is the wiring: a skid file becomes a running line with its tape, ledger, uplink and page. It is the
+// only room that knows all others. A source goroutine feeds the tape and, through a bounded counted queue, the one
+// goroutine that computes; edges read one immutable snapshot and can slow neither.
+package station
+
+import (
+	"context"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"io"
+	"log/slog"
+	"os"
+	"path/filepath"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"lapwing/internal/acq"
+	"lapwing/internal/alarm"
+	"lapwing/internal/duty"
+	"lapwing/internal/ledger"
+	"lapwing/internal/panel"
+	"lapwing/internal/skid"
+	"lapwing/internal/tape"
+	"lapwing/internal/uplink"
+	"lapwing/internal/window"
+	"lapwing/internal/wire"
+)
+
+// Options of a station. Broker and Listen replace what the skid file says.
+type Options struct {
+	SkidFile   string
+	State      string // folder for tape.db, clips.db and state.db
+	Source     string // wav:FILE or model:NAME
+	ProcessCSV string
+	Fast       bool // as fast as it goes: the source waits for the line instead of the line losing blocks
+	Learn      int  // steady turns from now on that a person has declared healthy; 0: use the kept baseline
+	Broker     string
+	Listen     string
+	Seed       uint64
+	Start      time.Time        // UTC of a modelled machine's first sample; zero: now
+	OnTurn     func(*wire.Turn) // hears of every turn, in the compute goroutine; nil: nobody
+	Log        *slog.Logger
+}
+
+// Station is a running daemon.
+type Station struct {
+	o      Options
+	log    *slog.Logger
+	sk     *skid.Skid
+	src    acq.Source
+	info   acq.Info
+	proc   processAt
+	tape   *tape.Tape
+	ledger *ledger.Ledger
+	line   *Line
+	pub    *uplink.Publisher
+	panel  *panel.Panel
+	topics uplink.Topics
+
+	now      atomic.Pointer[wire.Now]
+	progress atomic.Int64 // samples through the line
+	dropped  atomic.Int64 // blocks the line had no room for
+	desk     desk
+
+	closeOnce sync.Once
+	closeErr  error
+}
+
+const (
+	docWindows = "windows"
+	queueLen   = 256 // blocks of about 20 ms between source and line: five seconds
+)
+
+// Open checks everything and acquires it: files, source, page address. A station that does not open has left nothing
+// open.
+func Open(o Options) (_ *Station, err error) {
+	if o.Log == nil {
+		o.Log = slog.New(slog.DiscardHandler)
+	}
+	s := &Station{o: o, log: o.Log}
+	if s.sk, err = skid.Load(o.SkidFile); err != nil {
+		return nil, err
+	}
+	if err := checkMachine(s.sk); err != nil {
+		return nil, err
+	}
+	if err := os.MkdirAll(o.State, 0o750); err != nil {
+		return nil, fmt.Errorf("station: state folder: %w", err)
+	}
+	defer func() {
+		if err != nil {
+			err = errors.Join(err, s.release())
+		}
+	}()
+	if s.src, s.proc, err = openSource(&o, s.sk); err != nil {
+		return nil, err
+	}
+	s.info = s.src.Info()
+	if s.ledger, err = ledger.Open(filepath.Join(o.State, "state.db"), ledger.Options{}); err != nil {
+		return nil, err
+	}
+	if s.tape, err = tape.Open(filepath.Join(o.State, "tape.db"), tape.Options{Info: s.info, Skid: s.sk.Raw,
+		MaxBytes: s.sk.Tape.MaxBytes, MaxAge: s.sk.Tape.MaxAge, ClipBytes: s.sk.Tape.ClipBytes}); err != nil {
+		return nil, err
+	}
+	if err := s.openLine(); err != nil {
+		return nil, err
+	}
+	if err := s.openEdges(); err != nil {
+		return nil, err
+	}
+	return s, nil
+}
+
+// openLine restores what a restart must not forget: alarm states, baseline, learnt windows.
+func (s *Station) openLine() error {
+	alarms := alarm.New(AlarmTiming(s.sk))
+	var snap alarm.Snapshot
+	if ok, err := s.ledger.AlarmSnapshot(&snap); err != nil {
+		return err
+	} else if ok {
+		if err := alarms.Restore(snap); err != nil {
+			return err
+		}
+	}
+	base, err := s.baseline()
+	if err != nil {
+		return err
+	}
+	plan := LearnPlan{Steady: s.o.Learn}
+	s.line, err = NewLine(s.sk, s.info, nil, plan, base, alarms)
+	if err != nil && base != nil && s.o.Learn == 0 {
+		// A baseline learnt with other features is kept on disk and not used.
+		s.log.Warn("the kept baseline does not fit this skid file; declare the machine healthy again with --learn", "err", err)
+		s.line, err = NewLine(s.sk, s.info, nil, plan, nil, alarms)
+	}
+	if err != nil {
+		return err
+	}
+	var mem window.Memory
+	if ok, err := s.ledger.Doc(docWindows, &mem); err != nil {
+		return err
+	} else if ok {
+		if err := s.line.Remember(mem); err != nil {
+			s.log.Warn("learnt windows of before are not used", "err", err)
+		}
+	}
+	return s.desk.restore(s.ledger, s.line.Alarms(), s.sk.ID)
+}
+
+func (s *Station) baseline() (*duty.Baseline, error) {
+	var raw json.RawMessage
+	_, ok, err := s.ledger.Baseline(0, &raw)
+	if err != nil || !ok {
+		return nil, err
+	}
+	b, err := duty.ParseBaseline(raw)
+	if err != nil {
+		return nil, err
+	}
+	if b.SkidHash != s.sk.Hash {
+		s.log.Warn("the baseline was learnt with another version of the skid file", "baseline", b.Created)
+	}
+	return b, nil
+}
+
+func (s *Station) openEdges() (err error) {
+	s.topics = uplink.Topics{Root: s.sk.Uplink.Root, Skid: s.sk.ID}
+	s.publish(&Output{}, time.Time{})
+	broker := s.sk.Uplink.Broker
+	if s.o.Broker != "" {
+		broker = s.o.Broker
+	}
+	if broker != "" {
+		u := s.sk.Uplink
+		id := u.ClientID
+		if id == "" {
+			id = "lapwing-" + s.sk.ID
+		}
+		s.pub, err = uplink.New(uplink.Config{Broker: broker, ClientID: id, Topics: s.topics, UserFile: u.UserFile, PasswordFile: u.PasswordFile,
+			CAFile: u.CAFile, CertFile: u.CertFile, KeyFile: u.KeyFile, Offline: s.offline, Standing: s.standing, Log: s.log}, outbox{s.ledger})
+		if err != nil {
+			return err
+		}
+	}
+	listen := s.sk.Panel.Listen
+	if s.o.Listen != "" {
+		listen = s.o.Listen
+	}
+	if listen != "" && listen != "none" {
+		if s.panel, err = panel.Open(listen, s, s.log); err != nil {
+			return err
+		}
+		s.log.Info("status page", "url", s.panel.URL())
+	}
+	return nil
+}
+
+// PageURL is where the status page is; empty when there is none.
+func (s *Station) PageURL() string {
+	if s.panel == nil {
+		return ""
+	}
+	return s.panel.URL()
+}
+
+// Now is the present snapshot.
+func (s *Station) Now() *wire.Now { return s.now.Load() }
+
+// Progress is the number of samples that have passed through the line: it stands still when the line is dead.
+func (s *Station) Progress() int64 { return s.progress.Load() }
+
+// parcel is one block on its way to the line, with the process values that begin within it.
+type parcel struct {
+	block acq.Block
+	rows  []row
+}
+
+// Run reads the source until it ends or ctx does, and passes everything through the line. It returns nil at the end of
+// the source and after a cancelled ctx.
+func (s *Station) Run(ctx context.Context) error {
+	inner, stop := context.WithCancel(context.WithoutCancel(ctx))
+	var edges sync.WaitGroup
+	defer func() { stop(); edges.Wait() }()
+	if s.panel != nil {
+		edges.Go(func() {
+			if err := s.panel.Serve(); err != nil {
+				s.log.Error("status page", "err", err)
+			}
+		})
+		edges.Go(func() { <-inner.Done(); _ = s.panel.Close() })
+	}
+	pubDone := make(chan struct{})
+	if s.pub != nil {
+		edges.Go(func() { s.pub.Run(inner); close(pubDone) })
+	}
+
+	queue := make(chan *parcel, queueLen)
+	srcErr := make(chan error, 1)
+	go func() {
+		defer close(queue)
+		srcErr <- s.read(ctx, queue)
+	}()
+	lineErr := s.compute(queue)
+	err := errors.Join(<-srcErr, lineErr)
+	if s.pub != nil && ctx.Err() == nil {
+		s.drainUplink(5 * time.Second)
+	}
+	return err
+}
+
+// read is the source goroutine: tape first, then the line.
+func (s *Station) read(ctx context.Context, queue chan<- *parcel) error {
+	var b acq.Block
+	var clock rowClock
+	var lostHere int64
+	var fastFlush int64
+	for {
+		err := s.src.Read(ctx, &b)
+		switch {
+		case errors.Is(err, io.EOF):
+			return nil
+		case ctx.Err() != nil:
+			return nil
+		case err != nil:
+			return fmt.Errorf("station: source: %w", err)
+		}
+		s.tape.Append(&b)
+		p := &parcel{block: cloneBlock(&b), rows: clock.rows(&b, s.info.Rate, s.proc)}
+		for _, r := range p.rows {
+			s.tape.Process(r.seq, r.proc)
+		}
+		p.block.Lost += lostHere
+		if s.o.Fast {
+			queue <- p
+			lostHere = 0
+			// The tape never waits for its disk; a source faster than time itself has to.
+			if b.Seq0-fastFlush > int64(2*s.info.Rate) {
+				fastFlush = b.Seq0
+				if err := s.tape.Flush(context.WithoutCancel(ctx)); err != nil {
+					s.log.Error("tape", "err", err)
+				}
+			}
+			continue
+		}
+		select {
+		case queue <- p:
+			lostHere = 0
+		default:
+			// The line is behind by the whole queue. The tape has the block; the line sees a gap.
+			s.dropped.Add(1)
+			lostHere += int64(b.N) + b.Lost
+		}
+	}
+}
+
+func cloneBlock(b *acq.Block) acq.Block {
+	c := *b
+	flat := make([]int32, b.N*len(b.Counts))
+	c.Counts = make([][]int32, len(b.Counts))
+	for i := range b.Counts {
+		c.Counts[i] = flat[i*b.N : (i+1)*b.N : (i+1)*b.N]
+		copy(c.Counts[i], b.Counts[i])
+	}
+	return c
+}
+
+// compute is the one goroutine that owns the line.
+func (s *Station) compute(queue <-chan *parcel) error {
+	h := newHeld()
+	s.line.proc = h.at
+	var first error
+	emit := func(o *Output) {
+		if err := s.take(o); err != nil && first == nil {
+			first = err
+			s.log.Error("results cannot be kept", "err", err)
+		}
+	}
+	lastHealth := time.Now()
+	for p := range queue {
+		for _, r := range p.rows {
+			h.put(r)
+		}
+		if err := s.line.Add(&p.block, emit); err != nil {
+			return fmt.Errorf("station: line: %w", err)
+		}
+		s.progress.Add(int64(p.block.N))
+		if t := time.Now(); t.Sub(lastHealth) > s.sk.Uplink.HealthEvery {
+			lastHealth = t
+			s.offerHealth()
+		}
+	}
+	s.line.Flush(emit)
+	s.offerHealth()
+	return first
+}
+
+// Close stops what Run left and writes what must outlive the process. It is safe after a failed Run and twice.
+func (s *Station) Close() error {
+	s.closeOnce.Do(func() {
+		if s.line != nil && s.ledger != nil {
+			s.closeErr = s.ledger.PutDoc(docWindows, s.line.Memory())
+		}
+		s.closeErr = errors.Join(s.closeErr, s.release())
+	})
+	return s.closeErr
+}
+
+func (s *Station) release() error {
+	var errs []error
+	if s.panel != nil {
+		errs = append(errs, s.panel.Close())
+	}
+	if s.src != nil {
+		errs = append(errs, s.src.Close())
+	}
+	if s.tape != nil {
+		errs = append(errs, s.tape.Close())
+	}
+	if s.ledger != nil {
+		errs = append(errs, s.ledger.Close())
+	}
+	return errors.Join(errs...)
+}
