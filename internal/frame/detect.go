@@ -42,18 +42,18 @@ type detector struct {
 	nh      int // heights ever taken
 	wasHigh bool
 
-	state      int
-	trig       int64 // first sample beyond on
-	peakAt     int64
-	peak       float64
-	closing    int64 // sample at which the pulse is decided
-	high       bool  // while settling: beyond on again
-	bounced    bool
-	qsum, qsq  float64 // of z at rest since the last mark
-	qn         int64
-	rest       float64 // mean z at rest; with fixed levels the resting level is not where z is 0
-	edgesLost  int64   // pulses whose edge fell into lost samples
-	sinceFound int     // hops since the last search
+	state       int
+	trig        int64 // first sample beyond on
+	peakAt      int64
+	peak        float64
+	closing     int64 // sample at which the pulse is decided
+	high        bool  // while settling: beyond on again
+	bounced     bool
+	qsum, qsq   float64 // of z at rest since the last mark
+	qn          int64
+	rest        float64 // mean z at rest; with fixed levels the resting level is not where z is 0
+	edgesLost   int64   // pulses whose edge fell into lost samples
+	sinceSearch int     // hops since the last search
 }
 
 func newDetector(cfg *Config, r *ring, holes *spans) *detector {
@@ -160,14 +160,14 @@ func (d *detector) restart() {
 	d.qsum, d.qsq, d.qn = 0, 0, 0
 }
 
-const searchEvery = 24 // hops: three of the shortest turns
+const searchEvery = 24 // hops, three of the shortest turns; when there are many to look through, a sixteenth of them
 
 // search looks for the levels if it is time; called at each full hop while the speed is not known.
 func (d *detector) search() {
-	if d.sinceFound++; d.sinceFound < searchEvery {
+	if d.sinceSearch++; d.sinceSearch < max(searchEvery, d.survey.held()/16) {
 		return
 	}
-	d.sinceFound = 0
+	d.sinceSearch = 0
 	l, ok := d.survey.find(d.cfg.Edge)
 	if !ok {
 		return

@@ -1,7 +1,7 @@
 // Package frame cuts the stream of samples into revolutions on the shaft's phase reference.
 //
 // Needs: blocks of all inputs in order, one of them the phase signal with one mark a turn.
-// Waits: until the closing mark is sure: a tenth of a turn after it, up to two fifths when it came off its time.
+// Waits: until the closing mark is sure: a twentieth of a turn after it, up to two fifths when it came off its time.
 // Emits: one Frame per revolution, raw codes and sub-sample marks, with what was wrong in Q.
 // When it cannot: at standstill, and until the speed is established again, there is no frame or one marked Starting;
 // a revolution whose mark did not come is part of a longer frame marked Missing, never half a frame.

@@ -41,6 +41,9 @@ func newSurvey(length int, slowest float64) *survey {
 
 func (s *survey) restart() { s.n, s.k = 0, 0 }
 
+// held gives the number of hops that can be looked at.
+func (s *survey) held() int { return min(s.n, len(s.hops)) }
+
 // full reports whether three of the slowest turns have been seen.
 func (s *survey) full() bool { return s.n >= len(s.hops) }
 
@@ -78,7 +81,7 @@ const (
 // The range is the median of the extremes of three thirds of the time, so that disturbances in one third do not
 // count. The resting level is the median of the hops' means.
 func (s *survey) find(edge Edge) (levels, bool) {
-	n := min(s.n, len(s.hops))
+	n := s.held()
 	if n < leastHops {
 		return levels{}, false
 	}

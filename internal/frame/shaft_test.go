@@ -101,6 +101,7 @@ func frames(t fataler, cfg Config, blocks []acq.Block) ([]copied, Status) {
 	if err != nil {
 		t.Fatal(err)
 	}
+	a.ring.tight = len(blocks) > 100
 	var out []copied
 	var last *Frame
 	emit := func(f *Frame) {
