@@ -205,3 +205,38 @@ func TestAnEndThatTakesBackItsGasDeliversNothing(t *testing.T) {
 	}
 	near(t, "highest pressure, bar", top/1e5, 20*math.Pow(2.2/1.2, 1.3), 1e-6)
 }
+
+// TestTheExampleMachineStaysWithinItsLimits goes over the duties that the two-throw example is used at: ratios 1.8 to
+// 3.6, its whole speed range, every load step. A healthy machine must not stand in alarm there.
+func TestTheExampleMachineStaysWithinItsLimits(t *testing.T) {
+	sk := parsed(t, example(t))
+	m := &sk.Machine
+	for _, rpm := range []float64{500, 740, 1000} {
+		for _, ratio := range []float64{1.8, 2.75, 3.6} {
+			line := sk.Process.Stages[0]
+			line.Pd = ratio * line.Ps
+			g, err := sk.Gas.Duty(line.Ps, line.Ts, line.Pd)
+			if err != nil {
+				t.Fatal(err)
+			}
+			m.RatedRPM = rpm
+			for _, st := range sk.Steps {
+				for i := range sk.Throws {
+					it := sk.ideal(i, st, line, g)
+					id := fmt.Sprintf("%s, step %d, ratio %g, %g rpm", sk.Throws[i].ID, st.Code, ratio, rpm)
+					if it.pin.MaxCompression > 0.9*m.RodLoadCompression || it.pin.MaxTension > 0.9*m.RodLoadTension {
+						t.Errorf("%s: pin load +%.0f/−%.0f N", id, it.pin.MaxCompression, it.pin.MaxTension)
+					}
+					if !it.pin.OK(2*crank.LeastReversalDeg, 2*crank.LeastReversalShare) {
+						t.Errorf("%s: reversal %.0f°, %.3f", id, it.pin.Longest, it.pin.Share)
+					}
+					for e, end := range it.ends {
+						if !end.idle && end.ve < 0.2 {
+							t.Errorf("%s end %d delivers %.2f of its volume", id, e, end.ve)
+						}
+					}
+				}
+			}
+		}
+	}
+}
