@@ -30,6 +30,12 @@ var floors = []floor{
 	{"flow_balance", 0.015, 0},            // measured 0.013, and it drifts with the temperatures
 	{"leak_area_mm2", 0.5, 0},             // measured 0.06-0.16 % of throughput
 	{"leak_phase_deg", 0.03, 0},
+	{"leak_zero_bar", 0.02, 0},
+	{"leak_residual", 0, 0.2},
+	{"suction_opens_deg", 0.15, 0}, // regressed on the duty, where the *_late ones need it hardly
+	{"discharge_opens_deg", 0.15, 0},
+	{"suction_closes_deg", 1, 0}, // ill-conditioned at full load (windows.md)
+	{"discharge_closes_deg", 0.5, 0},
 	{"leak_noise_db", 0.6, 0},
 	{"leak_shape", 0.02, 0},
 	{"impact_ln", 0.10, 0}, // openings; closings below

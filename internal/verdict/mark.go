@@ -1,0 +1,163 @@
+package verdict
+
+import (
+	"math"
+	"slices"
+
+	"lapwing/internal/crank"
+	"lapwing/internal/measure"
+)
+
+func (c *trial) packing() bool { return c.kind == Leaking && c.group < 0 && c.h != hRings }
+
+// judgeable tells whether the block can say anything about a hypothesis.
+func (c *trial) judgeable(judged [2]bool) bool {
+	switch {
+	case c.end >= 0:
+		return judged[c.end]
+	case c.h == hRings || c.h == hGas:
+		return judged[0] && judged[1]
+	}
+	return judged[0] || judged[1]
+}
+
+// doubts withdraws what a doubtful sensor bears on.
+func (b *bench) doubts(c *trial, doubt *[2]bool, deaf *bool) {
+	switch {
+	case c.kind == AccelGain:
+		*deaf = true
+	case c.end >= 0:
+		doubt[c.end] = true
+	default:
+		doubt[0], doubt[1] = true, true
+	}
+}
+
+// sharePairs books what vibration heard of a pair. Pressure decides between the two; where it is silent the one that
+// has a finding already, else the louder, takes the evidence, so that one leak does not cry twice.
+func (b *bench) sharePairs(v *heard, press *[hPressures]fitted) {
+	for _, h := range [2]int{0, 1} {
+		q := partner(h)
+		if math.IsNaN(v.leak[h]) || math.IsNaN(v.leak[q]) {
+			continue
+		}
+		pair := func(yes, no int) { v.leak[no] = math.Min(0, v.leak[no]) }
+		hp, qp := press[h].chosen && press[h].llr >= alertClass, press[q].chosen && press[q].llr >= alertClass
+		switch {
+		case hp && qp: // both leak, says pressure: both are heard
+		case hp:
+			pair(h, q)
+		case qp:
+			pair(q, h)
+		case b.standing(h) != b.standing(q):
+			if b.standing(h) {
+				pair(h, q)
+			} else {
+				pair(q, h)
+			}
+		case v.noiseZ[h] >= v.noiseZ[q]:
+			pair(h, q)
+		default:
+			pair(q, h)
+		}
+	}
+}
+
+func (b *bench) standing(h int) bool {
+	for i := range b.cases {
+		if c := &b.cases[i]; c.kind == Leaking && c.h == h && c.group >= 0 && c.grade > None {
+			return true
+		}
+	}
+	return false
+}
+
+// mark gathers a block's evidence on one hypothesis.
+func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v *heard, t *felt, doubt [2]bool, deaf bool) mark {
+	nan := math.NaN()
+	m := mark{g: nan, sd: nan, area: nan, aSd: nan}
+	for k := range m.llr {
+		m.llr[k] = nan
+	}
+	withdrawn := c.end >= 0 && doubt[c.end] || c.end < 0 && (doubt[0] || doubt[1])
+	if c.sensor {
+		if c.kind == AccelGain {
+			m.llr[measure.Vibration] = v.gain
+			m.g = v.shift
+			return m
+		}
+		f := press[c.h]
+		if f.judged {
+			m.g, m.sd = f.g, f.sd
+			m.llr[measure.Pressure] = f.llr
+			if !f.first && f.llr > 0 { // only what explains the block best accuses a sensor
+				m.llr[measure.Pressure] = 0
+			}
+		}
+		return m
+	}
+	if f := press[c.h]; f.judged && !withdrawn {
+		switch c.kind {
+		case Leaking:
+			m.llr[measure.Pressure], m.g, m.sd = f.llr, f.g, f.sd
+			m.drift = c.slow.Step(f.z)
+			m.slowSignal = m.drift >= 1
+		case ImpactingHard: // a broken plate also leaks: that is its second witness
+			if f.chosen && f.llr > 0 && v.hard[c.h] >= 1 {
+				m.llr[measure.Pressure] = f.llr
+			}
+		}
+	}
+	if c.kind == OpeningLate && !withdrawn && v.late[c.h] >= 1 { // a loss alone may be anything: dirt, gas, speed
+		if d := at(j.dev, b.place.ends[c.end].loss[c.group]); d != nil {
+			m.llr[measure.Pressure] = capped(llr(d.Z))
+		}
+	}
+	if c.group >= 0 {
+		m.llr[measure.Temperature] = t.group[c.h]
+		m.valve = t.valve[c.h]
+	}
+	switch {
+	case c.packing():
+		b.markPacking(c, &m, v, t)
+	case c.kind == Leaking:
+		if !deaf {
+			m.llr[measure.Vibration] = v.leak[c.h]
+		}
+		if c.h == hRings {
+			m.llr[measure.Temperature] = t.rings
+		} else {
+			m.ambiguous = s.structural(&b.place, c.end, c.group)
+			if p := press[c.h]; !(p.chosen && p.llr >= alertClass) && pairOf[c.h] == v.best && v.leak[c.h] > 0 {
+				q := partner(c.h)
+				if b.place.ends[q/2].works {
+					m.ambiguous = append(m.ambiguous, b.place.group(q/2, q%2))
+				}
+			}
+			if v.leak[c.h] >= alertClass || m.valve != "" { // packing makes no noise at the valves and warms none
+				m.ambiguous = slices.DeleteFunc(m.ambiguous, func(s string) bool { return s == b.place.id+".packing" })
+			}
+			if b.quietPacking(v, t) && c.end == crank.CE && c.group == suction && m.llr[measure.Pressure] > 0 {
+				m.llr[measure.Pressure] = 0 // the packing's case now
+			}
+		}
+	case c.kind == ImpactingHard && !deaf:
+		m.llr[measure.Vibration] = v.hard[c.h]
+	case c.kind == OpeningLate && !deaf:
+		m.llr[measure.Vibration] = v.late[c.h]
+	}
+	return m
+}
+
+// quietPacking tells whether a crank-end suction pattern must be the packing: valves quiet, gas no warmer. Both
+// witnesses must have been heard.
+func (b *bench) quietPacking(v *heard, t *felt) bool {
+	return v.leak[2] <= -1 && v.noiseZ[2] < 1 && !math.IsNaN(t.ofTd) && t.ofTd < 1
+}
+
+func (b *bench) markPacking(c *trial, m *mark, v *heard, t *felt) {
+	if !b.quietPacking(v, t) {
+		m.llr[measure.Pressure] = math.Min(0, m.llr[measure.Pressure])
+	}
+	m.ambiguous = []string{b.place.group(crank.CE, suction)}
+}

@@ -1,0 +1,98 @@
+package verdict
+
+import (
+	"strings"
+
+	"lapwing/internal/crank"
+	"lapwing/internal/measure"
+)
+
+// Group indexes of an end.
+const (
+	suction   = 0
+	discharge = 1
+)
+
+var groupName = [2]string{"suction", "discharge"}
+var endName = [2]string{crank.HE: "he", crank.CE: "ce"}
+var endWords = [2]string{crank.HE: "head end", crank.CE: "crank end"}
+
+// place says where a throw's features stand in the layout; -1 where there is none.
+type place struct {
+	id     string
+	ends   [2]endPlace
+	rings  pathPlace
+	exists bool
+}
+
+type endPlace struct {
+	works  bool
+	f      [patternLen]int
+	ratio  int
+	excess int
+	loss   [2]int
+	path   [2]pathPlace
+	impact [2][2]int // group; opens, closes
+	lag    [2]int    // opening
+	covers [2][]coverPlace
+}
+
+type pathPlace struct{ area, noise, shape int }
+
+type coverPlace struct {
+	valve string
+	at    int
+}
+
+func places(l measure.Layout) []place {
+	n := 0
+	for _, f := range l {
+		n = max(n, f.Throw+1)
+	}
+	out := make([]place, n)
+	for t := range out {
+		p := &out[t]
+		for _, f := range l {
+			if f.Throw == t {
+				p.id, _, _ = strings.Cut(f.Subject, ".")
+				p.exists = true
+				break
+			}
+		}
+		paths := func(subject string) pathPlace {
+			return pathPlace{l.Find(subject, "leak_area_mm2"), l.Find(subject, "leak_noise_db"), l.Find(subject, "leak_shape")}
+		}
+		p.rings = paths(p.id + ".rings")
+		for e := range p.ends {
+			ep := &p.ends[e]
+			s := p.id + "." + endName[e]
+			for i, name := range patternNames {
+				ep.f[i] = l.Find(s, name)
+				ep.works = ep.works || ep.f[i] >= 0
+			}
+			ep.ratio, ep.excess = l.Find(s, "ratio_plateau"), l.Find(s, "t_excess_k")
+			for g, name := range groupName {
+				ep.loss[g] = l.Find(s, name+"_loss_kw")
+				ep.path[g] = paths(s + "." + name)
+				ep.impact[g] = [2]int{l.Find(s+"."+name+".opens", "impact_ln"), l.Find(s+"."+name+".closes", "impact_ln")}
+				ep.lag[g] = l.Find(s+"."+name+".opens", "lag_ms")
+			}
+		}
+		for i, f := range l {
+			if f.Throw != t || f.Name != "cover_above_group_k" || f.End < 0 || f.End > 1 {
+				continue
+			}
+			// <throw>.<end>.<s|d><n>
+			last := f.Subject[strings.LastIndexByte(f.Subject, '.')+1:]
+			g := suction
+			if strings.HasPrefix(last, "d") {
+				g = discharge
+			}
+			p.ends[f.End].covers[g] = append(p.ends[f.End].covers[g], coverPlace{f.Subject, i})
+		}
+	}
+	return out
+}
+
+// group gives the name of a valve group.
+func (p *place) group(end, g int) string { return p.id + "." + endName[end] + "." + groupName[g] }

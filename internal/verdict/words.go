@@ -1,0 +1,263 @@
+package verdict
+
+import (
+	"cmp"
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"lapwing/internal/duty"
+	"lapwing/internal/measure"
+)
+
+// write makes the finding that people read, from the evidence of this block and the medians of the last ones.
+func (j *Judge) write(b *bench, c *trial, blk duty.Block, press *[hPressures]fitted) Finding {
+	w := c.weigh()
+	m := &c.marks[len(c.marks)-1]
+	f := Finding{Subject: c.subject, Kind: c.kind, Grade: c.grade, Odds: w.total, SinceTurn: c.since, Turn: blk.Turn1,
+		Seq0: blk.Seq0, Seq1: blk.Seq1, Throw: blk.Throw, Valve: m.valve, Ambiguous: slices.Clone(m.ambiguous)}
+	j.severity(&f, c)
+	f.Evidence = j.evidence(b, c, press)
+	f.Settle, f.Next = advice(c, &f)
+	f.Sentence = sentence(c, &f)
+	return f
+}
+
+// severity puts numbers with honest intervals on a leak and on a sensor's error. The patterns' own uncertainty (35 %)
+// and that of the fitted area (reference/leaks.md section 4) are in them; formal intervals are far too narrow.
+func (j *Judge) severity(f *Finding, c *trial) {
+	g, sd := c.amplitude()
+	half := func(v, s, share float64) float64 { return 2 * math.Hypot(s, share*v) }
+	switch c.kind {
+	case Leaking:
+		if !math.IsNaN(g) && g > 0 {
+			h := half(g, sd, templateError/2)
+			f.Severity = append(f.Severity, Quantity{"lost_capacity_percent", g, math.Max(0, g-h), g + h})
+		}
+		if a, s := c.over(func(m *mark) (float64, float64) { return m.area, m.aSd }); !math.IsNaN(a) {
+			h := half(a, s, 0)
+			f.Severity = append(f.Severity, Quantity{"leak_area_mm2", 1e6 * a, math.Max(0, 1e6*(a-h)), 1e6 * (a + h)})
+		}
+	case DeadCentre: // amplitude: degrees that the pressures are plotted too early
+		if !math.IsNaN(g) {
+			f.Severity = append(f.Severity, Quantity{"early_deg", g, g - half(g, sd, 0.2), g + half(g, sd, 0.2)})
+		}
+	case PressureZero:
+		if !math.IsNaN(g) {
+			f.Severity = append(f.Severity, Quantity{"zero_percent_of_suction", g, g - half(g, sd, 0.2), g + half(g, sd, 0.2)})
+		}
+	case Clearance: // the pattern is that of a clearance assumed too high
+		if !math.IsNaN(g) {
+			f.Severity = append(f.Severity, Quantity{"clearance_points_lower", g, g - half(g, sd, 0.3), g + half(g, sd, 0.3)})
+		}
+	case GasChanged:
+		if !math.IsNaN(g) {
+			f.Severity = append(f.Severity, Quantity{"exponent_change", g / 100, (g - half(g, sd, 0.2)) / 100, (g + half(g, sd, 0.2)) / 100})
+		}
+	case AccelGain:
+		if !math.IsNaN(g) {
+			f.Severity = append(f.Severity, Quantity{"gain_ratio", math.Exp(g), math.NaN(), math.NaN()})
+		}
+	}
+}
+
+// evidence lists what speaks for the finding in the present block, strongest first: the class's weight is shared out
+// by each feature's part in the chi-square.
+func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Evidence {
+	m := &c.marks[len(c.marks)-1]
+	var out []Evidence
+	share := func(class measure.Class, idx []int, sign []float64, most int) {
+		total := m.llr[class]
+		if math.IsNaN(total) || total <= 0 {
+			return
+		}
+		var es []Evidence
+		sum := 0.0
+		for k, i := range idx {
+			d := at(j.dev, i)
+			if d == nil || (sign != nil && d.Residual*sign[k] <= 0) || math.Abs(d.Z) < 1 {
+				continue
+			}
+			q := sq(clip(d.Z, 12))
+			sum += q
+			es = append(es, Evidence{Class: class, Text: say(j.layout[i], d), Feature: i, Value: d.Value, Expected: d.Expected, Z: d.Z, LLR: q})
+		}
+		for i := range es {
+			es[i].LLR *= total / sum
+		}
+		slices.SortStableFunc(es, func(x, y Evidence) int { return cmp.Compare(y.LLR, x.LLR) })
+		out = append(out, es[:min(most, len(es))]...)
+	}
+
+	var idx []int
+	var sign []float64
+	if c.kind == OpeningLate {
+		idx, sign = []int{b.place.ends[c.end].loss[c.group]}, []float64{1}
+	} else if c.h >= 0 {
+		s := look(&b.place, j.layout, j.dev, true)
+		amp := 1.0
+		if press[c.h].g < 0 {
+			amp = -1
+		}
+		for e := range s.pattern[c.h] {
+			for i, t := range s.pattern[c.h][e] {
+				if t != 0 {
+					idx, sign = append(idx, b.place.ends[e].f[i]), append(sign, t*amp)
+				}
+			}
+		}
+		if c.kind == Leaking && !c.packing() {
+			idx, sign = append(idx, b.path(c.h).area), append(sign, 1)
+		}
+	}
+	share(measure.Pressure, idx, sign, 5)
+
+	switch {
+	case c.kind == Leaking && !c.packing():
+		idx = []int{b.path(c.h).noise}
+		if c.h < hRings { // the partner may be the louder one
+			if d, q := at(j.dev, idx[0]), at(j.dev, b.path(partner(c.h)).noise); q != nil && (d == nil || q.Z > d.Z) {
+				idx[0] = b.path(partner(c.h)).noise
+			}
+		}
+		share(measure.Vibration, idx, []float64{1}, 1)
+	case c.kind == ImpactingHard:
+		im := b.place.ends[c.end].impact[c.group]
+		share(measure.Vibration, im[:], []float64{1, 1}, 2)
+	case c.kind == OpeningLate:
+		ep := b.place.ends[c.end]
+		share(measure.Vibration, []int{ep.lag[c.group], ep.impact[c.group][0]}, []float64{1, 1}, 2)
+	case c.kind == AccelGain:
+		idx = nil
+		for e := range b.place.ends {
+			for g := range groupName {
+				idx = append(idx, b.place.ends[e].impact[g][0])
+			}
+		}
+		share(measure.Vibration, idx, nil, 4)
+	}
+	if c.group >= 0 {
+		idx = nil
+		for _, cv := range b.place.ends[c.end].covers[c.group] {
+			idx = append(idx, cv.at)
+		}
+		if len(idx) == 0 {
+			idx = []int{b.place.ends[c.end].excess}
+		}
+		share(measure.Temperature, idx, nil, 1)
+	} else if c.h == hRings {
+		share(measure.Temperature, []int{b.place.ends[0].excess, b.place.ends[1].excess}, []float64{1, 1}, 1)
+	}
+	slices.SortStableFunc(out, func(x, y Evidence) int { return cmp.Compare(y.LLR, x.LLR) })
+	return out
+}
+
+func (b *bench) path(h int) pathPlace {
+	if h == hRings {
+		return b.place.rings
+	}
+	return b.place.ends[h/2].path[h%2]
+}
+
+// say puts one deviation into plain words, with its number in the unit that people read.
+func say(f measure.Feature, d *duty.Deviation) string {
+	sc := f.Scale
+	if sc == 0 {
+		sc = 1
+	}
+	r := d.Residual * sc
+	more := func(a, b string) string {
+		if r > 0 {
+			return a
+		}
+		return b
+	}
+	end := ""
+	if f.End == 0 || f.End == 1 {
+		end = " (" + endWords[f.End] + ")"
+	}
+	switch f.Name {
+	case "discharge_opens_late_deg", "discharge_opens_deg":
+		return fmt.Sprintf("discharge opens %.1f° %s than expected at this duty%s", math.Abs(r), more("later", "earlier"), end)
+	case "suction_opens_late_deg", "suction_opens_deg":
+		return fmt.Sprintf("suction opens %.1f° %s than expected at this duty%s", math.Abs(r), more("later", "earlier"), end)
+	case "n_comp_early", "n_comp_late", "n_exp_early", "n_exp_late":
+		when := map[string]string{"n_comp_early": "early compression", "n_comp_late": "late compression",
+			"n_exp_early": "early expansion", "n_exp_late": "late expansion"}[f.Name]
+		return fmt.Sprintf("exponent of %s %.3f, %.3f %s than expected%s", when, d.Value, math.Abs(r), more("higher", "lower"), end)
+	case "ve_suction_percent", "ve_discharge_percent":
+		by := strings.TrimSuffix(strings.TrimPrefix(f.Name, "ve_"), "_percent")
+		return fmt.Sprintf("volumetric efficiency by %s %.1f points %s than expected%s", by, math.Abs(r), more("higher", "lower"), end)
+	case "mass_comp_percent":
+		return fmt.Sprintf("gas seems to %s %.2f %% while compressing%s", more("gain", "lose"), math.Abs(r), end)
+	case "mass_exp_percent":
+		return fmt.Sprintf("gas seems to %s %.2f %% while expanding%s", more("gain", "lose"), math.Abs(r), end)
+	case "leak_area_mm2":
+		h := 2 * math.Hypot(d.Spread, 0.03*d.Residual) * sc
+		return fmt.Sprintf("leak area of %s %.3g mm² (%.3g to %.3g)", f.Subject, r, math.Max(0, r-h), r+h)
+	case "leak_noise_db":
+		return fmt.Sprintf("noise floor while %s is closed %+.1f dB", f.Subject, r)
+	case "impact_ln":
+		return fmt.Sprintf("impact at %s %.2g times the usual", f.Subject, math.Exp(d.Residual))
+	case "lag_ms":
+		return fmt.Sprintf("impact at %s %.2f ms %s after its pressure event than usual", f.Subject, math.Abs(r), more("later", "sooner"))
+	case "suction_loss_kw", "discharge_loss_kw":
+		return fmt.Sprintf("%s valve loss %.2f kW %s than expected%s", strings.TrimSuffix(f.Name, "_loss_kw"), math.Abs(r), more("more", "less"), end)
+	case "cover_above_group_k":
+		return fmt.Sprintf("cover of %s is %.0f K %s its group", f.Subject, math.Abs(d.Value), above(d.Value))
+	case "t_excess_k":
+		return fmt.Sprintf("discharge gas %.0f K %s than expected", math.Abs(r), more("warmer", "cooler"))
+	}
+	return fmt.Sprintf("%s %s is %.4g, expected %.4g", f.Subject, f.Name, d.Value*sc+f.Shift, d.Expected*sc+f.Shift)
+}
+
+func above(v float64) string {
+	if v < 0 {
+		return "below"
+	}
+	return "above"
+}
+
+var gradeWords = [...]string{None: "ended", Advisory: "possible", Alert: "confirmed", Danger: "confirmed and severe"}
+
+// sentence is the one line for the operator: what, how sure, why, how much, and what it may be mistaken for.
+func sentence(c *trial, f *Finding) string {
+	var s strings.Builder
+	what := map[string]string{Leaking: "leaking", ImpactingHard: "impacting hard", OpeningLate: "opening late (sticking)",
+		DeadCentre: "angle reference has moved", PressureZero: "pressure zero has moved", Clearance: "clearance is not what it was",
+		GasChanged: "gas differs from the baseline's", AccelGain: "accelerometer sensitivity has changed"}[c.kind]
+	fmt.Fprintf(&s, "%s %s, %s", f.Subject, what, gradeWords[f.Grade])
+	if f.Grade == None {
+		return s.String()
+	}
+	// One or two witnesses of each class, strongest class first.
+	n := map[measure.Class]int{}
+	sep := ": "
+	for _, e := range f.Evidence {
+		if n[e.Class] >= 2 || (e.Class == measure.Temperature && f.Valve != "") {
+			continue
+		}
+		n[e.Class]++
+		s.WriteString(sep + e.Text)
+		sep = ", "
+	}
+	for _, q := range f.Severity {
+		if c.sensor && !math.IsNaN(q.Lo) {
+			fmt.Fprintf(&s, "; %s about %.3g (%.3g to %.3g)", strings.ReplaceAll(q.Name, "_", " "), q.Value, q.Lo, q.Hi)
+		} else if q.Name == "lost_capacity_percent" {
+			fmt.Fprintf(&s, "; about %.1f %% of this end's delivery lost (%.1f to %.1f)", q.Value, q.Lo, q.Hi)
+		}
+	}
+	if f.Valve != "" {
+		for _, e := range f.Evidence {
+			if e.Class == measure.Temperature {
+				s.WriteString("; " + e.Text)
+			}
+		}
+	}
+	if len(f.Ambiguous) > 0 {
+		s.WriteString("; cannot be told from " + strings.Join(f.Ambiguous, " or "))
+	}
+	return s.String()
+}
