@@ -19,7 +19,7 @@ type WatchConfig struct {
 	WarmTurns      int     // turns before anything is called steady; default 10
 	StartTurns     int     // turns called Starting after a stop; default 60
 	SettleTurns    int     // turns called Changing after a load step; default 30
-	Drift          float64 // relative lead of the last 4 turns over the last 20 that is a change; default 0.01
+	Drift          float64 // relative difference of the last 4 turns from the 16 before that is a change; default 0.01
 }
 
 // Input is what one throw's turn says about its duty. NaN: not known.
@@ -174,19 +174,38 @@ func own(p [2]float64, ends [2]window.State) float64 {
 
 func known(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }
 
-// lead compares a fast mean with a slow one: their difference is 16 turns' worth of a ramp.
+// lead compares the mean of the newest turns with that of the turns before them: on a ramp their difference is half
+// a span's worth of it, and a step is forgotten once it has passed through both.
 type lead struct {
-	fast, slow float64
-	n          int
+	ring [leadSpan]float64
+	n    int
 }
+
+const (
+	leadNew  = 4  // turns of the newer mean
+	leadSpan = 20 // turns of both
+)
 
 func (l *lead) move(v, limit float64) bool {
 	if !known(v) {
 		return false
 	}
+	l.ring[l.n%leadSpan] = v
 	l.n++
-	// Plain means at first, so that the start is no ramp.
-	l.fast += (v - l.fast) / float64(min(l.n, 4))
-	l.slow += (v - l.slow) / float64(min(l.n, 20))
-	return math.Abs(l.fast-l.slow) > limit*math.Abs(l.slow)
+	have := min(l.n, leadSpan)
+	if have <= leadNew {
+		return false
+	}
+	var newer, older float64
+	for k := range have {
+		x := l.ring[(l.n-1-k)%leadSpan]
+		if k < leadNew {
+			newer += x
+		} else {
+			older += x
+		}
+	}
+	newer /= leadNew
+	older /= float64(have - leadNew)
+	return math.Abs(newer-older) > limit*math.Abs(older)
 }
