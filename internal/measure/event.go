@@ -30,7 +30,8 @@ const (
 )
 
 // events measures what the accelerometers say in each window. With several accelerometers on a throw the peak is the
-// largest of them, energies are added, and the onset is that of the one with the largest peak.
+// largest of them, energies are added, and the onset is that of the one with the largest peak. Where another event may
+// ring around the onset, peak and effective value stand for both events and the rest is absent.
 func (m *Measurer) events(c *throwCtx) {
 	suspect := ""
 	for i := range c.th.Vib {
@@ -97,15 +98,19 @@ func (m *Measurer) event(c *throwCtx, e, k, at int, w *window.Window) {
 		return
 	}
 	onset := degAt(c.th, all.onset)
+	perMs := 6 * c.th.RPM / 1000
+	if w.Shared && !alone(c.w, e, k, onset-aheadMs*perMs, onset+energyMs*perMs) {
+		for _, f := range []int{vOnset, vLag, vImpact} {
+			c.dst.absent(at+f, whySharedEvent)
+		}
+		return
+	}
 	c.dst.set(at+vOnset, onset)
 	c.dst.absent(at+vLag, whyNoAngle)
 	if !math.IsNaN(w.Angle) {
 		c.dst.set(at+vLag, (all.onset-c.th.SampleAt(w.Angle))/c.th.Vib[0].Rate)
 	}
-	perMs := 6 * c.th.RPM / 1000
 	switch gain := all.energy - all.back; {
-	case w.Shared && !alone(c.w, e, k, onset-aheadMs*perMs, onset+energyMs*perMs):
-		c.dst.absent(at+vImpact, whySharedEvent)
 	case !(all.energy >= leastSNR*all.back) || !(gain > 0):
 		c.dst.absent(at+vImpact, whySNR)
 	default:

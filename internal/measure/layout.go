@@ -192,7 +192,7 @@ const (
 func pathDefs() [pathCount]def {
 	return [pathCount]def{
 		lArea:  {"leak_area_mm2", Pressure, mm2, 0, "effective leak area by the leak fit, signed"},
-		lNoise: {"leak_noise_db", Vibration, one, 0, "leak-band level weighted by the path's own leak flow, dB over 1 (m/s²)²"},
+		lNoise: {"leak_noise_db", Vibration, one, 0, "leak-band level where this path would leak most, dB over 1 (m/s²)²"},
 		lShape: {"leak_shape", Vibration, one, 0, "projection of the leak-band noise on the path's own leak flow"},
 	}
 }

@@ -31,10 +31,11 @@ const (
 // would have. With S_j the nozzle flow of path j from the live pressures, ⟨·⟩ the mean over the usable degrees and
 // y the mean square:
 //
-//	leak_noise_db = 10 lg ⟨S_j y⟩/⟨S_j⟩          the level where this path would be heard
-//	leak_shape    = ⟨(S_j − ⟨S_j⟩) y⟩/(σ(S_j)·⟨y⟩)  the projection of y on the path's shape
+//	leak_noise_db = 10 lg ⟨w y⟩/⟨w⟩, w = max(0, S_j − ⟨S_j⟩)   the level where this path would be heard best
+//	leak_shape    = ⟨(S_j − ⟨S_j⟩) y⟩/(σ(S_j)·⟨y⟩)             the projection of y on the path's shape
 //
-// Of all paths, a jet on path j moves the projection on its own shape most (Cauchy–Schwarz). Head-end suction and
+// Of all paths, a jet on path j moves the projection on its own shape most (Cauchy–Schwarz). Weights S_j in place of
+// w name the wrong one of a pair on the model. Head-end suction and
 // crank-end discharge, and the other such pair, have nearly the same shape: noise names the pair.
 func (m *Measurer) noise(c *throwCtx, t *turn.Turn, w window.Result, throw int) {
 	why := ""
@@ -216,10 +217,17 @@ func (m *Measurer) path(c *throwCtx, j, at int, reason *string) bool {
 	s, y = s/n, y/n
 	*reason = whyNoFlow
 	sigma := math.Sqrt(ss/n - s*s)
-	if !(s > 0 && sigma > 0 && y > 0 && sy > 0) {
+	var w, wy float64
+	for i, v := range m.x {
+		if v > s {
+			w += v - s
+			wy += (v - s) * m.y[i]
+		}
+	}
+	if !(sigma > 0 && y > 0 && wy > 0) {
 		return false
 	}
-	c.dst.set(at+lNoise, 10*math.Log10(sy/n/s))
+	c.dst.set(at+lNoise, 10*math.Log10(wy/w))
 	c.dst.set(at+lShape, (sy/n-s*y)/(sigma*y))
 	return true
 }
