@@ -11,15 +11,15 @@ func TestMarksAtAnySpeed(t *testing.T) {
 		set  func(*shaft)
 		miss int // turns that may go by before the speed is established
 	}{
-		"60 rpm":             {func(s *shaft) { s.rpm, s.seconds = 60, 25 }, 9},
-		"120 rpm":            {func(s *shaft) { s.rpm, s.seconds = 120, 12 }, 9},
+		"60 rpm":             {func(s *shaft) { s.rpm, s.seconds, s.rate = 60, 25, 8000 }, 9},
+		"120 rpm":            {func(s *shaft) { s.rpm, s.seconds, s.rate = 120, 12, 8000 }, 9},
 		"600 rpm":            {func(*shaft) {}, 10},
 		"1800 rpm":           {func(s *shaft) { s.rpm = 1800 }, 20},
 		"1800 rpm at 10 kHz": {func(s *shaft) { s.rpm, s.rate = 1800, 10000 }, 20},
 		"10 % a second up":   {func(s *shaft) { s.ramp = 0.1 }, 10},
 		"10 % a second down": {func(s *shaft) { s.ramp = -0.1 }, 10},
-		"slow, speeding up":  {func(s *shaft) { s.rpm, s.seconds, s.ramp = 60, 25, 0.1 }, 9},
-		"slow, slowing down": {func(s *shaft) { s.rpm, s.seconds, s.ramp = 120, 7, -0.1 }, 9},
+		"slow, speeding up":  {func(s *shaft) { s.rpm, s.seconds, s.ramp, s.rate = 60, 25, 0.1, 8000 }, 9},
+		"slow, slowing down": {func(s *shaft) { s.rpm, s.seconds, s.ramp, s.rate = 120, 7, -0.1, 8000 }, 9},
 		"fast, slowing down": {func(s *shaft) { s.rpm, s.ramp = 1800, -0.1 }, 20},
 		"noisy":              {func(s *shaft) { s.noise = 400 }, 10},
 		"small":              {func(s *shaft) { s.height, s.noise = 60, 1 }, 10},
