@@ -1,6 +1,7 @@
 package skid
 
 import (
+	"errors"
 	"fmt"
 	"math"
 
@@ -124,15 +125,28 @@ func idealCycle(c crank.Cylinder, e int, works, idle bool, late, ps, pd, n float
 	return end
 }
 
-// duty gives the stage's line and gas properties at the fixed process values; the error says why there are none.
-func (sk *Skid) duty(stage int) (Line, gas.Props, error) {
-	if !sk.Process.Known || stage < 1 || stage > len(sk.Process.Stages) {
-		return Line{}, gas.Props{}, fmt.Errorf("the file gives no process values for stage %d", stage)
+// duty is a stage's line and gas properties at the fixed process values; err says why there are none.
+type duty struct {
+	line Line
+	gas  gas.Props
+	err  error
+}
+
+// duties computes the duty of every stage. The equation of state is slow: once per check, not once per use.
+func (sk *Skid) duties() []duty {
+	out := make([]duty, sk.Stages())
+	for i := range out {
+		d := &out[i]
+		if !sk.Process.Known || i >= len(sk.Process.Stages) {
+			d.err = fmt.Errorf("the file gives no process values for stage %d", i+1)
+			continue
+		}
+		d.line = sk.Process.Stages[i]
+		if d.line.Pd <= d.line.Ps {
+			d.err = errors.New("discharge pressure is not above suction pressure")
+			continue
+		}
+		d.gas, d.err = sk.Gas.Duty(d.line.Ps, d.line.Ts, d.line.Pd)
 	}
-	l := sk.Process.Stages[stage-1]
-	if l.Pd <= l.Ps {
-		return l, gas.Props{}, fmt.Errorf("discharge pressure is not above suction pressure")
-	}
-	g, err := sk.Gas.Duty(l.Ps, l.Ts, l.Pd)
-	return l, g, err
+	return out
 }

@@ -21,8 +21,9 @@ const (
 
 // doubter collects what is possible but odd.
 type doubter struct {
-	sk  *Skid
-	out []Problem
+	sk     *Skid
+	duties []duty
+	out    []Problem
 }
 
 // add notes a doubt at the place of a path, or of the nearest enclosing path that stands in the file.
@@ -52,8 +53,10 @@ func (sk *Skid) placeOf(path string) Place {
 
 // Doubts lists everything that is possible but odd, in the order of the file. Fix says in two sentences what the odd
 // value means physically and how people usually find out.
-func Doubts(sk *Skid) []Problem {
-	d := &doubter{sk: sk}
+func Doubts(sk *Skid) []Problem { return doubtsAt(sk, sk.duties()) }
+
+func doubtsAt(sk *Skid, ds []duty) []Problem {
+	d := &doubter{sk: sk, duties: ds}
 	d.sampling()
 	d.phase()
 	d.throws()
@@ -258,7 +261,7 @@ func (d *doubter) duty() {
 		if l.Pd/l.Ps > 6 {
 			d.add(path, "One stage rarely does more than 4, because of heat. Often the suction pressure is gauge where absolute is meant.", "a pressure ratio of %.1f", l.Pd/l.Ps)
 		}
-		_, g, err := sk.duty(i + 1)
+		g, err := d.duties[i].gas, d.duties[i].err
 		if err != nil {
 			d.add(path, "Its volumes and temperatures cannot be foreseen at these values. Check pressure, temperature and composition.", "the gas cannot be computed: %v", err)
 			continue
@@ -294,14 +297,14 @@ func (d *doubter) duty() {
 // kg/s, 0 when it is not known.
 func (d *doubter) load(i int) (flow float64) {
 	sk := d.sk
-	l, g, err := sk.duty(sk.Throws[i].Stage)
-	if err != nil {
+	at := d.duties[sk.Throws[i].Stage-1]
+	if at.err != nil {
 		return 0 // said once, at the stage
 	}
 	m := sk.Machine
 	for k, s := range sk.Steps {
 		path := fmt.Sprintf("load_steps[%d]", k)
-		it := sk.ideal(i, s, l, g)
+		it := sk.ideal(i, s, at.line, at.gas)
 		if k == 0 {
 			flow = it.flow
 		}

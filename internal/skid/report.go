@@ -22,15 +22,16 @@ func Report(w io.Writer, sk *Skid, rate float64) error {
 	var b bytes.Buffer
 	p := &page{&b}
 	p.head(sk)
-	p.gas(sk)
+	ds := sk.duties()
+	p.gas(sk, ds)
 	p.cylinders(sk)
 	p.valves(sk)
-	p.steps(sk)
+	p.steps(sk, ds)
 	p.sampling(sk)
 	p.channels(sk)
 	p.edges(sk)
 	p.defaults(sk)
-	p.doubts(sk)
+	p.doubts(sk, ds)
 	if _, err := w.Write(b.Bytes()); err != nil {
 		return fmt.Errorf("skid: report: %w", err)
 	}
@@ -136,7 +137,7 @@ func (p *page) head(sk *Skid) {
 	p.table(rows)
 }
 
-func (p *page) gas(sk *Skid) {
+func (p *page) gas(sk *Skid, ds []duty) {
 	p.title("Gas: %s", sk.Gas.Name)
 	var rows []string
 	if m := sk.Gas.Mixture; m != nil {
@@ -149,8 +150,8 @@ func (p *page) gas(sk *Skid) {
 		rows = append(rows, row("given by numbers", f("molar mass %.2f g/mol", g.M*1e3)))
 	}
 	for n := 1; n <= sk.Stages(); n++ {
-		l, g, err := sk.duty(n)
-		if err != nil {
+		l, g := ds[n-1].line, ds[n-1].gas
+		if err := ds[n-1].err; err != nil {
 			rows = append(rows, row(f("stage %d", n), err.Error()))
 			continue
 		}
@@ -234,8 +235,8 @@ func (p *page) valves(sk *Skid) {
 	p.table(rows)
 }
 
-func (p *page) doubts(sk *Skid) {
-	all := Doubts(sk)
+func (p *page) doubts(sk *Skid, ds []duty) {
+	all := doubtsAt(sk, ds)
 	if len(all) == 0 {
 		p.title("No doubts.")
 	} else {

@@ -7,7 +7,7 @@ import (
 	"lapwing/internal/crank"
 )
 
-func (p *page) steps(sk *Skid) {
+func (p *page) steps(sk *Skid, ds []duty) {
 	p.title("Load steps: the ideal cycle at the stated process values and %s rpm", short(sk.Machine.RatedRPM))
 	fmt.Fprintln(p.w, "  Straight lines, tight valves, no losses: real openings come a little later, real loads differ by the valve losses.")
 	if !sk.Process.Known {
@@ -18,12 +18,12 @@ func (p *page) steps(sk *Skid) {
 		ends := []string{row("end", "suction opens", "closes", "discharge opens", "closes", "volumetric efficiency", "indicated", "")}
 		rods := []string{row("throw", "gas load", "pin load", "of rated", "pin reversal", "indicated", "mass flow")}
 		for i := range sk.Throws {
-			l, g, err := sk.duty(sk.Throws[i].Stage)
-			if err != nil {
-				ends = append(ends, row(sk.Throws[i].ID, "not computed: "+err.Error()))
+			d := ds[sk.Throws[i].Stage-1]
+			if d.err != nil {
+				ends = append(ends, row(sk.Throws[i].ID, "not computed: "+d.err.Error()))
 				continue
 			}
-			it := sk.ideal(i, s, l, g)
+			it := sk.ideal(i, s, d.line, d.gas)
 			for e, end := range it.ends {
 				if end.works {
 					ends = append(ends, p.endRow(sk, i, e, s, end))
