@@ -52,7 +52,7 @@ type Config struct {
 // Status is what health says of the uplink.
 type Status struct {
 	Connected   bool      `json:"connected"`
-	Since       time.Time `json:"since"`
+	Since       time.Time `json:"since,omitzero"`
 	LastError   string    `json:"last_error,omitempty"`
 	Connections uint64    `json:"connections"`
 	Sent        uint64    `json:"sent"`     // outbox messages acknowledged by the broker

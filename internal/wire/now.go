@@ -1,13 +1,16 @@
 package wire
 
-import "time"
+import (
+	"encoding/json"
+	"time"
+)
 
 // Now is one immutable snapshot of everything's present state: what the page, the API and the health message show.
 type Now struct {
 	Skid     string    `json:"skid"`
 	Name     string    `json:"name"`
 	Site     string    `json:"site,omitempty"`
-	At       time.Time `json:"at"`
+	At       time.Time `json:"at,omitzero"`
 	Health   Health    `json:"health"`
 	Latest   *Turn     `json:"latest,omitempty"` // newest turn record
 	Findings []Finding `json:"findings"`
@@ -21,7 +24,7 @@ type Now struct {
 type Health struct {
 	Version     int        `json:"v"`
 	Skid        string     `json:"skid"`
-	At          time.Time  `json:"at"`
+	At          time.Time  `json:"at,omitzero"` // UTC
 	State       string     `json:"state"`
 	Line        string     `json:"line"` // one clause for people: learning, watching, why not
 	Turns       int64      `json:"turns"`
@@ -34,6 +37,21 @@ type Health struct {
 	Tape        TapeHealth `json:"tape"`
 	Uplink      any        `json:"uplink,omitempty"`
 	Trouble     []string   `json:"trouble,omitempty"` // what somebody should look at, in plain words
+}
+
+// Offline is the health message that the broker gives out when the daemon is gone: nothing else is known then, not
+// even since when.
+func Offline(skid string) []byte {
+	b, err := json.Marshal(struct {
+		Version int    `json:"v"`
+		Skid    string `json:"skid"`
+		State   string `json:"state"`
+		Line    string `json:"line"`
+	}{1, skid, "offline", "the monitor is not connected: nobody watches the valves"})
+	if err != nil {
+		panic(err) // a struct of strings always encodes
+	}
+	return b
 }
 
 // TapeHealth is the raw buffer's part of health.
@@ -52,8 +70,8 @@ type Clip struct {
 	ID       string    `json:"id"`
 	Reason   string    `json:"reason"`
 	Alarms   []uint64  `json:"alarms,omitempty"`
-	From     time.Time `json:"from"`
-	To       time.Time `json:"to"`
+	From     time.Time `json:"from,omitzero"`
+	To       time.Time `json:"to,omitzero"`
 	Samples  [2]int64  `json:"samples"`
 	Complete bool      `json:"complete"`
 	Bytes    int64     `json:"bytes"`

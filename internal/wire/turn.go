@@ -1,8 +1,6 @@
 package wire
 
 import (
-	"math"
-
 	"lapwing/internal/duty"
 	"lapwing/internal/measure"
 	"lapwing/internal/skid"
@@ -27,7 +25,7 @@ type Turn struct {
 // TurnThrow is one throw's part of a turn.
 type TurnThrow struct {
 	ID     string                        `json:"throw"`
-	TimeS  float64                       `json:"t_s"` // its own head-end dead centre
+	TimeS  *float64                      `json:"t_s,omitempty"` // its own head-end dead centre
 	RPM    *float64                      `json:"speed_rpm,omitempty"`
 	AngleU *float64                      `json:"angle_uncertainty_deg,omitempty"`
 	Duty   string                        `json:"duty"`
@@ -54,7 +52,7 @@ type TurnEvent struct {
 	Crossing *float64           `json:"crossing_deg,omitempty"` // closed line extended to the plateau
 	Expected *float64           `json:"expected_deg,omitempty"` // if every valve sealed, from this turn's plateaus
 	Window   *[2]float64        `json:"window_deg,omitempty"`
-	Conf     float64            `json:"confidence"`
+	Conf     *float64           `json:"confidence,omitempty"` // 0..1
 	Shared   bool               `json:"shared,omitempty"`
 	Why      string             `json:"why,omitempty"`
 	Values   map[string]float64 `json:"values,omitempty"` // peak, RMS and what else was heard in the window
@@ -71,16 +69,27 @@ type Recorder struct {
 	sk     *skid.Skid
 	layout measure.Layout
 	rate   float64
+	spots  []spot
 }
 
-// NewRecorder prepares records of vectors in the given layout; rate in samples per second.
+// spot is where a feature stands in a record: an end and an event of it; -1 where to none.
+type spot struct{ end, event int }
+
+// NewRecorder prepares records of vectors in the given layout; rate in samples per second, above 0.
 func NewRecorder(sk *skid.Skid, layout measure.Layout, rate float64) *Recorder {
-	return &Recorder{sk: sk, layout: layout, rate: rate}
+	r := &Recorder{sk: sk, layout: layout, rate: rate, spots: make([]spot, len(layout))}
+	for i := range layout {
+		r.spots[i] = place(sk.Throws[layout[i].Throw].ID, layout[i].Subject)
+	}
+	return r
 }
 
-// Record makes the record of one turn. An invalid turn has a reason and no throws.
+// Record makes the record of one turn. A turn that is not valid has a reason and no throws.
 func (r *Recorder) Record(t *turn.Turn, w window.Result, v *measure.Vector, points []duty.Point) Turn {
 	rec := Turn{Type: "turn", Turn: t.Number, TimeS: round(t.Time, 7), Valid: t.Valid(), Reason: t.Reason, RPM: opt(round(t.RPM, 4)), Samples: [2]int64{t.Seq0, t.Seq1}}
+	if opt(t.Time) == nil { // every turn is somewhere: say at least where its samples begin
+		rec.TimeS = round(float64(t.Seq0)/r.rate, 7)
+	}
 	if !t.Valid() {
 		return rec
 	}
@@ -92,8 +101,8 @@ func (r *Recorder) Record(t *turn.Turn, w window.Result, v *measure.Vector, poin
 
 func (r *Recorder) throw(i int, t *turn.Throw, w *window.Throw, v *measure.Vector, p duty.Point) TurnThrow {
 	sk := &r.sk.Throws[i]
-	out := TurnThrow{ID: sk.ID, TimeS: round(t.T0/r.rate, 7), RPM: opt(round(t.RPM, 4)), AngleU: opt(t.U), Duty: p.State.String(), Step: p.Step,
-		Values: map[string]float64{}, Paths: map[string]map[string]float64{}}
+	out := TurnThrow{ID: sk.ID, TimeS: opt(round(t.T0/r.rate, 7)), RPM: opt(round(t.RPM, 4)), AngleU: angle(t.U), Duty: p.State.String(), Step: p.Step,
+		Values: map[string]float64{}, Paths: map[string]map[string]float64{}, Ends: []TurnEnd{}}
 	events := [2][window.Events]map[string]float64{}
 	values := [2]map[string]float64{{}, {}}
 	absent := [2]map[string]string{{}, {}}
@@ -102,28 +111,27 @@ func (r *Recorder) throw(i int, t *turn.Throw, w *window.Throw, v *measure.Vecto
 		if f.Throw != i {
 			continue
 		}
-		x := opt(v.V[k]*f.Scale + f.Shift)
-		e, ev := r.place(sk.ID, f)
-		switch {
-		case e < 0 && f.Subject == sk.ID:
+		x := opt(figures(v.V[k]*f.Scale+f.Shift, 9)) // nine figures: more than any sensor, and a record stays readable
+		switch at := r.spots[k]; {
+		case at.end < 0 && f.Subject == sk.ID:
 			put(out.Values, f.Name, x)
-		case e < 0:
+		case at.end < 0:
 			if x != nil {
 				if out.Paths[f.Subject] == nil {
 					out.Paths[f.Subject] = map[string]float64{}
 				}
 				put(out.Paths[f.Subject], f.Name, x)
 			}
-		case ev < 0:
-			put(values[e], f.Name, x)
+		case at.event < 0:
+			put(values[at.end], f.Name, x)
 			if x == nil {
-				absent[e][f.Name] = v.Why[k]
+				absent[at.end][f.Name] = v.Why[k]
 			}
 		default:
-			if events[e][ev] == nil {
-				events[e][ev] = map[string]float64{}
+			if events[at.end][at.event] == nil {
+				events[at.end][at.event] = map[string]float64{}
 			}
-			put(events[e][ev], f.Name, x)
+			put(events[at.end][at.event], f.Name, x)
 		}
 	}
 	for e := range w.Ends {
@@ -133,51 +141,40 @@ func (r *Recorder) throw(i int, t *turn.Throw, w *window.Throw, v *measure.Vecto
 		}
 		te := TurnEnd{End: EndNames[e], State: end.State.String(), Values: values[e], Absent: absent[e]}
 		for ev := range end.W {
-			x := &end.W[ev]
-			rec := TurnEvent{Event: EventNames[ev], State: x.State.String(), Angle: angle(x.Angle), Crossing: angle(x.Thermo), Expected: angle(x.Expected),
-				Conf: round(x.Conf, 3), Shared: x.Shared, Why: x.Why, Values: events[e][ev]}
-			if !math.IsNaN(x.Lo) && !math.IsNaN(x.Hi) {
-				rec.Window = &[2]float64{round(x.Lo, 3), round(x.Hi, 3)}
-			}
-			te.Events = append(te.Events, rec)
+			te.Events = append(te.Events, event(ev, &end.W[ev], events[e][ev]))
 		}
 		out.Ends = append(out.Ends, te)
 	}
 	return out
 }
 
-// place says to which end and event a feature belongs by its subject; -1 where to none.
-func (r *Recorder) place(throw string, f *measure.Feature) (end, event int) {
+func event(ev int, w *window.Window, values map[string]float64) TurnEvent {
+	rec := TurnEvent{Event: EventNames[ev], State: w.State.String(), Angle: angle(w.Angle), Crossing: angle(w.Thermo), Expected: angle(w.Expected),
+		Conf: opt(round(w.Conf, 3)), Shared: w.Shared, Why: w.Why, Values: values}
+	if lo, hi := angle(w.Lo), angle(w.Hi); lo != nil && hi != nil && *lo <= *hi {
+		rec.Window = &[2]float64{*lo, *hi}
+	}
+	return rec
+}
+
+// place finds the end and event that a subject of a throw names.
+func place(throw, subject string) spot {
 	for e, n := range EndNames {
 		base := throw + "." + n
-		if f.Subject == base {
-			return e, -1
+		if subject == base {
+			return spot{e, -1}
 		}
 		for ev, en := range EventNames {
-			if f.Subject == base+"."+en {
-				return e, ev
+			if subject == base+"."+en {
+				return spot{e, ev}
 			}
 		}
 	}
-	return -1, -1
+	return spot{-1, -1}
 }
 
 func put(m map[string]float64, name string, x *float64) {
 	if x != nil {
-		m[name] = significant(*x)
+		m[name] = *x
 	}
 }
-
-// significant keeps nine figures: more than any sensor, and a record stays readable.
-func significant(x float64) float64 {
-	if x == 0 {
-		return 0
-	}
-	d := 8 - int(math.Floor(math.Log10(math.Abs(x))))
-	if d < 0 || d > 15 {
-		return x
-	}
-	return round(x, d)
-}
-
-func angle(deg float64) *float64 { return opt(round(deg, 4)) }
