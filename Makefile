@@ -40,7 +40,7 @@ FUZZTIME ?= 5s
 fuzz:
 	@set -e; for p in $$($(GO) list ./...); do \
 	  for f in $$($(GO) test -list '^Fuzz' $$p 2>/dev/null | grep '^Fuzz' || true); do \
-	    echo "fuzz $$p $$f"; $(GO) test -run '^$$' -fuzz "^$$f$$" -fuzztime $(FUZZTIME) $$p; \
+	    echo "fuzz $$p $$f"; $(GO) test -run '^$$' -fuzz "^$$f$$" -fuzztime $(FUZZTIME) -fuzzminimizetime 1x $$p; \
 	  done; done
 
 # The programs as their users run them: real broker, real clients, other programs opening what we wrote.

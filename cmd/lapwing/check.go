@@ -1,8 +1,6 @@
 package main
 
 import (
-	"fmt"
-
 	"github.com/spf13/cobra"
 
 	"lapwing/internal/skid"
@@ -27,19 +25,7 @@ possible but odd; each says what it means and how people usually find out.`,
 			if rate == 0 {
 				rate = sk.Rate
 			}
-			if err := skid.Report(out, sk, rate); err != nil {
-				return err
-			}
-			doubts := skid.Doubts(sk)
-			if len(doubts) == 0 {
-				fmt.Fprintln(out, "\nno doubts")
-				return nil
-			}
-			fmt.Fprintf(out, "\n%d doubts\n", len(doubts))
-			for _, d := range doubts {
-				fmt.Fprintf(out, "  %s\n", d.Error())
-			}
-			return nil
+			return skid.Report(out, sk, rate)
 		},
 	}
 	cmd.Flags().Float64Var(&rate, "rate", 0, "sampling rate in Hz instead of the file's")

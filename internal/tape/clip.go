@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"slices"
 	"sort"
+	"strings"
 	"time"
 
 	bolt "go.etcd.io/bbolt"
@@ -124,8 +125,8 @@ func united(old, c Clip) Clip {
 			old.Alarms = append(old.Alarms, id)
 		}
 	}
-	if c.Reason != "" && c.Reason != old.Reason {
-		old.Reason += "; " + c.Reason
+	if c.Reason != "" && !slices.Contains(strings.Split(old.Reason, "; "), c.Reason) {
+		old.Reason = strings.TrimPrefix(old.Reason+"; "+c.Reason, "; ")
 	}
 	if old.Label == "" {
 		old.Label = c.Label

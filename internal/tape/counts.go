@@ -42,15 +42,17 @@ type packer struct {
 	side  []byte
 }
 
-func newPacker() (*packer, error) {
+// newPacker makes one that decodes; it encodes too when write is set.
+func newPacker(write bool) (*packer, error) {
+	dec, err := newDecoder()
+	if err != nil || !write {
+		return &packer{dec: dec}, err
+	}
+	// Literal entropy coding on all of it: byte planes of residuals have no repeats, and zstd would else leave them be.
 	enc, err := zstd.NewWriter(nil, zstd.WithEncoderConcurrency(1), zstd.WithEncoderLevel(zstd.SpeedFastest),
 		zstd.WithEncoderCRC(false), zstd.WithAllLitEntropyCompression(true), zstd.WithLowerEncoderMem(true))
 	if err != nil {
 		return nil, fmt.Errorf("tape: zstd: %w", err)
-	}
-	dec, err := newDecoder()
-	if err != nil {
-		return nil, err
 	}
 	return &packer{enc: enc, dec: dec}, nil
 }

@@ -47,7 +47,7 @@ func skidSignals(n int) map[string][]int32 {
 }
 
 func TestCountsComeBackExactly(t *testing.T) {
-	p, err := newPacker()
+	p, err := newPacker(true)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -76,7 +76,7 @@ func TestCountsComeBackExactly(t *testing.T) {
 }
 
 func TestCountsRoundTripProperty(t *testing.T) {
-	p, _ := newPacker()
+	p, _ := newPacker(true)
 	rapid.Check(t, func(rt *rapid.T) {
 		shift := rapid.IntRange(0, 31).Draw(rt, "shift")
 		x := rapid.SliceOfN(rapid.Int32(), 0, 600).Draw(rt, "x")
@@ -102,7 +102,7 @@ func TestCountsRoundTripProperty(t *testing.T) {
 }
 
 func TestEveryFlippedBitOfARecordIsSeen(t *testing.T) {
-	p, _ := newPacker()
+	p, _ := newPacker(true)
 	rec := p.pack(nil, skidSignals(300)["vibration"], 9)
 	for bit := range len(rec) * 8 {
 		rec[bit/8] ^= 1 << (bit % 8)
@@ -115,7 +115,7 @@ func TestEveryFlippedBitOfARecordIsSeen(t *testing.T) {
 }
 
 func FuzzUnpack(f *testing.F) {
-	p, _ := newPacker()
+	p, _ := newPacker(true)
 	f.Add(p.pack(nil, skidSignals(64)["pressure"], 1))
 	f.Add(p.pack(nil, nil, 1))
 	f.Add([]byte{1, 2, 3})
@@ -132,7 +132,7 @@ func FuzzUnpack(f *testing.F) {
 
 // TestCompression states the measured ratios; it fails only if a signal class stops compressing at all.
 func TestCompression(t *testing.T) {
-	p, _ := newPacker()
+	p, _ := newPacker(true)
 	const n = 51200
 	var packed, raw int
 	for _, name := range []string{"pressure", "vibration", "mark", "idle"} {
@@ -152,7 +152,7 @@ func TestCompression(t *testing.T) {
 }
 
 func BenchmarkPack(b *testing.B) {
-	p, _ := newPacker()
+	p, _ := newPacker(true)
 	x := skidSignals(51200)["vibration"]
 	var dst []byte
 	b.SetBytes(3 * 51200)
@@ -162,7 +162,7 @@ func BenchmarkPack(b *testing.B) {
 }
 
 func BenchmarkUnpack(b *testing.B) {
-	p, _ := newPacker()
+	p, _ := newPacker(true)
 	rec := p.pack(nil, skidSignals(51200)["vibration"], 0)
 	var dst []int32
 	b.SetBytes(3 * 51200)

@@ -4,8 +4,11 @@ import (
 	"context"
 	"encoding/binary"
 	"fmt"
+	"os"
 	"path/filepath"
 	"slices"
+	"strconv"
+	"strings"
 	"testing"
 	"time"
 
@@ -161,4 +164,39 @@ func wantSamples(t testing.TB, read func(func(*acq.Block) error) error, from, to
 	if next != to {
 		t.Errorf("samples end at %d, want %d", next, to)
 	}
+}
+
+// idleWriter is a second writer for tests that commit segments themselves. The tape's own one sleeps, as nothing is
+// appended.
+func idleWriter(t *testing.T, tp *Tape) *writer {
+	t.Helper()
+	flush(t, tp)
+	w, err := tp.newWriter()
+	if err != nil {
+		t.Fatal(err)
+	}
+	return w
+}
+
+// numbered is a copy of a channel record with another first sample number.
+func numbered(rec []byte, seq0 int64) []byte {
+	rec = slices.Clone(rec)
+	binary.BigEndian.PutUint64(rec[16:], uint64(seq0))
+	fixChecksum(rec)
+	return rec
+}
+
+// written is what the kernel says this process has written so far, 0 when it does not say.
+func written() int64 {
+	b, err := os.ReadFile("/proc/self/io")
+	if err != nil {
+		return 0
+	}
+	for line := range strings.Lines(string(b)) {
+		if n, ok := strings.CutPrefix(line, "wchar: "); ok {
+			v, _ := strconv.ParseInt(strings.TrimSpace(n), 10, 64)
+			return v
+		}
+	}
+	return 0
 }

@@ -25,6 +25,10 @@ type Options struct {
 
 	Segment time.Duration // samples of one commit; default 1 s
 	Queue   time.Duration // samples that may wait for the disk before the oldest are dropped; default 4 s
+
+	LockWait time.Duration // for another process that holds a file; default 2 s
+
+	disk func(kind string) error // tests: called before each commit, to make the disk slow or full
 }
 
 func (o Options) withDefaults(path string) (Options, error) {

@@ -131,7 +131,7 @@ func (m *segMeta) stretches() []stretch {
 
 // read delivers a span of one store. meta, when given, sees each segment's description before its blocks.
 func (s *store) read(span Span, meta func(*segMeta), fn func(*acq.Block) error) error {
-	pack, err := newPacker()
+	pack, err := newPacker(false)
 	if err != nil {
 		return err
 	}

@@ -6,8 +6,6 @@ import (
 	"os"
 	"time"
 
-	bolt "go.etcd.io/bbolt"
-
 	"lapwing/internal/acq"
 	"lapwing/internal/tape/boltfile"
 )
@@ -103,16 +101,21 @@ func fileSize(path string) int64 {
 // minSeq and maxSeq span every sample number, with room to reckon.
 const minSeq, maxSeq = -1 << 62, 1 << 62
 
-// Check reads everything in both files, pages and checksums, and reports all that is wrong. It is slow.
+// Check reads everything in both files, pages and checksums, and reports all that is wrong. It is slow, and commits wait for it.
 func (t *Tape) Check() error {
 	var errs []error
 	for _, s := range []*store{t.ring, t.clips} {
-		err := s.view(func(tx *bolt.Tx) error {
+		// bbolt's check reads the free list, so no commit may run meanwhile: it is done in a write transaction, rolled back.
+		err := boltfile.Guard(func() error {
+			tx, err := s.db.Begin(true)
+			if err != nil {
+				return err
+			}
 			var errs []error
 			for err := range tx.Check() {
 				errs = append(errs, err)
 			}
-			return errors.Join(errs...)
+			return errors.Join(append(errs, tx.Rollback())...)
 		})
 		if err != nil {
 			errs = append(errs, fmt.Errorf("tape: check %s: %w", s.path, err))

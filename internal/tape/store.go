@@ -28,7 +28,8 @@ var errGone = errors.New("rolled away")
 type store struct {
 	path  string
 	opt   boltfile.Options
-	bound int64 // bytes of segments it may hold; lowered when the file turns out to be more fragmented than reckoned
+	disk  func(kind string) error // may be nil
+	bound int64                   // bytes of segments it may hold; lowered when the file turns out to be more fragmented than reckoned
 
 	mu    sync.RWMutex // guards what follows
 	db    *bolt.DB
@@ -45,10 +46,9 @@ type storeStats struct {
 }
 
 // openStore opens one file; the second value tells of a file that had to be set aside.
-func openStore(path, kind string, maxBytes int64, disposable bool, walk func(*bolt.Tx) error) (*store, *boltfile.Damage, error) {
-	s := &store{path: path, opt: boltfile.Options{
-		Kind: kind, Version: layoutVersion, MaxBytes: maxBytes, Disposable: disposable,
-	}}
+func openStore(path string, opt boltfile.Options, disk func(string) error) (*store, *boltfile.Damage, error) {
+	s := &store{path: path, opt: opt, disk: disk}
+	walk := opt.Walk
 	s.opt.Walk = func(tx *bolt.Tx) error {
 		segs, err := walkIndex(tx)
 		if err != nil {
@@ -121,7 +121,14 @@ func walkIndex(tx *bolt.Tx) ([]segInfo, error) {
 // update runs one write transaction with the panics and faults of a damaged file made into errors.
 func (s *store) update(f func(*bolt.Tx) error) error {
 	t0 := time.Now()
-	err := boltfile.Guard(func() error { return s.db.Update(f) })
+	err := boltfile.Guard(func() error {
+		if s.disk != nil {
+			if err := s.disk(s.opt.Kind); err != nil {
+				return err
+			}
+		}
+		return s.db.Update(f)
+	})
 	took := time.Since(t0)
 	s.mu.Lock()
 	defer s.mu.Unlock()
@@ -332,7 +339,7 @@ func (s *store) renew(reason string) (*boltfile.Damage, error) {
 	if err != nil {
 		return nil, errors.Join(err, closeErr)
 	}
-	fresh := &store{path: s.path, opt: s.opt}
+	fresh := &store{path: s.path, opt: s.opt, disk: s.disk}
 	fresh.opt.Walk = nil
 	if _, err := fresh.open(); err != nil {
 		return d, err

@@ -62,13 +62,17 @@ func Open(path string, opt Options) (*Tape, error) {
 		opt: opt, hash: SkidHash(opt.Skid), done: make(chan struct{}),
 		queue: newQueue(max(opt.samples(opt.Queue), 1)), clip: make(map[string]*Clip),
 	}
-	ring, damage, err := openStore(path, "tape", opt.MaxBytes, true, nil)
+	ring, damage, err := openStore(path, boltfile.Options{
+		Kind: "tape", Version: layoutVersion, MaxBytes: opt.MaxBytes, Timeout: opt.LockWait, Disposable: true,
+	}, opt.disk)
 	if err != nil {
 		return nil, fmt.Errorf("tape: ring: %w", err)
 	}
 	t.ring = ring
 	t.noteDamage(damage)
-	t.clips, damage, err = openStore(opt.ClipsPath, "clips", opt.ClipBytes, false, t.readClips)
+	t.clips, damage, err = openStore(opt.ClipsPath, boltfile.Options{
+		Kind: "clips", Version: layoutVersion, MaxBytes: opt.ClipBytes, Timeout: opt.LockWait, Walk: t.readClips,
+	}, opt.disk)
 	if err != nil {
 		return nil, errors.Join(fmt.Errorf("tape: clips: %w", err), ring.close())
 	}

@@ -27,7 +27,7 @@ type writer struct {
 }
 
 func (t *Tape) newWriter() (*writer, error) {
-	p, err := newPacker()
+	p, err := newPacker(true)
 	if err != nil {
 		return nil, err
 	}

@@ -122,10 +122,10 @@ func TestModelSweep(t *testing.T) {
 	for i, ratio := range []float64{1.8, 2.5, 3.6} {
 		for j, rpm := range []float64{500, 750, 1000} {
 			for step := range names {
-				if !*sweep && (i+j+step)%5 != 0 {
+				if !*sweep && (12*i+4*j+step)%11 != 0 {
 					continue
 				}
-				seconds := 2.6
+				seconds := 1.8
 				if *sweep {
 					seconds = 6
 				}
@@ -143,5 +143,54 @@ func TestModelSweep(t *testing.T) {
 	}
 	if !(median(s.errs) <= .7) {
 		t.Errorf("median opening error %.2f°", median(s.errs))
+	}
+}
+
+// The windows must follow while the load moves: speed, both lines and the pocket change within seconds.
+func TestModelSwing(t *testing.T) {
+	var s score
+	for i, r := range []windowtest.Run{
+		{Ratio: 2, RPM: 950, Seed: 1, Changes: []model.Change{
+			{At: 1, Over: 3, What: model.Speed, To: 560}, {At: 1, Over: 2, What: model.DischargePressure, To: 68e5},
+			{At: 3, Over: 2, What: model.SuctionPressure, To: 24e5}}},
+		{Ratio: 3.4, RPM: 600, Seed: 2, Changes: []model.Change{
+			{At: 1, Over: 2, What: model.Speed, To: 1000}, {At: 2.5, Over: 2, What: model.DischargePressure, To: 38e5}}},
+	} {
+		r.Seconds = 6
+		if !*sweep {
+			if r.Seconds = 2.6; i > 0 {
+				break
+			}
+		}
+		s.follow(t, fmt.Sprintf("swing %d", i+1), r)
+	}
+	t.Logf("openings inside %d/%d, closings inside %d/%d, median opening error %.2f°", s.openIn, s.open, s.shutIn, s.shut, median(s.errs))
+	if float64(s.openIn) < .99*float64(s.open) || float64(s.shutIn) < .95*float64(s.shut) || s.open == 0 {
+		t.Errorf("inside their windows: openings %d of %d, closings %d of %d", s.openIn, s.open, s.shutIn, s.shut)
+	}
+}
+
+// A load step taken at full speed: the end that is unloaded is idle within two turns, and back within two.
+func TestModelLoadStep(t *testing.T) {
+	r := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 2.9, Seed: 4, Changes: []model.Change{
+		{At: 1.1, What: model.LoadStep, To: windowtest.Unloaded}, {At: 2, What: model.LoadStep, To: windowtest.Full}}}
+	sk := r.Skid()
+	tr := window.NewTracker(window.Config{})
+	turns := map[window.State]int{}
+	r.Turns(t, .6, func(tn windowtest.Turn) {
+		// The tracker is told nothing of the step: it must see it in the trace.
+		res := tr.Track(tn.Turn, []window.Input{{Cylinder: sk.CylinderAt(0, 0), K: windowtest.Gas().KV}})
+		st := res.Throws[0].Ends[crank.CE].State
+		turns[st]++
+		full, idle := tn.Time < 1 || tn.Time > 2.3, tn.Time > 1.3 && tn.Time < 1.9
+		if (full && st != window.Following) || (idle && st != window.Idle) {
+			t.Errorf("at %.2f s the crank end is %v: %s", tn.Time, st, res.Throws[0].Ends[crank.CE].W[window.SuctionOpens].Why)
+		}
+		if he := res.Throws[0].Ends[crank.HE].State; he != window.Following {
+			t.Errorf("at %.2f s the head end is %v", tn.Time, he)
+		}
+	})
+	if turns[window.Idle] < 8 || turns[window.Following] < 10 {
+		t.Errorf("turns by state: %v", turns)
 	}
 }
