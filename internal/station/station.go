@@ -332,8 +332,8 @@ func (s *Station) compute(queue <-chan *parcel) error {
 			s.offerHealth()
 		}
 	}
+	s.offerHealth() // before the flush, which forgets the shaft
 	s.line.Flush(emit)
-	s.offerHealth()
 	return first
 }
 
