@@ -157,14 +157,20 @@ type packed struct {
 	chans [][]byte
 }
 
+// payload is the bytes of the segment's own records.
+func (p *packed) payload() int64 {
+	size := int64(len(p.meta))
+	for _, c := range p.chans {
+		size += int64(len(c))
+	}
+	return size
+}
+
 // footprint reckons, on the high side, the bytes the segment takes in the file. bbolt fills pages of 4096 bytes and
 // gives large values a run of pages for every two of them.
 func (p *packed) footprint() int64 {
-	size := int64(len(p.meta)) + 64
-	for _, c := range p.chans {
-		size += int64(len(c)) + 20
-	}
-	return size + 2048*int64(len(p.chans)/2+1) + 4096
+	keys := int64(len(p.chans) + 1)
+	return p.payload() + 24*keys + 2048*(keys/2+1) + 4096
 }
 
 func bigEndian(key uint64) []byte { return binary.BigEndian.AppendUint64(nil, key) }

@@ -28,7 +28,7 @@ type Stats struct {
 	Commits, FailedCommits uint64 // of both files, since Open
 	WorstCommit            time.Duration
 	WrittenBytes           int64 // pages written since Open
-	KeptBytes              int64 // segments put since Open
+	KeptBytes              int64 // records of segments put since Open
 
 	QueueDroppedBlocks  uint64 // queue full: oldest blocks dropped
 	QueueDroppedSamples int64  // per channel

@@ -42,7 +42,7 @@ type storeStats struct {
 	commits, failed uint64
 	worst           time.Duration
 	written         int64 // bytes of pages written
-	kept            int64 // bytes of segments put
+	kept            int64 // bytes of the records put
 }
 
 // openStore opens one file; the second value tells of a file that had to be set aside.
@@ -239,7 +239,7 @@ func (s *store) account(put *packed, gone []segInfo) {
 		copy(s.segs[i+1:], s.segs[i:])
 		s.segs[i] = put.info
 		s.live += put.info.size
-		s.stats.kept += put.info.size
+		s.stats.kept += put.payload()
 	}
 }
 
