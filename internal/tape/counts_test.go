@@ -2,21 +2,32 @@ package tape
 
 import (
 	"bytes"
+	"encoding/binary"
 	"math"
 	"math/rand/v2"
 	"os"
 	"os/exec"
 	"path/filepath"
 	"slices"
+	"sync"
 	"testing"
 
 	"pgregory.net/rapid"
-
-	"encoding/binary"
 )
 
-// kinds of signal a skid gives, 24-bit codes at 51.2 kHz; made by formula, not measured.
+// oneSecond is made once: under the race detector it is dear.
+var oneSecond = sync.OnceValue(func() map[string][]int32 { return makeSignals(51200) })
+
+// skidSignals are the kinds of signal a skid gives, 24-bit codes at 51.2 kHz, n <= 51200; made by formula, not measured.
 func skidSignals(n int) map[string][]int32 {
+	out := make(map[string][]int32)
+	for name, x := range oneSecond() {
+		out[name] = x[:n]
+	}
+	return out
+}
+
+func makeSignals(n int) map[string][]int32 {
 	rnd := rand.New(rand.NewPCG(7, 11))
 	const rate, rev = 51200.0, 51200.0 / 12.5 // 750 rpm
 	pressure, vibration, mark, idle := make([]int32, n), make([]int32, n), make([]int32, n), make([]int32, n)

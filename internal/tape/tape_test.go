@@ -109,7 +109,7 @@ func TestRollKeepsTheFileWithinItsBound(t *testing.T) {
 		noise[i] = int32(rnd.Uint32()) >> 8
 	}
 	rec := w.pack.pack(nil, noise, 0)
-	const segments = 500
+	const segments = 400
 	for k := range int64(segments) {
 		p := &packed{meta: []byte("not read here"), info: segInfo{key: uint64(k + 1), run: 1, n: 1, seq0: k, end: k + 1}}
 		size := rnd.IntN(len(rec)/2) + len(rec)/2
@@ -137,7 +137,7 @@ func TestRollKeepsTheFileWithinItsBound(t *testing.T) {
 func TestBytesWritten(t *testing.T) {
 	opt := small()
 	opt.Info.Channels, opt.Info.Rate, opt.Segment = 17, 51200, time.Second
-	opt.MaxBytes, opt.ClipBytes = 24<<20, 24<<20
+	opt.MaxBytes, opt.ClipBytes = 22<<20, 22<<20
 	tp := open(t, t.TempDir(), opt)
 	w := idleWriter(t, tp)
 	signals := skidSignals(51200)
@@ -145,7 +145,7 @@ func TestBytesWritten(t *testing.T) {
 	for c := range 4 {
 		recs = append(recs, w.pack.pack(nil, signals[[]string{"pressure", "vibration", "idle", "mark"}[c]], 0))
 	}
-	const seconds = 35
+	const seconds = 28
 	before := written()
 	for k := range int64(seconds) {
 		m := segMeta{Run: 1, Seq0: k * 51200, N: 51200, Rate: 51200, Bits: 24, Channels: 17}
