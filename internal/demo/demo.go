@@ -57,6 +57,9 @@ func Run(ctx context.Context, o Options) error {
 	if err != nil {
 		return err
 	}
+	if o.Learn == 0 {
+		o.Learn = run.Learn
+	}
 	b, err := openBroker()
 	if err != nil {
 		return err
@@ -100,9 +103,6 @@ func (o *Options) fill() {
 	}
 	if o.Log == nil {
 		o.Log = slog.New(slog.DiscardHandler)
-	}
-	if o.Learn == 0 {
-		o.Learn = 900
 	}
 	if o.Listen == "" {
 		o.Listen = "127.0.0.1:0"
