@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
-	"time"
 
 	"lapwing/internal/tape"
 	"lapwing/internal/wire"
@@ -17,7 +16,7 @@ func openState(state string) (*tape.Tape, error) {
 	if _, err := os.Stat(path); err != nil {
 		return nil, fmt.Errorf("station: no tape in %s: %w", state, err)
 	}
-	t, err := tape.Open(path, tape.Options{})
+	t, err := tape.OpenRead(path)
 	if err != nil {
 		return nil, fmt.Errorf("%w (is the daemon running? then leave --state out)", err)
 	}
@@ -31,7 +30,7 @@ func ClipsIn(state string) ([]wire.Clip, error) {
 		return nil, err
 	}
 	defer t.Close()
-	return wireClips(t, 0, time.Time{}), nil
+	return wireClips(t, t.Info().Rate, t.Info().Start), nil
 }
 
 // ExportFrom writes a clip of a daemon that is down into dir.
