@@ -27,8 +27,8 @@
 //	indicated_work_j          −∮p dV over 0…360°, positive for work done on the gas; also on an idle end
 //	indicated_power_kw        that times turns a second
 //	mean_pressure_bar         that over the swept volume
-//	ve_suction_percent        (V at suction closing − V at suction opening)/V_swept; V of the outer dead centre unless the
-//	                          closing is late (20° or more), then the volume where the closed line meets the plateau
+//	ve_suction_percent        (V_trapped − V at suction opening)/V_swept; V_trapped where the compression line meets the
+//	                          suction plateau: it holds for early, full and late closing
 //	ve_discharge_percent      (V at discharge opening − V_clearance)/V_swept
 //	capacity_suction_kg_h     VE_s V_swept p_s/(Zs R Ts), suction plateau and line temperature
 //	capacity_discharge_kg_h   VE_d V_swept p_d/(Zd R Td), measured Td, adiabatic where none is known

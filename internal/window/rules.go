@@ -19,9 +19,10 @@ const (
 	openLasting   = 0.6 // degrees a departure must last
 	closeLasting  = 1.0
 
-	// The departure comes this much after the valve has lifted to 10 %. Medians of the 24 machines.
-	liftSuction   = 0.3
-	liftDischarge = 0.6
+	// The departure comes this much after the valve has lifted to 10 %. Measured as 0.3° and 0.6°, medians of the 24
+	// machines; a time is meant, so it is taken as what these are at 750 rpm, the middle of their speeds.
+	liftSuctionMs   = 0.07
+	liftDischargeMs = 0.13
 
 	idleRatio   = 0.10  // ln(pd/ps) below which the end does no work
 	idleStroke  = 0.45  // share of ln(pd/ps) that a working end's closed stroke covers at least

@@ -131,7 +131,7 @@ func TestTailIsLearntPerValve(t *testing.T) {
 	}
 	lag := tr.Snapshot().Throws[0][crank.HE].DischargeOpens.LagMs
 	truth := s.truth[crank.HE][DischargeOpens]
-	want := (truth.hit - truth.lift - liftDischarge) / (6 * .75)
+	want := (truth.hit-truth.lift)/(6*.75) - liftDischargeMs
 	if got := lag[len(lag)-1]; math.Abs(got-want) > .15 { // the grid is 0.11 ms, the departure is good to 0.3°
 		t.Errorf("learnt lag %.2f ms, true %.2f ms", got, want)
 	}

@@ -43,6 +43,7 @@ type sight struct {
 	at      [2]float64 // where the opening is taken to be: found or held; NaN
 	close   [2]float64 // closing that begins the stroke, degrees after its dead centre; NaN
 	k       float64
+	perMs   float64 // degrees per ms
 }
 
 // NewTracker makes a tracker that has learnt nothing yet.
@@ -101,6 +102,9 @@ func (t *Tracker) end(th *throw, tt *turn.Throw, i, e int, in Input, out *End) {
 	*see = sight{open: [2]float64{nan, nan}, at: [2]float64{nan, nan}, close: [2]float64{nan, nan}, k: in.K}
 	if !(see.k > 1) {
 		see.k = 1.3
+	}
+	if tt != nil {
+		see.perMs = 6 * tt.RPM / 1000
 	}
 	switch {
 	case i < len(t.cfg.Works) && !t.cfg.Works[i][e]:
@@ -293,7 +297,7 @@ func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 			o.rejected.v = o.rejected.v[:0]
 			o.missed, o.seen, o.last = 0, true, found
 			see.at[s] = found
-			w.Angle = found - [2]float64{liftDischarge, liftSuction}[s]
+			w.Angle = found - see.perMs*[2]float64{liftDischargeMs, liftSuctionMs}[s]
 			w.State, w.Why = Following, whyFound
 			w.Conf = 0.95 - 0.4*math.Abs(dev-offset)/plausibleFirst
 			if len(o.offset.v) < firstTurns {
