@@ -329,11 +329,11 @@ func (m *Measurer) flows(c *throwCtx, e, at int, w *window.End) {
 	}
 }
 
-// late reports whether the suction closing found or held is a late one.
+// late reports whether the suction closing is a late one: as found, or, where it was not, as its window is held.
 func late(w *window.Window, deadCentre float64) bool {
 	at := w.Angle
-	if math.IsNaN(at) && w.State == window.Holding && !math.IsNaN(w.Lo) {
-		at = w.Lo + 3
+	if math.IsNaN(at) && w.State == window.Holding {
+		at = w.Lo
 	}
 	return at > deadCentre+lateFrom
 }

@@ -13,7 +13,7 @@ import (
 func duties() map[string]rig {
 	out := map[string]rig{}
 	for _, ratio := range []float64{1.8, 2.5, 3.6} {
-		for _, rpm := range []float64{500, 750, 1000} {
+		for _, rpm := range []float64{500, 1000} {
 			name := fmt.Sprintf("ratio %.1f, %g rpm", ratio, rpm)
 			r := newRig(ratio, rpm)
 			out[name] = r
