@@ -36,6 +36,7 @@ var runs = map[string]maker{
 	"grow":     {"healthy turns to learn from, load swings, then a head-end suction valve begins to leak", grow},
 	"swings":   {"a healthy machine whose load moves all the time; it never ends", swings},
 	"standing": {"the leak is there from the first turn, and is repaired after two minutes", standing},
+	"unsteady": {"as standing, while the load moves all the time", unsteady},
 }
 
 // Names lists the scenarios.
@@ -145,4 +146,14 @@ func standing(sk *skid.Skid) Run {
 	s := model.Script{Step: sk.Steps[0].Code}.Add(0, 0, model.ValveLeak, victim(sk), 30*model.MM2).
 		Add(120, 2, model.ValveLeak, victim(sk), 0)
 	return Run{Script: s, Duration: 240, Chapters: []Chapter{{0, "The leak is there from the start."}, {120, "The valve has been changed."}}}
+}
+
+func unsteady(sk *skid.Skid) Run {
+	const each, length = 5.0, 240.0
+	r := standing(sk)
+	for at := 4.0; at < length; at += each * float64(len(field)) {
+		r.Script = walk(r.Script, sk, at, each, 0.8, field)
+	}
+	r.Duration = length
+	return r
 }

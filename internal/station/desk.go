@@ -335,11 +335,16 @@ func (o outbox) Ack(ids []uint64) error { return o.l.Ack(ids) }
 
 func (s *Station) clips() []wire.Clip { return wireClips(s.tape, s.info.Rate, s.info.Start) }
 
+// wireClips lists a tape's clips. A clip of the present run has its times by the source's clock, also what is still to
+// come of it; one of an earlier run by what is stored.
 func wireClips(t *tape.Tape, rate float64, start time.Time) []wire.Clip {
 	var out []wire.Clip
 	for _, c := range t.Clips() {
 		w := wire.Clip{ID: c.ID, Reason: c.Reason, Alarms: c.Alarms, Samples: [2]int64{c.From, c.To}, Complete: c.Complete}
-		if !start.IsZero() {
+		if kept, err := t.Stored(c.ID); err == nil {
+			w.From, w.To, w.Bytes = kept.From, kept.To, kept.Bytes
+		}
+		if c.Run == t.Run() && !start.IsZero() {
 			w.From = start.Add(time.Duration(float64(c.From) / rate * 1e9)).UTC()
 			w.To = start.Add(time.Duration(float64(c.To) / rate * 1e9)).UTC()
 		}

@@ -20,21 +20,36 @@ func Scenarios() string { return scenario.Help() }
 // processAt gives the process values in force at t seconds of sample clock.
 type processAt func(t float64) skid.Process
 
-// openSource opens what a source string names, and the process values that go with it.
-func openSource(o *Options, sk *skid.Skid) (acq.Source, processAt, error) {
+// rowSlack keeps a row that begins at a whole second from being missed by the last bit of a subtraction.
+const rowSlack = 1e-6
+
+// from shifts process values that count from a recording's first sample to the sample clock, which shows start there.
+// The second that the first sample falls into has what holds at the first sample.
+func (p processAt) from(start float64) processAt {
+	return func(t float64) skid.Process { return p(max(0, t-start) + rowSlack) }
+}
+
+// firstSecond is the sample clock at a recording's first sample, s: clips do not begin at sample 0.
+func firstSecond(w *wav.Source) float64 { return float64(w.Meta().Seq0) / w.Info().Rate }
+
+// openSource opens what a source string names, and the process values that go with it. newest is the time of the newest
+// entry of the journal: the days of a modelled machine are invented, and played fast they run ahead of the wall clock,
+// so a restart goes on after them.
+func openSource(o *Options, sk *skid.Skid, newest time.Time) (acq.Source, processAt, error) {
 	kind, arg, ok := strings.Cut(o.Source, ":")
 	if !ok || arg == "" {
 		return nil, nil, fmt.Errorf("station: source %q: write wav:FILE or model:NAME", o.Source)
 	}
 	var src acq.Source
 	var proc processAt
+	var start float64
 	switch kind {
 	case "wav":
 		w, err := wav.Open(arg, wav.Options{})
 		if err != nil {
 			return nil, nil, err
 		}
-		src, proc = w, fixed(sk)
+		src, proc, start = w, fixed(sk), firstSecond(w)
 	case "model":
 		run, err := scenario.Get(arg, sk)
 		if err != nil {
@@ -43,6 +58,9 @@ func openSource(o *Options, sk *skid.Skid) (acq.Source, processAt, error) {
 		start := o.Start
 		if start.IsZero() {
 			start = time.Now().UTC().Truncate(time.Second)
+			if !start.After(newest) {
+				start = newest.UTC().Truncate(time.Second).Add(time.Second)
+			}
 		}
 		m, err := model.Open(sk, run.Script, model.Options{Seed: o.Seed, Duration: time.Duration(run.Duration * float64(time.Second)), Start: start})
 		if err != nil {
@@ -58,7 +76,7 @@ func openSource(o *Options, sk *skid.Skid) (acq.Source, processAt, error) {
 			_ = src.Close()
 			return nil, nil, err
 		}
-		proc = p
+		proc = p.from(start)
 	}
 	if n := inputs(sk); src.Info().Channels < n {
 		_ = src.Close()

@@ -39,7 +39,7 @@ type Options struct {
 	Broker     string
 	Listen     string
 	Seed       uint64
-	Start      time.Time        // UTC of a modelled machine's first sample; zero: now
+	Start      time.Time        // UTC of a modelled machine's first sample; zero: now, or after the newest entry of the journal
 	OnTurn     func(*wire.Turn) // hears of every turn, in the compute goroutine; nil: nobody
 	Log        *slog.Logger
 }
@@ -94,19 +94,29 @@ func Open(o Options) (_ *Station, err error) {
 			err = errors.Join(err, s.release())
 		}
 	}()
-	if s.src, s.proc, err = openSource(&o, s.sk); err != nil {
-		return nil, err
-	}
-	s.info = s.src.Info()
 	if s.ledger, err = ledger.Open(filepath.Join(o.State, "state.db"), ledger.Options{}); err != nil {
 		return nil, err
 	}
+	newest, err := s.newestEntry()
+	if err != nil {
+		return nil, err
+	}
+	if s.src, s.proc, err = openSource(&o, s.sk, newest); err != nil {
+		return nil, err
+	}
+	s.info = s.src.Info()
 	if s.tape, err = tape.Open(filepath.Join(o.State, "tape.db"), tape.Options{Info: s.info, Skid: s.sk.Raw,
 		MaxBytes: s.sk.Tape.MaxBytes, MaxAge: s.sk.Tape.MaxAge, ClipBytes: s.sk.Tape.ClipBytes}); err != nil {
 		return nil, err
 	}
 	if err := s.openLine(); err != nil {
 		return nil, err
+	}
+	if !s.info.Start.IsZero() && s.info.Start.Before(newest) {
+		// A replay, or a wall clock that was set back while the daemon was down. Delays begin anew, ids keep the order.
+		s.log.Warn("the source begins before the newest entry of the journal: times in the journal go back here", "source", s.info.Start, "journal", newest)
+		s.desk.say("clock", fmt.Sprintf("this source began at %s, before the newest journal entry of then (%s): order journal entries by id, not by time",
+			s.info.Start.UTC().Format(time.RFC3339), newest.UTC().Format(time.RFC3339)))
 	}
 	if err := s.openEdges(); err != nil {
 		return nil, err
@@ -148,6 +158,15 @@ func (s *Station) openLine() error {
 		}
 	}
 	return s.desk.restore(s.ledger, s.line.Alarms(), s.sk.ID)
+}
+
+// newestEntry is the time of the newest entry of the journal; zero when it is empty.
+func (s *Station) newestEntry() (time.Time, error) {
+	trs, err := s.ledger.Journal(s.ledger.Stats().LastJournal, 1)
+	if err != nil || len(trs) == 0 {
+		return time.Time{}, err
+	}
+	return trs[0].At, nil
 }
 
 func (s *Station) baseline() (*duty.Baseline, error) {
