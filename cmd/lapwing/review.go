@@ -20,6 +20,7 @@ func reviewCommand() *cobra.Command {
 		Long: `review runs the daemon's own line on a recording: one JSON record per turn (events, windows,
 measures), one per finding and per alarm transition, and a summary on the terminal. The same
 samples with the same process values give the same turn records as the live daemon, bit for bit.
+Times (t_s) are seconds from the first sample of the recording, also those of the process file.
 
 Without --learn (or --baseline) there is nothing to compare with: turns are measured, not judged.
 Pressures in the process file are absolute; its columns are those of a pulled clip.
@@ -36,17 +37,8 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 			o.Summary = cmd.OutOrStdout()
 			if out == "-" {
 				o.Out, o.Summary = cmd.OutOrStdout(), cmd.ErrOrStderr()
-			} else if out != "" {
-				f, err := os.Create(out)
-				if err != nil {
-					return err
-				}
-				defer func() {
-					if cerr := f.Close(); err == nil {
-						err = cerr
-					}
-				}()
-				o.Out = f
+			} else {
+				o.OutFile = out
 			}
 			if st, serr := os.Stderr.Stat(); serr == nil && st.Mode()&os.ModeCharDevice != 0 {
 				o.Progress = os.Stderr

@@ -75,7 +75,7 @@ func (d *desk) note(a wire.Alarm) {
 // take books everything that one turn brought: first what must not be lost, then what is shown.
 func (s *Station) take(o *Output) error {
 	err := s.book(o)
-	s.publish(o, s.line.utc(o.Record.TimeS))
+	s.publish(o, o.At)
 	if s.o.OnTurn != nil {
 		s.o.OnTurn(&o.Record)
 	}

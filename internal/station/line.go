@@ -51,6 +51,9 @@ type Line struct {
 	out    func(*Output)
 	count  Count
 	steady []int
+
+	begun bool
+	start float64 // s, sample clock at the stream's first sample; a clip does not begin at sample 0
 }
 
 // LearnPlan says which turns a person has declared healthy: a range of turn numbers, or the next Steady turns.
@@ -72,6 +75,7 @@ type Count struct {
 // Output is what one turn brought.
 type Output struct {
 	Record      wire.Turn
+	At          time.Time         // of the turn's dead centre
 	Vector      *measure.Vector   // valid until the next turn
 	Points      []duty.Point      // per throw, likewise
 	Findings    []verdict.Finding // all that stand, when Judged
@@ -169,6 +173,9 @@ func (l *Line) judgeBy(b *duty.Baseline) error {
 
 // Add passes a block through the line; emit hears of every turn that is complete.
 func (l *Line) Add(b *acq.Block, emit func(*Output)) error {
+	if !l.begun {
+		l.begun, l.start = true, float64(b.Seq0)/l.info.Rate
+	}
 	l.count.Samples += int64(b.N)
 	l.count.Lost += b.Lost
 	l.out = emit
@@ -184,13 +191,28 @@ func (l *Line) Flush(emit func(*Output)) {
 
 func (l *Line) frame(f *frame.Frame) { l.turns.Add(f, l.turn) }
 
-// utc is the time of a sample; without a stated start the recording begins in 1970 and says nothing about the day.
-func (l *Line) utc(seconds float64) time.Time {
+// utc is the time at so many seconds of sample clock; without a stated start sample 0 is taken in 1970, which says
+// nothing about the day.
+func (l *Line) utc(clock float64) time.Time {
 	start := l.info.Start
 	if start.IsZero() {
 		start = time.Unix(0, 0).UTC()
 	}
-	return start.Add(time.Duration(math.Round(seconds * 1e9)))
+	return start.Add(time.Duration(math.Round(clock * 1e9)))
+}
+
+// fromStart makes a record's times count from the first sample of the stream instead of from sample 0.
+func (l *Line) fromStart(r *wire.Turn) {
+	if l.start == 0 {
+		return
+	}
+	since := func(t float64) float64 { return math.Round((t-l.start)*1e7) / 1e7 }
+	r.TimeS = since(r.TimeS)
+	for i := range r.Throws {
+		if t := r.Throws[i].TimeS; t != nil {
+			*t = since(*t)
+		}
+	}
 }
 
 func (l *Line) turn(t *turn.Turn) {
@@ -210,6 +232,8 @@ func (l *Line) turn(t *turn.Turn) {
 		l.points[i] = l.classify(i, t, proc, w)
 	}
 	o.Record = l.record.Record(t, w, &l.vec, l.points)
+	o.At = l.utc(o.Record.TimeS)
+	l.fromStart(&o.Record)
 	if t.Valid() {
 		l.teach(t, &o)
 		l.decide(t, &o)
@@ -444,7 +468,11 @@ func works(sk *skid.Skid) (out [][2]bool) {
 
 func dutySteps(sk *skid.Skid, throw int) (out []duty.Step) {
 	for _, s := range sk.Steps {
-		out = append(out, duty.Step{Code: s.Code, Idle: [2]bool{s.Idle[sk.EndName(throw, crank.HE)], s.Idle[sk.EndName(throw, crank.CE)]}})
+		var idle [2]bool
+		for e := range idle {
+			idle[e] = !sk.Throws[throw].Ends[e].Works || s.Idle[sk.EndName(throw, e)] // the windows call a blind end idle too
+		}
+		out = append(out, duty.Step{Code: s.Code, Idle: idle})
 	}
 	return out
 }

@@ -29,7 +29,7 @@ func (c *rowClock) rows(b *acq.Block, rate float64, from processAt) (out []row) 
 	}
 	for ; float64(c.next) < t1; c.next++ {
 		if float64(c.next) < t0-1 {
-			continue // a gap: what held in it does not matter
+			c.next = int64(math.Ceil(t0 - 1)) // a gap: what held in it does not matter
 		}
 		out = append(out, row{second: c.next, seq: max(b.Seq0, int64(float64(c.next)*rate)), proc: quantise(from(float64(c.next)))})
 	}

@@ -8,8 +8,6 @@ import (
 	"fmt"
 	"io"
 	"os"
-	"slices"
-	"strings"
 	"time"
 
 	"lapwing/internal/acq"
@@ -25,14 +23,19 @@ type ReviewOptions struct {
 	SkidFile, Recording, ProcessCSV string
 	LearnFrom, LearnTo              int64 // turns declared healthy, LearnTo not included; both 0: none
 	Baseline, SaveBaseline          string
-	Out                             io.Writer // one JSON record a line; nil: none
+	OutFile                         string    // one JSON record a line; made only once all inputs are found good
+	Out                             io.Writer // the same, where there is no OutFile; nil: none
 	Summary                         io.Writer // nil: none
 	Progress                        io.Writer // a terminal for a progress bar; nil: none
 }
 
 // Review runs the whole line on a recording as fast as it goes. A damaged recording is reviewed as far as it can be
-// read; the error then says what is missing, after the records and the summary of what there was.
-func Review(ctx context.Context, o ReviewOptions) error {
+// read, and an interrupted review keeps what it has; the error then says what is missing, after the records and the
+// summary of what there was. A learning run that was asked for and gave no baseline is an error too.
+func Review(ctx context.Context, o ReviewOptions) (err error) {
+	if err := o.check(); err != nil {
+		return err
+	}
 	sk, err := skid.Load(o.SkidFile)
 	if err != nil {
 		return err
@@ -58,37 +61,57 @@ func Review(ctx context.Context, o ReviewOptions) error {
 	if err != nil {
 		return err
 	}
-	r := &review{sk: sk, src: src, total: src.Len(), sum: newSummary(), held: newHeld()}
-	if o.Out != nil {
-		r.out = bufio.NewWriterSize(o.Out, 1<<16)
-	}
-	r.bar.w = o.Progress
-	start := float64(src.Meta().Seq0) / src.Info().Rate
-	r.proc = func(t float64) skid.Process { return proc(t - start + rowSlack) }
+	r := &review{o: &o, sk: sk, src: src, proc: proc.from(firstSecond(src)), held: newHeld(), sum: newSummary(), bar: bar{w: o.Progress}}
 	if r.line, err = NewLine(sk, src.Info(), r.held.at, LearnPlan{From: o.LearnFrom, To: o.LearnTo}, base, alarm.New(AlarmTiming(sk))); err != nil {
 		return err
 	}
-	err = r.run(ctx)
-	if o.SaveBaseline != "" && r.sum.baseline != nil {
-		raw, berr := r.sum.baseline.Encode()
-		if berr == nil {
-			berr = os.WriteFile(o.SaveBaseline, raw, 0o644)
+	if o.OutFile != "" {
+		f, err := create(o.OutFile, o.SkidFile, o.Recording, o.ProcessCSV, o.Baseline)
+		if err != nil {
+			return err
 		}
-		err = errors.Join(err, berr)
+		defer func() { err = errors.Join(err, f.Close()) }()
+		o.Out = f
 	}
+	if o.Out != nil {
+		r.out = bufio.NewWriterSize(o.Out, 1<<16)
+	}
+	r.remark(base)
+	began := time.Now()
+	err = errors.Join(r.run(ctx), r.learnt())
 	if o.Summary != nil {
-		r.sum.print(o.Summary, r.line, time.Since(r.began), float64(r.line.Count().Samples)/src.Info().Rate)
-	}
-	for _, m := range src.Remarks() {
-		if o.Summary != nil {
-			fmt.Fprintln(o.Summary, "recording:", m)
-		}
+		r.sum.print(o.Summary, r.line, time.Since(began), float64(r.line.Count().Samples)/src.Info().Rate)
 	}
 	return err
 }
 
-// rowSlack keeps a row that begins at a whole second from being missed by the last bit of a subtraction.
-const rowSlack = 1e-6
+// check refuses what contradicts itself.
+func (o *ReviewOptions) check() error {
+	learn := LearnPlan{From: o.LearnFrom, To: o.LearnTo}.wanted()
+	switch {
+	case learn && o.Baseline != "":
+		return errors.New("review: a baseline is either learnt or given: leave one of the two out")
+	case o.SaveBaseline != "" && !learn:
+		return errors.New("review: there is no baseline to save: say which turns were healthy, so that one is learnt")
+	}
+	return nil
+}
+
+// create makes a file that is none of the inputs: what is being read must not be cut off.
+func create(path string, inputs ...string) (*os.File, error) {
+	if st, err := os.Stat(path); err == nil {
+		for _, in := range inputs {
+			if is, err := os.Stat(in); err == nil && os.SameFile(st, is) {
+				return nil, fmt.Errorf("review: %s is read by this review: name another file for the records", path)
+			}
+		}
+	}
+	f, err := os.Create(path)
+	if err != nil {
+		return nil, fmt.Errorf("review: records: %w", err)
+	}
+	return f, nil
+}
 
 func loadBaseline(path string) (*duty.Baseline, error) {
 	if path == "" {
@@ -98,10 +121,15 @@ func loadBaseline(path string) (*duty.Baseline, error) {
 	if err != nil {
 		return nil, fmt.Errorf("review: baseline: %w", err)
 	}
-	return duty.ParseBaseline(raw)
+	b, err := duty.ParseBaseline(raw)
+	if err != nil {
+		return nil, fmt.Errorf("review: %s: %w", path, err)
+	}
+	return b, nil
 }
 
 type review struct {
+	o     *ReviewOptions
 	sk    *skid.Skid
 	src   *wav.Source
 	line  *Line
@@ -109,19 +137,37 @@ type review struct {
 	held  *held
 	clock rowClock
 	out   *bufio.Writer
-	total int64
 	bar   bar
 	sum   *summary
-	began time.Time
+}
+
+// remark notes what is odd and does not stop a review.
+func (r *review) remark(base *duty.Baseline) {
+	say := func(format string, a ...any) { r.sum.remarks = append(r.sum.remarks, fmt.Sprintf(format, a...)) }
+	info := r.src.Info()
+	for _, m := range r.src.Remarks() {
+		say("recording: %s", m)
+	}
+	if r.sk.Rate > 0 && info.Rate != r.sk.Rate {
+		say("recording: %g samples/s, the skid file says %g; the recording's is taken", info.Rate, r.sk.Rate)
+	}
+	if h := r.src.Meta().Skid; h != "" && h != r.sk.Hash {
+		say("recording: made with another version of the skid file")
+	}
+	if base != nil && base.SkidHash != r.sk.Hash {
+		say("baseline: learnt with another version of the skid file")
+	}
+	if p := r.proc(firstSecond(r.src)); !p.Known {
+		say("process values: none known; pressures and load steps are taken from the cylinders' own traces, and what needs temperatures is absent")
+	}
 }
 
 func (r *review) run(ctx context.Context) error {
-	r.began = time.Now()
 	var failed error
 	emit := func(o *Output) {
 		r.sum.add(o)
-		if err := r.write(o); err != nil && failed == nil {
-			failed = err
+		if failed == nil {
+			failed = r.write(o)
 		}
 	}
 	var b acq.Block
@@ -132,34 +178,57 @@ func (r *review) run(ctx context.Context) error {
 		}
 		if err != nil {
 			failed = err // what was readable has been reviewed
+			if ctx.Err() != nil {
+				failed = fmt.Errorf("review: stopped after %d turns: %w", r.line.Count().Turns, err)
+			}
 			break
 		}
 		for _, w := range r.clock.rows(&b, r.src.Info().Rate, r.proc) {
 			r.held.put(w)
 		}
 		if err := r.line.Add(&b, emit); err != nil {
-			failed = fmt.Errorf("review: %w", err)
+			failed = errors.Join(failed, fmt.Errorf("review: %w", err))
 		}
-		r.bar.show(r.line.Count().Samples, r.total, r.line.Count().Turns)
+		r.bar.show(r.line.Count().Samples, r.src.Len(), r.line.Count().Turns)
 	}
+	stopped := failed
+	failed = nil
 	r.line.Flush(emit)
 	r.bar.end()
 	if r.out != nil {
-		failed = errors.Join(failed, r.out.Flush())
+		if err := r.out.Flush(); err != nil && failed == nil {
+			failed = fmt.Errorf("review: records: %w", err)
+		}
 	}
-	return failed
+	if stopped != nil && failed != nil && errors.Is(failed, errors.Unwrap(stopped)) {
+		return stopped // a writer that has failed fails again
+	}
+	return errors.Join(stopped, failed)
 }
 
-type findingRecord struct {
-	Type  string  `json:"type"`
-	TimeS float64 `json:"t_s"`
-	wire.Finding
-}
-
-type transitionRecord struct {
-	Type  string  `json:"type"`
-	TimeS float64 `json:"t_s"`
-	wire.Alarm
+// learnt keeps the baseline, or says why a learning run that was asked for gave none.
+func (r *review) learnt() error {
+	if !r.line.learn.wanted() {
+		return nil
+	}
+	switch {
+	case r.sum.baseline == nil && r.sum.learnErr == nil:
+		r.sum.learnErr = fmt.Errorf("the learning run was to end with turn %d; the last valid turn of the recording is %s: nothing was learnt and nothing judged",
+			r.o.LearnTo-1, r.sum.lastValid())
+		fallthrough
+	case r.sum.learnErr != nil:
+		return fmt.Errorf("review: no baseline: %w", r.sum.learnErr)
+	case r.o.SaveBaseline == "":
+		return nil
+	}
+	raw, err := r.sum.baseline.Encode()
+	if err == nil {
+		err = os.WriteFile(r.o.SaveBaseline, raw, 0o644)
+	}
+	if err != nil {
+		return fmt.Errorf("review: save baseline: %w", err)
+	}
+	return nil
 }
 
 // write puts out one line per turn, per finding of a judged block, and per transition.
@@ -169,121 +238,30 @@ func (r *review) write(o *Output) error {
 	}
 	put := func(v any) error {
 		b, err := json.Marshal(v)
-		if err != nil {
-			return fmt.Errorf("review: turn %d: %w", o.Record.Turn, err)
+		if err == nil {
+			_, err = r.out.Write(append(b, '\n'))
 		}
-		_, err = r.out.Write(append(b, '\n'))
+		if err != nil {
+			return fmt.Errorf("review: record of turn %d: %w", o.Record.Turn, err)
+		}
+		return nil
+	}
+	if err := put(o.Record); err != nil {
 		return err
 	}
-	errs := []error{put(o.Record)}
-	for _, f := range o.News {
-		errs = append(errs, put(findingRecord{Type: "finding", TimeS: o.Record.TimeS, Finding: wire.FromFinding(&f, r.line.Layout())}))
-	}
-	for i := range o.Transitions {
-		errs = append(errs, put(transitionRecord{Type: "transition", TimeS: o.Record.TimeS, Alarm: wire.FromTransition(r.sk.ID, &o.Transitions[i], "")}))
-	}
-	return errors.Join(errs...)
-}
-
-// bar is a progress bar on a terminal, drawn at most ten times a second.
-type bar struct {
-	w    io.Writer
-	last time.Time
-}
-
-func (b *bar) show(done, total, turns int64) {
-	if b.w == nil || time.Since(b.last) < 100*time.Millisecond {
-		return
-	}
-	b.last = time.Now()
-	share := 1.0
-	if total > 0 {
-		share = min(1, float64(done)/float64(total))
-	}
-	const width = 40
-	n := int(share * width)
-	fmt.Fprintf(b.w, "\r[%s%s] %3.0f %%, %d turns ", strings.Repeat("=", n), strings.Repeat(" ", width-n), share*100, turns)
-}
-
-func (b *bar) end() {
-	if b.w != nil {
-		fmt.Fprint(b.w, "\r", strings.Repeat(" ", 70), "\r")
-	}
-}
-
-// summary is what the terminal shows at the end.
-type summary struct {
-	states   map[string]map[string]int64 // end → state → turns
-	baseline *duty.Baseline
-	learnErr error
-	open     map[string]string // finding → sentence, as last judged
-	raised   []string
-}
-
-func newSummary() *summary {
-	return &summary{states: map[string]map[string]int64{}, open: map[string]string{}}
-}
-
-func (s *summary) add(o *Output) {
-	for i := range o.Record.Throws {
-		t := &o.Record.Throws[i]
-		for j := range t.Ends {
-			name := t.ID + "." + t.Ends[j].End
-			if s.states[name] == nil {
-				s.states[name] = map[string]int64{}
-			}
-			s.states[name][t.Ends[j].State]++
+	for i := range o.News {
+		if err := put(wire.FindingRecord(o.Record.TimeS, &o.News[i], r.line.Layout())); err != nil {
+			return err
 		}
 	}
-	if o.Baseline != nil {
-		s.baseline = o.Baseline
-	}
-	if o.LearnError != nil {
-		s.learnErr = o.LearnError
-	}
 	for i := range o.Transitions {
-		t := &o.Transitions[i]
-		s.raised = append(s.raised, fmt.Sprintf("turn %d: %s %s → %s, %s: %s", t.Turn, t.Key, t.From, t.To, t.Severity, t.Sentence))
-	}
-}
-
-func (s *summary) print(w io.Writer, l *Line, took time.Duration, signal float64) {
-	c := l.Count()
-	fmt.Fprintf(w, "%d turns in %.1f s of signal, %d not valid; %.1f times real time\n", c.Turns, signal, c.Invalid, signal/took.Seconds())
-	for _, k := range sortedKeys(c.Reasons) {
-		fmt.Fprintf(w, "  %6d  %s\n", c.Reasons[k], k)
-	}
-	for _, end := range sortedKeys(s.states) {
-		fmt.Fprintf(w, "%s windows:", end)
-		for _, st := range sortedKeys(s.states[end]) {
-			fmt.Fprintf(w, "  %s %d", st, s.states[end][st])
+		line := wire.TransitionRecord(o.Record.TimeS, &o.Transitions[i])
+		if r.src.Info().Start.IsZero() {
+			line.At = time.Time{} // nobody knows the day
 		}
-		fmt.Fprintln(w)
+		if err := put(line); err != nil {
+			return err
+		}
 	}
-	switch {
-	case s.learnErr != nil:
-		fmt.Fprintln(w, "no baseline:", s.learnErr)
-	case s.baseline != nil:
-		fmt.Fprintf(w, "baseline learnt from turns %d to %d, %d load steps and throws\n", s.baseline.Turn0, s.baseline.Turn1, len(s.baseline.Cells))
-	case l.Judging():
-		fmt.Fprintln(w, "judged by the baseline given")
-	default:
-		fmt.Fprintln(w, "measured only: without --learn or --baseline nothing is judged")
-	}
-	fmt.Fprintf(w, "%d evidence blocks judged, %d alarm transitions\n", c.Blocks, len(s.raised))
-	for _, r := range s.raised {
-		fmt.Fprintln(w, "  "+r)
-	}
-	if len(s.raised) > 0 {
-		fmt.Fprintln(w, wire.Caution)
-	}
-}
-
-func sortedKeys[V any](m map[string]V) []string {
-	keys := make([]string, 0, len(m))
-	for k := range m {
-		keys = append(keys, k)
-	}
-	slices.Sort(keys)
-	return keys
+	return nil
 }
