@@ -118,7 +118,7 @@ func median(x []float64) float64 {
 // Targets of the issue: openings inside ≥ 99 %, closings ≥ 95 %, median opening error ≤ 0.7°.
 func TestModelSweep(t *testing.T) {
 	names := []string{"full", "pocket", "CE unloaded", "late"}
-	quick := map[[3]int]bool{{0, 0, 0}: true, {0, 2, 1}: true, {1, 1, 3}: true, {2, 1, 2}: true}
+	quick := map[[3]int]bool{{0, 0, 0}: true, {1, 1, 3}: true, {2, 1, 2}: true}
 	var s score
 	for i, ratio := range []float64{1.8, 2.5, 3.6} {
 		for j, rpm := range []float64{500, 750, 1000} {
@@ -126,7 +126,7 @@ func TestModelSweep(t *testing.T) {
 				if !*sweep && !quick[[3]int{i, j, step}] {
 					continue
 				}
-				seconds := 1.6
+				seconds := 1.5
 				if *sweep {
 					seconds = 6
 				}

@@ -13,7 +13,7 @@ import (
 func duties() map[string]rig {
 	out := map[string]rig{}
 	for _, ratio := range []float64{1.8, 2.5, 3.6} {
-		for _, rpm := range []float64{500, 1000} {
+		for _, rpm := range []float64{500, 750, 1000} {
 			name := fmt.Sprintf("ratio %.1f, %g rpm", ratio, rpm)
 			r := newRig(ratio, rpm)
 			out[name] = r
@@ -35,6 +35,8 @@ func (r rig) input() []Input {
 	return []Input{{Cylinder: r.cyl, K: r.k, LinePs: r.ps, LinePd: r.pd}}
 }
 
+// The rig's springs close its suction valves up to 16° before the dead centre at 500 rpm (170–195° is usual, methods.md
+// section 4.2): those closings lie outside their windows and are counted.
 // Targets: issue 2 and windows.md section 3 (openings inside ≥ 99 %, closings ≥ 95 %), section 2 (opening error).
 func TestWindowsFollowTheDuty(t *testing.T) {
 	var open, openIn, shut, shutIn int
@@ -48,7 +50,7 @@ func TestWindowsFollowTheDuty(t *testing.T) {
 	for _, name := range names {
 		s := all[name].solve()
 		tr := NewTracker(Config{})
-		for n := range int64(18) {
+		for n := range int64(14) {
 			res := tr.Track(s.turn(n), s.input())
 			for e, end := range res.Throws[0].Ends {
 				if s.idle[e] {
@@ -76,7 +78,7 @@ func TestWindowsFollowTheDuty(t *testing.T) {
 					shut++
 					if in {
 						shutIn++
-					} else if n == 17 {
+					} else if n == 13 {
 						t.Logf("%s: end %d event %d hit %.1f outside [%.1f, %.1f] %s", name, e, k, truth.hit, w.Lo, w.Hi, w.Why)
 					}
 				}
