@@ -5,31 +5,41 @@ import (
 	"fmt"
 	"io"
 	"strings"
+	"unicode"
 
 	"lapwing/internal/wire"
 )
 
 // Reader prints messages as a control room would read them: alarms in full, standing alarms when it joins, health
-// when it changes, features only when asked. Repeats of an alarm (same skid and id) are dropped.
+// when it changes, features only when asked. Repeats of an alarm are dropped; a gap in the numbers and a journal that
+// began anew are said. It prints nothing that could act on a terminal.
 type Reader struct {
 	W        io.Writer
 	Root     string
 	Features bool
 	Evidence int // lines of evidence under an alarm; 0: all
-	last     map[string]uint64
+	seen     map[string]*memory
 	health   map[string]string
+	standing map[string]string
 }
+
+const (
+	maxPayload = 1 << 20 // an alarm with its evidence has a few kilobytes
+	maxSkids   = 4096    // remembered; beyond it all is forgotten and shown anew
+)
 
 // Show prints one message. What it cannot read it says so about; it never fails.
 func (r *Reader) Show(m Received) {
 	skid, part, rest := Part(r.Root, m.Topic)
+	if len(m.Payload) > maxPayload {
+		r.say("%s: %d bytes are too many for any message that this version knows\n", m.Topic, len(m.Payload))
+		return
+	}
 	switch part {
 	case "alarm":
-		r.alarm(m, false)
+		r.alarm(skid, m)
 	case "standing":
-		if m.Retained && len(m.Payload) > 0 {
-			r.alarm(m, true)
-		}
+		r.showStanding(skid, m)
 	case "health":
 		r.showHealth(skid, m)
 	case "features":
@@ -37,92 +47,205 @@ func (r *Reader) Show(m Received) {
 			r.showFeatures(skid, rest, m)
 		}
 	default:
-		fmt.Fprintf(r.W, "%s: %d bytes on a topic that this version does not know\n", m.Topic, len(m.Payload))
+		r.say("%s: %d bytes on a topic that this version does not know\n", m.Topic, len(m.Payload))
 	}
 }
 
-// received is an alarm with its detail read back as a finding.
+// say prints with every text made plain.
+func (r *Reader) say(format string, args ...any) {
+	for i, a := range args {
+		switch x := a.(type) {
+		case string:
+			args[i] = plain(x)
+		case error:
+			args[i] = plain(x.Error())
+		}
+	}
+	fmt.Fprintf(r.W, format, args...)
+}
+
+// plain keeps control and formatting characters from a terminal.
+func plain(s string) string {
+	return strings.Map(func(c rune) rune {
+		switch {
+		case unicode.IsPrint(c):
+			return c
+		case unicode.IsSpace(c):
+			return ' '
+		}
+		return '?'
+	}, s)
+}
+
+// received is an alarm whose detail is read apart: one that cannot be read must not hide the alarm.
 type received struct {
 	wire.Alarm
-	Detail *wire.Finding `json:"detail"`
+	Detail json.RawMessage `json:"detail"`
 }
 
-func (r *Reader) alarm(m Received, standing bool) {
-	var a received
-	if err := json.Unmarshal(m.Payload, &a); err != nil {
-		fmt.Fprintf(r.W, "%s: unreadable: %v\n", m.Topic, err)
+func (r *Reader) read(m Received) (a received, ok bool) {
+	switch err := json.Unmarshal(m.Payload, &a); {
+	case err != nil:
+		r.say("%s: unreadable: %v\n", m.Topic, err)
+		return a, false
+	case a.Key == "" || a.To == "":
+		r.say("%s: unreadable: no alarm in it\n", m.Topic)
+		return a, false
+	}
+	return a, true
+}
+
+func (r *Reader) alarm(skid string, m Received) {
+	a, ok := r.read(m)
+	if !ok {
 		return
 	}
-	if r.last == nil {
-		r.last = map[string]uint64{}
+	if r.seen == nil || len(r.seen) > maxSkids {
+		r.seen = map[string]*memory{}
 	}
-	if !standing {
-		if a.ID <= r.last[a.Skid] {
-			return // sent again after a lost acknowledgement
-		}
-		r.last[a.Skid] = a.ID
+	mem := r.seen[skid]
+	if mem == nil {
+		mem = &memory{}
+		r.seen[skid] = mem
 	}
-	head := fmt.Sprintf("%s → %s", a.From, a.To)
-	if standing {
-		head = "standing: " + a.To
+	show, why := mem.take(mark{a.Journal, a.ID, a.At.UnixNano()})
+	if !show {
+		return // sent again after a lost acknowledgement
+	}
+	if why != "" {
+		r.say("%s: %s\n", skid, why)
+	}
+	r.print(skid, a, a.From+" → "+a.To)
+}
+
+func (r *Reader) showStanding(skid string, m Received) {
+	if !m.Retained || len(m.Payload) == 0 {
+		return // the transition itself has been shown, or will be
+	}
+	if r.standing == nil || len(r.standing) > maxSkids {
+		r.standing = map[string]string{}
+	}
+	if r.standing[m.Topic] == string(m.Payload) {
+		return // joined again and nothing has changed
+	}
+	if a, ok := r.read(m); ok {
+		r.standing[m.Topic] = string(m.Payload)
+		r.print(skid, a, "standing: "+a.To)
+	}
+}
+
+func (r *Reader) print(skid string, a received, head string) {
+	if a.Version != 1 {
+		r.say("%s: a message of version %d, this program reads version 1: look for what is missing below\n", skid, a.Version)
+	}
+	if a.Skid != skid {
+		r.say("%s: the message under this skid's topic says that it is of skid %s\n", skid, a.Skid)
+	}
+	if a.Order == 1 {
+		head += ", first up"
+	} else if a.Order > 1 {
+		head += fmt.Sprintf(", up as number %d", a.Order)
 	}
 	if a.Test {
 		head += " (TEST)"
 	}
-	fmt.Fprintf(r.W, "%s  %-8s  %s  #%d  %s  [%s]\n", a.At.UTC().Format("2006-01-02 15:04:05Z"), strings.ToUpper(a.Severity), a.Skid, a.ID, a.Key, head)
-	fmt.Fprintf(r.W, "    %s\n", a.Sentence)
-	if a.To == "normal" || a.Detail == nil {
+	sev := strings.ToUpper(a.Severity)
+	if a.To == "normal" {
+		sev = "normal"
+	}
+	when, number := "time not given", ""
+	if !a.At.IsZero() {
+		when = a.At.UTC().Format("2006-01-02 15:04:05Z")
+	}
+	if a.ID != 0 {
+		number = fmt.Sprintf("  #%d", a.ID)
+	}
+	r.say("%s  %-8s  %s%s  %s  [%s]\n", when, sev, skid, number, a.Key, head)
+	r.say("    %s\n", a.Sentence)
+	if a.Flood {
+		r.say("    more alarms come in than a person can follow\n")
+	}
+	if a.By != "" || a.Note != "" {
+		r.say("    %s\n", strings.TrimSpace(strings.TrimPrefix(a.By+": "+a.Note, ": ")))
+	}
+	if a.To == "normal" {
 		return
 	}
-	for i, e := range a.Detail.Evidence {
+	r.detail(a.Detail)
+	if a.Clip != "" {
+		r.say("    raw samples protected as clip %s\n", a.Clip)
+	}
+	r.say("    %s\n", a.Caution)
+}
+
+func (r *Reader) detail(raw json.RawMessage) {
+	var f wire.Finding
+	if len(raw) == 0 || json.Unmarshal(raw, &f) != nil {
+		return
+	}
+	for i, e := range f.Evidence {
 		if r.Evidence > 0 && i >= r.Evidence {
-			fmt.Fprintf(r.W, "      and %d more\n", len(a.Detail.Evidence)-i)
+			r.say("      and %d more\n", len(f.Evidence)-i)
 			break
 		}
-		fmt.Fprintf(r.W, "      %-11s  %s\n", e.Class, e.Text)
+		r.say("      %-11s  %s\n", e.Class, e.Text)
 	}
-	if len(a.Detail.NotApart) > 0 {
-		fmt.Fprintf(r.W, "    cannot be told from: %s\n", strings.Join(a.Detail.NotApart, ", "))
+	if len(f.NotApart) > 0 {
+		r.say("    cannot be told from: %s\n", strings.Join(f.NotApart, ", "))
 	}
-	for _, s := range a.Detail.Settle {
-		fmt.Fprintf(r.W, "    to settle it: %s\n", s)
+	for _, s := range f.Settle {
+		r.say("    to settle it: %s\n", s)
 	}
-	for _, s := range a.Detail.Next {
-		fmt.Fprintf(r.W, "    usual next:   %s\n", s)
+	for _, s := range f.Next {
+		r.say("    usual next:   %s\n", s)
 	}
-	if a.Clip != "" {
-		fmt.Fprintf(r.W, "    raw samples protected as clip %s\n", a.Clip)
-	}
-	fmt.Fprintf(r.W, "    %s\n", a.Caution)
 }
 
 func (r *Reader) showHealth(skid string, m Received) {
-	var h struct {
-		State string `json:"state"`
-		Line  string `json:"line"`
-	}
-	if err := json.Unmarshal(m.Payload, &h); err != nil {
-		fmt.Fprintf(r.W, "%s: unreadable: %v\n", m.Topic, err)
+	if len(m.Payload) == 0 {
 		return
 	}
-	if r.health == nil {
+	var h struct {
+		State   string   `json:"state"`
+		Line    string   `json:"line"`
+		Trouble []string `json:"trouble"`
+	}
+	if err := json.Unmarshal(m.Payload, &h); err != nil {
+		r.say("%s: unreadable: %v\n", m.Topic, err)
+		return
+	}
+	if r.health == nil || len(r.health) > maxSkids {
 		r.health = map[string]string{}
 	}
-	if now := h.State + " " + h.Line; r.health[skid] != now {
-		r.health[skid] = now
-		fmt.Fprintf(r.W, "health of %s: %s\n", skid, strings.TrimSpace(h.State+", "+h.Line))
+	now := strings.Map(func(c rune) rune { // a count that runs is no change
+		if unicode.IsDigit(c) {
+			return -1
+		}
+		return c
+	}, strings.Join(append([]string{h.State, h.Line}, h.Trouble...), "\n"))
+	if last, known := r.health[skid]; known && last == now {
+		return
+	}
+	r.health[skid] = now
+	r.say("health of %s: %s\n", skid, strings.Trim(h.State+", "+h.Line, ", "))
+	for _, t := range h.Trouble {
+		r.say("    look at: %s\n", t)
 	}
 }
 
 func (r *Reader) showFeatures(skid, throw string, m Received) {
 	var f wire.Features
 	if err := json.Unmarshal(m.Payload, &f); err != nil {
-		fmt.Fprintf(r.W, "%s: unreadable: %v\n", m.Topic, err)
+		r.say("%s: unreadable: %v\n", m.Topic, err)
 		return
 	}
 	n := 0
 	for _, v := range f.Values {
 		n += len(v)
 	}
-	fmt.Fprintf(r.W, "%s  features  %s/%s  turn %d, %.1f rpm, %s: %d values, %d absent\n", f.At.Format("15:04:05Z"), skid, throw, f.Turn, f.RPM, f.Duty, n, f.Absent)
+	speed := "speed not known"
+	if f.RPM != nil {
+		speed = fmt.Sprintf("%.1f rpm", *f.RPM)
+	}
+	r.say("%s  features  %s/%s  turn %d, %s, %s: %d values, %d absent\n", f.At.UTC().Format("15:04:05Z"), skid, throw, f.Turn, speed, f.Duty, n, f.Absent)
 }

@@ -1,6 +1,12 @@
 package uplink
 
-import "strings"
+import (
+	"errors"
+	"fmt"
+	"strings"
+	"unicode"
+	"unicode/utf8"
+)
 
 // Topics builds the topic tree of one skid: <root>/<skid>/…
 //
@@ -23,6 +29,42 @@ func (t Topics) Features(throw string) string { return t.base() + "/features/" +
 
 // Health is the retained topic of the daemon's own state and its last will.
 func (t Topics) Health() string { return t.base() + "/health" }
+
+func (t Topics) check() error {
+	if err := checkRoot(t.Root); err != nil {
+		return err
+	}
+	if t.Skid == "" || strings.Contains(t.Skid, "/") {
+		return fmt.Errorf("uplink: skid %q: write a name without a slash", t.Skid)
+	}
+	return checkTopic(t.Health())
+}
+
+// checkRoot accepts one or more levels, e.g. lapwing or plant/lapwing.
+func checkRoot(root string) error {
+	if root == "" || strings.HasPrefix(root, "/") || strings.HasSuffix(root, "/") {
+		return fmt.Errorf("uplink: topic root %q: write one or more names with a slash between them", root)
+	}
+	if strings.HasPrefix(root, "$") {
+		return fmt.Errorf("uplink: topic root %q: names that begin with $ belong to the broker", root)
+	}
+	return checkTopic(root)
+}
+
+// checkTopic refuses what a broker answers by closing the connection (MQTT 3.1.1, sections 1.5.3, 3.3.2 and 4.7).
+func checkTopic(topic string) error {
+	switch {
+	case topic == "":
+		return errors.New("uplink: empty topic")
+	case len(topic) > 65535:
+		return fmt.Errorf("uplink: topic of %d bytes, 65535 are allowed", len(topic))
+	case !utf8.ValidString(topic) || strings.ContainsFunc(topic, unicode.IsControl):
+		return fmt.Errorf("uplink: topic %q holds what is no text", topic)
+	case strings.ContainsAny(topic, "+#"):
+		return fmt.Errorf("uplink: topic %q holds a wildcard", topic)
+	}
+	return nil
+}
 
 // Part names what a topic of any skid under root carries: "alarm", "standing", "features", "health", or "".
 func Part(root, topic string) (skid, part, rest string) {

@@ -9,13 +9,14 @@ import (
 // Caution stands in every message on which somebody might act.
 const Caution = "Monitoring only, not a protection system. Before touching a valve or transducer: isolate, depressurise and lock out; follow site permits, local codes and licensed practice."
 
-// Alarm is one alarm transition as it goes over the wire. (skid, id) is unique as long as the skid's state folder
-// lives, and ids rise by one: drop a repeat by it. Schemas: alarm, and standing for what a point shows now.
+// Alarm is one alarm transition as it goes over the wire. (skid, journal, id) is unique for ever and ids
+// rise by one: drop a repeat by it. Schemas: alarm, and standing for what a point shows now.
 type Alarm struct {
 	Version  int       `json:"v"`
 	Skid     string    `json:"skid"`
-	ID       uint64    `json:"id,omitempty"` // from 1; absent in a standing alarm whose transition is no longer at hand
-	At       time.Time `json:"at,omitzero"`  // UTC
+	ID       uint64    `json:"id,omitempty"`      // from 1; absent in a standing alarm whose transition is no longer at hand
+	Journal  string    `json:"journal,omitempty"` // names the journal that counts the ids: another one begins again at 1
+	At       time.Time `json:"at,omitzero"`       // UTC
 	Turn     int64     `json:"turn"`
 	Key      string    `json:"key"`
 	Subject  string    `json:"subject"`
