@@ -107,7 +107,9 @@ func robust(x [][numTerms]float64, y []float64) (c [numTerms]float64, w []float6
 		for i := range y {
 			res[i] = y[i] - dot(&c, &x[i])
 		}
-		spread = math.Max(madn(res, buf), least)
+		if it < 5 { // by then the scale has settled; a moving scale need not converge
+			spread = math.Max(madn(res, buf), least)
+		}
 		if it > 0 {
 			for i, r := range res {
 				w[i] = 1

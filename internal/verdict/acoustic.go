@@ -26,7 +26,8 @@ var pairOf = [5]int{0, 1, 1, 0, 2}
 // partner is the other path of the pair.
 func partner(h int) int { return 3 - h }
 
-func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) heard {
+// With one end idle the rings blow like the loaded end's suction: ringsApart tells whether they are a path of their own.
+func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApart bool) heard {
 	widen := 1.0
 	if !settled {
 		widen = 1.5
@@ -45,14 +46,14 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) hea
 	for h, pp := range paths {
 		out.leak[h], out.noiseZ[h] = math.NaN(), math.NaN()
 		d := at(dev, pp.noise)
-		if d == nil {
+		if d == nil || h == hRings && !ringsApart {
 			continue
 		}
 		out.noiseZ[h] = d.Z / widen
 		noise = append(noise, d.Residual*scale(l, pp.noise))
 		sc := d.Residual
 		if shapes {
-			sc = at(dev, pp.shape).Z
+			sc = at(dev, pp.shape).Residual // one scale for all paths: the largest names the path, not the most significant
 		}
 		if k := pairOf[h]; !any[k] || sc > score[k] {
 			any[k], score[k] = true, sc
@@ -82,18 +83,21 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) hea
 	return out
 }
 
-// impacts judges the opening impacts and their lag; closings support only, they are hardly predictable.
+// impacts judges the opening impacts and their moment; closings support only, they are hardly predictable.
 func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []float64) {
 	var shift []float64
 	for h := range 4 {
 		e, g := h/2, h%2
-		o.hard[h], o.late[h] = math.NaN(), math.NaN()
-		open, shut, lag := at(dev, p.ends[e].impact[g][0]), at(dev, p.ends[e].impact[g][1]), at(dev, p.ends[e].lag[g])
+		o.hard[h] = math.NaN()
+		open, shut := at(dev, p.ends[e].impact[g][0]), at(dev, p.ends[e].impact[g][1])
 		if open != nil {
 			shift = append(shift, open.Residual)
 			o.hard[h] = llr(open.Z / widen)
-			if open.Residual < 0.35 { // healthy blocks reach 0.23 (vibration.md section 4)
+			// Healthy blocks reach 0.23; 0.35 and three spreads is the rule of vibration.md section 4.
+			if open.Residual < 0.35 {
 				o.hard[h] = math.Min(0, o.hard[h])
+			} else if open.Z/widen > 3 {
+				o.hard[h] = math.Max(advisoryClass, o.hard[h])
 			}
 			if shut != nil {
 				o.hard[h] += 0.3 * math.Max(0, llr(shut.Z/widen))
@@ -102,11 +106,13 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 		} else if shut != nil {
 			o.hard[h] = math.Max(capLo, math.Min(1, llr(shut.Z/widen)))
 		}
-		if lag != nil {
-			o.late[h] = capped(llr(lag.Z / widen))
-			if open == nil || open.Z < 1 { // sticking tears open: later and harder (vibration.md section 4)
-				o.late[h] = math.Min(2, o.late[h])
-			} else if lag.Z > 3 && !math.IsNaN(o.hard[h]) {
+		o.late[h] = math.NaN()
+		if z := sticking(&p.ends[e], g, dev) / widen; !math.IsNaN(z) {
+			o.late[h] = capped(llr(z))
+			if open == nil || open.Z < 1 { // a sticking valve tears open harder: without that it is half a witness
+				o.late[h] = math.Min(advisoryClass, o.late[h])
+			}
+			if z > 3 && !math.IsNaN(o.hard[h]) {
 				o.hard[h] = math.Min(1, o.hard[h])
 			}
 		}
@@ -125,4 +131,26 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 	} else {
 		o.gain = capLo
 	}
+}
+
+// sticking is how much later the opening's impact comes than the crossing of the plateau says, in spreads; the larger
+// of that and of the lag after the departure. A leak moves crossing and impact together and cancels. NaN: not known.
+func sticking(ep *endPlace, g int, dev []*duty.Deviation) float64 {
+	z := math.NaN()
+	if d := at(dev, ep.lag[g]); d != nil {
+		z = d.Z
+	}
+	if x := beyondCrossing(dev, ep.onset[g], ep.late[g]); !math.IsNaN(x) && !(x < z) {
+		z = x
+	}
+	return z
+}
+
+// beyondCrossing is the deviation of an angle less that of the plateau's crossing, in spreads. NaN: not known.
+func beyondCrossing(dev []*duty.Deviation, angle, crossing int) float64 {
+	a, c := at(dev, angle), at(dev, crossing)
+	if a == nil || c == nil {
+		return math.NaN()
+	}
+	return (a.Residual - c.Residual) / math.Hypot(a.Spread, c.Spread)
 }

@@ -174,7 +174,7 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 		}
 	}
 	press := s.contrast()
-	vib := listen(&b.place, j.layout, j.dev, blk.Settled)
+	vib := listen(&b.place, j.layout, j.dev, blk.Settled, judged[0] && judged[1])
 	temp := feel(&b.place, j.dev, blk.Settled)
 	b.sharePairs(&vib, &press)
 

@@ -109,11 +109,15 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		}
 	}
 	if c.kind == OpeningLate && !withdrawn && v.late[c.h] >= 1 { // a loss alone may be anything: dirt, gas, speed
-		if d := at(j.dev, b.place.ends[c.end].loss[c.group]); d != nil {
-			m.llr[measure.Pressure] = capped(llr(d.Z))
+		ep := &b.place.ends[c.end]
+		z := beyondCrossing(j.dev, ep.open[c.group], ep.late[c.group])
+		if d := at(j.dev, ep.loss[c.group]); d != nil && !math.IsNaN(z) {
+			m.llr[measure.Pressure] = capped(llr(math.Min(z, d.Z))) // late and costly
 		}
 	}
-	if c.group >= 0 {
+	// Hard impacts and late openings are heard, or they are not there: other classes only join in.
+	heardIt := c.kind == Leaking || c.kind == ImpactingHard && v.hard[c.h] >= 1 || c.kind == OpeningLate && v.late[c.h] >= 1
+	if c.group >= 0 && heardIt {
 		m.llr[measure.Temperature] = t.group[c.h]
 		m.valve = t.valve[c.h]
 	}
@@ -134,7 +138,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 					m.ambiguous = append(m.ambiguous, b.place.group(q/2, q%2))
 				}
 			}
-			if v.leak[c.h] >= alertClass || m.valve != "" { // packing makes no noise at the valves and warms none
+			if m.valve != "" { // a leaking packing warms no cover; it may well be heard
 				m.ambiguous = slices.DeleteFunc(m.ambiguous, func(s string) bool { return s == b.place.id+".packing" })
 			}
 			if b.quietPacking(v, t) && c.end == crank.CE && c.group == suction && m.llr[measure.Pressure] > 0 {

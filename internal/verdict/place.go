@@ -34,6 +34,9 @@ type endPlace struct {
 	path   [2]pathPlace
 	impact [2][2]int // group; opens, closes
 	lag    [2]int    // opening
+	onset  [2]int    // opening
+	open   [2]int    // angle of opening as the pressure shows it
+	late   [2]int    // the same by the plateau's crossing, less a sealed cylinder's
 	covers [2][]coverPlace
 }
 
@@ -75,6 +78,8 @@ func places(l measure.Layout) []place {
 				ep.loss[g] = l.Find(s, name+"_loss_kw")
 				ep.path[g] = paths(s + "." + name)
 				ep.impact[g] = [2]int{l.Find(s+"."+name+".opens", "impact_ln"), l.Find(s+"."+name+".closes", "impact_ln")}
+				ep.onset[g] = l.Find(s+"."+name+".opens", "onset_deg")
+				ep.open[g], ep.late[g] = l.Find(s, name+"_opens_deg"), l.Find(s, name+"_opens_late_deg")
 				ep.lag[g] = l.Find(s+"."+name+".opens", "lag_ms")
 			}
 		}

@@ -1,14 +1,18 @@
 package verdict
 
 import (
+	"flag"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"strings"
 	"testing"
 
 	"lapwing/internal/duty"
 	"lapwing/internal/measure"
 )
+
+var sweep = flag.Bool("sweep", false, "run the long checks, also on the modelled machine over its duties and faults (minutes)")
 
 // synth is a made-up double-acting throw as a stream of measured turns: every feature a smooth function of duty, with
 // correlated noise, a common angle jitter, and faults added by the published patterns, bent by up to ±30 % per feature,
@@ -24,6 +28,8 @@ type synth struct {
 	wander  []float64 // slow error of the duty model, per feature
 	bent    []float64
 	jitter  float64
+	pats    map[string]pattern // at the present ratio
+	patsAt  float64
 	noise   float64 // factor on all noise
 
 	leak   map[string]float64 // % of delivery, by subject
@@ -64,7 +70,7 @@ var synthSD = map[string][2]float64{
 	"n_comp_early": {.004, .0006}, "n_comp_late": {.0025, .0004}, "n_exp_early": {.005, .0008}, "n_exp_late": {.0025, .0004},
 	"discharge_opens_late_deg": {.25, .05}, "suction_opens_late_deg": {.25, .05}, "ve_suction_percent": {.3, .06},
 	"ve_discharge_percent": {.3, .06}, "mass_comp_percent": {.15, .03}, "mass_exp_percent": {.15, .03},
-	"leak_area_mm2": {3, .5}, "leak_noise_db": {.6, .3}, "impact_ln": {.18, .06}, "lag_ms": {.08, .015},
+	"leak_area_mm2": {3, .5}, "leak_noise_db": {.6, .3}, "impact_ln": {.18, .06}, "lag_ms": {.08, .015}, "onset_deg": {.3, .15}, "suction_opens_deg": {.25, .1}, "discharge_opens_deg": {.25, .1},
 	"suction_loss_kw": {.1, .03}, "discharge_loss_kw": {.1, .03}, "t_excess_k": {.5, .8}, "cover_above_group_k": {.3, .4},
 	"ratio_plateau": {.005, .001},
 }
@@ -74,11 +80,6 @@ func (s *synth) next() (duty.Point, measure.Vector) {
 	s.turn++
 	s.jitter = 0.3*s.jitter + 0.08*s.r.NormFloat64()
 	lr, n := math.Log(s.ratio), s.rpm/750-1
-	early, clearance, zero, gas := patternOf(earlyTable, s.ratio), patternOf(clearanceTable, s.ratio), patternOf(zeroTable, s.ratio), patternOf(gasTable, s.ratio)
-	var leaks [3]pattern
-	for k := range leaks {
-		leaks[k] = patternOf(leakTable[path(k)], s.ratio)
-	}
 	for i, f := range s.layout {
 		sd, ok := synthSD[f.Name]
 		if !ok || f.End >= 0 && s.idle[f.End] || f.Subject == "t1.rings" && (s.idle[0] || s.idle[1]) {
@@ -102,6 +103,14 @@ func (s *synth) next() (duty.Point, measure.Vector) {
 			x += 1 + 0.5*lr + 0.6*n + s.louder + s.hit[group]
 		case f.Name == "lag_ms":
 			x += 0.8 - 0.2*n + s.stick[group]
+		case f.Name == "onset_deg":
+			x += 60 + 30*lr + 6*s.rpm/1000*s.stick[group]
+			if k := s.layout.Find(group[:len("t1.he")], group[len("t1.he."):]+"_opens_late_deg"); strings.HasSuffix(f.Subject, ".opens") && k >= 0 {
+				x += s.moved(k)
+			}
+		case strings.HasSuffix(f.Name, "_opens_deg"):
+			g := strings.TrimSuffix(f.Name, "_opens_deg")
+			x += 60 + 30*lr + 6*s.rpm/1000*s.stick[f.Subject+"."+g] + s.moved(s.layout.Find(f.Subject, g+"_opens_late_deg"))
 		case strings.HasSuffix(f.Name, "_loss_kw"):
 			x += 5 + 6*n + 8*s.stick[f.Subject+"."+strings.TrimSuffix(f.Name, "_loss_kw")]
 		case f.Name == "leak_area_mm2":
@@ -119,20 +128,9 @@ func (s *synth) next() (duty.Point, measure.Vector) {
 		case f.Name == "cover_above_group_k":
 			x += s.cover[f.Subject]
 		default:
-			k := -1
-			for m, name := range patternNames {
-				if name == f.Name {
-					k = m
-				}
-			}
+			k := slices.Index(patternNames[:], f.Name)
 			base := [patternLen]float64{1.27, 1.27, 1.28, 1.28, 0.4 + 0.5*lr, 0.3 - 0.2*lr, 80 - 9*lr - 3*n, 45 - 20*lr + 2*n, 0.1, 0.2}
-			x += base[k]
-			e := endName[f.End]
-			x += s.bent[i] * (s.leak["t1."+e+".suction"]*leaks[0][k] + s.leak["t1."+e+".discharge"]*leaks[1][k] + s.leak["t1.rings"]*leaks[2][k])
-			if f.End == 1 {
-				x += s.bent[i] * s.leak["t1.packing"] * leaks[0][k]
-			}
-			x += (s.early+s.noise*s.jitter)*early[k] + s.zero[f.End]*zero[k] + s.clear[f.End]*clearance[k] + s.gas*gas[k]
+			x += base[k] + s.moved(i)
 		}
 		v.V[i] = (x - f.Shift) / f.Scale
 	}
@@ -141,6 +139,35 @@ func (s *synth) next() (duty.Point, measure.Vector) {
 		step = 2
 	}
 	return duty.Point{State: duty.Steady, Step: step, RPM: s.rpm, Ps: s.ps, Pd: s.ps * s.ratio, OwnStep: step, OwnPs: math.NaN(), OwnPd: math.NaN()}, v
+}
+
+// moved is what faults and the angle jitter add to a pressure feature.
+func (s *synth) moved(i int) (x float64) {
+	if s.patsAt != s.ratio {
+		s.patsAt = s.ratio
+		s.pats = map[string]pattern{"suction": patternOf(leakTable[suctionPath], s.ratio), "discharge": patternOf(leakTable[dischargePath], s.ratio),
+			"rings": patternOf(leakTable[ringsPath], s.ratio), "early": patternOf(earlyTable, s.ratio), "zero": patternOf(zeroTable, s.ratio),
+			"clearance": patternOf(clearanceTable, s.ratio), "gas": patternOf(gasTable, s.ratio)}
+	}
+	f := s.layout[i]
+	k := slices.Index(patternNames[:], f.Name)
+	of := func(name string, amount float64) {
+		if amount != 0 {
+			x += amount * s.pats[name][k]
+		}
+	}
+	end := "t1." + endName[f.End]
+	of("suction", s.bent[i]*s.leak[end+".suction"])
+	of("discharge", s.bent[i]*s.leak[end+".discharge"])
+	of("rings", s.bent[i]*s.leak["t1.rings"])
+	if f.End == 1 {
+		of("suction", s.bent[i]*s.leak["t1.packing"])
+	}
+	of("early", s.early+s.noise*s.jitter)
+	of("zero", s.zero[f.End])
+	of("clearance", s.clear[f.End])
+	of("gas", s.gas)
+	return x
 }
 
 // heard is the rise of a path's noise level in dB: the pair of the leaking path rises alike within a decibel, the
@@ -207,6 +234,11 @@ func commission(t testing.TB, s *synth, turns int, move func(i int)) *rig {
 		t.Fatal(err)
 	}
 	return &rig{ref: ref, blocks: duty.NewBlocks(ref, duty.BlockConfig{}), judge: New(s.layout, Config{})}
+}
+
+// fresh is the same commissioned line with nothing seen yet.
+func (r *rig) fresh() *rig {
+	return &rig{ref: r.ref, blocks: duty.NewBlocks(r.ref, duty.BlockConfig{}), judge: New(r.ref.Layout(), Config{})}
 }
 
 // run takes turns and calls back after each block.

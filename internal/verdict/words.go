@@ -20,7 +20,7 @@ func (j *Judge) write(b *bench, c *trial, blk duty.Block, press *[hPressures]fit
 	j.severity(&f, c)
 	f.Evidence = j.evidence(b, c, press)
 	f.Settle, f.Next = advice(c, &f)
-	f.Sentence = sentence(c, &f)
+	f.Sentence = sentence(j.layout, c, &f)
 	return f
 }
 
@@ -93,7 +93,8 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 	var idx []int
 	var sign []float64
 	if c.kind == OpeningLate {
-		idx, sign = []int{b.place.ends[c.end].loss[c.group]}, []float64{1}
+		ep := &b.place.ends[c.end]
+		idx, sign = []int{ep.loss[c.group], ep.open[c.group]}, []float64{1, 1}
 	} else if c.h >= 0 {
 		s := look(&b.place, j.layout, j.dev, true)
 		amp := 1.0
@@ -116,8 +117,8 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 	switch {
 	case c.kind == Leaking && !c.packing():
 		idx = []int{b.path(c.h).noise}
-		if c.h < hRings { // the partner may be the louder one
-			if d, q := at(j.dev, idx[0]), at(j.dev, b.path(partner(c.h)).noise); q != nil && (d == nil || q.Z > d.Z) {
+		if c.h < hRings { // the partner, which acts at the same angles, may be the louder one
+			if d, q := at(j.dev, idx[0]), at(j.dev, b.path(partner(c.h)).noise); q != nil && (d == nil || d.Z < 0.7*q.Z) {
 				idx[0] = b.path(partner(c.h)).noise
 			}
 		}
@@ -127,7 +128,7 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 		share(measure.Vibration, im[:], []float64{1, 1}, 2)
 	case c.kind == OpeningLate:
 		ep := b.place.ends[c.end]
-		share(measure.Vibration, []int{ep.lag[c.group], ep.impact[c.group][0]}, []float64{1, 1}, 2)
+		share(measure.Vibration, []int{ep.onset[c.group], ep.lag[c.group], ep.impact[c.group][0]}, []float64{1, 1, 1}, 3)
 	case c.kind == AccelGain:
 		idx = nil
 		for e := range b.place.ends {
@@ -197,11 +198,13 @@ func say(f measure.Feature, d *duty.Deviation) string {
 		h := 2 * math.Hypot(d.Spread, 0.03*d.Residual) * sc
 		return fmt.Sprintf("leak area of %s %.3g mm² (%.3g to %.3g)", f.Subject, r, math.Max(0, r-h), r+h)
 	case "leak_noise_db":
-		return fmt.Sprintf("noise floor while %s is closed %+.1f dB", f.Subject, r)
+		return fmt.Sprintf("noise floor at the angles of %s %+.1f dB", f.Subject, r)
 	case "impact_ln":
 		return fmt.Sprintf("impact at %s %.2g times the usual", f.Subject, math.Exp(d.Residual))
 	case "lag_ms":
 		return fmt.Sprintf("impact at %s %.2f ms %s after its pressure event than usual", f.Subject, math.Abs(r), more("later", "sooner"))
+	case "onset_deg":
+		return fmt.Sprintf("impact at %s %.1f° %s than expected", f.Subject, math.Abs(r), more("later", "sooner"))
 	case "suction_loss_kw", "discharge_loss_kw":
 		return fmt.Sprintf("%s valve loss %.2f kW %s than expected%s", strings.TrimSuffix(f.Name, "_loss_kw"), math.Abs(r), more("more", "less"), end)
 	case "cover_above_group_k":
@@ -219,10 +222,24 @@ func above(v float64) string {
 	return "above"
 }
 
+// known ranks pressure evidence by how well an operator knows it: openings and leak areas before exponents, if strong.
+func known(l measure.Layout, e Evidence) int {
+	if e.Feature < 0 || math.Abs(e.Z) < 3 {
+		return 0
+	}
+	switch n := l[e.Feature].Name; {
+	case strings.HasSuffix(n, "_opens_late_deg"):
+		return 2
+	case n == "leak_area_mm2":
+		return 1
+	}
+	return 0
+}
+
 var gradeWords = [...]string{None: "ended", Advisory: "possible", Alert: "confirmed", Danger: "confirmed and severe"}
 
 // sentence is the one line for the operator: what, how sure, why, how much, and what it may be mistaken for.
-func sentence(c *trial, f *Finding) string {
+func sentence(l measure.Layout, c *trial, f *Finding) string {
 	var s strings.Builder
 	what := map[string]string{Leaking: "leaking", ImpactingHard: "impacting hard", OpeningLate: "opening late (sticking)",
 		DeadCentre: "angle reference has moved", PressureZero: "pressure zero has moved", Clearance: "clearance is not what it was",
@@ -231,10 +248,17 @@ func sentence(c *trial, f *Finding) string {
 	if f.Grade == None {
 		return s.String()
 	}
-	// One or two witnesses of each class, strongest class first.
+	// One or two witnesses of each class, strongest class first; of the pressures those that people know best.
 	n := map[measure.Class]int{}
 	sep := ": "
-	for _, e := range f.Evidence {
+	said := slices.Clone(f.Evidence)
+	slices.SortStableFunc(said, func(x, y Evidence) int {
+		if x.Class != y.Class || x.Class != measure.Pressure {
+			return 0
+		}
+		return cmp.Compare(known(l, y), known(l, x))
+	})
+	for _, e := range said {
 		if n[e.Class] >= 2 || (e.Class == measure.Temperature && f.Valve != "") {
 			continue
 		}
