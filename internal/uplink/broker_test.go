@@ -1,6 +1,7 @@
 package uplink
 
 import (
+	"crypto/tls"
 	"log/slog"
 	"net"
 	"slices"
@@ -45,6 +46,7 @@ type hostile struct {
 	ln   net.Listener
 	stop sync.WaitGroup
 
+	tls      *tls.Config
 	code     byte                                           // of every CONNACK
 	onPub    func(n int, m Message) answer                  // n counts publishes over all connections; nil: ack
 	onConn   func(n int) (answer, bool)                     // after CONNACK of connection n: drop, or withhold: never read again
@@ -67,6 +69,10 @@ func openHostile(t *testing.T, h *hostile) string {
 	ln, err := net.Listen("tcp", "127.0.0.1:0")
 	if err != nil {
 		t.Fatal(err)
+	}
+	scheme := "tcp://"
+	if h.tls != nil {
+		ln, scheme = tls.NewListener(ln, h.tls), "tls://"
 	}
 	h.ln, h.acked = ln, map[string]bool{}
 	h.stop.Go(func() {
@@ -91,7 +97,7 @@ func openHostile(t *testing.T, h *hostile) string {
 		h.mu.Unlock()
 		h.stop.Wait()
 	})
-	return "tcp://" + ln.Addr().String()
+	return scheme + ln.Addr().String()
 }
 
 // send writes to connection n as the broker would.

@@ -6,6 +6,8 @@
 // so a receiver may see it twice and drops the repeat by its id. While the broker is away, transitions wait in
 // the outbox and only the newest features and health are kept.
 //
+// When it cannot: Status says why, attempts go on with growing pauses, and nobody else notices.
+//
 // Every connection is a new client: a client that reconnects by itself reports a publish as done that no broker has
 // acknowledged.
 package uplink

@@ -2,6 +2,7 @@ package uplink
 
 import (
 	"encoding/json"
+	"errors"
 	"fmt"
 	"io"
 	"strings"
@@ -64,6 +65,19 @@ func (r *Reader) say(format string, args ...any) {
 	fmt.Fprintf(r.W, format, args...)
 }
 
+func (r *Reader) unreadable(m Received, err error) {
+	var kind *json.UnmarshalTypeError
+	if errors.As(err, &kind) {
+		where := kind.Field
+		if where == "" {
+			where = "the whole of it"
+		}
+		r.say("%s: unreadable: %s is of the kind %s, which does not belong there\n", m.Topic, where, kind.Value)
+		return
+	}
+	r.say("%s: unreadable: %v\n", m.Topic, err)
+}
+
 // plain keeps control and formatting characters from a terminal.
 func plain(s string) string {
 	return strings.Map(func(c rune) rune {
@@ -86,7 +100,7 @@ type received struct {
 func (r *Reader) read(m Received) (a received, ok bool) {
 	switch err := json.Unmarshal(m.Payload, &a); {
 	case err != nil:
-		r.say("%s: unreadable: %v\n", m.Topic, err)
+		r.unreadable(m, err)
 		return a, false
 	case a.Key == "" || a.To == "":
 		r.say("%s: unreadable: no alarm in it\n", m.Topic)
@@ -211,7 +225,7 @@ func (r *Reader) showHealth(skid string, m Received) {
 		Trouble []string `json:"trouble"`
 	}
 	if err := json.Unmarshal(m.Payload, &h); err != nil {
-		r.say("%s: unreadable: %v\n", m.Topic, err)
+		r.unreadable(m, err)
 		return
 	}
 	if r.health == nil || len(r.health) > maxSkids {
@@ -236,7 +250,7 @@ func (r *Reader) showHealth(skid string, m Received) {
 func (r *Reader) showFeatures(skid, throw string, m Received) {
 	var f wire.Features
 	if err := json.Unmarshal(m.Payload, &f); err != nil {
-		r.say("%s: unreadable: %v\n", m.Topic, err)
+		r.unreadable(m, err)
 		return
 	}
 	n := 0
