@@ -14,8 +14,13 @@ func checkCommand() *cobra.Command {
 		Long: `check reads a skid file strictly. What is wrong is refused with file, line, column and what to
 write instead. What is right is printed back as the machine it describes: swept and clearance
 volumes, expected rod load, opening angles, sampling per degree. Doubts are things that are
-possible but odd; each says what it means and how people usually find out.`,
-		Args: cobra.ExactArgs(1),
+possible but odd; each says what it means and how people usually find out.
+
+To measure on the machine what the file must say (clearance, dead centre, a transducer's zero), have
+it stopped, isolated, depressurised and locked out first; follow site permits, local codes and
+licensed practice. Hazardous-area rules decide what may be plugged in on the skid.`,
+		Example: `  lapwing check skid.yaml`,
+		Args:    cobra.ExactArgs(1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			sk, err := skid.Load(args[0])
 			if err != nil {

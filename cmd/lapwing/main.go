@@ -52,8 +52,12 @@ func listenCommand() *cobra.Command {
 		Short: "Show alarms as a control room would read them",
 		Long: `listen subscribes to a broker and prints every alarm transition with its evidence, the
 alarms that stand when it joins, and each change of the monitors' health.
-A transition that the broker delivers twice is shown once.`,
-		Args: cobra.NoArgs,
+A transition that the broker delivers twice is shown once.
+
+An alarm is advice, not a permit to work. Before anybody touches a valve or transducer because
+of one: isolate, depressurise and lock out; follow site permits, local codes and licensed practice.`,
+		Example: `  lapwing listen --broker tcp://broker.plant:1883`,
+		Args:    cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			r.Root = rootTopic
 			cfg.ClientID = fmt.Sprintf("lapwing-listen-%d", os.Getpid())

@@ -29,7 +29,11 @@ func pullCommand() *cobra.Command {
 the skid file and the process values of that time, and a note. lapwing review runs on them at once;
 any program that reads WAVE_FORMAT_EXTENSIBLE opens the samples.
 
-It asks the running daemon. When the daemon is down, name its state folder with --state.`,
+It asks the running daemon. When the daemon is down, name its state folder with --state.
+
+A recording is evidence for an analyst, not a permit to work on the machine.`,
+		Example: `  lapwing pull
+  lapwing pull 20300501T120000Z-17 --out evidence`,
 		Args: cobra.MaximumNArgs(1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			ctx := cmd.Context()

@@ -81,7 +81,8 @@ func run(ctx context.Context, o station.Options) error {
 		return err
 	}
 	notify := func(state string) { _, _ = daemon.SdNotify(false, state) } // without systemd there is nobody to tell
-	notify(daemon.SdNotifyReady)
+	status := func() string { h := s.Now().Health; return h.State + ": " + h.Line }
+	notify(daemon.SdNotifyReady + "\nSTATUS=" + status())
 	every, err := daemon.SdWatchdogEnabled(false)
 	if err != nil {
 		o.Log.Warn("watchdog setting not understood", "err", err)
@@ -89,10 +90,13 @@ func run(ctx context.Context, o station.Options) error {
 	if every > 0 {
 		done := make(chan struct{})
 		defer close(done)
-		go watchdog(done, every/3, s, notify)
+		go watchdog(done, every/3, s.Progress, status, notify)
 	}
+	told := context.AfterFunc(ctx, func() { notify(daemon.SdNotifyStopping) })
 	err = s.Run(ctx)
-	notify(daemon.SdNotifyStopping)
+	if told() { // the source has ended by itself
+		notify(daemon.SdNotifyStopping)
+	}
 	if cerr := s.Close(); err == nil {
 		err = cerr
 	}
@@ -100,7 +104,7 @@ func run(ctx context.Context, o station.Options) error {
 }
 
 // watchdog reports to systemd only while samples still pass through the line: a dead line must be restarted.
-func watchdog(done <-chan struct{}, every time.Duration, s *station.Station, notify func(string)) {
+func watchdog(done <-chan struct{}, every time.Duration, progress func() int64, status func() string, notify func(string)) {
 	t := time.NewTicker(every)
 	defer t.Stop()
 	last := int64(-1)
@@ -109,10 +113,9 @@ func watchdog(done <-chan struct{}, every time.Duration, s *station.Station, not
 		case <-done:
 			return
 		case <-t.C:
-			if p := s.Progress(); p != last {
+			if p := progress(); p != last {
 				last = p
-				notify(daemon.SdNotifyWatchdog)
-				notify("STATUS=" + s.Now().Health.State + ": " + s.Now().Health.Line)
+				notify(daemon.SdNotifyWatchdog + "\nSTATUS=" + status())
 			}
 		}
 	}
