@@ -68,7 +68,6 @@ type mark struct {
 	llr        [classes]float64
 	g, sd      float64 // pressure amplitude
 	area, aSd  float64 // m², of the deviation
-	drift      float64
 	slowSignal bool
 	valve      string
 	ambiguous  []string

@@ -332,6 +332,42 @@ func TestSameBlocksSameFindings(t *testing.T) {
 	}
 }
 
+// A restart between any two blocks changes nothing.
+func TestRestartChangesNoFinding(t *testing.T) {
+	s := newSynth(21)
+	r := commission(t, s, 500, nil)
+	again := New(s.layout, Config{})
+	n := 0
+	check := func(blk duty.Block, fs []Finding) {
+		n++
+		raw, err := json.Marshal(again.Snapshot())
+		if err != nil {
+			t.Fatal(err)
+		}
+		var snap Snapshot
+		if err := json.Unmarshal(raw, &snap); err != nil {
+			t.Fatal(err)
+		}
+		again = New(s.layout, Config{})
+		if err := again.Restore(snap); err != nil {
+			t.Fatal(err)
+		}
+		if x, y := fmt.Sprintf("%+v", fs), fmt.Sprintf("%+v", again.Judge(blk)); x != y {
+			t.Fatalf("block %d\nunbroken:  %s\nrestarted: %s", n, x, y)
+		}
+		if x, y := fmt.Sprintf("%+v", r.judge.Findings()), fmt.Sprintf("%+v", again.Findings()); x != y {
+			t.Fatalf("block %d\nstanding %s\nrestarted %s", n, x, y)
+		}
+	}
+	s.leak["t1.he.suction"], s.louder = 3, 0.8
+	r.run(s, 150, nil, check)
+	s.leak["t1.he.suction"], s.louder, s.cover["t1.ce.d1"] = 0, 0, 8
+	r.run(s, 150, nil, check)
+	if again.Restore(Snapshot{Version: 99}) == nil {
+		t.Error("another version was restored")
+	}
+}
+
 // A finding must say what people need: the caution always, and nothing that JSON cannot hold save a missing interval.
 func TestFindingsCarryCautionsAndNumbers(t *testing.T) {
 	s := newSynth(31)

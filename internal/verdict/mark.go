@@ -100,8 +100,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		switch c.kind {
 		case Leaking:
 			m.llr[measure.Pressure], m.g, m.sd = f.llr, f.g, f.sd
-			m.drift = c.slow.Step(f.z)
-			m.slowSignal = m.drift >= 1
+			m.slowSignal = c.slow.Step(f.z) >= 1
 		case ImpactingHard: // a broken plate also leaks: that is its second witness
 			if f.chosen && f.llr > 0 && v.hard[c.h] >= 1 {
 				m.llr[measure.Pressure] = f.llr

@@ -55,9 +55,9 @@ func (j *Judge) severity(f *Finding, c *trial) {
 		if !math.IsNaN(g) {
 			f.Severity = append(f.Severity, Quantity{"exponent_change", g / 100, (g - half(g, sd, 0.2)) / 100, (g + half(g, sd, 0.2)) / 100})
 		}
-	case AccelGain:
+	case AccelGain: // healthy blocks move by up to 0.20 in ln (reference/vibration.md section 5)
 		if !math.IsNaN(g) {
-			f.Severity = append(f.Severity, Quantity{"gain_ratio", math.Exp(g), math.NaN(), math.NaN()})
+			f.Severity = append(f.Severity, Quantity{"gain_ratio", math.Exp(g), math.Exp(g - 0.2), math.Exp(g + 0.2)})
 		}
 	}
 }
