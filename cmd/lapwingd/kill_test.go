@@ -52,7 +52,7 @@ func committed(p *program) (ids []uint64) {
 	return ids
 }
 
-// TestSystemKilledAgainAndAgain: SIGKILL at random moments while transitions happen, twelve times, then a run to the
+// TestSystemKilledAgainAndAgain: SIGKILL at random moments while transitions happen, ten times, then a run to the
 // end. What a persistent subscriber received is the journal: nothing lost, nothing out of order, nothing raised again.
 func TestSystemKilledAgainAndAgain(t *testing.T) {
 	system(t)
@@ -74,7 +74,7 @@ func TestSystemKilledAgainAndAgain(t *testing.T) {
 	}
 	known := committed(p)
 
-	const rounds = 12
+	const rounds = 10
 	wills := 0
 	for round := range rounds {
 		p := boot("--source", "model:unsteady")

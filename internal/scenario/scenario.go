@@ -149,7 +149,7 @@ func standing(sk *skid.Skid) Run {
 }
 
 func unsteady(sk *skid.Skid) Run {
-	const each, length = 5.0, 240.0
+	const each, length = 5.0, 200.0
 	r := standing(sk)
 	for at := 4.0; at < length; at += each * float64(len(field)) {
 		r.Script = walk(r.Script, sk, at, each, 0.8, field)
