@@ -213,8 +213,7 @@ func (r *review) learnt() error {
 	}
 	switch {
 	case r.sum.baseline == nil && r.sum.learnErr == nil:
-		r.sum.learnErr = fmt.Errorf("the learning run was to end with turn %d; the last valid turn of the recording is %s: nothing was learnt and nothing judged",
-			r.o.LearnTo-1, r.sum.lastValid())
+		r.sum.learnErr = r.sum.unended(r.o.LearnTo)
 		fallthrough
 	case r.sum.learnErr != nil:
 		return fmt.Errorf("review: no baseline: %w", r.sum.learnErr)

@@ -1,10 +1,10 @@
 package station
 
 import (
+	"errors"
 	"fmt"
 	"io"
 	"slices"
-	"strconv"
 	"strings"
 	"time"
 
@@ -77,12 +77,12 @@ func (s *summary) add(o *Output) {
 	}
 }
 
-// lastValid names the last valid turn.
-func (s *summary) lastValid() string {
+// unended says that a learning run that was to end before turn to never did.
+func (s *summary) unended(to int64) error {
 	if !s.valid {
-		return "none"
+		return errors.New("the learning run never began: no turn of the recording is valid")
 	}
-	return strconv.FormatInt(s.last, 10)
+	return fmt.Errorf("the learning run never ended: it was to end with turn %d, and the last valid turn of the recording is %d; nothing was learnt and nothing judged", to-1, s.last)
 }
 
 func (s *summary) print(w io.Writer, l *Line, took time.Duration, signal float64) {
