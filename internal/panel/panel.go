@@ -6,20 +6,14 @@
 package panel
 
 import (
-	"archive/tar"
+	"bytes"
 	"context"
-	_ "embed"
 	"encoding/json"
 	"errors"
 	"fmt"
-	"html/template"
-	"io"
-	"io/fs"
 	"log/slog"
 	"net"
 	"net/http"
-	"os"
-	"path/filepath"
 	"strings"
 	"time"
 
@@ -37,31 +31,6 @@ type Source interface {
 // ErrNoClip says that a clip of that name does not exist. Source.Export wraps it.
 var ErrNoClip = errors.New("no such clip")
 
-//go:embed page.html
-var pageHTML string
-
-var page = template.Must(template.New("page").Funcs(template.FuncMap{
-	"clock": func(t time.Time) string {
-		if t.IsZero() {
-			return "–"
-		}
-		return t.UTC().Format("2006-01-02 15:04:05Z")
-	},
-	"num": func(p *float64) string {
-		if p == nil {
-			return "–"
-		}
-		return fmt.Sprintf("%.1f", *p)
-	},
-	"mib": func(b int64) string { return fmt.Sprintf("%.1f MiB", float64(b)/(1<<20)) },
-	"val": func(m map[string]float64, name, format string) string {
-		if x, ok := m[name]; ok {
-			return fmt.Sprintf(format, x)
-		}
-		return "–"
-	},
-}).Parse(pageHTML))
-
 // Panel serves the page. Open it, then Serve, then Close.
 type Panel struct {
 	ln  net.Listener
@@ -74,16 +43,23 @@ func Open(listen string, src Source, log *slog.Logger) (*Panel, error) {
 	if err != nil {
 		return nil, fmt.Errorf("panel: address %q: %w (write 127.0.0.1:8411)", listen, err)
 	}
-	if ip := net.ParseIP(host); host != "localhost" && (ip == nil || !ip.IsLoopback()) {
-		return nil, fmt.Errorf("panel: address %q is not loopback: the page has no login yet and stays on this machine (write 127.0.0.1:8411, and reach it through an SSH tunnel)", listen)
+	far := fmt.Errorf("panel: address %q is not loopback: the page has no login yet and stays on this machine (write 127.0.0.1:8411, and reach it through an SSH tunnel)", listen)
+	if !loopback(host) {
+		return nil, far
 	}
 	ln, err := net.Listen("tcp", listen)
 	if err != nil {
 		return nil, fmt.Errorf("panel: %w", err)
 	}
+	if a, ok := ln.Addr().(*net.TCPAddr); !ok || !a.IP.IsLoopback() { // a hosts file may say anything of localhost
+		return nil, errors.Join(far, ln.Close())
+	}
+	if log == nil {
+		log = slog.New(slog.DiscardHandler)
+	}
 	p := &Panel{ln: ln, srv: &http.Server{
 		Handler:           guard(routes(src, log)),
-		ReadHeaderTimeout: 5 * time.Second, IdleTimeout: time.Minute, MaxHeaderBytes: 16 << 10,
+		ReadHeaderTimeout: 5 * time.Second, ReadTimeout: 10 * time.Second, WriteTimeout: 30 * time.Second, IdleTimeout: time.Minute, MaxHeaderBytes: 16 << 10,
 		ErrorLog: slog.NewLogLogger(log.Handler(), slog.LevelDebug),
 	}}
 	return p, nil
@@ -110,24 +86,37 @@ func (p *Panel) Close() error {
 	return nil
 }
 
-// guard refuses what a browser on this machine could be tricked into: foreign host names and writes.
+// loopback tells whether a host name or address stays on this machine.
+func loopback(host string) bool {
+	ip := net.ParseIP(strings.Trim(host, "[]"))
+	return strings.EqualFold(host, "localhost") || ip != nil && ip.IsLoopback()
+}
+
+// guard refuses what a browser on this machine could be tricked into: foreign host names, writes, and requests to the
+// API that another site's page makes.
 func guard(next http.Handler) http.Handler {
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
 		h := w.Header()
 		h.Set("Content-Security-Policy", "default-src 'none'; style-src 'sha256-"+styleHash+"'; frame-ancestors 'none'; base-uri 'none'; form-action 'none'")
 		h.Set("X-Content-Type-Options", "nosniff")
 		h.Set("Referrer-Policy", "no-referrer")
+		h.Set("Cross-Origin-Resource-Policy", "same-origin")
 		h.Set("Cache-Control", "no-store")
 		host, _, err := net.SplitHostPort(r.Host)
 		if err != nil {
 			host = r.Host
 		}
-		if ip := net.ParseIP(strings.Trim(host, "[]")); host != "localhost" && (ip == nil || !ip.IsLoopback()) {
+		if !loopback(host) {
 			http.Error(w, "this page answers to loopback addresses only", http.StatusMisdirectedRequest)
 			return
 		}
 		if r.Method != http.MethodGet && r.Method != http.MethodHead {
+			h.Set("Allow", "GET, HEAD")
 			http.Error(w, "read only", http.StatusMethodNotAllowed)
+			return
+		}
+		if r.Header.Get("Sec-Fetch-Site") == "cross-site" && r.URL.Path != "/" {
+			http.Error(w, "not for other sites' pages", http.StatusForbidden)
 			return
 		}
 		next.ServeHTTP(w, r)
@@ -137,72 +126,43 @@ func guard(next http.Handler) http.Handler {
 func routes(src Source, log *slog.Logger) http.Handler {
 	mux := http.NewServeMux()
 	mux.HandleFunc("GET /{$}", func(w http.ResponseWriter, r *http.Request) {
-		w.Header().Set("Content-Type", "text/html; charset=utf-8")
-		var b strings.Builder
-		if err := page.Execute(&b, src.Now()); err != nil {
+		var b bytes.Buffer
+		if err := page.Execute(&b, arrange(src.Now())); err != nil {
 			log.Error("panel: page", "err", err)
 			http.Error(w, "the page could not be drawn; see the log", http.StatusInternalServerError)
 			return
 		}
-		_, _ = io.WriteString(w, b.String())
+		w.Header().Set("Content-Type", "text/html; charset=utf-8")
+		_, _ = w.Write(b.Bytes())
 	})
 	mux.HandleFunc("GET /api/v1/now", func(w http.ResponseWriter, r *http.Request) {
-		w.Header().Set("Content-Type", "application/json")
-		_ = json.NewEncoder(w).Encode(src.Now())
+		n := *src.Now()
+		n.Findings, n.Standing, n.Journal, n.Clips = list(n.Findings), list(n.Standing), list(n.Journal), list(n.Clips)
+		sendJSON(w, n, log)
 	})
 	mux.HandleFunc("GET /api/v1/clips", func(w http.ResponseWriter, r *http.Request) {
-		w.Header().Set("Content-Type", "application/json")
-		_ = json.NewEncoder(w).Encode(src.Now().Clips)
+		sendJSON(w, list(src.Now().Clips), log)
 	})
-	mux.HandleFunc("GET /api/v1/clips/{id}", func(w http.ResponseWriter, r *http.Request) {
-		sendClip(w, r, src, log)
-	})
+	c := clipper{src: src, log: log, busy: make(chan struct{}, exports)}
+	mux.HandleFunc("GET /api/v1/clips/{id}", c.send)
 	return mux
 }
 
-// sendClip exports into a scratch folder first: no transaction stays open while a slow client reads.
-func sendClip(w http.ResponseWriter, r *http.Request, src Source, log *slog.Logger) {
-	dir, err := os.MkdirTemp("", "lapwing-clip-")
-	if err != nil {
-		http.Error(w, "no room for the export: "+err.Error(), http.StatusInsufficientStorage)
-		return
+// list makes an empty list out of none: in JSON nothing is [], not null.
+func list[T any](s []T) []T {
+	if s == nil {
+		return []T{}
 	}
-	defer os.RemoveAll(dir)
-	switch err := src.Export(r.Context(), r.PathValue("id"), dir); {
-	case errors.Is(err, ErrNoClip):
-		http.Error(w, err.Error(), http.StatusNotFound)
-		return
-	case err != nil:
-		log.Error("panel: export", "clip", r.PathValue("id"), "err", err)
-		http.Error(w, err.Error(), http.StatusInternalServerError)
-		return
-	}
-	w.Header().Set("Content-Type", "application/x-tar")
-	if err := tarDir(w, dir); err != nil {
-		log.Warn("panel: clip not sent whole", "clip", r.PathValue("id"), "err", err)
-	}
+	return s
 }
 
-func tarDir(w io.Writer, dir string) error {
-	tw := tar.NewWriter(w)
-	err := filepath.WalkDir(dir, func(path string, d fs.DirEntry, err error) error {
-		if err != nil || d.IsDir() {
-			return err
-		}
-		st, err := d.Info()
-		if err != nil {
-			return err
-		}
-		if err := tw.WriteHeader(&tar.Header{Name: d.Name(), Mode: 0o644, Size: st.Size(), ModTime: st.ModTime(), Format: tar.FormatPAX}); err != nil {
-			return err
-		}
-		f, err := os.Open(path)
-		if err != nil {
-			return err
-		}
-		defer f.Close()
-		_, err = io.Copy(tw, f)
-		return err
-	})
-	return errors.Join(err, tw.Close())
+func sendJSON(w http.ResponseWriter, v any, log *slog.Logger) {
+	b, err := json.Marshal(v)
+	if err != nil {
+		log.Error("panel: API", "err", err)
+		http.Error(w, "the answer could not be written; see the log", http.StatusInternalServerError)
+		return
+	}
+	w.Header().Set("Content-Type", "application/json")
+	_, _ = w.Write(append(b, '\n'))
 }

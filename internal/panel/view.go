@@ -1,0 +1,268 @@
+package panel
+
+import (
+	"encoding/json"
+	"fmt"
+	"strings"
+	"time"
+
+	"lapwing/internal/wire"
+)
+
+// view is a snapshot arranged for the page: what needs attention comes first.
+type view struct {
+	*wire.Now
+	Banner banner
+	Cards  []card
+	Seen   []wire.Finding // findings behind no standing alarm
+	Valves []throwMap
+}
+
+// banner is the one line that is read from across the room.
+type banner struct {
+	Class string // danger, alert, advisory, mute, good
+	Title string // for the browser's tab
+	Text  string
+}
+
+// card is one standing alarm with everything that belongs to it.
+type card struct {
+	wire.Alarm
+	Finding *wire.Finding
+	Where   string // the subject in words
+	State   string
+	For     string // how long it has stood; empty: not known
+}
+
+// throwMap is one throw drawn as a table: ends down, valve groups across.
+type throwMap struct {
+	ID, Duty string
+	Step     int
+	Whole    cell // what concerns the throw as a whole
+	Rows     []mapRow
+}
+
+type mapRow struct {
+	End   string
+	State string
+	Cells [2]cell // suction, discharge
+}
+
+// cell is one valve group: its worst standing alarm, or why there is nothing to say.
+type cell struct {
+	Class string
+	Words string
+	Opens string // where it opens and the window that follows it
+}
+
+func arrange(n *wire.Now) view {
+	v := view{Now: n, Banner: headline(n)}
+	alarmed := map[string]bool{}
+	for i := range n.Standing {
+		a := &n.Standing[i]
+		alarmed[a.Key] = true
+		v.Cards = append(v.Cards, card{Alarm: *a, Finding: findingOf(n, a), Where: inWords(a.Subject), State: stateInWords(a.To), For: lasted(a.At, n.At)})
+	}
+	for i := range n.Findings {
+		if f := &n.Findings[i]; !alarmed[f.Subject+"/"+f.Kind] {
+			v.Seen = append(v.Seen, *f)
+		}
+	}
+	if n.Latest != nil && n.Latest.Valid {
+		for i := range n.Latest.Throws {
+			v.Valves = append(v.Valves, drawThrow(n, &n.Latest.Throws[i]))
+		}
+	}
+	return v
+}
+
+var ranks = map[string]int{"danger": 3, "alert": 2, "advisory": 1}
+
+// headline never lets silence look like health: no alarm means something only while valves are being judged.
+func headline(n *wire.Now) banner {
+	var count [4]int
+	for i := range n.Standing {
+		count[ranks[n.Standing[i].Severity]]++
+	}
+	var said []string
+	worst := ""
+	for _, w := range []struct {
+		rank      int
+		one, more string
+	}{{3, "danger", "dangers"}, {2, "alert", "alerts"}, {1, "advisory", "advisories"}} {
+		switch c := count[w.rank]; {
+		case c == 1:
+			said = append(said, "1 "+w.one)
+		case c > 1:
+			said = append(said, fmt.Sprintf("%d %s", c, w.more))
+		default:
+			continue
+		}
+		if worst == "" {
+			worst = w.one
+		}
+	}
+	if count[0] > 0 {
+		said = append(said, fmt.Sprintf("%d waiting for an acknowledgement", count[0]))
+	}
+	if len(said) > 0 {
+		if worst == "" {
+			worst = "mute"
+		}
+		return banner{worst, strings.Join(said, ", "), strings.Join(said, ", ")}
+	}
+	none := "No alarm stands"
+	switch h := &n.Health; {
+	case h.State != "running":
+		return banner{"mute", h.State, none + ", but no valve is being watched: " + word(h.State)}
+	case !h.Learned:
+		return banner{"mute", "not judging", none + ", but no valve is being judged: " + word(h.Line)}
+	case n.Latest != nil && !n.Latest.Valid:
+		return banner{"mute", "turn not judged", none + "; the last turn was not judged: " + n.Latest.Reason}
+	case len(h.Trouble) > 0:
+		return banner{"mute", "monitor in trouble", none + ", but this monitor needs attention itself"}
+	}
+	return banner{"good", "no alarm", none + ". Watching."}
+}
+
+func word(s string) string {
+	if s == "" {
+		return "not known why"
+	}
+	return s
+}
+
+// findingOf gives the evidence behind an alarm: the present finding when there is one, else what the alarm carried.
+func findingOf(n *wire.Now, a *wire.Alarm) *wire.Finding {
+	for i := range n.Findings {
+		if n.Findings[i].Subject+"/"+n.Findings[i].Kind == a.Key {
+			return &n.Findings[i]
+		}
+	}
+	switch d := a.Detail.(type) {
+	case wire.Finding:
+		return &d
+	case nil:
+		return nil
+	default:
+		raw, err := json.Marshal(d)
+		var f wire.Finding
+		if err != nil || json.Unmarshal(raw, &f) != nil || f.Subject == "" {
+			return nil // a limit: its sentence has the numbers
+		}
+		return &f
+	}
+}
+
+var partWords = map[string]string{"he": "head end", "ce": "crank end", "suction": "suction valves", "discharge": "discharge valves", "rings": "piston rings", "packing": "rod packing"}
+
+// inWords spells a subject out: t1.he.s2 is throw t1, head end, suction valve 2.
+func inWords(subject string) string {
+	parts := strings.Split(subject, ".")
+	if len(parts) == 1 {
+		return subject
+	}
+	out := []string{"throw " + parts[0]}
+	for _, p := range parts[1:] {
+		switch w, known := partWords[p]; {
+		case known:
+			out = append(out, w)
+		case len(p) > 1 && p[0] == 's' && digits(p[1:]):
+			out = append(out, "suction valve "+p[1:])
+		case len(p) > 1 && p[0] == 'd' && digits(p[1:]):
+			out = append(out, "discharge valve "+p[1:])
+		default:
+			return subject
+		}
+	}
+	return strings.Join(out, ", ")
+}
+
+func digits(s string) bool {
+	return strings.Trim(s, "0123456789") == ""
+}
+
+func stateInWords(s string) string {
+	switch s {
+	case "unacknowledged":
+		return "not acknowledged"
+	case "returned-unacknowledged":
+		return "condition gone, not acknowledged"
+	case "latched-unacknowledged":
+		return "condition gone, latched, not acknowledged"
+	case "latched-acknowledged":
+		return "condition gone, latched, waits for a reset"
+	}
+	return s
+}
+
+// lasted tells a span in the largest unit that fits; empty when either end is not known.
+func lasted(from, to time.Time) string {
+	d := to.Sub(from)
+	switch {
+	case from.IsZero() || to.IsZero() || d < 0:
+		return ""
+	case d < time.Minute:
+		return fmt.Sprintf("%d s", int(d.Seconds()))
+	case d < time.Hour:
+		return fmt.Sprintf("%d min", int(d.Minutes()))
+	case d < 48*time.Hour:
+		return fmt.Sprintf("%d h %d min", int(d.Hours()), int(d.Minutes())%60)
+	}
+	return fmt.Sprintf("%d days", int(d.Hours()/24))
+}
+
+func drawThrow(n *wire.Now, t *wire.TurnThrow) throwMap {
+	m := throwMap{ID: t.ID, Duty: t.Duty, Step: t.Step}
+	m.Whole = worst(n, func(s string) bool { return s == t.ID || s == t.ID+".rings" || s == t.ID+".packing" })
+	names := map[string]string{"he": "head end", "ce": "crank end"}
+	for i := range t.Ends {
+		e := &t.Ends[i]
+		row := mapRow{End: names[e.End], State: e.State}
+		for g, group := range []string{"suction", "discharge"} {
+			base := t.ID + "." + e.End + "."
+			c := worst(n, func(s string) bool {
+				return s == base+group || strings.HasPrefix(s, base+group+".") || strings.HasPrefix(s, base+group[:1]) && digits(s[len(base)+1:])
+			})
+			if c.Class == "" {
+				c.Class, c.Words = quiet(n, e.State)
+			}
+			for k := range e.Events {
+				if ev := &e.Events[k]; ev.Event == group+".opens" && ev.Angle != nil && ev.Window != nil {
+					c.Opens = fmt.Sprintf("opens at %.1f°, window %.1f° to %.1f°", *ev.Angle, ev.Window[0], ev.Window[1])
+				}
+			}
+			row.Cells[g] = c
+		}
+		m.Rows = append(m.Rows, row)
+	}
+	return m
+}
+
+// worst gives the worst standing alarm on the subjects that match.
+func worst(n *wire.Now, match func(subject string) bool) (c cell) {
+	rank := -1
+	for i := range n.Standing {
+		if a := &n.Standing[i]; match(a.Subject) && ranks[a.Severity] > rank {
+			rank = ranks[a.Severity]
+			c = cell{Class: a.Severity, Words: a.Severity + ": " + a.Kind}
+			if rank == 0 {
+				c = cell{Class: "mute", Words: a.Kind + ": " + stateInWords(a.To)}
+			}
+		}
+	}
+	return c
+}
+
+// quiet says what it means that no alarm stands on a valve group.
+func quiet(n *wire.Now, end string) (class, words string) {
+	switch {
+	case end == "idle":
+		return "mute", "idle: does no work, not judged"
+	case end != "following":
+		return "mute", end + ": not judged now"
+	case !n.Health.Learned:
+		return "mute", "measured, not judged"
+	}
+	return "good", "no alarm"
+}
