@@ -4,7 +4,8 @@
 // Waits: a few turns after a start or a load change before it calls the duty steady; a block of turns (15) for evidence.
 // Emits: a Point per throw and turn; Deviations per turn at once; a Block per throw every 15 usable turns.
 //
-// When the duty is not known the Point's state is Unknown; when the baseline has not seen the duty, deviations say
+// When the duty is not known, or the traces show another load step or pressure than the process values tell yet, the
+// Point's state is Unknown; when the baseline has not seen the duty, deviations say
 // Seen false, and no block is made of them: nothing is judged by extrapolation.
 //
 // Expected values are a robust regression per throw and load step on ln(Pd/Ps), speed and ln Ps, with squares and one

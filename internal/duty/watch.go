@@ -19,6 +19,7 @@ type WatchConfig struct {
 	WarmTurns      int     // turns before anything is called steady; default 10
 	StartTurns     int     // turns called Starting after a stop; default 60
 	SettleTurns    int     // turns called Changing after a load step; default 30
+	DoubtTurns     int     // turns that are not judged because process values and traces disagree, before the disagreement is taken for the machine's; default 60
 	Drift          float64 // relative difference of the last 4 turns from the 16 before that is a change; default 0.01
 }
 
@@ -32,6 +33,7 @@ type Input struct {
 	Ps, Pd       float64 // Pa, line
 	OwnPs, OwnPd [2]float64
 	Ends         [2]window.State
+	OtherStep    bool // the traces make sense only with the clearance of another load step than the one told
 }
 
 // Watch classifies the duty of one throw, turn by turn.
@@ -48,6 +50,8 @@ type Watch struct {
 	rpm     lead
 	ps, pd  lead
 	last    int64
+	doubt   int // turns in a row in which process values and traces disagreed
+	taps    taps
 }
 
 // NewWatch gives a watch that has seen nothing.
@@ -60,6 +64,7 @@ func NewWatch(cfg WatchConfig) *Watch {
 	def(&cfg.WarmTurns, 10)
 	def(&cfg.StartTurns, 60)
 	def(&cfg.SettleTurns, 30)
+	def(&cfg.DoubtTurns, 60)
 	if cfg.Drift <= 0 {
 		cfg.Drift = 0.01
 	}
@@ -94,6 +99,7 @@ func (w *Watch) Classify(in Input) Point {
 	w.last = in.Turn
 	if w.turns == 0 {
 		w.rpm, w.ps, w.pd, w.settle, w.haveSt = lead{}, lead{}, lead{}, 0, false
+		w.doubt, w.taps = 0, taps{}
 		w.start = w.cfg.WarmTurns
 		if w.stopped {
 			w.start = w.cfg.StartTurns
@@ -112,6 +118,10 @@ func (w *Watch) Classify(in Input) Point {
 	if w.rpm.move(in.RPM, w.cfg.Drift) || w.ps.move(p.Ps, w.cfg.Drift) || w.pd.move(p.Pd, w.cfg.Drift) {
 		w.settle = max(w.settle, w.cfg.SettleTurns/3)
 	}
+	late := w.late(in, &p)
+	if late {
+		w.settle = max(w.settle, w.cfg.SettleTurns/3)
+	}
 
 	out := w.cfg.MaxRPM > 0 && (in.RPM < w.cfg.MinRPM || in.RPM > w.cfg.MaxRPM)
 	switch {
@@ -121,6 +131,8 @@ func (w *Watch) Classify(in Input) Point {
 	case w.start > 0:
 		w.start--
 		p.State = Starting
+	case late:
+		p.State = Unknown
 	case !known(p.Ps) || !known(p.Pd) || p.Ps <= 0 || p.Pd <= 0:
 		p.State = Unknown
 	case w.settle > 0:
@@ -130,6 +142,70 @@ func (w *Watch) Classify(in Input) Point {
 		p.State = Steady
 	}
 	return p
+}
+
+// late tells whether the process values are behind what the traces show already: another load step, another pressure.
+// Control systems tell of a change up to seconds later, and features held against the old duty would accuse a healthy
+// machine. A disagreement that lasts is no delay: it is then judged.
+func (w *Watch) late(in Input, p *Point) bool {
+	apart := in.OtherStep || w.otherIdle(in)
+	if !p.Inferred {
+		apart = w.taps.apart(in.Ends, in.OwnPs, in.OwnPd, p.Ps, p.Pd) || apart
+	}
+	if !in.ProcessKnown || !apart {
+		w.doubt = 0
+		return false
+	}
+	if w.doubt++; w.doubt <= w.cfg.DoubtTurns {
+		return true
+	}
+	w.taps = taps{}
+	return false
+}
+
+// otherIdle tells whether other ends do work than the load step told says. Steps that are not listed say nothing.
+func (w *Watch) otherIdle(in Input) bool {
+	for _, s := range w.cfg.Steps {
+		if s.Code == in.Step {
+			return s.Idle != w.idle
+		}
+	}
+	return false
+}
+
+// taps compares the plateaus with the line pressures of the process values: valve losses and taps keep them apart by
+// a steady share.
+type taps struct {
+	have  [2]bool
+	share [2][2]float64 // by end: ln of plateau over line, suction and discharge
+}
+
+const (
+	levelApart  = 0.03      // ln, beyond which the process values are late; valves and taps move slower and less
+	levelFollow = 1.0 / 8.0 // of the difference, per turn, that the share follows
+)
+
+func (l *taps) apart(ends [2]window.State, ownPs, ownPd [2]float64, ps, pd float64) bool {
+	apart := false
+	for e := range ends {
+		now := [2]float64{math.Log(ownPs[e] / ps), math.Log(ownPd[e] / pd)}
+		if ends[e] == window.Idle || !known(now[0]) || !known(now[1]) {
+			l.have[e] = false
+			continue
+		}
+		if !l.have[e] {
+			l.have[e], l.share[e] = true, now
+			continue
+		}
+		d := [2]float64{now[0] - l.share[e][0], now[1] - l.share[e][1]}
+		if math.Max(math.Abs(d[0]), math.Abs(d[1])) > levelApart {
+			apart = true
+			continue
+		}
+		l.share[e][0] += levelFollow * d[0]
+		l.share[e][1] += levelFollow * d[1]
+	}
+	return apart
 }
 
 // noteIdle keeps the last known pattern of idle ends; a lost window says nothing.

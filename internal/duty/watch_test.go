@@ -16,6 +16,13 @@ func steadyInput(turn int64) Input {
 		OwnPs: [2]float64{19.8e5, 19.7e5}, OwnPd: [2]float64{50.4e5, 50.3e5}, Ends: [2]window.State{window.Following, window.Following}}
 }
 
+// unload lets the crank end idle.
+func unload(in *Input, yes bool) {
+	if yes {
+		in.Ends[1], in.OwnPs[1], in.OwnPd[1] = window.Idle, in.OwnPs[0], in.OwnPs[0]
+	}
+}
+
 var stateLetter = map[State]byte{Unknown: '?', Stopped: 'O', Starting: 'S', Changing: 'C', Steady: '='}
 
 // squeeze writes runs as letter and length.
@@ -42,9 +49,20 @@ func TestWatchScenarios(t *testing.T) {
 		stop  map[int]bool
 		want  string
 	}{
-		"a running machine warms up quickly":     {40, func(int, *Input) {}, nil, "S10=30"},
-		"after a stop it starts slowly":          {120, func(int, *Input) {}, map[int]bool{20: true}, "S10=10OS60=39"},
-		"a load step settles":                    {100, func(i int, in *Input) { in.Step = 1 + i/50 }, nil, "S10=40C30=20"},
+		"a running machine warms up quickly":                                      {40, func(int, *Input) {}, nil, "S10=30"},
+		"after a stop it starts slowly":                                           {120, func(int, *Input) {}, map[int]bool{20: true}, "S10=10OS60=39"},
+		"a load step settles":                                                     {100, func(i int, in *Input) { in.Step = 1 + i/50; unload(in, i >= 50) }, nil, "S10=40C30=20"},
+		"a load step told late is not judged":                                     {100, func(i int, in *Input) { in.Step = 1 + (i+42)/100; unload(in, i >= 50) }, nil, "S10=40?8C30=12"},
+		"an end that is idle though the step says otherwise is judged in the end": {140, func(i int, in *Input) { unload(in, i >= 50) }, nil, "S10=40?60C10=20"},
+		"traces that fit another pocket only":                                     {80, func(i int, in *Input) { in.OtherStep = i >= 30 && i < 36 }, nil, "S10=20?6C10=34"},
+		"line pressure told late is not judged": {120, func(i int, in *Input) {
+			if i >= 40 {
+				in.OwnPd = [2]float64{56e5, 55.9e5}
+			}
+			if i >= 50 {
+				in.Pd = 55.6e5
+			}
+		}, nil, "S10=30?10C27=43"},
 		"an invalid turn is unknown and no more": {40, func(i int, in *Input) { in.Valid = i != 20 }, nil, "S10=10?=19"},
 		"speed outside its range is starting": {60, func(i int, in *Input) {
 			if i >= 20 && i < 30 {

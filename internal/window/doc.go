@@ -20,5 +20,9 @@
 // constants). The lag from departure to impact belongs to the valve and is learnt, in milliseconds, from the
 // vibration; the tail of a window follows it, its lead is never narrowed.
 //
+// The control system tells of a load step up to a second late. Until then the volumes may be wrong by a pocket, and a
+// stroke looks open or ends in the wrong place: when the clearance told makes no sense of the trace and that of another
+// load step does, this one is taken, and End.Clearance says so.
+//
 // A Result and everything in it is valid until the tracker's next Track.
 package window

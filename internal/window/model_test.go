@@ -195,3 +195,42 @@ func TestModelLoadStep(t *testing.T) {
 		t.Errorf("turns by state: %v", turns)
 	}
 }
+
+// A pocket that opens before the control system tells of it: the windows take the clearance that makes sense of the
+// trace, and say so; an end without a pocket is not touched.
+func TestModelPocketToldLate(t *testing.T) {
+	r := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 2.9, Seed: 5, Changes: []model.Change{
+		{At: 1.5, What: model.LoadStep, To: windowtest.Pocket}, {At: 2.2, What: model.LoadStep, To: windowtest.Full}}}
+	sk := r.Skid()
+	tr := window.NewTracker(window.Config{})
+	told, open := sk.CylinderAt(0, windowtest.Full), sk.CylinderAt(0, windowtest.Pocket)
+	in := window.Input{Cylinder: told, K: windowtest.Gas().KV}
+	for e := range in.Others {
+		in.Others[e] = []float64{told.Clearance[e], open.Clearance[e]}
+	}
+	turns := map[bool]int{}
+	r.Turns(t, .6, func(tn windowtest.Turn) {
+		res := tr.Track(tn.Turn, []window.Input{in})
+		end := &res.Throws[0].Ends[crank.HE]
+		if c := res.Throws[0].Ends[crank.CE].Clearance; !math.IsNaN(c) {
+			t.Errorf("at %.2f s the crank end is taken with a clearance of %g", tn.Time, c)
+		}
+		full, pocket := tn.Time < 1.4 || tn.Time > 2.3, tn.Time > 1.6 && tn.Time < 2.1
+		if !full && !pocket {
+			return
+		}
+		turns[pocket]++
+		if other := end.Clearance == open.Clearance[crank.HE]; other != pocket {
+			t.Errorf("at %.2f s the head end is taken with a clearance of %g", tn.Time, end.Clearance)
+		}
+		for _, ev := range []window.Event{window.SuctionOpens, window.DischargeOpens} {
+			w := end.W[ev]
+			if truth, ok := find(tn, crank.HE, ev, w); !ok || truth.Impact < w.Lo || truth.Impact > w.Hi || math.Abs(w.Angle-truth.Lift) > 2.5 {
+				t.Errorf("at %.2f s event %d at %.1f, impact %.1f, window [%.1f, %.1f], angle %.1f %v", tn.Time, ev, truth.Lift, truth.Impact, w.Lo, w.Hi, w.Angle, w.State)
+			}
+		}
+	})
+	if turns[true] < 5 || turns[false] < 10 {
+		t.Errorf("turns with and without pocket: %v", turns)
+	}
+}

@@ -4,7 +4,6 @@ import (
 	"math"
 
 	"lapwing/internal/crank"
-	"lapwing/internal/dsp"
 	"lapwing/internal/turn"
 )
 
@@ -20,6 +19,10 @@ type Input struct {
 	LinePs, LinePd float64        // Pa absolute, NaN unknown; not needed to find an event
 	IdleHint       [2]bool        // ends whose suction valves the load step holds open
 	Late           [2]float64     // degrees after the outer dead centre to which the step holds them open; 0 or NaN none
+
+	// Other clearances that a load step may give each end, as shares of its swept volume. The control system tells of a
+	// step up to a second late; one of these is believed instead of the cylinder's when only it makes sense of the trace.
+	Others [2][]float64
 }
 
 // Tracker follows the windows of one machine. It is not safe for concurrent use.
@@ -32,6 +35,7 @@ type Tracker struct {
 
 type throw struct {
 	trace  [2]trace
+	other  [2]trace // of a clearance that the load step told does not give
 	memory [2]endMemory
 	now    [2]sight
 }
@@ -129,7 +133,7 @@ func (t *Tracker) end(th *throw, tt *turn.Throw, i, e int, in Input, out *End) {
 		t.hold(th, e, out, whyPressure)
 		return
 	}
-	t.look(th, e, in, out)
+	t.look(th, tt, e, in, out)
 }
 
 // blank is an end about which nothing is known.
@@ -137,7 +141,7 @@ func blank() End {
 	nan := math.NaN()
 	w := Window{Angle: nan, Thermo: nan, Expected: nan, Lo: nan, Hi: nan}
 	r := Run{Slope: nan, Sigma: nan}
-	return End{W: [Events]Window{w, w, w, w}, Closed: [2]Run{r, r}, Ps: nan, Pd: nan, Trapped: [2]float64{nan, nan}}
+	return End{W: [Events]Window{w, w, w, w}, Closed: [2]Run{r, r}, Ps: nan, Pd: nan, Trapped: [2]float64{nan, nan}, Clearance: nan}
 }
 
 func (e *End) set(s State, why string) {
@@ -162,72 +166,28 @@ func closes(stroke int) Event {
 	return DischargeCloses
 }
 
-// look finds plateaus, strokes and events on a good trace, and believes them or not.
-func (t *Tracker) look(th *throw, e int, in Input, out *End) {
-	tr, see, mem := &th.trace[e], &th.now[e], &th.memory[e]
-	comp, exp := strokeStart(e, Compression), strokeStart(e, Expansion)
-	// Suction and discharge plateau beside each stroke: the one it starts from and the one it ends in.
-	ps := [2]float64{t.plateau(tr, comp-180+suctionLo, comp-3), t.plateau(tr, exp+suctionLo, exp+plateauEnd)}
-	pd := [2]float64{t.plateau(tr, comp+dischargLo, comp+plateauEnd), t.plateau(tr, exp-180+dischargLo, exp-3)}
-	out.Ps, out.Pd = ps[Compression], pd[Compression]
-	ratio := math.Log(pd[Compression] / ps[Compression])
-	if ratio < idleRatio {
-		why := whyIdle
-		if in.IdleHint[e] {
+// look reads a good trace, and believes it or not.
+func (t *Tracker) look(th *throw, tt *turn.Throw, e int, in Input, out *End) {
+	see, mem := &th.now[e], &th.memory[e]
+	r := t.read(&th.trace[e], e, see.k)
+	if r.idle != "" {
+		why := r.idle
+		if why == whyIdle && in.IdleHint[e] {
 			why = whyIdleHint
 		}
+		out.Ps, out.Pd = r.ps[Compression], r.pd[Compression]
 		t.idle(th, e, out, why)
 		return
 	}
-	for s := range out.Closed {
-		out.Closed[s] = tr.run(s, see.k)
-	}
-	short := [2]bool{}
-	for s := range short {
-		short[s] = tr.drop(out.Closed[s]) < idleStroke*ratio
-	}
-	if short[Compression] && short[Expansion] && ratio < idleShort {
-		t.idle(th, e, out, whyShortStroke)
-		return
-	}
 	see.working, mem.idle = true, false
-
-	var last, first [2]dsp.Line
+	if _, ok := t.misfit(mem, &r); !ok {
+		r, out.Clearance = t.otherwise(th, tt, e, in, r)
+	}
+	see.open, see.close = r.open, r.close
+	out.Ps, out.Pd, out.Closed, out.Trapped, out.State = r.ps[Compression], r.pd[Compression], r.closed, r.trapped, Following
 	for s := range out.Closed {
-		if short[s] {
-			out.Closed[s].OK = false
-			continue
-		}
-		var from, before int
-		last[s], from = tr.lastLine(out.Closed[s])
-		first[s], before = tr.firstLine(out.Closed[s])
-		see.open[s] = tr.opening(s, last[s], from)
-		see.close[s] = tr.closing(s, first[s], before) - strokeStart(e, s)
-	}
-	// A plateau must not contain its own opening (pocket, high ratio).
-	if d := see.open[Expansion] - exp + 6; d > suctionLo {
-		lo := math.Min(d, plateauEnd-3)
-		ps = [2]float64{t.plateau(tr, comp-180+lo, comp-3), t.plateau(tr, exp+lo, exp+plateauEnd)}
-	}
-	if d := see.open[Compression] - comp + 4; d > dischargLo {
-		lo := math.Min(d, plateauEnd-3)
-		pd = [2]float64{t.plateau(tr, comp+lo, comp+plateauEnd), t.plateau(tr, exp-180+lo, exp-3)}
-	}
-	out.Ps, out.Pd = ps[Compression], pd[Compression]
-	out.State = Following
-
-	for s := range out.Closed {
-		start, end := ps[s], pd[s]
-		if s == Expansion {
-			start, end = pd[s], ps[s]
-		}
 		o, c := &out.W[opens(s)], &out.W[closes(s)]
-		if out.Closed[s].OK {
-			out.Trapped[s] = tr.trapped(meet(first[s], start), s)
-			o.Thermo = tr.angleOf(meet(last[s], end), s)
-			o.Expected = tr.angleOf(out.Trapped[s]*math.Pow(start/end, 1/see.k), s)
-			c.Thermo = tr.angleOf(meet(first[s], start), s)
-		}
+		o.Thermo, o.Expected, c.Thermo = r.thermo[s], r.expected[s], r.meets[s]
 		if s == Compression && out.Closed[s].OK && math.IsNaN(see.open[s]) {
 			mem.open[s].missed, mem.open[s].rejected.v = 0, mem.open[s].rejected.v[:0]
 			o.State, o.Why = NotDelivering, whyNoDelivery
@@ -249,36 +209,33 @@ func (t *Tracker) look(th *throw, e int, in Input, out *End) {
 	}
 }
 
-// trapped bounds the volume at a closing: a little beyond the dead centres is real (the line pressure pulsates), far
-// beyond is a line that was none.
-func (tr *trace) trapped(v float64, stroke int) float64 {
-	clear := tr.cyl.ClearanceVolume(tr.end)
-	if stroke == Expansion && v < 0.8*clear || v < clear/2 || v > 1.15*(clear+tr.cyl.Swept(tr.end)) {
-		return math.NaN()
+// otherwise tries the clearances of the other load steps on a trace that the one told makes no sense of. It gives what
+// the best of them reads, with its clearance, or the reading it was given and NaN.
+func (t *Tracker) otherwise(th *throw, tt *turn.Throw, e int, in Input, told reading) (reading, float64) {
+	best, clear, least := told, math.NaN(), math.Inf(1)
+	for _, c := range in.Others[e] {
+		if c == in.Cylinder.Clearance[e] {
+			continue
+		}
+		cyl := in.Cylinder
+		cyl.Clearance[e] = c
+		tr := &th.other[e]
+		tr.shape(e, cyl, tt.Grid)
+		tr.load(tt.P[e]) // the same trace as was good for the one told
+		r := t.read(tr, e, th.now[e].k)
+		if m, ok := t.misfit(&th.memory[e], &r); ok && m < least {
+			best, clear, least = r, c, m
+		}
 	}
-	return v
-}
-
-// plateau is the median pressure between two angles, Pa.
-func (t *Tracker) plateau(tr *trace, lo, hi float64) float64 {
-	w := append(t.buf[:0], tr.lnP[tr.index(lo):tr.index(hi)+1]...)
-	t.buf = w
-	return math.Exp(dsp.MedianInPlace(w))
+	return best, clear
 }
 
 // believe judges an opening against its prediction and keeps, holds or loses it.
 func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 	found, dev := see.open[s], see.open[s]-w.Expected
-	offset, _ := o.offset.centre(t.buf)
-	if math.IsNaN(offset) {
-		offset = 0
-	}
+	offset, limit := t.usual(o)
 	if !math.IsNaN(found) && math.IsNaN(dev) {
 		dev = offset // no prediction to judge by: believe the trace
-	}
-	limit := plausible
-	if len(o.offset.v) < firstTurns {
-		limit = plausibleFirst
 	}
 	why := whyNoRun
 	if out.Closed[s].OK {

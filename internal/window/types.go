@@ -61,6 +61,8 @@ type End struct {
 	// suction traps (Compression) and what discharge leaves behind (Expansion). NaN unknown. Under pulsation it may
 	// lie a little beyond the dead centre.
 	Trapped [2]float64
+	// Clearance is the one that the trace was taken with when it fits another load step than the one told; NaN: as told.
+	Clearance float64
 }
 
 // Throw is both ends; index crank.HE, crank.CE.
