@@ -153,7 +153,7 @@ func well(t *testing.T, page string) {
 func TestFullPage(t *testing.T) {
 	page := draw(t, full())
 	keep(t, "full", page)
-	contains(t, page, "<title>1 danger, 1 alert, 1 advisory · Heron Meadow · Lapwing</title>", `class="banner danger" role="status">1 danger, 1 alert, 1 advisory</p>`,
+	contains(t, page, "<title>1 danger, 1 alert, 1 advisory · Heron Meadow · Lapwing</title>", `class="banner danger" role="status">◆ Danger: throw t1, head end, suction valves: leaking<small>1 danger, 1 alert, 1 advisory</small></p>`,
 		"throw t1, head end, suction valves", "t1.he.suction leaking, confirmed", "discharge opens 4.1° later", "noise while closed is 9 dB above", "38.2 mm² (31 to 46)", "6.1 %",
 		"throw t1, head end, suction valve 2", "isolate, depressurise and lock out", `href="/api/v1/clips/20260301T100300Z-31"`, "for 23 min", "for 40 s", "came first",
 		"the broker has not been reached", "Seen, no alarm stands on it", "too little to raise an alarm", "3072.0 MiB of 8192.0 MiB", "still recording", "t1.he.discharge.opens", "301.4", "298.4 to 314.4",
@@ -180,7 +180,7 @@ func TestEmptyPages(t *testing.T) {
 		t.Run(name, func(t *testing.T) {
 			page := draw(t, n)
 			contains(t, page, "No alarm stands, but no valve is being", "No clip is protected", "nothing yet")
-			lacks(t, page, "banner good")
+			lacks(t, page, `class="banner good"`)
 		})
 	}
 }
@@ -188,31 +188,42 @@ func TestEmptyPages(t *testing.T) {
 // Silence must not look like health.
 func TestBanner(t *testing.T) {
 	good := func() *wire.Now {
-		return &wire.Now{At: at, Health: wire.Health{State: "running", Line: "watching", Learned: true}, Latest: &wire.Turn{Valid: true}}
+		return &wire.Now{At: at, Health: wire.Health{State: "running", Line: "watching", Learned: true}, Latest: &wire.Turn{Valid: true, Throws: []wire.TurnThrow{throw("t1", "following")}}}
 	}
 	for _, c := range []struct {
 		name        string
+		age         time.Duration
 		edit        func(*wire.Now)
 		class, text string
 	}{
-		{"all well", func(*wire.Now) {}, "good", "No alarm stands. Watching."},
-		{"standstill", func(n *wire.Now) { n.Health.State = "standstill" }, "mute", "No alarm stands, but no valve is being watched: standstill"},
-		{"phase lost", func(n *wire.Now) { n.Health.State = "lost" }, "mute", "no valve is being watched: lost"},
-		{"no baseline", func(n *wire.Now) { n.Health.Learned, n.Health.Line = false, "learning, 3 of 900 steady turns" }, "mute", "no valve is being judged: learning, 3 of 900 steady turns"},
-		{"turn not valid", func(n *wire.Now) { n.Latest.Valid, n.Latest.Reason = false, "a mark is missing" }, "mute", "the last turn was not judged: a mark is missing"},
-		{"trouble", func(n *wire.Now) { n.Health.Trouble = []string{"the tape drops blocks"} }, "mute", "this monitor needs attention itself"},
-		{"an alarm at standstill", func(n *wire.Now) {
-			n.Health.State, n.Standing = "standstill", []wire.Alarm{{Severity: "alert"}}
-		}, "alert", "1 alert"},
-		{"many", func(n *wire.Now) {
+		{"all well", 0, func(*wire.Now) {}, "good", "No alarm stands. Watching."},
+		{"one end idle", 0, func(n *wire.Now) { n.Latest.Throws[0] = throw("t1", "idle") }, "good", "Watching. | Not judged now: t1.ce (idle)"},
+		{"all ends lost", 0, func(n *wire.Now) {
+			n.Latest.Throws[0] = throw("t1", "lost")
+			n.Latest.Throws[0].Ends[0].State = "lost"
+		}, "mute", "no valve can be judged on this turn | Not judged now: t1.he (lost), t1.ce (lost)"},
+		{"no turn", 0, func(n *wire.Now) { n.Latest = nil }, "mute", "no turn has been measured yet"},
+		{"standstill", 0, func(n *wire.Now) { n.Health.State = "standstill" }, "mute", "No alarm stands, but no valve is being watched: standstill"},
+		{"phase lost", 0, func(n *wire.Now) { n.Health.State = "lost" }, "mute", "no valve is being watched: lost"},
+		{"no baseline", 0, func(n *wire.Now) { n.Health.Learned, n.Health.Line = false, "learning, 3 of 900 steady turns" }, "mute", "no valve is being judged: learning, 3 of 900 steady turns"},
+		{"turn not valid", 0, func(n *wire.Now) { n.Latest.Valid, n.Latest.Reason = false, "a mark is missing" }, "mute", "the last turn was not judged: a mark is missing"},
+		{"trouble", 0, func(n *wire.Now) { n.Health.Trouble = []string{"the tape drops blocks"} }, "mute", "this monitor needs attention itself"},
+		{"an alarm at standstill", 0, func(n *wire.Now) {
+			n.Health.State, n.Standing = "standstill", []wire.Alarm{{Severity: "alert", Subject: "t2", Kind: "high"}}
+		}, "alert", "Alert: t2: high | 1 alert"},
+		{"many", 0, func(n *wire.Now) {
 			n.Standing = []wire.Alarm{{Severity: "danger"}, {Severity: "danger"}, {Severity: "advisory"}, {Severity: "none", To: "returned-unacknowledged"}}
 		}, "danger", "2 dangers, 1 advisory, 1 waiting for an acknowledgement"},
-		{"only returned", func(n *wire.Now) { n.Standing = []wire.Alarm{{Severity: "none"}} }, "mute", "1 waiting for an acknowledgement"},
+		{"only returned", 0, func(n *wire.Now) { n.Standing = []wire.Alarm{{Severity: "none", Subject: "t1.x", Kind: "gone"}} }, "mute", "t1.x: gone | 1 waiting for an acknowledgement"},
+		{"just new enough", stale, func(*wire.Now) {}, "good", "Watching"},
+		{"old", 3 * time.Minute, func(*wire.Now) {}, "mute", "No alarm stands, but nothing new has come for 3 min"},
+		{"old and never begun", time.Minute, func(n *wire.Now) { n.At = time.Time{} }, "mute", "nothing has come yet"},
+		{"old with an alarm", time.Minute, func(n *wire.Now) { n.Standing = []wire.Alarm{{Severity: "danger"}} }, "danger", "1 danger; nothing new has come for 1 min"},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			n := good()
 			c.edit(n)
-			if b := headline(n); b.Class != c.class || !strings.Contains(b.Text, c.text) {
+			if b := headline(n, c.age); b.Class != c.class || !strings.Contains(b.Text+" | "+b.More, c.text) {
 				t.Errorf("got %+v, want %s %q", b, c.class, c.text)
 			}
 			keep(t, "banner-"+strings.ReplaceAll(c.name, " ", "-"), draw(t, n))
@@ -220,11 +231,25 @@ func TestBanner(t *testing.T) {
 	}
 }
 
+func TestAgeOfTheSnapshot(t *testing.T) {
+	var s newest
+	a, b := &wire.Now{}, &wire.Now{}
+	for i, c := range []struct {
+		n    *wire.Now
+		at   time.Duration
+		want time.Duration
+	}{{a, 0, 0}, {a, 4 * time.Second, 4 * time.Second}, {b, 5 * time.Second, 0}, {b, 25 * time.Second, 20 * time.Second}, {a, 30 * time.Second, 0}} {
+		if got := s.age(c.n, at.Add(c.at)); got != c.want {
+			t.Errorf("look %d: age %v, want %v", i, got, c.want)
+		}
+	}
+}
+
 func TestValveMap(t *testing.T) {
 	n := full()
 	n.Standing = []wire.Alarm{{Key: "a", Subject: "t1.he.s2", Kind: "leaking", Severity: "advisory", To: "unacknowledged"}, {Key: "b", Subject: "t1.he.suction", Kind: "leaking", Severity: "alert", To: "acknowledged"},
 		{Key: "c", Subject: "t1.rings", Kind: "leaking", Severity: "danger", To: "acknowledged"}, {Key: "d", Subject: "t1.ce.discharge.opens", Kind: "x", Severity: "none", To: "returned-unacknowledged"}}
-	m := arrange(n).Valves[0]
+	m := arrange(n, 0).Valves[0]
 	for _, c := range []struct {
 		got                cell
 		class, words, open string
@@ -239,16 +264,16 @@ func TestValveMap(t *testing.T) {
 			t.Errorf("got %+v, want %+v", c.got, c)
 		}
 	}
-	idle := arrange(n).Valves[1].Rows[1].Cells[0]
+	idle := arrange(n, 0).Valves[1].Rows[1].Cells[0]
 	if idle.Class != "mute" || !strings.Contains(idle.Words, "not judged") || idle.Opens != "" {
 		t.Errorf("an idle end shows %+v", idle)
 	}
 	n.Health.Learned, n.Standing = false, nil
-	if c := arrange(n).Valves[0].Rows[0].Cells[0]; c.Class != "mute" || c.Words != "measured, not judged" {
+	if c := arrange(n, 0).Valves[0].Rows[0].Cells[0]; c.Class != "mute" || c.Words != "measured, not judged" {
 		t.Errorf("without a baseline a valve shows %+v", c)
 	}
 	n.Latest.Valid = false
-	if len(arrange(n).Valves) != 0 {
+	if len(arrange(n, 0).Valves) != 0 {
 		t.Error("a turn that is not valid shows valves")
 	}
 }

@@ -15,6 +15,7 @@ import (
 	"net"
 	"net/http"
 	"strings"
+	"sync"
 	"time"
 
 	"lapwing/internal/wire"
@@ -125,9 +126,11 @@ func guard(next http.Handler) http.Handler {
 
 func routes(src Source, log *slog.Logger) http.Handler {
 	mux := http.NewServeMux()
+	var seen newest
 	mux.HandleFunc("GET /{$}", func(w http.ResponseWriter, r *http.Request) {
+		n := src.Now()
 		var b bytes.Buffer
-		if err := page.Execute(&b, arrange(src.Now())); err != nil {
+		if err := page.Execute(&b, arrange(n, seen.age(n, time.Now()))); err != nil {
 			log.Error("panel: page", "err", err)
 			http.Error(w, "the page could not be drawn; see the log", http.StatusInternalServerError)
 			return
@@ -146,6 +149,23 @@ func routes(src Source, log *slog.Logger) http.Handler {
 	c := clipper{src: src, log: log, busy: make(chan struct{}, exports)}
 	mux.HandleFunc("GET /api/v1/clips/{id}", c.send)
 	return mux
+}
+
+// newest remembers since when a snapshot has been the newest one, as far as the page was asked for: a line that stands
+// still must not go on looking healthy.
+type newest struct {
+	mu    sync.Mutex
+	last  *wire.Now
+	since time.Time
+}
+
+func (s *newest) age(n *wire.Now, now time.Time) time.Duration {
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if n != s.last {
+		s.last, s.since = n, now
+	}
+	return now.Sub(s.since)
 }
 
 // list makes an empty list out of none: in JSON nothing is [], not null.

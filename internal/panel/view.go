@@ -23,7 +23,11 @@ type banner struct {
 	Class string // danger, alert, advisory, mute, good
 	Title string // for the browser's tab
 	Text  string
+	More  string
 }
+
+// stale is the age beyond which a snapshot no longer shows the present: a turn takes a fraction of a second.
+const stale = 10 * time.Second
 
 // card is one standing alarm with everything that belongs to it.
 type card struct {
@@ -55,8 +59,9 @@ type cell struct {
 	Opens string // where it opens and the window that follows it
 }
 
-func arrange(n *wire.Now) view {
-	v := view{Now: n, Banner: headline(n)}
+// arrange prepares a snapshot that has been the newest one for age.
+func arrange(n *wire.Now, age time.Duration) view {
+	v := view{Now: n, Banner: headline(n, age)}
 	alarmed := map[string]bool{}
 	for i := range n.Standing {
 		a := &n.Standing[i]
@@ -79,13 +84,24 @@ func arrange(n *wire.Now) view {
 var ranks = map[string]int{"danger": 3, "alert": 2, "advisory": 1}
 
 // headline never lets silence look like health: no alarm means something only while valves are being judged.
-func headline(n *wire.Now) banner {
+func headline(n *wire.Now, age time.Duration) banner {
+	old := ""
+	if age > stale {
+		old = fmt.Sprintf("nothing new has come for %s", lasted(n.At, n.At.Add(age)))
+		if n.At.IsZero() {
+			old = "nothing has come yet"
+		}
+	}
 	var count [4]int
+	var first *wire.Alarm
 	for i := range n.Standing {
-		count[ranks[n.Standing[i].Severity]]++
+		a := &n.Standing[i]
+		count[ranks[a.Severity]]++
+		if first == nil || ranks[a.Severity] > ranks[first.Severity] {
+			first = a
+		}
 	}
 	var said []string
-	worst := ""
 	for _, w := range []struct {
 		rank      int
 		one, more string
@@ -95,34 +111,60 @@ func headline(n *wire.Now) banner {
 			said = append(said, "1 "+w.one)
 		case c > 1:
 			said = append(said, fmt.Sprintf("%d %s", c, w.more))
-		default:
-			continue
-		}
-		if worst == "" {
-			worst = w.one
 		}
 	}
 	if count[0] > 0 {
 		said = append(said, fmt.Sprintf("%d waiting for an acknowledgement", count[0]))
 	}
-	if len(said) > 0 {
-		if worst == "" {
-			worst = "mute"
+	if first != nil {
+		counts := strings.Join(said, ", ")
+		b := banner{tone(first.Severity), counts, inWords(first.Subject) + ": " + first.Kind, counts}
+		if b.Class != "mute" {
+			b.Text = strings.ToUpper(first.Severity[:1]) + first.Severity[1:] + ": " + b.Text
 		}
-		return banner{worst, strings.Join(said, ", "), strings.Join(said, ", ")}
+		if old != "" {
+			b.More += "; " + old
+		}
+		return b
 	}
 	none := "No alarm stands"
 	switch h := &n.Health; {
+	case old != "":
+		return banner{Class: "mute", Title: "nothing new", Text: none + ", but " + old}
 	case h.State != "running":
-		return banner{"mute", h.State, none + ", but no valve is being watched: " + word(h.State)}
+		return banner{Class: "mute", Title: h.State, Text: none + ", but no valve is being watched: " + word(h.State)}
 	case !h.Learned:
-		return banner{"mute", "not judging", none + ", but no valve is being judged: " + word(h.Line)}
-	case n.Latest != nil && !n.Latest.Valid:
-		return banner{"mute", "turn not judged", none + "; the last turn was not judged: " + n.Latest.Reason}
+		return banner{Class: "mute", Title: "not judging", Text: none + ", but no valve is being judged: " + word(h.Line)}
+	case n.Latest == nil:
+		return banner{Class: "mute", Title: "no turn yet", Text: none + ", but no turn has been measured yet"}
+	case !n.Latest.Valid:
+		return banner{Class: "mute", Title: "turn not judged", Text: none + "; the last turn was not judged: " + n.Latest.Reason}
 	case len(h.Trouble) > 0:
-		return banner{"mute", "monitor in trouble", none + ", but this monitor needs attention itself"}
+		return banner{Class: "mute", Title: "monitor in trouble", Text: none + ", but this monitor needs attention itself"}
 	}
-	return banner{"good", "no alarm", none + ". Watching."}
+	not, any := notFollowed(n.Latest)
+	more := ""
+	if len(not) > 0 {
+		more = "Not judged now: " + strings.Join(not, ", ")
+	}
+	if !any {
+		return banner{Class: "mute", Title: "not judging", Text: none + ", but no valve can be judged on this turn", More: more}
+	}
+	return banner{Class: "good", Title: "no alarm", Text: none + ". Watching.", More: more}
+}
+
+// notFollowed lists the ends whose valves are not followed; any says whether some are.
+func notFollowed(t *wire.Turn) (not []string, any bool) {
+	for i := range t.Throws {
+		for k := range t.Throws[i].Ends {
+			if e := &t.Throws[i].Ends[k]; e.State == "following" {
+				any = true
+			} else {
+				not = append(not, t.Throws[i].ID+"."+e.End+" ("+e.State+")")
+			}
+		}
+	}
+	return not, any
 }
 
 func word(s string) string {
