@@ -93,46 +93,63 @@ func (s *Station) book(o *Output) error {
 			return err
 		}
 	}
-	if len(o.Transitions) == 0 {
-		return nil
-	}
-	said := make([]wire.Alarm, len(o.Transitions))
 	for i := range o.Transitions {
 		t := &o.Transitions[i]
-		said[i] = wire.FromTransition(s.sk.ID, t, s.protect(t))
+		s.unsaid = append(s.unsaid, saying{*t, wire.FromTransition(s.sk.ID, t, s.protect(t))})
+	}
+	return s.commit()
+}
+
+// saying is a transition with its outside form.
+type saying struct {
+	tr   alarm.Transition
+	said wire.Alarm
+}
+
+// commit writes the transitions that are not on disk yet. A disk that refuses (full, read-only) loses none of them: they
+// are tried again with every turn, in order, and page and health say so.
+func (s *Station) commit() error {
+	if len(s.unsaid) == 0 {
+		return nil
 	}
 	err := s.ledger.Commit(func(tx *ledger.Tx) error {
-		for i := range said {
-			if err := tx.Journal(o.Transitions[i]); err != nil {
+		for i := range s.unsaid {
+			tr, said := s.unsaid[i].tr, s.unsaid[i].said
+			if err := tx.Journal(tr); err != nil {
 				return err
 			}
-			payload, err := json.Marshal(said[i])
+			payload, err := json.Marshal(said)
 			if err != nil {
-				return fmt.Errorf("station: alarm %d: %w", said[i].ID, err)
+				return fmt.Errorf("station: alarm %d: %w", said.ID, err)
 			}
 			if _, err := tx.Enqueue(ledger.Alarm, s.topics.Alarm(), payload, false); err != nil {
 				return err
 			}
-			if !said[i].Open {
+			if !said.Open {
 				payload = nil // an empty retained message takes the standing alarm off the board
 			}
-			if _, err := tx.Enqueue(ledger.Alarm, s.topics.Standing(said[i].Key), payload, true); err != nil {
+			if _, err := tx.Enqueue(ledger.Alarm, s.topics.Standing(said.Key), payload, true); err != nil {
 				return err
 			}
+		}
+		if err := tx.PutDoc(docLine, s.line.Memory()); err != nil {
+			return err
 		}
 		return tx.AlarmSnapshot(s.line.Alarms().Snapshot())
 	})
 	if err != nil {
+		s.desk.say("ledger", fmt.Sprintf("%d alarm transitions are not on disk yet and were not sent: %v", len(s.unsaid), err))
 		return err
 	}
-	for i := range said {
-		s.log.Info("alarm", "id", said[i].ID, "point", said[i].Key, "from", said[i].From, "to", said[i].To, "severity", said[i].Severity, "said", said[i].Sentence)
-	}
+	s.desk.say("ledger", "")
 	s.desk.mu.Lock()
-	for i := range said {
-		s.desk.note(said[i])
+	for i := range s.unsaid {
+		a := &s.unsaid[i].said
+		s.desk.note(*a)
+		s.log.Info("alarm", "id", a.ID, "point", a.Key, "from", a.From, "to", a.To, "severity", a.Severity, "said", a.Sentence)
 	}
 	s.desk.mu.Unlock()
+	s.unsaid = s.unsaid[:0]
 	if s.pub != nil {
 		s.pub.Wake()
 	}

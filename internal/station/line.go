@@ -1,8 +1,10 @@
 package station
 
 import (
+	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"time"
 
 	"lapwing/internal/acq"
@@ -45,6 +47,7 @@ type Line struct {
 
 	vec    measure.Vector
 	win    []window.Input
+	pocket [][2][]float64 // by throw and end: the clearances that the load steps give
 	mea    []measure.Input
 	points []duty.Point
 	devs   []duty.Deviation
@@ -105,6 +108,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 		l.watches = append(l.watches, duty.NewWatch(duty.WatchConfig{MinRPM: sk.Machine.MinRPM * 0.97, MaxRPM: sk.Machine.MaxRPM * 1.03, Steps: dutySteps(sk, i)}))
 	}
 	n := len(sk.Throws)
+	l.pocket = clearances(sk)
 	l.win, l.mea, l.points, l.steady = make([]window.Input, n), make([]measure.Input, n), make([]duty.Point, n), make([]int, n)
 	if l.limits, err = limitWatches(sk, l.layout); err != nil {
 		return nil, err
@@ -150,11 +154,31 @@ func (l *Line) Coverage() []duty.Coverage {
 	return l.learner.Coverage()
 }
 
-// Memory is what the windows have learnt, for a restart.
-func (l *Line) Memory() window.Memory { return l.windows.Snapshot() }
+// Memory is what a restart should not have to learn again, beside baseline and alarm states: the valves' lags, and the
+// evidence of the last blocks, without which a standing alert would fall and rise again.
+type Memory struct {
+	Windows window.Memory     `json:"windows"`
+	Judge   *verdict.Snapshot `json:"judge,omitempty"`
+}
 
-// Remember restores it.
-func (l *Line) Remember(m window.Memory) error { return l.windows.Restore(m) }
+// Memory copies it out.
+func (l *Line) Memory() Memory {
+	m := Memory{Windows: l.windows.Snapshot()}
+	if l.judge != nil {
+		s := l.judge.Snapshot()
+		m.Judge = &s
+	}
+	return m
+}
+
+// Remember takes it back. What does not fit this machine is left out and named in the error.
+func (l *Line) Remember(m Memory) error {
+	err := l.windows.Restore(m.Windows)
+	if m.Judge != nil && l.judge != nil {
+		err = errors.Join(err, l.judge.Restore(*m.Judge))
+	}
+	return err
+}
 
 // Alarms is the annunciator.
 func (l *Line) Alarms() *alarm.Annunciator { return l.alarms }
@@ -251,7 +275,7 @@ func (l *Line) prepare(t *turn.Turn, proc skid.Process) {
 		if proc.Known && th.Stage-1 < len(proc.Stages) {
 			line = proc.Stages[th.Stage-1]
 		}
-		in := window.Input{Cylinder: l.sk.Throws[i].Cylinder, LinePs: line.Ps, LinePd: line.Pd}
+		in := window.Input{Cylinder: l.sk.Throws[i].Cylinder, LinePs: line.Ps, LinePd: line.Pd, Others: l.pocket[i]}
 		if proc.Known {
 			in.Cylinder = l.sk.CylinderAt(i, proc.Step)
 			for e := range in.IdleHint {
@@ -269,7 +293,8 @@ func (l *Line) prepare(t *turn.Turn, proc skid.Process) {
 	}
 }
 
-// refine gives the measures the gas at this turn's duty: the line's, or the plateaus where the line is not known.
+// refine gives the measures the clearance that fits the trace, and the gas at this turn's duty: the line's, or the
+// plateaus where the line is not known.
 func (l *Line) refine(w window.Result) {
 	for i := range l.mea {
 		in := &l.mea[i]
@@ -280,6 +305,9 @@ func (l *Line) refine(w window.Result) {
 			}
 			if math.IsNaN(pd) {
 				pd = w.Throws[i].Ends[e].Pd
+			}
+			if c := w.Throws[i].Ends[e].Clearance; !math.IsNaN(c) {
+				in.Cylinder.Clearance[e] = c
 			}
 		}
 		ts := in.Ts
@@ -310,6 +338,7 @@ func (l *Line) classify(i int, t *turn.Turn, proc skid.Process, w window.Result)
 		if i < len(w.Throws) {
 			end := &w.Throws[i].Ends[e]
 			in.OwnPs[e], in.OwnPd[e], in.Ends[e] = end.Ps, end.Pd, end.State
+			in.OtherStep = in.OtherStep || !math.IsNaN(end.Clearance)
 		}
 	}
 	return l.watches[i].Classify(in)
@@ -473,6 +502,21 @@ func dutySteps(sk *skid.Skid, throw int) (out []duty.Step) {
 			idle[e] = !sk.Throws[throw].Ends[e].Works || s.Idle[sk.EndName(throw, e)] // the windows call a blind end idle too
 		}
 		out = append(out, duty.Step{Code: s.Code, Idle: idle})
+	}
+	return out
+}
+
+// clearances lists what each end's clearance may be, each value once.
+func clearances(sk *skid.Skid) [][2][]float64 {
+	out := make([][2][]float64, len(sk.Throws))
+	for i := range out {
+		for _, s := range sk.Steps {
+			for e, c := range sk.CylinderAt(i, s.Code).Clearance {
+				if !slices.Contains(out[i][e], c) {
+					out[i][e] = append(out[i][e], c)
+				}
+			}
+		}
 	}
 	return out
 }

@@ -24,7 +24,6 @@ import (
 	"lapwing/internal/skid"
 	"lapwing/internal/tape"
 	"lapwing/internal/uplink"
-	"lapwing/internal/window"
 	"lapwing/internal/wire"
 )
 
@@ -63,14 +62,15 @@ type Station struct {
 	progress atomic.Int64 // samples through the line
 	dropped  atomic.Int64 // blocks the line had no room for
 	desk     desk
+	unsaid   []saying // transitions not yet on disk; the compute goroutine's
 
 	closeOnce sync.Once
 	closeErr  error
 }
 
 const (
-	docWindows = "windows"
-	queueLen   = 256 // blocks of about 20 ms between source and line: five seconds
+	docLine  = "line memory"
+	queueLen = 256 // blocks of about 20 ms between source and line: five seconds
 )
 
 // Open checks everything and acquires it: files, source, page address. A station that does not open has left nothing
@@ -149,12 +149,12 @@ func (s *Station) openLine() error {
 	if err != nil {
 		return err
 	}
-	var mem window.Memory
-	if ok, err := s.ledger.Doc(docWindows, &mem); err != nil {
+	var mem Memory
+	if ok, err := s.ledger.Doc(docLine, &mem); err != nil {
 		return err
 	} else if ok {
 		if err := s.line.Remember(mem); err != nil {
-			s.log.Warn("learnt windows of before are not used", "err", err)
+			s.log.Warn("what the line remembered of before is not used whole", "err", err)
 		}
 	}
 	return s.desk.restore(s.ledger, s.line.Alarms(), s.sk.ID)
@@ -258,11 +258,16 @@ func (s *Station) Run(ctx context.Context) error {
 
 	queue := make(chan *parcel, queueLen)
 	srcErr := make(chan error, 1)
+	reading, stopReading := context.WithCancel(ctx)
+	defer stopReading()
 	go func() {
 		defer close(queue)
-		srcErr <- s.read(ctx, queue)
+		srcErr <- s.read(reading, queue)
 	}()
 	lineErr := s.compute(queue)
+	stopReading()
+	for range queue { // a line that gave up must not leave the source waiting
+	}
 	err := errors.Join(<-srcErr, lineErr)
 	if s.pub != nil && ctx.Err() == nil {
 		s.drainUplink(5 * time.Second)
@@ -330,12 +335,13 @@ func cloneBlock(b *acq.Block) acq.Block {
 func (s *Station) compute(queue <-chan *parcel) error {
 	h := newHeld()
 	s.line.proc = h.at
-	var first error
+	var failing error // of the last turn: said once when it begins, and at the end if it lasts
 	emit := func(o *Output) {
-		if err := s.take(o); err != nil && first == nil {
-			first = err
-			s.log.Error("results cannot be kept", "err", err)
+		err := s.take(o)
+		if err != nil && failing == nil {
+			s.log.Error("results cannot be kept; trying again with every turn", "err", err)
 		}
+		failing = err
 	}
 	lastHealth := time.Now()
 	for p := range queue {
@@ -349,18 +355,21 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		if t := time.Now(); t.Sub(lastHealth) > s.sk.Uplink.HealthEvery {
 			lastHealth = t
 			s.offerHealth()
+			if err := s.ledger.PutDoc(docLine, s.line.Memory()); err != nil {
+				s.log.Warn("what the line has learnt is not on disk", "err", err)
+			}
 		}
 	}
 	s.offerHealth() // before the flush, which forgets the shaft
 	s.line.Flush(emit)
-	return first
+	return failing
 }
 
 // Close stops what Run left and writes what must outlive the process. It is safe after a failed Run and twice.
 func (s *Station) Close() error {
 	s.closeOnce.Do(func() {
 		if s.line != nil && s.ledger != nil {
-			s.closeErr = s.ledger.PutDoc(docWindows, s.line.Memory())
+			s.closeErr = s.ledger.PutDoc(docLine, s.line.Memory())
 		}
 		s.closeErr = errors.Join(s.closeErr, s.release())
 	})
