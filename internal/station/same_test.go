@@ -38,8 +38,8 @@ type take struct {
 const (
 	takeLong  = 8   // s
 	takeHurt  = 4.0 // s, a leak begins
-	takeStep  = 6.3 // s, another load step
-	takeGap   = 7.1 // s, samples are lost
+	takeStep  = 6.9 // s, another load step
+	takeGap   = 7.5 // s, samples are lost
 	takeLearn = 46  // steady turns to learn from, of the 60 before the leak
 )
 
@@ -51,7 +51,8 @@ func recorded(t testing.TB) take {
 	r := take{wav: filepath.Join(dir, "rec.wav"), csv: filepath.Join(dir, "process.csv"), skid: filepath.Join(dir, "skid.yaml")}
 	raw, err := configs.Files.ReadFile("biomethane-two-throw.yaml")
 	if err == nil {
-		for _, c := range [][2]string{{"  broker: tcp://127.0.0.1:1883", ""}, {"sampling_hz: 51200", "sampling_hz: 20480"}, // small and quick
+		for _, c := range [][2]string{{"  broker: tcp://127.0.0.1:1883", ""}, {"rod_load_max_kn, high: 110, deadband: 2, on_delay_s: 10", "rod_load_max_kn, high: 30, deadband: 2, on_delay_s: 1"},
+			{"sampling_hz: 51200", "sampling_hz: 20480"}, // small and quick
 			{"impact_band_hz: [2000, 20000]", "impact_band_hz: [2000, 8000]"}, {"leak_band_hz: [10000, 20000]", "leak_band_hz: [5000, 8000]"}} {
 			if raw = bytes.Replace(raw, []byte(c[0]), []byte(c[1]), 1); !bytes.Contains(raw, []byte(c[1])) {
 				t.Fatalf("the example has no %q", c[0])
