@@ -1,8 +1,9 @@
 // Package panel is the local status page and the HTTP API behind it.
 //
 // needs: the present snapshot and a way to hand out clips; waits: for requests, on loopback only; emits: one page,
-// the snapshot as JSON, clips as tar. It reads what is there and slows nobody. A network address is refused until
-// the page has a login.
+// the snapshot as JSON, clips as tar. It reads what is there and slows nobody. When nothing is judged, or
+// nothing new comes, it says so: silence must not look like health. A network address is refused until the page has a
+// login.
 package panel
 
 import (
