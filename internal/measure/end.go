@@ -46,10 +46,13 @@ func (m *Measurer) end(c *throwCtx, e int) {
 	for k := range endCount {
 		c.dst.absent(at+k, why)
 	}
-	if w.NotPresent || c.th.P[e] == nil || !allPositive(c.th.P[e]) {
+	if w.NotPresent || c.th.P[e] == nil || c.th.Bad[e] != "" {
 		return
 	}
 	m.cycle(c, e, at)
+	if !allPositive(c.th.P[e]) { // what follows takes logarithms
+		return
+	}
 	if w.State == window.Idle {
 		c.dst.set(at+ePs, w.Ps)
 		return

@@ -12,15 +12,17 @@ type Machine struct {
 
 // Throw is one throw as the measures see it.
 type Throw struct {
-	ID       string // t1
-	Stage    int    // throws of one stage share lines; cover temperatures are compared within a stage
-	Ends     [2]End
-	Acoustic bool // it has at least one accelerometer
+	ID             string // t1
+	Stage          int    // throws of one stage share lines; cover temperatures are compared within a stage
+	Ends           [2]End
+	Acoustic       bool // it has at least one accelerometer
+	BlindAtSuction bool // a blind end is connected to suction; otherwise to the atmosphere
 }
 
 // End is one end of a cylinder.
 type End struct {
-	Works     bool
+	Works     bool // works and has a pressure channel
+	Blind     bool // does no work by design
 	Suction   []Valve
 	Discharge []Valve
 }

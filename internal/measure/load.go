@@ -4,18 +4,21 @@ import (
 	"lapwing/internal/crank"
 )
 
-// loadsOf gives the rod loads of a throw and their reversal. An end that does no work by design and has no transducer
-// is taken to be at suction pressure; a working end without one leaves the loads unknown.
+// loadsOf gives the rod loads of a throw and their reversal. An end that does no work by design is held at suction
+// pressure or at the atmosphere, as the machine is built; a working end without a transducer leaves the loads unknown.
 func (m *Measurer) loadsOf(c *throwCtx) {
 	n := c.i1 - c.i0
+	t := &m.cfg.Machine.Throws[c.i]
 	var p [2]crank.Pressure
 	for e := range p {
 		switch {
-		case c.th.P[e] != nil && allPositive(c.th.P[e]):
+		case c.th.P[e] != nil && c.th.Bad[e] == "":
 			p[e].P = c.th.P[e][c.i0:c.i1]
-		case c.th.P[e] == nil && c.ix.end[e] < 0 && known(c.in.LinePs):
+		case t.Ends[e].Blind && !t.BlindAtSuction:
+			p[e].Held = m.cfg.Atmosphere
+		case t.Ends[e].Blind && known(c.in.LinePs):
 			p[e].Held = c.in.LinePs
-		case c.th.P[e] == nil && c.ix.end[e] < 0 && known(c.w.Ends[1-e].Ps):
+		case t.Ends[e].Blind && known(c.w.Ends[1-e].Ps):
 			p[e].Held = c.w.Ends[1-e].Ps
 		default:
 			m.noLoads(c, whyOtherEnd)

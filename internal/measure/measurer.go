@@ -84,6 +84,7 @@ const (
 
 // throwCtx is one throw of one turn, with everything looked up.
 type throwCtx struct {
+	i      int // the throw's place in the machine
 	dst    *Vector
 	ix     *index
 	th     *turn.Throw
@@ -130,7 +131,7 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 			continue
 		}
 		th := &t.Throws[i]
-		c := throwCtx{dst: dst, ix: &m.index[i], th: th, w: &w.Throws[i], in: &in[i], hz: th.RPM / 60}
+		c := throwCtx{i: i, dst: dst, ix: &m.index[i], th: th, w: &w.Throws[i], in: &in[i], hz: th.RPM / 60}
 		c.i0, c.i1 = int(math.Round(th.Grid.Index(0))), int(math.Round(th.Grid.Index(360)))
 		if c.i0 < 0 || c.i1 >= th.Grid.N || len(th.Pos) != th.Grid.N || !(c.hz > 0) {
 			m.all(dst, i, whySpeed)

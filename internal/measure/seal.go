@@ -15,7 +15,7 @@ func (m *Measurer) leaks(c *throwCtx) {
 	ps, pd, ends := 0.0, 0.0, 0.0
 	for e := range in.P {
 		w := &c.w.Ends[e]
-		if c.th.P[e] == nil || w.NotPresent || !allPositive(c.th.P[e]) {
+		if c.th.P[e] == nil || w.NotPresent || c.th.Bad[e] != "" || !allPositive(c.th.P[e]) {
 			continue
 		}
 		in.P[e] = c.th.P[e]

@@ -37,7 +37,8 @@ func TestEveryFeatureIsDocumented(t *testing.T) {
 
 func TestSingleActing(t *testing.T) {
 	m := twoEnds()
-	m.Throws[0].Ends[1].Works = false
+	m.Throws[0].Ends[1] = End{Blind: true}
+	m.Throws[0].BlindAtSuction = true
 	l := NewLayout(m)
 	if l.Find("t1.ce", "p_min_bar_abs") >= 0 || l.Find("t1.rings", "leak_noise_db") >= 0 {
 		t.Error("an end that does no work by design has features")

@@ -465,9 +465,9 @@ func measureMachine(sk *skid.Skid) measure.Machine {
 	}
 	for i := range sk.Throws {
 		t := &sk.Throws[i]
-		mt := measure.Throw{ID: t.ID, Stage: t.Stage, Acoustic: len(t.Accel) > 0}
+		mt := measure.Throw{ID: t.ID, Stage: t.Stage, Acoustic: len(t.Accel) > 0, BlindAtSuction: t.BlindAtSuction}
 		for e := range t.Ends {
-			mt.Ends[e] = measure.End{Works: t.Ends[e].Works && t.Ends[e].Pressure != "", Suction: valves(t.Ends[e].Suction), Discharge: valves(t.Ends[e].Discharge)}
+			mt.Ends[e] = measure.End{Works: t.Ends[e].Works && t.Ends[e].Pressure != "", Blind: !t.Ends[e].Works, Suction: valves(t.Ends[e].Suction), Discharge: valves(t.Ends[e].Discharge)}
 		}
 		m.Throws = append(m.Throws, mt)
 	}

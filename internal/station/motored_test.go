@@ -227,6 +227,14 @@ func TestMotoredReview(t *testing.T) {
 		if end.State == "following" || r.Throws[0].Duty == "steady" {
 			t.Errorf("turn %d: the end is %s, duty %s", r.Turn, end.State, r.Throws[0].Duty)
 		}
+		for _, ev := range end.Events { // nothing is delivered: no discharge valve may seem to be followed
+			if ev.Event == "discharge.opens" && ev.State == "following" {
+				t.Errorf("turn %d: discharge is followed at %g degrees", r.Turn, *ev.Angle)
+			}
+		}
+		if ok := end.Values["n_comp_early"] == 0 || end.State == "not-delivering" || end.State == "lost"; !ok {
+			t.Errorf("turn %d compresses and delivers nothing, the end is %s", r.Turn, end.State)
+		}
 		got, ok := end.Values["indicated_work_j"]
 		p, v := trace(at)
 		peak, least, want := p[0], p[0], 0.0

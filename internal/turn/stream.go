@@ -20,7 +20,14 @@ type band struct {
 }
 
 // span is a range of samples, both ends in it.
-type span struct{ from, to int64 }
+type span struct {
+	from, to int64 // first and last value outside
+	n        int64 // values outside
+}
+
+// strays is the share of a turn's pressure samples that may lie outside the valid range before the turn is not
+// believed: bursts that a transducer hears from a valve seat reach beyond it for a few samples and average out.
+const strays = 0.005
 
 func newBand(s dsp.SOS) *band { return &band{filter: dsp.NewFilter(s), fresh: true} }
 
@@ -44,13 +51,14 @@ func (s *stream) watch(x []float64, seq int64) {
 	if s.ch.Min == 0 && s.ch.Max == 0 {
 		return
 	}
-	out := span{-1, -1}
+	out := span{from: -1, to: -1}
 	for i, v := range x {
 		if v < s.ch.Min || v > s.ch.Max {
 			if out.from < 0 {
 				out.from = seq + int64(i)
 			}
 			out.to = seq + int64(i)
+			out.n++
 		}
 	}
 	if out.from >= 0 {
@@ -101,10 +109,14 @@ func (s *stream) restart() {
 
 // suspect says why the samples from lo up to hi must not be used, or "".
 func (s *stream) suspect(lo, hi int64, overload bool) string {
+	var outside int64
 	for _, b := range s.bad {
 		if b.from < hi && b.to >= lo {
-			return "outside its valid range"
+			outside += b.n
 		}
+	}
+	if outside > 0 && (s.accel || float64(outside) > strays*float64(hi-lo)) { // an accelerometer at its rail has lost the peak
+		return "outside its valid range"
 	}
 	switch {
 	case overload:

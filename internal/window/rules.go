@@ -27,7 +27,7 @@ const (
 	idleRatio   = 0.10  // ln(pd/ps) below which the end does no work
 	idleStroke  = 0.45  // share of ln(pd/ps) that a working end's closed stroke covers at least
 	idleShort   = 0.35  // ln(pd/ps) below which an end without closed strokes is idle and not merely misread
-	latestOpen  = 175.0 // degrees into the stroke: a compression that has not opened by then does not deliver
+	latestOpen  = 166.0 // degrees into the stroke: what is left of it then is under 2 % of the swept volume, and heat and blow-by bend an end away from its line there that never opens
 	latestOpenS = 178.0
 
 	plateauEnd = 177.0 // degrees into the stroke: where plateaus end, clear of the closing

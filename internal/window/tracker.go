@@ -127,6 +127,10 @@ func (t *Tracker) end(th *throw, tt *turn.Throw, i, e int, in Input, out *End) {
 		}
 		return
 	}
+	if why := tt.Bad[e]; why != "" { // a pressure that is not believed moves no window
+		t.hold(th, e, out, why)
+		return
+	}
 	tr := &th.trace[e]
 	tr.shape(e, in.Cylinder, tt.Grid)
 	if !tr.load(tt.P[e]) {
@@ -185,6 +189,7 @@ func (t *Tracker) look(th *throw, tt *turn.Throw, e int, in Input, out *End) {
 	}
 	see.open, see.close = r.open, r.close
 	out.Ps, out.Pd, out.Closed, out.Trapped, out.State = r.ps[Compression], r.pd[Compression], r.closed, r.trapped, Following
+	idling := false
 	for s := range out.Closed {
 		o, c := &out.W[opens(s)], &out.W[closes(s)]
 		o.Thermo, o.Expected, c.Thermo = r.thermo[s], r.expected[s], r.meets[s]
@@ -192,16 +197,16 @@ func (t *Tracker) look(th *throw, tt *turn.Throw, e int, in Input, out *End) {
 			mem.open[s].missed, mem.open[s].rejected.v = 0, mem.open[s].rejected.v[:0]
 			o.State, o.Why = NotDelivering, whyNoDelivery
 			out.W[DischargeCloses].State, out.W[DischargeCloses].Why = NotDelivering, whyNoDelivery
-			out.State = NotDelivering
+			out.State, idling = NotDelivering, true
 			continue
 		}
 		t.believe(&mem.open[s], see, s, o, out)
 	}
-	if out.State == NotDelivering {
+	if idling {
 		// What does not deliver may not draw in either: a missing suction opening is then no miss.
 		if o := &out.W[SuctionOpens]; math.IsNaN(see.open[Expansion]) {
 			mem.open[Expansion].missed = 0
-			o.State, o.Why = NotDelivering, whyNoDelivery
+			o.State, o.Why, out.State = NotDelivering, whyNoDelivery, NotDelivering
 		}
 	}
 	for s := range out.Closed {
@@ -234,8 +239,12 @@ func (t *Tracker) otherwise(th *throw, tt *turn.Throw, e int, in Input, told rea
 func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 	found, dev := see.open[s], see.open[s]-w.Expected
 	offset, limit := t.usual(o)
-	if !math.IsNaN(found) && math.IsNaN(dev) {
-		dev = offset // no prediction to judge by: believe the trace
+	alone := !math.IsNaN(found) && math.IsNaN(dev)
+	if alone { // no prediction to judge by: only what agrees with the last one found may pass, and not for sure
+		dev = math.Inf(1)
+		if o.seen && math.Abs(found-o.last) <= limit {
+			dev = offset
+		}
 	}
 	why := whyNoRun
 	if out.Closed[s].OK {
@@ -243,14 +252,16 @@ func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 	}
 	if !math.IsNaN(found) {
 		ok := math.Abs(dev-offset) <= limit
-		if !ok {
+		if !ok && !alone {
 			o.rejected.push(dev, reseedTurns)
 			if ok = o.agree(); ok {
 				o.offset.v = append(o.offset.v[:0], o.rejected.v...)
 			}
 		}
 		if ok {
-			o.offset.push(dev, offsetTurns)
+			if !alone {
+				o.offset.push(dev, offsetTurns)
+			}
 			o.rejected.v = o.rejected.v[:0]
 			o.missed, o.seen, o.last = 0, true, found
 			see.at[s] = found
@@ -259,6 +270,9 @@ func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 			w.Conf = 0.95 - 0.4*math.Abs(dev-offset)/plausibleFirst
 			if len(o.offset.v) < firstTurns {
 				w.Conf *= 0.8
+			}
+			if alone {
+				w.Conf = 0.3
 			}
 			return
 		}
