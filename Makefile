@@ -56,6 +56,7 @@ setup:
 	@missing=""; for n in $(NEED); do \
 	  PATH="$$PATH:/usr/sbin" command -v $${n%%:*} >/dev/null 2>&1 || missing="$$missing $${n##*:}"; done; \
 	echo '#include <stdlib.h>' | gcc -E - >/dev/null 2>&1 || missing="$$missing libc6-dev"; \
+	[ -s /etc/ssl/certs/ca-certificates.crt ] || missing="$$missing ca-certificates"; \
 	if [ -n "$$missing" ]; then \
 	  if [ "$$(id -u)" = 0 ]; then as=""; elif command -v sudo >/dev/null 2>&1; then as="sudo"; \
 	  else echo "missing:$$missing. Run as root, or install sudo, or: apt-get install$$missing"; exit 1; fi; \

@@ -20,7 +20,6 @@ type broker struct {
 	port int
 	conf string
 	p    *program
-	logs []string // of instances that have ended
 }
 
 func startBroker(t *testing.T) *broker {

@@ -29,7 +29,6 @@ type desk struct {
 	open     map[string]wire.Alarm // by key, what stands
 	findings []wire.Finding
 	latest   *wire.Turn
-	learned  bool
 	trouble  map[string]string // by cause
 	featureT time.Time         // sample time of the last features sent
 }
