@@ -71,7 +71,8 @@ func TestTheMiddleIsPure(t *testing.T) {
 			if why, bad := forbidden[im]; bad {
 				t.Errorf("internal/%s imports %s: %s", r, im, why)
 			}
-			if room, ok := strings.CutPrefix(im, "lapwing/internal/"); ok && !isPure[room] {
+			// acq is the contract of a block; what frame takes of it is data.
+			if room, ok := strings.CutPrefix(im, "lapwing/internal/"); ok && !isPure[room] && room != "acq" {
 				t.Errorf("internal/%s imports internal/%s, which is not pure", r, room)
 			}
 		}

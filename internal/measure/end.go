@@ -303,7 +303,7 @@ func (m *Measurer) flows(c *throwCtx, e, at int, w *window.End) {
 	c.dst.absent(at+eCapS, c.dst.Why[at+eVeS])
 	c.dst.absent(at+eCapD, c.dst.Why[at+eVeD])
 	c.dst.absent(at+eBalance, whyGas)
-	ms, md, mdAd := math.NaN(), math.NaN(), math.NaN()
+	ms, mdAd := math.NaN(), math.NaN()
 	if !math.IsNaN(veS) {
 		c.dst.absent(at+eCapS, whyGas)
 		if known(g.R, g.Zs, in.Ts) {
@@ -316,7 +316,8 @@ func (m *Measurer) flows(c *throwCtx, e, at int, w *window.End) {
 		if known(g.R, g.Zd) {
 			ad := adiabatic(in, w)
 			mdAd = veD * swept * w.Pd / (g.Zd * g.R * ad)
-			if md = mdAd; known(in.Td) {
+			md := mdAd
+			if known(in.Td) {
 				md = veD * swept * w.Pd / (g.Zd * g.R * in.Td)
 			}
 			if !math.IsNaN(md) {

@@ -2,6 +2,7 @@ package station
 
 import (
 	"context"
+	"crypto/rand"
 	"encoding/json"
 	"errors"
 	"fmt"
@@ -25,6 +26,7 @@ import (
 // desk holds what is shown and said, apart from the line: the last of the journal, standing alarms, the newest turn.
 type desk struct {
 	mu       sync.Mutex
+	id       string                // of the journal: a fresh state folder begins a new one
 	journal  []wire.Alarm          // newest first
 	open     map[string]wire.Alarm // by key, what stands
 	findings []wire.Finding
@@ -38,6 +40,14 @@ const journalShown = 40
 // restore reads back what stood when the daemon stopped.
 func (d *desk) restore(l *ledger.Ledger, alarms *alarm.Annunciator, skidID string) error {
 	d.open, d.trouble = map[string]wire.Alarm{}, map[string]string{}
+	if ok, err := l.Doc(docJournal, &d.id); err != nil {
+		return err
+	} else if !ok {
+		d.id = rand.Text()
+		if err := l.PutDoc(docJournal, d.id); err != nil {
+			return err
+		}
+	}
 	last := l.Stats().LastJournal
 	from := uint64(0)
 	if last > 2000 {
@@ -48,7 +58,9 @@ func (d *desk) restore(l *ledger.Ledger, alarms *alarm.Annunciator, skidID strin
 		d.trouble["journal"] = "parts of the alarm journal cannot be read: " + err.Error()
 	}
 	for i := range trs {
-		d.note(wire.FromTransition(skidID, &trs[i], ""))
+		a := wire.FromTransition(skidID, &trs[i], "")
+		a.Journal = d.id
+		d.note(a)
 	}
 	for _, p := range alarms.Open() {
 		if _, known := d.open[p.Key]; !known {
@@ -94,7 +106,9 @@ func (s *Station) book(o *Output) error {
 	}
 	for i := range o.Transitions {
 		t := &o.Transitions[i]
-		s.unsaid = append(s.unsaid, saying{*t, wire.FromTransition(s.sk.ID, t, s.protect(t))})
+		said := wire.FromTransition(s.sk.ID, t, s.protect(t))
+		said.Journal = s.desk.id
+		s.unsaid = append(s.unsaid, saying{*t, said})
 	}
 	return s.commit()
 }
@@ -304,13 +318,7 @@ func (s *Station) offerHealth() {
 }
 
 // offline is the last will and the message of a clean stop.
-func (s *Station) offline() []byte {
-	b, err := json.Marshal(wire.Health{Version: 1, Skid: s.sk.ID, At: time.Now().UTC(), State: "offline", Line: "the daemon is not connected"})
-	if err != nil {
-		return []byte(`{"v":1,"state":"offline"}`)
-	}
-	return b
-}
+func (s *Station) offline() []byte { return wire.Offline(s.sk.ID) }
 
 // standing renews the retained standing alarms after a connection is made.
 func (s *Station) standing() []uplink.Message {

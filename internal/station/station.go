@@ -69,8 +69,9 @@ type Station struct {
 }
 
 const (
-	docLine  = "line memory"
-	queueLen = 256 // blocks of about 20 ms between source and line: five seconds
+	docLine    = "line memory"
+	docJournal = "journal id"
+	queueLen   = 256 // blocks of about 20 ms between source and line: five seconds
 )
 
 // Open checks everything and acquires it: files, source, page address. A station that does not open has left nothing
@@ -344,6 +345,7 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		failing = err
 	}
 	lastHealth := time.Now()
+	var shown int64
 	for p := range queue {
 		for _, r := range p.rows {
 			h.put(r)
@@ -352,6 +354,10 @@ func (s *Station) compute(queue <-chan *parcel) error {
 			return fmt.Errorf("station: line: %w", err)
 		}
 		s.progress.Add(int64(p.block.N))
+		if end := p.block.Seq0 + int64(p.block.N); end-shown >= int64(s.info.Rate) {
+			shown = end // a machine that stands still gives no turns: its snapshot is renewed all the same
+			s.publish(&Output{}, s.line.utc(float64(end)/s.info.Rate))
+		}
 		if t := time.Now(); t.Sub(lastHealth) > s.sk.Uplink.HealthEvery {
 			lastHealth = t
 			s.offerHealth()

@@ -41,7 +41,6 @@ type store struct {
 type storeStats struct {
 	commits, failed uint64
 	worst           time.Duration
-	written         int64 // bytes of pages written
 	kept            int64 // bytes of the records put
 }
 

@@ -81,11 +81,11 @@ func TestImpactsOnTwoThrows(t *testing.T) {
 						t.Logf("%g rpm, %g Hz: onset %.4f ms = %.3f° late, %.4f ms of it the rule's", rpm, hz, late*1e3, late*rate*perDeg, own*1e3)
 					}
 					around := int(th.Grid.Index(at[k] - 20))
-					peak, i := dsp.PeakAbs(v.Peak[around : around+80])
+					_, i := dsp.PeakAbs(v.Peak[around : around+80])
 					if d := th.Grid.At(around+i) - at[k]; d < -0.25 || d > 1+0.3e-3*rate*perDeg {
 						t.Errorf("%g rpm, %g Hz, throw %d: peak bin %g° after the impact", rpm, hz, k+1, d)
 					}
-					peak, _ = dsp.PeakAbs(v.Peak)
+					peak, _ := dsp.PeakAbs(v.Peak)
 					if whole, _ := dsp.PeakAbs(v.X); peak != whole {
 						t.Errorf("%g rpm, %g Hz: peak %g in bins, %g in samples", rpm, hz, peak, whole)
 					}
