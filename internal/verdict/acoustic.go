@@ -117,19 +117,35 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			}
 		}
 	}
-	if len(shift) < 3 || len(noise) < 3 {
+	o.common(dev, p, shift, noise, widen)
+}
+
+// common judges what all impacts and all noise levels of an accelerometer share: that is the sensor's, not the valves'.
+func (o *heard) common(dev []*duty.Deviation, p *place, shift, noise []float64, widen float64) {
+	if len(shift) < 2 || len(noise) < 3 {
 		return
 	}
 	slices.Sort(shift)
 	slices.Sort(noise)
 	m, n := shift[len(shift)/2], noise[len(noise)/2]
-	o.shift = m
 	alike := shift[0]*shift[len(shift)-1] > 0 && math.Min(math.Abs(shift[0]), math.Abs(shift[len(shift)-1])) > 0.2 &&
 		noise[len(noise)-1]-noise[0] < 2.5 && n*m > 0 && math.Abs(n) > 1.5
+	if alike { // no valve is accused of what they all do
+		for h := range 4 {
+			o.leak[h] = math.Min(0, o.leak[h])
+			open := at(dev, p.ends[h/2].impact[h%2][0])
+			if open != nil && open.Residual-m < 0.35 {
+				o.hard[h] = math.Min(0, o.hard[h])
+			}
+		}
+		o.leak[hRings] = math.Min(0, o.leak[hRings])
+	}
+	if len(shift) < 3 { // too few to tell a sensor by: as it was
+		return
+	}
+	o.shift, o.gain = m, capLo
 	if alike && math.Abs(m) > 0.35 { // vibration.md section 5: the healthy ten-turn maximum is 0.20
-		o.gain = capped(llr(math.Abs(m) / 0.10 / widen))
-	} else {
-		o.gain = capLo
+		o.gain = capped(math.Max(advisoryClass, llr(math.Abs(m)/0.10/widen)))
 	}
 }
 

@@ -182,7 +182,7 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 	deaf := false
 	for i := range b.cases {
 		c := &b.cases[i]
-		if !c.judgeable(judged) {
+		if !c.judgeable(judged) || c.kind == AccelGain && math.IsNaN(vib.gain) {
 			if c.grade > None {
 				out = append(out, c.found)
 			}

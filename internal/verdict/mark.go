@@ -63,6 +63,20 @@ func (b *bench) sharePairs(v *heard, press *[hPressures]fitted) {
 	}
 }
 
+// ringsExplain tells whether a pattern of suction leakage is taken for that of rings that are known to leak: with the
+// other end idle the two cannot be told apart (reference/leaks.md section 2). A suction finding of its own stays.
+func (b *bench) ringsExplain(c *trial, s *sight) bool {
+	if c.kind != Leaking || c.group != suction || c.grade > None || s.n[1-c.end] >= enough {
+		return false
+	}
+	for i := range b.cases {
+		if r := &b.cases[i]; r.kind == Leaking && r.h == hRings {
+			return r.grade > None
+		}
+	}
+	return false
+}
+
 func (b *bench) standing(h int) bool {
 	for i := range b.cases {
 		if c := &b.cases[i]; c.kind == Leaking && c.h == h && c.group >= 0 && c.grade > None {
@@ -96,7 +110,8 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		}
 		return m
 	}
-	if f := press[c.h]; f.judged && !withdrawn {
+	explained := b.ringsExplain(c, s)
+	if f := press[c.h]; f.judged && !withdrawn && !explained {
 		switch c.kind {
 		case Leaking:
 			m.llr[measure.Pressure], m.g, m.sd = f.llr, f.g, f.sd
@@ -124,7 +139,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 	case c.packing():
 		b.markPacking(c, &m, v, t)
 	case c.kind == Leaking:
-		if !deaf {
+		if !deaf && !explained {
 			m.llr[measure.Vibration] = v.leak[c.h]
 		}
 		if c.h == hRings {
