@@ -115,7 +115,7 @@ func (t *teller) pulled(c wire.Clip, dir string) {
 func (t *teller) ending() error {
 	t.mu.Lock()
 	defer t.mu.Unlock()
-	fmt.Fprintf(t.w, "\nThe control room received %d alarm messages.\n", len(t.alarms))
+	fmt.Fprintf(t.w, "\nAlarm messages that the control room received: %d\n", len(t.alarms))
 	if t.run.Name == "grow" && t.run.Duration > 0 && t.chapter == len(t.run.Chapters) && len(t.alarms) == 0 {
 		return fmt.Errorf("demo: the leak was played and no alarm arrived")
 	}
