@@ -72,21 +72,25 @@ func Run(ctx context.Context, o Options) error {
 	if err != nil {
 		return err
 	}
-	st, err := station.Open(station.Options{
+	var st *station.Station
+	var pulled error
+	atEnd := func(ctx context.Context) {
+		if o.Once {
+			pulled = pull(ctx, st, o.Dir, say)
+			return
+		}
+		say.printf("\nThe scenario is over; the page stays up until you press Ctrl-C.\n")
+		<-ctx.Done()
+	}
+	st, err = station.Open(station.Options{
 		SkidFile: file, State: filepath.Join(o.Dir, "state"), Source: "model:" + o.Scenario, Fast: o.Fast, Learn: o.Learn,
-		Broker: b.addr, Listen: o.Listen, Seed: o.Seed, Log: o.Log, OnTurn: say.turn,
+		Broker: b.addr, Listen: o.Listen, Seed: o.Seed, Log: o.Log, OnTurn: say.turn, AtEnd: atEnd,
 	})
 	if err != nil {
 		return errors.Join(err, room.close())
 	}
 	say.page(st.PageURL())
-	err = st.Run(ctx)
-	if err == nil && o.Once {
-		err = pull(ctx, st, o.Dir, say)
-	} else if err == nil && ctx.Err() == nil {
-		say.printf("\nThe scenario is over; the page stays up until you press Ctrl-C.\n")
-		<-ctx.Done()
-	}
+	err = errors.Join(st.Run(ctx), pulled)
 	err = errors.Join(err, st.Close())
 	return errors.Join(err, room.close(), say.ending())
 }

@@ -38,8 +38,9 @@ type Options struct {
 	Broker     string
 	Listen     string
 	Seed       uint64
-	Start      time.Time        // UTC of a modelled machine's first sample; zero: now, or after the newest entry of the journal
-	OnTurn     func(*wire.Turn) // hears of every turn, in the compute goroutine; nil: nobody
+	Start      time.Time             // UTC of a modelled machine's first sample; zero: now, or after the newest entry of the journal
+	OnTurn     func(*wire.Turn)      // hears of every turn, in the compute goroutine; nil: nobody
+	AtEnd      func(context.Context) // called when the source has ended, while page and uplink are still up; nil: nothing
 	Log        *slog.Logger
 }
 
@@ -272,6 +273,9 @@ func (s *Station) Run(ctx context.Context) error {
 	err := errors.Join(<-srcErr, lineErr)
 	if s.pub != nil && ctx.Err() == nil {
 		s.drainUplink(5 * time.Second)
+	}
+	if s.o.AtEnd != nil && ctx.Err() == nil && err == nil {
+		s.o.AtEnd(ctx)
 	}
 	return err
 }
