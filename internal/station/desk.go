@@ -29,6 +29,7 @@ type desk struct {
 	id       string                // of the journal: a fresh state folder begins a new one
 	journal  []wire.Alarm          // newest first
 	open     map[string]wire.Alarm // by key, what stands
+	named    map[string]string     // by key, the single valve that the standing alarm names
 	findings []wire.Finding
 	latest   *wire.Turn
 	trouble  map[string]string // by cause
@@ -39,7 +40,7 @@ const journalShown = 40
 
 // restore reads back what stood when the daemon stopped.
 func (d *desk) restore(l *ledger.Ledger, alarms *alarm.Annunciator, skidID string) error {
-	d.open, d.trouble = map[string]wire.Alarm{}, map[string]string{}
+	d.open, d.named, d.trouble = map[string]wire.Alarm{}, map[string]string{}, map[string]string{}
 	if ok, err := l.Doc(docJournal, &d.id); err != nil {
 		return err
 	} else if !ok {
@@ -80,6 +81,7 @@ func (d *desk) note(a wire.Alarm) {
 		d.open[a.Key] = a
 	} else {
 		delete(d.open, a.Key)
+		delete(d.named, a.Key)
 	}
 }
 
@@ -215,18 +217,25 @@ func (d *desk) say(cause, sentence string) {
 func (s *Station) publish(o *Output, at time.Time) {
 	d := &s.desk
 	d.mu.Lock()
-	if o.Record.Type != "" {
+	if o.Record.Type != "" && (o.Record.Valid || d.latest == nil || !d.latest.Valid || o.Record.Turn-d.latest.Turn > toldInvalid) {
 		rec := o.Record
 		d.latest = &rec
 	}
+	var renewed []wire.Alarm
 	if o.Judged {
 		d.findings = wireFindings(o.Findings, s.line)
+		renewed = d.renew(d.findings, o.At)
 	}
 	n := &wire.Now{Skid: s.sk.ID, Name: s.sk.Name, Site: s.sk.Site, At: at, Latest: d.latest, Findings: d.findings,
 		Standing: d.standing(), Journal: slices.Clone(d.journal), Clips: s.clips(), Caution: wire.Caution}
 	d.mu.Unlock()
 	n.Health = s.health(at)
 	s.now.Store(n)
+	for i := range renewed {
+		if b, err := json.Marshal(renewed[i]); err == nil && s.pub != nil {
+			s.pub.Offer(s.topics.Standing(renewed[i].Key), b, true)
+		}
+	}
 	if s.pub != nil && o.Record.Valid && at.Sub(d.featureT).Abs() >= s.sk.Uplink.FeaturesEvery {
 		d.featureT = at
 		for i := range s.sk.Throws {
@@ -239,6 +248,36 @@ func (s *Station) publish(o *Output, at time.Time) {
 			s.pub.Offer(s.topics.Features(id), b, false)
 		}
 	}
+}
+
+// toldInvalid is how many turns in a row may be invalid before the page shows one instead of the last good turn.
+const toldInvalid = 5
+
+// renewEvery is how often a standing alarm's evidence is renewed for the control room, in sample time.
+const renewEvery = time.Minute
+
+// renew brings the evidence of open alarms up to date: a leak grows, the cover temperature names the valve. It is no
+// transition and no news; the retained standing message and the page follow. Given back are those due to be sent.
+func (d *desk) renew(findings []wire.Finding, at time.Time) (due []wire.Alarm) {
+	for i := range findings {
+		f := &findings[i]
+		a, open := d.open[f.Subject+"/"+f.Kind]
+		if !open {
+			continue
+		}
+		before := a.Renewed
+		if before.IsZero() {
+			before = a.At
+		}
+		named := f.Valve != "" && d.named[a.Key] != f.Valve
+		if at.Sub(before).Abs() < renewEvery && !named {
+			continue
+		}
+		a.Sentence, a.Detail, a.Renewed = f.Sentence, *f, at.UTC()
+		d.open[a.Key], d.named[a.Key] = a, f.Valve
+		due = append(due, a)
+	}
+	return due
 }
 
 // standing lists open alarms, worst first, then oldest.
@@ -359,8 +398,8 @@ func (o outbox) Ack(ids []uint64) error { return o.l.Ack(ids) }
 
 func (s *Station) clips() []wire.Clip { return wireClips(s.tape, s.info.Rate, s.info.Start) }
 
-// wireClips lists a tape's clips. A clip of the present run has its times by the source's clock, also what is still to
-// come of it; one of an earlier run by what is stored.
+// wireClips lists a tape's clips. One that is complete, which may be of an earlier run, has its times by what is stored;
+// one that is still being recorded by the source's clock, which knows of what is to come.
 func wireClips(t *tape.Tape, rate float64, start time.Time) []wire.Clip {
 	var out []wire.Clip
 	for _, c := range t.Clips() {
@@ -368,7 +407,7 @@ func wireClips(t *tape.Tape, rate float64, start time.Time) []wire.Clip {
 		if kept, err := t.Stored(c.ID); err == nil {
 			w.From, w.To, w.Bytes = kept.From, kept.To, kept.Bytes
 		}
-		if c.Run == t.Run() && !start.IsZero() {
+		if !c.Complete && c.Run == t.Run() && !start.IsZero() {
 			w.From = start.Add(time.Duration(float64(c.From) / rate * 1e9)).UTC()
 			w.To = start.Add(time.Duration(float64(c.To) / rate * 1e9)).UTC()
 		}

@@ -33,7 +33,8 @@ type Alarm struct {
 	Order    int       `json:"first_up_order,omitempty"` // 1: the first since nothing stood
 	Flood    bool      `json:"flood,omitempty"`          // more alarms come in than a person can follow
 	Test     bool      `json:"test,omitempty"`
-	Open     bool      `json:"-"` // asks something of a person: what standing topics and the page show
+	Renewed  time.Time `json:"evidence_at,omitzero"` // standing alarms only: when sentence and detail were last renewed
+	Open     bool      `json:"-"`                    // asks something of a person: what standing topics and the page show
 	Caution  string    `json:"caution"`
 }
 
