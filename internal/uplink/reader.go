@@ -133,8 +133,19 @@ func (r *Reader) alarm(skid string, m Received) {
 }
 
 func (r *Reader) showStanding(skid string, m Received) {
-	if !m.Retained || len(m.Payload) == 0 {
+	if len(m.Payload) == 0 {
 		return // the transition itself has been shown, or will be
+	}
+	if !m.Retained {
+		// The transition itself has been shown; only evidence that has been renewed since is news, in one line.
+		if a, ok := r.read(m); ok && !a.Renewed.IsZero() {
+			valve := ""
+			if a.Detail != nil && a.Detail.Valve != "" {
+				valve = " (valve " + a.Detail.Valve + ")"
+			}
+			r.say("%s  renewed   %s  %s%s: %s\n", a.Renewed.UTC().Format("2006-01-02 15:04:05Z"), skid, a.Key, valve, a.Sentence)
+		}
+		return
 	}
 	if r.standing == nil || len(r.standing) > maxSkids {
 		r.standing = map[string]string{}

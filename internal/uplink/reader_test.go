@@ -62,6 +62,8 @@ func kept(m Received) Received { m.Retained = true; return m }
 func TestReaderGolden(t *testing.T) {
 	first := rise(3, alarm.Normal, alarm.Unacked, alarm.Danger, leak())
 	first.Clip, first.Order = "20260301T100300Z-3", 1
+	grown := first
+	grown.Renewed, grown.Sentence = began.Add(2*time.Minute), "t1.he.suction leaking, confirmed: leak area 61 mm² (52–70)"
 	gone := rise(5, alarm.Unacked, alarm.Normal, alarm.NoSeverity, nil)
 	gone.Sentence = "t1.he.suction leaking: the evidence is gone"
 	limit := rise(6, alarm.Normal, alarm.Unacked, alarm.Alert, alarm.LimitDetail{Value: 61.2, Limit: 60, Deadband: 1})
@@ -101,6 +103,7 @@ func TestReaderGolden(t *testing.T) {
 		{"limit alarm in a flood", Reader{}, []Received{onAlarm(limit)}},
 		{"shelved test alarm", Reader{}, []Received{onAlarm(shelved)}},
 		{"standing alarms when joining", Reader{}, []Received{kept(message(standing, first)), message(standing, gone), kept(message(standing, first)), kept(message(standing, "")), kept(message(topics.Standing("t1.rings/leaking"), undated))}},
+		{"standing alarm renewed", Reader{}, []Received{onAlarm(first), message(standing, first), message(standing, grown)}},
 		{"numbers missing", Reader{}, []Received{onAlarm(old), onAlarm(rise(5, alarm.Normal, alarm.Unacked, alarm.Alert, nil))}},
 		{"a new journal with later times", Reader{}, []Received{onAlarm(rise(40, alarm.Normal, alarm.Unacked, alarm.Alert, nil)), onAlarm(renewed), onAlarm(renewed)}},
 		{"a named journal and another", Reader{}, []Received{onAlarm(named("kestrel", 1)), onAlarm(named("kestrel", 2)), onAlarm(named("kestrel", 2)), onAlarm(named("plover", 1)), onAlarm(named("plover", 2))}},
