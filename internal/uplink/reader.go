@@ -140,8 +140,9 @@ func (r *Reader) showStanding(skid string, m Received) {
 		// The transition itself has been shown; only evidence that has been renewed since is news, in one line.
 		if a, ok := r.read(m); ok && !a.Renewed.IsZero() {
 			valve := ""
-			if a.Detail != nil && a.Detail.Valve != "" {
-				valve = " (valve " + a.Detail.Valve + ")"
+			var f wire.Finding
+			if json.Unmarshal(a.Detail, &f) == nil && f.Valve != "" {
+				valve = " (valve " + f.Valve + ")"
 			}
 			r.say("%s  renewed   %s  %s%s: %s\n", a.Renewed.UTC().Format("2006-01-02 15:04:05Z"), skid, a.Key, valve, a.Sentence)
 		}
