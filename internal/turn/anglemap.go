@@ -11,7 +11,8 @@ import (
 // hand, -360..1080; times are sample positions relative to a reference sample, so that they stay precise however
 // long the source has run.
 type angleMap struct {
-	marks  Marks
+	marks  Marks    // Inner
+	ripple []Ripple // in force for the revolution in hand
 	curve  dsp.Curve
 	deg    []float64 // φ of the knots
 	pos    []float64 // their sample positions after ref
@@ -20,9 +21,9 @@ type angleMap struct {
 }
 
 // warp gives φ(θ) and dφ/dθ.
-func (m Marks) warp(deg float64) (phi, slope float64) {
+func warp(ripple []Ripple, deg float64) (phi, slope float64) {
 	phi, slope = deg, 1
-	for _, r := range m.Ripple {
+	for _, r := range ripple {
 		n := float64(r.Order)
 		sin, cos := math.Sincos((n*deg - r.PhaseDeg) * math.Pi / 180)
 		phi -= r.Amp / n * sin * 180 / math.Pi
@@ -62,14 +63,15 @@ func (m *angleMap) lay(recs []*record) string {
 }
 
 func (m *angleMap) add(deg, pos float64) {
-	phi, _ := m.marks.warp(deg)
+	phi, _ := warp(m.ripple, deg)
 	m.deg = append(m.deg, phi)
 	m.pos = append(m.pos, pos-float64(m.ref))
 }
 
-// grid is one throw's angle grid with φ and dφ/dθ worked out once: they do not change from turn to turn.
+// grid is one throw's angle grid with φ and dφ/dθ worked out: they change only with the ripple.
 type grid struct {
 	Grid
+	dead       float64 // degrees from the mark to the throw's dead centre
 	phi, slope []float64
 	zero, full int // indices of 0° and 360°
 }
@@ -79,10 +81,15 @@ func newGrid(c *Config, deadCentre float64) grid {
 	g := grid{Grid: Grid{Lo: -PadDeg, Step: c.Step, N: n + 1}, zero: int(math.Round(PadDeg / c.Step))}
 	g.full = n - g.zero
 	g.phi, g.slope = make([]float64, n+1), make([]float64, n+1)
-	for i := range g.phi {
-		g.phi[i], g.slope[i] = c.Marks.warp(deadCentre + g.At(i))
-	}
+	g.dead = deadCentre
+	g.warp(c.Marks.Ripple)
 	return g
+}
+
+func (g *grid) warp(ripple []Ripple) {
+	for i := range g.phi {
+		g.phi[i], g.slope[i] = warp(ripple, g.dead+g.At(i))
+	}
 }
 
 // walk fills in the positions (relative to ref) and samples per degree of all grid angles. It returns why it

@@ -35,7 +35,19 @@ type Config struct {
 type Marks struct {
 	Inner  []float64 // degrees after the opening mark of the further marks within a turn; nil: evenly spaced
 	Ripple []Ripple  // the shaft's speed ripple, when known
-	U      float64   // degrees, standard uncertainty of angles; 0: by number of marks and ripple, see Uncertainty
+	U      float64   // degrees, 95 % half-width of angles; 0: by number of marks and ripple, see Uncertainty
+
+	// Shaft, where given, says instead of Ripple and U how the shaft runs in the revolution whose mark comes t seconds
+	// after the sample clock's zero. It is asked once for every revolution that is converted, after all earlier turns
+	// have been emitted, so it may lean on them and on values that are in force at t, and on nothing else: the same
+	// samples must get the same answers however the stream was cut. The answer is copied.
+	Shaft func(t float64) Shaft
+}
+
+// Shaft is how a shaft runs within a turn.
+type Shaft struct {
+	Ripple []Ripple // none: not known
+	U      float64  // degrees, 95 % half-width; 0: by number of marks and ripple, see Uncertainty
 }
 
 // Ripple is one harmonic of the speed within a turn: w = mean·(1 + Σ Amp·cos(Order·θ − PhaseDeg)), θ in degrees
@@ -66,8 +78,9 @@ type ThrowConfig struct {
 }
 
 // Uncertainty gives the angle uncertainty in degrees for a number of evenly spaced marks per turn, and whether the
-// first two harmonics of the speed ripple are given. The numbers are the measured ones of reference/windows.md
-// section 1: 1.2 with one mark and unknown ripple of 0.5 to 2 %, 0.3 when it is known, 0.06 with six marks.
+// first two harmonics of the speed ripple are given. It is the half-width that holds 95 % of the angles of a turn, not
+// a standard deviation: the numbers are the 95th percentiles of windows.md section 1, 1.2 with one mark and unknown
+// ripple of 0.5 to 2 %, 0.3 when it is known, 0.06 with six marks. The dead centre's own error is not in it.
 func Uncertainty(marks int, ripple bool) float64 {
 	u := 1.2
 	switch {
@@ -157,8 +170,15 @@ func (m Marks) check() error {
 		}
 		last = a
 	}
+	if !(m.U >= 0) || math.IsInf(m.U, 0) {
+		return fmt.Errorf("angle uncertainty %g°", m.U)
+	}
+	return checkRipple(m.Ripple)
+}
+
+func checkRipple(list []Ripple) error {
 	slow := 0.0
-	for _, r := range m.Ripple {
+	for _, r := range list {
 		if r.Order < 1 || r.Order > 12 || !(r.Amp >= 0) || !finite(r.PhaseDeg) {
 			return fmt.Errorf("ripple of order %d, amplitude %g, phase %g°", r.Order, r.Amp, r.PhaseDeg)
 		}
@@ -167,16 +187,13 @@ func (m Marks) check() error {
 	if !(slow <= 0.2) {
 		return fmt.Errorf("ripple of %g of the mean speed: amplitudes are fractions, 0.2 in all at most", slow)
 	}
-	if !(m.U >= 0) || math.IsInf(m.U, 0) {
-		return fmt.Errorf("angle uncertainty %g°", m.U)
-	}
 	return nil
 }
 
 // knowsRipple: both of the first two harmonics given; twice-a-turn alone still leaves 0.35° at the 95th percentile.
-func (m Marks) knowsRipple() bool {
+func knowsRipple(list []Ripple) bool {
 	var one, two bool
-	for _, r := range m.Ripple {
+	for _, r := range list {
 		one, two = one || r.Order == 1, two || r.Order == 2
 	}
 	return one && two

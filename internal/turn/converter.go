@@ -2,6 +2,7 @@ package turn
 
 import (
 	"fmt"
+	"slices"
 
 	"lapwing/internal/frame"
 )
@@ -46,7 +47,7 @@ func New(cfg Config) (*Converter, error) {
 	if err != nil {
 		return nil, fmt.Errorf("turn: leak band: %w", err)
 	}
-	c := &Converter{cfg: cfg, begin: whyBegin, m: angleMap{marks: cfg.Marks}}
+	c := &Converter{cfg: cfg, begin: whyBegin, m: angleMap{marks: cfg.Marks, ripple: slices.Clone(cfg.Marks.Ripple)}}
 	for _, t := range cfg.Throws {
 		g := newGrid(&c.cfg, t.DeadCentreDeg)
 		c.grids = append(c.grids, g)

@@ -2,6 +2,7 @@ package turn
 
 import (
 	"math"
+	"slices"
 
 	"lapwing/internal/frame"
 )
@@ -41,12 +42,15 @@ func (c *Converter) convert(recs []*record) string {
 	for _, n := range recs {
 		c.out.Quality |= n.q
 	}
+	u, why := c.ask(r)
+	if why != "" {
+		return why
+	}
 	if why := c.m.lay(recs); why != "" {
 		return why
 	}
-	u := c.cfg.Marks.U
 	if u == 0 {
-		u = Uncertainty(c.m.inTurn, c.cfg.Marks.knowsRipple())
+		u = Uncertainty(c.m.inTurn, knowsRipple(c.m.ripple))
 	}
 	for k := range c.throws {
 		t, g := &c.throws[k], &c.grids[k]
@@ -73,6 +77,29 @@ func (c *Converter) convert(recs []*record) string {
 	}
 	c.out.Time, c.out.RPM = c.throws[0].T0/c.cfg.Rate, c.throws[0].RPM
 	return ""
+}
+
+// ask puts the ripple in force for a revolution into the angle map and gives the uncertainty that goes with it, 0 when
+// none is stated. The marks of a revolution and of its neighbours are laid over the one ripple: with one mark a turn
+// its phase shift is the same for all of them, and between more marks the spline has little left to bridge.
+func (c *Converter) ask(r *record) (u float64, why string) {
+	if c.cfg.Marks.Shaft == nil {
+		return c.cfg.Marks.U, ""
+	}
+	s := c.cfg.Marks.Shaft(r.mark0 / c.cfg.Rate)
+	if !slices.Equal(s.Ripple, c.m.ripple) {
+		if checkRipple(s.Ripple) != nil {
+			return 0, whyRipple
+		}
+		c.m.ripple = append(c.m.ripple[:0], s.Ripple...)
+		for k := range c.grids {
+			c.grids[k].warp(c.m.ripple)
+		}
+	}
+	if !(s.U >= 0) || math.IsInf(s.U, 0) {
+		return 0, whyRipple
+	}
+	return s.U, ""
 }
 
 // reach gives the half-open range of sample numbers that the kernels and bins of a grid touch; pos is relative.

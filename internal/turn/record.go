@@ -21,6 +21,7 @@ const (
 	whyBegin    = "start: no revolution before it"
 	whyEnd      = "end: the revolutions after it did not come"
 	whyCount    = "phase: revolutions not counted"
+	whyRipple   = "phase: the ripple given for this turn is impossible"
 	whyShort    = "samples missing at the ends of the turn"
 	neighbour   = " (in a neighbouring revolution)"
 )

@@ -39,7 +39,7 @@ func (t *Turn) Valid() bool { return t.Reason == "" }
 type Throw struct {
 	T0, T1 float64      // sample positions of the head-end dead centres at 0° and 360°
 	RPM    float64      // mean speed between them
-	U      float64      // uncertainty of the angle scale, degrees (see Uncertainty)
+	U      float64      // uncertainty of the angle scale, degrees, 95 % half-width (see Uncertainty)
 	Grid   Grid         // of all angle-domain slices below
 	Pos    []float64    // sample position (fractional sample number) of every grid angle, strictly increasing
 	Omega  []float64    // instantaneous shaft speed at every grid angle, rad/s
