@@ -45,7 +45,7 @@ func TestTheExampleIsUnderstoodInSI(t *testing.T) {
 	}
 	near(t, "flow area, m²", v.FlowArea, 1.25e-3, 1e-15)
 	near(t, "lift, m", v.Lift, 1.6e-3, 1e-15)
-	if sk.Tape.MaxBytes != 20e9 || sk.Tape.Pre != time.Minute || sk.Uplink.Root != "lapwing" || sk.Panel.Listen != "127.0.0.1:8411" {
+	if sk.Tape.MaxBytes != 20e9 || sk.Tape.Pre != 30*time.Second || sk.Uplink.Root != "lapwing" || sk.Panel.Listen != "127.0.0.1:8411" {
 		t.Errorf("edges: %+v %+v %+v", sk.Tape, sk.Uplink, sk.Panel)
 	}
 	for i, c := range sk.Channels {
