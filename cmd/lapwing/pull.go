@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"io"
 	"net/http"
+	"net/url"
 	"os"
 	"path/filepath"
 	"strings"
@@ -121,9 +122,9 @@ func get(ctx context.Context, daemon, path string) (io.ReadCloser, error) {
 
 // fetchClip unpacks the daemon's answer; names with a path in them are refused.
 func fetchClip(ctx context.Context, daemon, id, dir string, progress io.Writer) error {
-	body, err := get(ctx, daemon, "/api/v1/clips/"+id)
+	body, err := get(ctx, daemon, "/api/v1/clips/"+url.PathEscape(id))
 	if err != nil {
-		return err
+		return fmt.Errorf("clip %s: %w (lapwing pull without a name lists them)", id, err)
 	}
 	defer body.Close()
 	began := time.Now()

@@ -104,7 +104,7 @@ func TestSystemControlRoom(t *testing.T) {
 
 	d = start(t, nil, built(t, "lapwingd"), "--skid", skid, "--state", state, "--broker", b.url(), "--listen", "127.0.0.1:0", "--source", "model:swings")
 	page = pageOf(t, d)
-	clip, fetched := pullFrom(t, dir, "--daemon", page)
+	line, fetched := pullFrom(t, dir, "--daemon", page)
 	until(t, 30*time.Second, "the second daemon says that it runs", func() bool {
 		m, ok := sub.newest("/health")
 		return ok && m.health(t).State == "running"
@@ -124,8 +124,8 @@ func TestSystemControlRoom(t *testing.T) {
 		t.Errorf("pull from a daemon that is down: exit %d\n%s%s", code, out, errs)
 	}
 	again, offline := pullFrom(t, dir, "--state", state)
-	if clip != again {
-		t.Errorf("the running daemon lists clip %s, its folder clip %s", clip, again)
+	if line != again {
+		t.Errorf("the daemon of a later run lists\n%s\nits folder\n%s", line, again)
 	}
 	for name, body := range fetched {
 		if !bytes.Equal(body, offline[name]) {
@@ -168,8 +168,9 @@ func find(ms []message, topic string) *message {
 	return nil
 }
 
-// pullFrom lists the clips, fetches the one of the leak, asks for one that does not exist, and gives the files.
-func pullFrom(t *testing.T, dir, where, what string) (clip string, files map[string][]byte) {
+// pullFrom lists the clips, fetches the one of the leak, asks for one that does not exist, and gives the line of the
+// list and the files.
+func pullFrom(t *testing.T, dir, where, what string) (line string, files map[string][]byte) {
 	t.Helper()
 	out, errs, code := ran(t, built(t, "lapwing"), "pull", where, what)
 	if code != 0 || !strings.HasPrefix(out, "CLIP") || !strings.Contains(out, "t1.he.suction leaking") || strings.Contains(out, "0001-01-01") {
@@ -177,9 +178,10 @@ func pullFrom(t *testing.T, dir, where, what string) (clip string, files map[str
 	}
 	for _, l := range strings.Split(out, "\n") {
 		if strings.Contains(l, "t1.he.suction leaking") {
-			clip = strings.Fields(l)[0]
+			line = l
 		}
 	}
+	clip := strings.Fields(line)[0]
 	if out, errs, code := ran(t, built(t, "lapwing"), "pull", where, what, "no-such-clip", "--out", dir); code != 1 || !strings.Contains(errs, "no-such-clip") {
 		t.Errorf("pull of an unknown clip: exit %d\n%s%s", code, out, errs)
 	}
@@ -198,7 +200,7 @@ func pullFrom(t *testing.T, dir, where, what string) (clip string, files map[str
 		}
 		files[suffix] = body
 	}
-	return clip, files
+	return line, files
 }
 
 // sameAsJournal compares what a subscriber received with the daemon's own journal, after the daemon has ended.
