@@ -81,7 +81,7 @@ func readNote(t *testing.T, path string) (n note) {
 	if err := json.Unmarshal(raw, &n); err != nil {
 		t.Fatalf("%s: %v", path, err)
 	}
-	if n.Samples < int64(60*n.Rate) || n.Lost != 0 || len(n.Cautions) == 0 || !strings.Contains(n.Clip.Reason, "t1.he.suction leaking") {
+	if n.Samples < int64(30*n.Rate) || n.Lost != 0 || len(n.Cautions) == 0 || !strings.Contains(n.Clip.Reason, "t1.he.suction leaking") {
 		t.Errorf("note %+v", n)
 	}
 	return n

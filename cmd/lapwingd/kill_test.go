@@ -16,7 +16,7 @@ import (
 	"lapwing/internal/ledger"
 )
 
-// A limit on every plateau makes transitions all the time while the load moves.
+// restlessLimits come before those of the file: a limit on every plateau makes transitions all the time while the load moves.
 func restlessLimits() string {
 	var b strings.Builder
 	for _, end := range []string{"t1.he", "t1.ce", "t2.he", "t2.ce"} {
@@ -24,7 +24,7 @@ func restlessLimits() string {
 			fmt.Fprintf(&b, "  - {of: %s, measure: %s, deadband: 0.1, on_delay_s: 0.5, off_delay_s: 0.5, severity: alert}\n", end, l)
 		}
 	}
-	return "limits:\n" + b.String()
+	return "\n" + strings.TrimSuffix(b.String(), "\n")
 }
 
 // seed is random, shown, and settable by LAPWING_SEED.
@@ -60,7 +60,7 @@ func TestSystemKilledAgainAndAgain(t *testing.T) {
 	rng := rand.New(rand.NewPCG(s, 1))
 	dir := t.TempDir()
 	state := filepath.Join(dir, "state")
-	skid := skidFile(t, dir, "limits:", restlessLimits(), "health_every_s: 30", "health_every_s: 1", "pre_s: 60", "pre_s: 2", "post_s: 60", "post_s: 2", "max_gb: 20", "max_gb: 0.2")
+	skid := skidFile(t, dir, "limits", restlessLimits(), "health_every_s", "1", "pre_s", "2", "post_s", "2", "max_gb", "0.2")
 	b := startBroker(t)
 	sub := b.subscribe("journal", "lapwing/#")
 	boot := func(args ...string) *program {

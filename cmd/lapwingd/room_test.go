@@ -34,7 +34,7 @@ func now(t *testing.T, page string) (n wire.Now, ok bool) {
 func TestSystemControlRoom(t *testing.T) {
 	system(t)
 	dir := t.TempDir()
-	skid := skidFile(t, dir, "features_every_s: 10", "features_every_s: 5", "health_every_s: 30", "health_every_s: 1", "pre_s: 60", "pre_s: 6", "post_s: 60", "post_s: 4")
+	skid := skidFile(t, dir, "features_every_s", "5", "health_every_s", "1", "pre_s", "6", "post_s", "4")
 	state := filepath.Join(dir, "state")
 	b := startBroker(t)
 	sub := b.subscribe("control-room", "lapwing/#")

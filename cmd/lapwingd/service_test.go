@@ -93,7 +93,7 @@ func unitCommand(t *testing.T, replace ...string) []string {
 func TestSystemService(t *testing.T) {
 	system(t)
 	dir := t.TempDir()
-	skid := skidFile(t, dir, "broker: tcp://127.0.0.1:1883", "broker: tcp://"+address(freePort(t)), "listen: 127.0.0.1:8411", "listen: none")
+	skid := skidFile(t, dir, "broker", "tcp://"+address(freePort(t)), "listen", "none")
 	m := newManager(t)
 	cmd := unitCommand(t, "/usr/bin/lapwingd", built(t, "lapwingd"), "/etc/lapwing/skid.yaml", skid, "/var/lib/lapwing", filepath.Join(dir, "state"), "${LAPWING_SOURCE}", "model:swings")
 	d := start(t, []string{"NOTIFY_SOCKET=" + m.path, "WATCHDOG_USEC=600000"}, cmd[0], cmd[1:]...)

@@ -8,6 +8,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"regexp"
 	"strings"
 	"sync"
 	"syscall"
@@ -201,22 +202,22 @@ func ran(t *testing.T, path string, args ...string) (stdout, stderr string, code
 	return p.out.String(), p.err.String(), code
 }
 
-// skidFile writes the built-in example with some lines changed, old text by new, into dir.
+// skidFile writes the built-in example into dir with other values for some keys: key, value, key, value.
 func skidFile(t *testing.T, dir string, changes ...string) string {
 	t.Helper()
 	raw, err := os.ReadFile(filepath.Join(root(t), "configs", "biomethane-two-throw.yaml"))
 	if err != nil {
 		t.Fatal(err)
 	}
-	s := string(raw)
 	for i := 0; i < len(changes); i += 2 {
-		if !strings.Contains(s, changes[i]) {
-			t.Fatalf("the example skid file has no %q", changes[i])
+		key := regexp.MustCompile(`(?m)^( *` + changes[i] + `:)[^#\n]*`)
+		if n := len(key.FindAll(raw, -1)); n != 1 {
+			t.Fatalf("the example skid file has %d keys %s", n, changes[i])
 		}
-		s = strings.Replace(s, changes[i], changes[i+1], 1)
+		raw = key.ReplaceAll(raw, []byte("${1} "+changes[i+1]))
 	}
 	path := filepath.Join(dir, "skid.yaml")
-	if err := os.WriteFile(path, []byte(s), 0o644); err != nil {
+	if err := os.WriteFile(path, raw, 0o644); err != nil {
 		t.Fatal(err)
 	}
 	return path
