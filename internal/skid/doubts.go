@@ -88,13 +88,37 @@ func (d *doubter) sampling() {
 
 func (d *doubter) phase() {
 	p := d.sk.Phase
-	if p.Uncertainty == 0 && len(p.Ripple) == 0 {
-		d.add("phase", "A shaft does not turn evenly within a turn; with one mark and no ripple given, angles may be up to 1.2° off and windows are widened by it. A temporary toothed wheel, or the walkdown, measures the ripple.",
-			"one mark a turn, and neither ripple nor uncertainty_deg is stated")
+	var bare []string
+	any := p.Ripple != nil
+	for _, s := range d.sk.Steps {
+		if s.Ripple != nil {
+			any = true
+		} else if p.Ripple == nil {
+			bare = append(bare, fmt.Sprint(s.Code))
+		}
 	}
-	for i, h := range p.Ripple {
+	switch {
+	case !any && p.Uncertainty == 0 && !d.sk.ComputesRipple():
+		d.add("phase", "A shaft does not turn evenly within a turn; with one mark and no ripple given, angles may be up to 1.2° off and windows are widened by it. A temporary toothed wheel measures it (lapwing ripple); with machine.inertia_kgm2 and a pressure in every working end it is computed.",
+			"one mark a turn, and neither ripple nor uncertainty_deg is stated")
+	case any && len(bare) > 0:
+		d.add("load_steps", "In a step without a ripple angles may be up to 1.2° off. Record the toothed wheel in each step (lapwing ripple), or give phase.ripple for the rest.",
+			"some load steps have a ripple, these have none: %s", list(bare))
+	}
+	d.harmonics("phase", p.Ripple)
+	for i, s := range d.sk.Steps {
+		d.harmonics(fmt.Sprintf("load_steps[%d]", i), s.Ripple)
+	}
+	if end := d.sk.unmeasured(); d.sk.Machine.Inertia > 0 && !any && end != "" {
+		d.add("machine.inertia_kgm2", "The ripple can be computed from the torque of all throws, but only when every working end has a pressure.",
+			"%s has no pressure channel, so the inertia serves nothing", end)
+	}
+}
+
+func (d *doubter) harmonics(path string, hs []Ripple) {
+	for i, h := range hs {
 		if h.Amp > 0.03 {
-			d.add(fmt.Sprintf("phase.ripple[%d].amplitude_percent", i), "Compressor shafts run 0.5 to 2 % uneven; more is a flywheel too small or a wheel read wrongly. Compare with the torsional analysis.",
+			d.add(fmt.Sprintf("%s.ripple[%d].amplitude_percent", path, i), "Compressor shafts run 0.5 to 2 % uneven; more is a flywheel too small or a wheel read wrongly. Compare with the torsional analysis.",
 				"a ripple of %s %%", short(h.Amp*100))
 		}
 	}

@@ -178,9 +178,14 @@ func (r *reader) phase(o *object, sk *Skid) {
 	}
 	p.Hysteresis = zero(s.num("hysteresis_v", bounds{1e-4, 50}, false))
 	p.Uncertainty = zero(s.num("uncertainty_deg", bounds{0.01, 10}, false))
+	p.Ripple = r.ripple(s)
+}
+
+// ripple reads the harmonics of the speed within a turn, of the machine or of one load step.
+func (r *reader) ripple(s *object) (out []Ripple) {
 	seen := map[int]bool{}
 	for i, n := range s.list("ripple", 1, 8, false, "list up to eight harmonics: - {order: 2, amplitude_percent: 0.8, phase_deg: 40}") {
-		h := r.object(n, fmt.Sprintf("phase.ripple[%d]", i), "order", "amplitude_percent", "phase_deg")
+		h := r.object(n, fmt.Sprintf("%s[%d]", join2(s.path, "ripple"), i), "order", "amplitude_percent", "phase_deg")
 		if h == nil {
 			continue
 		}
@@ -189,13 +194,24 @@ func (r *reader) phase(o *object, sk *Skid) {
 			h.wrong("order", "give each harmonic once", "harmonic %d is given twice", order)
 		}
 		seen[order] = true
-		p.Ripple = append(p.Ripple, Ripple{
+		out = append(out, Ripple{
 			Order: order,
 			Amp:   h.num("amplitude_percent", bounds{0, 10}, true) / 100,
 			Phase: h.num("phase_deg", bounds{-360, 360}, true),
 		})
 	}
+	sum := 0.0
+	for _, h := range out {
+		sum += h.Amp
+	}
+	if sum > mostRipple {
+		s.wrong("ripple", "amplitudes are per cent of the mean speed; 0.5 to 2 % in all is usual", "the harmonics add up to %s %%, more than %s %%", short(sum*100), short(mostRipple*100))
+	}
+	return out
 }
+
+// mostRipple is what the harmonics may add up to: beyond it the angle map is no longer sure to rise.
+const mostRipple = 0.2
 
 // seconds turns a number of seconds into a duration.
 func seconds(s float64) time.Duration { return time.Duration(math.Round(zero(s) * 1e9)) }

@@ -18,7 +18,7 @@ func (r *reader) steps(o *object, sk *Skid) {
 	codes := map[int]int{}
 	for i, n := range o.list("load_steps", 1, 100, true, fix) {
 		path := fmt.Sprintf("load_steps[%d]", i)
-		s := r.object(n, path, "code", "name", "pockets_percent", "pockets_cm3", "idle", "late_suction_closing_deg")
+		s := r.object(n, path, "code", "name", "pockets_percent", "pockets_cm3", "idle", "late_suction_closing_deg", "ripple")
 		if s == nil {
 			continue
 		}
@@ -63,6 +63,7 @@ func (r *reader) steps(o *object, sk *Skid) {
 			}
 			st.Late[name] = v
 		})
+		st.Ripple = r.ripple(s)
 		sk.Steps = append(sk.Steps, st)
 	}
 }

@@ -131,10 +131,22 @@ func (p *page) head(sk *Skid) {
 		row("shaft mark", f("channel %s, %s edge, %s", ph.Channel, edge, threshold)),
 	)
 	for _, h := range ph.Ripple {
-		rows = append(rows, row("ripple", f("order %d: %s %% at %s°", h.Order, short(h.Amp*100), short(h.Phase))))
+		rows = append(rows, row("ripple", harmonic(h)))
 	}
-	rows = append(rows, row("angle uncertainty", known(ph.Uncertainty, "%.2g° standard")))
+	if sk.ComputesRipple() {
+		rows = append(rows, row("ripple", f("computed from the torque of all throws and %s kg m² of inertia", short(m.Inertia))))
+	}
+	for _, s := range sk.Steps {
+		for _, h := range s.Ripple {
+			rows = append(rows, row(f("ripple, step %d", s.Code), harmonic(h)))
+		}
+	}
+	rows = append(rows, row("angle uncertainty", known(ph.Uncertainty, "±%.2g° for 95 of 100 angles")))
 	p.table(rows)
+}
+
+func harmonic(h Ripple) string {
+	return f("order %d: %s %% at %s°", h.Order, short(h.Amp*100), short(h.Phase))
 }
 
 func (p *page) gas(sk *Skid, ds []duty) {

@@ -41,6 +41,40 @@ func (sk *Skid) CylinderAt(throw, code int) crank.Cylinder {
 	return c
 }
 
+// RippleAt is the speed ripple of a load step: its own, or the machine's where it gives none or the code is unknown.
+func (sk *Skid) RippleAt(code int) []Ripple {
+	if s, ok := sk.FindStep(code); ok && s.Ripple != nil {
+		return s.Ripple
+	}
+	return sk.Phase.Ripple
+}
+
+// ComputesRipple reports whether the ripple is computed from the torque of all throws: nobody has measured it, the
+// inertia is known, and so is the pressure in every working end.
+func (sk *Skid) ComputesRipple() bool {
+	if sk.Machine.Inertia == 0 || sk.Phase.Ripple != nil {
+		return false
+	}
+	for _, s := range sk.Steps {
+		if s.Ripple != nil {
+			return false
+		}
+	}
+	return sk.unmeasured() == ""
+}
+
+// unmeasured names the first working end without a pressure channel, "" when there is none.
+func (sk *Skid) unmeasured() string {
+	for i := range sk.Throws {
+		for e, end := range sk.Throws[i].Ends {
+			if end.Works && end.Pressure == "" {
+				return sk.EndName(i, e)
+			}
+		}
+	}
+	return ""
+}
+
 // Stages is the number of stages, the highest stage number of any throw.
 func (sk *Skid) Stages() int {
 	n := 0

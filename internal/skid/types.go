@@ -48,14 +48,14 @@ type Machine struct {
 
 // Phase describes the shaft reference.
 type Phase struct {
-	Channel      string  // channel id
-	MarksPerTurn int     // 1 now
-	Falling      bool    // active edge
-	AutoLevel    bool    // threshold found from the signal
-	Threshold    float64 // V, when AutoLevel is false
-	Hysteresis   float64 // V, 0: a quarter of the pulse height
-	Uncertainty  float64 // degrees, standard; 0: the default for one mark a turn
-	Ripple       []Ripple
+	Channel      string   // channel id
+	MarksPerTurn int      // 1 now
+	Falling      bool     // active edge
+	AutoLevel    bool     // threshold found from the signal
+	Threshold    float64  // V, when AutoLevel is false
+	Hysteresis   float64  // V, 0: a quarter of the pulse height
+	Uncertainty  float64  // degrees, 95 % half-width; 0: the default for one mark a turn
+	Ripple       []Ripple // where a load step gives none of its own
 }
 
 // Ripple is one harmonic of the speed within a turn: w = mean·(1 + Σ Amp·cos(Order·θ − Phase)), θ from the mark.
@@ -109,6 +109,7 @@ type Step struct {
 	Pocket map[string]float64 // end name (t1.he) → added clearance, fraction of that end's swept volume
 	Idle   map[string]bool    // ends whose suction valves are held open
 	Late   map[string]float64 // ends under late suction closing → degrees after that end's outer dead centre
+	Ripple []Ripple           // of the shaft's speed in this step; none: Phase.Ripple holds
 }
 
 // Kind says what a channel measures.
