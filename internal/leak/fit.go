@@ -11,8 +11,11 @@ const degPerRad = 180 / math.Pi
 // Fitter fits turns; it keeps scratch between them and is not for use by two goroutines at once.
 type Fitter struct {
 	set  Settings
-	rows [][unknowns]float64
+	rows [][sUnknowns]float64
 	y    []float64
+
+	strokes []stroke
+	shapes  shapes
 }
 
 // NewFitter makes a fitter with the settings, defaults where they are zero.
@@ -33,7 +36,7 @@ func (f *Fitter) Fit(in *Input) Fit {
 	if err := in.check(); err != nil {
 		return absent(err.Error())
 	}
-	var strokes []stroke
+	strokes := f.strokes[:0]
 	var seen [2]bool
 	out := Fit{}
 	for end := range in.P {
@@ -50,6 +53,7 @@ func (f *Fitter) Fit(in *Input) Fit {
 			out.Used[end][kind] = true
 		}
 	}
+	f.strokes = strokes
 	if len(strokes) < 2 {
 		a := absent(onlyStroke)
 		a.Used = out.Used
@@ -80,10 +84,11 @@ func (f *Fitter) Fit(in *Input) Fit {
 
 	// First from the grid and the pressures as they came, then once more about the shift and the zeros found, because
 	// both bend the lines more than in proportion.
-	sol, ok := f.pass(&q, in, strokes, &out)
+	st := in.states()
+	sol, ok := f.pass(&q, in, &st, strokes, &out)
 	if ok && out.far(in.Ps) {
 		again := normal{use: q.use}
-		sol, ok = f.pass(&again, in, strokes, &out)
+		sol, ok = f.pass(&again, in, &st, strokes, &out)
 		q = again
 	}
 	if !ok {
@@ -91,7 +96,7 @@ func (f *Fitter) Fit(in *Input) Fit {
 		a.Used = out.Used
 		return a
 	}
-	f.fill(&out, in, &q, &sol)
+	f.fill(&out, in, &st, &q, &sol)
 	return out
 }
 
@@ -101,9 +106,9 @@ func (f *Fit) far(ps float64) bool {
 }
 
 // pass builds and solves the problem about the phase and the zeros in out (zero at first) and adds what it finds.
-func (f *Fitter) pass(q *normal, in *Input, strokes []stroke, out *Fit) (solution, bool) {
+func (f *Fitter) pass(q *normal, in *Input, st *states, strokes []stroke, out *Fit) (solution, bool) {
 	for _, s := range strokes {
-		f.addStroke(q, in, s, out.Phase, out.Zero)
+		f.addStroke(q, in, st, s, out.Phase, out.Zero)
 	}
 	out.Points = q.n
 	free := q.n - len(strokes)
@@ -143,68 +148,95 @@ const (
 	leastNoise = 1e-6
 )
 
+// A stroke moves five unknowns: the two valve groups of its end, the rings, the phase and the zero of its end.
+const (
+	sSuction = iota
+	sDischarge
+	sRings
+	sPhase
+	sZero
+	sUnknowns
+	sAreas = sRings + 1
+)
+
 // addStroke puts one stroke's points into the normal equations: every column cumulated by the trapezoidal rule where
 // it is a rate, then centred on the stroke, which is the free constant of integration. shift (degrees) and zero (Pa)
 // are taken off the grid and the pressures first.
-func (f *Fitter) addStroke(q *normal, in *Input, s stroke, shift float64, zero [2]float64) {
+func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift float64, zero [2]float64) {
 	n := s.To - s.From
 	if cap(f.rows) < n {
-		f.rows, f.y = make([][unknowns]float64, n), make([]float64, n)
+		f.rows, f.y = make([][sUnknowns]float64, n), make([]float64, n)
 	}
 	rows, y := f.rows[:n], f.y[:n]
 
-	noz := newNozzle(in.K)
-	other := 1 - s.end
-	suction, discharge := HS+2*s.end, HD+2*s.end
-	dth := in.Step / degPerRad
-	var before [unknowns]float64 // rates at the point before
-	var mean [unknowns]float64
-	meanY := 0.0
+	other, compress := 1-s.end, s.kind == Compression
+	rings := q.use[RG]
+	half := in.Step / degPerRad / 2
+	perK, perOmega := in.K, 1/in.omega(0)
+	shape := f.shapes.of(in, s.end, shift)
+	var before [sAreas]float64 // rates at the point before
+	var sum [sUnknowns]float64
+	sumY := 0.0
 	for j := range n {
 		i := s.From + j
-		p, v := in.P[s.end][i]-zero[s.end], in.V[s.end][i]
-		if shift != 0 {
-			v = in.Cylinder.Volume(s.end, in.deg(i)+shift)
+		v, lnV, slope := shape.at(i)
+		p := in.P[s.end][i] - zero[s.end]
+		lnP := math.Log(p)
+		own := st.at(p, lnP, compress)
+		if len(in.Omega) > 1 {
+			perOmega = 1 / in.Omega[i]
 		}
-		rt := in.rt(s.end, i, p)
-		vOmega := v * in.omega(i)
-		var rate [unknowns]float64
-		rate[suction] = in.K * noz.rate(p, rt, in.Ps, in.RZ*in.Ts, vOmega)
-		rate[discharge] = in.K * noz.rate(p, rt, in.Pd, in.RZ*in.Td, vOmega)
-		if q.use[RG] {
+		scale := perK * perOmega / v
+		var rate [sAreas]float64
+		rate[sSuction] = st.rate(&own, &st.suction, scale)
+		rate[sDischarge] = st.rate(&own, &st.discharge, scale)
+		if rings {
 			po := in.P[other][i] - zero[other]
-			rate[RG] = in.K * noz.rate(p, rt, po, in.rt(other, i, po), vOmega)
+			far := st.at(po, math.Log(po), !compress)
+			rate[sRings] = st.rate(&own, &far, scale)
 		}
-		rows[j] = [unknowns]float64{}
-		if j > 0 {
-			for c := range Paths {
-				rows[j][c] = rows[j-1][c] + dth*(before[c]+rate[c])/2
+		row := &rows[j]
+		if j == 0 {
+			*row = [sUnknowns]float64{}
+		} else {
+			last := &rows[j-1]
+			for c := range rate {
+				row[c] = last[c] + half*(before[c]+rate[c])
 			}
 		}
 		before = rate
 		// A grid that reads δ too low computes V at the wrong place: Y falls by k V′/V δ.
-		rows[j][phase] = -in.K * in.Cylinder.DVolume(s.end, in.deg(i)+shift) / v
+		row[sPhase] = -in.K * slope
 		// A transducer that reads z too high raises ln p by z/p.
-		rows[j][zeroHE+s.end] = 1 / p
-		y[j] = math.Log(p) + in.K*math.Log(v)
-		for c := range mean {
-			mean[c] += rows[j][c] / float64(n)
+		row[sZero] = own.inv
+		y[j] = lnP + in.K*lnV
+		for c, x := range row {
+			sum[c] += x
 		}
-		meanY += y[j] / float64(n)
+		sumY += y[j]
 	}
+	var mean [sUnknowns]float64
+	for c := range sum {
+		mean[c] = sum[c] / float64(n)
+	}
+	meanY := sumY / float64(n)
 	for j := range rows {
 		for c := range mean {
 			rows[j][c] -= mean[c]
 		}
-		q.add(&rows[j], y[j]-meanY)
+		y[j] -= meanY
 	}
+	q.addRows([sUnknowns]int{HS + 2*s.end, HD + 2*s.end, RG, phase, zeroHE + s.end}, rows, y)
 }
 
 // fill turns a solution into people's terms.
-func (f *Fitter) fill(out *Fit, in *Input, q *normal, sol *solution) {
+func (f *Fitter) fill(out *Fit, in *Input, st *states, q *normal, sol *solution) {
 	sd := func(u int) float64 { return out.sigma * math.Sqrt(sol.inv[u]) }
 	nan := math.NaN()
-	flow := in.massPerArea()
+	flow := [Paths]float64{nan, nan, nan, nan, nan}
+	if f.set.Mass {
+		flow = in.massPerArea(st)
+	}
 	for j := range Paths {
 		if !q.use[j] {
 			out.Area[j], out.SD[j], out.Mass[j] = nan, nan, nan
@@ -225,29 +257,30 @@ func (f *Fitter) fill(out *Fit, in *Input, q *normal, sol *solution) {
 
 // massPerArea gives the mass that one turn drives through one square metre of each path, kg/m². Where a valve is open
 // there is next to no pressure across it, so the whole turn may be counted.
-func (in *Input) massPerArea() (m [Paths]float64) {
-	noz := newNozzle(in.K)
-	flow := func(pa, rta, pb, rtb float64) float64 {
-		if pa < pb {
-			pa, rta, pb = pb, rtb, pa
+func (in *Input) massPerArea(st *states) (m [Paths]float64) {
+	flow := func(a, b gas) float64 {
+		if a.p < b.p {
+			a, b = b, a
 		}
-		return pa / math.Sqrt(rta) * noz.psi(pb/pa)
+		return a.p * math.Sqrt(st.n.square(b.p*a.inv, b.a*a.invA)/a.rt)
 	}
 	for end, p := range in.P {
 		for i := range p {
-			if deg := in.deg(i); deg < 0 || deg >= 360 {
+			deg := in.deg(i)
+			if deg < 0 || deg >= 360 {
 				continue
 			}
 			dt := in.Step / degPerRad / in.omega(i)
-			rt := in.rt(end, i, p[i])
+			own := st.at(p[i], math.Log(p[i]), compressing(end, deg))
 			if p[i] > in.Ps {
-				m[HS+2*end] += dt * flow(p[i], rt, in.Ps, in.RZ*in.Ts)
+				m[HS+2*end] += dt * flow(own, st.suction)
 			}
 			if p[i] < in.Pd {
-				m[HD+2*end] += dt * flow(p[i], rt, in.Pd, in.RZ*in.Td)
+				m[HD+2*end] += dt * flow(own, st.discharge)
 			}
 			if end == crank.HE && in.P[crank.CE] != nil {
-				m[RG] += dt * flow(p[i], rt, in.P[crank.CE][i], in.rt(crank.CE, i, in.P[crank.CE][i]))
+				po := in.P[crank.CE][i]
+				m[RG] += dt * flow(own, st.at(po, math.Log(po), compressing(crank.CE, deg)))
 			}
 		}
 	}

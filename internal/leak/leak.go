@@ -50,7 +50,7 @@ type Input struct {
 	Cylinder crank.Cylinder
 	Lo, Step float64
 	P        [2][]float64 // Pa absolute, per end; nil where there is no transducer
-	V        [2][]float64 // m³, per end, on the same grid
+	V        [2][]float64 // m³, per end, on the same grid: the volumes of Cylinder
 	Closed   [2][2]Range  // [end][stroke]: where both valve groups of the end are closed
 	Late     [2]bool      // the end's suction valves are held open into the compression stroke
 
@@ -68,6 +68,7 @@ type Settings struct {
 	PastDeadDC float64 // degrees kept away from the dead centre that a stroke starts from; default 4
 	ZeroSD     float64 // prior standard deviation of a pressure zero, share of Ps; default 0.01
 	LeastPts   int     // least points in a stroke; default 12
+	Mass       bool    // work out Fit.Mass too; it takes as long as the fit
 }
 
 func (s Settings) withDefaults() Settings {
@@ -94,7 +95,7 @@ type Fit struct {
 
 	Area, SD [Paths]float64 // m², effective (with the discharge coefficient in it); outflow and inflow alike count positive
 	Why      [Paths]string  // why an area is NaN
-	Mass     [Paths]float64 // kg per turn through the area over the whole turn (rings: both directions added); NaN as Area
+	Mass     [Paths]float64 // kg per turn through the area over the whole turn (rings: both directions added); NaN as Area, and without Settings.Mass
 
 	Phase, PhaseSD float64    // degrees to be added to the grid's angles
 	Zero, ZeroSD   [2]float64 // Pa that the transducer reads too high; NaN where the end gave no stroke

@@ -4,35 +4,27 @@ import "math"
 
 // nozzle holds what the flow through a small opening needs of the gas.
 type nozzle struct {
-	k, inv   float64 // exponent and 1/k
-	critical float64 // pressure ratio at which the flow chokes
-	scale    float64 // 2k/(k−1)
+	inv       float64 // 1/k
+	critical  float64 // pressure ratio at which the flow chokes
+	criticalA float64 // its power 1/k
+	scale     float64 // 2k/(k−1)
 }
 
 func newNozzle(k float64) nozzle {
-	return nozzle{k: k, inv: 1 / k, critical: math.Pow(2/(k+1), k/(k-1)), scale: 2 * k / (k - 1)}
+	c := math.Pow(2/(k+1), k/(k-1))
+	return nozzle{inv: 1 / k, critical: c, criticalA: math.Pow(c, 1/k), scale: 2 * k / (k - 1)}
 }
 
 // soft is the pressure difference (share of the upstream pressure) below which the flow is smoothed, so that its
 // slope stays finite where it turns round.
 const soft = 0.002
 
-// psi is the flow function of the pressure ratio r = downstream/upstream ≤ 1: the flow is A p ψ/√(RT).
-func (n nozzle) psi(r float64) float64 {
+// square is ψ² of the pressure ratio r = downstream/upstream ≤ 1 and a = r^(1/k): the flow is A p ψ/√(RT), with
+// ψ² = 2k/(k−1)·a·(a − r), choked at the critical ratio and smoothed.
+func (n *nozzle) square(r, a float64) float64 {
 	d := 1 - r
-	if d <= 0 {
-		return 0
+	if r < n.critical {
+		r, a = n.critical, n.criticalA
 	}
-	r = max(r, n.critical)
-	a := math.Pow(r, n.inv)
-	return math.Sqrt(n.scale*a*(a-r)) * math.Sqrt(d/(d+soft))
-}
-
-// rate gives g: how fast ln p rises per radian, per m² and per k, through an opening to a place at pOut and RTOut (R
-// times temperature). pIn and RTIn belong to the end, vOmega is its volume times the shaft speed.
-func (n nozzle) rate(pIn, rtIn, pOut, rtOut, vOmega float64) float64 {
-	if pIn >= pOut {
-		return -math.Sqrt(rtIn) * n.psi(pOut/pIn) / vOmega
-	}
-	return math.Sqrt(rtOut) * (pOut / pIn) * n.psi(pIn/pOut) / vOmega
+	return n.scale * a * max(a-r, 0) * (d / (d + soft)) // rounding may put a under r where they meet
 }

@@ -20,18 +20,34 @@ type normal struct {
 	use [unknowns]bool
 }
 
-func (q *normal) add(x *[unknowns]float64, y float64) {
-	for i := range unknowns {
-		if !q.use[i] {
+// addRows adds the points of one stroke; col says which unknown each of its columns belongs to, in rising order.
+func (q *normal) addRows(col [sUnknowns]int, rows [][sUnknowns]float64, y []float64) {
+	var a [sUnknowns][sUnknowns]float64
+	var b [sUnknowns]float64
+	yy := 0.0
+	for j := range rows {
+		x, y := &rows[j], y[j]
+		for i := range x {
+			for k := range i + 1 {
+				a[i][k] += x[i] * x[k]
+			}
+			b[i] += x[i] * y
+		}
+		yy += y * y
+	}
+	for i, u := range col {
+		if !q.use[u] {
 			continue
 		}
-		for j := 0; j <= i; j++ {
-			q.a[i][j] += x[i] * x[j]
+		for k := range i + 1 {
+			if q.use[col[k]] {
+				q.a[u][col[k]] += a[i][k]
+			}
 		}
-		q.b[i] += x[i] * y
+		q.b[u] += b[i]
 	}
-	q.yy += y * y
-	q.n++
+	q.yy += yy
+	q.n += len(rows)
 }
 
 // solution of a problem; unused unknowns are zero.

@@ -49,3 +49,13 @@ func TestSolveSameColumns(t *testing.T) {
 		t.Error("a column of zeros must be refused")
 	}
 }
+
+// add puts one point into the equations.
+func (q *normal) add(x *[unknowns]float64, y float64) {
+	col := [sUnknowns]int{HS, CD, RG, phase, zeroHE}
+	var row [1][sUnknowns]float64
+	for i, u := range col {
+		row[0][i] = x[u]
+	}
+	q.addRows(col, row[:], []float64{y})
+}

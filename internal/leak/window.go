@@ -107,16 +107,6 @@ func (in *Input) window(set Settings, end, kind int) (stroke, bool) {
 
 func usable(p float64) bool { return p > 0 && !math.IsInf(p, 0) }
 
-// rt estimates R·T inside an end at point i and pressure p: it enters as a square root only. While compressing, a little
-// warmer than the suction line at the start; while expanding, the discharge gas expanded.
-func (in *Input) rt(end, i int, p float64) float64 {
-	e := (in.K - 1) / in.K
-	if compressing(end, in.deg(i)) {
-		return in.RZ * 1.03 * in.Ts * math.Pow(p/in.Ps, e)
-	}
-	return in.RZ * in.Td * math.Pow(p/in.Pd, e)
-}
-
 func endName(end int) string {
 	if end == crank.CE {
 		return "crank end"

@@ -34,11 +34,11 @@ type Input struct {
 
 // Measurer computes the features of one machine. It keeps scratch and is not safe for concurrent use.
 type Measurer struct {
-	cfg    Config
-	layout Layout
-	index  []index
-	shapes []shape
-	fitter *leak.Fitter
+	cfg     Config
+	layout  Layout
+	index   []index
+	shapes  []shape
+	fitters []*leak.Fitter // one a throw: each keeps its cylinder's volumes
 
 	x, y, env []float64
 	loads     crank.Loads
@@ -57,7 +57,10 @@ func New(cfg Config) *Measurer {
 	if !(cfg.Atmosphere > 0) {
 		cfg.Atmosphere = 101325
 	}
-	m := &Measurer{cfg: cfg, fitter: leak.NewFitter(cfg.Leak), shapes: make([]shape, len(cfg.Machine.Throws))}
+	m := &Measurer{cfg: cfg, shapes: make([]shape, len(cfg.Machine.Throws))}
+	for range cfg.Machine.Throws {
+		m.fitters = append(m.fitters, leak.NewFitter(cfg.Leak))
+	}
 	m.layout, m.index = build(cfg.Machine)
 	return m
 }

@@ -50,7 +50,7 @@ func (m *Measurer) leaks(c *throwCtx) {
 		m.noFit(c, why)
 		return
 	}
-	fit := m.fitter.Fit(&in)
+	fit := m.fitters[c.i].Fit(&in)
 	if !fit.Valid() {
 		m.noFit(c, fit.Reason)
 		return
