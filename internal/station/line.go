@@ -10,6 +10,7 @@ import (
 	"lapwing/internal/duty"
 	"lapwing/internal/frame"
 	"lapwing/internal/measure"
+	"lapwing/internal/ripple"
 	"lapwing/internal/skid"
 	"lapwing/internal/turn"
 	"lapwing/internal/verdict"
@@ -27,6 +28,7 @@ type Line struct {
 
 	frames   *frame.Assembler
 	turns    *turn.Converter
+	uneven   *ripple.Book // nil: the ripple of the phase reference is all there is
 	windows  *window.Tracker
 	measures *measure.Measurer
 	gas      *gasBook
@@ -44,6 +46,7 @@ type Line struct {
 
 	vec    measure.Vector
 	win    []window.Input
+	behind []float64      // by throw: Pa, the suction line
 	pocket [][2][]float64 // by throw and end: the clearances that the load steps give
 	mea    []measure.Input
 	points []duty.Point
@@ -94,7 +97,14 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 	if l.frames, err = frame.New(frameConfig(sk, info)); err != nil {
 		return nil, err
 	}
-	if l.turns, err = turn.New(turnConfig(sk, info)); err != nil {
+	marks := turnConfig(sk, info)
+	if l.uneven, err = rippleBook(sk, len(marks.Marks.Inner)+1); err != nil {
+		return nil, err
+	}
+	if l.uneven != nil {
+		marks.Marks.Shaft = l.shaft
+	}
+	if l.turns, err = turn.New(marks); err != nil {
 		return nil, err
 	}
 	l.measures = measure.New(measure.Config{Machine: measureMachine(sk), Atmosphere: sk.Machine.Atmosphere})
@@ -105,7 +115,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 		l.watches = append(l.watches, duty.NewWatch(duty.WatchConfig{MinRPM: sk.Machine.MinRPM * 0.97, MaxRPM: sk.Machine.MaxRPM * 1.03, Steps: dutySteps(sk, i)}))
 	}
 	n := len(sk.Throws)
-	l.pocket = clearances(sk)
+	l.pocket, l.behind = clearances(sk), make([]float64, n)
 	l.win, l.mea, l.points, l.steady = make([]window.Input, n), make([]measure.Input, n), make([]duty.Point, n), make([]int, n)
 	if l.limits, err = limitWatches(sk, l.layout); err != nil {
 		return nil, err
@@ -236,11 +246,29 @@ func (l *Line) fromStart(r *wire.Turn) {
 	}
 }
 
+// shaft gives the ripple in force at a time of the sample clock: that of the load step in the process values then.
+func (l *Line) shaft(t float64) turn.Shaft {
+	step := noStep
+	if p := l.proc(t); p.Known {
+		step = p.Step
+	}
+	return l.uneven.For(step)
+}
+
+// noStep is a code that no skid file can give a load step.
+const noStep = -1
+
 func (l *Line) turn(t *turn.Turn) {
 	o := Output{Vector: &l.vec, Points: l.points}
 	l.count.Turns++
 	proc := l.proc(t.Time)
 	l.prepare(t, proc)
+	if l.uneven != nil && t.Valid() {
+		for i := range l.behind {
+			l.behind[i] = l.win[i].LinePs
+		}
+		l.uneven.Learn(t, l.behind) // before anybody uses the turn's uncertainty
+	}
 	w := l.windows.Track(t, l.win)
 	if t.Valid() {
 		l.refine(w)

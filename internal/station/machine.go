@@ -9,6 +9,7 @@ import (
 	"lapwing/internal/duty"
 	"lapwing/internal/frame"
 	"lapwing/internal/measure"
+	"lapwing/internal/ripple"
 	"lapwing/internal/skid"
 	"lapwing/internal/turn"
 	"lapwing/internal/verdict"
@@ -33,9 +34,7 @@ func frameConfig(sk *skid.Skid, info acq.Info) frame.Config {
 func turnConfig(sk *skid.Skid, info acq.Info) turn.Config {
 	c := turn.Config{Rate: info.Rate, Step: sk.Detection.GridDeg, Marks: turn.Marks{U: sk.Phase.Uncertainty},
 		ImpactBand: sk.Detection.ImpactBand, LeakBand: sk.Detection.LeakBand}
-	for _, r := range sk.Phase.Ripple {
-		c.Marks.Ripple = append(c.Marks.Ripple, turn.Ripple{Order: r.Order, Amp: r.Amp, PhaseDeg: r.Phase})
-	}
+	c.Marks.Ripple = harmonics(sk.Phase.Ripple)
 	channel := func(id string) turn.Channel {
 		ch, ok := sk.ChannelByID(id)
 		if !ok {
@@ -59,6 +58,50 @@ func turnConfig(sk *skid.Skid, info acq.Info) turn.Config {
 		c.Throws = append(c.Throws, tc)
 	}
 	return c
+}
+
+func harmonics(list []skid.Ripple) (out []turn.Ripple) {
+	for _, r := range list {
+		out = append(out, turn.Ripple{Order: r.Order, Amp: r.Amp, PhaseDeg: r.Phase})
+	}
+	return out
+}
+
+// manyMarks per turn leave no room for a ripple to matter: none is computed then.
+const manyMarks = 6
+
+// rippleBook is what is known of the ripple at each load step; nil when the one of the phase reference is all.
+func rippleBook(sk *skid.Skid, marks int) (*ripple.Book, error) {
+	own := map[int][]turn.Ripple{}
+	for _, s := range sk.Steps {
+		if s.Ripple != nil {
+			own[s.Code] = harmonics(s.Ripple)
+		}
+	}
+	general := harmonics(sk.Phase.Ripple)
+	c := ripple.Config{U: sk.Phase.Uncertainty, At: func(step int) []turn.Ripple {
+		if r, ok := own[step]; ok {
+			return r
+		}
+		return general
+	}}
+	computes := sk.ComputesRipple() && marks < manyMarks
+	if !computes && len(own) == 0 {
+		return nil, nil
+	}
+	if computes {
+		m := ripple.Machine{Inertia: sk.Machine.Inertia, Atmosphere: sk.Machine.Atmosphere}
+		for i := range sk.Throws {
+			t := &sk.Throws[i]
+			m.Throws = append(m.Throws, ripple.Throw{Cylinder: t.Cylinder, DeadCentreDeg: t.DeadCentre,
+				Works: [2]bool{t.Ends[crank.HE].Works, t.Ends[crank.CE].Works}, BlindAtSuction: t.BlindAtSuction})
+		}
+		var err error
+		if c.Torque, err = ripple.NewTorque(m); err != nil {
+			return nil, err
+		}
+	}
+	return ripple.NewBook(c), nil
 }
 
 func measureMachine(sk *skid.Skid) measure.Machine {
