@@ -86,7 +86,7 @@ func TestComputedRippleAgainstTheEnergyOfTheShaft(t *testing.T) {
 		{"inertia 15 % too low", unloaded, 700, 0.8, 0.85, 0.3},
 	} {
 		m := worked()
-		r := newRun(m, 25600, c.rpm, 14, c.loads)
+		r := newRun(m, 12800, c.rpm, 14, c.loads)
 		before, u := angles(t, m, r, turn.Marks{}, nil)
 		if u[8] != 1.2 {
 			t.Errorf("%s: without ripple %g° are stated", c.name, u[8])
@@ -124,7 +124,7 @@ func TestComputedRippleAgainstTheEnergyOfTheShaft(t *testing.T) {
 // one's ripple is still there on the way back.
 func TestUncertaintyWidensWhileTheLoadMoves(t *testing.T) {
 	m := worked()
-	r := newRun(m, 25600, 700, 12, unloaded, full, unloaded)
+	r := newRun(m, 12800, 700, 12, unloaded, full, unloaded)
 	q, err := NewTorque(m)
 	if err != nil {
 		t.Fatal(err)
