@@ -68,7 +68,7 @@ func TestSystemKilledAgainAndAgain(t *testing.T) {
 	}
 
 	p := boot("--source", "model:swings", "--learn", "200")
-	until(t, 90*time.Second, "a baseline is learnt", func() bool { return strings.Contains(p.err.String(), `msg="baseline learnt"`) })
+	p.until(90*time.Second, "a baseline is learnt", func() bool { return strings.Contains(p.err.String(), `msg="baseline learnt"`) })
 	if code := p.terminate(20 * time.Second); code != 0 {
 		t.Fatalf("exit %d after the learning run", code)
 	}
@@ -84,7 +84,7 @@ func TestSystemKilledAgainAndAgain(t *testing.T) {
 			within = []time.Duration{3 * time.Millisecond, 30 * time.Millisecond, 600 * time.Millisecond}[rng.IntN(3)]
 			wills++
 		}
-		until(t, 60*time.Second, fmt.Sprintf("round %d: %d transitions", round, after), func() bool { return len(committed(p)) >= after })
+		p.until(60*time.Second, fmt.Sprintf("round %d: %d transitions", round, after), func() bool { return len(committed(p)) >= after })
 		<-time.After(time.Duration(rng.Int64N(int64(within)))) // the moment is the test's own choice; nothing is waited for
 		p.kill()
 		known = append(known, committed(p)...)

@@ -43,7 +43,7 @@ func TestSystemControlRoom(t *testing.T) {
 		"--source", "model:grow", "--fast", "--learn", "440")
 	page := pageOf(t, d)
 
-	until(t, 90*time.Second, "the baseline is learnt, and health says so", func() bool {
+	d.until(90*time.Second, "the baseline is learnt, and health says so", func() bool {
 		m, ok := sub.newest("marsh-end-c1/health")
 		return ok && m.health(t).Baseline && m.health(t).State == "running"
 	})
@@ -58,12 +58,12 @@ func TestSystemControlRoom(t *testing.T) {
 	}
 
 	// The leak begins at 142 s of machine time. From just before until the alarm stands in the journal nobody listens.
-	until(t, 60*time.Second, "the leak is about to begin", func() bool {
+	d.until(60*time.Second, "the leak is about to begin", func() bool {
 		n, ok := now(t, page)
 		return ok && n.Latest != nil && n.Latest.TimeS >= 140
 	})
 	b.kill()
-	until(t, 60*time.Second, "an alarm is in the journal", func() bool {
+	d.until(60*time.Second, "an alarm is in the journal", func() bool {
 		n, ok := now(t, page)
 		return ok && len(n.Journal) > 0
 	})
@@ -105,7 +105,7 @@ func TestSystemControlRoom(t *testing.T) {
 	d = start(t, nil, built(t, "lapwingd"), "--skid", skid, "--state", state, "--broker", b.url(), "--listen", "127.0.0.1:0", "--source", "model:swings")
 	page = pageOf(t, d)
 	line, fetched := pullFrom(t, dir, "--daemon", page)
-	until(t, 30*time.Second, "the second daemon says that it runs", func() bool {
+	d.until(30*time.Second, "the second daemon says that it runs", func() bool {
 		m, ok := sub.newest("/health")
 		return ok && m.health(t).State == "running"
 	})

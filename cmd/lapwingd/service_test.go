@@ -97,9 +97,9 @@ func TestSystemService(t *testing.T) {
 	m := newManager(t)
 	cmd := unitCommand(t, "/usr/bin/lapwingd", built(t, "lapwingd"), "/etc/lapwing/skid.yaml", skid, "/var/lib/lapwing", filepath.Join(dir, "state"), "${LAPWING_SOURCE}", "model:swings")
 	d := start(t, []string{"NOTIFY_SOCKET=" + m.path, "WATCHDOG_USEC=600000"}, cmd[0], cmd[1:]...)
-	until(t, 20*time.Second, "READY=1", func() bool { return count(m.got(), "READY=1") > 0 })
-	until(t, 20*time.Second, "four times WATCHDOG=1 while samples flow", func() bool { return count(m.got(), "WATCHDOG=1") >= 4 })
-	until(t, 20*time.Second, "the status says that it runs without a baseline", func() bool {
+	d.until(20*time.Second, "READY=1", func() bool { return count(m.got(), "READY=1") > 0 })
+	d.until(20*time.Second, "four times WATCHDOG=1 while samples flow", func() bool { return count(m.got(), "WATCHDOG=1") >= 4 })
+	d.until(20*time.Second, "the status says that it runs without a baseline", func() bool {
 		return slices.ContainsFunc(m.got(), func(s string) bool {
 			return strings.HasPrefix(s, "STATUS=running: ") && strings.Contains(s, "no baseline")
 		})

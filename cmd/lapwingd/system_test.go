@@ -172,6 +172,19 @@ func (p *program) running() bool {
 	}
 }
 
+// until is until for what only comes while the program runs: when it ends, there is nothing to wait for.
+func (p *program) until(limit time.Duration, what string, ok func() bool) {
+	p.t.Helper()
+	until(p.t, limit, what, func() bool {
+		alive := p.running()
+		done := ok()
+		if !done && !alive {
+			p.t.Fatalf("%s ended with exit code %d before this: %s", p.name, p.code, what)
+		}
+		return done
+	})
+}
+
 // kill is SIGKILL and the wait for its effect.
 func (p *program) kill() {
 	_ = p.cmd.Process.Kill()
@@ -214,7 +227,7 @@ func skidFile(t *testing.T, dir string, changes ...string) string {
 		if n := len(key.FindAll(raw, -1)); n != 1 {
 			t.Fatalf("the example skid file has %d keys %s", n, changes[i])
 		}
-		raw = key.ReplaceAll(raw, []byte("${1} "+changes[i+1]))
+		raw = key.ReplaceAll(raw, []byte("${1} "+changes[i+1]+" "))
 	}
 	path := filepath.Join(dir, "skid.yaml")
 	if err := os.WriteFile(path, raw, 0o644); err != nil {
@@ -227,7 +240,7 @@ func skidFile(t *testing.T, dir string, changes ...string) string {
 func pageOf(t *testing.T, p *program) string {
 	t.Helper()
 	var url string
-	until(t, 20*time.Second, "the daemon says where its page is", func() bool {
+	p.until(20*time.Second, "the daemon says where its page is", func() bool {
 		_, rest, ok := strings.Cut(p.err.String(), `msg="status page" url=`)
 		if !ok || !strings.Contains(rest, "\n") {
 			return false
