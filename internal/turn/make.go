@@ -105,7 +105,7 @@ func (c *Converter) ask(r *record) (u float64, why string) {
 // reach gives the half-open range of sample numbers that the kernels and bins of a grid touch; pos is relative.
 func (c *Converter) reach(g *grid, pos []float64) (lo, hi int64) {
 	n := len(pos) - 1
-	edge := func(i int) float64 { return reachSigmas*max(width(g.Step*c.perDeg[i]), c.least) + 2 }
+	edge := func(i int) float64 { return reachSigmas*roundedUp*max(width(g.Step*c.perDeg[i]), c.least) + 2 }
 	lo = min(int64(math.Floor(pos[0]-edge(0))), first(pos))
 	hi = max(ceil(pos[n]+edge(n)), end(pos)) + 1
 	return lo + c.m.ref, hi + c.m.ref
@@ -127,21 +127,27 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 	}
 	off := c.m.ref - c.base
 	for i, p := range t.Pos {
-		laid := 0.0 // both ends share the kernel unless their passages ask for different widths
+		laid, shaped := 0.0, Passage{} // both ends share the kernel unless their passages differ
+		least := width(g.Step * c.perDeg[i])
 		for e, s := range ends {
 			if s == nil {
 				continue
 			}
-			sigma := max(width(g.Step*c.perDeg[i]), s.least)
-			if sigma != laid {
+			sigma := max(least, s.least)
+			fresh := sigma != laid
+			if fresh {
 				c.k.lay(p, sigma)
 				laid = sigma
 			}
-			if s.ch.Passage.Hz == 0 {
-				t.P[e][i] = c.k.value(s.x[c.k.first+off:])
-			} else {
-				t.P[e][i] = c.k.inverse(s.x[c.k.first+off:], s.ch.Passage, sigma, c.cfg.Rate)
+			if way := s.ch.Passage; fresh || way != shaped {
+				shaped = way
+				if way.Hz == 0 {
+					c.k.line()
+				} else {
+					c.k.undo(way, sigma, c.cfg.Rate)
+				}
 			}
+			t.P[e][i] = c.k.value(s.x[c.k.first+off:])
 		}
 	}
 }

@@ -83,8 +83,9 @@ func TestKernelResponse(t *testing.T) {
 		for frac := -0.5; frac <= 0.5; frac += 0.05 {
 			var x, y []float64
 			k.lay(frac, sigma)
+			k.line()
 			for i := range k.w {
-				sin, cos := math.Sincos(2 * math.Pi * f * (k.d0 + float64(i)))
+				sin, cos := math.Sincos(2 * math.Pi * f * (k.d - float64(k.reach) + float64(i)))
 				x, y = append(x, cos), append(y, sin)
 			}
 			worst = math.Min(worst, math.Hypot(k.value(x), k.value(y)))
@@ -112,6 +113,7 @@ func TestKernelExactForLines(t *testing.T) {
 		b := rapid.Float64Range(-1e4, 1e4).Draw(t, "b")
 		var k kernel
 		k.lay(pos, sigma)
+		k.line()
 		var x []float64
 		for i := range k.w {
 			x = append(x, a+b*float64(k.first+int64(i)))
@@ -130,6 +132,7 @@ func TestKernelBiasOfSteepStroke(t *testing.T) {
 	var k kernel
 	for frac := -0.5; frac <= 0.5; frac += 0.1 {
 		k.lay(frac, sigma)
+		k.line()
 		var x []float64
 		for i := range k.w {
 			x = append(x, math.Exp(float64(k.first+int64(i))/perDeg/15))
