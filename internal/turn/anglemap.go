@@ -17,7 +17,8 @@ type angleMap struct {
 	deg    []float64 // φ of the knots
 	pos    []float64 // their sample positions after ref
 	ref    int64
-	inTurn int // marks per revolution
+	inTurn int     // marks per revolution, lost ones among them
+	gap    float64 // degrees, the widest stretch without a mark
 }
 
 // warp gives φ(θ) and dφ/dθ.
@@ -38,6 +39,8 @@ func (m *angleMap) lay(recs []*record) string {
 	m.deg, m.pos = m.deg[:0], m.pos[:0]
 	m.ref = int64(math.Floor(recs[0].mark0)) // of the marks, not of the blocks: the bits must not depend on how frames overlap
 	m.inTurn = len(recs[0].inner) + 1
+	m.gap = 0
+	last := -360.0
 	if m.marks.Inner != nil && len(m.marks.Inner)+1 != m.inTurn {
 		return "phase: number of marks in a turn is not the one configured"
 	}
@@ -46,21 +49,30 @@ func (m *angleMap) lay(recs []*record) string {
 			return "phase: number of marks in a turn changed"
 		}
 		turn := 360 * float64(j-1)
+		m.gap, last = max(m.gap, turn-last), turn
 		m.add(turn, r.mark0)
 		for i, pos := range r.inner {
+			if math.IsNaN(pos) { // a lost tooth: the spline bridges it
+				continue
+			}
 			at := 360 * float64(i+1) / float64(m.inTurn)
 			if m.marks.Inner != nil {
 				at = m.marks.Inner[i]
 			}
+			m.gap, last = max(m.gap, turn+at-last), turn+at
 			m.add(turn+at, pos)
 		}
 	}
+	m.gap = max(m.gap, 360*float64(len(recs)-1)-last)
 	m.add(360*float64(len(recs)-1), recs[len(recs)-1].mark1)
 	if err := m.curve.FitSpline(m.deg, m.pos); err != nil {
 		return "phase: marks out of order"
 	}
 	return ""
 }
+
+// even gives how many evenly spaced marks a turn would leave no wider gap: what the uncertainty goes by.
+func (m *angleMap) even() int { return int(360/m.gap + 1e-9) }
 
 func (m *angleMap) add(deg, pos float64) {
 	phi, _ := warp(m.ripple, deg)

@@ -50,7 +50,7 @@ func (c *Converter) convert(recs []*record) string {
 		return why
 	}
 	if u == 0 {
-		u = Uncertainty(c.m.inTurn, knowsRipple(c.m.ripple))
+		u = Uncertainty(c.m.even(), knowsRipple(c.m.ripple))
 	}
 	for k := range c.throws {
 		t, g := &c.throws[k], &c.grids[k]
