@@ -39,6 +39,9 @@ var floors = []floor{
 	{"leak_noise_db", 0.6, 0},
 	{"leak_shape", 0.02, 0},
 	{"impact_ln", 0.10, 0}, // openings; closings below
+	{"impact_norm_ln", 0.10, 0},
+	{"extra_hits_45", 2.5, 0}, // ten in 45 turns are then three spreads over a healthy rate of 0.05 a turn (vibration.md section 4)
+	{"pin_*", 1, 0},
 	{"peak_g", 0, 0.15},
 	{"rms_g", 0, 0.12},
 	{"lag_ms", 0.03, 0.10}, // healthy blocks spread over −27…+20 % under load swings (vibration.md section 4)

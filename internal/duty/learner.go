@@ -83,7 +83,7 @@ func (l *Learner) lesson(throw, step int, inferred bool) *lesson {
 	}
 	c := &lesson{throw: throw, step: step, inferred: inferred, stride: 1}
 	for i, f := range l.layout {
-		if f.Throw == throw {
+		if f.Throw == throw && !f.Display {
 			c.features = append(c.features, i)
 		}
 	}
@@ -273,7 +273,7 @@ func (c *lesson) fitFeature(f measure.Feature, k int, x [][numTerms]float64) (m 
 	for j, i := range idx {
 		xs[j], ys[j] = x[i], c.values[i][k]
 		for t := range xs[j] {
-			if !sh.On[t] { // a feature that comes and goes bears fewer terms than its cell
+			if !sh.On[t] || f.Flat && t > 0 { // a feature that comes and goes bears fewer terms than its cell
 				xs[j][t] = 0
 			}
 		}

@@ -29,7 +29,7 @@ func (b *Baseline) Reference(layout measure.Layout) (*Reference, error) {
 	for i := range b.Cells {
 		c := bound{Cell: &b.Cells[i]}
 		for j, f := range layout {
-			if f.Throw == c.Throw {
+			if f.Throw == c.Throw && !f.Display {
 				c.features = append(c.features, j)
 				c.models = append(c.models, c.model(f.Subject, f.Name))
 			}

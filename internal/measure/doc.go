@@ -56,6 +56,8 @@
 //	gas_load_min_kn
 //	reversal_deg              longest unbroken stay of the pin load in its shorter direction
 //	reversal_percent          peak of the lesser direction over that of the greater
+//	pin_pulls_deg             the pin load goes from compression to tension; absent unless it does so once a turn
+//	pin_pushes_deg            back to compression
 //	power_kw                  both ends
 //	capacity_kg_h             both ends, by suction; an idle end counts nothing
 //	leak_phase_deg            phase shift by the leak fit
@@ -67,7 +69,22 @@
 //	rms_g                     effective acceleration in the window; likewise
 //	onset_deg                 first envelope over max(0.35 peak, 4 backgrounds); absent where another event may be meant
 //	lag_ms                    onset after the angle that the pressure shows
-//	impact_ln                 ln √(mean square over 3 ms from the onset − background²), m/s²; absent under 6 dB
+//	impact_ln                 ln √(mean square over 3 ms from the onset − background²), m/s²; absent under 6 dB; where two
+//	                          events ring into each other by templates, if these are different enough (see Sharing)
+//	centroid_deg              middle of the energy of these 3 ms
+//	crest                     peak over effective value of these 3 ms
+//	ringdown_ms               time constant of the envelope's decay, from its peak to max(5 % of it, 3 backgrounds)
+//	band_low_db               mean square of these 3 ms at 2 to 5 kHz, dB over 1 (m/s²)²; no background removed
+//	band_mid_db               at 5 to 10 kHz
+//	band_high_db              at 10 to 20 kHz
+//
+// and of openings (t1.he.suction.opens, t1.he.discharge.opens):
+//
+//	opening_slope_bar_s       slope of the cylinder pressure in time, line over 7 to 1.5 degrees before the opening (class pressure)
+//	impact_norm_ln            impact_ln − 0.45 ln(slope in bar/s): stop impacts follow the slope
+//	extra_hits                peaks over 2.5 times the median envelope 0.4 to 1.6 ms before them, from 2 ms to 42 degrees after
+//	                          the onset, known events of all throws left out
+//	extra_hits_45             their sum over the last 45 turns that could be heard
 //
 // # Features of a leak path (subject t1.he.suction, t1.he.discharge, t1.ce.…, t1.rings)
 //

@@ -141,6 +141,8 @@ const (
 	tGasMin
 	tReversal
 	tReversalShare
+	tPinPulls
+	tPinPushes
 	tPower
 	tCapacity
 	tLeakPhase
@@ -156,6 +158,8 @@ func throwDefs() [throwCount]def {
 		tGasMin:        {"gas_load_min_kn", Pressure, kilo, 0, "least gas rod load, tension negative"},
 		tReversal:      {"reversal_deg", Pressure, one, 0, "longest unbroken stay of the pin load in its shorter direction"},
 		tReversalShare: {"reversal_percent", Pressure, percent, 0, "peak of the pin load's lesser direction over that of the greater"},
+		tPinPulls:      {"pin_pulls_deg", Pressure, one, 0, "the pin load turns from compression to tension"},
+		tPinPushes:     {"pin_pushes_deg", Pressure, one, 0, "the pin load turns from tension to compression"},
 		tPower:         {"power_kw", Pressure, kilo, 0, "indicated power of both ends"},
 		tCapacity:      {"capacity_kg_h", Pressure, perHour, 0, "capacity by suction of both ends"},
 		tLeakPhase:     {"leak_phase_deg", Pressure, one, 0, "phase shift that the leak fit finds, to be added to the angles"},
@@ -170,17 +174,51 @@ const (
 	vOnset
 	vLag
 	vImpact
+	vCentroid
+	vCrest
+	vRing
+	vBandLow
+	vBandMid
+	vBandHigh
+	impactFeatures
+)
+
+// Of openings only.
+const (
+	vSlope = impactFeatures + iota
+	vNorm
+	vHits
+	vHits45
 	eventCount
 )
 
 func eventDefs() [eventCount]def {
 	return [eventCount]def{
-		vPeak:   {"peak_g", Vibration, gee, 0, "largest acceleration in the window"},
-		vRMS:    {"rms_g", Vibration, gee, 0, "effective acceleration in the window"},
-		vOnset:  {"onset_deg", Vibration, one, 0, "angle at which the impact begins"},
-		vLag:    {"lag_ms", Vibration, 1e3, 0, "impact after the pressure's event"},
-		vImpact: {"impact_ln", Vibration, one, 0, "ln of the effective acceleration in m/s² over 3 ms from the onset, background removed"},
+		vPeak:     {"peak_g", Vibration, gee, 0, "largest acceleration in the window"},
+		vRMS:      {"rms_g", Vibration, gee, 0, "effective acceleration in the window"},
+		vOnset:    {"onset_deg", Vibration, one, 0, "angle at which the impact begins"},
+		vLag:      {"lag_ms", Vibration, 1e3, 0, "impact after the pressure's event"},
+		vImpact:   {"impact_ln", Vibration, one, 0, "ln of the effective acceleration in m/s² over 3 ms from the onset, background removed"},
+		vCentroid: {"centroid_deg", Vibration, one, 0, "middle of the impact's energy"},
+		vCrest:    {"crest", Vibration, one, 0, "peak over effective acceleration of the impact"},
+		vRing:     {"ringdown_ms", Vibration, 1e3, 0, "time constant of the impact's decay"},
+		vBandLow:  {"band_low_db", Vibration, one, 0, "impact at 2 to 5 kHz, dB over 1 (m/s²)²"},
+		vBandMid:  {"band_mid_db", Vibration, one, 0, "impact at 5 to 10 kHz, dB over 1 (m/s²)²"},
+		vBandHigh: {"band_high_db", Vibration, one, 0, "impact at 10 to 20 kHz, dB over 1 (m/s²)²"},
+		vSlope:    {"opening_slope_bar_s", Pressure, bar, 0, "slope of the cylinder pressure ahead of the opening"},
+		vNorm:     {"impact_norm_ln", Vibration, one, 0, "impact_ln less what the pressure slope at opening gives it"},
+		vHits:     {"extra_hits", Vibration, one, 0, "hits after the opening"},
+		vHits45:   {"extra_hits_45", Vibration, one, 0, "hits after the opening in the last 45 turns that could be heard"},
 	}
+}
+
+// forTheEye are the features that no baseline is learnt of.
+func forTheEye(name string) bool {
+	switch name {
+	case "centroid_deg", "crest", "ringdown_ms", "band_low_db", "band_mid_db", "band_high_db", "opening_slope_bar_s", "extra_hits":
+		return true
+	}
+	return false
 }
 
 // Features of a leak path, subject t1.he.suction … t1.rings.
@@ -266,7 +304,7 @@ func build(m Machine) (Layout, []index) {
 			at := len(l)
 			for _, d := range defs {
 				l = append(l, Feature{Subject: subject, Name: d.name, What: d.what, Class: d.class,
-					Throw: i, End: end, Scale: d.scale, Shift: d.shift})
+					Throw: i, End: end, Scale: d.scale, Shift: d.shift, Display: forTheEye(d.name), Flat: d.name == "impact_norm_ln" || d.name == "extra_hits_45"})
 			}
 			return at
 		}
@@ -291,7 +329,11 @@ func build(m Machine) (Layout, []index) {
 		for e := range th.Ends {
 			for k := range window.Event(window.Events) {
 				if th.Acoustic && th.Ends[e].Works {
-					ix.event[e][k] = add(th.ID+"."+EndName(e)+"."+EventName(k), e, vd[:])
+					defs := vd[:impactFeatures]
+					if opening(k) {
+						defs = vd[:]
+					}
+					ix.event[e][k] = add(th.ID+"."+EndName(e)+"."+EventName(k), e, defs)
 				}
 			}
 		}

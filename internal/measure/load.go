@@ -4,6 +4,8 @@ import (
 	"lapwing/internal/crank"
 )
 
+const whySigns = "the pin load does not change its sign just once each way"
+
 // loadsOf gives the rod loads of a throw and their reversal. An end that does no work by design is held at suction
 // pressure or at the atmosphere, as the machine is built; a working end without a transducer leaves the loads unknown.
 func (m *Measurer) loadsOf(c *throwCtx) {
@@ -45,10 +47,17 @@ func (m *Measurer) loadsOf(c *throwCtx) {
 	r := crank.Reverse(m.loads.Pin)
 	c.dst.set(at+tReversal, r.Longest)
 	c.dst.set(at+tReversalShare, r.Share)
+	pulls, pushes, ok := signChanges(m.loads.Pin, g.Step)
+	c.dst.absent(at+tPinPulls, whySigns)
+	c.dst.absent(at+tPinPushes, whySigns)
+	if ok {
+		c.dst.set(at+tPinPulls, g.At(c.i0)+pulls)
+		c.dst.set(at+tPinPushes, g.At(c.i0)+pushes)
+	}
 }
 
 func (m *Measurer) noLoads(c *throwCtx, why string) {
-	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalShare} {
+	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalShare, tPinPulls, tPinPushes} {
 		c.dst.absent(c.ix.throw+k, why)
 	}
 }
@@ -59,4 +68,21 @@ func extremes(x []float64) (lo, hi float64) {
 		lo, hi = min(lo, v), max(hi, v)
 	}
 	return lo, hi
+}
+
+// signChanges gives the degrees at which a load over one turn goes negative and positive; ok when it does each once.
+func signChanges(load []float64, step float64) (falls, rises float64, ok bool) {
+	nf, nr := 0, 0
+	for i, a := range load {
+		b := load[(i+1)%len(load)]
+		switch {
+		case a > 0 && b <= 0:
+			falls = step * (float64(i) + a/(a-b))
+			nf++
+		case a <= 0 && b > 0:
+			rises = step * (float64(i) + a/(a-b))
+			nr++
+		}
+	}
+	return falls, rises, nf == 1 && nr == 1
 }

@@ -3,6 +3,8 @@ package measure
 import (
 	"math"
 
+	"gonum.org/v1/gonum/dsp/fourier"
+
 	"lapwing/internal/crank"
 	"lapwing/internal/dsp"
 	"lapwing/internal/leak"
@@ -40,9 +42,20 @@ type Measurer struct {
 	shapes  []shape
 	fitters []*leak.Fitter // one a throw: each keeps its cylinder's volumes
 
-	x, y, env []float64
-	loads     crank.Loads
-	masked    []bool
+	x, y, env    []float64
+	loads        crank.Loads
+	masked, busy []bool
+
+	ctx    []throwCtx
+	memory []ThrowMemory
+	ffts   []*fourier.FFT
+	padded []float64
+	coeff  []complex128
+	spec   spectra
+	cells  []float64
+	back   []float64
+	mix    mix
+	pairs  []mixture
 }
 
 // shape caches the volumes of a throw's cylinder on the grid.
@@ -62,6 +75,10 @@ func New(cfg Config) *Measurer {
 		m.fitters = append(m.fitters, leak.NewFitter(cfg.Leak))
 	}
 	m.layout, m.index = build(cfg.Machine)
+	m.ctx, m.memory = make([]throwCtx, len(cfg.Machine.Throws)), make([]ThrowMemory, len(cfg.Machine.Throws))
+	for i := range m.memory {
+		m.memory[i].ID = cfg.Machine.Throws[i].ID
+	}
 	return m
 }
 
@@ -96,6 +113,7 @@ type throwCtx struct {
 	v      [2][]float64
 	i0, i1 int // grid points of 0° and 360°
 	hz     float64
+	heard  [2][window.Events]burst
 }
 
 func (d *Vector) set(i int, x float64) {
@@ -116,6 +134,11 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 		dst.V, dst.Why = make([]float64, n), make([]string, n)
 	}
 	dst.V, dst.Why = dst.V[:n], dst.Why[:n]
+	if cap(dst.Marks) < len(m.index) {
+		dst.Marks = make([][2][window.Events]Mark, len(m.index))
+	}
+	dst.Marks = dst.Marks[:len(m.index)]
+	clear(dst.Marks)
 	dst.Turn, dst.Seq0, dst.Seq1, dst.Time, dst.RPM = t.Number, t.Seq0, t.Seq1, t.Time, t.RPM
 	why := whyNotReached
 	if !t.Valid() {
@@ -128,27 +151,35 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 		return
 	}
 	m.covers(dst, in)
+	clear(m.ctx)
 	for i := range m.index {
 		if i >= len(t.Throws) || i >= len(in) || i >= len(w.Throws) {
 			m.all(dst, i, whyNoInput)
 			continue
 		}
 		th := &t.Throws[i]
-		c := throwCtx{i: i, dst: dst, ix: &m.index[i], th: th, w: &w.Throws[i], in: &in[i], hz: th.RPM / 60}
+		c := &m.ctx[i]
+		*c = throwCtx{i: i, dst: dst, ix: &m.index[i], th: th, w: &w.Throws[i], in: &in[i], hz: th.RPM / 60}
 		c.i0, c.i1 = int(math.Round(th.Grid.Index(0))), int(math.Round(th.Grid.Index(360)))
 		if c.i0 < 0 || c.i1 >= th.Grid.N || len(th.Pos) != th.Grid.N || !(c.hz > 0) {
 			m.all(dst, i, whySpeed)
+			c.th = nil
 			continue
 		}
 		c.v = m.volumes(i, &in[i].Cylinder, th.Grid)
 		for e := range c.v {
-			m.end(&c, e)
+			m.end(c, e)
 		}
-		m.loadsOf(&c)
-		m.sums(&c)
-		m.leaks(&c)
-		m.events(&c)
-		m.noise(&c, t, w, i)
+		m.loadsOf(c)
+		m.sums(c)
+		m.leaks(c)
+		m.listenAll(c)
+	}
+	for i := range m.ctx { // every throw has been heard: what rings across is known
+		if c := &m.ctx[i]; c.th != nil {
+			m.events(c)
+			m.noise(c, t, w, i)
+		}
 	}
 }
 

@@ -55,29 +55,12 @@ func (o *outcome) get(t testing.TB, subject, name string) float64 {
 
 func measured(t testing.TB, r windowtest.Run) *outcome {
 	t.Helper()
-	sk := r.Skid()
-	g := windowtest.Gas()
-	m := measure.New(measure.Config{Machine: machineOf(sk), Atmosphere: sk.Machine.Atmosphere})
-	o := &outcome{layout: m.Layout(), median: make([]float64, len(m.Layout())), absent: make([]string, len(m.Layout()))}
-	all := make([][]float64, len(o.layout))
-	tr := window.NewTracker(window.Config{})
-	var v measure.Vector
-	var wi []window.Input
-	var mi []measure.Input
-	r.Turns(t, .6, func(tn windowtest.Turn) {
-		wi, mi = wi[:0], mi[:0]
-		for i, th := range sk.Throws {
-			line := tn.Process.Stages[th.Stage-1]
-			p, err := g.Duty(line.Ps, line.Ts, line.Pd)
-			if err != nil {
-				t.Fatal(err)
-			}
-			c := sk.CylinderAt(i, r.Step)
-			wi = append(wi, window.Input{Cylinder: c, K: p.KV, LinePs: line.Ps, LinePd: line.Pd})
-			mi = append(mi, measure.Input{Cylinder: c, LinePs: line.Ps, LinePd: line.Pd, Ts: line.Ts, Td: line.Td,
-				Gas: measure.Gas{R: p.R, Zs: p.Zs, Zd: p.Zd, KV: p.KV, KT: p.KT}, Covers: tn.Process.Covers})
+	o := &outcome{}
+	var all [][]float64
+	each(t, r, func(_ int64, tn windowtest.Turn, _ window.Result, v *measure.Vector, l measure.Layout) {
+		if o.layout == nil {
+			o.layout, o.median, o.absent, all = l, make([]float64, len(l)), make([]string, len(l)), make([][]float64, len(l))
 		}
-		m.Measure(&v, tn.Turn, tr.Track(tn.Turn, wi), mi)
 		o.turns++
 		for i, x := range v.V {
 			if math.IsNaN(x) {
@@ -96,6 +79,35 @@ func measured(t testing.TB, r windowtest.Run) *outcome {
 		}
 	}
 	return o
+}
+
+// each measures a run turn by turn.
+func each(t testing.TB, r windowtest.Run, use func(n int64, tn windowtest.Turn, w window.Result, v *measure.Vector, l measure.Layout)) {
+	t.Helper()
+	sk := r.Skid()
+	g := windowtest.Gas()
+	m := measure.New(measure.Config{Machine: machineOf(sk), Atmosphere: sk.Machine.Atmosphere})
+	tr := window.NewTracker(window.Config{})
+	var v measure.Vector
+	var wi []window.Input
+	var mi []measure.Input
+	r.Turns(t, .6, func(tn windowtest.Turn) {
+		wi, mi = wi[:0], mi[:0]
+		for i, th := range sk.Throws {
+			line := tn.Process.Stages[th.Stage-1]
+			p, err := g.Duty(line.Ps, line.Ts, line.Pd)
+			if err != nil {
+				t.Fatal(err)
+			}
+			c := sk.CylinderAt(i, r.Step)
+			wi = append(wi, window.Input{Cylinder: c, K: p.KV, LinePs: line.Ps, LinePd: line.Pd})
+			mi = append(mi, measure.Input{Cylinder: c, LinePs: line.Ps, LinePd: line.Pd, Ts: line.Ts, Td: line.Td,
+				Gas: measure.Gas{R: p.R, Zs: p.Zs, Zd: p.Zd, KV: p.KV, KT: p.KT}, Covers: tn.Process.Covers})
+		}
+		w := tr.Track(tn.Turn, wi)
+		m.Measure(&v, tn.Turn, w, mi)
+		use(tn.Number, tn, w, &v, m.Layout())
+	})
 }
 
 // The signs and the rough size of leakage, methods.md section 1.3 (computed there on another model), per 1 % of the

@@ -1,5 +1,7 @@
 package measure
 
+import "lapwing/internal/window"
+
 // Class is the kind of signal that a feature stands on. A finding's grade needs two of them.
 type Class uint8
 
@@ -21,6 +23,8 @@ type Feature struct {
 	End     int     // crank.HE, crank.CE; -1 for a throw as a whole
 	Scale   float64 // what people read = value·Scale + Shift
 	Shift   float64
+	Display bool // for the eye only: no baseline is learnt of it
+	Flat    bool // the duty has been taken out of it already: its baseline is one value a load step
 }
 
 // Layout lists the features of a skid in a fixed order. Vectors are aligned to it.
@@ -44,4 +48,6 @@ type Vector struct {
 	RPM        float64
 	V          []float64 // NaN where absent
 	Why        []string  // reason where absent, "" where present
+
+	Marks [][2][window.Events]Mark // by throw, end and event: what else may ring there; zero on a turn that is not valid
 }

@@ -55,6 +55,8 @@ type Params struct {
 	Noise          float64 // factor on all noise of gauges, accelerometers, converter and process values; 0: none
 	GaugeError     float64 // factor on the fixed zero and gain errors of the pressure transmitters; 0: none
 	CoverLag       float64 // s, first-order lag of a valve cover's temperature
+
+	Mute map[string]bool // valves whose impacts no accelerometer feels, everything else being the same: what the others alone would sound like
 }
 
 // Stated bounds of a typical healthy machine, as shares. Values marked typical in the trade's handbooks are only

@@ -148,6 +148,9 @@ func (t *throw) strike(m *Machine, q *plate, h hit, at float64) {
 		if sc := m.par.Scatter; sc > 0 {
 			a *= math.Exp(0.1 * sc * s.rnd.NormFloat64())
 		}
+		if m.par.Mute[q.id] {
+			continue
+		}
 		for _, c := range contactShape {
 			s.blows = append(s.blows, blow{due: at + b.delay + c.at*contact*s.rate, amp: a * c.share, valve: q.index, stop: h.stop})
 		}
