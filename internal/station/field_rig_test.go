@@ -61,21 +61,6 @@ func begin(sk *skid.Skid, a asked) model.Script {
 	return model.Script{Lines: []skid.Line{l}, RPM: a.rpm, Step: a.step}
 }
 
-// stairs visits duties one after the other: a second's change, then as many turns as it takes to be steady and more.
-// It gives the script, when the last duty ends, and the middle of each hold.
-func stairs(s model.Script, at float64, turns float64, through []asked) (model.Script, float64) {
-	rpm := s.RPM
-	for k, a := range through {
-		if k > 0 {
-			rpm = through[k-1].rpm
-		}
-		over := max(1, ramp(rpm, a.rpm))
-		s = a.set(s, at, over)
-		at += over + turns*60/a.rpm
-	}
-	return s, at
-}
-
 // trial is one run of the line on the modelled machine.
 type trial struct {
 	machine, told *skid.Skid // as it is, and as the skid file says; told nil: the same

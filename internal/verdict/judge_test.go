@@ -466,3 +466,58 @@ func TestWhatIsKnownExplainsOneEndedDuty(t *testing.T) {
 		})
 	}
 }
+
+// What a standing leak explains raises nothing more: the warm cover, and a departure that it blurs.
+func TestALeakExplainsItsCompany(t *testing.T) {
+	for name, leak := range map[string]float64{"without a leak": 0, "with a leak": 4} {
+		t.Run(name, func(t *testing.T) {
+			s := newSynth(11)
+			r := commission(t, s, 900, nil)
+			s.leak["t1.he.suction"] = leak
+			s.cover["t1.he.s1"] = 3 * leak
+			r.run(s, 120, nil, func(duty.Block, []Finding) {})
+			s.stick["t1.he.suction"] = 0.4
+			late := false
+			r.run(s, 150, nil, func(_ duty.Block, fs []Finding) {
+				for _, f := range fs {
+					late = late || f.Kind == OpeningLate
+					if f.Grade > None && f.Kind != OpeningLate && f.Kind != Leaking {
+						t.Error(f.Sentence)
+					}
+				}
+			})
+			if late != (leak == 0) {
+				t.Errorf("opening late was said: %v", late)
+			}
+		})
+	}
+}
+
+// A leak in one valve warms the gas of its whole throw against the stage's other throws: the covers' common part names none.
+func TestCommonWarmthNamesNoValve(t *testing.T) {
+	s := newSynth(11)
+	r := commission(t, s, 900, nil)
+	covers := 0
+	for _, f := range s.layout {
+		if f.Name == "cover_above_group_k" {
+			s.cover[f.Subject] = 8
+			covers++
+		}
+	}
+	said := func(_ duty.Block, fs []Finding) {
+		for _, f := range fs {
+			t.Error(f.Sentence)
+		}
+	}
+	r.run(s, 150, nil, said)
+	s.cover["t1.he.s1"] += 8
+	named := false
+	r.run(s, 150, nil, func(_ duty.Block, fs []Finding) {
+		for _, f := range fs {
+			named = named || f.Subject == "t1.he.suction" && f.Valve == "t1.he.s1"
+		}
+	})
+	if !named || covers < 4 {
+		t.Errorf("one cover that stands out of %d is not named", covers)
+	}
+}

@@ -110,6 +110,10 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		}
 		return m
 	}
+	leaks := c.kind != Leaking && c.group >= 0 && b.standing(c.h)
+	if leaks && c.kind == OpeningLate && c.grade == None {
+		return m // a leak blurs the departure that the lag is counted from
+	}
 	explained := b.ringsExplain(c, s)
 	if f := press[c.h]; f.judged && !withdrawn && !explained {
 		switch c.kind {
@@ -129,9 +133,10 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			m.llr[measure.Pressure] = capped(llr(math.Min(z, d.Z))) // late and costly
 		}
 	}
-	// Hard impacts and late openings are heard, or they are not there: other classes only join in.
+	// Hard impacts and late openings are heard, or they are not there: other classes only join in. A leak that is known
+	// explains the warm cover.
 	heardIt := c.kind == Leaking || c.kind == ImpactingHard && v.hard[c.h] >= 1 || c.kind == OpeningLate && v.late[c.h] >= 1
-	if c.group >= 0 && heardIt {
+	if c.group >= 0 && heardIt && !leaks {
 		m.llr[measure.Temperature] = t.group[c.h]
 		m.valve = t.valve[c.h]
 	}

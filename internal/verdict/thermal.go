@@ -2,6 +2,7 @@ package verdict
 
 import (
 	"math"
+	"slices"
 
 	"lapwing/internal/duty"
 )
@@ -40,6 +41,7 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 		out.ofTd /= n
 		out.rings = math.Max(acquit, capped(llr(out.ofTd)))
 	}
+	common := [2]float64{p.warmth(dev, suction), p.warmth(dev, discharge)}
 	for h := range 4 {
 		e, g := h/2, h%2
 		out.group[h] = math.NaN()
@@ -49,8 +51,13 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 		best, bestZ := "", math.Inf(-1)
 		bestK := 0.0
 		for _, c := range p.ends[e].covers[g] {
-			if d := at(dev, c.at); d != nil && d.Z/widen > bestZ {
-				best, bestZ, bestK = c.valve, d.Z/widen, d.Residual
+			d := at(dev, c.at)
+			if d == nil {
+				continue
+			}
+			own := d.Residual - common[g]
+			if z := own / d.Spread / widen; z > bestZ {
+				best, bestZ, bestK = c.valve, z, own
 			}
 		}
 		if best == "" {
@@ -64,4 +71,22 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 		}
 	}
 	return out
+}
+
+// warmth is what the covers of one kind of a throw share, K, never negative: the lower middle of their departures. Their
+// stage is what they are compared with, and a leak in one valve warms the gas of its whole throw. 0 with a single cover.
+func (p *place) warmth(dev []*duty.Deviation, g int) float64 {
+	var k []float64
+	for e := range p.ends {
+		for _, c := range p.ends[e].covers[g] {
+			if d := at(dev, c.at); d != nil {
+				k = append(k, d.Residual)
+			}
+		}
+	}
+	if len(k) < 2 {
+		return 0
+	}
+	slices.Sort(k)
+	return math.Max(0, k[(len(k)-1)/2])
 }
