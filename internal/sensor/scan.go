@@ -1,0 +1,139 @@
+package sensor
+
+import "math"
+
+// parts is how many stretches a turn is looked at in: the quietest ones show the noise without the valves.
+const parts = 32
+
+// scan is what one pass over one turn of one channel shows. Codes throughout.
+type scan struct {
+	n              int
+	min, max       int32
+	mean, rms      float64 // rms about the mean
+	rough          float64 // mean square of first differences over twice the variance: 0 smooth .. 1 white .. 2
+	kurtosis       float64 // of the first differences; 3 when they are normal
+	quiet          float64 // white noise, rms, in the quietest stretches, from second differences
+	white          float64 // the same over the whole turn
+	run            int     // longest stretch of one code, samples
+	top, bottom    int     // longest stretch at the highest and at the lowest code (see railShare), samples
+	first          float64 // share of the variance in the first harmonic of the turn
+	peak           float64 // where that harmonic peaks, degrees after the frame's mark
+	railHi, railLo int32   // codes of top and bottom
+}
+
+// railShare is how near to the extreme a sample counts as standing at the rail, of the peak-to-peak value: an
+// amplifier that saturates is not quite as steady as a converter at its end.
+const railShare = 1e-4
+
+// take scans x, the samples of one turn; least 64 of them.
+func (s *scan) take(x []int32) {
+	*s = scan{n: len(x), min: x[0], max: x[0]}
+	base := float64(x[0]) // keeps the sums small: no cancellation far from zero
+	var sum, sq, sd, sd4, sdd float64
+	var means, white [parts]float64
+	last, run := x[0], 0
+	prev, pd := 0.0, 0.0
+	for k := range parts {
+		from, to := k*len(x)/parts, (k+1)*len(x)/parts
+		var ps, pdd float64
+		for _, v := range x[from:to] {
+			f := float64(v) - base
+			d := f - prev
+			dd := d - pd
+			prev, pd = f, d
+			ps += f
+			sq += f * f
+			d2 := d * d
+			sd += d2
+			sd4 += d2 * d2
+			pdd += dd * dd
+			if v == last {
+				run++
+			} else {
+				s.run = max(s.run, run)
+				last, run = v, 1
+			}
+			s.min, s.max = min(s.min, v), max(s.max, v)
+		}
+		n := float64(to - from)
+		sum += ps
+		sdd += pdd
+		means[k], white[k] = ps/n, pdd/n/6 // a second difference of white noise has six times its variance
+	}
+	s.run = max(s.run, run)
+	n := float64(len(x))
+	s.mean = base + sum/n
+	v := max(0, sq/n-sum/n*(sum/n))
+	s.rms = math.Sqrt(v)
+	if v > 0 && sd > 0 {
+		s.rough = sd / n / (2 * v)
+		s.kurtosis = n * sd4 / (sd * sd)
+	}
+	s.quiet, s.white = math.Sqrt(third(&white)), math.Sqrt(sdd/n/6)
+	s.rails(x)
+	s.harmonic(&means, v)
+}
+
+// third is the third smallest of a turn's parts: steadier than the smallest, and still away from the valves.
+func third(w *[parts]float64) float64 {
+	a, b, c := math.Inf(1), math.Inf(1), math.Inf(1)
+	for _, v := range w {
+		switch {
+		case v < a:
+			a, b, c = v, a, b
+		case v < b:
+			b, c = v, b
+		case v < c:
+			c = v
+		}
+	}
+	return c
+}
+
+// rails finds the longest stretches at both extremes.
+func (s *scan) rails(x []int32) {
+	near := int64(railShare * (float64(s.max) - float64(s.min)))
+	hi, lo := int32(int64(s.max)-near), int32(int64(s.min)+near)
+	up, down := 0, 0
+	for _, v := range x {
+		if v >= hi {
+			up++
+			s.top = max(s.top, up)
+		} else {
+			up = 0
+		}
+		if v <= lo {
+			down++
+			s.bottom = max(s.bottom, down)
+		} else {
+			down = 0
+		}
+	}
+	s.railHi, s.railLo = s.max, s.min
+}
+
+// harmonic fits the first harmonic of the turn to the means of its parts.
+func (s *scan) harmonic(means *[parts]float64, variance float64) {
+	var re, im float64
+	for k, m := range means {
+		sin, cos := math.Sincos(2 * math.Pi * (float64(k) + 0.5) / parts)
+		re += m * cos
+		im += m * sin
+	}
+	re, im = 2*re/parts, 2*im/parts
+	s.peak = math.Mod(math.Atan2(im, re)*180/math.Pi+360, 360)
+	if variance > 0 {
+		s.first = min(1, (re*re+im*im)/2/variance)
+	}
+}
+
+// outside is the share of samples that read below lo or above hi (codes).
+func outside(x []int32, lo, hi float64) float64 {
+	n := 0
+	for _, v := range x {
+		if f := float64(v); f < lo || f > hi {
+			n++
+		}
+	}
+	return float64(n) / float64(len(x))
+}
