@@ -3,6 +3,8 @@ package ripple
 import (
 	"math"
 	"math/cmplx"
+	"math/rand/v2"
+	"strings"
 	"testing"
 
 	"lapwing/internal/frame"
@@ -209,4 +211,76 @@ func b2i(b bool) int {
 		return 1
 	}
 	return 0
+}
+
+// Each doubt is raised by what it is about, and by nothing else.
+func TestDoubtsAboutASurvey(t *testing.T) {
+	sound := func() Found {
+		return Found{Turns: 200, Orders: Orders, Samples: 4000, Spread: 0.004, Teeth: make([]float64, 58), Pitch: 0.005, Jitter: 0.01,
+			Mean: Harmonics{0.004, 0.01i, 0.0005, 0.00001}, Scatter: [Orders]float64{1e-4, 1e-4, 1e-4, 1e-4}}
+	}
+	for name, c := range map[string]struct {
+		spoil func(*Found)
+		want  string
+	}{
+		"sound":         {func(*Found) {}, ""},
+		"few turns":     {func(f *Found) { f.Turns = 30 }, "only 30 whole turns"},
+		"few teeth":     {func(f *Found) { f.Teeth = f.Teeth[:8]; f.Pitch = 0.001 }, "8 teeth"},
+		"speed":         {func(f *Found) { f.Spread = 0.1 }, "moved by 10 %"},
+		"pitch":         {func(f *Found) { f.Pitch = 0.15 }, "may feign"},
+		"jitter":        {func(f *Found) { f.Jitter = 0.2 }, "jitters by 0.200°"},
+		"wander":        {func(f *Found) { f.Scatter[1] = 0.005 }, "wanders by ±0.40°"},
+		"not known":     {func(f *Found) { f.Mean[0] = 2e-4; f.Scatter[0] = 1e-3 }, "harmonic 1 is 0.020 %"},
+		"too strong":    {func(f *Found) { f.Mean[1] = 0.06 }, "6.5 % in all"},
+		"small order 1": {func(f *Found) { f.Mean[0] = 0 }, ""},
+	} {
+		f := sound()
+		c.spoil(&f)
+		got := f.Doubts()
+		if c.want == "" && len(got) != 0 || c.want != "" && (len(got) != 1 || !strings.Contains(got[0], c.want)) {
+			t.Errorf("%s: %q, want %q", name, got, c.want)
+		}
+	}
+	f := sound()
+	if f.Known(4) || !f.Known(3) || !f.Known(1) {
+		t.Error("order 3 stands out and order 4 does not")
+	}
+	g := sound()
+	g.Step = 1
+	if s := Eccentric([]Found{f}); !strings.Contains(s, "cannot be told") {
+		t.Error(s)
+	}
+	if s := Eccentric([]Found{f, g}); !strings.Contains(s, "alike in all") {
+		t.Error(s)
+	}
+	g.Mean[0] = -0.004
+	if s := Eccentric([]Found{f, g}); !strings.Contains(s, "differs between load steps 0 and 1 by 0.800 %") {
+		t.Error(s)
+	}
+}
+
+// The stated half-width against drawn errors: amplitude components of σ each give angle errors 95 % of which lie within.
+func TestHalfWidthHoldsNinetyFivePerCent(t *testing.T) {
+	const sigma = 1e-3
+	u := halfWidth(func(int) float64 { return sigma }, 2)
+	var errs []float64
+	rnd := rand.New(rand.NewPCG(1, 2))
+	for range 4000 {
+		e, deg := 0.0, 360*rnd.Float64()
+		for n := 1; n <= 2; n++ {
+			z := complex(sigma*rnd.NormFloat64(), sigma*rnd.NormFloat64())
+			a, p := cmplx.Polar(z)
+			e += a / float64(n) * (math.Sin(float64(n)*deg*rad-p) + math.Sin(p)) / rad
+		}
+		errs = append(errs, math.Abs(e))
+	}
+	within := 0
+	for _, e := range errs {
+		if e <= u {
+			within++
+		}
+	}
+	if share := float64(within) / float64(len(errs)); share < 0.93 || share > 0.97 {
+		t.Errorf("%.3f of the errors lie within ±%.3f°", share, u)
+	}
 }
