@@ -147,7 +147,7 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 					c.k.undo(way, sigma, c.cfg.Rate)
 				}
 			}
-			t.P[e][i] = c.k.value(s.x[c.k.first+off:])
+			t.P[e][i] = c.k.value(s.x.live()[c.k.first+off:])
 		}
 	}
 }
@@ -165,9 +165,10 @@ func (c *Converter) vibration(k int, lo, hi int64, overload bool) {
 		}
 		var leak []float64
 		if s.leak != nil {
-			leak = s.leak.y
+			leak = s.leak.y.live()
 		}
-		v.bin(t.Pos, s.impact.y, leak, -off)
-		v.Seq0, v.X = from+c.m.ref, s.impact.y[from+off:to+off:to+off]
+		impact := s.impact.y.live()
+		v.bin(t.Pos, impact, leak, -off)
+		v.Seq0, v.X = from+c.m.ref, impact[from+off:to+off:to+off]
 	}
 }

@@ -7,15 +7,15 @@ import "lapwing/internal/dsp"
 type stream struct {
 	ch           Channel
 	accel        bool
-	x            []float64 // pressure history; scratch for an accelerometer
-	least        float64   // samples, the least σ of a pressure's kernel
-	impact, leak *band     // nil where the sampling rate does not allow them
-	bad          []span    // where values lay outside the valid range
+	x            history // of a pressure; an accelerometer keeps the newest block only, as scratch
+	least        float64 // samples, the least σ of a pressure's kernel
+	impact, leak *band   // nil where the sampling rate does not allow them
+	bad          []span  // where values lay outside the valid range
 }
 
 type band struct {
 	filter *dsp.Filter
-	y      []float64
+	y      history
 	fresh  bool
 }
 
@@ -33,27 +33,43 @@ func newBand(s dsp.SOS) *band { return &band{filter: dsp.NewFilter(s), fresh: tr
 
 // add takes the samples from seq on.
 func (s *stream) add(counts []int32, seq int64) {
+	if len(counts) == 0 {
+		return
+	}
 	if s.accel {
-		s.x = s.x[:0]
+		s.x.reset()
 	}
-	old := len(s.x)
-	for _, n := range counts {
-		s.x = append(s.x, s.ch.Gain*float64(n)+s.ch.Offset)
+	x := s.x.more(len(counts))
+	gain, offset := s.ch.Gain, s.ch.Offset
+	least, most := counts[0], counts[0]
+	for i, n := range counts {
+		x[i] = gain*float64(n) + offset
+		least, most = min(least, n), max(most, n)
 	}
-	fresh := s.x[old:]
-	s.watch(fresh, seq)
-	s.impact.add(fresh)
-	s.leak.add(fresh)
+	if s.outside(gain*float64(least)+offset) || s.outside(gain*float64(most)+offset) {
+		s.watch(x, seq)
+	}
+	switch {
+	case s.impact == nil:
+	case s.leak == nil:
+		s.impact.settle(x[0])
+		s.impact.filter.Process(s.impact.y.more(len(x)), x)
+	default:
+		s.impact.settle(x[0])
+		s.leak.settle(x[0])
+		dsp.Both(s.impact.filter, s.leak.filter, s.impact.y.more(len(x)), s.leak.y.more(len(x)), x)
+	}
+}
+
+func (s *stream) outside(v float64) bool {
+	return (s.ch.Min != 0 || s.ch.Max != 0) && (v < s.ch.Min || v > s.ch.Max)
 }
 
 // watch notes the first and the last value outside the valid range.
 func (s *stream) watch(x []float64, seq int64) {
-	if s.ch.Min == 0 && s.ch.Max == 0 {
-		return
-	}
 	out := span{from: -1, to: -1}
 	for i, v := range x {
-		if v < s.ch.Min || v > s.ch.Max {
+		if s.outside(v) {
 			if out.from < 0 {
 				out.from = seq + int64(i)
 			}
@@ -61,32 +77,25 @@ func (s *stream) watch(x []float64, seq int64) {
 			out.n++
 		}
 	}
-	if out.from >= 0 {
-		s.bad = append(s.bad, out)
-	}
+	s.bad = append(s.bad, out)
 }
 
-func (b *band) add(x []float64) {
-	if b == nil || len(x) == 0 {
-		return
-	}
+// settle puts a filter that has seen nothing in the state of a stream that has always been x.
+func (b *band) settle(x float64) {
 	if b.fresh {
-		b.filter.Settle(x[0])
+		b.filter.Settle(x)
 		b.fresh = false
 	}
-	old := len(b.y)
-	b.y = append(b.y, x...)
-	b.filter.Process(b.y[old:], b.y[old:])
 }
 
 // drop forgets n samples; seq is the first that stays.
 func (s *stream) drop(n int, seq int64) {
 	if !s.accel {
-		s.x = shift(s.x, n)
+		s.x.drop(n)
 	}
 	for _, b := range [2]*band{s.impact, s.leak} {
 		if b != nil {
-			b.y = shift(b.y, n)
+			b.y.drop(n)
 		}
 	}
 	k := 0
@@ -96,13 +105,13 @@ func (s *stream) drop(n int, seq int64) {
 	s.bad = append(s.bad[:0], s.bad[k:]...)
 }
 
-func shift(x []float64, n int) []float64 { return x[:copy(x, x[n:])] }
-
 func (s *stream) restart() {
-	s.x, s.bad = s.x[:0], s.bad[:0]
+	s.x.reset()
+	s.bad = s.bad[:0]
 	for _, b := range [2]*band{s.impact, s.leak} {
 		if b != nil {
-			b.y, b.fresh = b.y[:0], true
+			b.y.reset()
+			b.fresh = true
 		}
 	}
 }
