@@ -16,6 +16,7 @@ const (
 	riseShare  = 0.15 // of the peak, down to where it is walked back
 	riseBack   = 4.0  // or to so many backgrounds
 	backDeg    = 7.5  // degrees of background before the window
+	backTailMs = 2.0  // ms that an earlier event rings into it
 	leastSNR   = 3.98 // 6 dB, in energy: below it the background's own scatter would decide
 	leastEvent = 8    // samples in a window
 )
@@ -33,10 +34,17 @@ type burst struct {
 }
 
 // sense measures all accelerometers in one window.
-func (m *Measurer) sense(all *burst, th *turn.Throw, w *window.Window) {
+func (m *Measurer) sense(all *burst, c *throwCtx, s spot) {
 	all.why = ""
+	th, w := c.th, &c.w.Ends[s.e].W[s.k]
+	tail := backTailMs * 6 * th.RPM / 1000
+	clean := alone(c.w, s, w.Lo-backDeg-tail, w.Lo)
 	for i := range th.Vib {
-		b, ok := m.listen(th, &th.Vib[i], w)
+		usual := math.NaN()
+		if !clean {
+			usual = m.usualBack(c, i)
+		}
+		b, ok := m.listen(th, &th.Vib[i], w, usual)
 		if !ok {
 			all.why = whyFewSamples
 			return
@@ -53,8 +61,24 @@ func (m *Measurer) sense(all *burst, th *turn.Throw, w *window.Window) {
 	}
 }
 
-// listen measures one accelerometer in one window; false when the window holds too few samples.
-func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window) (burst, bool) {
+// usualBack is the mean square in the middle one of a turn's bins: the background where an earlier event still rings.
+func (m *Measurer) usualBack(c *throwCtx, i int) float64 {
+	for len(c.usual) <= i {
+		v := &c.th.Vib[len(c.usual)]
+		b := math.NaN()
+		if len(v.RMS) == c.th.Grid.N {
+			m.x = append(m.x[:0], v.RMS[c.i0:c.i1]...)
+			b = dsp.MedianInPlace(m.x)
+			b *= b
+		}
+		c.usual = append(c.usual, b)
+	}
+	return c.usual[i]
+}
+
+// listen measures one accelerometer in one window; false when the window holds too few samples. A usual background
+// that is known takes the place of that before the window.
+func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window, usual float64) (burst, bool) {
 	lo := int(math.Ceil(th.SampleAt(w.Lo) - float64(v.Seq0)))
 	hi := int(math.Floor(th.SampleAt(w.Hi)-float64(v.Seq0))) + 1
 	back := int(math.Ceil(th.SampleAt(w.Lo-backDeg) - float64(v.Seq0)))
@@ -65,7 +89,10 @@ func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window) (burst,
 	var b burst
 	b.peak, _ = dsp.PeakAbs(v.X[lo:hi])
 	b.meanSquare = dsp.MeanSquare(v.X[lo:hi])
-	if lo-back >= leastEvent {
+	if b.back = usual; math.IsNaN(usual) {
+		b.back = 0
+	}
+	if lo-back >= leastEvent && math.IsNaN(usual) {
 		b.back = dsp.MeanSquare(v.X[back:lo])
 	}
 	smooth := smoothing(v.Rate)

@@ -74,7 +74,7 @@ func (m *Measurer) listenAll(c *throwCtx) {
 			case len(c.th.Vib) == 0:
 				b.why = whyNoVibration
 			default:
-				m.sense(b, c.th, w)
+				m.sense(b, c, spot{e, window.Event(k)})
 			}
 		}
 	}
@@ -114,19 +114,21 @@ func (m *Measurer) event(c *throwCtx, s spot, at int, b *burst) {
 	mark := &c.dst.Marks[c.i][s.e][s.k]
 	c.dst.set(at+vPeak, b.peak)
 	c.dst.set(at+vRMS, math.Sqrt(b.meanSquare))
-	if math.IsNaN(b.onset) {
-		c.impactAbsent(at, whyNoOnset)
-		return
-	}
-	if m.crossTalk(c, b) {
+	perMs := 6 * c.th.RPM / 1000
+	deg := b.deg
+	if math.IsNaN(b.onset) { // an earlier event may ring over it: then look where it should be
+		if deg = m.expected(c, s); math.IsNaN(deg) || alone(c.w, s, deg-energyMs*perMs, deg+energyMs*perMs) {
+			c.impactAbsent(at, whyNoOnset)
+			return
+		}
+	} else if m.crossTalk(c, b) {
 		mark.Sharing = CrossTalk
 		c.impactAbsent(at, whyCrossTalk)
 		return
 	}
-	perMs := 6 * c.th.RPM / 1000
-	mark.Knock = c.knock(b.deg, perMs)
-	if w.Shared && !alone(c.w, s, b.deg-aheadMs*perMs, b.deg+energyMs*perMs) {
-		mark.Sharing = m.share(c, s, at)
+	mark.Knock = c.knock(deg, perMs)
+	if math.IsNaN(b.onset) || !alone(c.w, s, deg-aheadMs*perMs, deg+energyMs*perMs) {
+		mark.Sharing = m.share(c, s, at, deg)
 		return
 	}
 	c.dst.set(at+vOnset, b.deg)

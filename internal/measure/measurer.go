@@ -114,6 +114,7 @@ type throwCtx struct {
 	i0, i1 int // grid points of 0° and 360°
 	hz     float64
 	heard  [2][window.Events]burst
+	usual  []float64 // by accelerometer, see usualBack
 }
 
 func (d *Vector) set(i int, x float64) {
@@ -151,7 +152,9 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 		return
 	}
 	m.covers(dst, in)
-	clear(m.ctx)
+	for i := range m.ctx {
+		m.ctx[i] = throwCtx{usual: m.ctx[i].usual[:0]}
+	}
 	for i := range m.index {
 		if i >= len(t.Throws) || i >= len(in) || i >= len(w.Throws) {
 			m.all(dst, i, whyNoInput)
@@ -159,7 +162,7 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 		}
 		th := &t.Throws[i]
 		c := &m.ctx[i]
-		*c = throwCtx{i: i, dst: dst, ix: &m.index[i], th: th, w: &w.Throws[i], in: &in[i], hz: th.RPM / 60}
+		*c = throwCtx{usual: c.usual, i: i, dst: dst, ix: &m.index[i], th: th, w: &w.Throws[i], in: &in[i], hz: th.RPM / 60}
 		c.i0, c.i1 = int(math.Round(th.Grid.Index(0))), int(math.Round(th.Grid.Index(360)))
 		if c.i0 < 0 || c.i1 >= th.Grid.N || len(th.Pos) != th.Grid.N || !(c.hz > 0) {
 			m.all(dst, i, whySpeed)

@@ -81,8 +81,16 @@ func measured(t testing.TB, r windowtest.Run) *outcome {
 	return o
 }
 
+type turnUse func(n int64, tn windowtest.Turn, w window.Result, v *measure.Vector, l measure.Layout)
+
 // each measures a run turn by turn.
-func each(t testing.TB, r windowtest.Run, use func(n int64, tn windowtest.Turn, w window.Result, v *measure.Vector, l measure.Layout)) {
+func each(t testing.TB, r windowtest.Run, use turnUse) {
+	t.Helper()
+	eachAltered(t, r, nil, use)
+}
+
+// eachAltered lets the windows be changed before measuring.
+func eachAltered(t testing.TB, r windowtest.Run, alter func(window.Result), use turnUse) {
 	t.Helper()
 	sk := r.Skid()
 	g := windowtest.Gas()
@@ -99,12 +107,15 @@ func each(t testing.TB, r windowtest.Run, use func(n int64, tn windowtest.Turn, 
 			if err != nil {
 				t.Fatal(err)
 			}
-			c := sk.CylinderAt(i, r.Step)
+			c := sk.CylinderAt(i, tn.Process.Step)
 			wi = append(wi, window.Input{Cylinder: c, K: p.KV, LinePs: line.Ps, LinePd: line.Pd})
 			mi = append(mi, measure.Input{Cylinder: c, LinePs: line.Ps, LinePd: line.Pd, Ts: line.Ts, Td: line.Td,
 				Gas: measure.Gas{R: p.R, Zs: p.Zs, Zd: p.Zd, KV: p.KV, KT: p.KT}, Covers: tn.Process.Covers})
 		}
 		w := tr.Track(tn.Turn, wi)
+		if alter != nil {
+			alter(w)
+		}
 		m.Measure(&v, tn.Turn, w, mi)
 		use(tn.Number, tn, w, &v, m.Layout())
 	})

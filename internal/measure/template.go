@@ -108,7 +108,7 @@ func (m *Measurer) learn(c *throwCtx, s spot, b *burst, gain float64) {
 		return
 	}
 	perMs := 6 * c.th.RPM / 1000
-	if w.Shared && !alone(c.w, s, b.deg-aheadMs*perMs, b.deg+templateMs*perMs) {
+	if !alone(c.w, s, b.deg-aheadMs*perMs, b.deg+templateMs*perMs) {
 		return
 	}
 	var back [bandCount]float64

@@ -24,12 +24,12 @@ type mixture struct {
 	rho    float64
 }
 
-// share books one of two events that ring into each other as far as they can be told apart.
-func (m *Measurer) share(c *throwCtx, s spot, at int) Sharing {
+// share books one of two events that ring into each other as far as they can be told apart; deg is where it
+// begins.
+func (m *Measurer) share(c *throwCtx, s spot, at int, deg float64) Sharing {
 	c.impactAbsent(at, whySharedEvent)
-	onset := &c.heard[s.e][s.k]
 	perMs := 6 * c.th.RPM / 1000
-	o, n := intruder(c.w, s, onset.deg-aheadMs*perMs, onset.deg+energyMs*perMs)
+	o, n := intruder(c.w, s, deg-energyMs*perMs, deg+energyMs*perMs)
 	if n != 1 {
 		return Shared
 	}
@@ -77,6 +77,15 @@ func (m *Measurer) mixtureOf(c *throwCtx, s, o spot) *mixture {
 		return p
 	}
 	return nil
+}
+
+// expected is the angle at which an event's impact should begin; NaN when that has not been learnt.
+func (m *Measurer) expected(c *throwCtx, s spot) float64 {
+	mem, w := &m.memory[c.i].Ends[s.e][s.k], &c.w.Ends[s.e].W[s.k]
+	if mem.Count < templateLeast || math.IsNaN(w.Angle) {
+		return math.NaN()
+	}
+	return degAt(c.th, c.th.SampleAt(w.Angle)+mem.LagMs*c.th.Vib[0].Rate/1000)
 }
 
 // unmix does the work.
