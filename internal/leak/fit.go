@@ -16,6 +16,7 @@ type Fitter struct {
 
 	strokes []stroke
 	shapes  shapes
+	gas     table
 }
 
 // NewFitter makes a fitter with the settings, defaults where they are zero.
@@ -82,14 +83,15 @@ func (f *Fitter) Fit(in *Input) Fit {
 		q.use[RG] = true
 	}
 
-	// First from the grid and the pressures as they came, then once more about the shift and the zeros found, because
-	// both bend the lines more than in proportion.
+	// Shift and zeros bend the lines more than in proportion, so the fit is made about those that a rough one finds, if
+	// they matter.
 	st := in.states()
-	sol, ok := f.pass(&q, in, &st, strokes, &out)
-	if ok && out.far(in.Ps) {
-		again := normal{use: q.use}
-		sol, ok = f.pass(&again, in, &st, strokes, &out)
-		q = again
+	about := f.rough(q, in, &st, strokes, &out)
+	begin := q
+	sol, ok := f.pass(&q, in, &st, strokes, &out, 1)
+	if ok && !about && out.far(in.Ps) {
+		q = begin
+		sol, ok = f.pass(&q, in, &st, strokes, &out, 1)
 	}
 	if !ok {
 		a := absent(notSeparate)
@@ -105,10 +107,33 @@ func (f *Fit) far(ps float64) bool {
 	return math.Abs(f.Phase) > .05 || math.Abs(f.Zero[crank.HE]) > 1e-3*ps || math.Abs(f.Zero[crank.CE]) > 1e-3*ps
 }
 
-// pass builds and solves the problem about the phase and the zeros in out (zero at first) and adds what it finds.
-func (f *Fitter) pass(q *normal, in *Input, st *states, strokes []stroke, out *Fit) (solution, bool) {
+// roughly is how many grid steps the rough fit takes at once, and roughPts how many points it wants in a stroke.
+const (
+	roughly  = 4
+	roughPts = 8
+)
+
+// rough puts into out the phase and the zeros that every fourth point gives, when they are far from nothing.
+func (f *Fitter) rough(q normal, in *Input, st *states, strokes []stroke, out *Fit) bool {
 	for _, s := range strokes {
-		f.addStroke(q, in, st, s, out.Phase, out.Zero)
+		if s.To-s.From < roughly*roughPts {
+			return false
+		}
+	}
+	try := *out
+	if _, ok := f.pass(&q, in, st, strokes, &try, roughly); !ok || !try.far(in.Ps) {
+		return false
+	}
+	out.Phase, out.Zero = try.Phase, try.Zero
+	return true
+}
+
+// pass builds and solves the problem about the phase and the zeros in out, from every so-manyth point, and adds what it
+// finds to them.
+func (f *Fitter) pass(q *normal, in *Input, st *states, strokes []stroke, out *Fit, every int) (solution, bool) {
+	f.gas.forget(in)
+	for _, s := range strokes {
+		f.addStroke(q, in, st, s, out.Phase, out.Zero, every)
 	}
 	out.Points = q.n
 	free := q.n - len(strokes)
@@ -162,8 +187,8 @@ const (
 // addStroke puts one stroke's points into the normal equations: every column cumulated by the trapezoidal rule where
 // it is a rate, then centred on the stroke, which is the free constant of integration. shift (degrees) and zero (Pa)
 // are taken off the grid and the pressures first.
-func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift float64, zero [2]float64) {
-	n := s.To - s.From
+func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift float64, zero [2]float64, every int) {
+	n := (s.To - s.From + every - 1) / every
 	if cap(f.rows) < n {
 		f.rows, f.y = make([][sUnknowns]float64, n), make([]float64, n)
 	}
@@ -171,29 +196,25 @@ func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift flo
 
 	other, compress := 1-s.end, s.kind == Compression
 	rings := q.use[RG]
-	half := in.Step / degPerRad / 2
+	half := in.Step * float64(every) / degPerRad / 2
 	perK, perOmega := in.K, 1/in.omega(0)
 	shape := f.shapes.of(in, s.end, shift)
 	var before [sAreas]float64 // rates at the point before
 	var sum [sUnknowns]float64
 	sumY := 0.0
 	for j := range n {
-		i := s.From + j
+		i := s.From + j*every
 		v, lnV, slope := shape.at(i)
-		p := in.P[s.end][i] - zero[s.end]
-		lnP := math.Log(p)
-		own := st.at(p, lnP, compress)
+		own := f.gas.at(in, st, s.end, i, zero[s.end], compress)
 		if len(in.Omega) > 1 {
 			perOmega = 1 / in.Omega[i]
 		}
 		scale := perK * perOmega / v
 		var rate [sAreas]float64
-		rate[sSuction] = st.rate(&own, &st.suction, scale)
-		rate[sDischarge] = st.rate(&own, &st.discharge, scale)
+		rate[sSuction] = st.rate(own, &st.suction, scale)
+		rate[sDischarge] = st.rate(own, &st.discharge, scale)
 		if rings {
-			po := in.P[other][i] - zero[other]
-			far := st.at(po, math.Log(po), !compress)
-			rate[sRings] = st.rate(&own, &far, scale)
+			rate[sRings] = st.rate(own, f.gas.at(in, st, other, i, zero[other], !compress), scale)
 		}
 		row := &rows[j]
 		if j == 0 {
@@ -209,7 +230,7 @@ func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift flo
 		row[sPhase] = -in.K * slope
 		// A transducer that reads z too high raises ln p by z/p.
 		row[sZero] = own.inv
-		y[j] = lnP + in.K*lnV
+		y[j] = own.lnP + in.K*lnV
 		for c, x := range row {
 			sum[c] += x
 		}
@@ -271,7 +292,7 @@ func (in *Input) massPerArea(st *states) (m [Paths]float64) {
 				continue
 			}
 			dt := in.Step / degPerRad / in.omega(i)
-			own := st.at(p[i], math.Log(p[i]), compressing(end, deg))
+			own := st.at(p[i], compressing(end, deg))
 			if p[i] > in.Ps {
 				m[HS+2*end] += dt * flow(own, st.suction)
 			}
@@ -280,7 +301,7 @@ func (in *Input) massPerArea(st *states) (m [Paths]float64) {
 			}
 			if end == crank.HE && in.P[crank.CE] != nil {
 				po := in.P[crank.CE][i]
-				m[RG] += dt * flow(own, st.at(po, math.Log(po), compressing(crank.CE, deg)))
+				m[RG] += dt * flow(own, st.at(po, compressing(crank.CE, deg)))
 			}
 		}
 	}

@@ -8,6 +8,7 @@ type gas struct {
 	p, inv  float64 // Pa and its inverse
 	a, invA float64 // (p/Ps)^(1/k) and its inverse
 	rt      float64 // R·T, J/kg: an estimate, it enters as a square root only
+	lnP     float64
 }
 
 // states holds what is the same for every point of a fit.
@@ -29,13 +30,38 @@ func (in *Input) states() states {
 	return s
 }
 
-// at gives the state at pressure p, whose logarithm is lnP.
-func (s *states) at(p, lnP float64, compressing bool) gas {
+// at gives the state at pressure p.
+func (s *states) at(p float64, compressing bool) gas {
+	lnP := math.Log(p)
 	a := math.Exp((lnP - s.lnPs) * s.n.inv)
-	g := gas{p: p, inv: 1 / p, a: a, invA: 1 / a}
+	g := gas{p: p, inv: 1 / p, a: a, invA: 1 / a, lnP: lnP}
 	g.rt = s.exp * p * g.invA
 	if compressing {
 		g.rt = s.comp * p * g.invA
+	}
+	return g
+}
+
+// table keeps the states of a pass: where one end compresses the other expands, and both strokes ask for both.
+type table [2][]gas
+
+// forget makes the table ready for other pressures or zeros.
+func (t *table) forget(in *Input) {
+	for end := range t {
+		if n := len(in.P[end]); n > cap(t[end]) {
+			t[end] = make([]gas, n)
+		} else {
+			t[end] = t[end][:n]
+			clear(t[end])
+		}
+	}
+}
+
+// at gives the state of an end at a grid point. A point lies in strokes of one direction only.
+func (t *table) at(in *Input, s *states, end, i int, zero float64, compressing bool) *gas {
+	g := &t[end][i]
+	if g.p == 0 {
+		*g = s.at(in.P[end][i]-zero, compressing)
 	}
 	return g
 }

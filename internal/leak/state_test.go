@@ -17,7 +17,7 @@ func TestStateWrittenOut(t *testing.T) {
 		st := in.states()
 		p, po := in.Ps*draw(0.8, 5, "p"), in.Ps*draw(0.8, 5, "po")
 		for _, comp := range []bool{true, false} {
-			own, far := st.at(p, math.Log(p), comp), st.at(po, math.Log(po), !comp)
+			own, far := st.at(p, comp), st.at(po, !comp)
 			rt := func(p float64, comp bool) float64 {
 				e := (in.K - 1) / in.K
 				if comp {
