@@ -26,6 +26,7 @@ type Converter struct {
 	k       kernel
 	perDeg  []float64
 	least   float64 // widest of all streams' least σ
+	late    int64   // largest lag of all bands, samples
 	out     Turn
 	throws  []Throw
 }
@@ -66,9 +67,12 @@ func New(cfg Config) (*Converter, error) {
 			v := Vib{Channel: ch.ID, Rate: cfg.Rate}
 			if impact != nil {
 				s.impact = newBand(impact)
+				c.late = max(c.late, s.impact.late)
+				v.Late = s.impact.rest
 				v.Peak, v.RMS = make([]float64, g.N), make([]float64, g.N)
 				if leak != nil {
 					s.leak = newBand(leak)
+					c.late = max(c.late, s.leak.late)
 					v.Leak = make([]float64, g.N)
 				}
 			}

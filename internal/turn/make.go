@@ -107,7 +107,7 @@ func (c *Converter) reach(g *grid, pos []float64) (lo, hi int64) {
 	n := len(pos) - 1
 	edge := func(i int) float64 { return reachSigmas*roundedUp*max(width(g.Step*c.perDeg[i]), c.least) + 2 }
 	lo = min(int64(math.Floor(pos[0]-edge(0))), first(pos))
-	hi = max(ceil(pos[n]+edge(n)), end(pos)) + 1
+	hi = max(ceil(pos[n]+edge(n)), end(pos)+c.late) + 1
 	return lo + c.m.ref, hi + c.m.ref
 }
 
@@ -165,9 +165,9 @@ func (c *Converter) vibration(k int, lo, hi int64, overload bool) {
 		}
 		var leak []float64
 		if s.leak != nil {
-			leak = s.leak.y.live()
+			leak = s.leak.lived()
 		}
-		impact := s.impact.y.live()
+		impact := s.impact.lived()
 		v.bin(t.Pos, impact, leak, -off)
 		v.Seq0, v.X = from+c.m.ref, impact[from+off:to+off:to+off]
 	}

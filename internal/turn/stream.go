@@ -1,6 +1,10 @@
 package turn
 
-import "lapwing/internal/dsp"
+import (
+	"math"
+
+	"lapwing/internal/dsp"
+)
 
 // stream is one channel's recent past: engineering values of a pressure, filtered values of an accelerometer. Index 0
 // of every history is the converter's base sample.
@@ -17,6 +21,8 @@ type band struct {
 	filter *dsp.Filter
 	y      history
 	fresh  bool
+	late   int64   // samples by which y lags behind what it was made from
+	rest   float64 // what of a sample is left beside them
 }
 
 // span is a range of samples, both ends in it.
@@ -29,7 +35,27 @@ type span struct {
 // believed: bursts that a transducer hears from a valve seat reach beyond it for a few samples and average out.
 const strays = 0.005
 
-func newBand(s dsp.SOS) *band { return &band{filter: dsp.NewFilter(s), fresh: true} }
+func newBand(s dsp.SOS) *band {
+	d := delay(s)
+	return &band{filter: dsp.NewFilter(s), fresh: true, late: int64(math.Round(d)), rest: d - math.Round(d)}
+}
+
+// delay is what a causal filter makes of "when", in samples: the centre of the energy of its answer to an impulse,
+// which is its group delay averaged over frequency with |H|² as weight (Parseval).
+func delay(s dsp.SOS) float64 {
+	h := make([]float64, 8192)
+	h[0] = 1
+	dsp.NewFilter(s).Process(h, h)
+	var sum, at float64
+	for n, v := range h {
+		sum += v * v
+		at += float64(n) * v * v
+	}
+	return at / sum
+}
+
+// lived gives the values from which what happened at sample 0 of the history and later can be read in place.
+func (b *band) lived() []float64 { return b.y.live()[b.late:] }
 
 // add takes the samples from seq on.
 func (s *stream) add(counts []int32, seq int64) {

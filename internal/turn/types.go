@@ -62,11 +62,13 @@ func (t *Throw) SampleAt(deg float64) float64 {
 	return t.Pos[i] + (x-float64(i))*(t.Pos[i+1]-t.Pos[i])
 }
 
-// Vib is one accelerometer's share of a turn. X stays at the full sampling rate: ring-down knows no angle.
+// Vib is one accelerometer's share of a turn. X stays at the full sampling rate: ring-down knows no angle. The filters'
+// delay is taken out of all of it, to the nearest sample.
 type Vib struct {
 	Channel string    // channel id of the skid file
 	Rate    float64   // samples per second
-	Seq0    int64     // sample number of X[0]
+	Seq0    int64     // sample at which X[0] happened
+	Late    float64   // samples, -0.5..0.5: what is left of the filter's delay; an instant read off X is this much too late
 	X       []float64 // m/s², causal band-pass (impact band), full rate, over the padded turn
 	Leak    []float64 // (m/s²)² mean square per grid bin in the leak band (10-20 kHz), one per grid point; nil when the rate is too low for the band
 	Peak    []float64 // m/s², largest |X| in the bin centred on each grid point
