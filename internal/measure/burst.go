@@ -107,7 +107,7 @@ func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window, usual f
 	if ok {
 		on = rise(m.env[lo-from:], on, peak, math.Sqrt(b.back), int(riseMs*v.Rate/1000))
 		on -= float64(smooth-1) / 2
-		b.onset = float64(v.Seq0) + float64(lo) + on
+		b.onset = float64(v.Seq0) - v.Late + float64(lo) + on
 		i := max(lo+int(math.Floor(on)), 0)
 		j := min(i+int(energyMs*v.Rate/1000), len(v.X))
 		b.energy = dsp.MeanSquare(v.X[i:j])
