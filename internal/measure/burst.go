@@ -79,9 +79,9 @@ func (m *Measurer) usualBack(c *throwCtx, i int) float64 {
 // listen measures one accelerometer in one window; false when the window holds too few samples. A usual background
 // that is known takes the place of that before the window.
 func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window, usual float64) (burst, bool) {
-	lo := int(math.Ceil(th.SampleAt(w.Lo) - float64(v.Seq0)))
-	hi := int(math.Floor(th.SampleAt(w.Hi)-float64(v.Seq0))) + 1
-	back := int(math.Ceil(th.SampleAt(w.Lo-backDeg) - float64(v.Seq0)))
+	lo := int(math.Ceil(place(v, th.SampleAt(w.Lo))))
+	hi := int(math.Floor(place(v, th.SampleAt(w.Hi)))) + 1
+	back := int(math.Ceil(place(v, th.SampleAt(w.Lo-backDeg))))
 	lo, hi, back = max(lo, 0), min(hi, len(v.X)), max(back, 0)
 	if hi-lo < leastEvent {
 		return burst{}, false
@@ -114,6 +114,9 @@ func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window, usual f
 	}
 	return b, true
 }
+
+// place is where in v.X stands what happened at a sample position: the filter gives it late.
+func place(v *turn.Vib, pos float64) float64 { return pos - float64(v.Seq0) + v.Late }
 
 // smoothing is the envelope's length in samples.
 func smoothing(rate float64) int { return max(1, int(math.Round(smoothMs*rate/1000))) }

@@ -65,8 +65,8 @@ func (m *Measurer) countHits(c *throwCtx, s spot) (int, string) {
 	v := &c.th.Vib[b.loud]
 	step := max(1, int(math.Round(hitStepMs*v.Rate/1000)))
 	ms := func(x float64) int { return int(math.Round(x / hitStepMs)) }
-	from := int(b.onset) - int(v.Seq0) + step*(ms(hitsMs)-ms(hitFromMs))
-	to := min(int(c.th.SampleAt(b.deg+hitsDeg))-int(v.Seq0), len(v.X))
+	from := int(place(v, b.onset)) + step*(ms(hitsMs)-ms(hitFromMs))
+	to := min(int(place(v, c.th.SampleAt(b.deg+hitsDeg))), len(v.X))
 	n := (to - from) / step
 	if n <= ms(hitFromMs) || from < 0 {
 		return 0, whyCutBack
@@ -84,7 +84,7 @@ func (m *Measurer) countHits(c *throwCtx, s spot) (int, string) {
 		m.env[i] = sum / float64(step)
 	}
 	m.busy = append(m.busy[:0], make([]bool, n)...)
-	m.maskHits(c, s, v.Seq0+int64(from), step)
+	m.maskHits(c, s, float64(v.Seq0)-v.Late+float64(from), step)
 	limit := 4 * math.Sqrt(b.loudBack)
 	hits, rest, free := 0, 0, 0
 	for i := ms(hitFromMs); i < n; i++ {
@@ -113,10 +113,10 @@ func (m *Measurer) countHits(c *throwCtx, s spot) (int, string) {
 	return hits, ""
 }
 
-// maskHits marks the steps in which known events ring. seq is the first step's sample.
-func (m *Measurer) maskHits(c *throwCtx, s spot, seq int64, step int) {
+// maskHits marks the steps in which known events ring. seq is the first step's sample position.
+func (m *Measurer) maskHits(c *throwCtx, s spot, seq float64, step int) {
 	mark := func(lo, hi float64) { // sample positions
-		i, j := int(math.Floor((lo-float64(seq))/float64(step))), int(math.Ceil((hi-float64(seq))/float64(step)))
+		i, j := int(math.Floor((lo-seq)/float64(step))), int(math.Ceil((hi-seq)/float64(step)))
 		for i = max(i, 0); i < min(j, len(m.busy)); i++ {
 			m.busy[i] = true
 		}

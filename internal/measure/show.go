@@ -26,7 +26,7 @@ const (
 // is judged by them.
 func (m *Measurer) show(c *throwCtx, at int, b *burst) {
 	v := &c.th.Vib[b.loud]
-	i := int(b.onset) - int(v.Seq0)
+	i := int(place(v, b.onset))
 	n := int(energyMs * v.Rate / 1000)
 	if i < 0 || i+n > len(v.X) || n < leastEvent {
 		for f := vCentroid; f < impactFeatures; f++ {
@@ -41,7 +41,7 @@ func (m *Measurer) show(c *throwCtx, at int, b *burst) {
 		st += a * a * float64(j)
 	}
 	peak, _ := dsp.PeakAbs(x)
-	c.dst.set(at+vCentroid, degAt(c.th, float64(v.Seq0)+float64(i)+st/s))
+	c.dst.set(at+vCentroid, degAt(c.th, b.onset+st/s))
 	c.dst.set(at+vCrest, peak/math.Sqrt(s/float64(n)))
 	if tau, ok := m.ringDown(x, v.Rate, math.Sqrt(b.loudBack)); ok {
 		c.dst.set(at+vRing, tau)

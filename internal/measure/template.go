@@ -55,7 +55,7 @@ func (m *Measurer) powers(dst []float64, th *turn.Throw, pos float64) bool {
 		n := m.spec.n
 		hop := hopMs * v.Rate / 1000
 		frames := len(dst) / bandCount
-		at := pos - float64(v.Seq0) - float64(n)/2
+		at := place(v, pos) - float64(n)/2
 		if at < 0 || int(at+hop*float64(frames-1))+n > len(v.X) {
 			return false
 		}

@@ -15,6 +15,8 @@ type heard struct {
 	best   int        // which pair or the rings stand out: 0 {HE s, CE d}, 1 {HE d, CE s}, 2 rings; -1 none
 	hard   [4]float64 // impacting hard, per group; NaN where absent
 	late   [4]float64 // opening late after its pressure, per group
+	loose  [4]float64 // fluttering, per group
+	knock  [4]bool    // the opening's impact lies where the crosshead may knock
 	gain   float64    // everything louder or softer alike
 	shift  float64    // by how much, ln
 }
@@ -89,7 +91,8 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 	for h := range 4 {
 		e, g := h/2, h%2
 		o.hard[h] = math.NaN()
-		open, shut := at(dev, p.ends[e].impact[g][0]), at(dev, p.ends[e].impact[g][1])
+		open, shut := p.ends[e].struck(g, dev), at(dev, p.ends[e].impact[g][1])
+		hits := at(dev, p.ends[e].hits[g])
 		if open != nil {
 			shift = append(shift, open.Residual)
 			o.hard[h] = llr(open.Z / widen)
@@ -102,11 +105,14 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			if shut != nil {
 				o.hard[h] += 0.3 * math.Max(0, llr(shut.Z/widen))
 			}
+			if hits != nil && open.Residual >= 0.35 { // a broken plate rattles
+				o.hard[h] += 0.3 * math.Max(0, llr(hits.Z/widen))
+			}
 			o.hard[h] = capped(o.hard[h])
 		} else if shut != nil {
 			o.hard[h] = math.Max(capLo, math.Min(1, llr(shut.Z/widen)))
 		}
-		o.late[h] = math.NaN()
+		o.late[h], o.loose[h] = math.NaN(), math.NaN()
 		if z := sticking(&p.ends[e], g, dev) / widen; !math.IsNaN(z) {
 			o.late[h] = capped(llr(z))
 			if open == nil || open.Z < 1 { // a sticking valve tears open harder: without that it is half a witness
@@ -115,9 +121,46 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			if z > 3 && !math.IsNaN(o.hard[h]) {
 				o.hard[h] = math.Min(1, o.hard[h])
 			}
+			o.flutter(h, z, open, hits, widen)
 		}
 	}
 	o.common(dev, p, shift, noise, widen)
+}
+
+// flutter: the plate comes to its stop late and no harder than usual, and strikes again (vibration.md section 4). Both
+// signs must be there; what it explains is not sticking as well.
+func (o *heard) flutter(h int, late float64, open, hits *duty.Deviation, widen float64) {
+	if open == nil || hits == nil {
+		return
+	}
+	o.loose[h] = capped(llr(math.Min(late, hits.Z/widen)))
+	if open.Residual >= 0.35 {
+		o.loose[h] = math.Min(0, o.loose[h])
+	}
+	if o.loose[h] >= advisoryClass {
+		o.late[h] = math.Min(0, o.late[h])
+	}
+}
+
+// Around a change of sign of the pin load the crosshead may knock: there a hard impact may be either. In degrees, and
+// in ms after it.
+const (
+	knockDeg = 2.5
+	knockMs  = 2.0
+)
+
+// knocks tells which openings' impacts lie there.
+func (o *heard) knocks(p *place, dev []*duty.Deviation, rpm float64) {
+	for h := range o.knock {
+		hit := at(dev, p.ends[h/2].onset[h%2])
+		for _, k := range p.pin {
+			if pin := at(dev, k); hit != nil && pin != nil {
+				after := hit.Value - pin.Value
+				after -= 360 * math.Round(after/360)
+				o.knock[h] = o.knock[h] || after > -knockDeg && after < knockDeg+knockMs*6*rpm/1000
+			}
+		}
+	}
 }
 
 // common judges what all impacts and all noise levels of an accelerometer share: that is the sensor's, not the valves'.
@@ -133,7 +176,7 @@ func (o *heard) common(dev []*duty.Deviation, p *place, shift, noise []float64, 
 	if alike { // no valve is accused of what they all do
 		for h := range 4 {
 			o.leak[h] = math.Min(0, o.leak[h])
-			open := at(dev, p.ends[h/2].impact[h%2][0])
+			open := p.ends[h/2].struck(h%2, dev)
 			if open != nil && open.Residual-m < 0.35 {
 				o.hard[h] = math.Min(0, o.hard[h])
 			}

@@ -36,6 +36,10 @@ func advice(c *trial, f *Finding) (settle, next []string) {
 	case OpeningLate:
 		settle = []string{"Watch the valve loss and the lag over a load change: sticking by oil or dirt changes with temperature."}
 		next = []string{"Check oil feed and liquid carry-over; inspect for deposits at the next suitable stop."}
+	case Fluttering:
+		settle = []string{"Compare at full flow: a valve that flutters only at low flow has springs too strong for that duty.",
+			"Look at the raw trace after the opening for repeated hits."}
+		next = []string{"Check whether gas or duty have moved away from what the valve springs were chosen for; fluttering wears plates and springs.", planRepair}
 	case DeadCentre:
 		settle = []string{"Check the shaft mark and its gap, and repeat the dead-centre proof of the walkdown."}
 		next = []string{"Until then the pressures of this throw accuse no valve."}

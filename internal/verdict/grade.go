@@ -11,6 +11,7 @@ const (
 	Leaking       = "leaking"
 	ImpactingHard = "impacting-hard"
 	OpeningLate   = "opening-late"
+	Fluttering    = "fluttering"
 	DeadCentre    = "dead-centre"        // the angle reference has moved
 	PressureZero  = "pressure-zero"      // a pressure channel's zero has moved
 	Clearance     = "clearance"          // the clearance volume is not what it was: pocket, carbon, liquid

@@ -126,6 +126,7 @@ func New(layout measure.Layout, cfg Config) *Judge {
 				if p.ends[e].works {
 					add(p.group(e, g), ImpactingHard, hLeak+2*e+g, e, g, false)
 					add(p.group(e, g), OpeningLate, hLeak+2*e+g, e, g, false)
+					add(p.group(e, g), Fluttering, hLeak+2*e+g, e, g, false)
 				}
 			}
 		}
@@ -175,6 +176,7 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 	press := s.contrast()
 	vib := listen(&b.place, j.layout, j.dev, blk.Settled, judged[0] && judged[1])
 	temp := feel(&b.place, j.dev, blk.Settled)
+	vib.knocks(&b.place, j.dev, blk.Point.RPM)
 	b.sharePairs(&vib, &press)
 
 	var out []Finding

@@ -241,6 +241,8 @@ func TestOtherKinds(t *testing.T) {
 			"t1.he.suction", ImpactingHard, Advisory, "", "possible"},
 		"sticking: late, hard, and costs work": {func(s *synth) { s.stick["t1.he.discharge"], s.hit["t1.he.discharge"] = 0.6, 0.5 },
 			"t1.he.discharge", OpeningLate, Alert, "", "valve loss"},
+		"flutter: late, no harder, extra hits": {func(s *synth) { s.stick["t1.ce.discharge"], s.rattle["t1.ce.discharge"] = 0.5, 20 },
+			"t1.ce.discharge", Fluttering, Advisory, "", "extra hits"},
 		"the cover names the valve": {func(s *synth) { s.leak["t1.he.suction"], s.cover["t1.he.s2"] = 4, 14 },
 			"t1.he.suction", Leaking, Alert, "t1.he.s2", "cover of t1.he.s2 is 14 K above its group"},
 		"a leak nobody hears stays an advisory": {func(s *synth) { s.leak["t1.he.discharge"], s.quiet = 4, true },

@@ -111,7 +111,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		return m
 	}
 	leaks := c.kind != Leaking && c.group >= 0 && b.standing(c.h)
-	if leaks && c.kind == OpeningLate && c.grade == None {
+	if leaks && (c.kind == OpeningLate || c.kind == Fluttering) && c.grade == None {
 		return m // a leak blurs the departure that the lag is counted from
 	}
 	explained := b.ringsExplain(c, s)
@@ -135,7 +135,8 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 	}
 	// Hard impacts and late openings are heard, or they are not there: other classes only join in. A leak that is known
 	// explains the warm cover.
-	heardIt := c.kind == Leaking || c.kind == ImpactingHard && v.hard[c.h] >= 1 || c.kind == OpeningLate && v.late[c.h] >= 1
+	heardIt := c.kind == Leaking || c.kind == ImpactingHard && v.hard[c.h] >= 1 || c.kind == OpeningLate && v.late[c.h] >= 1 ||
+		c.kind == Fluttering && v.loose[c.h] >= 1
 	if c.group >= 0 && heardIt && !leaks {
 		m.llr[measure.Temperature] = t.group[c.h]
 		m.valve = t.valve[c.h]
@@ -166,8 +167,13 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		}
 	case c.kind == ImpactingHard && !deaf:
 		m.llr[measure.Vibration] = v.hard[c.h]
+		if v.knock[c.h] && v.hard[c.h] > 0 {
+			m.ambiguous = append(m.ambiguous, b.place.id+".crosshead")
+		}
 	case c.kind == OpeningLate && !deaf:
 		m.llr[measure.Vibration] = v.late[c.h]
+	case c.kind == Fluttering && !deaf:
+		m.llr[measure.Vibration] = v.loose[c.h]
 	}
 	return m
 }

@@ -4,6 +4,7 @@ import (
 	"strings"
 
 	"lapwing/internal/crank"
+	"lapwing/internal/duty"
 	"lapwing/internal/measure"
 )
 
@@ -22,6 +23,7 @@ type place struct {
 	id     string
 	ends   [2]endPlace
 	rings  pathPlace
+	pin    [2]int // angles at which the pin load changes its sign
 	exists bool
 }
 
@@ -32,7 +34,9 @@ type endPlace struct {
 	excess int
 	loss   [2]int
 	path   [2]pathPlace
-	impact [2][2]int // group; opens, closes
+	impact [2][2]int // group; opens (the slope's share taken out), closes
+	plain  [2]int    // opening, the slope's share left in
+	hits   [2]int    // after the opening
 	lag    [2]int    // opening
 	onset  [2]int    // opening
 	open   [2]int    // angle of opening as the pressure shows it
@@ -66,6 +70,7 @@ func places(l measure.Layout) []place {
 			return pathPlace{l.Find(subject, "leak_area_mm2"), l.Find(subject, "leak_noise_db"), l.Find(subject, "leak_shape")}
 		}
 		p.rings = paths(p.id + ".rings")
+		p.pin = [2]int{l.Find(p.id, "pin_pulls_deg"), l.Find(p.id, "pin_pushes_deg")}
 		for e := range p.ends {
 			ep := &p.ends[e]
 			s := p.id + "." + endName[e]
@@ -77,7 +82,8 @@ func places(l measure.Layout) []place {
 			for g, name := range groupName {
 				ep.loss[g] = l.Find(s, name+"_loss_kw")
 				ep.path[g] = paths(s + "." + name)
-				ep.impact[g] = [2]int{l.Find(s+"."+name+".opens", "impact_ln"), l.Find(s+"."+name+".closes", "impact_ln")}
+				ep.impact[g] = [2]int{l.Find(s+"."+name+".opens", "impact_norm_ln"), l.Find(s+"."+name+".closes", "impact_ln")}
+				ep.plain[g], ep.hits[g] = l.Find(s+"."+name+".opens", "impact_ln"), l.Find(s+"."+name+".opens", "extra_hits_45")
 				ep.onset[g] = l.Find(s+"."+name+".opens", "onset_deg")
 				ep.open[g], ep.late[g] = l.Find(s, name+"_opens_deg"), l.Find(s, name+"_opens_late_deg")
 				ep.lag[g] = l.Find(s+"."+name+".opens", "lag_ms")
@@ -97,6 +103,14 @@ func places(l measure.Layout) []place {
 		}
 	}
 	return out
+}
+
+// struck is the deviation of an opening's impact: without the share of the pressure slope where that is known.
+func (ep *endPlace) struck(g int, dev []*duty.Deviation) *duty.Deviation {
+	if d := at(dev, ep.impact[g][0]); d != nil {
+		return d
+	}
+	return at(dev, ep.plain[g])
 }
 
 // group gives the name of a valve group.

@@ -41,6 +41,8 @@ type synth struct {
 	louder float64            // ln, accelerometer
 	hit    map[string]float64 // ln, by group
 	stick  map[string]float64 // ms, by group
+	pins   float64            // degrees from the openings' usual onset to the pin load's change of sign; 0: not known
+	rattle map[string]float64 // extra hits in 45 turns, by group
 	cover  map[string]float64 // K, by valve
 }
 
@@ -57,7 +59,7 @@ func newSynth(seed uint64) *synth {
 	}}}})
 	s := &synth{r: rand.New(rand.NewPCG(seed, 77)), layout: l, ratio: 2.5, rpm: 750, ps: 20e5, noise: 1,
 		own: make([]float64, len(l)), wander: make([]float64, len(l)), bent: make([]float64, len(l)),
-		leak: map[string]float64{}, hit: map[string]float64{}, stick: map[string]float64{}, cover: map[string]float64{}}
+		leak: map[string]float64{}, hit: map[string]float64{}, stick: map[string]float64{}, rattle: map[string]float64{}, cover: map[string]float64{}}
 	for i := range s.bent {
 		s.bent[i] = 0.7 + 0.6*s.r.Float64()
 	}
@@ -70,7 +72,7 @@ var synthSD = map[string][2]float64{
 	"n_comp_early": {.004, .0006}, "n_comp_late": {.0025, .0004}, "n_exp_early": {.005, .0008}, "n_exp_late": {.0025, .0004},
 	"discharge_opens_late_deg": {.25, .05}, "suction_opens_late_deg": {.25, .05}, "ve_suction_percent": {.3, .06},
 	"ve_discharge_percent": {.3, .06}, "mass_comp_percent": {.15, .03}, "mass_exp_percent": {.15, .03},
-	"leak_area_mm2": {3, .5}, "leak_noise_db": {.6, .3}, "impact_ln": {.18, .06}, "lag_ms": {.08, .015}, "onset_deg": {.3, .15}, "suction_opens_deg": {.25, .1}, "discharge_opens_deg": {.25, .1},
+	"leak_area_mm2": {3, .5}, "leak_noise_db": {.6, .3}, "impact_ln": {.18, .06}, "impact_norm_ln": {.15, .05}, "extra_hits_45": {.4, .3}, "pin_pulls_deg": {.2, .1}, "lag_ms": {.08, .015}, "onset_deg": {.3, .15}, "suction_opens_deg": {.25, .1}, "discharge_opens_deg": {.25, .1},
 	"suction_loss_kw": {.1, .03}, "discharge_loss_kw": {.1, .03}, "t_excess_k": {.5, .8}, "cover_above_group_k": {.3, .4},
 	"ratio_plateau": {.005, .001},
 }
@@ -101,6 +103,15 @@ func (s *synth) next() (duty.Point, measure.Vector) {
 			x += -40 + 20*n + s.heard(f.Subject) + 20*s.louder/math.Ln10
 		case f.Name == "impact_ln":
 			x += 1 + 0.5*lr + 0.6*n + s.louder + s.hit[group]
+		case f.Name == "impact_norm_ln":
+			x += -1 + s.louder + s.hit[group]
+		case f.Name == "extra_hits_45":
+			x += 1 + s.rattle[group]
+		case f.Name == "pin_pulls_deg":
+			x += 60 + 30*lr + s.pins
+			if s.pins == 0 {
+				x = math.NaN()
+			}
 		case f.Name == "lag_ms":
 			x += 0.8 - 0.2*n + s.stick[group]
 		case f.Name == "onset_deg":

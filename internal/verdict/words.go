@@ -124,8 +124,15 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 		}
 		share(measure.Vibration, idx, []float64{1}, 1)
 	case c.kind == ImpactingHard:
-		im := b.place.ends[c.end].impact[c.group]
-		share(measure.Vibration, im[:], []float64{1, 1}, 2)
+		ep := &b.place.ends[c.end]
+		idx = []int{ep.impact[c.group][0], ep.impact[c.group][1], ep.hits[c.group]}
+		if at(j.dev, idx[0]) == nil {
+			idx[0] = ep.plain[c.group]
+		}
+		share(measure.Vibration, idx, []float64{1, 1, 1}, 2)
+	case c.kind == Fluttering:
+		ep := &b.place.ends[c.end]
+		share(measure.Vibration, []int{ep.hits[c.group], ep.onset[c.group], ep.lag[c.group]}, []float64{1, 1, 1}, 3)
 	case c.kind == OpeningLate:
 		ep := b.place.ends[c.end]
 		share(measure.Vibration, []int{ep.onset[c.group], ep.lag[c.group], ep.impact[c.group][0]}, []float64{1, 1, 1}, 3)
@@ -201,6 +208,10 @@ func say(f measure.Feature, d *duty.Deviation) string {
 		return fmt.Sprintf("noise floor at the angles of %s %+.1f dB", f.Subject, r)
 	case "impact_ln":
 		return fmt.Sprintf("impact at %s %.2g times the usual", f.Subject, math.Exp(d.Residual))
+	case "impact_norm_ln":
+		return fmt.Sprintf("impact at %s %.2g times the usual", f.Subject, math.Exp(d.Residual))
+	case "extra_hits_45":
+		return fmt.Sprintf("%.0f extra hits in 45 turns after %s, usually %.0f", d.Value, f.Subject, math.Max(0, d.Expected))
 	case "lag_ms":
 		return fmt.Sprintf("impact at %s %.2f ms %s after its pressure event than usual", f.Subject, math.Abs(r), more("later", "sooner"))
 	case "onset_deg":
@@ -241,7 +252,7 @@ var gradeWords = [...]string{None: "ended", Advisory: "possible", Alert: "confir
 // sentence is the one line for the operator: what, how sure, why, how much, and what it may be mistaken for.
 func sentence(l measure.Layout, c *trial, f *Finding) string {
 	var s strings.Builder
-	what := map[string]string{Leaking: "leaking", ImpactingHard: "impacting hard", OpeningLate: "opening late (sticking)",
+	what := map[string]string{Leaking: "leaking", ImpactingHard: "impacting hard", OpeningLate: "opening late (sticking)", Fluttering: "fluttering",
 		DeadCentre: "angle reference has moved", PressureZero: "pressure zero has moved", Clearance: "clearance is not what it was",
 		GasChanged: "gas differs from the baseline's", AccelGain: "accelerometer sensitivity has changed"}[c.kind]
 	fmt.Fprintf(&s, "%s %s, %s", f.Subject, what, gradeWords[f.Grade])
