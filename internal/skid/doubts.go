@@ -58,6 +58,7 @@ func Doubts(sk *Skid) []Problem { return doubtsAt(sk, sk.duties()) }
 func doubtsAt(sk *Skid, ds []duty) []Problem {
 	d := &doubter{sk: sk, duties: ds}
 	d.sampling()
+	d.grid()
 	d.phase()
 	d.throws()
 	d.channels()
@@ -83,6 +84,18 @@ func (d *doubter) sampling() {
 	if 0.45*sk.Rate < top {
 		d.add("acquisition.sampling_hz", "Above 0.45 of the sampling rate nothing can be filtered, so the bands are cut there and leak noise, which lives at 10 to 20 kHz, may be lost. Compare twice the upper edge with the converter's rate.",
 			"the vibration bands reach to %s Hz, the sampling carries %s Hz", short(top), short(0.45*sk.Rate))
+	}
+}
+
+// leastBand is what pressures should be seen up to, Hz: a valve opens within a millisecond, gauge passages ring at 400
+// to 2000 Hz.
+const leastBand = 1500
+
+func (d *doubter) grid() {
+	m, g := d.sk.Machine, d.sk.Detection.GridDeg
+	if b := d.sk.PressureBand(m.MinRPM); b < leastBand && (d.sk.Rate <= 0 || b < 0.165*d.sk.Rate) {
+		d.add("detection.grid_deg", "On a slow machine half a degree is long: openings are rounded off and the gauge passage cannot be undone. A finer grid (0.25, 0.2, 0.1) costs no more than the usual one on a machine twice as fast.",
+			"on a grid of %s° pressures are seen up to %.0f Hz only at %s rpm", short(g), b, short(m.MinRPM))
 	}
 }
 

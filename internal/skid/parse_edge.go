@@ -37,6 +37,9 @@ func (r *reader) detection(o *object, sk *Skid) {
 	d := &sk.Detection
 	s := o.section("detection", "grid_deg", "impact_band_hz", "leak_band_hz", "block_turns", "learn_turns")
 	d.GridDeg = s.numOr("grid_deg", bounds{0.1, 1}, defaultGridDeg)
+	if n := 60 / d.GridDeg; math.Abs(n-math.Round(n)) > 1e-6 { // a turn reaches 60° beyond its dead centres
+		s.wrong("grid_deg", "write 0.1, 0.2, 0.25, 0.5 or 1", "60° is not a whole number of steps of %s°", short(d.GridDeg))
+	}
 	d.ImpactBand = r.band(s, "impact_band_hz", defaultImpact, sk.Rate)
 	d.LeakBand = r.band(s, "leak_band_hz", defaultLeak, sk.Rate)
 	d.BlockTurns = s.wholeOr("block_turns", 1, 1000, defaultBlockTurns)

@@ -16,7 +16,7 @@ func (p *page) sampling(sk *Skid) {
 		if !seen[rpm] {
 			seen[rpm] = true
 			per := sk.Rate / (rpm * 6)
-			rows = append(rows, row(f("at %s rpm", short(rpm)), f("%.1f samples per degree, %.1f per grid step of %s°", per, per*sk.Detection.GridDeg, short(sk.Detection.GridDeg))))
+			rows = append(rows, row(f("at %s rpm", short(rpm)), f("%.1f samples per degree, %.1f per grid step of %s°; pressures to %.1f kHz", per, per*sk.Detection.GridDeg, short(sk.Detection.GridDeg), sk.PressureBand(rpm)/1e3)))
 		}
 	}
 	d := sk.Detection

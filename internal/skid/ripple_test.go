@@ -99,3 +99,26 @@ func TestTheRippleIsComputedOnlyWhenItCanBe(t *testing.T) {
 		}
 	}
 }
+
+func TestASlowMachineIsToldToTakeAFinerGrid(t *testing.T) {
+	for grid, doubted := range map[string]bool{"0.5": true, "0.25": false} {
+		file, _ := swap(t, example(t), "  grid_deg: 0.5 ", "  grid_deg: "+grid+" ")
+		file, _ = swap(t, file, "min_rpm: 500", "min_rpm: 300")
+		sk := parsed(t, file)
+		found := false
+		for _, d := range Doubts(sk) {
+			found = found || d.Path == "detection.grid_deg" && strings.Contains(d.Msg, "954 Hz only at 300 rpm")
+		}
+		if found != doubted {
+			t.Errorf("grid %s°: doubted %v, band %g Hz", grid, found, sk.PressureBand(300))
+		}
+	}
+}
+
+func TestAGridThatDoesNotDivideIsRefused(t *testing.T) {
+	file, _ := swap(t, example(t), "  grid_deg: 0.5 ", "  grid_deg: 0.35 ")
+	_, err := Parse("m.yaml", []byte(file))
+	if ps := Problems(err); len(ps) != 1 || ps[0].Path != "detection.grid_deg" || !strings.Contains(ps[0].Msg, "not a whole number of steps of 0.35°") {
+		t.Errorf("got %v", err)
+	}
+}

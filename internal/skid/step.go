@@ -75,6 +75,16 @@ func (sk *Skid) unmeasured() string {
 	return ""
 }
 
+// PressureBand is the frequency, Hz, up to which (-3 dB) pressures on the angle grid are seen at a speed: package turn
+// smooths them over half a grid step, or over 0.8 samples. Without a stated rate only the grid bounds it.
+func (sk *Skid) PressureBand(rpm float64) float64 {
+	b := 0.265 / sk.Detection.GridDeg * 6 * rpm
+	if sk.Rate > 0 {
+		b = min(b, 0.166*sk.Rate)
+	}
+	return b
+}
+
 // Stages is the number of stages, the highest stage number of any throw.
 func (sk *Skid) Stages() int {
 	n := 0
