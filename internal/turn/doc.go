@@ -13,9 +13,14 @@
 // given (θ from the mark). Straight lines between marks would cost up to 1° while speed changes.
 //
 // Pressure. At each grid angle a line is fitted to the samples around it under a Gaussian weight of σ = half a grid
-// step, but at least 0.8 samples: anti-aliasing, interpolation and no delay in one. It is -3 dB at 0.265/step cycles
-// per degree (0.53 cycles per degree, order 191, for 0.5°; 2.2 kHz at 700 rpm), or at 0.166 of the sampling rate
-// where that is lower, and -10.7 dB at the grid's Nyquist. A ramp has no bias, a curved stroke σ²p″/2p′, under 0.003°.
+// step, but at least 0.8 samples: anti-aliasing, interpolation and no delay in one. With N = 180/step, the grid's
+// Nyquist as a shaft order (360 at 0.5°, 900 at 0.2°, 1800 at 0.1°), an order comes out too small by 0.3 % at 0.05 N,
+// 1.2 % at 0.1 N, 7.5 % at 0.25 N, 29 % (-3 dB) at 0.53 N and -10.7 dB at N. Beyond N, what is left folds back: 6 % from
+// 1.5 N onto 0.5 N, 1.2 % from 1.9 N onto 0.1 N. A ramp has no bias, a curved stroke σ²p″/2p′, under 0.003° at 0.5°.
+// The band in Hz follows the speed: 1.59·rpm/step, 2.2 kHz at 700 rpm and 0.95 kHz at 300 rpm for 0.5°, and never above
+// 0.166 of the sampling rate. The weight is not made narrower in time on slow machines: the grid could not carry what
+// came through, it would fold. A slow machine takes a finer grid (0.2° at 300 rpm: 2.4 kHz); the skid file's check says
+// when. The cost per second stays what it is at twice the speed and twice the step.
 // A known gauge passage is undone in the same step (Passage).
 //
 // Vibration. A causal Butterworth band-pass of order 2 per edge runs through all samples, across turns; nothing is
