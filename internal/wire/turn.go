@@ -54,6 +54,8 @@ type TurnEvent struct {
 	Window   *[2]float64        `json:"window_deg,omitempty"`
 	Conf     *float64           `json:"confidence,omitempty"` // 0..1
 	Shared   bool               `json:"shared,omitempty"`
+	Ring     string             `json:"ring,omitempty"`  // what rings in it: separated, one-sided, shared, cross-talk; absent when it is alone
+	Knock    bool               `json:"knock,omitempty"` // the pin load changes its sign here: the crosshead may knock
 	Why      string             `json:"why,omitempty"`
 	Values   map[string]float64 `json:"values,omitempty"` // peak, RMS and what else was heard in the window
 }
@@ -141,7 +143,14 @@ func (r *Recorder) throw(i int, t *turn.Throw, w *window.Throw, v *measure.Vecto
 		}
 		te := TurnEnd{End: EndNames[e], State: end.State.String(), Values: values[e], Absent: absent[e]}
 		for ev := range end.W {
-			te.Events = append(te.Events, event(ev, &end.W[ev], events[e][ev]))
+			rec := event(ev, &end.W[ev], events[e][ev])
+			if i < len(v.Marks) {
+				m := v.Marks[i][e][ev]
+				if rec.Knock = m.Knock; m.Sharing != measure.Alone {
+					rec.Ring = m.Sharing.String()
+				}
+			}
+			te.Events = append(te.Events, rec)
 		}
 		out.Ends = append(out.Ends, te)
 	}
