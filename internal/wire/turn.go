@@ -27,7 +27,7 @@ type TurnThrow struct {
 	ID     string                        `json:"throw"`
 	TimeS  *float64                      `json:"t_s,omitempty"` // its own head-end dead centre
 	RPM    *float64                      `json:"speed_rpm,omitempty"`
-	AngleU *float64                      `json:"angle_uncertainty_deg,omitempty"`
+	AngleU *float64                      `json:"angle_uncertainty_deg,omitempty"` // 95 % half-width
 	Duty   string                        `json:"duty"`
 	Step   int                           `json:"load_step"`
 	Values map[string]float64            `json:"values,omitempty"`
