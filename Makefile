@@ -6,7 +6,7 @@ GO         ?= go
 STATICCHECK = honnef.co/go/tools/cmd/staticcheck@v0.8.2
 SHARED     ?= $(abspath ../shared)
 
-.PHONY: demo test build check-format vet lint unit fuzz system bench setup clean
+.PHONY: demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
 
 build: bin/lapwing bin/lapwingd
 
@@ -48,8 +48,22 @@ fuzz:
 system: build
 	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/...
 
-bench:
-	$(GO) test -run '^$$' -bench . -benchmem ./internal/...
+# Figures, never a test: every room's benchmarks; the line stage by stage; the line against scipy in one run.
+PYTHON  ?= /usr/bin/python3
+BENCHED := model-17 synthetic-5 synthetic-17 synthetic-33
+bench: bin/lapwing $(BENCHED:%=out/bench/%.wav)
+	$(GO) test -run '^$$' -bench . -benchmem $$($(GO) list ./internal/... | grep -v /station$$)
+	GOMAXPROCS=1 $(GO) test -run '^$$' -bench Line -benchtime 3x ./internal/station
+	@if $(PYTHON) -c 'import numpy, scipy' 2>/dev/null; then \
+	  $(PYTHON) testdata/bench/compare.py bin/lapwing out/bench --yardstick "$(SHARED)/peer/scipy_line.py"; \
+	else echo "no numpy and scipy for $(PYTHON), so no comparison: make bench-setup installs them"; fi
+
+out/bench/%.wav: testdata/bench/record/main.go
+	$(GO) run ./testdata/bench/record -kind $(word 1,$(subst -, ,$*)) -channels $(word 2,$(subst -, ,$*)) -out $@
+
+# Only the comparison of make bench needs this.
+bench-setup:
+	apt-get install -y -q --no-install-recommends python3-scipy
 
 # Tools that the tests need and a plain Debian with Go, make and git has not.
 NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox
