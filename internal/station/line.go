@@ -166,6 +166,7 @@ func (l *Line) Coverage() []duty.Coverage {
 type Memory struct {
 	Windows window.Memory     `json:"windows"`
 	Judge   *verdict.Snapshot `json:"judge,omitempty"`
+	Heard   *measure.Memory   `json:"heard,omitempty"` // what each valve sounds like
 }
 
 // Memory copies it out.
@@ -175,6 +176,8 @@ func (l *Line) Memory() Memory {
 		s := l.judge.Snapshot()
 		m.Judge = &s
 	}
+	heard := l.measures.Snapshot()
+	m.Heard = &heard
 	return m
 }
 
@@ -183,6 +186,9 @@ func (l *Line) Remember(m Memory) error {
 	err := l.windows.Restore(m.Windows)
 	if m.Judge != nil && l.judge != nil {
 		err = errors.Join(err, l.judge.Restore(*m.Judge))
+	}
+	if m.Heard != nil {
+		err = errors.Join(err, l.measures.Restore(*m.Heard))
 	}
 	return err
 }
