@@ -25,16 +25,17 @@ var styleHash = func() string {
 }()
 
 var page = template.Must(template.New("page").Funcs(template.FuncMap{
-	"clock":  clock,
-	"num":    num,
-	"mib":    func(b int64) string { return fmt.Sprintf("%.1f MiB", float64(b)/(1<<20)) },
-	"val":    val,
-	"tone":   tone,
-	"mark":   mark,
-	"words":  inWords,
-	"unit":   unit,
-	"amount": amount,
-	"join":   func(s []string) string { return strings.Join(s, ", ") },
+	"clock":     clock,
+	"num":       num,
+	"mib":       func(b int64) string { return fmt.Sprintf("%.1f MiB", float64(b)/(1<<20)) },
+	"val":       val,
+	"tone":      tone,
+	"condition": condition,
+	"mark":      mark,
+	"words":     inWords,
+	"unit":      unit,
+	"amount":    amount,
+	"join":      func(s []string) string { return strings.Join(s, ", ") },
 }).Parse(pageHTML))
 
 func clock(t time.Time) string {
@@ -62,6 +63,19 @@ func val(m map[string]float64, name, format string) string {
 func tone(severity string) string {
 	if ranks[severity] > 0 {
 		return severity
+	}
+	return "mute"
+}
+
+// condition is the colour class of a channel's state.
+func condition(state string) string {
+	switch state {
+	case "failure":
+		return "alert"
+	case "out of specification", "maintenance required":
+		return "advisory"
+	case "good":
+		return "good"
 	}
 	return "mute"
 }

@@ -45,8 +45,9 @@ func full() *wire.Now {
 	return &wire.Now{
 		Skid: "heron-meadow", Name: "Heron Meadow", Site: "biomethane injection, unit 1", At: at, Caution: wire.Caution,
 		Health: wire.Health{Version: 1, Skid: "heron-meadow", At: at, State: "running", Line: "watching", Turns: 48211, RPM: ptr(742.4), Learned: true,
-			Tape:    wire.TapeHealth{Bytes: 3 << 30, Limit: 8 << 30, Oldest: at.Add(-4 * time.Hour), Newest: at},
-			Trouble: []string{"the broker has not been reached since 10:12: alarms wait in the outbox"}},
+			Tape:     wire.TapeHealth{Bytes: 3 << 30, Limit: 8 << 30, Oldest: at.Add(-4 * time.Hour), Newest: at},
+			Channels: []wire.Channel{{ID: "phase", Kind: "phase", State: "good"}, {ID: "a7", Kind: "acceleration", Place: "t2", State: "failure", Fault: "open cable", Reason: "a7 picks up mains and little else", SinceTurn: 48011}},
+			Trouble:  []string{"the broker has not been reached since 10:12: alarms wait in the outbox"}},
 		Latest:   &wire.Turn{Type: "turn", Turn: 48211, TimeS: 3890, Valid: true, RPM: ptr(742.4), Throws: []wire.TurnThrow{throw("t1", "following"), throw("t2", "idle")}},
 		Findings: []wire.Finding{leak, hard, seen}, Standing: []wire.Alarm{a, b, c}, Journal: []wire.Alarm{c, b, a, gone},
 		Clips: []wire.Clip{{ID: "20260301T100300Z-31", Reason: "alarm 31: t1.he.suction leaking, danger", Alarms: []uint64{31}, From: at.Add(-24 * time.Minute), To: at.Add(-22 * time.Minute), Complete: true, Bytes: 31 << 20},
@@ -153,6 +154,8 @@ func well(t *testing.T, page string) {
 func TestFullPage(t *testing.T) {
 	page := draw(t, full())
 	keep(t, "full", page)
+	contains(t, page, `<tr class="alert"><th scope="row">a7</th><td>acceleration, t2</td><td><span class="tone">▲ failure</span></td><td>48011</td><td class="text">a7 picks up mains and little else</td></tr>`,
+		`<tr class="good"><th scope="row">phase</th><td>phase</td><td><span class="tone">✓ good</span></td><td>–</td>`)
 	contains(t, page, "<title>1 danger, 1 alert, 1 advisory · Heron Meadow · Lapwing</title>", `class="banner danger" role="status">◆ Danger: throw t1, head end, suction valves: leaking<small>1 danger, 1 alert, 1 advisory</small></p>`,
 		"throw t1, head end, suction valves", "t1.he.suction leaking, confirmed", "discharge opens 4.1° later", "noise while closed is 9 dB above", "38.2 mm² (31 to 46)", "6.1 %",
 		"throw t1, head end, suction valve 2", "isolate, depressurise and lock out", `href="/api/v1/clips/20260301T100300Z-31"`, "for 23 min", "for 40 s", "came first",

@@ -16,6 +16,7 @@ const (
 	biasShare   = 0.1
 	cableShare  = 0.6 // of the variance in mains lines (same source)
 	cableRest   = 0.5 // of the least usual noise of whole turns, which mains do not reach
+	cableKurt   = 6.0 // where nothing is learnt yet: no blows of valves
 	humShare    = 0.02
 	humTimes    = 5.0  // usual share (same source)
 	humTimesOwn = 4.0  // and usual power: a signal that has shrunk has no hum for that
@@ -66,7 +67,7 @@ func (w *Watch) judge(i int, f *frame.Frame) {
 		w.swapped(c, f, raise)
 	}
 	switch {
-	case quick && c.share > cableShare && (!usual || s.white < cableRest*c.levels.White):
+	case quick && c.share > cableShare && (usual && s.white < cableRest*c.levels.White || !usual && f.Good() && s.kurtosis < cableKurt):
 		raise(OpenCable)
 	case usual && f.Good() && !found[LostBias] && w.dead(i):
 		raise(Dead)

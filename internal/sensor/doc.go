@@ -7,8 +7,8 @@
 // looked at yet is "function check", never "good".
 //
 // A single suspect turn is not used, which costs one turn. A second one within four turns confirms the fault: the
-// channel is withdrawn from the first of the two on, and given back after 50 turns without suspicion. What only asks
-// for maintenance (hum in an accelerometer, far below the impact band) leaves the channel in use.
+// channel is withdrawn from the first of the two on, and given back after 50 turns without suspicion (outside the valid
+// range: a third within six, since bursts do that now and then). What only asks for maintenance (hum in an accelerometer, far below the impact band) leaves the channel in use.
 //
 // Rules and first thresholds: reference/vibration.md section 5 (measured advice); those that differ say why where they
 // stand. Three things a broken sensor shows only against what was usual (noise, hum, a whole level) are compared

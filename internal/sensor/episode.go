@@ -5,6 +5,8 @@ import "math"
 // How often a suspicion must come before it counts.
 const (
 	confirmWithin = 4  // turns, or looks, among which two must be suspect
+	rangeTimes    = 3  // turns with values outside the valid range …
+	rangeWithin   = 6  // … among so many
 	phaseTimes    = 3  // suspect turns of the phase reference …
 	phaseWithin   = 50 // … among so many
 )

@@ -1,14 +1,19 @@
 package sensor
 
-import "lapwing/internal/frame"
+import (
+	"math"
+
+	"lapwing/internal/frame"
+)
 
 // marks looks at what the shaft reference showed in a turn.
 func (w *Watch) marks(c *watched, f *frame.Frame) {
 	if f.Q&(frame.Gap|frame.Starting) != 0 {
+		w.ref = periods{}
 		return
 	}
 	c.seen = true
-	if f.Q&(frame.Missing|frame.Uneven) != 0 {
+	if w.ref.odd(f) {
 		if c.ep[Unsteady].suspect(w.frames, f.Turn, f.Turn, f.Seq0, phaseTimes, phaseWithin) {
 			c.ep[Unsteady].reason = say(c, Unsteady)
 		}
@@ -18,6 +23,31 @@ func (w *Watch) marks(c *watched, f *frame.Frame) {
 			c.ep[Pulses].reason = say(c, Pulses)
 		}
 	}
+}
+
+// periods are the last two, samples; 0 not known.
+type periods struct{ before, last float64 }
+
+// level is how even neighbouring turns are for a lost mark to be one: a shaft that starts or coasts to its stop
+// doubles its period within turns.
+const level = 0.08
+
+// odd reports whether the marks of a turn are not those of a shaft. A speed that changes faster than the machine should
+// is not yet odd while it goes one way: a motor that starts, a machine that stops.
+func (p *periods) odd(f *frame.Frame) bool {
+	now := f.Mark1 - f.Mark0
+	was := *p
+	p.before, p.last = p.last, now
+	if was.before == 0 {
+		return false
+	}
+	near := func(a, b float64) bool { return math.Abs(a-b) < level*b }
+	if f.Q&frame.Missing != 0 {
+		k := math.Round(now / was.last)
+		p.last = now / max(1, k)
+		return k > 1 && near(now/k, was.last) && near(was.last, was.before)
+	}
+	return f.Q&frame.Uneven != 0 && (now-was.last)*(was.last-was.before) < 0
 }
 
 // noisyPulse is the height of a pulse over the noise under which marks will soon be lost: they are looked for above
@@ -32,16 +62,16 @@ func (w *Watch) Reference(s frame.Status, seq int64) {
 		if c.Kind != Phase {
 			continue
 		}
+		c.looks++
 		if e := &c.ep[NoMarks]; s.State == frame.StateLost {
 			e.last = w.turn
 			if !e.standing {
 				*e = episode{standing: true, since: w.turn, seq: seq, last: w.turn, reason: say(c, NoMarks)}
 			}
 		}
-		if e := &c.ep[Pulses]; s.State == frame.StateRunning && s.Height < noisyPulse*s.Noise {
-			e.last = w.turn
-			if !e.standing {
-				*e = episode{standing: true, since: w.turn, seq: seq, last: w.turn, reason: saidWeak(c, s.Height/s.Noise)}
+		if e := &c.ep[Faint]; s.State == frame.StateRunning && s.Height < noisyPulse*s.Noise {
+			if e.suspect(c.looks, w.turn, w.turn, seq, 2, confirmWithin) {
+				e.reason = saidWeak(c, s.Height/s.Noise)
 			}
 		}
 	}

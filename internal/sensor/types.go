@@ -76,11 +76,12 @@ const (
 	NoMarks                // phase reference: no marks though the shaft was at speed
 	Unsteady               // phase reference: marks missing, or at impossible times
 	Pulses                 // phase reference: extra, ringing or weak pulses
+	Faint                  // phase reference: marks that hardly stand out of the noise
 	faults
 )
 
 var faultNames = [...]string{"flat", "open cable", "dead", "lost bias", "swapped", "out of range", "clipped", "noisy", "hum",
-	"gain", "zero", "no marks", "marks missing", "pulses"}
+	"gain", "zero", "no marks", "marks missing", "pulses", "faint marks"}
 
 func (f Fault) String() string {
 	if int(f) < len(faultNames) {
@@ -99,7 +100,7 @@ func (f Fault) category(k Kind) Category {
 		if k == Acceleration {
 			return MaintenanceRequired
 		}
-	case Pulses:
+	case Pulses, Faint:
 		return MaintenanceRequired
 	}
 	return OutOfSpecification

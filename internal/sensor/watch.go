@@ -22,6 +22,7 @@ type Watch struct {
 	turn     int64 // of the newest frame
 	frames   int64
 	declared bool
+	ref      periods // of the shaft
 }
 
 // watched is one channel with its past.
@@ -153,11 +154,17 @@ func (w *Watch) scanAll(f *frame.Frame) {
 	}
 }
 
-// raise books a suspicion of the turn in hand.
+// raise books a suspicion of the turn in hand. What lies outside the valid range in one turn is kept out of it where
+// the turn is made, sample by sample; it takes more of them to say something of the channel.
 func (w *Watch) raise(c *watched, k Fault, f *frame.Frame, why func() string) {
-	c.recent[c.next] = doubt{k, f.Seq0, f.Seq0 + int64(c.scan.n)}
-	c.next = (c.next + 1) % len(c.recent)
-	if c.ep[k].suspect(w.frames, f.Turn, f.Turn, f.Seq0, 2, confirmWithin) {
+	times, within := 2, int64(confirmWithin)
+	if k == Range {
+		times, within = rangeTimes, rangeWithin
+	} else {
+		c.recent[c.next] = doubt{k, f.Seq0, f.Seq0 + int64(c.scan.n)}
+		c.next = (c.next + 1) % len(c.recent)
+	}
+	if c.ep[k].suspect(w.frames, f.Turn, f.Turn, f.Seq0, times, within) {
 		c.ep[k].reason = why()
 	}
 }

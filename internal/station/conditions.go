@@ -81,7 +81,7 @@ func (l *Line) findingConditions(conds []alarm.Condition, throw int, b *duty.Blo
 			Sentence: f.Sentence, Detail: wire.FromFinding(f, l.layout), Turn: f.Turn, Seq0: f.Seq0, Seq1: f.Seq1})
 	}
 	for _, p := range l.alarms.Points() {
-		if slices.Contains(said, p.Key) || strings.Count(p.Key, "/") != 1 {
+		if slices.Contains(said, p.Key) || strings.Count(p.Key, "/") != 1 || p.Kind == sensorKind {
 			continue
 		}
 		t, ends := l.owner(p.Subject)

@@ -89,7 +89,7 @@ func (d *desk) note(a wire.Alarm) {
 func (s *Station) take(o *Output) error {
 	err := s.book(o)
 	s.publish(o, o.At)
-	if s.o.OnTurn != nil {
+	if s.o.OnTurn != nil && o.Record.Type != "" {
 		s.o.OnTurn(&o.Record)
 	}
 	return err
@@ -330,6 +330,7 @@ func (s *Station) health(at time.Time) wire.Health {
 	default:
 		h.Line = "measuring only: no baseline yet (declare the machine healthy with --learn)"
 	}
+	h.Channels = s.line.Channels()
 	h.Tape = wire.TapeHealth{Bytes: st.LiveBytes, Limit: s.sk.Tape.MaxBytes, Oldest: st.OldestUTC, Newest: st.NewestUTC, Dropped: int64(st.QueueDroppedBlocks), Clips: st.Clips}
 	if s.pub != nil {
 		h.Uplink = s.pub.Status()

@@ -11,6 +11,7 @@ import (
 	"lapwing/internal/frame"
 	"lapwing/internal/measure"
 	"lapwing/internal/ripple"
+	"lapwing/internal/sensor"
 	"lapwing/internal/skid"
 	"lapwing/internal/turn"
 	"lapwing/internal/verdict"
@@ -43,6 +44,7 @@ type Line struct {
 	judge    *verdict.Judge
 	alarms   *alarm.Annunciator
 	limits   []limitWatch
+	sensors  *sensors
 
 	vec    measure.Vector
 	win    []window.Input
@@ -51,6 +53,7 @@ type Line struct {
 	mea    []measure.Input
 	points []duty.Point
 	devs   []duty.Deviation
+	part   [][]int32 // scratch of cut
 	out    func(*Output)
 	count  Count
 	steady []int
@@ -75,7 +78,7 @@ type Count struct {
 	Blocks         int64 // evidence blocks judged
 }
 
-// Output is what one turn brought.
+// Output is what one turn brought. Between turns (its Record has no Type) it brings only that the marks are gone.
 type Output struct {
 	Record      wire.Turn
 	At          time.Time         // of the turn's dead centre
@@ -109,6 +112,9 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 	}
 	l.measures = measure.New(measure.Config{Machine: measureMachine(sk), Atmosphere: sk.Machine.Atmosphere})
 	l.layout = l.measures.Layout()
+	if l.sensors, err = newSensors(sk, info, l.layout); err != nil {
+		return nil, err
+	}
 	l.windows = window.NewTracker(window.Config{Works: works(sk)})
 	l.record = wire.NewRecorder(sk, l.layout, info.Rate)
 	for i := range sk.Throws {
@@ -139,6 +145,9 @@ func (l *Line) Count() Count { return l.count }
 // Phase is the state of the shaft reference.
 func (l *Line) Phase() frame.Status { return l.frames.Status() }
 
+// Channels is the state of every channel.
+func (l *Line) Channels() []wire.Channel { return l.sensors.health() }
+
 // Learnt gives the steady turns learnt so far and how many are wanted; 0, 0 when no learning run is on.
 func (l *Line) Learnt() (have, want int) {
 	if l.learner == nil {
@@ -161,17 +170,19 @@ func (l *Line) Coverage() []duty.Coverage {
 	return l.learner.Coverage()
 }
 
-// Memory is what a restart should not have to learn again, beside baseline and alarm states: the valves' lags, and the
-// evidence of the last blocks, without which a standing alert would fall and rise again.
+// Memory is what a restart should not have to learn again, beside baseline and alarm states: the valves' lags, what is
+// usual on each channel, and the evidence of the last blocks, without which a standing alert would fall and rise again.
 type Memory struct {
 	Windows window.Memory     `json:"windows"`
 	Judge   *verdict.Snapshot `json:"judge,omitempty"`
 	Heard   *measure.Memory   `json:"heard,omitempty"` // what each valve sounds like
+	Sensors *sensor.Memory    `json:"sensors,omitempty"`
 }
 
 // Memory copies it out.
 func (l *Line) Memory() Memory {
-	m := Memory{Windows: l.windows.Snapshot()}
+	usual := l.sensors.Snapshot()
+	m := Memory{Windows: l.windows.Snapshot(), Sensors: &usual}
 	if l.judge != nil {
 		s := l.judge.Snapshot()
 		m.Judge = &s
@@ -189,6 +200,9 @@ func (l *Line) Remember(m Memory) error {
 	}
 	if m.Heard != nil {
 		err = errors.Join(err, l.measures.Restore(*m.Heard))
+	}
+	if m.Sensors != nil {
+		err = errors.Join(err, l.sensors.Restore(*m.Sensors))
 	}
 	return err
 }
@@ -216,8 +230,66 @@ func (l *Line) Add(b *acq.Block, emit func(*Output)) error {
 	l.count.Samples += int64(b.N)
 	l.count.Lost += b.Lost
 	l.out = emit
-	return l.frames.Add(b, l.frame)
+	return l.cut(b)
 }
+
+// cut passes a block on in parts that end where the shaft reference is to be asked: at the same samples however the
+// stream was cut.
+func (l *Line) cut(b *acq.Block) error {
+	for _, x := range b.Counts {
+		if len(x) != b.N {
+			return l.frames.Add(b, l.frame) // which says what is wrong with it
+		}
+	}
+	for from := 0; ; {
+		end := b.Seq0 + int64(from)
+		part := int(l.sensors.every - end%l.sensors.every)
+		if from == 0 && part >= b.N {
+			if err := l.frames.Add(b, l.frame); err != nil {
+				return err
+			}
+			if part == b.N {
+				l.reference(b.Seq0 + int64(b.N))
+			}
+			return nil
+		}
+		part = min(part, b.N-from)
+		p := *b
+		p.Seq0, p.N, p.Counts = end, part, l.part[:0]
+		if from > 0 {
+			p.Lost = 0
+		}
+		for _, x := range b.Counts {
+			p.Counts = append(p.Counts, x[from:from+part])
+		}
+		l.part = p.Counts
+		if err := l.frames.Add(&p, l.frame); err != nil {
+			return err
+		}
+		if from += part; (end+int64(part))%l.sensors.every == 0 {
+			l.reference(end + int64(part))
+		}
+		if from >= b.N {
+			return nil
+		}
+	}
+}
+
+// reference asks the shaft reference how it does. When its marks are gone there are no turns to say so with.
+func (l *Line) reference(seq int64) {
+	l.sensors.Reference(l.frames.Status(), seq)
+	for i, k := range l.sensors.kinds {
+		if st := l.sensors.State(i); k == skid.PhaseMark && st.Category > sensor.Good && st.Fault == sensor.NoMarks && st.First == seq {
+			o := Output{At: l.utc(float64(seq) / l.info.Rate), Vector: &l.vec, Points: l.points}
+			o.Record.Turn, o.Record.TimeS = st.Since, math.Round((float64(seq)/l.info.Rate-l.start)*1e7)/1e7
+			o.Transitions = l.alarms.Step(o.At, l.sensors.condition(nil, i, st.Since, seq, l.reach()))
+			l.out(&o)
+		}
+	}
+}
+
+// reach is how far back a sensor's alarm asks for raw samples, beside what the skid file protects anyway.
+func (l *Line) reach() int64 { return int64(10 * l.info.Rate) }
 
 // Flush ends the stream: the last turns come out as far as they can be had.
 func (l *Line) Flush(emit func(*Output)) {
@@ -226,7 +298,11 @@ func (l *Line) Flush(emit func(*Output)) {
 	l.turns.Flush(l.turn)
 }
 
-func (l *Line) frame(f *frame.Frame) { l.turns.Add(f, l.turn) }
+func (l *Line) frame(f *frame.Frame) {
+	l.sensors.Declare(l.learner != nil && (l.learn.Steady > 0 || f.Turn >= l.learn.From && f.Turn < l.learn.To))
+	l.sensors.Frame(f)
+	l.turns.Add(f, l.turn)
+}
 
 // utc is the time at so many seconds of sample clock; without a stated start sample 0 is taken in 1970, which says
 // nothing about the day.
@@ -269,6 +345,7 @@ func (l *Line) turn(t *turn.Turn) {
 	l.count.Turns++
 	proc := l.proc(t.Time)
 	l.prepare(t, proc)
+	l.sensors.withdraw(t)
 	if l.uneven != nil && t.Valid() {
 		for i := range l.behind {
 			l.behind[i] = l.win[i].LinePs
@@ -279,6 +356,8 @@ func (l *Line) turn(t *turn.Turn) {
 	if t.Valid() {
 		l.refine(w)
 		l.measures.Measure(&l.vec, t, w, l.mea)
+		l.sensors.strip(&l.vec, t)
+		l.sensors.level(t, w)
 	} else {
 		l.count.Invalid++
 		l.count.Reasons[t.Reason]++
@@ -419,9 +498,11 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 	var conds []alarm.Condition
 	now := l.utc(t.Time)
 	conds = l.limitConditions(conds, t)
+	conds = l.sensors.conditions(conds, t.Number, t.Seq1, l.reach())
 	if l.ref != nil {
 		for i := range l.points {
 			l.devs = l.ref.Deviate(l.devs[:0], i, l.points[i], &l.vec)
+			l.sensors.compare(i, t, l.points[i], l.devs)
 			block, ok := l.blocks.Add(i, l.points[i], &l.vec, l.devs)
 			if !ok {
 				continue

@@ -245,8 +245,10 @@ func (r *review) write(o *Output) error {
 		}
 		return nil
 	}
-	if err := put(o.Record); err != nil {
-		return err
+	if o.Record.Type != "" {
+		if err := put(o.Record); err != nil {
+			return err
+		}
 	}
 	for i := range o.News {
 		if err := put(wire.FindingRecord(o.Record.TimeS, &o.News[i], r.line.Layout())); err != nil {

@@ -34,9 +34,22 @@ type Health struct {
 	LearnLeft   int        `json:"learning_turns_left"`
 	SamplesLost int64      `json:"samples_lost"`
 	QueueFull   int64      `json:"blocks_dropped_before_line"`
+	Channels    []Channel  `json:"channels,omitempty"`
 	Tape        TapeHealth `json:"tape"`
 	Uplink      any        `json:"uplink,omitempty"`
 	Trouble     []string   `json:"trouble,omitempty"` // what somebody should look at, in plain words
+}
+
+// Channel is how one input is doing. State is a category of NAMUR NE 107, and "good" or "function check" otherwise: a
+// channel in failure or out of specification is not used; one that requires maintenance is.
+type Channel struct {
+	ID        string `json:"id"`
+	Kind      string `json:"kind"`            // phase, pressure, acceleration
+	Place     string `json:"place,omitempty"` // t1.he, t1
+	State     string `json:"state"`
+	Fault     string `json:"fault,omitempty"`  // flat, open cable, hum …
+	Reason    string `json:"reason,omitempty"` // one sentence
+	SinceTurn int64  `json:"since_turn,omitempty"`
 }
 
 // Offline is the health message that the broker gives out when the daemon is gone: nothing else is known then, not

@@ -236,7 +236,8 @@ func TestHealth(t *testing.T) {
 		"bare": {Version: 1, Skid: "heron-meadow", State: "standstill", Line: "watching"},
 		"full": {Version: 1, Skid: "heron-meadow", At: time.Unix(1e9, 0).UTC(), State: "running", Line: "watching", Turns: 9, BadTurns: 1, RPM: &rpm, Learned: true,
 			Tape:   wire.TapeHealth{Bytes: 3, Limit: 9, Oldest: time.Unix(1e9, 0).UTC(), Newest: time.Unix(2e9, 0).UTC(), Dropped: 1, Clips: 2, Problems: []string{"x"}},
-			Uplink: uplink.Status{Connected: true, Since: time.Unix(1e9, 0).UTC(), LastError: "x", Connections: 4, Sent: 9, Replaced: 1}, Trouble: []string{"look"}},
+			Uplink: uplink.Status{Connected: true, Since: time.Unix(1e9, 0).UTC(), LastError: "x", Connections: 4, Sent: 9, Replaced: 1}, Trouble: []string{"look"},
+			Channels: []wire.Channel{{ID: "phase", Kind: "phase", State: "good"}, {ID: "p1h", Kind: "pressure", Place: "t1.he", State: "out of specification", Fault: "hum", Reason: "p1h carries hum", SinceTurn: 7}}},
 		"uplink not yet up": {Version: 1, Skid: "heron-meadow", State: "starting", Uplink: uplink.Status{}},
 	} {
 		t.Run(name, func(t *testing.T) {
