@@ -13,8 +13,7 @@ type Assembler struct {
 	ring  ring
 	holes spans // lost samples, filled with the code before them
 	clips spans // overloads the source reported
-	det   *detector
-	gate  *gate
+	ref   reference
 
 	begun  bool
 	began  int64 // sample number of the first sample, or of the first after a long loss
@@ -36,8 +35,11 @@ func New(cfg Config) (*Assembler, error) {
 	}
 	a := &Assembler{cfg: cfg, turn: cfg.FirstTurn}
 	a.ring.buf = make([][]int32, cfg.Inputs)
-	a.det = newDetector(&a.cfg, &a.ring, &a.holes)
-	a.gate = newGate(&a.cfg, a.det)
+	if a.cfg.Wheel.Teeth > 0 {
+		a.ref = newCog(&a.cfg, &a.ring, &a.holes)
+	} else {
+		a.ref = newOneMark(&a.cfg, &a.ring, &a.holes)
+	}
 	return a, nil
 }
 
@@ -89,25 +91,25 @@ func (a *Assembler) Flush(emit func(*Frame)) {
 		return
 	}
 	a.drain(emit)
-	a.gate.unlock()
+	a.ref.stop()
 	a.tell(a.ring.end())
 	a.begun = false
 }
 
 func (a *Assembler) begin(seq int64) {
 	a.begun, a.began, a.next, a.given = true, seq, seq, seq
-	a.gate.lastPulse = math.Inf(-1)
 	a.holes, a.clips = a.holes[:0], a.clips[:0]
 	a.ring.reset(seq)
-	a.det.restart()
+	a.ref.restart()
 }
 
 // lose deals with n lost samples.
 func (a *Assembler) lose(n int64, emit func(*Frame)) {
 	end := a.ring.end()
-	short := a.gate.minT
-	if a.gate.locked {
-		short = min(2*a.gate.expect, a.gate.keep/2)
+	st := a.ref.state()
+	short := st.minT
+	if st.locked {
+		short = min(2*st.expect, st.keep/2)
 	}
 	if float64(n) <= short {
 		a.ring.room(int(n), a.needed())
@@ -116,12 +118,11 @@ func (a *Assembler) lose(n int64, emit func(*Frame)) {
 		a.run(a.ring.end()-1, emit)
 		return
 	}
-	if a.gate.locked {
-		a.turn += int64(math.Round(float64(n) / a.gate.expect)) // they went by unseen
+	if st.locked {
+		a.turn += int64(math.Round(float64(n) / st.expect)) // they went by unseen
 	}
 	a.drain(emit)
-	a.gate.unlock()
-	a.gate.lost = false
+	a.ref.stop()
 	a.tell(end)
 	a.begin(end + n)
 }
@@ -129,15 +130,8 @@ func (a *Assembler) lose(n int64, emit func(*Frame)) {
 // run shows the detector all samples before end.
 func (a *Assembler) run(end int64, emit func(*Frame)) {
 	for ; a.next < end; a.next++ {
-		if p, ok := a.det.step(a.next, a.gate.locked); ok {
-			if c, ok := a.gate.pulse(p); ok {
-				a.emit(c, emit)
-			}
-		}
-		if float64(a.next) >= a.gate.due {
-			if c, ok := a.gate.tick(float64(a.next)); ok {
-				a.emit(c, emit)
-			}
+		if a.ref.sample(a.next) {
+			a.give(emit)
 		}
 	}
 	a.tell(a.needed())
@@ -146,15 +140,17 @@ func (a *Assembler) run(end int64, emit func(*Frame)) {
 // drain decides what is pending, at the end of a stretch of samples.
 func (a *Assembler) drain(emit func(*Frame)) {
 	a.run(a.ring.end(), emit)
-	if p, ok := a.det.finish(); ok {
-		if c, ok := a.gate.pulse(p); ok {
-			a.emit(c, emit)
+	a.ref.finish()
+	a.give(emit)
+}
+
+func (a *Assembler) give(emit func(*Frame)) {
+	for {
+		c, ok := a.ref.next()
+		if !ok {
+			return
 		}
-	}
-	if a.gate.hasCand {
-		if c, ok := a.gate.accept(); ok {
-			a.emit(c, emit)
-		}
+		a.emit(c, emit)
 	}
 }
 
@@ -167,13 +163,7 @@ func (a *Assembler) tell(seq int64) {
 }
 
 // needed gives the oldest sample that must stay.
-func (a *Assembler) needed() int64 {
-	n := a.det.needs(a.next)
-	if a.gate.open {
-		n = min(n, int64(math.Floor(a.gate.m.pos)))
-	}
-	return n
-}
+func (a *Assembler) needed() int64 { return a.ref.needs(a.next) }
 
 func (a *Assembler) emit(c cut, emit func(*Frame)) {
 	if a.used == len(a.pool) {
@@ -195,6 +185,8 @@ func (a *Assembler) emit(c cut, emit func(*Frame)) {
 	for n, x := range a.ring.buf {
 		f.Counts[n] = x[i:j:j]
 	}
+	f.Inner = append(f.Inner[:0], c.inner...)
+	a.turn += c.skip
 	f.Turn, f.Seq0, f.Mark0, f.Mark1, f.Q = a.turn, from, c.a.pos, c.b.pos, q
 	a.turn += int64(c.k)
 	a.frames++

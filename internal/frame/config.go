@@ -24,18 +24,18 @@ func (e Edge) String() string {
 
 // Config says what the phase reference looks like.
 type Config struct {
-	Rate         float64 // samples per second and channel, > 0
-	Inputs       int     // inputs of every block, > 0
-	Channel      int     // index of the phase signal among them
-	Edge         Edge    // which edge is the mark
-	Auto         bool    // find the levels from the signal: the pulse must stand 3 codes and 8 times the noise out of it
-	Threshold    float64 // codes; where Auto is false, the level whose crossing is the mark
-	Hysteresis   float64 // codes, >= 0, between the crossing and being ready for the next; 0: by the pulse's height
-	MarksPerTurn int     // 0 or 1: one mark a turn
-	MinRPM       float64 // slower is standstill; 0: 30
-	MaxRPM       float64 // faster cannot be a shaft mark; 0: 2500
-	KeepSeconds  float64 // longest frame kept; 0: 2.2 turns at MinRPM, at least 3 s
-	FirstTurn    int64   // number of the first frame
+	Rate        float64 // samples per second and channel, > 0
+	Inputs      int     // inputs of every block, > 0
+	Channel     int     // index of the phase signal among them
+	Edge        Edge    // which edge is the mark
+	Auto        bool    // find the levels from the signal: the pulse must stand 3 codes and 8 times the noise out of it
+	Threshold   float64 // codes; where Auto is false, the level whose crossing is the mark
+	Hysteresis  float64 // codes, >= 0, between the crossing and being ready for the next; 0: by the pulse's height. Teeth: what the signal must turn back by
+	Wheel       Wheel   // zero: one mark a turn
+	MinRPM      float64 // slower is standstill; 0: 30
+	MaxRPM      float64 // faster cannot be a shaft mark; 0: 2500
+	KeepSeconds float64 // longest frame kept; 0: 2.2 turns at MinRPM, at least 3 s
+	FirstTurn   int64   // number of the first frame
 }
 
 const (
@@ -45,9 +45,6 @@ const (
 
 // withDefaults fills in zero fields and refuses what cannot be.
 func (c Config) withDefaults() (Config, error) {
-	if c.MarksPerTurn == 0 {
-		c.MarksPerTurn = 1
-	}
 	if c.MinRPM == 0 {
 		c.MinRPM = defaultMinRPM
 	}
@@ -77,8 +74,8 @@ func (c Config) withDefaults() (Config, error) {
 	if !(c.Hysteresis >= 0) || math.IsInf(c.Hysteresis, 0) {
 		no("hysteresis %v codes, want >= 0", c.Hysteresis)
 	}
-	if c.MarksPerTurn != 1 {
-		no("%d marks per turn: toothed wheels are not supported yet; use a reference with one mark per turn", c.MarksPerTurn)
+	if err := c.Wheel.Check(); err != nil {
+		no("%w", err)
 	}
 	switch {
 	case !(c.MinRPM > 0) || !(c.MaxRPM > c.MinRPM) || math.IsInf(c.MaxRPM, 0):
@@ -86,6 +83,9 @@ func (c Config) withDefaults() (Config, error) {
 	case c.Rate > 0 && c.Rate*60/c.MaxRPM < minTurn:
 		no("%.3g samples per turn at %v rpm, want at least %d: sample faster or lower the greatest speed",
 			c.Rate*60/c.MaxRPM, c.MaxRPM, minTurn)
+	case c.Wheel.Teeth > 0 && c.Rate*60/c.MaxRPM < minPitch*float64(c.Wheel.Teeth):
+		no("%.3g samples per tooth at %v rpm, want at least %d: sample faster, lower the greatest speed or use a wheel of fewer teeth",
+			c.Rate*60/c.MaxRPM/float64(c.Wheel.Teeth), c.MaxRPM, minPitch)
 	}
 	if !(c.KeepSeconds > 0) || !(c.KeepSeconds <= 600) {
 		no("%v s kept, want 0 to 600", c.KeepSeconds)
@@ -98,3 +98,6 @@ func (c Config) withDefaults() (Config, error) {
 
 // minTurn is the least number of samples in the shortest turn.
 const minTurn = 40
+
+// minPitch is the least number of samples from tooth to tooth in the shortest turn.
+const minPitch = 4

@@ -181,21 +181,13 @@ func (d *detector) search() {
 	d.setLevels()
 }
 
-// code gives the signal at sample j after the median of three.
-func (d *detector) code(j int64) int32 {
-	x, i := d.ring.buf[d.cfg.Channel], j-d.ring.first
-	if i == 0 || i+1 >= int64(len(x)) {
-		return x[i]
-	}
-	a, b, c := x[i-1], x[i], x[i+1]
-	return max(min(a, b), min(max(a, b), c))
+func (d *detector) z(j int64) float64 {
+	return d.lev.sign * (float64(d.ring.code(d.cfg.Channel, j)) - d.lev.base)
 }
-
-func (d *detector) z(j int64) float64 { return d.lev.sign * (float64(d.code(j)) - d.lev.base) }
 
 // step takes sample j and gives the pulse that it decides, if any.
 func (d *detector) step(j int64, locked bool) (pulse, bool) {
-	v := d.code(j)
+	v := d.ring.code(d.cfg.Channel, j)
 	if d.cfg.Auto && d.survey.add(v) && !locked {
 		d.search()
 	}

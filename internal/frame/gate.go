@@ -26,6 +26,9 @@ type cut struct {
 	a, b pulse
 	k    int // revolutions it spans
 	q    Quality
+
+	skip  int64     // revolutions before it that are in no frame
+	inner []float64 // further marks of a toothed wheel
 }
 
 // gate decides by time and height which pulses are marks of the shaft.
@@ -40,6 +43,7 @@ type gate struct {
 	locked bool // the speed is known
 	lost   bool // marks stopped coming at full speed
 	hist   periods
+	coast  coast
 	expect float64 // samples: the next period, when locked
 
 	cand      pulse // in its time, but not the best it could be: wait for a better one
@@ -178,6 +182,7 @@ func (g *gate) accept() (cut, bool) {
 		c.q |= Uneven
 	}
 	g.hist.push(period)
+	g.coast.push(period)
 	if !g.turnLong(period) {
 		g.unlock()
 		g.begin(p)
@@ -296,6 +301,7 @@ func (g *gate) chain(first, stride int) bool {
 func (g *gate) unlock() {
 	g.locked, g.open, g.hasCand, g.lowered, g.weak = false, false, false, false, false
 	g.nr, g.sinceMark = 0, 0
+	g.coast.reset()
 	g.extras = g.extras[:0]
 	g.due = math.Inf(1)
 	g.det.unlock()

@@ -76,14 +76,12 @@ const (
 	twoSided    = 0.4 // the lesser excursion's share of the greater above which the pulse counts as bipolar
 )
 
-// find gives the levels of the signal as seen lately. Not ok: there are no pulses that stand out of the noise.
-//
-// The range is the median of the extremes of three thirds of the time, so that disturbances in one third do not
-// count. The resting level is the median of the hops' means.
-func (s *survey) find(edge Edge) (levels, bool) {
+// span gives the range of the signal as seen lately: the median of the extremes of three thirds of the time, so that
+// disturbances in one third do not count.
+func (s *survey) span() (bottom, top float64, ok bool) {
 	n := s.held()
 	if n < leastHops {
-		return levels{}, false
+		return 0, 0, false
 	}
 	var lo, hi [3]float64
 	for t := range 3 {
@@ -94,7 +92,18 @@ func (s *survey) find(edge Edge) (levels, bool) {
 		}
 		lo[t], hi[t] = float64(l), float64(h)
 	}
-	bottom, top := median3(lo), median3(hi)
+	return median3(lo), median3(hi), true
+}
+
+// find gives the levels of the signal as seen lately. Not ok: there are no pulses that stand out of the noise.
+//
+// The resting level is the median of the hops' means.
+func (s *survey) find(edge Edge) (levels, bool) {
+	n := s.held()
+	if n < leastHops {
+		return levels{}, false
+	}
+	bottom, top, _ := s.span()
 	means, rms := s.scratch[:0], s.scratch2[:0]
 	for i := range n {
 		p := &s.hops[(s.n-n+i)%len(s.hops)]

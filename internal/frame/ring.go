@@ -41,6 +41,16 @@ func (r *ring) room(n int, keep int64) {
 	r.first += int64(drop)
 }
 
+// code gives input n at sample j after the median of three.
+func (r *ring) code(n int, j int64) int32 {
+	x, i := r.buf[n], j-r.first
+	if i == 0 || i+1 >= int64(len(x)) {
+		return x[i]
+	}
+	a, b, c := x[i-1], x[i], x[i+1]
+	return max(min(a, b), min(max(a, b), c))
+}
+
 func (r *ring) take(b *acq.Block) {
 	for i, x := range b.Counts {
 		r.buf[i] = append(r.buf[i], x...)

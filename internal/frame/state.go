@@ -12,9 +12,10 @@ const (
 	StateStarting         // marks come, the speed is not established
 	StateRunning          // the speed is known
 	StateLost             // marks stopped coming although the shaft was at speed: suspect the pick-up or its cable
+	StateCoasting         // the speed is known and falls from turn to turn without recovery: the driver is off (see coast)
 )
 
-var stateNames = [...]string{"unknown", "standstill", "starting", "running", "lost"}
+var stateNames = [...]string{"unknown", "standstill", "starting", "running", "lost", "coasting"}
 
 func (s State) String() string {
 	if int(s) < len(stateNames) {
@@ -26,32 +27,35 @@ func (s State) String() string {
 // Status is the phase reference's state and what has been counted since New.
 type Status struct {
 	State   State
-	RPM     float64 // NaN unless running
-	Height  float64 // usual height of a pulse, codes; NaN when not known
-	Noise   float64 // RMS of the signal at rest, codes; NaN when not known
+	RPM     float64 // NaN unless running or coasting
+	Height  float64 // usual height of a pulse or swing of a tooth, codes; NaN when not known
+	Noise   float64 // RMS of the signal at rest, codes; NaN when not known, and with a toothed wheel
 	Frames  int64   // frames given
 	Extra   int64   // pulses that were no marks
-	Missing int64   // marks that did not come while running
+	Missing int64   // marks, or teeth, that did not come while running
 	Unclear int64   // pulses whose edge lay in lost samples
 	LetGo   int64   // samples that went by without becoming part of a frame
 }
 
 // Status tells how the shaft reference is doing, as of the last sample added.
 func (a *Assembler) Status() Status {
-	s := Status{RPM: math.NaN(), Height: math.NaN(), Noise: math.NaN(), Frames: a.frames, Extra: a.gate.nExtra,
-		Missing: a.gate.nMissing, Unclear: a.det.edgesLost, LetGo: a.letGo}
-	if a.det.have && (a.cfg.Auto || a.det.nh > 0) {
-		s.Height, s.Noise = a.det.height(), a.det.lev.noise
+	r := a.ref.state()
+	s := Status{RPM: math.NaN(), Height: r.height, Noise: r.noise, Frames: a.frames, Extra: r.extra, Missing: r.missing,
+		Unclear: r.unclear, LetGo: a.letGo}
+	quiet := float64(a.next) - max(r.lastPulse, float64(a.began))
+	if r.locked {
+		s.RPM = 60 * a.cfg.Rate / r.expect
 	}
-	quiet := float64(a.next) - max(a.gate.lastPulse, float64(a.began))
 	switch {
-	case a.gate.locked:
-		s.State, s.RPM = StateRunning, 60*a.cfg.Rate/a.gate.expect
-	case a.gate.lost:
+	case r.locked && r.coasting:
+		s.State = StateCoasting
+	case r.locked:
+		s.State = StateRunning
+	case r.lost:
 		s.State = StateLost
-	case a.gate.open:
+	case r.open:
 		s.State = StateStarting
-	case quiet > 1.1*a.gate.maxT && (!a.cfg.Auto || a.det.have || a.det.survey.full()):
+	case quiet > 1.1*r.maxT && r.seen:
 		s.State = StateStandstill
 	}
 	return s

@@ -111,6 +111,7 @@ func (d *doubter) phase() {
 		}
 	}
 	switch {
+	case p.Wheel.Teeth > 0: // the teeth measure the ripple
 	case !any && p.Uncertainty == 0 && !d.sk.ComputesRipple():
 		d.add("phase", "A shaft does not turn evenly within a turn; with one mark and no ripple given, angles may be up to 1.2° off and windows are widened by it. A temporary toothed wheel measures it (lapwing ripple); with machine.inertia_kgm2 and a pressure in every working end it is computed.",
 			"one mark a turn, and neither ripple nor uncertainty_deg is stated")

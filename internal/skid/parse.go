@@ -158,7 +158,7 @@ func (r *reader) phase(o *object, sk *Skid) {
 		o.r.problem(o.at, "phase", "write `phase:` with `channel: …` below it; without a mark on the shaft there is no crank angle and nothing can be watched", "the phase reference is missing")
 		return
 	}
-	s := o.sub("phase", true, "channel", "marks_per_turn", "edge", "threshold_v", "hysteresis_v", "uncertainty_deg", "ripple")
+	s := o.sub("phase", true, "channel", "marks_per_turn", "teeth", "missing", "extra", "also_missing", "edge", "threshold_v", "hysteresis_v", "uncertainty_deg", "ripple")
 	if s == nil {
 		return
 	}
@@ -166,9 +166,7 @@ func (r *reader) phase(o *object, sk *Skid) {
 	if p.Channel != "" {
 		r.refer(sk, join2(s.path, "channel"), s.fields["channel"], p.Channel, PhaseMark)
 	}
-	if n, ok := s.whole("marks_per_turn", 1, 512, false); ok && n != 1 {
-		s.wrong("marks_per_turn", "use a sensor on one mark a turn", "%d marks a turn cannot be read yet", n)
-	}
+	r.wheel(s, p)
 	p.Falling = s.choice("edge", "rising", "rising", "falling") == "falling"
 	if s.has("threshold_v") {
 		p.AutoLevel = false

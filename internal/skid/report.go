@@ -130,6 +130,9 @@ func (p *page) head(sk *Skid) {
 		row("rated rod load", f("compression %s, tension %s", known(m.RodLoadCompression/1e3, "%.4g kN"), known(m.RodLoadTension/1e3, "%.4g kN"))),
 		row("shaft mark", f("channel %s, %s edge, %s", ph.Channel, edge, threshold)),
 	)
+	if ph.Wheel.Teeth > 0 {
+		rows = append(rows, row("toothed wheel", f("%v, %d teeth a turn; a turn opens with the first tooth after the index", ph.Wheel, ph.Wheel.Marks())))
+	}
 	for _, h := range ph.Ripple {
 		rows = append(rows, row("ripple", harmonic(h)))
 	}

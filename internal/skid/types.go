@@ -4,6 +4,7 @@ import (
 	"time"
 
 	"lapwing/internal/crank"
+	"lapwing/internal/frame"
 	"lapwing/internal/gas"
 )
 
@@ -48,14 +49,15 @@ type Machine struct {
 
 // Phase describes the shaft reference.
 type Phase struct {
-	Channel      string   // channel id
-	MarksPerTurn int      // 1 now
-	Falling      bool     // active edge
-	AutoLevel    bool     // threshold found from the signal
-	Threshold    float64  // V, when AutoLevel is false
-	Hysteresis   float64  // V, 0: a quarter of the pulse height
-	Uncertainty  float64  // degrees, 95 % half-width; 0: the default for one mark a turn
-	Ripple       []Ripple // where a load step gives none of its own
+	Channel      string      // channel id
+	Wheel        frame.Wheel // zero: one mark a turn
+	MarksPerTurn int         // of the wheel; 1 without
+	Falling      bool        // active edge
+	AutoLevel    bool        // threshold found from the signal
+	Threshold    float64     // V, when AutoLevel is false
+	Hysteresis   float64     // V, 0: a quarter of the pulse height
+	Uncertainty  float64     // degrees, 95 % half-width; 0: by the number of marks and what is known of the ripple
+	Ripple       []Ripple    // where a load step gives none of its own
 }
 
 // Ripple is one harmonic of the speed within a turn: w = mean·(1 + Σ Amp·cos(Order·θ − Phase)), θ from the mark.

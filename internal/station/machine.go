@@ -21,7 +21,7 @@ func frameConfig(sk *skid.Skid, info acq.Info) frame.Config {
 	ch, _ := sk.ChannelByID(sk.Phase.Channel)
 	perCount := ch.VoltsFull / float64(int64(1)<<(info.Bits-1))
 	c := frame.Config{Rate: info.Rate, Inputs: info.Channels, Channel: ch.Input, Auto: sk.Phase.AutoLevel, Threshold: sk.Phase.Threshold / perCount,
-		Hysteresis: sk.Phase.Hysteresis / perCount, MarksPerTurn: sk.Phase.MarksPerTurn}
+		Hysteresis: sk.Phase.Hysteresis / perCount, Wheel: sk.Phase.Wheel}
 	if sk.Phase.Falling {
 		c.Edge = frame.Falling
 	}
@@ -34,6 +34,7 @@ func frameConfig(sk *skid.Skid, info acq.Info) frame.Config {
 func turnConfig(sk *skid.Skid, info acq.Info) turn.Config {
 	c := turn.Config{Rate: info.Rate, Step: sk.Detection.GridDeg, Marks: turn.Marks{U: sk.Phase.Uncertainty},
 		ImpactBand: sk.Detection.ImpactBand, LeakBand: sk.Detection.LeakBand}
+	c.Marks.Inner = sk.Phase.Wheel.Angles()
 	c.Marks.Ripple = harmonics(sk.Phase.Ripple)
 	channel := func(id string) turn.Channel {
 		ch, ok := sk.ChannelByID(id)

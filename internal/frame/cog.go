@@ -1,0 +1,459 @@
+package frame
+
+import "math"
+
+// Fractions of a pitch.
+const (
+	toothOnTime = 0.05 // an edge nearer than this to its time needs no comparison with others
+	toothRings  = 0.25 // an edge within this after a tooth is the tooth's own
+)
+
+const (
+	mostMisfits   = 12 // edges in a row that are no teeth: the place on the wheel is lost
+	overduePitch  = 6  // pitches without a tooth: likewise
+	mostRecovered = 20 // turns that are counted though they were not seen
+)
+
+// cog follows a toothed wheel: which edge is which tooth, and where turns begin.
+type cog struct {
+	det        *toothDetector
+	ring       *ring
+	at         []float64 // places of the marks, pitches
+	n          int       // marks a turn
+	minT, maxT float64   // samples: shortest and longest turn
+	keep       float64   // samples: longest frame
+
+	locked bool
+	lost   bool
+	f      follower
+	hist   periods
+	coast  coast
+	expect float64 // samples: the next turn; 0: not known
+
+	open     bool
+	mark0    float64
+	marks    []float64 // the open turn's further marks; NaN: lost
+	q        Quality
+	nLost    int     // teeth lost in the open turn
+	nStray   int     // edges in it that are no teeth
+	widest   float64 // pitches: the longest stretch of it without a tooth that should have one
+	starting bool    // speed not established
+
+	cand      pulse
+	candSteps int
+	candLate  float64
+	candDue   float64
+	hasCand   bool
+	misfits   int
+	relock    bool // the place on the wheel has proved wrong
+	replaying bool // the edges that are held are gone through again
+
+	past      []pulse // edges, newest last
+	try       follower
+	sane      int // edges in a row at about equal distances
+	lastSane  float64
+	lastPulse float64
+	lastEnd   float64 // closing mark of the newest turn given
+	due       float64
+	ready     cuts
+
+	nExtra, nMissing int64
+}
+
+func newCog(cfg *Config, r *ring, holes *spans) *cog {
+	at := cfg.Wheel.pitches()
+	n := len(at) - 1
+	c := &cog{det: newToothDetector(cfg, r, holes), ring: r, at: at, n: n, minT: cfg.Rate * 60 / cfg.MaxRPM, maxT: cfg.Rate * 60 / cfg.MinRPM,
+		keep: cfg.KeepSeconds * cfg.Rate, hist: periods{rate: cfg.Rate}, marks: make([]float64, 0, n), past: make([]pulse, 0, 2*n+24)}
+	c.restart()
+	c.lastEnd = math.Inf(-1)
+	return c
+}
+
+func (c *cog) restart() {
+	c.unlock()
+	c.lost = false
+	c.det.restart()
+	c.past = c.past[:0]
+	c.expect, c.sane = 0, 0
+	c.lastSane, c.lastPulse = math.Inf(-1), math.Inf(-1)
+}
+
+// unlock forgets the place on the wheel; the edges are kept, so that it can be found again from them.
+func (c *cog) unlock() {
+	c.locked, c.open, c.hasCand, c.relock = false, false, false, false
+	c.misfits = 0
+	c.coast.reset()
+	c.due = c.lastPulse + 1.1*c.maxT
+	c.det.survey.restart()
+}
+
+func (c *cog) stop() { c.unlock() }
+
+func (c *cog) sample(j int64) bool {
+	if p, ok := c.det.step(j, c.locked); ok {
+		c.edge(p)
+	}
+	if float64(j) >= c.due {
+		c.tick(float64(j))
+	}
+	return c.ready.n > 0
+}
+
+func (c *cog) next() (cut, bool) { return c.ready.take() }
+
+// finish decides what is pending at the end of a stretch of samples.
+func (c *cog) finish() {
+	if c.hasCand {
+		c.commit()
+	}
+}
+
+func (c *cog) edge(p pulse) {
+	if p.pos <= c.lastPulse {
+		return
+	}
+	c.remember(p)
+	if c.locked {
+		c.running(p)
+	} else {
+		c.searching()
+	}
+}
+
+func (c *cog) remember(p pulse) {
+	d := p.pos - c.lastPulse
+	if n := len(c.past); n > 0 {
+		before := d
+		if n > 1 {
+			before = c.past[n-1].pos - c.past[n-2].pos
+		}
+		shortest := 0.3 * c.minT / c.at[c.n]
+		if c.sane++; d < shortest || d > 5*before || before > 5*d {
+			c.sane = 0
+		}
+		if c.sane >= 10 {
+			c.lastSane = p.pos
+		}
+	}
+	if len(c.past) == cap(c.past) {
+		m := copy(c.past, c.past[len(c.past)/8+1:])
+		c.past = c.past[:m]
+	}
+	c.past = append(c.past, p)
+	old := 0
+	for c.past[old].pos < p.pos-0.9*c.keep {
+		old++
+	}
+	if old > 0 {
+		m := copy(c.past, c.past[old:])
+		c.past = c.past[:m]
+	}
+	c.lastPulse = p.pos
+	if !c.locked {
+		c.due = p.pos + 1.1*c.maxT
+	}
+}
+
+// most gives how many marks ahead an edge is looked for.
+func (c *cog) most() int { return max(3, c.n/6) }
+
+// running judges an edge while the place on the wheel is known.
+func (c *cog) running(p pulse) {
+	s, late := c.f.near(p.pos, c.most())
+	fits := s > 0 && math.Abs(late) <= c.f.tolerance(s)
+	if c.hasCand {
+		if s == c.candSteps && fits {
+			c.compare(p, late)
+			return
+		}
+		c.commit()
+		if !c.locked {
+			return
+		}
+		s, late = c.f.near(p.pos, c.most())
+		fits = s > 0 && math.Abs(late) <= c.f.tolerance(s)
+	}
+	switch {
+	case s == 0 && late < toothRings:
+		c.q |= Bounced
+	case !fits:
+		c.stray()
+	default:
+		c.cand, c.candSteps, c.candLate, c.hasCand = p, s, late, true
+		if math.Abs(late) < toothOnTime && !c.isWeak(p) {
+			c.commit()
+			return
+		}
+		pitch, trend := c.f.speed()
+		c.candDue = c.f.pos + c.f.due(c.f.ahead(s)+c.f.tolerance(s), pitch, trend) + 2
+		c.setDue()
+	}
+}
+
+// compare keeps the better of the waiting edge and another one in the same tooth's time.
+func (c *cog) compare(p pulse, late float64) {
+	score := func(p pulse, late float64) float64 {
+		if c.isWeak(p) {
+			return 1 + math.Abs(late)
+		}
+		return math.Abs(late)
+	}
+	if pitch, _ := c.f.speed(); p.pos-c.cand.pos < toothRings*pitch {
+		c.q |= Bounced
+	} else {
+		c.q |= Extra
+		c.nStray++
+		c.nExtra++
+	}
+	if score(p, late) < score(c.cand, c.candLate) {
+		c.cand, c.candLate = p, late
+	}
+}
+
+// stray counts an edge that is no tooth; after too many in a row the place on the wheel is not believed any more.
+func (c *cog) stray() {
+	c.q |= Extra
+	c.nStray++
+	c.nExtra++
+	if c.misfits++; c.misfits >= mostMisfits {
+		c.unlock()
+	}
+}
+
+func (c *cog) isWeak(p pulse) bool { return p.height < c.det.usual/2 }
+
+// commit takes the waiting edge for the tooth that it was found to be. Teeth before it that did not come are lost; where
+// mark 0 is among them it is laid on the parabola through the teeth beside it.
+func (c *cog) commit() {
+	p, steps, late := c.cand, c.candSteps, c.candLate
+	c.hasCand, c.misfits = false, 0
+	if c.isWeak(p) {
+		c.q |= Weak
+	}
+	for k := 1; k < steps; k++ {
+		c.q |= LostTooth
+		c.nMissing++
+		c.widest = max(c.widest, c.f.ahead(steps))
+		c.nLost++
+		c.pass((c.f.last+k)%c.n, c.f.between(c.f.ahead(k), p.pos, c.f.ahead(steps)), true)
+	}
+	if !c.relock {
+		c.pass((c.f.last+steps)%c.n, p.pos, false)
+	}
+	if c.relock {
+		c.unlock()
+		if !c.replaying {
+			c.searching()
+		}
+		return
+	}
+	c.f.accept(p.pos, steps, late)
+	c.setDue()
+}
+
+// between gives the sample position of a place d pitches after the last mark, by the parabola through the last two marks
+// and one at pos, e pitches after the last.
+func (f *follower) between(d, pos, e float64) float64 {
+	u := f.ps[f.n-2] - f.pos
+	a := f.th[f.n-2] - f.th[f.n-1]
+	v := pos - f.pos
+	return f.pos + u*d*(d-e)/(a*(a-e)) + v*d*(d-a)/(e*(e-a))
+}
+
+// pass notes that a mark has gone by at pos.
+func (c *cog) pass(mark int, pos float64, lost bool) {
+	if mark > 0 {
+		if lost {
+			pos = math.NaN()
+		}
+		if c.open {
+			c.marks = append(c.marks, pos)
+		}
+		return
+	}
+	c.close(pos)
+	if c.relock {
+		return
+	}
+	c.begin(pos)
+	if lost {
+		c.q |= LostTooth
+	}
+}
+
+// close gives the open turn, which ends at pos.
+func (c *cog) close(pos float64) {
+	if !c.open {
+		return
+	}
+	period := pos - c.mark0
+	if c.nLost > 0 && c.nStray > 0 && c.misplaced() || period < 0.95*c.minT || period > 1.05*c.maxT || len(c.marks) != c.n-1 {
+		c.relock = true
+		return
+	}
+	q := c.q
+	if c.nLost > max(1, c.n/6) || c.widest > c.at[c.n]/6+3 {
+		q |= Missing
+	}
+	contiguous := c.mark0 == c.lastEnd
+	skip := int64(0)
+	if !contiguous && c.expect > 0 && c.mark0-c.lastEnd < mostRecovered*c.expect {
+		skip = int64(math.Round((c.mark0 - c.lastEnd) / c.expect))
+	}
+	if !contiguous {
+		c.hist.n = 0
+	}
+	if c.hist.n > 0 && c.hist.uneven(period, c.hist.expected()) {
+		if c.starting {
+			q |= Starting
+		} else {
+			q |= Uneven
+		}
+	} else if c.hist.n > 0 {
+		c.starting = false
+	} else {
+		q |= Starting
+	}
+	c.hist.push(period)
+	c.coast.push(period)
+	c.expect = c.hist.expected()
+	c.ready.add(cut{a: pulse{pos: c.mark0}, b: pulse{pos: pos}, k: 1, q: q, skip: skip, inner: c.marks})
+	c.lastEnd = pos
+}
+
+// begin opens a turn at pos, unless its samples have gone already or are part of a turn that has been given.
+func (c *cog) begin(pos float64) {
+	c.open = pos >= c.lastEnd && pos >= float64(c.ring.first)
+	c.mark0, c.marks, c.q, c.nLost, c.nStray, c.widest = pos, c.marks[:0], 0, 0, 0, 0
+}
+
+// misplaced looks at the last turn's edges anew: is the newest one a mark 0 at all?
+func (c *cog) misplaced() bool {
+	edges := c.past[max(0, len(c.past)-c.n-8):]
+	if len(edges) < c.n {
+		return false
+	}
+	pitch := c.pitch(edges)
+	fit, ok := c.try.align(c.at, edges, pitch, c.most())
+	if !ok {
+		return false
+	}
+	c.try.try(c.at, fit.mark, edges, pitch, math.Inf(1), min(c.most(), 4))
+	s, _ := c.try.near(c.cand.pos, c.most())
+	where := (c.try.last + s) % c.n
+	return where != (c.f.last+c.candSteps)%c.n
+}
+
+// pitch gives the distance of teeth at the beginning of a run of edges.
+func (c *cog) pitch(edges []pulse) float64 {
+	var d [9]float64
+	n := min(len(d), len(edges)-1)
+	for i := range n {
+		d[i] = edges[i+1].pos - edges[i].pos
+	}
+	return medianOf(d[:n])
+}
+
+// searching looks whether the newest edges, a turn of them and more, show the wheel; if so they are gone through again
+// from their beginning, so that no turn is lost that they hold.
+func (c *cog) searching() {
+	n := len(c.past)
+	if n < c.n+6 || c.sane < 4 {
+		return
+	}
+	for _, w := range [...]int{c.n + 8, n} {
+		if w > n {
+			continue
+		}
+		edges := c.past[n-w:]
+		pitch := c.pitch(edges)
+		fit, ok := c.try.align(c.at, edges, pitch, c.most())
+		if !ok {
+			continue
+		}
+		c.locked, c.lost = true, false
+		c.starting = !(c.expect > 0 && edges[0].pos-c.lastEnd < mostRecovered*c.expect)
+		c.f.begin(c.at, fit.mark, edges[0].pos, pitch)
+		c.f.scat = 0.08
+		c.open, c.hasCand, c.misfits, c.q = false, false, 0, 0
+		if fit.mark == 0 {
+			c.begin(edges[0].pos)
+		}
+		c.replaying = true
+		for _, p := range edges[1:] {
+			if c.running(p); !c.locked {
+				break
+			}
+		}
+		c.replaying = false
+		if c.locked {
+			c.setDue()
+			return
+		}
+	}
+}
+
+func (c *cog) setDue() {
+	if c.hasCand {
+		c.due = c.candDue
+		return
+	}
+	pitch, trend := c.f.speed()
+	c.due = c.f.pos + 1.3*c.f.due(c.f.ahead(1)+overduePitch, pitch, trend)
+	if c.open {
+		c.due = min(c.due, c.mark0+c.keep)
+	}
+}
+
+// tick is called at every sample at or after due.
+func (c *cog) tick(j float64) {
+	switch {
+	case !c.locked: // it stands
+		c.past, c.expect, c.sane = c.past[:0], 0, 0
+		c.due = math.Inf(1)
+	case c.hasCand && j >= c.candDue:
+		c.commit()
+	default:
+		lost := c.abrupt()
+		c.unlock()
+		c.lost = lost
+	}
+}
+
+// abrupt reports whether teeth stopped coming while the machine ran at speed. A shaft slows down before it stands;
+// a cable does not.
+func (c *cog) abrupt() bool {
+	return c.expect > 0 && c.expect < c.maxT/3 && !c.hist.slowing() && !c.f.slowing()
+}
+
+// period gives the samples of a turn at the present speed.
+func (c *cog) period() float64 {
+	pitch, _ := c.f.speed()
+	return pitch * c.at[c.n]
+}
+
+func (c *cog) needs(j int64) int64 {
+	n := c.det.needs(j)
+	oldest := math.Inf(1)
+	switch {
+	case c.open:
+		oldest = c.mark0
+	case len(c.past) > 0:
+		oldest = max(c.past[0].pos, c.lastEnd)
+	}
+	return min(n, int64(math.Floor(max(min(oldest, float64(n)), float64(j)-c.keep))))
+}
+
+func (c *cog) state() refState {
+	s := refState{locked: c.locked, lost: c.lost, open: !c.locked && c.sane >= 10, expect: c.expect, lastPulse: c.lastSane, coasting: c.coast.coasting(),
+		extra: c.nExtra, missing: c.nMissing, unclear: c.det.lostEdge, minT: c.minT, maxT: c.maxT, keep: c.keep,
+		height: math.NaN(), noise: math.NaN(), seen: c.det.have || c.det.survey.full()}
+	if c.locked {
+		s.expect = c.period()
+	}
+	if c.det.have {
+		s.height = c.det.usual
+	}
+	return s
+}
