@@ -59,10 +59,11 @@ func (b *Book) For(step int) turn.Shaft {
 	return turn.Shaft{Ripple: c.list, U: computedU}
 }
 
-// Learn takes the turn for which the newest answer was given, before anybody uses it: its own pressures say how far
-// the ripple in force was off. Where that is more than the stated uncertainty the load is moving, perhaps within the
-// turn, and the angles are as uncertain as if the ripple were ignored: the turn says so. Its pressures then count for later turns at that load
-// step, by the median of the last eight. ps is as for Torque.Of. It gives why nothing could be computed, or "".
+// Learn takes the turn for which the newest answer was given, before anybody uses it. Its own pressures say how far the
+// ripple in force was off. Where that is more than the stated uncertainty the load is moving, perhaps within the turn,
+// and the angles are as uncertain as if the ripple were ignored; so they are before the first ripple is known. The turn
+// then says so. Its pressures count for later turns at that load step, by the median of the last eight. ps is as for
+// Torque.Of. It gives why nothing could be computed, or "".
 func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 	c := b.now
 	if c == nil {
@@ -72,13 +73,15 @@ func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 	if why != "" {
 		return why
 	}
+	u := h.Apart(Harmonics{}) // what ignoring it may cost
 	if len(c.list) > 0 {
-		if off := h.Apart(c.inUse); off > computedU {
-			u := off + max(h.Apart(Harmonics{}), c.inUse.Apart(Harmonics{})) // a change within the turn shows in part only
-			for k := range t.Throws {
-				t.Throws[k].U = max(t.Throws[k].U, u)
-			}
+		off := h.Apart(c.inUse)
+		if u = max(u, c.inUse.Apart(Harmonics{})) + off; off <= computedU { // a change within the turn shows in part only
+			u = 0
 		}
+	}
+	for k := range t.Throws {
+		t.Throws[k].U = max(t.Throws[k].U, u)
 	}
 	c.last[c.n%memory] = h
 	c.n++

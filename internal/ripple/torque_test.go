@@ -86,7 +86,7 @@ func TestComputedRippleAgainstTheEnergyOfTheShaft(t *testing.T) {
 		{"inertia 15 % too low", unloaded, 700, 0.8, 0.85, 0.3},
 	} {
 		m := worked()
-		r := newRun(m, 12800, c.rpm, 14, c.loads)
+		r := newRun(m, 12800, c.rpm, 11, c.loads)
 		before, u := angles(t, m, r, turn.Marks{}, nil)
 		if u[8] != 1.2 {
 			t.Errorf("%s: without ripple %g° are stated", c.name, u[8])
@@ -104,7 +104,7 @@ func TestComputedRippleAgainstTheEnergyOfTheShaft(t *testing.T) {
 				t.Fatal(why)
 			}
 		})
-		x, y := p95(before, 5, 12), p95(after, 5, 12)
+		x, y := p95(before, 5, 9), p95(after, 5, 9)
 		var amp []float64
 		for _, z := range b.now.inUse {
 			amp = append(amp, 100*cmplx.Abs(z))
@@ -113,8 +113,8 @@ func TestComputedRippleAgainstTheEnergyOfTheShaft(t *testing.T) {
 		if x < c.least || y > c.most {
 			t.Errorf("%s: p95 %.3f° before, %.4f° after; want at least %g and at most %g", c.name, x, y, c.least, c.most)
 		}
-		if u[1] != 1.2 || u[8] != 0.3 {
-			t.Errorf("%s: first turn ±%g°, later ±%g°; want 1.2 and 0.3", c.name, u[1], u[8])
+		if first := dsp.Quantile(after[1], 0.95); u[1] < 1.2 || u[1] < first || u[8] != 0.3 {
+			t.Errorf("%s: first turn ±%g°, 95 %% within %.2f°, later ±%g°; want 1.2 at least and 0.3", c.name, u[1], first, u[8])
 		}
 	}
 }
@@ -124,7 +124,7 @@ func TestComputedRippleAgainstTheEnergyOfTheShaft(t *testing.T) {
 // one's ripple is still there on the way back.
 func TestUncertaintyWidensWhileTheLoadMoves(t *testing.T) {
 	m := worked()
-	r := newRun(m, 12800, 700, 12, unloaded, full, unloaded)
+	r := newRun(m, 12800, 700, 11, unloaded, full, unloaded)
 	q, err := NewTorque(m)
 	if err != nil {
 		t.Fatal(err)
@@ -147,7 +147,7 @@ func TestUncertaintyWidensWhileTheLoadMoves(t *testing.T) {
 			}
 		})
 		widest := 0.0
-		for n := 2; n < 33; n++ {
+		for n := 2; n < 31; n++ {
 			if len(errs[n]) == 0 {
 				t.Fatalf("told %v: turn %d is missing", told, n)
 			}
@@ -161,7 +161,7 @@ func TestUncertaintyWidensWhileTheLoadMoves(t *testing.T) {
 		if widest < 0.5 {
 			t.Errorf("told %v: the change does not bite, widest ±%g°", told, widest)
 		}
-		if back := u[25]; told && back != 0.3 {
+		if back := u[24]; told && back != 0.3 {
 			t.Errorf("back at a known step: ±%g°", back)
 		}
 	}
