@@ -106,7 +106,7 @@ func (m *Measurer) listen(th *turn.Throw, v *turn.Vib, w *window.Window, usual f
 	b.onset, b.energy = math.NaN(), math.NaN()
 	if ok {
 		on = rise(m.env[lo-from:], on, peak, math.Sqrt(b.back), int(riseMs*v.Rate/1000))
-		on -= float64(smooth-1) / 2
+		on -= riseShare * float64(smooth) // what a mean over so many samples takes to show this share of a step
 		b.onset = float64(v.Seq0) - v.Late + float64(lo) + on
 		i := max(lo+int(math.Floor(on)), 0)
 		j := min(i+int(energyMs*v.Rate/1000), len(v.X))
