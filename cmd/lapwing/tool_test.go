@@ -92,6 +92,12 @@ func TestSystemHelp(t *testing.T) {
 			}
 		}
 	}
+	for _, c := range root().Commands() {
+		out, _, code := lapwing(t, c.Name(), "--help")
+		if code != 0 || !strings.Contains(out, "Usage:") || len(strings.Fields(c.Long)) < 20 {
+			t.Errorf("%s --help teaches nothing: exit %d\n%s", c.Name(), code, out)
+		}
+	}
 	for _, wrong := range [][]string{{"chekc"}, {"check"}, {"review", "x.wav"}, {"pull", "a", "b"}, {"demo", "--scenario", "nothing", "--out", filepath.Join(t.TempDir(), "demo")}} {
 		if out, errs, code := lapwing(t, wrong...); code != 1 || !strings.HasPrefix(errs, "lapwing: ") {
 			t.Errorf("%v: exit %d, %s%s", wrong, code, out, errs)
