@@ -158,6 +158,7 @@ func (a *Annunciator) advance(p *Point, c *Condition, dt time.Duration, now time
 		if p.Chattering {
 			p.Chattering, note = false, "no longer chattering"
 		}
+		a.book(p, c) // what is said from now on is how it is now, not how it was when it was raised
 		a.returned(p, t)
 	default:
 		p.rest()
