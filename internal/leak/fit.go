@@ -109,11 +109,11 @@ func (f *Fit) far(ps float64) bool {
 
 // roughly is how many grid steps the rough fit takes at once, and roughPts how many points it wants in a stroke.
 const (
-	roughly  = 4
-	roughPts = 8
+	roughly  = 6
+	roughPts = 6
 )
 
-// rough puts into out the phase and the zeros that every fourth point gives, when they are far from nothing.
+// rough puts into out the phase and the zeros that every sixth point gives, when they are far from nothing.
 func (f *Fitter) rough(q normal, in *Input, st *states, strokes []stroke, out *Fit) bool {
 	for _, s := range strokes {
 		if s.To-s.From < roughly*roughPts {
