@@ -62,7 +62,7 @@ func (b *Book) For(step int) turn.Shaft {
 // Learn takes the turn for which the newest answer was given, before anybody uses it. Its own pressures say how far the
 // ripple in force was off. Where that is more than the stated uncertainty the load is moving, perhaps within the turn,
 // and the angles are as uncertain as if the ripple were ignored; so they are before the first ripple is known. The turn
-// then says so. Its pressures count for later turns at that load step, by the median of the last eight. ps is as for
+// then says so, also when its pressures cannot tell. They count for later turns at that load step, by the median of the last eight. ps is as for
 // Torque.Of. It gives why nothing could be computed, or "".
 func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 	c := b.now
@@ -70,7 +70,10 @@ func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 		return ""
 	}
 	h, why := b.cfg.Torque.Of(t, ps)
-	if why != "" {
+	if why != "" { // what is in force may be long out of date, and nothing tells
+		if len(c.list) > 0 {
+			widen(t, max(c.inUse.Apart(Harmonics{}), turn.Uncertainty(1, false)))
+		}
 		return why
 	}
 	u := h.Apart(Harmonics{}) // what ignoring it may cost
@@ -80,9 +83,7 @@ func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 			u = 0
 		}
 	}
-	for k := range t.Throws {
-		t.Throws[k].U = max(t.Throws[k].U, u)
-	}
+	widen(t, u)
 	c.last[c.n%memory] = h
 	c.n++
 	m := c.median()
@@ -94,6 +95,12 @@ func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 		c.inUse, c.list = m, m.Ripple(c.list[:0])
 	}
 	return ""
+}
+
+func widen(t *turn.Turn, u float64) {
+	for k := range t.Throws {
+		t.Throws[k].U = max(t.Throws[k].U, u)
+	}
 }
 
 // median is taken of real and imaginary parts apart, so that one wild turn moves nothing.

@@ -255,6 +255,21 @@ func TestWhatCannotBeComputedSaysWhy(t *testing.T) {
 	if _, err := NewTorque(Machine{Atmosphere: 1e5, Throws: m.Throws}); err == nil {
 		t.Error("a machine without inertia is taken")
 	}
+	// A ripple in force that can no longer be checked is not called known.
+	known, _ := NewTorque(m)
+	kept := NewBook(Config{Torque: known, At: func(int) []turn.Ripple { return nil }})
+	for i, spoil := range []string{"", "", "open cable"} {
+		kept.For(0)
+		c := tt.Clone()
+		c.Throws[0].Bad[0] = spoil
+		for k := range c.Throws {
+			c.Throws[k].U = 0.3
+		}
+		why := kept.Learn(c, []float64{0, 0})
+		if want := []bool{true, false, true}[i]; (c.Throws[1].U > 0.3) != want || (why != "") != (spoil != "") {
+			t.Errorf("turn %d, %q: ±%g°, %q", i, spoil, c.Throws[1].U, why)
+		}
+	}
 	tiny := m
 	tiny.Inertia = 0.5
 	q, _ := NewTorque(tiny)
