@@ -328,6 +328,18 @@ func TestDeterministic(t *testing.T) {
 	}
 }
 
+// TestFitAllocatesNothing: one fit a turn and throw, for years.
+func TestFitAllocatesNothing(t *testing.T) {
+	s := machines()["fast"]()
+	s.run()
+	in := s.input()
+	f := NewFitter(Settings{})
+	f.Fit(in)
+	if n := testing.AllocsPerRun(20, func() { f.Fit(in) }); n != 0 {
+		t.Errorf("%g allocations a fit", n)
+	}
+}
+
 func TestNozzle(t *testing.T) {
 	n := newNozzle(1.4)
 	psi := func(r float64) float64 { return math.Sqrt(n.square(r, math.Pow(r, n.inv))) }
