@@ -21,8 +21,8 @@ var overlapping = []struct {
 
 func overlapRun(seed uint64, rpm, seconds float64) windowtest.Run {
 	return windowtest.Run{Ratio: 2.2, RPM: rpm, Seconds: seconds, Seed: seed, Changes: []model.Change{
-		{At: 3.5, What: model.LoadStep, To: windowtest.Pocket},
-		{At: 4, Over: seconds - 4, What: model.DischargePressure, Where: "1", To: 20e5 * 4.4}}}
+		{At: 2.6, What: model.LoadStep, To: windowtest.Pocket},
+		{At: 3, Over: seconds - 3, What: model.DischargePressure, Where: "1", To: 20e5 * 4.4}}}
 }
 
 type pairTurn struct {
@@ -83,7 +83,7 @@ func TestOverlappingEventsAreToldApart(t *testing.T) {
 	}
 	gaps := []float64{0.4, 0.8, 1.3, 2, 3, 4, math.Inf(1)}
 	cells := make([]cell, len(gaps))
-	seeds, speeds, seconds := []uint64{2}, []float64{900}, 7.0
+	seeds, speeds, seconds := []uint64{2}, []float64{900}, 5.4
 	if *sweep {
 		seeds, speeds, seconds = []uint64{1, 2, 3, 4, 5, 6}, []float64{600, 900}, 40
 	}

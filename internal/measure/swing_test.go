@@ -34,9 +34,9 @@ func TestOpeningsUnderLoadSwings(t *testing.T) {
 	subjects := []string{"t1.he.suction.opens", "t1.he.discharge.opens", "t1.ce.suction.opens", "t1.ce.discharge.opens"}
 	var late, plain, norm [4][]float64
 	perDeg := [4][]float64{}
-	seconds := 11.0
+	seconds, least := 7.0, 40
 	if *sweep {
-		seconds = 120
+		seconds, least = 120, 500
 	}
 	each(t, swinging(11, seconds), func(_ int64, tn windowtest.Turn, w window.Result, v *measure.Vector, l measure.Layout) {
 		for i, s := range subjects {
@@ -66,7 +66,7 @@ func TestOpeningsUnderLoadSwings(t *testing.T) {
 		return w
 	}
 	for i, s := range subjects {
-		if len(late[i]) < 60 || len(norm[i]) < 60 {
+		if len(late[i]) < least || len(norm[i]) < least {
 			t.Fatalf("%s: only %d onsets and %d impacts", s, len(late[i]), len(norm[i]))
 		}
 		m := dsp.Median(slices.Clone(late[i]))
@@ -94,20 +94,21 @@ func TestOpeningsUnderLoadSwings(t *testing.T) {
 // draws each valve's coupling between 0.7 and 1.3 of the usual: what is 2.3 dB at 1 is 1.7 at 0.7, so not every valve can
 // reach 2. vibration.md section 3 has 3.0 to 3.9 dB on another model.
 func TestOnePercentLeakIsHeard(t *testing.T) {
-	base := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 2.2, Seed: 3}
+	base := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 1.6, Seed: 3}
 	healthy := measured(t, base)
 	paths := []struct{ valve, subject string }{{"t1.he.s1", "t1.he.suction"}, {"t1.he.d1", "t1.he.discharge"}, {"t1.ce.s1", "t1.ce.suction"}, {"t1.ce.d1", "t1.ce.discharge"}}
-	least := 2.0
+	least, rounds := 2.0, 1
 	if *sweep {
-		least = 1.5
+		least, rounds = 1.5, 2
 	} else {
-		paths = paths[:2]
+		paths = paths[:1]
 	}
 	for i, p := range paths {
 		// Size the hole so that 1 % of what the end delivers goes through it.
-		area, leaked, delivered := 2.5*model.MM2, 0.0, 0.0
+		area, leaked, delivered := [4]float64{2.79, 1.58, 2.30, 1.52}[i]*model.MM2, 0.0, 0.0
 		var out *outcome
-		for range 2 {
+		hole := 0.0
+		for range rounds {
 			r := base
 			r.Changes = []model.Change{{What: model.ValveLeak, Where: p.valve, To: area}}
 			out = measured(t, r)
@@ -123,10 +124,10 @@ func TestOnePercentLeakIsHeard(t *testing.T) {
 				}
 				delivered += healthy.truth[k].Delivered
 			}
-			area *= 0.01 * delivered / leaked
+			hole, area = area, area*0.01*delivered/leaked
 		}
 		rise := out.get(t, p.subject, "leak_noise_db") - healthy.get(t, p.subject, "leak_noise_db")
-		t.Logf("%s: %.2f %% lost, dwell noise %+.1f dB", p.subject, 100*leaked/delivered, rise)
+		t.Logf("%s: %.2f mm² more, %.2f %% lost, dwell noise %+.1f dB", p.subject, hole/model.MM2, 100*leaked/delivered, rise)
 		if rise < least || math.Abs(100*leaked/delivered-1) > .1 {
 			t.Errorf("%s: %.2f %% lost raises the noise by %.1f dB", p.subject, 100*leaked/delivered, rise)
 		}
