@@ -103,11 +103,11 @@ func robust(x [][numTerms]float64, y []float64) (c [numTerms]float64, w []float6
 	slices.Sort(buf)
 	c[0] = quantile(buf, 0.5)
 	least := 1e-12*math.Max(math.Abs(buf[0]), math.Abs(buf[n-1])) + math.SmallestNonzeroFloat64 // rounding is no spread
-	for it := range 20 {
+	for it := range 30 {
 		for i := range y {
 			res[i] = y[i] - dot(&c, &x[i])
 		}
-		if it < 5 { // by then the scale has settled; a moving scale need not converge
+		if it < 12 { // by then the scale has settled; a moving scale need not converge
 			spread = math.Max(madn(res, buf), least)
 		}
 		if it > 0 {

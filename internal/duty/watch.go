@@ -19,7 +19,8 @@ type WatchConfig struct {
 	WarmTurns      int     // turns before anything is called steady; default 10
 	StartTurns     int     // turns called Starting after a stop; default 60
 	SettleTurns    int     // turns called Changing after a load step; default 30
-	DoubtTurns     int     // turns that are not judged because process values and traces disagree, before the disagreement is taken for the machine's; default 60
+	DoubtTurns     int     // turns that are not judged because the traces show another load step than is told, before the disagreement is taken for the machine's; default 60
+	Delay          float64 // s, by which process values come late at most; default 1.5
 	Drift          float64 // relative difference of the last 4 turns from the 16 before that is a change; default 0.01
 }
 
@@ -49,8 +50,10 @@ type Watch struct {
 	idle    [2]bool
 	rpm     lead
 	ps, pd  lead
+	ownPs   lead
+	ownPd   lead
 	last    int64
-	doubt   int // turns in a row in which process values and traces disagreed
+	doubt   int // turns in a row in which the ends at work or their clearances were not those of the step told
 	taps    taps
 }
 
@@ -65,6 +68,9 @@ func NewWatch(cfg WatchConfig) *Watch {
 	def(&cfg.StartTurns, 60)
 	def(&cfg.SettleTurns, 30)
 	def(&cfg.DoubtTurns, 60)
+	if cfg.Delay <= 0 {
+		cfg.Delay = 1.5
+	}
 	if cfg.Drift <= 0 {
 		cfg.Drift = 0.01
 	}
@@ -99,7 +105,7 @@ func (w *Watch) Classify(in Input) Point {
 	w.last = in.Turn
 	if w.turns == 0 {
 		w.rpm, w.ps, w.pd, w.settle, w.haveSt = lead{}, lead{}, lead{}, 0, false
-		w.doubt, w.taps = 0, taps{}
+		w.doubt, w.taps, w.ownPs, w.ownPd = 0, taps{}, lead{}, lead{}
 		w.start = w.cfg.WarmTurns
 		if w.stopped {
 			w.start = w.cfg.StartTurns
@@ -115,11 +121,12 @@ func (w *Watch) Classify(in Input) Point {
 		}
 	}
 	w.step, w.inf, w.haveSt = p.Step, p.Inferred, true
-	if w.rpm.move(in.RPM, w.cfg.Drift) || w.ps.move(p.Ps, w.cfg.Drift) || w.pd.move(p.Pd, w.cfg.Drift) {
-		w.settle = max(w.settle, w.cfg.SettleTurns/3)
+	moving := false
+	for _, m := range [...]bool{w.ps.move(p.Ps, w.cfg.Drift), w.pd.move(p.Pd, w.cfg.Drift), w.ownPs.move(p.OwnPs, w.cfg.Drift), w.ownPd.move(p.OwnPd, w.cfg.Drift)} {
+		moving = moving || m
 	}
-	late := w.late(in, &p)
-	if late {
+	late := w.late(in, &p, moving)
+	if w.rpm.move(in.RPM, w.cfg.Drift) || moving || late {
 		w.settle = max(w.settle, w.cfg.SettleTurns/3)
 	}
 
@@ -147,20 +154,19 @@ func (w *Watch) Classify(in Input) Point {
 // late tells whether the process values are behind what the traces show already: another load step, another pressure.
 // Control systems tell of a change up to seconds later, and features held against the old duty would accuse a healthy
 // machine. A disagreement that lasts is no delay: it is then judged.
-func (w *Watch) late(in Input, p *Point) bool {
-	apart := in.OtherStep || w.otherIdle(in)
+func (w *Watch) late(in Input, p *Point, moving bool) bool {
+	far := false
 	if !p.Inferred {
-		apart = w.taps.apart(in.Ends, in.OwnPs, in.OwnPd, p.Ps, p.Pd) || apart
+		var off [2]float64
+		off, far = w.taps.apart(in, int(math.Ceil(w.cfg.Delay*in.RPM/60)), moving)
+		p.Ps, p.Pd = p.Ps*math.Exp(off[0]), p.Pd*math.Exp(off[1])
 	}
-	if !in.ProcessKnown || !apart {
+	if !in.ProcessKnown || !in.OtherStep && !w.otherIdle(in) {
 		w.doubt = 0
-		return false
+		return far
 	}
-	if w.doubt++; w.doubt <= w.cfg.DoubtTurns {
-		return true
-	}
-	w.taps = taps{}
-	return false
+	w.doubt++
+	return far || w.doubt <= w.cfg.DoubtTurns
 }
 
 // otherIdle tells whether other ends do work than the load step told says. Steps that are not listed say nothing.
@@ -174,22 +180,37 @@ func (w *Watch) otherIdle(in Input) bool {
 }
 
 // taps compares the plateaus with the line pressures of the process values: valve losses and taps keep them apart by
-// a steady share.
+// a share that is followed while no pressure moves. While one does, what is beyond the share is the process values'
+// delay, and is made good by the plateaus.
 type taps struct {
 	have  [2]bool
 	share [2][2]float64 // by end: ln of plateau over line, suction and discharge
+	told  [2]float64    // the line pressures told last
+	quiet int           // turns since they moved
+	far   int           // turns in a row in which a plateau was too far from them
 }
 
 const (
 	levelApart  = 0.03      // ln, beyond which the process values are late; valves and taps move slower and less
 	levelFollow = 1.0 / 8.0 // of the difference, per turn, that the share follows
+	levelMoves  = 0.003     // ln, by which a pressure told has moved and not merely been read again
 )
 
-func (l *taps) apart(ends [2]window.State, ownPs, ownPd [2]float64, ps, pd float64) bool {
-	apart := false
-	for e := range ends {
-		now := [2]float64{math.Log(ownPs[e] / ps), math.Log(ownPd[e] / pd)}
-		if ends[e] == window.Idle || !known(now[0]) || !known(now[1]) {
+// apart gives by how much the line pressures must have moved since they were told, as ln, and whether plateaus and
+// pressures are too far apart to be judged by. What stays apart for longer than the delay of pressures that stand still is no delay, but the share
+// at another flow.
+func (l *taps) apart(in Input, delay int, moving bool) (off [2]float64, far bool) {
+	l.quiet++
+	if !(math.Abs(math.Log(in.Ps/l.told[0])) <= levelMoves && math.Abs(math.Log(in.Pd/l.told[1])) <= levelMoves) {
+		l.told, l.quiet = [2]float64{in.Ps, in.Pd}, 0
+	}
+	if l.far >= delay && l.quiet >= delay {
+		l.have, l.far = [2]bool{}, 0
+	}
+	n := 0.0
+	for e := range in.Ends {
+		now := [2]float64{math.Log(in.OwnPs[e] / in.Ps), math.Log(in.OwnPd[e] / in.Pd)}
+		if in.Ends[e] == window.Idle || !known(now[0]) || !known(now[1]) {
 			l.have[e] = false
 			continue
 		}
@@ -199,13 +220,24 @@ func (l *taps) apart(ends [2]window.State, ownPs, ownPd [2]float64, ps, pd float
 		}
 		d := [2]float64{now[0] - l.share[e][0], now[1] - l.share[e][1]}
 		if math.Max(math.Abs(d[0]), math.Abs(d[1])) > levelApart {
-			apart = true
+			far = true
 			continue
 		}
-		l.share[e][0] += levelFollow * d[0]
-		l.share[e][1] += levelFollow * d[1]
+		n++
+		for k := range d {
+			if moving {
+				off[k] += (d[k] - off[k]) / n
+			} else {
+				l.share[e][k] += levelFollow * d[k]
+			}
+		}
 	}
-	return apart
+	if far {
+		l.far++
+	} else {
+		l.far = 0
+	}
+	return off, far
 }
 
 // noteIdle keeps the last known pattern of idle ends; a lost window says nothing.

@@ -124,6 +124,12 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			o.flutter(h, z, open, hits, widen)
 		}
 	}
+	for g := range groupName { // both ends of a cylinder late alike is a wrong duty, not two valves sticking
+		a, b := sticking(&p.ends[0], g, dev)/widen, sticking(&p.ends[1], g, dev)/widen
+		if math.Min(a, b) > 1.5 && math.Max(a, b) < 2.5*math.Min(a, b) {
+			o.late[g], o.late[2+g] = math.Min(0, o.late[g]), math.Min(0, o.late[2+g])
+		}
+	}
 	o.common(dev, p, shift, noise, widen)
 }
 
