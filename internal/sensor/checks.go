@@ -18,6 +18,7 @@ const (
 	cableRest   = 0.5 // of the least usual noise of whole turns, which mains do not reach
 	cableKurt   = 6.0 // where nothing is learnt yet: no blows of valves
 	humShare    = 0.02
+	leastLooks  = 3
 	humTimes    = 5.0  // usual share (same source)
 	humTimesOwn = 4.0  // and usual power: a signal that has shrunk has no hum for that
 	humSpan     = 1e-3 // rms, of a pressure's valid range: its hum is a share of next to nothing beside the strokes
@@ -75,9 +76,7 @@ func (w *Watch) judge(i int, f *frame.Frame) {
 		raise(Noisy)
 	}
 	l, looked := w.mains.look(&c.slow)
-	if looked {
-		w.hum(c, &l, usual)
-	}
+	looked = looked && !w.hum(c, &l, usual)
 	if !f.Good() || f.Q&frame.Clipped != 0 {
 		return
 	}
@@ -86,11 +85,12 @@ func (w *Watch) judge(i int, f *frame.Frame) {
 			return // what a broken channel shows is not usual
 		}
 	}
-	if c.levels.N < w.cfg.Learn || w.declared {
+	more := c.levels.N < w.cfg.Learn || w.declared
+	if more {
 		c.levels.take(s)
-		if looked {
-			c.levels.takeLook(&l)
-		}
+	}
+	if looked && (more || c.levels.Looks < leastLooks) {
+		c.levels.takeLook(&l)
 	}
 }
 
@@ -235,8 +235,8 @@ func (w *Watch) dead(i int) bool {
 	return false
 }
 
-// hum looks at one spectrum.
-func (w *Watch) hum(c *watched, l *look, usual bool) {
+// hum looks at one spectrum and reports whether it is suspect.
+func (w *Watch) hum(c *watched, l *look, usual bool) bool {
 	c.looks++
 	i := 0
 	if l.power[1] > l.power[0] {
@@ -248,7 +248,7 @@ func (w *Watch) hum(c *watched, l *look, usual bool) {
 	case c.Kind == Pressure:
 		limit = 0
 		if math.Sqrt(l.power[i]) < humSpan*c.span() {
-			return
+			return false
 		}
 	case !known:
 		limit *= humTimes
@@ -257,7 +257,7 @@ func (w *Watch) hum(c *watched, l *look, usual bool) {
 		limit = max(limit, humTimes*c.levels.Share[i])
 	}
 	if l.share[i] <= limit || known && l.power[i] < humTimesOwn*c.levels.Power[i] {
-		return
+		return false
 	}
 	k := Hum
 	if l.share[i] > cableShare && c.Kind == Pressure {
@@ -266,4 +266,5 @@ func (w *Watch) hum(c *watched, l *look, usual bool) {
 	if c.ep[k].suspect(c.looks, l.half.turn, w.turn, l.half.seq, 2, confirmWithin) {
 		c.ep[k].reason = w.humSays(c, k, i, l)
 	}
+	return true
 }

@@ -136,7 +136,7 @@ func newMains(rate, hz float64) (*mains, error) {
 // quick gives the share of a variance that lies in mains lines over the last tenth of a second, whichever mains
 // frequency gives more.
 func (m *mains) quick(s *slow, variance float64) (share float64, ok bool) {
-	if variance <= 0 || !s.last(m.tail) {
+	if variance <= 0 || len(m.tail) < 16 || !s.last(m.tail) {
 		return 0, false
 	}
 	var mean float64

@@ -45,7 +45,7 @@ func channels(sk *skid.Skid, info acq.Info) (out []Channel) {
 	kinds := map[skid.Kind]Kind{skid.PhaseMark: Phase, skid.Pressure: Pressure, skid.Acceleration: Acceleration}
 	for _, c := range sk.Channels {
 		d := Channel{ID: c.ID, Input: c.Input, Kind: kinds[c.Kind], PerCount: c.VoltsFull / math.Exp2(float64(info.Bits-1)), FullV: c.VoltsFull,
-			ZeroV: c.ZeroV, Gain: c.Gain, Min: c.Min, Max: c.Max, InnerDead: math.NaN(), Sibling: -1}
+			ZeroV: c.ZeroV, Gain: c.Gain, Min: c.Min, Max: c.Max, InnerDead: math.NaN()}
 		for i := range sk.Throws {
 			for e, end := range sk.Throws[i].Ends {
 				if end.Pressure == c.ID {
@@ -88,10 +88,33 @@ func (r rig) run(t testing.TB) (*Watch, []news, int) {
 	return r.play(t, src)
 }
 
-func (r rig) play(t testing.TB, src acq.Source) (*Watch, []news, int) {
+// again runs the recorded turns over counts that may have been spoilt everywhere but in the shaft reference.
+func (r rig) again(t testing.TB, info acq.Info, counts [][]int32) (*Watch, []news, int) {
 	t.Helper()
-	defer src.Close()
-	info := src.Info()
+	w, hear, heard := r.listen(t, info)
+	turns := 0
+	for _, f := range tape.frames {
+		end := int(math.Ceil(f.Mark1))
+		if end > len(counts[0]) {
+			break
+		}
+		f.Counts = nil
+		for _, x := range counts {
+			f.Counts = append(f.Counts, x[f.Seq0:end])
+		}
+		turns++
+		w.Frame(&f)
+		if r.turn != nil {
+			r.turn(w, &f)
+		}
+		hear()
+	}
+	return w, *heard, turns
+}
+
+// listen makes the Watch, and what notes its changes.
+func (r rig) listen(t testing.TB, info acq.Info) (*Watch, func(), *[]news) {
+	t.Helper()
 	w, err := New(Config{Rate: info.Rate, Channels: channels(r.sk, info), Learn: r.learn, Hold: r.hold})
 	if err != nil {
 		t.Fatal(err)
@@ -99,13 +122,7 @@ func (r rig) play(t testing.TB, src acq.Source) (*Watch, []news, int) {
 	if r.start != nil {
 		r.start(w)
 	}
-	ph, _ := r.sk.ChannelByID(r.sk.Phase.Channel)
-	a, err := frame.New(frame.Config{Rate: info.Rate, Inputs: info.Channels, Channel: ph.Input, Auto: true})
-	if err != nil {
-		t.Fatal(err)
-	}
 	var heard []news
-	turns := 0
 	was := make([]State, w.Channels())
 	hear := func() {
 		for i := range was {
@@ -117,6 +134,20 @@ func (r rig) play(t testing.TB, src acq.Source) (*Watch, []news, int) {
 			}
 		}
 	}
+	return w, hear, &heard
+}
+
+func (r rig) play(t testing.TB, src acq.Source) (*Watch, []news, int) {
+	t.Helper()
+	defer src.Close()
+	info := src.Info()
+	w, hear, heard := r.listen(t, info)
+	ph, _ := r.sk.ChannelByID(r.sk.Phase.Channel)
+	a, err := frame.New(frame.Config{Rate: info.Rate, Inputs: info.Channels, Channel: ph.Input, Auto: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	turns := 0
 	emit := func(f *frame.Frame) {
 		turns++
 		w.Frame(f)
@@ -142,7 +173,7 @@ func (r rig) play(t testing.TB, src acq.Source) (*Watch, []news, int) {
 			hear()
 		}
 	}
-	return w, heard, turns
+	return w, *heard, turns
 }
 
 // swing moves speed, lines and load step about, with a stop and a start when asked.

@@ -43,9 +43,8 @@ type Channel struct {
 	Min, Max float64 // SI, outside is not believable; both zero: not checked
 
 	// Of a pressure channel: degrees of rotation from the mark to the dead centre with the least volume of its end
-	// (crank end: half a turn after the head end's), NaN when not known, and the index of the other end's channel, -1.
+	// (crank end: half a turn after the head end's), NaN when not known.
 	InnerDead float64
-	Sibling   int
 }
 
 // Config describes the inputs. Zero values take the defaults.

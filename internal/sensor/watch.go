@@ -57,7 +57,7 @@ func New(cfg Config) (*Watch, error) {
 	if cfg.MainsHz != 0 && !(cfg.MainsHz >= 10 && cfg.MainsHz <= 100) {
 		errs = append(errs, fmt.Errorf("mains of %g Hz", cfg.MainsHz))
 	}
-	for i, c := range cfg.Channels {
+	for _, c := range cfg.Channels {
 		switch {
 		case c.Input < 0:
 			errs = append(errs, fmt.Errorf("channel %q has input %d", c.ID, c.Input))
@@ -65,10 +65,6 @@ func New(cfg Config) (*Watch, error) {
 		case !(c.PerCount > 0) || !(c.FullV > 0) || c.Gain == 0 || bad(c.FullV) || bad(c.ZeroV) || bad(c.Gain):
 			errs = append(errs, fmt.Errorf("channel %q: %g V per code, %g V full scale, zero at %g V, gain %g", c.ID, c.PerCount, c.FullV, c.ZeroV, c.Gain))
 		}
-		if c.Kind == Pressure && c.Sibling >= len(cfg.Channels) {
-			errs = append(errs, fmt.Errorf("channel %q: no channel %d", c.ID, c.Sibling))
-		}
-		cfg.Channels[i].ID = c.ID
 	}
 	if err := errors.Join(errs...); err != nil {
 		return nil, fmt.Errorf("sensor: %w", err)
