@@ -88,6 +88,7 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApa
 // impacts judges the opening impacts and their moment; closings support only, they are hardly predictable.
 func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []float64) {
 	var shift []float64
+	var late [4]float64
 	for h := range 4 {
 		e, g := h/2, h%2
 		o.hard[h] = math.NaN()
@@ -112,8 +113,9 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 		} else if shut != nil {
 			o.hard[h] = math.Max(capLo, math.Min(1, llr(shut.Z/widen)))
 		}
-		o.late[h], o.loose[h] = math.NaN(), math.NaN()
-		if z := sticking(&p.ends[e], g, dev) / widen; !math.IsNaN(z) {
+		o.late[h] = math.NaN()
+		late[h] = sticking(&p.ends[e], g, dev) / widen
+		if z := late[h]; !math.IsNaN(z) {
 			o.late[h] = capped(llr(z))
 			if open == nil || open.Z < 1 { // a sticking valve tears open harder: without that it is half a witness
 				o.late[h] = math.Min(advisoryClass, o.late[h])
@@ -121,7 +123,6 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			if z > 3 && !math.IsNaN(o.hard[h]) {
 				o.hard[h] = math.Min(1, o.hard[h])
 			}
-			o.flutter(h, z, open, hits, widen)
 		}
 	}
 	for g := range groupName { // both ends of a cylinder late alike is a wrong duty, not two valves sticking
@@ -130,21 +131,43 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			o.late[g], o.late[2+g] = math.Min(0, o.late[g]), math.Min(0, o.late[2+g])
 		}
 	}
+	o.flutter(p, dev, late, widen)
 	o.common(dev, p, shift, noise, widen)
 }
 
-// flutter: the plate comes to its stop late and no harder than usual, and strikes again (vibration.md section 4). Both
-// signs must be there; what it explains is not sticking as well.
-func (o *heard) flutter(h int, late float64, open, hits *duty.Deviation, widen float64) {
-	if open == nil || hits == nil {
-		return
+// flutter: after an opening that is no harder than usual the plate strikes again and again; a late impact goes with it
+// but may be late by 8 % only (vibration.md section 4). Its neighbours' search for hits hears it too: it is booked where
+// the hits are most, and elsewhere only where the impact is late as well. Hits are loud in the leak band, so while a
+// plate flutters noise accuses no path.
+func (o *heard) flutter(p *place, dev []*duty.Deviation, late [4]float64, widen float64) {
+	var hits [4]*duty.Deviation
+	most := -1
+	for h := range hits {
+		hits[h] = at(dev, p.ends[h/2].hits[h%2])
+		if hits[h] != nil && (most < 0 || hits[h].Residual > hits[most].Residual) {
+			most = h
+		}
 	}
-	o.loose[h] = capped(llr(math.Min(late, hits.Z/widen)))
-	if open.Residual >= 0.35 {
-		o.loose[h] = math.Min(0, o.loose[h])
+	flutters := false
+	for h, d := range hits {
+		o.loose[h] = math.NaN()
+		open := p.ends[h/2].struck(h%2, dev)
+		if d == nil || open == nil {
+			continue
+		}
+		o.loose[h] = capped(llr(d.Z / widen))
+		if open.Residual >= 0.35 || late[h] < -1 || h != most && !(late[h] > 3) {
+			o.loose[h] = math.Min(0, o.loose[h])
+		}
+		if o.loose[h] >= advisoryClass { // what it explains is not sticking as well
+			o.late[h] = math.Min(0, o.late[h])
+			flutters = true
+		}
 	}
-	if o.loose[h] >= advisoryClass {
-		o.late[h] = math.Min(0, o.late[h])
+	for h := range o.leak {
+		if flutters {
+			o.leak[h] = math.Min(0, o.leak[h])
+		}
 	}
 }
 

@@ -8,15 +8,17 @@ import (
 	"lapwing/internal/duty"
 )
 
-// Extra hits alone, or a late impact alone, is no flutter; hits with a hard impact are part of that.
-func TestFlutterNeedsBothSigns(t *testing.T) {
+// Extra hits are flutter, whether the impact is late or not; with a hard impact they are part of that. What the others hear
+// of them is not theirs.
+func TestExtraHitsAreFlutterUnlessHard(t *testing.T) {
 	healthy := newSynth(8)
 	baseline := commission(t, healthy, 900, nil)
 	for name, c := range map[string]struct {
 		do   func(s *synth)
 		kind string // the only kind that may be said of the group; empty: none
 	}{
-		"hits alone":    {func(s *synth) { s.rattle["t1.he.discharge"] = 20 }, ""},
+		"hits alone":    {func(s *synth) { s.rattle["t1.he.discharge"], s.rattle["t1.ce.suction"] = 20, 12 }, Fluttering},
+		"few":           {func(s *synth) { s.rattle["t1.he.discharge"] = 4 }, ""},
 		"hits and hard": {func(s *synth) { s.rattle["t1.he.discharge"], s.hit["t1.he.discharge"] = 20, 0.8 }, ImpactingHard},
 		"both":          {func(s *synth) { s.rattle["t1.he.discharge"], s.stick["t1.he.discharge"] = 20, 0.5 }, Fluttering},
 	} {
