@@ -54,6 +54,7 @@ type Duty struct {
 	Ps, Pd float64 // Pa absolute, line pressures
 	Ts     float64 // K, suction line
 	K      float64 // isentropic volume exponent of the gas at this duty
+	KSlope float64 // by how much the exponent changes per unit of ln T along a stroke, about K at the middle of the strokes; 0: it does not
 	RZ     float64 // J/(kg K), specific gas constant times mean compressibility
 	Turns  int     // averaged
 }
@@ -66,6 +67,9 @@ type Input struct {
 	// Beyond is the pressure on the other side of the rings where the other end has no transducer, Pa; 0 or NaN: not
 	// known, the rings are then left out.
 	Beyond float64
+	// Noise is what is left in the mean pressures of noise and of bursts at the transducer, Pa, one standard deviation; the
+	// low part of a stroke then counts for less. 0: next to none, as in the mean of some tens of turns of a compressor.
+	Noise float64
 	// NoValves says that no valve works on the strokes given, as in a motored engine: only the rings may leak.
 	NoValves bool
 }

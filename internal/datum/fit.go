@@ -97,6 +97,17 @@ func (j *job) residuals(x *vector, dst []float64, only int, col *[unknowns][]flo
 	return dst, true
 }
 
+// unsaid is the error of ln p that the equation itself is taken to have: what noise of the pressures is weighed against.
+const unsaid = 1e-3
+
+// weight is the root of a point's weight.
+func (j *job) weight(s *stroke, n int) float64 {
+	if j.in.Noise == 0 {
+		return 1
+	}
+	return 1 / math.Hypot(1, j.in.Noise/(unsaid*j.in.Duties[s.duty].P[s.end][s.at[n]]))
+}
+
 // stroke does one stroke.
 func (j *job) stroke(x *vector, s *stroke, dst []float64, col *[unknowns][]float64) ([]float64, bool) {
 	in, d := j.in, &j.in.Duties[s.duty]
@@ -117,7 +128,8 @@ func (j *job) stroke(x *vector, s *stroke, dst []float64, col *[unknowns][]float
 	from := len(dst)
 	var sum, rate, last vector // integrals of the linear unknowns' parts, and of all of it in [uShift]
 	var mean vector
-	half := 0.0
+	half, count, lastV, lastLnT := 0.0, 0.0, 0.0, 0.0
+	tmid := math.Sqrt(d.gasT(d.Ps) * td)
 	for n, i := range s.at {
 		deg := in.deg(i) + x[uShift]*180/math.Pi
 		p, v, w := d.P[s.end][i]-zero, cyl.Volume(s.end, deg), d.omega(i)
@@ -156,6 +168,13 @@ func (j *job) stroke(x *vector, s *stroke, dst []float64, col *[unknowns][]float
 			all += x[uArea+RG] * rate[uArea+RG]
 		}
 		rate[uShift] = all
+		if d.KSlope != 0 {
+			lnT := math.Log(t / tmid)
+			if n > 0 {
+				sum[uShift] -= d.KSlope * (lastLnT + lnT) / 2 * math.Log(v/lastV)
+			}
+			lastV, lastLnT = v, lnT
+		}
 		if n > 0 {
 			sum[uShift] += (last[uShift] + all) * half
 			if col != nil {
@@ -170,20 +189,23 @@ func (j *job) stroke(x *vector, s *stroke, dst []float64, col *[unknowns][]float
 		}
 		y := math.Log(p) + k*math.Log(v) - sum[uShift]
 		dst = append(dst, y)
-		mean[uShift] += y
+		weight := j.weight(s, n)
+		weight *= weight
+		count += weight
+		mean[uShift] += weight * y
 		if col != nil {
 			for _, u := range linear {
 				col[u] = append(col[u], -sum[u])
-				mean[u] -= sum[u]
+				mean[u] -= weight * sum[u]
 			}
 		}
 	}
-	count := float64(len(s.at))
 	for n := from; n < len(dst); n++ {
-		dst[n] -= mean[uShift] / count
+		w := j.weight(s, n-from)
+		dst[n] = w * (dst[n] - mean[uShift]/count)
 		if col != nil {
 			for _, u := range linear {
-				col[u][n] -= mean[u] / count
+				col[u][n] = w * (col[u][n] - mean[u]/count)
 			}
 		}
 	}

@@ -59,27 +59,31 @@ func (in *Input) strokes() (list []stroke) {
 			}
 			other := y.P[1-end]
 			for kind, r := range y.Closed[end] {
-				var all []int
-				for i := max(r.From, 0); i < min(r.To, len(p)); i++ {
+				from, to := max(r.From, 0), min(r.To, len(p))
+				inside := func(i int) bool {
 					deg := in.deg(i)
-					share := math.Log(p[i]/y.Ps) / span
+					share := math.Log(p[i]/y.Ps) / span // NaN of no pressure: outside
 					past := math.Mod(math.Mod(deg, 180)+180, 180)
-					if share >= lowShare && share <= highShare && past >= pastDeadCentre && compressing(end, deg) == (kind == Compression) &&
-						(other == nil || other[i] > 0) {
-						all = append(all, i)
-					}
+					return share >= lowShare && share <= highShare && past >= pastDeadCentre && compressing(end, deg) == (kind == Compression)
 				}
-				if len(all) < leastPoints || all[len(all)-1]-all[0] != len(all)-1 {
+				for from < to && !inside(from) {
+					from++
+				}
+				for to > from && !inside(to-1) {
+					to--
+				}
+				sound := true
+				for i := from; i < to; i++ {
+					sound = sound && p[i] > 0 && (other == nil || other[i] > 0)
+				}
+				if !sound || to-from < leastPoints {
 					continue
 				}
 				s := stroke{duty: d, end: end, kind: kind}
-				every := 1 + (len(all)-1)/mostPoints
-				for j := 0; j < len(all); j += every {
-					s.at = append(s.at, all[j])
+				for i := from; i < to; i += 1 + (to-from-1)/mostPoints {
+					s.at = append(s.at, i)
 				}
-				if len(s.at) >= leastPoints {
-					list = append(list, s)
-				}
+				list = append(list, s)
 			}
 		}
 	}
