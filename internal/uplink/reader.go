@@ -129,7 +129,11 @@ func (r *Reader) alarm(skid string, m Received) {
 	if why != "" {
 		r.say("%s: %s\n", skid, why)
 	}
-	r.print(skid, a, a.From+" → "+a.To)
+	head := a.From + " → " + a.To
+	if a.From == a.To && a.Was != "" && a.Was != a.Severity {
+		head = a.To + ", was " + a.Was
+	}
+	r.print(skid, a, head)
 }
 
 func (r *Reader) showStanding(skid string, m Received) {
