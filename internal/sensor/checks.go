@@ -43,13 +43,7 @@ const (
 func (w *Watch) judge(i int, f *frame.Frame) {
 	c := &w.ch[i]
 	s := &c.scan
-	variance := s.rms * s.rms
 	usual := c.levels.N >= w.cfg.Learn
-	quick := false
-	c.share = 0
-	if c.Kind == Acceleration {
-		c.share, quick = w.mains.quick(&c.slow, variance)
-	}
 	var found [faults]bool
 	raise := func(k Fault) {
 		if !found[k] {
@@ -68,7 +62,7 @@ func (w *Watch) judge(i int, f *frame.Frame) {
 		w.swapped(c, f, raise)
 	}
 	switch {
-	case quick && c.share > cableShare && (usual && s.white < cableRest*c.levels.White || !usual && f.Good() && s.kurtosis < cableKurt):
+	case w.open(c, f, usual):
 		raise(OpenCable)
 	case usual && f.Good() && !found[LostBias] && w.dead(i):
 		raise(Dead)
@@ -92,6 +86,18 @@ func (w *Watch) judge(i int, f *frame.Frame) {
 	if looked && (more || c.levels.Looks < leastLooks) {
 		c.levels.takeLook(&l)
 	}
+}
+
+// open: an accelerometer's input that hears mains and has lost the valves. The mains are looked for last: of a machine
+// that runs well it never comes to that.
+func (w *Watch) open(c *watched, f *frame.Frame, usual bool) bool {
+	s := &c.scan
+	c.share = 0
+	if c.Kind != Acceleration || usual && s.white >= cableRest*c.levels.White || !usual && !(f.Good() && s.kurtosis < cableKurt) {
+		return false
+	}
+	c.share, _ = w.mains.quick(&c.slow, s.rms*s.rms)
+	return c.share > cableShare
 }
 
 // flat: one code for most of a turn; or for two milliseconds where that is far longer than usual. Coarse converters,
@@ -263,7 +269,7 @@ func (w *Watch) hum(c *watched, l *look, usual bool) bool {
 	if l.share[i] > cableShare && c.Kind == Pressure {
 		k = OpenCable
 	}
-	if c.ep[k].suspect(c.looks, l.half.turn, w.turn, l.half.seq, 2, confirmWithin) {
+	if c.ep[k].suspect(c.looks, l.since.turn, w.turn, l.since.seq, 2, confirmWithin) {
 		c.ep[k].reason = w.humSays(c, k, i, l)
 	}
 	return true

@@ -21,19 +21,18 @@ const (
 // slow is the slow copy of one channel.
 type slow struct {
 	every int // samples per mean
-	sum   float64
+	sum   int64
 	have  int
 	next  int64 // sample number expected next
 	buf   []float64
-	at    int  // where the next mean goes
-	count int  // means since the last break, at most len(buf)
-	fresh int  // means since the last look
-	old   half // of the window's first half
-	now   half
+	at    int // where the next mean goes
+	count int // means since the last break, at most len(buf)
+	fresh int // means since the last look
+	now   since
 }
 
-// half is what else a look needs to know of half a window.
-type half struct {
+// since is what else a look needs to know of the turns since the last one.
+type since struct {
 	turn, seq  int64
 	energy     float64 // Σ variance · samples
 	n          float64
@@ -54,20 +53,18 @@ func (s *slow) add(x []int32, seq int64) {
 	skip := s.next - seq
 	if s.next < 0 || skip < 0 || skip > int64(len(x)) {
 		s.sum, s.have, s.count, s.fresh, skip = 0, 0, 0, 0, 0
-		s.old, s.now = half{}, half{}
+		s.now = since{}
 	}
 	s.next = seq + int64(len(x))
 	x = x[skip:]
 	for len(x) > 0 {
 		m := min(len(x), s.every-s.have)
-		var sum float64
 		for _, v := range x[:m] {
-			sum += float64(v)
+			s.sum += int64(v)
 		}
-		s.sum += sum
 		x = x[m:]
 		if s.have += m; s.have == s.every {
-			s.buf[s.at] = s.sum / float64(s.every)
+			s.buf[s.at] = float64(s.sum) / float64(s.every)
 			s.sum, s.have = 0, 0
 			if s.at++; s.at == len(s.buf) {
 				s.at = 0
@@ -171,28 +168,26 @@ func goertzel(x []float64, w float64) float64 {
 // signal's variance, and in codes² .
 type look struct {
 	share, power [2]float64
-	half         half // begins the window
+	since        since
 }
 
-// look makes one when it is due and the speed has stood still enough.
+// look makes one when a window of new samples has come and the speed has stood still enough within it.
 func (m *mains) look(s *slow) (l look, ok bool) {
-	if s.fresh < len(s.buf)/2 {
+	if s.fresh < len(s.buf) {
 		return l, false
 	}
-	old := s.old
-	s.old, s.now, s.fresh = s.now, half{}, 0
-	now := &s.old
-	if old.n == 0 || now.n == 0 || !s.last(m.window) {
+	now := s.now
+	s.now, s.fresh = since{}, 0
+	if now.n == 0 || !s.last(m.window) {
 		return l, false
 	}
-	least, top := min(old.least, now.least), max(old.top, now.top)
-	variance := (old.energy + now.energy) / (old.n + now.n)
-	if top > (1+steady)*least || variance <= 0 {
+	variance := now.energy / now.n
+	if now.top > (1+steady)*now.least || variance <= 0 {
 		return l, false
 	}
 	m.welch.PSD(m.psd, m.window)
-	shaft := m.fs * float64(s.every) * 2 / (least + top)
-	l.half = old
+	shaft := m.fs * float64(s.every) * 2 / (now.least + now.top)
+	l.since = now
 	for i, f := range m.freq {
 		for h := 1; h <= lines; h++ {
 			if hz := float64(h) * f; hz < 0.25*m.fs && clearOf(hz, shaft) {

@@ -28,20 +28,24 @@ const railShare = 1e-4
 // take scans x, the samples of one turn; least 64 of them.
 func (s *scan) take(x []int32) {
 	*s = scan{n: len(x), min: x[0], max: x[0]}
-	base := float64(x[0]) // keeps the sums small: no cancellation far from zero
+	base := x[0] // keeps the sums small: no cancellation far from zero
 	var sum, sq, sd, sd4, sdd float64
 	var means, white [parts]float64
+	var tops, bottoms [parts]int32
 	last, run := x[0], 0
 	prev, pd := 0.0, 0.0
 	for k := range parts {
 		from, to := k*len(x)/parts, (k+1)*len(x)/parts
-		var ps, pdd float64
+		var ps int64
+		var pdd float64
+		hi, lo := x[from], x[from]
 		for _, v := range x[from:to] {
-			f := float64(v) - base
+			n := int64(v) - int64(base)
+			ps += n
+			f := float64(n)
 			d := f - prev
 			dd := d - pd
 			prev, pd = f, d
-			ps += f
 			sq += f * f
 			d2 := d * d
 			sd += d2
@@ -53,16 +57,18 @@ func (s *scan) take(x []int32) {
 				s.run = max(s.run, run)
 				last, run = v, 1
 			}
-			s.min, s.max = min(s.min, v), max(s.max, v)
+			lo, hi = min(lo, v), max(hi, v)
 		}
+		bottoms[k], tops[k] = lo, hi
+		s.min, s.max = min(s.min, lo), max(s.max, hi)
 		n := float64(to - from)
-		sum += ps
+		sum += float64(ps)
 		sdd += pdd
-		means[k], white[k] = ps/n, pdd/n/6 // a second difference of white noise has six times its variance
+		means[k], white[k] = float64(ps)/n, pdd/n/6 // a second difference of white noise has six times its variance
 	}
 	s.run = max(s.run, run)
 	n := float64(len(x))
-	s.mean = base + sum/n
+	s.mean = float64(base) + sum/n
 	v := max(0, sq/n-sum/n*(sum/n))
 	s.rms = math.Sqrt(v)
 	if v > 0 && sd > 0 {
@@ -70,7 +76,7 @@ func (s *scan) take(x []int32) {
 		s.kurtosis = n * sd4 / (sd * sd)
 	}
 	s.quiet, s.white = math.Sqrt(third(&white)), math.Sqrt(sdd/n/6)
-	s.rails(x)
+	s.rails(x, &bottoms, &tops)
 	s.harmonic(&means, v)
 }
 
@@ -90,23 +96,30 @@ func third(w *[parts]float64) float64 {
 	return c
 }
 
-// rails finds the longest stretches at both extremes.
-func (s *scan) rails(x []int32) {
+// rails finds the longest stretches at both extremes. Given the least and the greatest code of each part, it looks only
+// at the parts that reach an extreme.
+func (s *scan) rails(x []int32, bottoms, tops *[parts]int32) {
 	near := int64(railShare * (float64(s.max) - float64(s.min)))
 	hi, lo := int32(int64(s.max)-near), int32(int64(s.min)+near)
 	up, down := 0, 0
-	for _, v := range x {
-		if v >= hi {
-			up++
-			s.top = max(s.top, up)
-		} else {
-			up = 0
+	for k := range parts {
+		if tops[k] < hi && bottoms[k] > lo {
+			up, down = 0, 0
+			continue
 		}
-		if v <= lo {
-			down++
-			s.bottom = max(s.bottom, down)
-		} else {
-			down = 0
+		for _, v := range x[k*len(x)/parts : (k+1)*len(x)/parts] {
+			if v >= hi {
+				up++
+				s.top = max(s.top, up)
+			} else {
+				up = 0
+			}
+			if v <= lo {
+				down++
+				s.bottom = max(s.bottom, down)
+			} else {
+				down = 0
+			}
 		}
 	}
 	s.railHi, s.railLo = s.max, s.min

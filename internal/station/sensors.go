@@ -30,11 +30,11 @@ type sensors struct {
 	both     [][]int  // by throw: features that rest on both of its ends
 
 	// Of each throw: where a deviation goes in what is told of its first accelerometer, -1 nowhere.
-	opening, noise    map[int]int
-	openings, noises  []int       // by throw: how many there are
-	openLn, noiseLn   []float64   // scratch
-	plateaus, abroad  [][]float64 // scratch, suction and discharge: of all ends, of the other ends
-	every, referredAt int64       // samples between two looks at the shaft reference; the sample of the last
+	opening, noise   map[int]int
+	openings, noises []int       // by throw: how many there are
+	openLn, noiseLn  []float64   // scratch
+	plateaus, abroad [][]float64 // scratch, suction and discharge: of all ends, of the other ends
+	every            int64       // samples between two looks at the shaft reference
 }
 
 // referencePerSecond is how often the shaft reference is asked how it does.
