@@ -39,7 +39,7 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 		SilenceUsage:  true,
 		SilenceErrors: true,
 	}
-	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), pullCommand(), listenCommand())
+	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), listenCommand())
 	return cmd
 }
 
