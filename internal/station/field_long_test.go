@@ -131,7 +131,7 @@ type fault struct {
 	name    string
 	key     string // the finding that is right; empty: there need not be one
 	least   verdict.Grade
-	also    []string // what may be said beside it, at most as an advisory
+	also    []string // what may be said beside it; a finding at most as an advisory
 	steps   []int
 	changes []model.Change
 	told    func(sk *skid.Skid) // what is wrong in the skid file
@@ -158,10 +158,10 @@ func faults() (out []fault) {
 				steps: all, changes: grow(model.PackingLeak, "t1", mm2*model.MM2)})
 	}
 	for _, bar := range []float64{-0.3, 0.3, 1} {
-		out = append(out, fault{name: fmt.Sprintf("p1h zero %+g bar", bar), key: "p1h/" + verdict.PressureZero, least: verdict.Advisory, steps: all, changes: grow(model.PressureZero, "p1h", bar*1e5)})
+		out = append(out, fault{name: fmt.Sprintf("p1h zero %+g bar", bar), key: "p1h/" + verdict.PressureZero, least: verdict.Advisory, also: []string{"p1h/sensor"}, steps: all, changes: grow(model.PressureZero, "p1h", bar*1e5)})
 	}
 	for _, g := range []float64{0, 0.5, 2} {
-		out = append(out, fault{name: fmt.Sprintf("a1 gain ×%g", g), key: "a1/" + verdict.AccelGain, least: verdict.Advisory, steps: all, changes: grow(model.AccelGain, "a1", g)})
+		out = append(out, fault{name: fmt.Sprintf("a1 gain ×%g", g), key: "a1/" + verdict.AccelGain, least: verdict.Advisory, also: []string{"a1/sensor"}, steps: all, changes: grow(model.AccelGain, "a1", g)})
 	}
 	for _, d := range []float64{-1, 1} {
 		out = append(out, fault{name: fmt.Sprintf("t1 dead centre %+g° wrong", d), key: "t1/" + verdict.DeadCentre, least: verdict.Advisory, steps: all,
