@@ -31,7 +31,8 @@ type desk struct {
 	open     map[string]wire.Alarm // by key, what stands
 	named    map[string]string     // by key, the single valve that the standing alarm names
 	findings []wire.Finding
-	latest   *wire.Turn
+	latest   *wire.Turn        // whole
+	good     int64             // number of the newest valid turn, with a whole record or without
 	trouble  map[string]string // by cause
 	featureT time.Time         // sample time of the last features sent
 }
@@ -217,10 +218,7 @@ func (d *desk) say(cause, sentence string) {
 func (s *Station) publish(o *Output, at time.Time) {
 	d := &s.desk
 	d.mu.Lock()
-	if o.Record.Type != "" && (o.Record.Valid || d.latest == nil || !d.latest.Valid || o.Record.Turn-d.latest.Turn > toldInvalid) {
-		rec := o.Record
-		d.latest = &rec
-	}
+	d.show(&o.Record)
 	var renewed []wire.Alarm
 	if o.Judged {
 		d.findings = wireFindings(o.Findings, s.line)
@@ -248,6 +246,22 @@ func (s *Station) publish(o *Output, at time.Time) {
 			s.pub.Offer(s.topics.Features(id), b, false)
 		}
 	}
+}
+
+// show keeps the turn that is to be seen: whole records, and invalid turns when they last.
+func (d *desk) show(r *wire.Turn) {
+	switch {
+	case r.Type == "":
+		return
+	case r.Valid:
+		if d.good = r.Turn; len(r.Throws) == 0 {
+			return
+		}
+	case d.latest != nil && d.latest.Valid && r.Turn-d.good <= toldInvalid:
+		return
+	}
+	rec := *r
+	d.latest = &rec
 }
 
 // toldInvalid is how many turns in a row may be invalid before the page shows one instead of the last good turn.

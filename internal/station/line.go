@@ -35,6 +35,8 @@ type Line struct {
 	gas      *gasBook
 	watches  []*duty.Watch
 	record   *wire.Recorder
+	records  Records
+	whole    int64 // sample at which the newest whole record begins
 	learn    LearnPlan
 	learner  *duty.Learner
 	learnt   int // steady turns that every throw has given to the learner
@@ -70,6 +72,30 @@ type LearnPlan struct {
 
 func (p LearnPlan) wanted() bool { return p.Steady > 0 || p.To > p.From }
 
+// Records says which turns get a whole record. The others get the head only: a valid turn without throws.
+type Records uint8
+
+// The cases. A record costs about a tenth of the line, and is made for whoever reads it.
+const (
+	EveryTurn Records = iota
+	Newest            // the first turn of every half second or so: for a page that is looked at
+	Heads             // none
+)
+
+const (
+	newestEvery = 0.5 // s, how often Newest gives a whole record
+	never       = math.MinInt64 / 2
+)
+
+// wants reports whether a turn gets a whole record, and books it.
+func (l *Line) wants(t *turn.Turn) bool {
+	if l.records == Newest && t.Seq0 < l.whole+int64(newestEvery*l.info.Rate) || l.records == Heads {
+		return false
+	}
+	l.whole = t.Seq0
+	return true
+}
+
 // Count is what has passed through the line.
 type Count struct {
 	Turns, Invalid int64
@@ -80,7 +106,8 @@ type Count struct {
 
 // Output is what one turn brought. Between turns (its Record has no Type) it brings only that the marks are gone.
 type Output struct {
-	Record      wire.Turn
+	Record      wire.Turn         // of a valid turn with throws or without, see Records
+	Windows     window.Result     // valid until the next turn
 	At          time.Time         // of the turn's dead centre
 	Vector      *measure.Vector   // valid until the next turn
 	Points      []duty.Point      // per throw, likewise
@@ -116,7 +143,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 		return nil, err
 	}
 	l.windows = window.NewTracker(window.Config{Works: works(sk)})
-	l.record = wire.NewRecorder(sk, l.layout, info.Rate)
+	l.record, l.whole = wire.NewRecorder(sk, l.layout, info.Rate), never
 	for i := range sk.Throws {
 		l.watches = append(l.watches, duty.NewWatch(duty.WatchConfig{MinRPM: sk.Machine.MinRPM * 0.97, MaxRPM: sk.Machine.MaxRPM * 1.03, Steps: dutySteps(sk, i)}))
 	}
@@ -360,12 +387,17 @@ func (l *Line) turn(t *turn.Turn) {
 		l.sensors.level(t, w)
 	} else {
 		l.count.Invalid++
+		l.whole = never // what comes next is news
 		l.count.Reasons[t.Reason]++
 	}
 	for i := range l.points {
 		l.points[i] = l.classify(i, t, proc, w)
 	}
-	o.Record = l.record.Record(t, w, &l.vec, l.points)
+	if o.Windows = w; t.Valid() && l.wants(t) {
+		o.Record = l.record.Record(t, w, &l.vec, l.points)
+	} else {
+		o.Record = l.record.Head(t)
+	}
 	o.At = l.utc(o.Record.TimeS)
 	l.fromStart(&o.Record)
 	if t.Valid() {

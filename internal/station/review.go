@@ -75,6 +75,8 @@ func Review(ctx context.Context, o ReviewOptions) (err error) {
 	}
 	if o.Out != nil {
 		r.out = bufio.NewWriterSize(o.Out, 1<<16)
+	} else {
+		r.line.records = Heads
 	}
 	r.remark(base)
 	began := time.Now()
@@ -165,7 +167,7 @@ func (r *review) remark(base *duty.Baseline) {
 func (r *review) run(ctx context.Context) error {
 	var failed error
 	emit := func(o *Output) {
-		r.sum.add(o)
+		r.sum.add(r.sk, o)
 		if failed == nil {
 			failed = r.write(o)
 		}

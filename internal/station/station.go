@@ -151,6 +151,9 @@ func (s *Station) openLine() error {
 	if err != nil {
 		return err
 	}
+	if s.o.OnTurn == nil {
+		s.line.records = Newest
+	}
 	var mem Memory
 	if ok, err := s.ledger.Doc(docLine, &mem); err != nil {
 		return err

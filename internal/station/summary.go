@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"lapwing/internal/duty"
+	"lapwing/internal/skid"
 	"lapwing/internal/wire"
 )
 
@@ -51,18 +52,15 @@ type summary struct {
 
 func newSummary() *summary { return &summary{states: map[string]map[string]int64{}} }
 
-func (s *summary) add(o *Output) {
+func (s *summary) add(sk *skid.Skid, o *Output) {
 	if o.Record.Valid {
 		s.valid, s.last = true, o.Record.Turn
-	}
-	for i := range o.Record.Throws {
-		t := &o.Record.Throws[i]
-		for j := range t.Ends {
-			name := t.ID + "." + t.Ends[j].End
-			if s.states[name] == nil {
-				s.states[name] = map[string]int64{}
+		for i := range o.Windows.Throws {
+			for e := range o.Windows.Throws[i].Ends {
+				if end := &o.Windows.Throws[i].Ends[e]; !end.NotPresent {
+					s.count(sk.EndName(i, e), end.State.String())
+				}
 			}
-			s.states[name][t.Ends[j].State]++
 		}
 	}
 	if o.Baseline != nil {
@@ -75,6 +73,13 @@ func (s *summary) add(o *Output) {
 		t := &o.Transitions[i]
 		s.raised = append(s.raised, fmt.Sprintf("%8.1f s, turn %d: %s %s → %s, %s: %s", o.Record.TimeS, t.Turn, t.Key, t.From, t.To, t.Severity, t.Sentence))
 	}
+}
+
+func (s *summary) count(end, state string) {
+	if s.states[end] == nil {
+		s.states[end] = map[string]int64{}
+	}
+	s.states[end][state]++
 }
 
 // unended says that a learning run that was to end before turn to never did.

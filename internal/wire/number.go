@@ -10,15 +10,18 @@ func opt(x float64) *float64 {
 	return &x
 }
 
-// round keeps a number of decimals. What is too large to have any is given back as it is.
+// round keeps a number of decimals, 0 to 15. What is too large to have any is given back as it is.
 func round(x float64, decimals int) float64 {
-	s := math.Pow(10, float64(decimals))
+	s := tens[decimals]
 	y := math.Round(x * s)
 	if math.IsInf(y, 0) {
 		return x
 	}
 	return y/s + 0 // no minus zero
 }
+
+// tens are the powers of ten that are whole numbers to the last bit, as far as they are used here.
+var tens = [...]float64{1, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15}
 
 // figures keeps a number of significant figures.
 func figures(x float64, n int) float64 {

@@ -88,15 +88,21 @@ func NewRecorder(sk *skid.Skid, layout measure.Layout, rate float64) *Recorder {
 
 // Record makes the record of one turn. A turn that is not valid has a reason and no throws.
 func (r *Recorder) Record(t *turn.Turn, w window.Result, v *measure.Vector, points []duty.Point) Turn {
-	rec := Turn{Type: "turn", Turn: t.Number, TimeS: round(t.Time, 7), Valid: t.Valid(), Reason: t.Reason, RPM: opt(round(t.RPM, 4)), Samples: [2]int64{t.Seq0, t.Seq1}}
-	if opt(t.Time) == nil { // every turn is somewhere: say at least where its samples begin
-		rec.TimeS = round(float64(t.Seq0)/r.rate, 7)
-	}
+	rec := r.Head(t)
 	if !t.Valid() {
 		return rec
 	}
 	for i := range t.Throws {
 		rec.Throws = append(rec.Throws, r.throw(i, &t.Throws[i], &w.Throws[i], v, points[i]))
+	}
+	return rec
+}
+
+// Head is a record without its throws, which are nearly all of the work.
+func (r *Recorder) Head(t *turn.Turn) Turn {
+	rec := Turn{Type: "turn", Turn: t.Number, TimeS: round(t.Time, 7), Valid: t.Valid(), Reason: t.Reason, RPM: opt(round(t.RPM, 4)), Samples: [2]int64{t.Seq0, t.Seq1}}
+	if opt(t.Time) == nil { // every turn is somewhere: say at least where its samples begin
+		rec.TimeS = round(float64(t.Seq0)/r.rate, 7)
 	}
 	return rec
 }
