@@ -6,7 +6,7 @@ GO         ?= go
 STATICCHECK = honnef.co/go/tools/cmd/staticcheck@v0.8.2
 SHARED     ?= $(abspath ../shared)
 
-.PHONY: demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
+.PHONY: field demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
 
 build: bin/lapwing bin/lapwingd
 
@@ -47,6 +47,10 @@ fuzz:
 # The programs as their users run them: real broker, real clients, other programs opening what we wrote.
 system: build
 	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/...
+
+# The whole field on the model, ten minutes, with tables: windows against the truth, healthy walks, every fault.
+field:
+	LAPWING_FIELD=long $(GO) test -count=1 -timeout 40m -v -run TestField ./internal/station
 
 # Figures, never a test: every room's benchmarks; the line stage by stage; the line against scipy in one run.
 PYTHON  ?= /usr/bin/python3
