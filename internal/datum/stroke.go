@@ -193,8 +193,11 @@ func (in *Input) areaOfPercent(d *Duty) (a [Paths]float64) {
 			mass[HS+2*end] += dt * flow(p, d.gasT(p), d.Ps, d.Ts)
 			mass[HD+2*end] += dt * flow(p, d.gasT(p), d.Pd, td)
 		}
-		if d.P[0] == nil || d.P[1] == nil {
-			pc, ph = in.Beyond, math.Max(ph*b2f(d.P[0] != nil), pc*b2f(d.P[1] != nil))
+		switch { // one end without a transducer
+		case d.P[crank.CE] == nil:
+			pc = in.Beyond
+		case d.P[crank.HE] == nil:
+			ph = in.Beyond
 		}
 		if ph > 0 && pc > 0 {
 			mass[RG] += dt * flow(ph, d.gasT(ph), pc, d.gasT(pc))
@@ -208,11 +211,4 @@ func (in *Input) areaOfPercent(d *Duty) (a [Paths]float64) {
 		}
 	}
 	return a
-}
-
-func b2f(b bool) float64 {
-	if b {
-		return 1
-	}
-	return 0
 }
