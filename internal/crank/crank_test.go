@@ -92,7 +92,7 @@ func TestTailRod(t *testing.T) {
 	}
 	var l Loads
 	p := Pressure{Held: 3e6}
-	if err := c.RodLoads(&l, p, p, 0, 1, 360, 101325, []float64{0}); err != nil {
+	if err := c.RodLoads(&l, nil, p, p, 0, 1, 360, 101325, []float64{0}); err != nil {
 		t.Fatal(err)
 	}
 	near(t, "gas load of a balanced piston", l.Gas[17]+1, 1, 1e-6)

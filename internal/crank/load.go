@@ -33,10 +33,29 @@ type Loads struct {
 	Gas, Rod, Pin []float64
 }
 
-// RodLoads fills l for n grid points at lo, lo+step, … degrees, reusing its slices. omega is the shaft speed in
+// Motion holds the derivatives of the travel by the angle on a grid, which cost more than everything else in a rod
+// load. Who works out the loads of turn after turn keeps one; the zero value is ready.
+type Motion struct {
+	stroke, conRod, lo, step float64
+	d1, d2                   []float64 // m/rad, m/rad²
+}
+
+// lay fills it in for a cylinder and n grid points at lo, lo+step, … degrees, when it is not that already.
+func (m *Motion) lay(c *Cylinder, lo, step float64, n int) {
+	if len(m.d1) == n && m.stroke == c.Stroke && m.conRod == c.ConRod && m.lo == lo && m.step == step {
+		return
+	}
+	m.stroke, m.conRod, m.lo, m.step = c.Stroke, c.ConRod, lo, step
+	m.d1, m.d2 = sized(m.d1, n), sized(m.d2, n)
+	for i := range n {
+		m.d1[i], m.d2[i] = c.slope(lo + float64(i)*step)
+	}
+}
+
+// RodLoads fills l for n grid points at lo, lo+step, … degrees, reusing its slices; m may be nil. omega is the shaft speed in
 // rad/s, one per grid point or a single value for an even speed; with one per point the angular acceleration is
 // taken from it, ω·dω/dθ. pAtm is the pressure on the outside of the rods, Pa absolute.
-func (c Cylinder) RodLoads(l *Loads, he, ce Pressure, lo, step float64, n int, pAtm float64, omega []float64) error {
+func (c Cylinder) RodLoads(l *Loads, m *Motion, he, ce Pressure, lo, step float64, n int, pAtm float64, omega []float64) error {
 	for end, p := range [2]Pressure{he, ce} {
 		if p.P != nil && len(p.P) != n {
 			return fmt.Errorf("crank: rod load: %s pressure has %d points, the grid has %d", endName(end), len(p.P), n)
@@ -45,6 +64,10 @@ func (c Cylinder) RodLoads(l *Loads, he, ce Pressure, lo, step float64, n int, p
 	if len(omega) != n && len(omega) != 1 {
 		return fmt.Errorf("crank: rod load: %d speeds for %d grid points", len(omega), n)
 	}
+	if m == nil {
+		m = new(Motion)
+	}
+	m.lay(&c, lo, step, n)
 	l.Gas, l.Rod, l.Pin = sized(l.Gas, n), sized(l.Rod, n), sized(l.Pin, n)
 	areaHE, areaCE := c.Area(HE), c.Area(CE)
 	for i := range n {
@@ -54,7 +77,7 @@ func (c Cylinder) RodLoads(l *Loads, he, ce Pressure, lo, step float64, n int, p
 			a, b := max(i-1, 0), min(i+1, n-1)
 			alpha = w * (omega[b] - omega[a]) / (float64(b-a) * step * radPerDeg)
 		}
-		acc := c.Accel(lo+float64(i)*step, w, alpha)
+		acc := m.d2[i]*w*w + m.d1[i]*alpha // as Accel
 		gas := (he.at(i)-pAtm)*areaHE - (ce.at(i)-pAtm)*areaCE
 		l.Gas[i] = gas
 		l.Rod[i] = gas - c.MassPiston*acc

@@ -63,7 +63,7 @@ func TestRodLoadSummary(t *testing.T) {
 		t.Run(k.name, func(t *testing.T) {
 			var l Loads
 			he, ce := k.pressures(0, .1, 3600)
-			if err := k.c.RodLoads(&l, he, ce, 0, .1, 3600, 101325, []float64{rads(k.rpm)}); err != nil {
+			if err := k.c.RodLoads(&l, nil, he, ce, 0, .1, 3600, 101325, []float64{rads(k.rpm)}); err != nil {
 				t.Fatal(err)
 			}
 			peak := func(what string, load []float64, wantC, wantT float64) {
@@ -85,7 +85,7 @@ func TestRodLoadSummary(t *testing.T) {
 
 			// The coarser grid of a turn must tell the same.
 			he, ce = k.pressures(0, .5, 720)
-			if err := k.c.RodLoads(&l, he, ce, 0, .5, 720, 101325, []float64{rads(k.rpm)}); err != nil {
+			if err := k.c.RodLoads(&l, nil, he, ce, 0, .5, 720, 101325, []float64{rads(k.rpm)}); err != nil {
 				t.Fatal(err)
 			}
 			if r := Reverse(l.Pin); math.Abs(r.Degrees-k.reversal) > .3 {
@@ -105,13 +105,42 @@ func TestRodLoadUnevenSpeed(t *testing.T) {
 	}
 	var l Loads
 	p := Pressure{Held: 101325}
-	if err := m1.RodLoads(&l, p, p, 0, .5, n, 101325, omega); err != nil {
+	if err := m1.RodLoads(&l, nil, p, p, 0, .5, n, 101325, omega); err != nil {
 		t.Fatal(err)
 	}
 	for _, i := range []int{1, 90, 200, 333, 700} {
 		th := float64(i) * .5
 		alpha := omega[i] * w0 * 2 * a * math.Cos(2*th*radPerDeg)
 		near(t, "pin load", l.Pin[i], -140*m1.Accel(th, omega[i], alpha), 1e-3)
+	}
+}
+
+// A motion that is kept from turn to turn changes nothing, also when cylinder or grid are others than before.
+func TestKeptMotion(t *testing.T) {
+	other := m1
+	other.ConRod *= 1.1
+	other.Bore *= 1.2
+	longer := m1
+	longer.Stroke *= 1.3
+	var kept Motion
+	var got, want Loads
+	for i, k := range []struct {
+		c        Cylinder
+		lo, step float64
+		n        int
+	}{{m1, 0, .5, 720}, {m1, 0, .5, 720}, {other, 0, .5, 720}, {longer, 0, .5, 720}, {m1, 10, .5, 720}, {m1, 10, 1, 360}, {m1, 10, 1, 720}} {
+		he, ce := Pressure{Held: 4e5}, Pressure{Held: 1e5}
+		if err := k.c.RodLoads(&got, &kept, he, ce, k.lo, k.step, k.n, 101325, []float64{rads(900)}); err != nil {
+			t.Fatal(err)
+		}
+		if err := k.c.RodLoads(&want, nil, he, ce, k.lo, k.step, k.n, 101325, []float64{rads(900)}); err != nil {
+			t.Fatal(err)
+		}
+		for j := range want.Pin {
+			if acc := k.c.Accel(k.lo+float64(j)*k.step, rads(900), 0); got.Pin[j] != want.Pin[j] || got.Pin[j] != want.Gas[j]-(k.c.MassPiston+k.c.MassCrosshead)*acc {
+				t.Fatalf("case %d, point %d: %g, want %g", i, j, got.Pin[j], want.Pin[j])
+			}
+		}
 	}
 }
 
@@ -162,10 +191,10 @@ func TestReverseOfSine(t *testing.T) {
 
 func TestRodLoadErrors(t *testing.T) {
 	var l Loads
-	if m1.RodLoads(&l, Pressure{P: make([]float64, 3)}, Pressure{}, 0, 1, 4, 0, []float64{1}) == nil {
+	if m1.RodLoads(&l, nil, Pressure{P: make([]float64, 3)}, Pressure{}, 0, 1, 4, 0, []float64{1}) == nil {
 		t.Error("a pressure of the wrong length must be refused")
 	}
-	if m1.RodLoads(&l, Pressure{}, Pressure{}, 0, 1, 4, 0, nil) == nil {
+	if m1.RodLoads(&l, nil, Pressure{}, Pressure{}, 0, 1, 4, 0, nil) == nil {
 		t.Error("a missing speed must be refused")
 	}
 }

@@ -90,7 +90,7 @@ func TestWorkedTables(t *testing.T) {
 		rows := readShared(t, k.file)
 		var l Loads
 		he, ce := k.lc.pressures(0, 5, len(rows))
-		if err := k.lc.c.RodLoads(&l, he, ce, 0, 5, len(rows), 101325, []float64{rads(k.lc.rpm)}); err != nil {
+		if err := k.lc.c.RodLoads(&l, nil, he, ce, 0, 5, len(rows), 101325, []float64{rads(k.lc.rpm)}); err != nil {
 			t.Fatal(err)
 		}
 		for i, row := range rows {

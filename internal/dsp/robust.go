@@ -53,35 +53,54 @@ func quantileInPlace(w []float64, q float64) float64 {
 }
 
 // nth moves the k-th smallest value to place k, smaller ones before it, and returns it. Quickselect with the median
-// of three as pivot; three-way, so that many equal values (a flat sensor) cost nothing.
+// of three as pivot. Values are moved without a branch on what they are, which noise would mispredict; where the pivot
+// is the smallest there is (many equal values: a flat sensor), all that equal it are set aside together.
 func nth(w []float64, k int) float64 {
 	lo, hi := 0, len(w)-1
 	for lo < hi {
 		p := middle(w[lo], w[lo+(hi-lo)/2], w[hi])
-		lt, i, gt := lo, lo, hi
-		for i <= gt {
-			switch v := w[i]; {
-			case v < p:
-				w[lt], w[i] = v, w[lt]
-				lt++
-				i++
-			case v > p:
-				w[i], w[gt] = w[gt], v
-				gt--
-			default:
-				i++
-			}
+		if p-p != 0 { // has no differences
+			slices.Sort(w[lo : hi+1])
+			break
 		}
-		switch {
-		case k < lt:
-			hi = lt - 1
-		case k > gt:
-			lo = gt + 1
-		default:
+		at := below(w[lo:hi+1], p)
+		if at > 0 {
+			if k < lo+at {
+				hi = lo + at - 1
+			} else {
+				lo += at
+			}
+			continue
+		}
+		at = upTo(w[lo:hi+1], p)
+		if k < lo+at {
 			return p
 		}
+		lo += at
 	}
 	return w[k]
+}
+
+// below moves the values under p to the front and tells how many they are. The sign of the difference is what counts.
+func below(w []float64, p float64) int {
+	n := 0
+	for i, v := range w {
+		w[i] = w[n]
+		w[n] = v
+		n += int(math.Float64bits(v-p) >> 63)
+	}
+	return n
+}
+
+// upTo does the same with the values up to p.
+func upTo(w []float64, p float64) int {
+	n := 0
+	for i, v := range w {
+		w[i] = w[n]
+		w[n] = v
+		n += 1 - int(math.Float64bits(p-v)>>63)
+	}
+	return n
 }
 
 func middle(a, b, c float64) float64 {

@@ -32,7 +32,7 @@ func (m *Measurer) loadsOf(c *throwCtx) {
 		m.noLoads(c, whySpeed)
 		return
 	}
-	err := c.in.Cylinder.RodLoads(&m.loads, p[crank.HE], p[crank.CE], g.At(c.i0), g.Step, n, m.cfg.Atmosphere, c.th.Omega[c.i0:c.i1])
+	err := c.in.Cylinder.RodLoads(&m.loads, &m.motions[c.i], p[crank.HE], p[crank.CE], g.At(c.i0), g.Step, n, m.cfg.Atmosphere, c.th.Omega[c.i0:c.i1])
 	if err != nil {
 		m.noLoads(c, whySpeed)
 		return

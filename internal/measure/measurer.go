@@ -44,6 +44,7 @@ type Measurer struct {
 
 	x, y, env    []float64
 	loads        crank.Loads
+	motions      []crank.Motion // by throw
 	masked, busy []bool
 
 	ctx    []throwCtx
@@ -70,7 +71,7 @@ func New(cfg Config) *Measurer {
 	if !(cfg.Atmosphere > 0) {
 		cfg.Atmosphere = 101325
 	}
-	m := &Measurer{cfg: cfg, shapes: make([]shape, len(cfg.Machine.Throws))}
+	m := &Measurer{cfg: cfg, shapes: make([]shape, len(cfg.Machine.Throws)), motions: make([]crank.Motion, len(cfg.Machine.Throws))}
 	for range cfg.Machine.Throws {
 		m.fitters = append(m.fitters, leak.NewFitter(cfg.Leak))
 	}

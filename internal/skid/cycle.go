@@ -59,7 +59,7 @@ func (sk *Skid) ideal(throw int, st Step, line Line, g gas.Props) idealThrow {
 	}
 	var l crank.Loads
 	omega := []float64{2 * math.Pi * sk.Machine.RatedRPM / 60}
-	if err := c.RodLoads(&l, p[crank.HE], p[crank.CE], 0, 360.0/cyclePoints, cyclePoints, sk.Machine.Atmosphere, omega); err != nil {
+	if err := c.RodLoads(&l, nil, p[crank.HE], p[crank.CE], 0, 360.0/cyclePoints, cyclePoints, sk.Machine.Atmosphere, omega); err != nil {
 		panic(fmt.Sprintf("skid: own grid refused: %v", err)) // lengths are fixed above
 	}
 	out.gas, out.pin = crank.Reverse(l.Gas), crank.Reverse(l.Pin)
