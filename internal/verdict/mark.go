@@ -86,6 +86,26 @@ func (b *bench) standing(h int) bool {
 	return false
 }
 
+// shadow is the share of a standing leak that another path of the throw must exceed to be a leak of its own: cross-talk
+// of the leak fit is up to 5 % (reference/leaks.md section 1, worst cell), and hot gas from a big leak bends the other
+// end's lines a little too.
+const shadow = 0.05
+
+// standingLeak gives the size of the throw's largest standing valve leak other than c, in the unit of the pressure
+// patterns; 0 when there is none.
+func (b *bench) standingLeak(c *trial) (g float64) {
+	for i := range b.cases {
+		o := &b.cases[i]
+		if o == c || o.kind != Leaking || o.group < 0 || o.grade == None || len(o.marks) == 0 {
+			continue
+		}
+		if last := o.marks[len(o.marks)-1].g; last > g {
+			g = last
+		}
+	}
+	return g
+}
+
 // mark gathers a block's evidence on one hypothesis.
 func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v *heard, t *felt, doubt [2]bool, deaf bool) mark {
 	nan := math.NaN()
@@ -120,6 +140,9 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		case Leaking:
 			m.llr[measure.Pressure], m.g, m.sd = f.llr, f.g, f.sd
 			m.slowSignal = c.slow.Step(f.z) >= 1
+			if c.grade == None && f.g < shadow*b.standingLeak(c) {
+				m.llr[measure.Pressure], m.slowSignal = math.Min(0, f.llr), false
+			}
 		case ImpactingHard: // a broken plate also leaks: that is its second witness
 			if f.chosen && f.llr > 0 && v.hard[c.h] >= 1 {
 				m.llr[measure.Pressure] = f.llr
@@ -150,6 +173,9 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		}
 		if c.h == hRings {
 			m.llr[measure.Temperature] = t.rings
+			if c.grade == None && b.standingLeak(c) > 0 { // a valve that leaks warms the discharge gas as well
+				m.llr[measure.Temperature] = math.Min(0, t.rings)
+			}
 		} else {
 			m.ambiguous = s.structural(&b.place, c.end, c.group)
 			if p := press[c.h]; !(p.chosen && p.llr >= alertClass) && pairOf[c.h] == v.best && v.leak[c.h] > 0 {
