@@ -32,7 +32,7 @@ func (s *scan) take(x []int32) {
 	var sum, sq, sd, sd4, sdd float64
 	var means, white [parts]float64
 	var tops, bottoms [parts]int32
-	last, run := x[0], 0
+	var last, run, longest int64
 	prev, pd := 0.0, 0.0
 	for k := range parts {
 		from, to := k*len(x)/parts, (k+1)*len(x)/parts
@@ -51,12 +51,10 @@ func (s *scan) take(x []int32) {
 			sd += d2
 			sd4 += d2 * d2
 			pdd += dd * dd
-			if v == last {
-				run++
-			} else {
-				s.run = max(s.run, run)
-				last, run = v, 1
-			}
+			step := n - last // without a branch: noise would mispredict it
+			last = n
+			run = run&^((step|-step)>>63) + 1
+			longest = max(longest, run)
 			lo, hi = min(lo, v), max(hi, v)
 		}
 		bottoms[k], tops[k] = lo, hi
@@ -66,7 +64,7 @@ func (s *scan) take(x []int32) {
 		sdd += pdd
 		means[k], white[k] = float64(ps)/n, pdd/n/6 // a second difference of white noise has six times its variance
 	}
-	s.run = max(s.run, run)
+	s.run = int(longest)
 	n := float64(len(x))
 	s.mean = float64(base) + sum/n
 	v := max(0, sq/n-sum/n*(sum/n))

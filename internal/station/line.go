@@ -56,6 +56,7 @@ type Line struct {
 	points []duty.Point
 	devs   []duty.Deviation
 	part   [][]int32 // scratch of cut
+	conds  []alarm.Condition
 	out    func(*Output)
 	count  Count
 	steady []int
@@ -527,7 +528,7 @@ func (l *Line) endLearning(at float64, o *Output) {
 
 // decide gathers evidence, judges complete blocks and steps the alarms.
 func (l *Line) decide(t *turn.Turn, o *Output) {
-	var conds []alarm.Condition
+	conds := l.conds[:0]
 	now := l.utc(t.Time)
 	conds = l.limitConditions(conds, t)
 	conds = l.sensors.conditions(conds, t.Number, t.Seq1, l.reach())
@@ -549,6 +550,7 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 			o.Findings = l.judge.Findings()
 		}
 	}
+	l.conds = conds
 	if len(conds) > 0 {
 		o.Transitions = l.alarms.Step(now, conds)
 	}

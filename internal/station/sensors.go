@@ -24,6 +24,8 @@ type sensors struct {
 	*sensor.Watch
 	kinds    []skid.Kind
 	place    []string // by channel: t1.he, t1; empty for the shaft reference
+	keys     []string // by channel: of its alarm
+	wells    []string // by channel: what its alarm says when nothing is wrong
 	pressure [][2]int // by throw and end: index of the channel, -1
 	accel    [][]int  // by throw
 	stage    []int    // by throw
@@ -33,7 +35,7 @@ type sensors struct {
 	opening, noise   map[int]int
 	openings, noises []int       // by throw: how many there are
 	openLn, noiseLn  []float64   // scratch
-	plateaus, abroad [][]float64 // scratch, suction and discharge: of all ends, of the other ends
+	abroad           [][]float64 // scratch, suction and discharge plateaus of the other ends
 	every            int64       // samples between two looks at the shaft reference
 }
 
@@ -42,7 +44,7 @@ const referencePerSecond = 4
 
 func newSensors(sk *skid.Skid, info acq.Info, layout measure.Layout) (*sensors, error) {
 	s := &sensors{opening: map[int]int{}, noise: map[int]int{}, every: max(1, int64(info.Rate/referencePerSecond)),
-		plateaus: make([][]float64, 2), abroad: make([][]float64, 2)}
+		abroad: make([][]float64, 2)}
 	cfg := sensor.Config{Rate: info.Rate}
 	at := map[string]int{}
 	for i, c := range sk.Channels {
@@ -55,6 +57,7 @@ func newSensors(sk *skid.Skid, info acq.Info, layout measure.Layout) (*sensors, 
 			d.Kind = sensor.Acceleration
 		}
 		at[c.ID] = i
+		s.keys, s.wells = append(s.keys, c.ID+"/"+sensorKind), append(s.wells, c.ID+": nothing is wrong with the channel any more")
 		s.kinds = append(s.kinds, c.Kind)
 		cfg.Channels = append(cfg.Channels, d)
 	}
@@ -212,8 +215,8 @@ func (s *sensors) conditions(conds []alarm.Condition, turn, seq1, reach int64) [
 
 func (s *sensors) condition(conds []alarm.Condition, i int, turn, seq1, reach int64) []alarm.Condition {
 	st := s.State(i)
-	c := alarm.Condition{Key: s.ID(i) + "/" + sensorKind, Subject: s.ID(i), Kind: sensorKind, Known: st.Category != sensor.FunctionCheck, Turn: turn,
-		Seq0: max(0, st.First, seq1-reach), Seq1: seq1, Sentence: s.ID(i) + ": nothing is wrong with the channel any more"}
+	c := alarm.Condition{Key: s.keys[i], Subject: s.ID(i), Kind: sensorKind, Known: st.Category != sensor.FunctionCheck, Turn: turn,
+		Seq0: max(0, st.First, seq1-reach), Seq1: seq1, Sentence: s.wells[i]}
 	if st.Category > sensor.Good && !st.Judge {
 		c.Sentence = st.Category.String() + ": " + st.Reason
 		c.Severity = alarm.Advisory

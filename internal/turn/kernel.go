@@ -20,6 +20,7 @@ type kernel struct {
 	g      []float64 // that Gaussian at 0, 1 … reach samples
 	c      float64   // 1/σ²
 
+	index []float64 // 0, 1, 2 …, as many as h
 	w     []float64 // Gaussian about the position, 1 at the nearest sample, which is w[reach]
 	reach int
 	d     float64    // nearest sample minus position
@@ -50,6 +51,9 @@ func (k *kernel) gauss(sigma float64) {
 	n := 2*k.reach + 1
 	if cap(k.w) < n {
 		k.w, k.h = make([]float64, n, 2*n), make([]float64, n, 2*n)
+	}
+	for len(k.index) < n {
+		k.index = append(k.index, float64(len(k.index)))
 	}
 	k.w, k.h = k.w[:n], k.h[:n]
 	k.g = append(k.g[:0], 1)
@@ -109,9 +113,9 @@ func (k *kernel) line() {
 	det := 1 / (s0*s2 - s1*s1)
 	b := -s1 * det
 	a := s2*det + b*(k.d-float64(k.reach))
-	h := k.h[:len(k.w)]
+	h, index := k.h[:len(k.w)], k.index[:len(k.w)]
 	for i, w := range k.w {
-		h[i] = w * (a + b*float64(i))
+		h[i] = w * (a + b*index[i])
 	}
 }
 
