@@ -12,7 +12,7 @@ import (
 )
 
 // pure rooms lie between frame and alarm: the same samples must give the same findings, bit for bit, live or offline.
-var pure = []string{"crank", "gas", "dsp", "frame", "turn", "ripple", "window", "measure", "leak", "sensor", "duty", "verdict", "alarm"}
+var pure = []string{"crank", "gas", "dsp", "frame", "turn", "ripple", "window", "measure", "leak", "passage", "datum", "sensor", "duty", "verdict", "alarm"}
 
 var forbidden = map[string]string{
 	"os":               "files belong to the edges",

@@ -65,7 +65,7 @@ Sources:
 	f.StringVar(&o.ProcessCSV, "process", "", "process values from a CSV beside a recording")
 	f.BoolVar(&o.Fast, "fast", false, "do not pace a recording or model in real time")
 	f.IntVar(&o.Learn, "learn", 0, "declare the machine healthy now: this many steady turns become the baseline")
-	f.StringVar(&o.Broker, "broker", "", "MQTT broker instead of the skid file's, e.g. tcp://127.0.0.1:1883")
+	f.StringVar(&o.Broker, "broker", "", "MQTT broker instead of the skid file's and without its credentials, e.g. tcp://127.0.0.1:1883")
 	f.StringVar(&o.Listen, "listen", "", "address of the local page instead of the skid file's")
 	f.Uint64Var(&o.Seed, "seed", 1, "seed of a modelled machine")
 	f.BoolVar(&verbose, "verbose", false, "log more")

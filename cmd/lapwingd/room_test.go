@@ -44,7 +44,7 @@ func TestSystemControlRoom(t *testing.T) {
 	page := pageOf(t, d)
 
 	d.until(90*time.Second, "the baseline is learnt, and health says so", func() bool {
-		m, ok := sub.newest("marsh-end-c1/health")
+		m, ok := sub.newest("quillmere-c1/health")
 		return ok && m.health(t).Baseline && m.health(t).State == "running"
 	})
 	for _, throw := range []string{"t1", "t2"} {
@@ -81,11 +81,11 @@ func TestSystemControlRoom(t *testing.T) {
 
 	// A late client sees what stands, and that nobody watches now.
 	late := b.retained("lapwing/#")
-	standing := find(late, "lapwing/marsh-end-c1/standing/t1.he.suction/leaking")
+	standing := find(late, "lapwing/quillmere-c1/standing/t1.he.suction/leaking")
 	if standing == nil || !namesTheLeak(standing.alarm(t)) || !standing.retain || standing.qos != 1 {
 		t.Errorf("standing alarm for a late client: %+v", standing)
 	}
-	if h := find(late, "lapwing/marsh-end-c1/health"); h == nil || h.health(t).State != "offline" {
+	if h := find(late, "lapwing/quillmere-c1/health"); h == nil || h.health(t).State != "offline" {
 		t.Errorf("health for a late client: %+v", h)
 	}
 	for _, m := range late {
@@ -117,7 +117,7 @@ func TestSystemControlRoom(t *testing.T) {
 		return ok && m.health(t).State == "offline"
 	})
 	// The will is for accidents: a clean stop takes its leave of the broker.
-	if !strings.Contains(b.p.err.String(), "Client lapwing-marsh-end-c1 disconnected.") {
+	if !strings.Contains(b.p.err.String(), "Client lapwing-quillmere-c1 disconnected.") {
 		t.Error("the broker did not see the daemon take its leave")
 	}
 	if out, errs, code := ran(t, built(t, "lapwing"), "pull", "--daemon", page); code != 1 || !strings.Contains(errs, "does not answer") || !strings.Contains(errs, "--state") {
@@ -229,7 +229,7 @@ func sameAsJournal(t *testing.T, state string, as []said) {
 	}
 	state0 := map[string]string{}
 	for i := range journal {
-		j := wire.FromTransition("marsh-end-c1", &journal[i], "")
+		j := wire.FromTransition("quillmere-c1", &journal[i], "")
 		if j.ID != uint64(i+1) {
 			t.Errorf("journal entry %d has id %d", i+1, j.ID)
 		}

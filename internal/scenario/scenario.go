@@ -126,7 +126,7 @@ func grow(sk *skid.Skid) Run {
 	s = s.Add(138, 0, model.LoadStep, "", full)
 	s = s.Add(142, 25, model.ValveLeak, victim(sk), 30*model.MM2)
 	s = walk(s, sk, 150, 8, 0.5, []duty{{0.1, 0, 0}, {-0.1, 0.05, 0.5}, {0, 0, 0}})
-	return Run{Script: s, Duration: 195, Learn: 440, Chapters: []Chapter{
+	return Run{Script: s, Duration: 195, Learn: int(0.59 * sk.Machine.RatedRPM), Chapters: []Chapter{
 		{0, "The machine is declared healthy. Lapwing learns what each measure does as the load moves."},
 		{116, "The load moves again: pressures, speed, pockets. The windows follow; nothing may be said."},
 		{142, "Suction valve " + victim(sk) + " begins to leak: 30 mm² over 25 s, while the load goes on moving."},

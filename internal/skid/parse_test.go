@@ -23,7 +23,7 @@ func parsed(t testing.TB, raw string) *Skid {
 
 func TestTheExampleIsUnderstoodInSI(t *testing.T) {
 	sk := parsed(t, example(t))
-	if sk.ID != "marsh-end-c1" || sk.Rate != 51200 || len(sk.Throws) != 2 || len(sk.Channels) != 7 || len(sk.Steps) != 4 {
+	if sk.ID != "quillmere-c1" || sk.Rate != 51200 || len(sk.Throws) != 2 || len(sk.Channels) != 7 || len(sk.Steps) != 4 {
 		t.Fatalf("understood %s, %g Hz, %d throws, %d channels, %d steps", sk.ID, sk.Rate, len(sk.Throws), len(sk.Channels), len(sk.Steps))
 	}
 	c := sk.Throws[0].Cylinder

@@ -48,7 +48,7 @@ func TestEachMistakeIsRefusedWithItsPlaceAndItsRemedy(t *testing.T) {
 		"a number in quotes":            {"bore_mm: 220", `bore_mm: "220"`, `"220"`, "throws[0].bore_mm", "where a number belongs", "without quotes: 220"},
 		"a number with its unit":        {"bore_mm: 220", "bore_mm: 220 mm", "220", "throws[0].bore_mm", "where a number belongs", "the key says the unit (mm)"},
 		"a decimal comma":               {"clearance_percent: 16", "clearance_percent: 16,5", "16,5", "throws[0].head_end.clearance_percent", "where a number belongs", "decimal point: 16.5"},
-		"a number where a name belongs": {"id: marsh-end-c1", "id: 12", "12", "id", "where text belongs", `in quotes if it is a name: "12"`},
+		"a number where a name belongs": {"id: quillmere-c1", "id: 12", "12", "id", "where text belongs", `in quotes if it is a name: "12"`},
 		"infinity":                      {"bore_mm: 220", "bore_mm: .inf", ".inf", "throws[0].bore_mm", "not a number that can be used", "finite"},
 		"a list where settings belong":  {"tape:                           # rolling raw record\n  max_gb: 20", "tape:\n  - max_gb: 20\nother:", "- max_gb", "tape", "a list where settings belong", "max_gb"},
 		"settings where a list belongs": {"accelerometers: [a1]", "accelerometers: {a: a1}", "{a", "throws[0].accelerometers", "where a list belongs", "list channel ids"},

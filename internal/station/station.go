@@ -199,6 +199,9 @@ func (s *Station) openEdges() (err error) {
 	}
 	if broker != "" {
 		u := s.sk.Uplink
+		if s.o.Broker != "" { // the file's credentials are for the file's broker
+			u.UserFile, u.PasswordFile, u.CAFile, u.CertFile, u.KeyFile = "", "", "", "", ""
+		}
 		id := u.ClientID
 		if id == "" {
 			id = "lapwing-" + s.sk.ID
