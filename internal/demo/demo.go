@@ -68,7 +68,7 @@ func Run(ctx context.Context, o Options) error {
 
 	say := &teller{w: o.Out, sk: sk, run: run}
 	say.opening(file, b.addr)
-	room, err := openRoom(ctx, b.addr, say)
+	room, err := openRoom(ctx, b.addr, sk.Uplink.Root, say)
 	if err != nil {
 		return err
 	}
@@ -150,14 +150,14 @@ type room struct {
 	done chan error
 }
 
-func openRoom(ctx context.Context, broker string, say *teller) (*room, error) {
+func openRoom(ctx context.Context, broker, root string, say *teller) (*room, error) {
 	ctx, stop := context.WithCancel(context.WithoutCancel(ctx))
 	r := &room{stop: stop, done: make(chan error, 1)}
 	ready := make(chan struct{})
 	var once sync.Once
-	reader := uplink.Reader{W: say, Root: "lapwing", Evidence: 6}
+	reader := uplink.Reader{W: say, Root: root, Evidence: 6}
 	go func() {
-		r.done <- uplink.Listen(ctx, uplink.Config{Broker: broker, ClientID: "control-room"}, "lapwing", func(m uplink.Received) {
+		r.done <- uplink.Listen(ctx, uplink.Config{Broker: broker, ClientID: "control-room"}, root, func(m uplink.Received) {
 			say.received(m)
 			reader.Show(m)
 		}, func(string) { once.Do(func() { close(ready) }) })
@@ -198,9 +198,9 @@ func pull(ctx context.Context, st *station.Station, dir string, say *teller) err
 }
 
 // alarms reads an alarm message back.
-func alarmOf(m uplink.Received) (wire.Alarm, bool) {
+func alarmOf(root string, m uplink.Received) (wire.Alarm, bool) {
 	var a wire.Alarm
-	_, part, _ := uplink.Part("lapwing", m.Topic)
+	_, part, _ := uplink.Part(root, m.Topic)
 	if part != "alarm" || json.Unmarshal(m.Payload, &a) != nil {
 		return wire.Alarm{}, false
 	}

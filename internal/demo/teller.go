@@ -89,7 +89,7 @@ func (t *teller) turn(r *wire.Turn) {
 }
 
 func (t *teller) received(m uplink.Received) {
-	if a, ok := alarmOf(m); ok {
+	if a, ok := alarmOf(t.sk.Uplink.Root, m); ok {
 		t.mu.Lock()
 		t.alarms = append(t.alarms, a)
 		t.mu.Unlock()

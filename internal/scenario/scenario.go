@@ -113,24 +113,28 @@ func second(sk *skid.Skid) int {
 	return sk.Steps[0].Code
 }
 
+// slowness stretches a scenario's clock for a slow machine, so that a hold gives it as many turns as the demo machine.
+func slowness(sk *skid.Skid) float64 { return max(1, 740/sk.Machine.RatedRPM) }
+
 func grow(sk *skid.Skid) Run {
+	f := slowness(sk)
 	full, part := float64(sk.Steps[0].Code), float64(second(sk))
 	s := model.Script{Step: sk.Steps[0].Code}
-	s = walk(s, sk, 4, 5, 1, field) // to 69 s
-	s = s.Add(69, 0, model.LoadStep, "", part)
-	s = walk(s, sk, 69, 5, 1, field[:9]) // to 114 s
-	s = s.Add(114, 0, model.LoadStep, "", full)
+	s = walk(s, sk, 4*f, 5*f, 1, field) // to 69 f
+	s = s.Add(69*f, 0, model.LoadStep, "", part)
+	s = walk(s, sk, 69*f, 5*f, 1, field[:9]) // to 114 f
+	s = s.Add(114*f, 0, model.LoadStep, "", full)
 	// What follows is judged: other ways through the same field.
-	s = walk(s, sk, 118, 4, 0.8, []duty{{0.12, 0.02, 0.3}, {-0.1, 0.06, 0.8}, {0, -0.05, 0}})
-	s = s.Add(130, 0, model.LoadStep, "", part)
-	s = s.Add(138, 0, model.LoadStep, "", full)
-	s = s.Add(142, 25, model.ValveLeak, victim(sk), 30*model.MM2)
-	s = walk(s, sk, 150, 8, 0.5, []duty{{0.1, 0, 0}, {-0.1, 0.05, 0.5}, {0, 0, 0}})
-	return Run{Script: s, Duration: 195, Learn: int(0.59 * sk.Machine.RatedRPM), Chapters: []Chapter{
+	s = walk(s, sk, 118*f, 4*f, 0.8, []duty{{0.12, 0.02, 0.3}, {-0.1, 0.06, 0.8}, {0, -0.05, 0}})
+	s = s.Add(130*f, 0, model.LoadStep, "", part)
+	s = s.Add(138*f, 0, model.LoadStep, "", full)
+	s = s.Add(142*f, 25*f, model.ValveLeak, victim(sk), 30*model.MM2)
+	s = walk(s, sk, 150*f, 8*f, 0.5, []duty{{0.1, 0, 0}, {-0.1, 0.05, 0.5}, {0, 0, 0}})
+	return Run{Script: s, Duration: 195 * f, Learn: 440, Chapters: []Chapter{
 		{0, "The machine is declared healthy. Lapwing learns what each measure does as the load moves."},
-		{116, "The load moves again: pressures, speed, pockets. The windows follow; nothing may be said."},
-		{142, "Suction valve " + victim(sk) + " begins to leak: 30 mm² over 25 s, while the load goes on moving."},
-		{168, "The leak has stopped growing."},
+		{116 * f, "The load moves again: pressures, speed, pockets. The windows follow; nothing may be said."},
+		{142 * f, fmt.Sprintf("Suction valve %s begins to leak: 30 mm² over %.0f s, while the load goes on moving.", victim(sk), 25*f)},
+		{167 * f, "The leak has stopped growing."},
 	}}
 }
 
