@@ -66,9 +66,9 @@ type Settings struct {
 	Low, High  float64 // window in shares of ln(Pd/Ps); defaults 0.05 and 0.95
 	LowLate    float64 // lower end of the window in the compression of an end under late closing; default 0.10
 	PastDeadDC float64 // degrees kept away from the dead centre that a stroke starts from; default 4
-	ZeroSD     float64 // prior standard deviation of a pressure zero, share of Ps; default 0.01
+	ZeroSD     float64 // prior standard deviation of a pressure zero in one turn, share of Ps; default 0.03: what a prior holds back in every turn no median gives back, and 0.01 held back a seventh of a zero
 	LeastPts   int     // least points in a stroke; default 12
-	Mass       bool    // work out Fit.Mass too; it takes as long as the fit
+	Mass       bool    // work out Fit.Mass too
 }
 
 func (s Settings) withDefaults() Settings {
@@ -81,7 +81,7 @@ func (s Settings) withDefaults() Settings {
 	def(&s.High, .95)
 	def(&s.LowLate, .10)
 	def(&s.PastDeadDC, 4)
-	def(&s.ZeroSD, .01)
+	def(&s.ZeroSD, .03)
 	if s.LeastPts == 0 {
 		s.LeastPts = 12
 	}

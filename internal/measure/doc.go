@@ -106,6 +106,7 @@
 // # Features of a leak path (subject t1.he.suction, t1.he.discharge, t1.ce.…, t1.rings)
 //
 //	leak_area_mm2             by the leak fit, signed, wall heat in it: compare with the healthy machine
+//	leak_percent              gas through that area in a turn over what the path's end (rings: both ends) delivers, by suction
 //	leak_noise_db             leak-band level where this path would leak most; at least 40 degrees free of events
 //	leak_shape                projection of the leak band on this path's nozzle flow
 //

@@ -224,6 +224,7 @@ func forTheEye(name string) bool {
 // Features of a leak path, subject t1.he.suction … t1.rings.
 const (
 	lArea = iota
+	lPercent
 	lNoise
 	lShape
 	pathCount
@@ -231,9 +232,10 @@ const (
 
 func pathDefs() [pathCount]def {
 	return [pathCount]def{
-		lArea:  {"leak_area_mm2", Pressure, mm2, 0, "effective leak area by the leak fit, signed"},
-		lNoise: {"leak_noise_db", Vibration, one, 0, "leak-band level where this path would leak most, dB over 1 (m/s²)²"},
-		lShape: {"leak_shape", Vibration, one, 0, "projection of the leak-band noise on the path's own leak flow"},
+		lArea:    {"leak_area_mm2", Pressure, mm2, 0, "effective leak area by the leak fit, signed"},
+		lPercent: {"leak_percent", Pressure, percent, 0, "gas through that area in a turn, per cent of the path's throughput, signed"},
+		lNoise:   {"leak_noise_db", Vibration, one, 0, "leak-band level where this path would leak most, dB over 1 (m/s²)²"},
+		lShape:   {"leak_shape", Vibration, one, 0, "projection of the leak-band noise on the path's own leak flow"},
 	}
 }
 

@@ -61,9 +61,15 @@ func (m *Measurer) leaks(c *throwCtx) {
 		}
 		if math.IsNaN(fit.Area[j]) {
 			c.dst.absent(at+lArea, fit.Why[j])
+			c.dst.absent(at+lPercent, fit.Why[j])
 			continue
 		}
 		c.dst.set(at+lArea, fit.Area[j])
+		if m := c.throughput(j); m > 0 {
+			c.dst.set(at+lPercent, fit.Mass[j]/m)
+		} else {
+			c.dst.absent(at+lPercent, whyThroughput)
+		}
 	}
 	c.dst.set(c.ix.throw+tLeakPhase, fit.Phase)
 	c.dst.set(c.ix.throw+tLeakRMS, fit.RMS)
@@ -79,10 +85,20 @@ func (m *Measurer) leaks(c *throwCtx) {
 	}
 }
 
+// throughput gives the kilograms that a turn delivers through the end of a path (rings: through both ends); NaN when it
+// is not known. By suction: the discharge thermometer lags behind a change of load, the suction line hardly moves.
+func (c *throwCtx) throughput(path int) float64 {
+	if path != leak.RG {
+		return c.dst.V[c.ix.end[path/2]+eCapS] / c.hz
+	}
+	return (c.dst.V[c.ix.end[0]+eCapS] + c.dst.V[c.ix.end[1]+eCapS]) / c.hz
+}
+
 func (m *Measurer) noFit(c *throwCtx, why string) {
 	for _, at := range c.ix.path {
 		if at >= 0 {
 			c.dst.absent(at+lArea, why)
+			c.dst.absent(at+lPercent, why)
 		}
 	}
 	c.dst.absent(c.ix.throw+tLeakPhase, why)
