@@ -72,6 +72,7 @@ func New(cfg Config) *Measurer {
 		cfg.Atmosphere = 101325
 	}
 	m := &Measurer{cfg: cfg, shapes: make([]shape, len(cfg.Machine.Throws)), motions: make([]crank.Motion, len(cfg.Machine.Throws))}
+	cfg.Leak.Mass = true // the throughput's share needs it
 	for range cfg.Machine.Throws {
 		m.fitters = append(m.fitters, leak.NewFitter(cfg.Leak))
 	}
@@ -99,6 +100,7 @@ const (
 	whyNoDischargeT = "discharge temperature not known"
 	whyOtherEnd     = "the other end has no pressure channel"
 	whyPartUnknown  = "one end is not known"
+	whyThroughput   = "the path's throughput is not known"
 	whyTestFit      = "no leak fit"
 	whySpeed        = "speed not known"
 )
