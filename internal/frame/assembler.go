@@ -118,7 +118,7 @@ func (a *Assembler) lose(n int64, emit func(*Frame)) {
 		a.run(a.ring.end()-1, emit)
 		return
 	}
-	if st.locked {
+	if st.locked && !st.counts {
 		a.turn += int64(math.Round(float64(n) / st.expect)) // they went by unseen
 	}
 	a.drain(emit)

@@ -5,13 +5,15 @@ import "math"
 // Fractions of a pitch.
 const (
 	toothOnTime = 0.05 // an edge nearer than this to its time needs no comparison with others
+	apart       = 0.6  // edges further apart than this are not in one tooth's time
 	toothRings  = 0.25 // an edge within this after a tooth is the tooth's own
 )
 
 const (
-	mostMisfits   = 12 // edges in a row that are no teeth: the place on the wheel is lost
-	overduePitch  = 6  // pitches without a tooth: likewise
-	mostRecovered = 20 // turns that are counted though they were not seen
+	mostMisfits  = 12 // edges in a row that are no teeth: the place on the wheel is lost
+	overduePitch = 6  // pitches without a tooth: likewise
+	mostSlipped  = 3  // teeth that the place on the wheel may have slipped by
+	mostUnseen   = 20 // turns after which the speed must be established again
 )
 
 // cog follows a toothed wheel: which edge is which tooth, and where turns begin.
@@ -32,10 +34,12 @@ type cog struct {
 
 	open     bool
 	mark0    float64
+	bias     []float64 // pitches by which each mark comes late of itself: teeth cut unevenly, an uneven speed
 	marks    []float64 // the open turn's further marks; NaN: lost
 	q        Quality
 	nLost    int     // teeth lost in the open turn
 	nStray   int     // edges in it that are no teeth
+	nFilled  int     // of those, where a tooth would be if this were not the gap
 	widest   float64 // pitches: the longest stretch of it without a tooth that should have one
 	starting bool    // speed not established
 
@@ -50,9 +54,11 @@ type cog struct {
 
 	past      []pulse // edges, newest last
 	try       follower
-	sane      int // edges in a row at about equal distances
+	sought    float64 // the newest edge when the place was last looked for
+	sane      int     // edges in a row at about equal distances
 	lastSane  float64
 	lastPulse float64
+	floor     int64   // older samples may have gone; what the ring still holds depends on how the stream was cut
 	lastEnd   float64 // closing mark of the newest turn given
 	due       float64
 	ready     cuts
@@ -64,7 +70,8 @@ func newCog(cfg *Config, r *ring, holes *spans) *cog {
 	at := cfg.Wheel.pitches()
 	n := len(at) - 1
 	c := &cog{det: newToothDetector(cfg, r, holes), ring: r, at: at, n: n, minT: cfg.Rate * 60 / cfg.MaxRPM, maxT: cfg.Rate * 60 / cfg.MinRPM,
-		keep: cfg.KeepSeconds * cfg.Rate, hist: periods{rate: cfg.Rate}, marks: make([]float64, 0, n), past: make([]pulse, 0, 2*n+24)}
+		keep: cfg.KeepSeconds * cfg.Rate, hist: periods{rate: cfg.Rate}, marks: make([]float64, 0, n), past: make([]pulse, 0, 2*n+24),
+		bias: make([]float64, n)}
 	c.restart()
 	c.lastEnd = math.Inf(-1)
 	return c
@@ -75,8 +82,9 @@ func (c *cog) restart() {
 	c.lost = false
 	c.det.restart()
 	c.past = c.past[:0]
-	c.expect, c.sane = 0, 0
-	c.lastSane, c.lastPulse = math.Inf(-1), math.Inf(-1)
+	c.floor = c.ring.first
+	c.sane = 0
+	c.lastSane, c.lastPulse, c.sought = math.Inf(-1), math.Inf(-1), math.Inf(-1)
 }
 
 // unlock forgets the place on the wheel; the edges are kept, so that it can be found again from them.
@@ -92,9 +100,11 @@ func (c *cog) stop() { c.unlock() }
 
 func (c *cog) sample(j int64) bool {
 	if p, ok := c.det.step(j, c.locked); ok {
+		c.floor = max(c.floor, c.needs(j))
 		c.edge(p)
 	}
 	if float64(j) >= c.due {
+		c.floor = max(c.floor, c.needs(j))
 		c.tick(float64(j))
 	}
 	return c.ready.n > 0
@@ -161,24 +171,25 @@ func (c *cog) most() int { return max(3, c.n/6) }
 // running judges an edge while the place on the wheel is known.
 func (c *cog) running(p pulse) {
 	s, late := c.f.near(p.pos, c.most())
-	fits := s > 0 && math.Abs(late) <= c.f.tolerance(s)
+	fits := c.f.fits(s, late)
 	if c.hasCand {
-		if s == c.candSteps && fits {
+		if pitch, _ := c.f.speed(); s == c.candSteps && fits && p.pos-c.cand.pos < apart*pitch*min(1, c.f.ahead(s)) {
 			c.compare(p, late)
 			return
 		}
+		before := c.sought
 		c.commit()
-		if !c.locked {
+		if !c.locked || c.sought != before { // found again from the edges held, this one among them
 			return
 		}
 		s, late = c.f.near(p.pos, c.most())
-		fits = s > 0 && math.Abs(late) <= c.f.tolerance(s)
+		fits = c.f.fits(s, late)
 	}
 	switch {
 	case s == 0 && late < toothRings:
 		c.q |= Bounced
 	case !fits:
-		c.stray()
+		c.stray(s, late)
 	default:
 		c.cand, c.candSteps, c.candLate, c.hasCand = p, s, late, true
 		if math.Abs(late) < toothOnTime && !c.isWeak(p) {
@@ -186,7 +197,7 @@ func (c *cog) running(p pulse) {
 			return
 		}
 		pitch, trend := c.f.speed()
-		c.candDue = c.f.pos + c.f.due(c.f.ahead(s)+c.f.tolerance(s), pitch, trend) + 2
+		c.candDue = c.f.pos + c.f.due(c.f.ahead(s)+c.f.slip(s), pitch, trend) + 2
 		c.setDue()
 	}
 }
@@ -212,7 +223,10 @@ func (c *cog) compare(p pulse, late float64) {
 }
 
 // stray counts an edge that is no tooth; after too many in a row the place on the wheel is not believed any more.
-func (c *cog) stray() {
+func (c *cog) stray(steps int, late float64) {
+	if d, gap := c.f.ahead(steps)+late, c.f.ahead(1); gap < 1 || gap > 1.5 && math.Abs(d-math.Round(d)) < 0.3 && d > 0.5 && d < gap-0.5 {
+		c.nFilled++
+	}
 	c.q |= Extra
 	c.nStray++
 	c.nExtra++
@@ -243,12 +257,16 @@ func (c *cog) commit() {
 	}
 	if c.relock {
 		c.unlock()
-		if !c.replaying {
+		if !c.replaying && c.lastPulse > c.sought {
 			c.searching()
 		}
 		return
 	}
 	c.f.accept(p.pos, steps, late)
+	if steps == 1 {
+		b := &c.bias[c.f.last]
+		*b = min(max(*b+0.3*late, -0.4), 0.4)
+	}
 	c.setDue()
 }
 
@@ -288,7 +306,7 @@ func (c *cog) close(pos float64) {
 		return
 	}
 	period := pos - c.mark0
-	if c.nLost > 0 && c.nStray > 0 && c.misplaced() || period < 0.95*c.minT || period > 1.05*c.maxT || len(c.marks) != c.n-1 {
+	if (c.nLost > 0 && c.nFilled > 0 || c.crowded()) && c.misplaced(period) || period < 0.95*c.minT || period > 1.05*c.maxT || len(c.marks) != c.n-1 {
 		c.relock = true
 		return
 	}
@@ -298,7 +316,7 @@ func (c *cog) close(pos float64) {
 	}
 	contiguous := c.mark0 == c.lastEnd
 	skip := int64(0)
-	if !contiguous && c.expect > 0 && c.mark0-c.lastEnd < mostRecovered*c.expect {
+	if !contiguous && c.expect > 0 {
 		skip = int64(math.Round((c.mark0 - c.lastEnd) / c.expect))
 	}
 	if !contiguous {
@@ -322,28 +340,57 @@ func (c *cog) close(pos float64) {
 	c.lastEnd = pos
 }
 
-// begin opens a turn at pos, unless its samples have gone already or are part of a turn that has been given.
+// begin opens a turn at pos, unless its samples have gone already or are part of a turn that has been given. What has
+// passed since the newest turn while the place on the wheel was not known is one frame marked Missing, without inner marks.
 func (c *cog) begin(pos float64) {
-	c.open = pos >= c.lastEnd && pos >= float64(c.ring.first)
-	c.mark0, c.marks, c.q, c.nLost, c.nStray, c.widest = pos, c.marks[:0], 0, 0, 0, 0
+	if away := pos - c.lastEnd; c.expect > 0 && away > 0.5*c.expect && away < 0.9*c.keep && c.lastEnd >= float64(c.floor) {
+		k := max(1, int(math.Round(away/c.expect)))
+		c.ready.add(cut{a: pulse{pos: c.lastEnd}, b: pulse{pos: pos}, k: k, q: Missing | LostTooth})
+		c.lastEnd = pos
+	}
+	c.open = pos >= c.lastEnd && pos >= float64(c.floor)
+	c.mark0, c.marks, c.q, c.nLost, c.nStray, c.nFilled, c.widest = pos, c.marks[:0], 0, 0, 0, 0, 0
 }
 
-// misplaced looks at the last turn's edges anew: is the newest one a mark 0 at all?
-func (c *cog) misplaced() bool {
-	edges := c.past[max(0, len(c.past)-c.n-8):]
-	if len(edges) < c.n {
+// misplaced looks at the open turn's edges anew: do they fit better a few teeth further on or back on the wheel? Or, when
+// it holds many edges that are no teeth and none is where it should be, at another speed?
+func (c *cog) misplaced(period float64) bool {
+	from := len(c.past)
+	for from > 0 && c.past[from-1].pos >= c.mark0 {
+		from--
+	}
+	edges := c.past[from:]
+	if len(edges) < c.n/2 {
 		return false
 	}
-	pitch := c.pitch(edges)
-	fit, ok := c.try.align(c.at, edges, pitch, c.most())
-	if !ok {
+	pitch := period / c.at[c.n]
+	if c.crowded() {
+		natural := c.pitch(edges)
+		for m := range c.n {
+			if r := c.try.try(c.at, m, edges, natural, unsureScat, float64(c.nStray)/8, 4); r.cost < float64(c.nStray)/8 {
+				return true
+			}
+		}
 		return false
 	}
-	c.try.try(c.at, fit.mark, edges, pitch, math.Inf(1), min(c.most(), 4))
-	s, _ := c.try.near(c.cand.pos, c.most())
-	where := (c.try.last + s) % c.n
-	return where != (c.f.last+c.candSteps)%c.n
+	first := 0
+	for first < c.n && c.at[first]+0.5 < (edges[0].pos-c.mark0)/pitch {
+		first++
+	}
+	here := c.try.try(c.at, first%c.n, edges, pitch, c.f.scat, math.Inf(1), 4)
+	for by := -mostSlipped; by <= mostSlipped; by++ {
+		if m := (first + by + c.n) % c.n; by != 0 && m >= 0 {
+			if r := c.try.try(c.at, m, edges, pitch, c.f.scat, here.cost, 4); r.cost < here.cost-0.5 {
+				return true
+			}
+		}
+	}
+	return false
 }
+
+// crowded: the wheel may turn at twice the speed that it is followed at. An amplifier's fault can also double the edges,
+// but then the teeth are where they should be.
+func (c *cog) crowded() bool { return c.nStray > c.n/3 && c.f.scat > 0.05 }
 
 // pitch gives the distance of teeth at the beginning of a run of edges.
 func (c *cog) pitch(edges []pulse) float64 {
@@ -358,6 +405,7 @@ func (c *cog) pitch(edges []pulse) float64 {
 // searching looks whether the newest edges, a turn of them and more, show the wheel; if so they are gone through again
 // from their beginning, so that no turn is lost that they hold.
 func (c *cog) searching() {
+	c.sought = c.lastPulse
 	n := len(c.past)
 	if n < c.n+6 || c.sane < 4 {
 		return
@@ -373,9 +421,10 @@ func (c *cog) searching() {
 			continue
 		}
 		c.locked, c.lost = true, false
-		c.starting = !(c.expect > 0 && edges[0].pos-c.lastEnd < mostRecovered*c.expect)
+		c.starting = !(c.expect > 0 && edges[0].pos-c.lastEnd < mostUnseen*c.expect)
 		c.f.begin(c.at, fit.mark, edges[0].pos, pitch)
-		c.f.scat = 0.08
+		clear(c.bias)
+		c.f.bias = c.bias
 		c.open, c.hasCand, c.misfits, c.q = false, false, 0, 0
 		if fit.mark == 0 {
 			c.begin(edges[0].pos)
@@ -391,6 +440,8 @@ func (c *cog) searching() {
 			c.setDue()
 			return
 		}
+		c.sane = 0 // not at once again
+		return
 	}
 }
 
@@ -439,6 +490,8 @@ func (c *cog) needs(j int64) int64 {
 	switch {
 	case c.open:
 		oldest = c.mark0
+	case c.expect > 0:
+		oldest = c.lastEnd
 	case len(c.past) > 0:
 		oldest = max(c.past[0].pos, c.lastEnd)
 	}
@@ -446,7 +499,7 @@ func (c *cog) needs(j int64) int64 {
 }
 
 func (c *cog) state() refState {
-	s := refState{locked: c.locked, lost: c.lost, open: !c.locked && c.sane >= 10, expect: c.expect, lastPulse: c.lastSane, coasting: c.coast.coasting(),
+	s := refState{counts: true, locked: c.locked, lost: c.lost, open: !c.locked && c.sane >= 10, expect: c.expect, lastPulse: c.lastSane, coasting: c.coast.coasting(),
 		extra: c.nExtra, missing: c.nMissing, unclear: c.det.lostEdge, minT: c.minT, maxT: c.maxT, keep: c.keep,
 		height: math.NaN(), noise: math.NaN(), seen: c.det.have || c.det.survey.full()}
 	if c.locked {

@@ -83,9 +83,9 @@ func (c Config) withDefaults() (Config, error) {
 	case c.Rate > 0 && c.Rate*60/c.MaxRPM < minTurn:
 		no("%.3g samples per turn at %v rpm, want at least %d: sample faster or lower the greatest speed",
 			c.Rate*60/c.MaxRPM, c.MaxRPM, minTurn)
-	case c.Wheel.Teeth > 0 && c.Rate*60/c.MaxRPM < minPitch*float64(c.Wheel.Teeth):
+	case c.Wheel.Teeth > 0 && c.Rate*60/c.MaxRPM < MinPitch*float64(c.Wheel.Teeth):
 		no("%.3g samples per tooth at %v rpm, want at least %d: sample faster, lower the greatest speed or use a wheel of fewer teeth",
-			c.Rate*60/c.MaxRPM/float64(c.Wheel.Teeth), c.MaxRPM, minPitch)
+			c.Rate*60/c.MaxRPM/float64(c.Wheel.Teeth), c.MaxRPM, MinPitch)
 	}
 	if !(c.KeepSeconds > 0) || !(c.KeepSeconds <= 600) {
 		no("%v s kept, want 0 to 600", c.KeepSeconds)
@@ -99,5 +99,5 @@ func (c Config) withDefaults() (Config, error) {
 // minTurn is the least number of samples in the shortest turn.
 const minTurn = 40
 
-// minPitch is the least number of samples from tooth to tooth in the shortest turn.
-const minPitch = 4
+// MinPitch is the least number of samples from tooth to tooth in the shortest turn.
+const MinPitch = 4

@@ -2,6 +2,9 @@ package frame
 
 import "math"
 
+// unsureScat is the scatter supposed until it is known, in pitches.
+const unsureScat = 0.15
+
 // pace is how many accepted marks the local speed is taken from.
 const pace = 9
 
@@ -15,10 +18,11 @@ type follower struct {
 	ps   [pace]float64
 	th   [pace]float64
 	n    int
+	bias []float64 // nil, or how late each mark comes of itself, in pitches
 }
 
 func (f *follower) begin(at []float64, mark int, pos, pitch float64) {
-	*f = follower{at: at, last: mark, pos: pos, scat: 0.05}
+	*f = follower{at: at, last: mark, pos: pos, scat: unsureScat}
 	f.ps[0], f.th[0] = pos-pitch, -1
 	f.ps[1] = pos
 	f.n = 2
@@ -59,12 +63,17 @@ func (f *follower) near(pos float64, most int) (steps int, late float64) {
 	pitch, trend := f.speed()
 	x := pos - f.pos
 	steps, late = 0, x/pitch
+	best := math.Abs(late)
 	for s := 1; s <= most; s++ {
 		l := (x - f.due(f.ahead(s), pitch, trend)) / pitch
-		if math.Abs(l) >= math.Abs(late) {
+		if f.bias != nil && s == 1 {
+			l -= f.bias[(f.last+1)%(len(f.at)-1)]
+		}
+		miss := math.Abs(l) + lossPrice*f.scat*float64(s-1)
+		if miss >= best {
 			break
 		}
-		steps, late = s, l
+		steps, late, best = s, l, miss
 	}
 	return steps, late
 }
@@ -73,17 +82,32 @@ func (f *follower) near(pos float64, most int) (steps int, late float64) {
 const (
 	leastSlip = 0.2  // pitches
 	mostSlip  = 0.45 // beyond that an edge could belong to either of two teeth
+	gapSlip   = 0.45 // of that more for each missing tooth of a gap
+	lossPrice = 6    // times the scatter: by so much a lost tooth is less likely than one off its time
 )
 
-// tolerance gives how far from its time the mark so many steps ahead may come, in pitches. Over a gap the speed
-// changes unseen.
-func (f *follower) tolerance(steps int) float64 {
+// fits reports whether an edge that late can be the mark so many steps ahead. Over a gap the speed changes unseen; but an
+// early edge there may be a tooth where there should be none.
+func (f *follower) fits(steps int, late float64) bool {
+	return steps > 0 && late < f.slip(steps) && late > -f.slipEarly(steps)
+}
+
+func (f *follower) slip(steps int) float64 {
 	t := min(max(0.1+4*f.scat, leastSlip), mostSlip)
 	d := f.ahead(steps)
 	if d < 1 { // an extra tooth has its neighbours half a pitch away
 		return t * 0.5
 	}
-	return min(t+0.06*(d-1), mostSlip)
+	return t * (1 + gapSlip*(d-1))
+}
+
+func (f *follower) slipEarly(steps int) float64 {
+	t := min(max(0.1+4*f.scat, leastSlip), mostSlip)
+	d := f.ahead(steps)
+	if d < 1 {
+		return t * 0.5
+	}
+	return t + 0.06*(d-1)
 }
 
 func (f *follower) accept(pos float64, steps int, late float64) {
@@ -116,13 +140,13 @@ type fit struct {
 }
 
 // try follows the edges from the first on, which is taken for the given mark, and gives up beyond a cost.
-func (f *follower) try(at []float64, mark int, edges []pulse, pitch, enough float64, most int) fit {
+func (f *follower) try(at []float64, mark int, edges []pulse, pitch, scat, enough float64, most int) fit {
 	f.begin(at, mark, edges[0].pos, pitch)
-	f.scat = 0.08
+	f.scat = scat
 	r := fit{mark: mark, edges: 1}
 	for _, p := range edges[1:] {
 		s, late := f.near(p.pos, most)
-		if s == 0 || math.Abs(late) > max(0.35, f.tolerance(s))*min(1, f.ahead(s)) {
+		if !f.fits(s, late) {
 			r.cost++
 		} else {
 			r.cost += float64(s-1) + 2*late*late
@@ -144,7 +168,7 @@ func (f *follower) align(at []float64, edges []pulse, pitch float64, most int) (
 	most = min(most, 4)
 	allowed := 0.12*float64(len(edges)) + 1
 	for m := range n {
-		r := f.try(at, m, edges, pitch, min(allowed+2, best.cost+allowed), most)
+		r := f.try(at, m, edges, pitch, unsureScat, min(allowed+2, best.cost+allowed), most)
 		if r.cost < best.cost {
 			best, second = r, best.cost
 		} else {

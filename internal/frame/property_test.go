@@ -67,6 +67,14 @@ func same(a, b copied) bool {
 		math.Float64bits(a.Mark0) != math.Float64bits(b.Mark0) || math.Float64bits(a.Mark1) != math.Float64bits(b.Mark1) {
 		return false
 	}
+	if len(a.Inner) != len(b.Inner) {
+		return false
+	}
+	for i, v := range a.Inner {
+		if math.Float64bits(v) != math.Float64bits(b.Inner[i]) {
+			return false
+		}
+	}
 	for c, x := range a.Counts {
 		if len(x) != len(b.Counts[c]) {
 			return false

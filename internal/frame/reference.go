@@ -16,6 +16,7 @@ type reference interface {
 // refState is what a reference tells of itself.
 type refState struct {
 	locked, lost, open, coasting bool
+	counts                       bool    // turns that go by unseen are counted by the reference itself
 	expect                       float64 // samples a turn
 	lastPulse                    float64
 	minT, maxT, keep             float64
@@ -26,8 +27,8 @@ type refState struct {
 
 // cuts is a short queue of turns; their inner marks are copied in.
 type cuts struct {
-	c     [4]cut
-	inner [4][]float64
+	c     [8]cut
+	inner [8][]float64
 	n     int
 	first int
 }

@@ -79,6 +79,7 @@ type copied struct {
 
 func keep(f *Frame) copied {
 	c := copied{*f}
+	c.Inner = append([]float64(nil), f.Inner...)
 	c.Counts = make([][]int32, len(f.Counts))
 	for i, x := range f.Counts {
 		c.Counts[i] = append([]int32(nil), x...)

@@ -4,6 +4,7 @@ import "math"
 
 const (
 	swingsKept = 8
+	leastSwing = 16  // codes: less is no tooth's signal
 	reversal   = 0.3 // of the usual swing: what the signal must turn back by before it counts
 )
 
@@ -64,7 +65,7 @@ func (d *toothDetector) search() {
 	d.sinceSearch = 0
 	bottom, top, ok := d.survey.span()
 	swing := top - bottom
-	if !ok || swing < leastCodes {
+	if !ok || swing < leastSwing {
 		return
 	}
 	if d.sign < 0 {
@@ -131,7 +132,7 @@ func (d *toothDetector) end(j int64, z float64) (pulse, bool) {
 		return pulse{}, false
 	}
 	if !d.crossed {
-		if !d.cfg.Auto || d.trig-d.back <= d.ring.first {
+		if !d.cfg.Auto || j-d.trig >= d.most || d.trig-d.back <= d.ring.first {
 			return pulse{}, false
 		}
 		mid := (lo + hi) / 2

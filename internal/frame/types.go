@@ -22,7 +22,7 @@ type Frame struct {
 	Seq0   int64     // sample number of Counts[i][0]; the first sample at or before Mark0
 	Mark0  float64   // sample position (sub-sample) of the mark that opens the turn
 	Mark1  float64   // ... and of the one that closes it; Mark1 - Mark0 > 0
-	Inner  []float64 // toothed wheel: sample positions of the further marks, one for each of Wheel.Angles, NaN where the tooth was lost; empty with one mark a turn
+	Inner  []float64 // toothed wheel: sample positions of the further marks, one for each of Wheel.Angles, NaN where the tooth was lost; empty with one mark a turn, and where Missing says that the teeth could not be told apart
 	Counts [][]int32 // raw codes per input, from Seq0 to the last sample before Mark1 inclusive
 	Q      Quality
 }

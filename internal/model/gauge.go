@@ -38,13 +38,14 @@ type channel struct {
 	rnd   *rand.Rand
 }
 
-// marker is the once-per-turn mark as a voltage.
+// marker is the once-per-turn mark, or the toothed wheel, as a voltage.
 type marker struct {
-	lo, hi float64 // V, idle and inside the pulse
-	half   float64 // degrees, half the length of an edge
-	width  float64 // degrees between the mid-levels
-	per    float64 // degrees between marks
-	back   bool    // the pulse lies before the mark: its trailing edge is the active one
+	lo, hi float64   // V, idle and inside the pulse
+	half   float64   // degrees, half the length of an edge
+	width  float64   // degrees between the mid-levels
+	at     []float64 // degrees of the marks; the first is 0
+	k      int       // the mark that passed last
+	back   bool      // the pulse lies before the mark: its trailing edge is the active one
 	volts  float64
 	noise  float64 // V rms
 }
@@ -169,11 +170,15 @@ func (s *section) settle(x float64) {
 }
 
 func newMarker(p *skid.Phase, c *skid.Channel) *marker {
-	per := 360.0
-	if p.MarksPerTurn > 1 {
-		per /= float64(p.MarksPerTurn)
+	k := &marker{lo: 0.05 * c.VoltsFull, hi: 0.45 * c.VoltsFull, half: 0.15, width: 4, back: p.Falling}
+	k.at = append([]float64{0}, p.Wheel.Angles()...)
+	if w := p.Wheel; w.Teeth > 0 {
+		pitch := 360 / float64(w.Teeth)
+		if w.Extra {
+			pitch /= 2
+		}
+		k.width, k.half = pitch/2, min(0.5, pitch/10)
 	}
-	k := &marker{lo: 0.05 * c.VoltsFull, hi: 0.45 * c.VoltsFull, half: 0.15, width: min(4, 0.4*per), per: per, back: p.Falling}
 	if !p.AutoLevel && p.Threshold != 0 {
 		// A stated threshold is the middle of the pulse.
 		h := max(0.3*c.VoltsFull, math.Abs(p.Threshold)*0.8)
@@ -184,18 +189,41 @@ func newMarker(p *skid.Phase, c *skid.Channel) *marker {
 	return k
 }
 
-// read gives the mark's voltage at the present shaft angle: a trapezoid whose active edge is at mid-level exactly on the mark.
+// read gives the voltage at the present shaft angle: a trapezoid at every mark, whose active edge is at mid-level exactly
+// on the mark.
 func (k *marker) read(m *Machine) {
-	a := math.Mod(m.theta*180/math.Pi, k.per) // after the mark
+	a := math.Mod(m.theta*180/math.Pi, 360)
 	if k.back {
-		a = math.Mod(k.per-a, k.per)
+		a = 360 - a
 	}
-	if a > k.per/2+k.width/2 {
-		a -= k.per
+	// The mark that was passed last, seen in the direction of the pulses; the next one's edge may have begun.
+	n := len(k.at)
+	f := 0.0
+	if a < k.place(k.k) {
+		k.k = 0
 	}
-	// Rises through the mark at a = 0, falls at a = width.
-	up := (a + k.half) / (2 * k.half)
-	down := (k.width + k.half - a) / (2 * k.half)
-	f := min(max(min(up, down), 0), 1)
-	k.volts = k.lo + (k.hi-k.lo)*f
+	for k.k+1 < n && a >= k.place(k.k+1) {
+		k.k++
+	}
+	next := 360.0
+	if k.k+1 < n {
+		next = k.place(k.k + 1)
+	}
+	before := k.place(k.k) // of a turn with a mark in front of it: that of the turn before
+	if a < before {
+		before = k.place(n-1) - 360
+	}
+	for _, p := range [2]float64{before, next} {
+		up, down := (a-p+k.half)/(2*k.half), (k.width+k.half-(a-p))/(2*k.half)
+		f = max(f, min(up, down))
+	}
+	k.volts = k.lo + (k.hi-k.lo)*min(max(f, 0), 1)
+}
+
+// place gives the angle of mark i in the direction of the pulses: backwards, they count from the last mark down.
+func (k *marker) place(i int) float64 {
+	if !k.back || i == 0 {
+		return k.at[i]
+	}
+	return 360 - k.at[len(k.at)-i]
 }

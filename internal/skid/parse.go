@@ -166,7 +166,7 @@ func (r *reader) phase(o *object, sk *Skid) {
 	if p.Channel != "" {
 		r.refer(sk, join2(s.path, "channel"), s.fields["channel"], p.Channel, PhaseMark)
 	}
-	r.wheel(s, p)
+	r.wheel(s, sk)
 	p.Falling = s.choice("edge", "rising", "rising", "falling") == "falling"
 	if s.has("threshold_v") {
 		p.AutoLevel = false

@@ -55,6 +55,39 @@ func TestTheExampleIsUnderstoodInSI(t *testing.T) {
 	}
 }
 
+// TestToothedWheels: the ways of writing a wheel.
+func TestToothedWheels(t *testing.T) {
+	for lines, want := range map[string]string{
+		"":                            "one mark",
+		"\n  marks_per_turn: 1":       "one mark",
+		"\n  teeth: 60\n  missing: 2": "60-2",
+		"\n  teeth: 24\n  extra: 1":   "24+1",
+		"\n  teeth: 36\n  missing: 2\n  also_missing: [17]": "36-2-1",
+	} {
+		file, _ := swap(t, example(t), "  channel: phase", "  channel: phase"+lines)
+		sk := parsed(t, file)
+		if got := sk.Phase.Wheel.String(); got != want || sk.Phase.MarksPerTurn != sk.Phase.Wheel.Marks() {
+			t.Errorf("%q is read as %s with %d marks, want %s", lines, got, sk.Phase.MarksPerTurn, want)
+		}
+		var report strings.Builder
+		if err := Report(&report, sk, 0); err != nil {
+			t.Fatal(err)
+		}
+		if says := strings.Contains(report.String(), "toothed wheel      "+want); says != (want != "one mark") {
+			t.Errorf("%q: the report names a wheel: %v", lines, says)
+		}
+	}
+}
+
+func TestTeethTooFineToSampleAreRefused(t *testing.T) {
+	file, _ := swap(t, example(t), "  channel: phase", "  channel: phase\n  teeth: 512\n  missing: 2")
+	file, _ = swap(t, file, "max_rpm: 1000", "max_rpm: 1200")
+	_, err := Parse("m.yaml", []byte(file))
+	if err == nil || !strings.Contains(err.Error(), "3.3 samples from tooth to tooth at 1800 rpm are too few; raise sampling_hz to 61440") {
+		t.Errorf("got %v", err)
+	}
+}
+
 // TestScalingGivesTheCertificatesPoints: the two points of a transmitter must come back from its counts.
 func TestScalingGivesTheCertificatesPoints(t *testing.T) {
 	for name, c := range map[string]struct {

@@ -2,14 +2,19 @@ package skid
 
 import (
 	"fmt"
+	"math"
 
 	"lapwing/internal/frame"
 )
 
 const wheelFix = "a wheel called 60-2 is `teeth: 60` and `missing: 2`, 36-2-1 is `teeth: 36`, `missing: 2` and `also_missing: [17]`, 12+1 is `teeth: 12` and `extra: 1`; for one mark a turn leave teeth out"
 
+// margin is by how much the shaft may run faster than max_rpm before its marks are not believed.
+const margin = 1.5
+
 // wheel reads the toothed wheel of the shaft reference, if there is one.
-func (r *reader) wheel(s *object, p *Phase) {
+func (r *reader) wheel(s *object, sk *Skid) {
+	p := &sk.Phase
 	if n, ok := s.whole("marks_per_turn", 1, 512, false); ok && n != 1 {
 		s.wrong("marks_per_turn", wheelFix, "%d marks a turn do not say where a turn begins", n)
 		return
@@ -49,6 +54,11 @@ func (r *reader) wheel(s *object, p *Phase) {
 	}
 	if err := w.Check(); err != nil {
 		s.wrong("teeth", wheelFix, "%v", err)
+		return
+	}
+	if n := sk.Rate * 60 / (margin * sk.Machine.MaxRPM * float64(w.Teeth)); sk.Rate > 0 && sk.Machine.MaxRPM > 0 && n < frame.MinPitch {
+		s.wrong("teeth", fmt.Sprintf("raise sampling_hz to %s, or use a wheel of fewer teeth or one mark a turn", short(math.Ceil(frame.MinPitch/n*sk.Rate))),
+			"%s samples from tooth to tooth at %s rpm are too few", short(math.Floor(n*10)/10), short(margin*sk.Machine.MaxRPM))
 		return
 	}
 	p.Wheel, p.MarksPerTurn = w, w.Marks()
