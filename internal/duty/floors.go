@@ -28,7 +28,8 @@ var floors = []floor{
 	{"discharge_opens_late_deg", 0.10, 0}, // measured 0.05-0.09°
 	{"ve_*", 0.3, 0},                      // measured 0.05-0.11 points, more where the process values come late in swings
 	{"flow_balance", 0.015, 0},            // measured 0.013, and it drifts with the temperatures
-	{"leak_area_mm2", 0.5, 0},             // measured 0.06-0.16 % of throughput
+	{"leak_percent", 0.06, 0},             // measured 0.04-0.16 % of throughput, by path and machine
+	{"leak_area_mm2", 0.5, 0},             // where the throughput is not known; leak_percent fits machines of any size
 	{"leak_phase_deg", 0.03, 0},
 	{"leak_zero_bar", 0.02, 0},
 	{"leak_residual", 0, 0.2},

@@ -1,5 +1,10 @@
 package verdict
 
+import (
+	"slices"
+	"strings"
+)
+
 const (
 	caution    = "Before anyone touches a valve, cover or transducer: stop, isolate, depressurise, vent and lock out; follow the site's permits, local codes and licensed practice. Lapwing is a monitor, not a protection system."
 	noHotWork  = "Hazardous-area rules decide what may be brought to the skid; covers and discharge pipes are hot."
@@ -14,6 +19,9 @@ func advice(c *trial, f *Finding) (settle, next []string) {
 		case c.h == hRings:
 			settle = []string{"Both ends show the same pattern and the discharge gas runs warmer: a ring leak. A valve leak shows on one end.",
 				"Compare at another load step: the pattern of rings stays with both ends."}
+			if len(f.Ambiguous) > 0 {
+				settle[0] = "With late closing on both ends leaking rings read as suction leaks of both ends alike; warmer discharge gas suggests the rings."
+			}
 			next = []string{"Trend it over days; check the lubricator's feed and the liner at the next suitable stop."}
 		case c.packing():
 			settle = []string{"Look at the packing vent's flow or temperature: a packing leak shows there, a valve leak does not.",
@@ -22,6 +30,9 @@ func advice(c *trial, f *Finding) (settle, next []string) {
 		default:
 			settle = []string{"The cover temperatures of this group, taken with a suitable thermometer on the running machine by authorised people, name the valve.",
 				"Compare at another load step: a leak stays with its group, a sensor's error moves with its channel."}
+			if slices.ContainsFunc(f.Ambiguous, func(s string) bool { return strings.HasSuffix(s, ".rings") }) {
+				settle = append(settle, "At this load step leaking rings read as suction valves. Both ends alike suggest the rings; a load step with both ends at work and no late closing tells them apart.")
+			}
 			next = []string{planRepair}
 			if f.Grade == Danger {
 				next = []string{"The loss is large: ask the machinery engineer now whether the machine should be unloaded or stopped.", planRepair}

@@ -67,7 +67,8 @@ type mark struct {
 	turn       int64
 	llr        [classes]float64
 	g, sd      float64 // pressure amplitude
-	area, aSd  float64 // m², of the deviation
+	area, aSd  float64 // m², of the deviation, and its standard deviation with all that is uncertain about it
+	loss, lSd  float64 // the same as a share of the path's throughput
 	slowSignal bool
 	valve      string
 	ambiguous  []string
@@ -197,9 +198,7 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 		m.turn = blk.Turn1
 		for k, p := range [5]pathPlace{b.place.ends[0].path[0], b.place.ends[0].path[1], b.place.ends[1].path[0], b.place.ends[1].path[1], b.place.rings} {
 			if c.kind == Leaking && c.h == k && !c.packing() {
-				if d := at(j.dev, p.area); d != nil {
-					m.area, m.aSd = d.Residual, math.Hypot(d.Spread, 0.03*d.Residual)
-				}
+				m.area, m.aSd, m.loss, m.lSd = j.sized(p)
 			}
 		}
 		c.marks = append(c.marks, m)

@@ -109,7 +109,7 @@ func (b *bench) standingLeak(c *trial) (g float64) {
 // mark gathers a block's evidence on one hypothesis.
 func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v *heard, t *felt, doubt [2]bool, deaf bool) mark {
 	nan := math.NaN()
-	m := mark{g: nan, sd: nan, area: nan, aSd: nan}
+	m := mark{g: nan, sd: nan, area: nan, aSd: nan, loss: nan, lSd: nan}
 	for k := range m.llr {
 		m.llr[k] = nan
 	}
@@ -172,6 +172,9 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			m.llr[measure.Vibration] = v.leak[c.h]
 		}
 		if c.h == hRings {
+			if s.noRings(&b.place) {
+				m.ambiguous = []string{b.place.group(crank.HE, suction), b.place.group(crank.CE, suction)}
+			}
 			m.llr[measure.Temperature] = t.rings
 			if c.grade == None && b.standingLeak(c) > 0 { // a valve that leaks warms the discharge gas as well
 				m.llr[measure.Temperature] = math.Min(0, t.rings)

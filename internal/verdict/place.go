@@ -44,7 +44,7 @@ type endPlace struct {
 	covers [2][]coverPlace
 }
 
-type pathPlace struct{ area, noise, shape int }
+type pathPlace struct{ area, percent, noise, shape int }
 
 type coverPlace struct {
 	valve string
@@ -67,7 +67,7 @@ func places(l measure.Layout) []place {
 			}
 		}
 		paths := func(subject string) pathPlace {
-			return pathPlace{l.Find(subject, "leak_area_mm2"), l.Find(subject, "leak_noise_db"), l.Find(subject, "leak_shape")}
+			return pathPlace{l.Find(subject, "leak_area_mm2"), l.Find(subject, "leak_percent"), l.Find(subject, "leak_noise_db"), l.Find(subject, "leak_shape")}
 		}
 		p.rings = paths(p.id + ".rings")
 		p.pin = [2]int{l.Find(p.id, "pin_pulls_deg"), l.Find(p.id, "pin_pushes_deg")}

@@ -75,7 +75,11 @@ func look(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) *sigh
 	}
 	for i, pp := range []pathPlace{p.ends[0].path[0], p.ends[0].path[1], p.ends[1].path[0], p.ends[1].path[1], p.rings} {
 		s.areaZ[i] = math.NaN()
-		if d := at(dev, pp.area); d != nil {
+		d := at(dev, pp.percent) // its floor fits machines of any size
+		if d == nil {
+			d = at(dev, pp.area)
+		}
+		if d != nil {
 			s.areaZ[i] = clip(d.Z/widen, 12)
 		}
 	}
@@ -249,19 +253,27 @@ func (s *sight) take(h int, g float64) {
 	}
 }
 
-// structural lists what pressure cannot tell from a group's leak on this block.
+// structural lists what pressure cannot tell from a leak on this block (reference/leaks.md section 2): with one end
+// idle, blind or without a pressure the rings look like the working end's suction; with late closing on both ends they
+// look like both; a packing looks like the crank end's suction.
 func (s *sight) structural(p *place, end, g int) []string {
 	var out []string
 	if g != suction {
 		return nil
 	}
-	if s.n[1-end] < enough && p.ends[1-end].works {
+	if s.n[1-end] < enough || s.noRings(p) {
 		out = append(out, p.id+".rings")
 	}
 	if end == crank.CE {
 		out = append(out, p.id+".packing")
 	}
 	return out
+}
+
+// noRings tells whether both ends work and the leak fit had to leave the rings out all the same.
+func (s *sight) noRings(p *place) bool {
+	return s.n[0] >= enough && s.n[1] >= enough && p.rings.area >= 0 && math.IsNaN(s.areaZ[hRings]) &&
+		!math.IsNaN(s.areaZ[hLeak]) && !math.IsNaN(s.areaZ[hLeak+2])
 }
 
 func at(dev []*duty.Deviation, i int) *duty.Deviation {

@@ -41,6 +41,8 @@ type markSnap struct {
 	SD        num          `json:"sd"`
 	Area      num          `json:"area"`
 	AreaSD    num          `json:"area_sd"`
+	Loss      *num         `json:"loss,omitempty"` // nil: not known
+	LossSD    *num         `json:"loss_sd,omitempty"`
 	Slow      bool         `json:"slow,omitempty"`
 	Valve     string       `json:"valve,omitempty"`
 	Ambiguous []string     `json:"ambiguous,omitempty"`
@@ -78,6 +80,10 @@ func (j *Judge) Snapshot() Snapshot {
 			cs := caseSnap{Subject: c.subject, Kind: c.kind, Grade: c.grade, Since: c.since, Contrary: c.contrary, Slow: c.slow}
 			for _, m := range c.marks {
 				ms := markSnap{Turn: m.turn, G: num(m.g), SD: num(m.sd), Area: num(m.area), AreaSD: num(m.aSd), Slow: m.slowSignal, Valve: m.valve, Ambiguous: m.ambiguous}
+				if !math.IsNaN(m.loss) {
+					a, b := num(m.loss), num(m.lSd)
+					ms.Loss, ms.LossSD = &a, &b
+				}
 				for k, l := range m.llr {
 					ms.LLR[k] = num(l)
 				}
@@ -126,6 +132,10 @@ func (c *trial) restore(cs caseSnap) {
 	c.marks = nil
 	for _, ms := range cs.Marks[max(0, len(cs.Marks)-history):] {
 		m := mark{turn: ms.Turn, g: float64(ms.G), sd: float64(ms.SD), area: float64(ms.Area), aSd: float64(ms.AreaSD), slowSignal: ms.Slow, valve: ms.Valve, ambiguous: ms.Ambiguous}
+		m.loss, m.lSd = math.NaN(), math.NaN()
+		if ms.Loss != nil && ms.LossSD != nil {
+			m.loss, m.lSd = float64(*ms.Loss), float64(*ms.LossSD)
+		}
 		for k, l := range ms.LLR {
 			m.llr[k] = float64(l)
 		}

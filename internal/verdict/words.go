@@ -36,8 +36,10 @@ func (j *Judge) severity(f *Finding, c *trial) {
 			f.Severity = append(f.Severity, Quantity{"lost_capacity_percent", g, math.Max(0, g-h), g + h})
 		}
 		if a, s := c.over(func(m *mark) (float64, float64) { return m.area, m.aSd }); !math.IsNaN(a) {
-			h := half(a, s, 0)
-			f.Severity = append(f.Severity, Quantity{"leak_area_mm2", 1e6 * a, math.Max(0, 1e6*(a-h)), 1e6 * (a + h)})
+			f.Severity = append(f.Severity, Quantity{"leak_area_mm2", 1e6 * a, math.Max(0, 1e6*(a-2*s)), 1e6 * (a + 2*s)})
+		}
+		if l, s := c.over(func(m *mark) (float64, float64) { return m.loss, m.lSd }); !math.IsNaN(l) {
+			f.Severity = append(f.Severity, Quantity{"leak_percent", 100 * l, math.Max(0, 100*(l-2*s)), 100 * (l + 2*s)})
 		}
 	case DeadCentre: // amplitude: degrees that the pressures are plotted too early
 		if !math.IsNaN(g) {
@@ -81,7 +83,11 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 			}
 			q := sq(clip(d.Z, 12))
 			sum += q
-			es = append(es, Evidence{Class: class, Text: say(j.layout[i], d), Feature: i, Value: d.Value, Expected: d.Expected, Z: d.Z, LLR: q})
+			text := say(j.layout[i], d)
+			if n := j.layout[i].Name; n == "leak_area_mm2" || n == "leak_percent" {
+				text = j.sayLeak(b.path(c.h), j.layout[i].Subject)
+			}
+			es = append(es, Evidence{Class: class, Text: text, Feature: i, Value: d.Value, Expected: d.Expected, Z: d.Z, LLR: q})
 		}
 		for i := range es {
 			es[i].LLR *= total / sum
@@ -109,7 +115,11 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 			}
 		}
 		if c.kind == Leaking && !c.packing() {
-			idx, sign = append(idx, b.path(c.h).area), append(sign, 1)
+			i := b.path(c.h).percent
+			if at(j.dev, i) == nil {
+				i = b.path(c.h).area
+			}
+			idx, sign = append(idx, i), append(sign, 1)
 		}
 	}
 	share(measure.Pressure, idx, sign, 5)
@@ -201,9 +211,6 @@ func say(f measure.Feature, d *duty.Deviation) string {
 		return fmt.Sprintf("gas seems to %s %.2f %% while compressing%s", more("gain", "lose"), math.Abs(r), end)
 	case "mass_exp_percent":
 		return fmt.Sprintf("gas seems to %s %.2f %% while expanding%s", more("gain", "lose"), math.Abs(r), end)
-	case "leak_area_mm2":
-		h := 2 * math.Hypot(d.Spread, 0.03*d.Residual) * sc
-		return fmt.Sprintf("leak area of %s %.3g mm² (%.3g to %.3g)", f.Subject, r, math.Max(0, r-h), r+h)
 	case "leak_noise_db":
 		return fmt.Sprintf("noise floor at the angles of %s %+.1f dB", f.Subject, r)
 	case "impact_ln":
@@ -241,7 +248,7 @@ func known(l measure.Layout, e Evidence) int {
 	switch n := l[e.Feature].Name; {
 	case strings.HasSuffix(n, "_opens_late_deg"):
 		return 2
-	case n == "leak_area_mm2":
+	case n == "leak_area_mm2" || n == "leak_percent":
 		return 1
 	}
 	return 0
