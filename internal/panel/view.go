@@ -131,7 +131,7 @@ func headline(n *wire.Now, age time.Duration) banner {
 	switch h := &n.Health; {
 	case old != "":
 		return banner{Class: "mute", Title: "nothing new", Text: none + ", but " + old}
-	case h.State != "running":
+	case h.State != "running" && h.State != "coasting": // a shaft that coasts still gives turns
 		return banner{Class: "mute", Title: h.State, Text: none + ", but no valve is being watched: " + word(h.State)}
 	case !h.Learned:
 		return banner{Class: "mute", Title: "not judging", Text: none + ", but no valve is being judged: " + word(h.Line)}

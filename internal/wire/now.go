@@ -20,7 +20,8 @@ type Now struct {
 	Caution  string    `json:"caution"`
 }
 
-// Health is what the daemon knows of itself. State is "running", "standstill", "starting", "no samples", "offline".
+// Health is what the daemon knows of itself. State is that of the shaft ("running",
+// "coasting", "starting", "standstill", "lost", "unknown") or "offline".
 type Health struct {
 	Version     int        `json:"v"`
 	Skid        string     `json:"skid"`
