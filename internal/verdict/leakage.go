@@ -34,21 +34,35 @@ func (j *Judge) sized(p pathPlace) (area, aSD, loss, lSD float64) {
 	return area, aSD, loss, lSD
 }
 
+// sizedWords is the end of a sentence on a leak: how large it is over the last blocks. Empty when no area is known.
+func sizedWords(severity []Quantity) string {
+	area, loss := "", ""
+	for _, q := range severity {
+		switch q.Name {
+		case "leak_area_mm2":
+			area = fmt.Sprintf("; leak area %.3g mm² (%.3g to %.3g)", q.Value, q.Lo, q.Hi)
+		case "leak_percent":
+			loss = fmt.Sprintf(", %.1f %% of its throughput (%.1f to %.1f)", q.Value, q.Lo, q.Hi)
+		}
+	}
+	if area == "" {
+		return ""
+	}
+	return area + loss
+}
+
 // sayLeak puts a path's leak into words: area and share of throughput, with intervals.
 func (j *Judge) sayLeak(p pathPlace, subject string) string {
 	area, aSD, loss, lSD := j.sized(p)
 	s := "leak of " + subject
-	with := func(v, sd float64, unit string) string {
-		return fmt.Sprintf(" %.3g %s (%.3g to %.3g)", v, unit, math.Max(0, v-2*sd), v+2*sd)
-	}
 	if !math.IsNaN(area) {
-		s = "leak area of " + subject + with(1e6*area, 1e6*aSD, "mm²")
+		s = fmt.Sprintf("leak area of %s %.3g mm² (%.3g to %.3g)", subject, 1e6*area, 1e6*math.Max(0, area-2*aSD), 1e6*(area+2*aSD))
 	}
 	if !math.IsNaN(loss) {
 		if !math.IsNaN(area) {
 			s += ","
 		}
-		s += with(100*loss, 100*lSD, "% of its throughput")
+		s += fmt.Sprintf(" %.3g %% of its throughput (%.3g to %.3g)", 100*loss, 100*math.Max(0, loss-2*lSD), 100*(loss+2*lSD))
 	}
 	return s
 }

@@ -165,6 +165,17 @@ func (l *line) leaking(t *testing.T, r windowtest.Run, subject string, c model.C
 	if !seen[measure.Pressure] || !seen[measure.Vibration] {
 		t.Errorf("%s leaks: evidence of classes %v", subject, seen)
 	}
+	for _, q := range last.Severity {
+		if (q.Name == "leak_area_mm2" || q.Name == "leak_percent") && c.What != model.PackingLeak {
+			t.Logf("%s: %s %.3g (%.3g to %.3g)", subject, q.Name, q.Value, q.Lo, q.Hi)
+		}
+		if q.Name == "leak_area_mm2" && c.What != model.PackingLeak && (q.Lo > leakArea || q.Hi < leakArea) {
+			t.Errorf("%s leaks %d mm², stated %.2f (%.2f to %.2f)", subject, leakArea, q.Value, q.Lo, q.Hi)
+		}
+	}
+	if !slices.ContainsFunc(last.Severity, func(q verdict.Quantity) bool { return q.Name == "leak_percent" }) {
+		t.Errorf("%s leaks: no share of throughput in %v", subject, last.Severity)
+	}
 	if c.What == model.PackingLeak && !slices.Contains(last.Ambiguous, "t1.packing") {
 		t.Errorf("packing leak is called a suction valve without a doubt: %s", last.Sentence)
 	}

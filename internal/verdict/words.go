@@ -266,6 +266,7 @@ func sentence(l measure.Layout, c *trial, f *Finding) string {
 	if f.Grade == None {
 		return s.String()
 	}
+	leak := sizedWords(f.Severity)
 	// One or two witnesses of each class, strongest class first; of the pressures those that people know best.
 	n := map[measure.Class]int{}
 	sep := ": "
@@ -277,6 +278,9 @@ func sentence(l measure.Layout, c *trial, f *Finding) string {
 		return cmp.Compare(known(l, y), known(l, x))
 	})
 	for _, e := range said {
+		if e.Feature >= 0 && leak != "" && strings.HasPrefix(l[e.Feature].Name, "leak_") && e.Class == measure.Pressure {
+			continue // said at the end, over more blocks
+		}
 		if n[e.Class] >= 2 || (e.Class == measure.Temperature && f.Valve != "") {
 			continue
 		}
@@ -284,10 +288,11 @@ func sentence(l measure.Layout, c *trial, f *Finding) string {
 		s.WriteString(sep + e.Text)
 		sep = ", "
 	}
+	s.WriteString(leak)
 	for _, q := range f.Severity {
 		if c.sensor && !math.IsNaN(q.Lo) {
 			fmt.Fprintf(&s, "; %s about %.3g (%.3g to %.3g)", strings.ReplaceAll(q.Name, "_", " "), q.Value, q.Lo, q.Hi)
-		} else if q.Name == "lost_capacity_percent" {
+		} else if q.Name == "lost_capacity_percent" && leak == "" {
 			fmt.Fprintf(&s, "; about %.1f %% of this end's delivery lost (%.1f to %.1f)", q.Value, q.Lo, q.Hi)
 		}
 	}
