@@ -306,7 +306,7 @@ func (f *Fitter) fill(out *Fit, in *Input, st *states, q *normal, sol *solution)
 }
 
 // massDeg is the step of the sum over a turn, degrees.
-const massDeg = 4
+const massDeg = 6
 
 // massPerArea gives the mass that one turn drives through one square metre of each path, kg/m². Where a valve is open
 // there is next to no pressure across it, so the whole turn may be counted. It is a sum over a whole period, so points
@@ -322,24 +322,27 @@ func (in *Input) massEvery(st *states, every int) (m [Paths]float64) {
 		}
 		return a.p * math.Sqrt(st.n.square(b.p*a.inv, b.a*a.invA)/a.rt)
 	}
-	for end, p := range in.P {
-		for i := 0; i < len(p); i += every {
-			deg := in.deg(i)
-			if deg < 0 || deg >= 360 {
+	for i := 0; i < max(len(in.P[crank.HE]), len(in.P[crank.CE])); i += every {
+		deg := in.deg(i)
+		if deg < 0 || deg >= 360 {
+			continue
+		}
+		dt := float64(every) * in.Step / degPerRad / in.omega(i)
+		var own [2]gas
+		for end, p := range in.P {
+			if p == nil {
 				continue
 			}
-			dt := float64(every) * in.Step / degPerRad / in.omega(i)
-			own := st.at(p[i], compressing(end, deg))
+			own[end] = st.at(p[i], compressing(end, deg))
 			if p[i] > in.Ps {
-				m[HS+2*end] += dt * flow(own, st.suction)
+				m[HS+2*end] += dt * flow(own[end], st.suction)
 			}
 			if p[i] < in.Pd {
-				m[HD+2*end] += dt * flow(own, st.discharge)
+				m[HD+2*end] += dt * flow(own[end], st.discharge)
 			}
-			if end == crank.HE && in.P[crank.CE] != nil {
-				po := in.P[crank.CE][i]
-				m[RG] += dt * flow(own, st.at(po, compressing(crank.CE, deg)))
-			}
+		}
+		if in.P[crank.HE] != nil && in.P[crank.CE] != nil {
+			m[RG] += dt * flow(own[crank.HE], own[crank.CE])
 		}
 	}
 	return m

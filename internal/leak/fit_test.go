@@ -372,3 +372,14 @@ func BenchmarkFit(b *testing.B) {
 		f.Fit(in)
 	}
 }
+
+func BenchmarkFitWithMass(b *testing.B) {
+	s := machines()["fast"]()
+	s.run()
+	in := s.input()
+	f := NewFitter(Settings{Mass: true})
+	f.Fit(in)
+	for b.Loop() {
+		f.Fit(in)
+	}
+}
