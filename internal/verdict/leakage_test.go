@@ -41,7 +41,7 @@ func TestRingsThatReadAsSuction(t *testing.T) {
 	p.ends[0].works, p.ends[1].works = true, true
 	both := sight{n: [2]int{enough, enough}}
 	blind := both
-	blind.areaZ[hRings] = math.NaN()
+	blind.noRings = true
 	idle := sight{n: [2]int{enough, 0}}
 	for _, c := range []struct {
 		name     string

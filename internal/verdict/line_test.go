@@ -286,3 +286,39 @@ func TestModelSweep(t *testing.T) {
 		}
 	}
 }
+
+// With one end idle or late closing on both ends leaking rings read as suction valves (reference/leaks.md section 2):
+// whatever is named, the finding says what it cannot be told from.
+func TestModelRingsThatReadAsSuction(t *testing.T) {
+	steps := []int{windowtest.Late}
+	if sweeping() {
+		steps = append(steps, windowtest.Unloaded)
+	}
+	for _, step := range steps {
+		r := windowtest.Run{Ratio: 2.5, RPM: 1000, Step: step, Seconds: 4.8, Seed: 1}
+		l := newLine(windowtest.Run{})
+		l.learn(t, r)
+		r.Changes = []model.Change{{What: model.RingLeak, Where: "t1", To: leakArea * model.MM2}}
+		n := 0
+		l.watch(t, r, func(_ duty.Block, fs []verdict.Finding) {
+			for _, f := range fs {
+				if f.Kind != verdict.Leaking {
+					t.Errorf("step %d: %s", step, f.Sentence)
+					continue
+				}
+				n++
+				other := "t1.rings"
+				if f.Subject == other {
+					other = "t1.he.suction"
+				}
+				if f.Subject != "t1.rings" && f.Subject != "t1.he.suction" && f.Subject != "t1.ce.suction" || !slices.Contains(f.Ambiguous, other) {
+					t.Errorf("step %d: %s", step, f.Sentence)
+				}
+				t.Logf("step %d: %s", step, f.Sentence)
+			}
+		})
+		if n == 0 {
+			t.Errorf("step %d: leaking rings are not seen at all", step)
+		}
+	}
+}

@@ -172,7 +172,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			m.llr[measure.Vibration] = v.leak[c.h]
 		}
 		if c.h == hRings {
-			if s.noRings(&b.place) {
+			if s.noRings {
 				m.ambiguous = []string{b.place.group(crank.HE, suction), b.place.group(crank.CE, suction)}
 			}
 			m.llr[measure.Temperature] = t.rings

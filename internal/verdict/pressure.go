@@ -50,6 +50,7 @@ type sight struct {
 	ratio   [2]float64
 	areaZ   [5]float64 // HE s, HE d, CE s, CE d, rings; NaN where absent
 	pattern [hPressures][2]pattern
+	noRings bool // both ends work, and the leak fit had to leave the rings out all the same
 }
 
 func look(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) *sight {
@@ -83,6 +84,8 @@ func look(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) *sigh
 			s.areaZ[i] = clip(d.Z/widen, 12)
 		}
 	}
+	s.noRings = s.n[0] >= enough && s.n[1] >= enough && p.rings.area >= 0 && math.IsNaN(s.areaZ[hRings]) &&
+		!math.IsNaN(s.areaZ[hLeak]) && !math.IsNaN(s.areaZ[hLeak+2])
 	for e := range s.ratio {
 		if math.IsNaN(s.ratio[e]) {
 			s.ratio[e] = r // the other end's; 0 when neither knows
@@ -261,19 +264,13 @@ func (s *sight) structural(p *place, end, g int) []string {
 	if g != suction {
 		return nil
 	}
-	if s.n[1-end] < enough || s.noRings(p) {
+	if s.n[1-end] < enough || s.noRings {
 		out = append(out, p.id+".rings")
 	}
 	if end == crank.CE {
 		out = append(out, p.id+".packing")
 	}
 	return out
-}
-
-// noRings tells whether both ends work and the leak fit had to leave the rings out all the same.
-func (s *sight) noRings(p *place) bool {
-	return s.n[0] >= enough && s.n[1] >= enough && p.rings.area >= 0 && math.IsNaN(s.areaZ[hRings]) &&
-		!math.IsNaN(s.areaZ[hLeak]) && !math.IsNaN(s.areaZ[hLeak+2])
 }
 
 func at(dev []*duty.Deviation, i int) *duty.Deviation {
