@@ -17,6 +17,10 @@ type Config struct {
 	Machine    Machine
 	Atmosphere float64       // Pa absolute on the outside of the rods; not positive: 101325
 	Leak       leak.Settings // zero: defaults
+
+	// Do, where given, calls f with 0 to n-1, each once, and returns when all have come back; several may run at the
+	// same time. The leak fits of the throws are made by it, with the same bits whatever the order. Nil: a plain loop.
+	Do func(n int, f func(i int))
 }
 
 // Gas is what the measures need of the gas at one throw's duty; NaN or 0 where it is not known. R J/(kg K); Zs and Zd
@@ -48,6 +52,7 @@ type Measurer struct {
 	masked, busy []bool
 
 	ctx    []throwCtx
+	fitOne func(i int)
 	memory []ThrowMemory
 	ffts   []*fourier.FFT
 	padded []float64
@@ -75,6 +80,11 @@ func New(cfg Config) *Measurer {
 	cfg.Leak.Mass = true // the throughput's share needs it
 	for range cfg.Machine.Throws {
 		m.fitters = append(m.fitters, leak.NewFitter(cfg.Leak))
+	}
+	m.fitOne = func(i int) {
+		if c := &m.ctx[i]; c.th != nil {
+			m.leaks(c)
+		}
 	}
 	m.layout, m.index = build(cfg.Machine)
 	m.ctx, m.memory = make([]throwCtx, len(cfg.Machine.Throws)), make([]ThrowMemory, len(cfg.Machine.Throws))
@@ -178,8 +188,14 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 		}
 		m.loadsOf(c)
 		m.sums(c)
-		m.leaks(c)
 		m.listenAll(c)
+	}
+	if m.cfg.Do != nil {
+		m.cfg.Do(len(m.ctx), m.fitOne)
+	} else {
+		for i := range m.ctx {
+			m.fitOne(i)
+		}
 	}
 	for i := range m.ctx { // every throw has been heard: what rings across is known
 		if c := &m.ctx[i]; c.th != nil {

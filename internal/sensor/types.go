@@ -54,6 +54,10 @@ type Config struct {
 	Learn    int     // good turns from which the usual levels are learnt; default 100
 	Hold     int     // turns without suspicion before a channel is believed again; default 50
 	MainsHz  float64 // 50 or 60; 0: both are looked for
+
+	// Do, where given, calls f with 0 to n-1, each once, and returns when all have come back; several may run at the
+	// same time. Channels are scanned by it, with the same bits whatever the order. Nil: a plain loop.
+	Do func(n int, f func(i int))
 }
 
 // Fault is what can be wrong with a channel.

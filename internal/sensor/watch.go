@@ -22,7 +22,9 @@ type Watch struct {
 	turn     int64 // of the newest frame
 	frames   int64
 	declared bool
-	ref      periods // of the shaft
+	ref      periods      // of the shaft
+	frame    *frame.Frame // being scanned
+	scanOne  func(i int)
 }
 
 // watched is one channel with its past.
@@ -74,6 +76,7 @@ func New(cfg Config) (*Watch, error) {
 		return nil, fmt.Errorf("sensor: %w", err)
 	}
 	w := &Watch{cfg: cfg, mains: m, ch: make([]watched, len(cfg.Channels))}
+	w.scanOne = w.scanChannel
 	for i, c := range cfg.Channels {
 		d := &w.ch[i]
 		*d = watched{Channel: c, lo: math.Inf(-1), hi: math.Inf(1), rail: [2]float64{math.NaN(), math.NaN()}}
@@ -136,18 +139,29 @@ func (w *Watch) Frame(f *frame.Frame) {
 const least = 2 * parts
 
 func (w *Watch) scanAll(f *frame.Frame) {
-	for i := range w.ch {
-		c := &w.ch[i]
-		c.scan.n = 0
-		if c.Kind == Phase || c.Input >= len(f.Counts) || len(f.Counts[c.Input]) < least {
-			continue
+	w.frame = f
+	if w.cfg.Do != nil {
+		w.cfg.Do(len(w.ch), w.scanOne)
+	} else {
+		for i := range w.ch {
+			w.scanOne(i)
 		}
-		x := f.Counts[c.Input]
-		c.scan.take(x)
-		c.slow.add(x, f.Seq0)
-		c.slow.note(f.Turn, f.Seq0, &c.scan, f.Mark1-f.Mark0)
-		c.seen = true
 	}
+	w.frame = nil
+}
+
+// scanChannel scans one channel of the frame in hand.
+func (w *Watch) scanChannel(i int) {
+	c, f := &w.ch[i], w.frame
+	c.scan.n = 0
+	if c.Kind == Phase || c.Input >= len(f.Counts) || len(f.Counts[c.Input]) < least {
+		return
+	}
+	x := f.Counts[c.Input]
+	c.scan.take(x)
+	c.slow.add(x, f.Seq0)
+	c.slow.note(f.Turn, f.Seq0, &c.scan, f.Mark1-f.Mark0)
+	c.seen = true
 }
 
 // raise books a suspicion of the turn in hand. What lies outside the valid range in one turn is kept out of it where

@@ -58,6 +58,7 @@ type Line struct {
 	part   [][]int32 // scratch of cut
 	conds  []alarm.Condition
 	out    func(*Output)
+	crew   *crew // nil: everything one after the other
 	count  Count
 	steady []int
 
@@ -129,6 +130,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 		return nil, err
 	}
 	marks := turnConfig(sk, info)
+	marks.Do = l.each
 	if l.uneven, err = rippleBook(sk, len(marks.Marks.Inner)+1); err != nil {
 		return nil, err
 	}
@@ -138,9 +140,9 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 	if l.turns, err = turn.New(marks); err != nil {
 		return nil, err
 	}
-	l.measures = measure.New(measure.Config{Machine: measureMachine(sk), Atmosphere: sk.Machine.Atmosphere})
+	l.measures = measure.New(measure.Config{Machine: measureMachine(sk), Atmosphere: sk.Machine.Atmosphere, Do: l.each})
 	l.layout = l.measures.Layout()
-	if l.sensors, err = newSensors(sk, info, l.layout); err != nil {
+	if l.sensors, err = newSensors(sk, info, l.layout, l.each); err != nil {
 		return nil, err
 	}
 	l.windows = window.NewTracker(window.Config{Works: works(sk)})
@@ -162,6 +164,17 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 		}
 	}
 	return l, nil
+}
+
+// each does n pieces of work that do not touch each other, on as many cores as there are hands.
+func (l *Line) each(n int, f func(i int)) {
+	if l.crew != nil {
+		l.crew.do(n, f)
+		return
+	}
+	for i := range n {
+		f(i)
+	}
 }
 
 // Layout is the order of the features.

@@ -65,6 +65,8 @@ func Review(ctx context.Context, o ReviewOptions) (err error) {
 	if r.line, err = NewLine(sk, src.Info(), r.held.at, LearnPlan{From: o.LearnFrom, To: o.LearnTo}, base, alarm.New(AlarmTiming(sk))); err != nil {
 		return err
 	}
+	r.line.crew = newCrew()
+	defer r.line.crew.close()
 	if o.OutFile != "" {
 		f, err := create(o.OutFile, o.SkidFile, o.Recording, o.ProcessCSV, o.Baseline)
 		if err != nil {

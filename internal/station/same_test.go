@@ -262,6 +262,7 @@ func TestLiveAndOfflineAreTheSame(t *testing.T) {
 			t.Errorf("live: %+v\noffline: %+v", line, want)
 		}
 	}
+	t.Run("cores", func(t *testing.T) { r.cores(t, off, learnt+1) })
 	t.Run("cuts", func(t *testing.T) { r.cuts(t, off, learnt+1) })
 	t.Run("clip", func(t *testing.T) { r.clip(t, of(off, "turn")) })
 }

@@ -42,10 +42,10 @@ type sensors struct {
 // referencePerSecond is how often the shaft reference is asked how it does.
 const referencePerSecond = 4
 
-func newSensors(sk *skid.Skid, info acq.Info, layout measure.Layout) (*sensors, error) {
+func newSensors(sk *skid.Skid, info acq.Info, layout measure.Layout, do func(int, func(int))) (*sensors, error) {
 	s := &sensors{opening: map[int]int{}, noise: map[int]int{}, every: max(1, int64(info.Rate/referencePerSecond)),
 		abroad: make([][]float64, 2)}
-	cfg := sensor.Config{Rate: info.Rate}
+	cfg := sensor.Config{Rate: info.Rate, Do: do}
 	at := map[string]int{}
 	for i, c := range sk.Channels {
 		d := sensor.Channel{ID: c.ID, Input: c.Input, PerCount: c.VoltsFull / math.Exp2(float64(info.Bits-1)), FullV: c.VoltsFull, ZeroV: c.ZeroV,

@@ -151,6 +151,7 @@ func (s *Station) openLine() error {
 	if err != nil {
 		return err
 	}
+	s.line.crew = newCrew()
 	if s.o.OnTurn == nil {
 		s.line.records = Newest
 	}
@@ -394,6 +395,10 @@ func (s *Station) Close() error {
 
 func (s *Station) release() error {
 	var errs []error
+	if s.line != nil {
+		s.line.crew.close()
+		s.line.crew = nil
+	}
 	if s.panel != nil {
 		errs = append(errs, s.panel.Close())
 	}

@@ -29,6 +29,10 @@ type Config struct {
 	Throws     []ThrowConfig // at least one, in the order of the skid file
 	ImpactBand [2]float64    // Hz; zero: 2..20 kHz. The upper edge is held under 0.45 of the rate
 	LeakBand   [2]float64    // Hz; zero: 10..20 kHz, held likewise; Vib.Leak is nil when nothing useful is left of it
+
+	// Do, where given, calls f with 0 to n-1, each once, and returns when all have come back; several may run at the
+	// same time. Channels and throws are worked on by it, with the same bits whatever the order. Nil: a plain loop.
+	Do func(n int, f func(i int))
 }
 
 // Marks is what is known of the shaft reference.
@@ -108,6 +112,9 @@ func (c Config) fill() (Config, error) {
 	}
 	if c.Step == 0 {
 		c.Step = DefaultStep
+	}
+	if c.Do == nil {
+		c.Do = oneByOne
 	}
 	if n := PadDeg / c.Step; !(c.Step >= 0.1 && c.Step <= 1) || math.Abs(n-math.Round(n)) > 1e-6 {
 		return c, fmt.Errorf("grid step %g° is not within 0.1..1 with %d° a whole number of steps", c.Step, PadDeg)
@@ -205,6 +212,12 @@ func (c Config) band(b [2]float64) (dsp.SOS, error) {
 		return nil, nil
 	}
 	return dsp.BandPass(bandOrder, b[0], b[1], c.Rate)
+}
+
+func oneByOne(n int, f func(i int)) {
+	for i := range n {
+		f(i)
+	}
 }
 
 func finite(x float64) bool { return !math.IsNaN(x - x) }

@@ -13,7 +13,8 @@ type Converter struct {
 	grids []grid // per throw
 	press []*stream
 	vib   []*stream
-	throw [][3]int // per throw: index into press of both ends (-1: none), first index into vib
+	all   []*stream // both
+	throw [][3]int  // per throw: index into press of both ends (-1: none), first index into vib
 
 	recs    []*record // consecutive revolutions, oldest first
 	spare   []*record
@@ -23,12 +24,26 @@ type Converter struct {
 	base    int64 // sample number of the history's first sample
 	next    int64 // sample number after its last
 	m       angleMap
-	k       kernel
-	perDeg  []float64
+	hands   []hand  // per throw
 	least   float64 // widest of all streams' least σ
 	late    int64   // largest lag of all bands, samples
 	out     Turn
 	throws  []Throw
+
+	// What Do calls, made once, and what it works on.
+	addOne, makeOne func(i int)
+	frame           *frame.Frame
+	skip, upTo      int // samples of the frame
+	span            []*record
+	u               float64
+}
+
+// hand is what works on one throw, and what it found.
+type hand struct {
+	k        kernel
+	perDeg   []float64 // samples per degree at the grid angles
+	why      string
+	seq0, to int64 // samples used
 }
 
 // ahead is how many revolutions after the one in hand must have come.
@@ -82,7 +97,16 @@ func New(cfg Config) (*Converter, error) {
 		c.throw = append(c.throw, at)
 		c.throws = append(c.throws, out)
 	}
-	c.perDeg = make([]float64, c.grids[0].N)
+	c.hands = make([]hand, len(c.throws))
+	for k := range c.hands {
+		c.hands[k].perDeg = make([]float64, c.grids[k].N)
+	}
+	c.all = slices.Concat(c.press, c.vib)
+	c.addOne = func(i int) {
+		s := c.all[i]
+		s.add(c.frame.Counts[s.ch.Input][c.skip:c.upTo], c.next)
+	}
+	c.makeOne = c.throwOf
 	return c, nil
 }
 
@@ -118,16 +142,14 @@ func (c *Converter) Flush(emit func(*Turn)) {
 // samples gives the number of samples per input of a frame, -1 when an input that is needed is missing or differs.
 func (c *Converter) samples(f *frame.Frame) int {
 	n := -1
-	for _, list := range [2][]*stream{c.press, c.vib} {
-		for _, s := range list {
-			if s.ch.Input >= len(f.Counts) {
-				return -1
-			}
-			if m := len(f.Counts[s.ch.Input]); n < 0 {
-				n = m
-			} else if m != n {
-				return -1
-			}
+	for _, s := range c.all {
+		if s.ch.Input >= len(f.Counts) {
+			return -1
+		}
+		if m := len(f.Counts[s.ch.Input]); n < 0 {
+			n = m
+		} else if m != n {
+			return -1
 		}
 	}
 	return max(n, 0)
@@ -150,11 +172,9 @@ func (c *Converter) push(f *frame.Frame, n int) {
 	if skip >= n {
 		return
 	}
-	for _, list := range [2][]*stream{c.press, c.vib} {
-		for _, s := range list {
-			s.add(f.Counts[s.ch.Input][skip:n], c.next)
-		}
-	}
+	c.frame, c.skip, c.upTo = f, skip, n
+	c.cfg.Do(len(c.all), c.addOne)
+	c.frame = nil
 	c.next = f.Seq0 + int64(n)
 }
 
@@ -164,10 +184,8 @@ func (c *Converter) drop(seq int64) {
 	if n <= 0 {
 		return
 	}
-	for _, list := range [2][]*stream{c.press, c.vib} {
-		for _, s := range list {
-			s.drop(n, seq)
-		}
+	for _, s := range c.all {
+		s.drop(n, seq)
 	}
 	c.base = seq
 }
@@ -175,10 +193,8 @@ func (c *Converter) drop(seq int64) {
 // restart empties the history and begins it at sample seq. The filters begin settled on their first sample; the first
 // turn that can be made begins 300° later or more, far beyond their memory.
 func (c *Converter) restart(seq int64) {
-	for _, list := range [2][]*stream{c.press, c.vib} {
-		for _, s := range list {
-			s.restart()
-		}
+	for _, s := range c.all {
+		s.restart()
 	}
 	c.base, c.next = seq, seq
 }

@@ -52,31 +52,43 @@ func (c *Converter) convert(recs []*record) string {
 	if u == 0 {
 		u = Uncertainty(c.m.even(), knowsRipple(c.m.ripple))
 	}
-	for k := range c.throws {
-		t, g := &c.throws[k], &c.grids[k]
-		if why := c.m.walk(g, t.Pos, c.perDeg); why != "" {
-			return why
+	c.span, c.u = recs, u
+	c.cfg.Do(len(c.throws), c.makeOne)
+	for k := range c.hands {
+		h := &c.hands[k]
+		if h.why != "" {
+			return h.why
 		}
-		lo, hi := c.reach(g, t.Pos)
-		if lo < c.base || hi > c.next {
-			return whyShort
-		}
-		overload := false
-		for _, n := range recs {
-			overload = overload || n.q&frame.Clipped != 0 && n.mark0 < float64(hi) && n.mark1 > float64(lo)
-		}
-		c.pressures(k, lo, hi, overload)
-		c.vibration(k, lo, hi, overload)
-		for j, d := range c.perDeg {
-			t.Pos[j] += float64(c.m.ref)
-			t.Omega[j] = math.Pi / 180 * c.cfg.Rate / d
-		}
-		t.T0, t.T1 = t.Pos[g.zero], t.Pos[g.full]
-		t.RPM, t.U = 60*c.cfg.Rate/(t.T1-t.T0), u
-		c.out.Seq0, c.out.Seq1 = min(c.out.Seq0, lo), max(c.out.Seq1, hi)
+		c.out.Seq0, c.out.Seq1 = min(c.out.Seq0, h.seq0), max(c.out.Seq1, h.to)
 	}
 	c.out.Time, c.out.RPM = c.throws[0].T0/c.cfg.Rate, c.throws[0].RPM
 	return ""
+}
+
+// throwOf fills in throw k.
+func (c *Converter) throwOf(k int) {
+	t, g, h := &c.throws[k], &c.grids[k], &c.hands[k]
+	if h.why = c.m.walk(g, t.Pos, h.perDeg); h.why != "" {
+		return
+	}
+	lo, hi := c.reach(g, t.Pos, h.perDeg)
+	if lo < c.base || hi > c.next {
+		h.why = whyShort
+		return
+	}
+	overload := false
+	for _, n := range c.span {
+		overload = overload || n.q&frame.Clipped != 0 && n.mark0 < float64(hi) && n.mark1 > float64(lo)
+	}
+	c.pressures(k, lo, hi, overload)
+	c.vibration(k, lo, hi, overload)
+	for j, d := range h.perDeg {
+		t.Pos[j] += float64(c.m.ref)
+		t.Omega[j] = math.Pi / 180 * c.cfg.Rate / d
+	}
+	t.T0, t.T1 = t.Pos[g.zero], t.Pos[g.full]
+	t.RPM, t.U = 60*c.cfg.Rate/(t.T1-t.T0), c.u
+	h.seq0, h.to = lo, hi
 }
 
 // ask puts the ripple in force for a revolution into the angle map and gives the uncertainty that goes with it, 0 when
@@ -103,9 +115,9 @@ func (c *Converter) ask(r *record) (u float64, why string) {
 }
 
 // reach gives the half-open range of sample numbers that the kernels and bins of a grid touch; pos is relative.
-func (c *Converter) reach(g *grid, pos []float64) (lo, hi int64) {
+func (c *Converter) reach(g *grid, pos, perDeg []float64) (lo, hi int64) {
 	n := len(pos) - 1
-	edge := func(i int) float64 { return reachSigmas*roundedUp*max(width(g.Step*c.perDeg[i]), c.least) + 2 }
+	edge := func(i int) float64 { return reachSigmas*roundedUp*max(width(g.Step*perDeg[i]), c.least) + 2 }
 	lo = min(int64(math.Floor(pos[0]-edge(0))), first(pos))
 	hi = max(ceil(pos[n]+edge(n)), end(pos)+c.late) + 1
 	return lo + c.m.ref, hi + c.m.ref
@@ -113,7 +125,7 @@ func (c *Converter) reach(g *grid, pos []float64) (lo, hi int64) {
 
 // pressures fills in the pressures of throw k. Positions are relative to the map's reference sample.
 func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
-	t, g := &c.throws[k], &c.grids[k]
+	t, g, h := &c.throws[k], &c.grids[k], &c.hands[k]
 	var ends [2]*stream
 	for e := range ends {
 		t.Bad[e] = ""
@@ -128,7 +140,7 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 	off := c.m.ref - c.base
 	for i, p := range t.Pos {
 		laid, shaped := 0.0, Passage{} // both ends share the kernel unless their passages differ
-		least := width(g.Step * c.perDeg[i])
+		least := width(g.Step * h.perDeg[i])
 		for e, s := range ends {
 			if s == nil {
 				continue
@@ -136,18 +148,18 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 			sigma := max(least, s.least)
 			fresh := sigma != laid
 			if fresh {
-				c.k.lay(p, sigma)
+				h.k.lay(p, sigma)
 				laid = sigma
 			}
 			if way := s.ch.Passage; fresh || way != shaped {
 				shaped = way
 				if way.Hz == 0 {
-					c.k.line()
+					h.k.line()
 				} else {
-					c.k.undo(way, sigma, c.cfg.Rate)
+					h.k.undo(way, sigma, c.cfg.Rate)
 				}
 			}
-			t.P[e][i] = c.k.value(s.x.live()[c.k.first+off:])
+			t.P[e][i] = h.k.value(s.x.live()[h.k.first+off:])
 		}
 	}
 }
