@@ -4,7 +4,6 @@ import (
 	"math"
 	"testing"
 
-	"lapwing/internal/crank"
 	"lapwing/internal/duty"
 	"lapwing/internal/measure"
 	"lapwing/internal/model"
@@ -17,55 +16,38 @@ func quick() *line {
 	return newLine(&b)
 }
 
-// Three leaks at once, and all sensor errors at once, through every stage to the deviation. TestSurvey has the figures;
-// the bounds here are some three standard deviations of one 64-turn median.
+// Three leaks and all sensor errors at once, through every stage to the deviation. TestSurvey has the figures; the bound
+// here is some three standard deviations of a median of 50 turns at this sampling rate.
 func TestLeaksThroughTheLine(t *testing.T) {
 	l := quick()
-	l.learn(t, l.still(1, full, 150))
-	u := l.unit(t)
-	read := func(v trip) (out [5]float64) {
-		var x [5][]float64
-		var devs []duty.Deviation
-		l.turns(t, v, func(p duty.Point, v *measure.Vector) {
-			devs = l.ref.Deviate(devs[:0], 0, p, v)
-			for _, d := range devs {
-				for j := range paths {
-					if d.Seen && d.Feature == l.layout.Find(paths[j], "leak_percent") {
-						x[j] = append(x[j], 100*d.Residual)
-					}
-				}
-			}
-		}, nil)
-		for j := range x {
-			if len(x[j]) < 50 {
-				t.Fatalf("%s: %d turns only", paths[j], len(x[j]))
-			}
-			out[j] = middle(x[j])
-		}
-		return out
-	}
-	v := l.still(2, full, 74)
+	l.learn(t, l.still(1, full, 90))
+	u := l.unit(t, 20)
+	v := l.still(2, full, 64)
+	v.phase, v.gain = .5, .01
+	v.changes = []model.Change{{What: model.PressureZero, To: .01 * l.ps}}
 	want := [5]float64{3, 0, 0, 2, 2}
 	for j, w := range want {
 		if w > 0 {
 			v.changes = append(v.changes, open(j, w*u[j]))
 		}
 	}
-	got := read(v)
-	t.Logf("three at once %.2f, true %.0f", got, want)
-	for j := range got {
-		if math.Abs(got[j]-want[j]) > .35 {
-			t.Errorf("%s: %.2f %%, true %.0f", paths[j], got[j], want[j])
+	var x [5][]float64
+	var devs []duty.Deviation
+	l.turns(t, v, func(p duty.Point, v *measure.Vector) {
+		devs = l.ref.Deviate(devs[:0], 0, p, v)
+		for _, d := range devs {
+			for j := range paths {
+				if d.Seen && d.Feature == l.layout.Find(paths[j], "leak_percent") {
+					x[j] = append(x[j], 100*d.Residual)
+				}
+			}
 		}
-	}
-	v = l.still(3, full, 74)
-	v.phase, v.gain = .5, .01
-	v.changes = []model.Change{{What: model.PressureZero, To: .01 * l.ps}}
-	got = read(v)
-	t.Logf("sensor errors read as %.2f", got)
-	for j := range got {
-		if math.Abs(got[j]) > .35 {
-			t.Errorf("%s: sensor errors read as %.2f %%", paths[j], got[j])
+	}, nil)
+	for j := range x {
+		got := middle(x[j])
+		t.Logf("%s %.2f %%, true %.0f, median of %d turns", paths[j], got, want[j], len(x[j]))
+		if len(x[j]) < 45 || math.Abs(got-want[j]) > .45 {
+			t.Errorf("%s: %.2f %% in %d turns, true %.0f", paths[j], got, len(x[j]), want[j])
 		}
 	}
 }
@@ -73,8 +55,8 @@ func TestLeaksThroughTheLine(t *testing.T) {
 // The per cent are what the model loses through its valves by its own books, over what it delivered while sound.
 func TestPercentIsTheModelsLoss(t *testing.T) {
 	l := quick()
-	run := func(changes ...model.Change) (percent [5]float64, lost, delivered [2][2]float64) {
-		v := l.still(4, full, 40)
+	run := func(changes ...model.Change) (percent [5]float64, lost [4]float64, delivered [2]float64) {
+		v := l.still(4, full, 28)
 		v.changes = changes
 		var x [5][]float64
 		n := 0.0
@@ -83,28 +65,25 @@ func TestPercentIsTheModelsLoss(t *testing.T) {
 				x[j] = append(x[j], 100*v.V[l.layout.Find(paths[j], "leak_percent")])
 			}
 		}, func(tr model.Truth) {
-			lost[tr.End][0] += tr.Leaked.Suction
-			lost[tr.End][1] += tr.Leaked.Discharge
-			delivered[tr.End][0] += tr.Delivered
-			if tr.End == crank.HE {
-				n++
-			}
+			lost[2*tr.End] += tr.Leaked.Suction
+			lost[2*tr.End+1] += tr.Leaked.Discharge
+			delivered[tr.End] += tr.Delivered
+			n += .5 // of two ends
 		})
-		for e := range lost {
-			lost[e][0], lost[e][1], delivered[e][0] = lost[e][0]/n, lost[e][1]/n, delivered[e][0]/n
+		for j := range lost {
+			lost[j] /= n
 		}
 		for j := range x {
 			percent[j] = middle(x[j])
 		}
-		return percent, lost, delivered
+		return percent, lost, [2]float64{delivered[0] / n, delivered[1] / n}
 	}
 	before, none, sound := run()
-	for j := range 4 {
-		after, lost, _ := run(open(j, 10))
-		e, g := j/2, j%2
-		want := 100 * (lost[e][g] - none[e][g]) / sound[e][0]
+	after, lost, _ := run(open(0, 12), open(3, 12))
+	for _, j := range []int{0, 3} {
+		want := 100 * (lost[j] - none[j]) / sound[j/2]
 		got := after[j] - before[j]
-		t.Logf("%s: 10 mm² read %.2f %%, by the model's books %.2f %%", paths[j], got, want)
+		t.Logf("%s: 12 mm² read %.2f %%, by the model's books %.2f %%", paths[j], got, want)
 		if math.Abs(got/want-1) > .12 {
 			t.Errorf("%s: %.2f %%, by the model's books %.2f %%", paths[j], got, want)
 		}

@@ -258,6 +258,7 @@ var paths = [5]string{"t1.he.suction", "t1.he.discharge", "t1.ce.suction", "t1.c
 type reading struct {
 	percent, spread [5]float64 // of leak_percent: the median's residual and its spread, per cent
 	area            [5]float64 // mm²
+	per             [5]float64 // mm² that are one per cent at this duty
 	settled         bool
 }
 
@@ -275,19 +276,27 @@ func (l *line) blocks(t testing.TB, v trip) (out []reading) {
 		r := reading{settled: blk.Settled}
 		for j := range paths {
 			r.percent[j], r.spread[j], r.area[j] = nan, nan, nan
+			share, size := nan, nan
 			ip, ia := l.layout.Find(paths[j], "leak_percent"), l.layout.Find(paths[j], "leak_area_mm2")
 			for _, d := range blk.Dev {
 				if d.Seen && d.Feature == ip {
-					r.percent[j], r.spread[j] = 100*d.Residual, 100*d.Spread
+					r.percent[j], r.spread[j], share = 100*d.Residual, 100*d.Spread, 100*d.Value
 				}
 				if d.Seen && d.Feature == ia {
-					r.area[j] = 1e6 * d.Residual
+					r.area[j], size = 1e6*d.Residual, 1e6*d.Value
 				}
 			}
+			r.per[j] = size / share
 		}
 		out = append(out, r)
 	}, nil)
 	return out
+}
+
+// covers tells whether the interval that people are given, ±2√(spread² + (.03 A)² + (.2 %)²), holds the true area.
+func (r reading) covers(j int, mm2 float64) bool {
+	a := r.area[j]
+	return math.Abs(a-mm2) <= 2*math.Sqrt(math.Pow(r.spread[j]*r.per[j], 2)+math.Pow(.03*a, 2)+math.Pow(.2*r.per[j], 2))
 }
 
 // open gives the change that opens a hole of so many mm² in a path from the start.
@@ -305,10 +314,10 @@ func open(path int, mm2 float64) model.Change {
 // unit is the hole in each path, mm², through which one per cent of the throughput is lost at full load. Measured on the
 // line with one healthy run: the feature's own ratio of area to per cent, checked against the model's books by
 // TestPercentIsTheModelsLoss.
-func (l *line) unit(t testing.TB) (u [5]float64) {
+func (l *line) unit(t testing.TB, turns int) (u [5]float64) {
 	t.Helper()
 	var a, p [5][]float64
-	l.turns(t, l.still(3, full, 50), func(_ duty.Point, x *measure.Vector) {
+	l.turns(t, l.still(3, full, turns), func(_ duty.Point, x *measure.Vector) {
 		for j := range paths {
 			ia, ip := l.layout.Find(paths[j], "leak_area_mm2"), l.layout.Find(paths[j], "leak_percent")
 			if ia < 0 {

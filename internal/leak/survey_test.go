@@ -121,7 +121,7 @@ func TestSurvey(t *testing.T) {
 				t.Parallel()
 				l := newLine(&benches[i])
 				l.teach(t, k, full)
-				u := l.unit(t)
+				u := l.unit(t, 50)
 				l.survey(t, k, full, u, true)
 			})
 		}
@@ -155,6 +155,7 @@ func (l *line) survey(t *testing.T, k kind, step int, u [5]float64, errors bool)
 	}
 	for _, size := range sizes {
 		ratios, cross := "", 0.0
+		held, of := 0, 0
 		for _, j := range js {
 			rs := l.blocks(t, k.with(l.bench, 60+uint64(j), step, k.leak, open(j, size*u[j])))
 			x := column(rs, func(r reading) float64 { return r.area[j] / (size * u[j]) })
@@ -165,13 +166,18 @@ func (l *line) survey(t *testing.T, k kind, step int, u [5]float64, errors bool)
 					cross = max(cross, math.Abs(middle(column(rs, percentOf(o))))/own)
 				}
 			}
+			for _, r := range rs {
+				if of++; r.covers(j, size*u[j]) {
+					held++
+				}
+			}
 			if size == 1 {
 				for _, r := range rs {
 					hits.add(r, j)
 				}
 			}
 		}
-		t.Logf("| %s | %s | %g %% | estimated/true%s | cross-talk %.2f |", l.name, k.name, size, ratios, cross)
+		t.Logf("| %s | %s | %g %% | estimated/true%s | cross-talk %.2f | interval holds the truth %d/%d |", l.name, k.name, size, ratios, cross, held, of)
 	}
 	t.Logf("| %s | %s | 1 %% | %v |", l.name, k.name, hits)
 	if !errors {
@@ -243,7 +249,7 @@ func TestSurveySteps(t *testing.T) {
 		for _, k := range kinds {
 			t.Run(c.name+", "+k.name, func(t *testing.T) {
 				t.Parallel()
-				u0 := newLine(&b).unit(t) // the sizes of the double-acting full load
+				u0 := newLine(&b).unit(t, 50) // the sizes of the double-acting full load
 				l := newLine(&c.b)
 				l.name = c.name
 				l.teach(t, k, c.step)
