@@ -198,7 +198,7 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 		m.turn = blk.Turn1
 		for k, p := range [5]pathPlace{b.place.ends[0].path[0], b.place.ends[0].path[1], b.place.ends[1].path[0], b.place.ends[1].path[1], b.place.rings} {
 			if c.kind == Leaking && c.h == k && !c.packing() {
-				m.area, m.aSd, m.loss, m.lSd = j.sized(p)
+				m.area, m.aSd, m.loss, m.lSd = j.sized(p, b.common(k, j.dev))
 			}
 		}
 		c.marks = append(c.marks, m)

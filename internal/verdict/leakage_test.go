@@ -21,16 +21,16 @@ func TestLeakInterval(t *testing.T) {
 	p := places(l)[0].ends[0].path[suction]
 	j.dev[p.percent] = &duty.Deviation{Feature: p.percent, Value: .04, Residual: .02, Spread: .001}
 	j.dev[p.area] = &duty.Deviation{Feature: p.area, Value: 12e-6, Residual: 6e-6, Spread: .3e-6}
-	area, aSD, loss, lSD := j.sized(p)
+	area, aSD, loss, lSD := j.sized(p, 0)
 	// 0.2 % are 0.6 mm² here.
 	if wantA := math.Sqrt(.09+.18*.18+.36) * 1e-6; area != 6e-6 || math.Abs(aSD/wantA-1) > 1e-12 || loss != .02 || math.Abs(lSD-math.Sqrt(5.36e-6)) > 1e-15 {
 		t.Errorf("%g ± %g m², %g ± %g", area, aSD, loss, lSD)
 	}
-	if s := j.sayLeak(p, "t1.he.suction"); s != "leak area of t1.he.suction 6 mm² (4.61 to 7.39), 2 % of its throughput (1.54 to 2.46)" {
+	if s := j.sayLeak(p, 0, "t1.he.suction"); s != "leak area of t1.he.suction 6 mm² (4.61 to 7.39), 2 % of its throughput (1.54 to 2.46)" {
 		t.Error(s)
 	}
 	j.dev[p.percent] = nil
-	if _, sd, loss, _ := j.sized(p); !math.IsNaN(loss) || math.Abs(sd/(math.Hypot(.3, .18)*1e-6)-1) > 1e-12 {
+	if _, sd, loss, _ := j.sized(p, 0); !math.IsNaN(loss) || math.Abs(sd/(math.Hypot(.3, .18)*1e-6)-1) > 1e-12 {
 		t.Errorf("throughput not known: %g, area ± %g", loss, sd)
 	}
 }
@@ -68,5 +68,29 @@ func TestRingsThatReadAsSuction(t *testing.T) {
 	settle, _ := advice(&trial{kind: Leaking, h: hLeak, group: suction}, &f)
 	if !strings.Contains(strings.Join(settle, " "), "Both ends alike suggest the rings") {
 		t.Errorf("not said: %v", settle)
+	}
+}
+
+// Four groups that read alike are no four leaks; one that reads more leaks by the rest.
+func TestFourAlike(t *testing.T) {
+	l := measure.NewLayout(measure.Machine{Throws: []measure.Throw{{ID: "t1", Ends: [2]measure.End{{Works: true}, {Works: true}}}}})
+	p := places(l)[0]
+	dev := make([]*duty.Deviation, len(l))
+	for i, r := range []float64{.013, .01, .011, .04} {
+		at := p.ends[i/2].path[i%2].percent
+		dev[at] = &duty.Deviation{Feature: at, Value: .03 + r, Residual: r, Spread: .001, Z: r / .001}
+	}
+	if c := alike(&p, dev); c != .01 {
+		t.Errorf("%g in common, want 0.01", c)
+	}
+	s := look(&p, l, dev, true)
+	for i, want := range []float64{.003, 0, .001, .03} { // over √(0.001² + (0.3·0.01)²)
+		if want = math.Min(12, want/math.Hypot(.001, .003)); math.Abs(s.areaZ[i]-want) > 1e-9 {
+			t.Errorf("path %d: %g spreads, want %g", i, s.areaZ[i], want)
+		}
+	}
+	dev[p.ends[1].path[discharge].percent].Residual = -.002
+	if c := alike(&p, dev); c != 0 {
+		t.Errorf("one sound group: %g in common", c)
 	}
 }

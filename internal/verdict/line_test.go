@@ -10,6 +10,7 @@ import (
 	"lapwing/internal/duty"
 	"lapwing/internal/measure"
 	"lapwing/internal/model"
+	"lapwing/internal/skid"
 	"lapwing/internal/verdict"
 	"lapwing/internal/window"
 	"lapwing/internal/window/windowtest"
@@ -320,5 +321,30 @@ func TestModelRingsThatReadAsSuction(t *testing.T) {
 		if n == 0 {
 			t.Errorf("step %d: leaking rings are not seen at all", step)
 		}
+	}
+}
+
+// Another ripple of the shaft under one mark a turn reads as 1 % on all four valve groups alike (internal/leak,
+// TestSurvey): no valve may be accused above advisory, and at most one of them.
+func TestModelAnotherRipple(t *testing.T) {
+	l := newLine(windowtest.Run{})
+	r := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 6, Seed: 1}
+	l.learn(t, r)
+	r.Params = func(p *model.Params) { p.Ripple = []skid.Ripple{{Order: 2, Amp: .005, Phase: 70}} }
+	accused := map[string]bool{}
+	l.watch(t, r, func(_ duty.Block, fs []verdict.Finding) {
+		for _, f := range fs {
+			t.Log(f.Sentence)
+			if f.Kind != verdict.Leaking {
+				continue
+			}
+			accused[f.Subject] = true
+			if f.Grade > verdict.Advisory {
+				t.Errorf("confirmed: %s", f.Sentence)
+			}
+		}
+	})
+	if len(accused) > 1 {
+		t.Errorf("accused: %v", accused)
 	}
 }

@@ -74,13 +74,16 @@ func look(p *place, l measure.Layout, dev []*duty.Deviation, settled bool) *sigh
 			}
 		}
 	}
+	common := alike(p, dev)
 	for i, pp := range []pathPlace{p.ends[0].path[0], p.ends[0].path[1], p.ends[1].path[0], p.ends[1].path[1], p.rings} {
 		s.areaZ[i] = math.NaN()
-		d := at(dev, pp.percent) // its floor fits machines of any size
-		if d == nil {
-			d = at(dev, pp.area)
-		}
-		if d != nil {
+		if d := at(dev, pp.percent); d != nil { // its floor fits machines of any size
+			z := d.Z
+			if i != hRings && common > 0 {
+				z = (d.Residual - common) / math.Hypot(d.Spread, alikeError*common)
+			}
+			s.areaZ[i] = clip(z/widen, 12)
+		} else if d := at(dev, pp.area); d != nil {
 			s.areaZ[i] = clip(d.Z/widen, 12)
 		}
 	}

@@ -85,7 +85,7 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 			sum += q
 			text := say(j.layout[i], d)
 			if n := j.layout[i].Name; n == "leak_area_mm2" || n == "leak_percent" {
-				text = j.sayLeak(b.path(c.h), j.layout[i].Subject)
+				text = j.sayLeak(b.path(c.h), b.common(c.h, j.dev), j.layout[i].Subject)
 			}
 			es = append(es, Evidence{Class: class, Text: text, Feature: i, Value: d.Value, Expected: d.Expected, Z: d.Z, LLR: q})
 		}
