@@ -70,7 +70,6 @@ type solved struct {
 	x      vector
 	rms    float64
 	sigma  float64 // of one point, so that a stroke counts for eachStroke values
-	a      matrix  // normal matrix over sigma², without priors
 	byDuty []matrix
 	bDuty  []vector // its right side at x, by duty
 	inv    matrix
