@@ -35,6 +35,7 @@ type Run struct {
 	Throws     int                 // 0: one
 	Changes    []model.Change      // on top
 	Params     func(*model.Params) // changes to the physics; nil: none
+	Machine    func(*skid.Skid)    // changes to the machine; nil: none
 }
 
 // Turn is one valid turn of a run.
@@ -51,7 +52,7 @@ func Gas() gas.Fixed { return gas.Fixed{M: .0175, Zs: .96, Zd: .96, KV: 1.29, KT
 func (r Run) Skid() *skid.Skid {
 	g := Gas()
 	sk := &skid.Skid{ID: "bench", Rate: 51200, Gas: skid.Gas{Name: "bench gas", Fixed: &g}}
-	sk.Machine = skid.Machine{RatedRPM: 900, MinRPM: 300, MaxRPM: 1200, Atmosphere: 101325}
+	sk.Machine = skid.Machine{RatedRPM: 900, MinRPM: min(300, r.RPM), MaxRPM: max(1200, r.RPM), Atmosphere: 101325}
 	sk.Phase = skid.Phase{Channel: "mark", MarksPerTurn: 1, AutoLevel: true}
 	sk.Channels = []skid.Channel{{ID: "mark", Kind: skid.PhaseMark, VoltsFull: 10, Gain: 1, Min: -10, Max: 10}}
 	sk.Process = skid.Process{Known: true, Stages: []skid.Line{{Ps: 20e5, Pd: 20e5 * r.Ratio, Ts: 303}}}
@@ -84,6 +85,9 @@ func (r Run) Skid() *skid.Skid {
 		add(skid.Channel{ID: "a." + th.ID, Kind: skid.Acceleration, VoltsFull: 10, Gain: 98.0665, Min: -490, Max: 490})
 		sk.Throws = append(sk.Throws, th)
 	}
+	if r.Machine != nil {
+		r.Machine(sk)
+	}
 	return sk
 }
 
@@ -103,7 +107,7 @@ func (r Run) Turns(t testing.TB, settle float64, use func(Turn)) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	asm, err := frame.New(frame.Config{Rate: sk.Rate, Inputs: len(sk.Channels), Channel: 0, Auto: true, MinRPM: 200, MaxRPM: 1300})
+	asm, err := frame.New(frame.Config{Rate: sk.Rate, Inputs: len(sk.Channels), Channel: 0, Auto: true, MinRPM: min(200, r.RPM/2), MaxRPM: max(1300, 1.2*r.RPM)})
 	if err != nil {
 		t.Fatal(err)
 	}
