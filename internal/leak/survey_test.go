@@ -58,7 +58,7 @@ var kinds = []kind{
 	{"swings", func(b *bench, seed uint64, step, long int) trip { return b.swing(seed, step, long) }, 2, 30, 40, 16},
 }
 
-// table is printed when all machines have been run.
+// with is a run with more changes in it.
 func (k kind) with(b *bench, seed uint64, step, long int, more ...model.Change) trip {
 	v := k.trip(b, seed, step, long)
 	v.changes = append(v.changes, more...)
