@@ -291,11 +291,10 @@ func TestModelSweep(t *testing.T) {
 // With one end idle or late closing on both ends leaking rings read as suction valves (reference/leaks.md section 2):
 // whatever is named, the finding says what it cannot be told from.
 func TestModelRingsThatReadAsSuction(t *testing.T) {
-	steps := []int{windowtest.Late}
-	if sweeping() {
-		steps = append(steps, windowtest.Unloaded)
+	if !sweeping() {
+		t.Skip("seconds of the model: run with -sweep; TestRingsThatReadAsSuction and TestFourAlike run always")
 	}
-	for _, step := range steps {
+	for _, step := range []int{windowtest.Late, windowtest.Unloaded} {
 		r := windowtest.Run{Ratio: 2.5, RPM: 1000, Step: step, Seconds: 4.8, Seed: 1}
 		l := newLine(windowtest.Run{})
 		l.learn(t, r)
@@ -327,6 +326,9 @@ func TestModelRingsThatReadAsSuction(t *testing.T) {
 // Another ripple of the shaft under one mark a turn reads as 1 % on all four valve groups alike (internal/leak,
 // TestSurvey): no valve may be accused above advisory, and at most one of them.
 func TestModelAnotherRipple(t *testing.T) {
+	if !sweeping() {
+		t.Skip("seconds of the model: run with -sweep; TestFourAlike runs always")
+	}
 	l := newLine(windowtest.Run{})
 	r := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 6, Seed: 1}
 	l.learn(t, r)
