@@ -118,7 +118,7 @@ func TestSystemUnitIsValid(t *testing.T) {
 	system(t)
 	analyze, err := exec.LookPath("systemd-analyze")
 	if err != nil {
-		t.Skip("systemd-analyze is not installed here: the unit is not checked by it")
+		t.Skip("systemd-analyze is absent here: the unit is not checked by it")
 	}
 	raw, err := os.ReadFile(filepath.Join(root(t), "systemd", "lapwingd.service"))
 	if err != nil {
