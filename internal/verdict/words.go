@@ -35,10 +35,10 @@ func (j *Judge) severity(f *Finding, c *trial) {
 			h := half(g, sd, templateError/2)
 			f.Severity = append(f.Severity, Quantity{"lost_capacity_percent", g, math.Max(0, g-h), g + h})
 		}
-		if a, s := c.over(func(m *mark) (float64, float64) { return m.area, m.aSd }); !math.IsNaN(a) {
+		if a, s := c.newest(func(m *mark) (float64, float64) { return m.area, m.aSd }); !math.IsNaN(a) {
 			f.Severity = append(f.Severity, Quantity{"leak_area_mm2", 1e6 * a, math.Max(0, 1e6*(a-2*s)), 1e6 * (a + 2*s)})
 		}
-		if l, s := c.over(func(m *mark) (float64, float64) { return m.loss, m.lSd }); !math.IsNaN(l) {
+		if l, s := c.newest(func(m *mark) (float64, float64) { return m.loss, m.lSd }); !math.IsNaN(l) {
 			f.Severity = append(f.Severity, Quantity{"leak_percent", 100 * l, math.Max(0, 100*(l-2*s)), 100 * (l + 2*s)})
 		}
 	case DeadCentre: // amplitude: degrees that the pressures are plotted too early
