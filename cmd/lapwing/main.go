@@ -29,6 +29,8 @@ func root() *cobra.Command {
 		Long: `lapwing is the hand tool of the Lapwing valve monitor for reciprocating compressors.
 
   technician     lapwing check FILE       what the skid file says, and every doubt
+                 lapwing datum REC.wav    dead centres, clearances, pressure zeros from a recording
+                 lapwing ripple REC.wav   how unevenly the shaft turns, from a toothed wheel
   control room   lapwing listen           alarms as they arrive over MQTT
   analyst        lapwing pull CLIP        raw samples around an event, as WAV
                  lapwing review REC.wav   the same analysis again, offline
