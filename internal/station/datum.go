@@ -116,11 +116,11 @@ func undoing(sk *skid.Skid, found [][2]passage.Found) *skid.Skid {
 
 // walk passes a block through frame, turn and window as Add does, and gives every turn with its windows. It leaves
 // measuring and judging out.
-func (l *Line) walk(b *acq.Block, each func(*turn.Turn, skid.Process, window.Result)) error {
+func (l *Line) walk(b *acq.Block, each func(*turn.Turn, window.Result)) error {
 	return l.frames.Add(b, func(f *frame.Frame) { l.turns.Add(f, func(t *turn.Turn) { l.walked(t, each) }) })
 }
 
-func (l *Line) walked(t *turn.Turn, each func(*turn.Turn, skid.Process, window.Result)) {
+func (l *Line) walked(t *turn.Turn, each func(*turn.Turn, window.Result)) {
 	proc := l.proc(t.Time)
 	l.prepare(t, proc)
 	if l.uneven != nil && t.Valid() {
@@ -130,8 +130,11 @@ func (l *Line) walked(t *turn.Turn, each func(*turn.Turn, skid.Process, window.R
 		l.uneven.Learn(t, l.behind)
 	}
 	w := l.windows.Track(t, l.win)
+	for i := range l.points {
+		l.points[i] = l.classify(i, t, proc, w)
+	}
 	if t.Valid() {
 		l.refine(w)
 	}
-	each(t, proc, w)
+	each(t, w)
 }

@@ -108,9 +108,9 @@ func (g *gathering) flush() {
 }
 
 // turn takes the turns that are steady and whose working ends are all followed.
-func (g *gathering) turn(t *turn.Turn, proc skid.Process, w window.Result) {
+func (g *gathering) turn(t *turn.Turn, w window.Result) {
 	for i := range g.throws {
-		p := g.line.classify(i, t, proc, w)
+		p := g.line.points[i]
 		th := &g.throws[i]
 		if p.State != duty.Steady || i >= len(t.Throws) || !g.followed(i, t, &w.Throws[i]) {
 			th.half.number = -1

@@ -394,6 +394,9 @@ func (l *Line) turn(t *turn.Turn) {
 		l.uneven.Learn(t, l.behind) // before anybody uses the turn's uncertainty
 	}
 	w := l.windows.Track(t, l.win)
+	for i := range l.points {
+		l.points[i] = l.classify(i, t, proc, w)
+	}
 	if t.Valid() {
 		l.refine(w)
 		l.measures.Measure(&l.vec, t, w, l.mea)
@@ -403,9 +406,6 @@ func (l *Line) turn(t *turn.Turn) {
 		l.count.Invalid++
 		l.whole = never // what comes next is news
 		l.count.Reasons[t.Reason]++
-	}
-	for i := range l.points {
-		l.points[i] = l.classify(i, t, proc, w)
 	}
 	if o.Windows = w; t.Valid() && l.wants(t) {
 		o.Record = l.record.Record(t, w, &l.vec, l.points)
@@ -449,11 +449,15 @@ func (l *Line) prepare(t *turn.Turn, proc skid.Process) {
 	}
 }
 
-// refine gives the measures the clearance that fits the trace, and the gas at this turn's duty: the line's, or the
-// plateaus where the line is not known.
+// refine gives the measures the line pressures as they are by now (process values come late, and the plateaus show by
+// how much), the clearance that fits the trace, and the gas at this turn's duty: the line's, or the plateaus where the
+// line is not known.
 func (l *Line) refine(w window.Result) {
 	for i := range l.mea {
 		in := &l.mea[i]
+		if p := &l.points[i]; !p.Inferred {
+			in.LinePs, in.LinePd = p.Ps, p.Pd
+		}
 		ps, pd := in.LinePs, in.LinePd
 		for e := range w.Throws[i].Ends {
 			if math.IsNaN(ps) {
