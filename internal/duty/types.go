@@ -5,11 +5,13 @@ type State uint8
 
 // The duty states. Unknown never counts as steady.
 const (
-	Unknown  State = iota
-	Stopped        // no turns
-	Starting       // first turns, or speed outside the stated range
-	Changing       // speed, pressure or load step moving faster than a fair comparison allows
-	Steady
+	Unknown    State = iota
+	Stopped          // no turns
+	Starting         // first turns after a stop or after nothing was known, and below the stated speeds on the way up
+	Changing         // speed, pressure or load step moving faster than a fair comparison allows
+	Steady           // compared with the baseline
+	Unloaded         // no end of the throw does work: its suction valves are held open
+	OutOfRange       // speed outside the stated range, though the machine had been started
 )
 
 // Point is the duty of one turn as seen by one throw: what it is asked to do.

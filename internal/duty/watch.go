@@ -132,12 +132,17 @@ func (w *Watch) Classify(in Input) Point {
 
 	out := w.cfg.MaxRPM > 0 && (in.RPM < w.cfg.MinRPM || in.RPM > w.cfg.MaxRPM)
 	switch {
-	case out:
+	case out && w.start > 0 && in.RPM < w.cfg.MinRPM: // on its way up
 		w.start = max(w.start, w.cfg.WarmTurns)
 		p.State = Starting
+	case out:
+		w.settle = w.cfg.SettleTurns
+		p.State = OutOfRange
 	case w.start > 0:
 		w.start--
 		p.State = Starting
+	case w.idle == [2]bool{true, true}:
+		p.State = Unloaded
 	case late:
 		p.State = Unknown
 	case !known(p.Ps) || !known(p.Pd) || p.Ps <= 0 || p.Pd <= 0:
