@@ -10,14 +10,14 @@ import (
 
 // heard is what vibration says in one block.
 type heard struct {
-	leak   [5]float64 // log-likelihood ratio per path in the order of the hypotheses; NaN where absent
+	leak   [5]vote    // per path in the order of the hypotheses
 	noiseZ [5]float64 // spreads above the usual level
 	best   int        // which pair or the rings stand out: 0 {HE s, CE d}, 1 {HE d, CE s}, 2 rings; -1 none
-	hard   [4]float64 // impacting hard, per group; NaN where absent
-	late   [4]float64 // opening late after its pressure, per group
-	loose  [4]float64 // fluttering, per group
+	hard   [4]vote    // impacting hard, per group
+	late   [4]vote    // opening late after its pressure, per group
+	loose  [4]vote    // fluttering, per group
 	knock  [4]bool    // the opening's impact lies where the crosshead may knock
-	gain   float64    // everything louder or softer alike
+	gain   vote       // everything louder or softer alike
 	shift  float64    // by how much, ln
 }
 
@@ -34,7 +34,7 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApa
 	if !settled {
 		widen = 1.5
 	}
-	out := heard{best: -1, gain: math.NaN()}
+	out := heard{best: -1, gain: silent}
 	paths := [5]pathPlace{p.ends[0].path[0], p.ends[0].path[1], p.ends[1].path[0], p.ends[1].path[1], p.rings}
 	var score [3]float64
 	var any [3]bool
@@ -46,7 +46,7 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApa
 		}
 	}
 	for h, pp := range paths {
-		out.leak[h], out.noiseZ[h] = math.NaN(), math.NaN()
+		out.leak[h], out.noiseZ[h] = silent, math.NaN()
 		d := at(dev, pp.noise)
 		if d == nil || h == hRings && !ringsApart {
 			continue
@@ -76,9 +76,9 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApa
 				z = math.Max(z, q) // the pair is heard, not the member
 			}
 		}
-		out.leak[h] = capped(llr(z))
-		if pairOf[h] != out.best { // louder elsewhere: a leak raises every level somewhat
-			out.leak[h] = math.Min(0, out.leak[h])
+		out.leak[h] = votes(z)
+		if pairOf[h] != out.best { // a leak raises every level somewhat
+			out.leak[h].most(0, "the noise stands out more at the angles of another path")
 		}
 	}
 	out.impacts(p, dev, widen, noise)
@@ -91,44 +91,47 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 	var late [4]float64
 	for h := range 4 {
 		e, g := h/2, h%2
-		o.hard[h] = math.NaN()
+		o.hard[h] = silent
 		open, shut := p.ends[e].struck(g, dev), at(dev, p.ends[e].impact[g][1])
 		hits := at(dev, p.ends[e].hits[g])
 		if open != nil {
 			shift = append(shift, open.Residual)
-			o.hard[h] = llr(open.Z / widen)
+			z := open.Z / widen
+			o.hard[h] = vote{llr: llr(z), raw: llr(z)}
 			// Healthy blocks reach 0.23; 0.35 and three spreads is the rule of vibration.md section 4.
 			if open.Residual < 0.35 {
-				o.hard[h] = math.Min(0, o.hard[h])
-			} else if open.Z/widen > 3 {
-				o.hard[h] = math.Max(advisoryClass, o.hard[h])
+				o.hard[h].most(0, "the opening is less than 1.42 times as hard as usual")
+			} else if z > 3 {
+				o.hard[h].least(advisoryClass)
 			}
 			if shut != nil {
-				o.hard[h] += 0.3 * math.Max(0, llr(shut.Z/widen))
+				o.hard[h].llr += 0.3 * math.Max(0, llr(shut.Z/widen))
 			}
 			if hits != nil && open.Residual >= 0.35 { // a broken plate rattles
-				o.hard[h] += 0.3 * math.Max(0, llr(hits.Z/widen))
+				o.hard[h].llr += 0.3 * math.Max(0, llr(hits.Z/widen))
 			}
-			o.hard[h] = capped(o.hard[h])
+			o.hard[h].llr = capped(o.hard[h].llr)
 		} else if shut != nil {
-			o.hard[h] = math.Max(capLo, math.Min(1, llr(shut.Z/widen)))
+			o.hard[h] = votes(shut.Z / widen)
+			o.hard[h].most(1, "only the closing was heard")
 		}
-		o.late[h] = math.NaN()
+		o.late[h] = silent
 		late[h] = sticking(&p.ends[e], g, dev) / widen
 		if z := late[h]; !math.IsNaN(z) {
-			o.late[h] = capped(llr(z))
+			o.late[h] = votes(z)
 			if open == nil || open.Z < 1 { // a sticking valve tears open harder: without that it is half a witness
-				o.late[h] = math.Min(advisoryClass, o.late[h])
+				o.late[h].most(advisoryClass, "late, but no harder than usual")
 			}
-			if z > 3 && !math.IsNaN(o.hard[h]) {
-				o.hard[h] = math.Min(1, o.hard[h])
+			if z > 3 {
+				o.hard[h].most(1, "the opening is late: a sticking valve tears open harder")
 			}
 		}
 	}
 	for g := range groupName { // both ends of a cylinder late alike is a wrong duty, not two valves sticking
 		a, b := sticking(&p.ends[0], g, dev)/widen, sticking(&p.ends[1], g, dev)/widen
 		if math.Min(a, b) > 1.5 && math.Max(a, b) < 2.5*math.Min(a, b) {
-			o.late[g], o.late[2+g] = math.Min(0, o.late[g]), math.Min(0, o.late[2+g])
+			o.late[g].most(0, "both ends are late alike: a wrong duty, not two valves")
+			o.late[2+g].most(0, "both ends are late alike: a wrong duty, not two valves")
 		}
 	}
 	o.flutter(p, dev, late, widen)
@@ -150,23 +153,28 @@ func (o *heard) flutter(p *place, dev []*duty.Deviation, late [4]float64, widen 
 	}
 	flutters := false
 	for h, d := range hits {
-		o.loose[h] = math.NaN()
+		o.loose[h] = silent
 		open := p.ends[h/2].struck(h%2, dev)
 		if d == nil || open == nil {
 			continue
 		}
-		o.loose[h] = capped(llr(d.Z / widen))
-		if open.Residual >= 0.35 || late[h] < -1 || h != most && !(late[h] > 3) {
-			o.loose[h] = math.Min(0, o.loose[h])
+		o.loose[h] = votes(d.Z / widen)
+		switch {
+		case open.Residual >= 0.35:
+			o.loose[h].most(0, "the opening itself is harder than usual")
+		case late[h] < -1:
+			o.loose[h].most(0, "the impact comes sooner than usual")
+		case h != most && !(late[h] > 3):
+			o.loose[h].most(0, "another group has more extra hits")
 		}
-		if o.loose[h] >= advisoryClass { // what it explains is not sticking as well
-			o.late[h] = math.Min(0, o.late[h])
+		if o.loose[h].llr >= advisoryClass { // what it explains is not sticking as well
+			o.late[h].most(0, "a plate that flutters strikes late as well")
 			flutters = true
 		}
 	}
 	for h := range o.leak {
 		if flutters {
-			o.leak[h] = math.Min(0, o.leak[h])
+			o.leak[h].most(0, "a fluttering plate is loud in the leak band")
 		}
 	}
 }
@@ -192,6 +200,8 @@ func (o *heard) knocks(p *place, dev []*duty.Deviation, rpm float64) {
 	}
 }
 
+const asOne = "all impacts and noise levels have moved alike: that is the accelerometer"
+
 // common judges what all impacts and all noise levels of an accelerometer share: that is the sensor's, not the valves'.
 func (o *heard) common(dev []*duty.Deviation, p *place, shift, noise []float64, widen float64) {
 	if len(shift) < 2 || len(noise) < 3 {
@@ -204,20 +214,21 @@ func (o *heard) common(dev []*duty.Deviation, p *place, shift, noise []float64, 
 		noise[len(noise)-1]-noise[0] < 2.5 && n*m > 0 && math.Abs(n) > 1.5
 	if alike { // no valve is accused of what they all do
 		for h := range 4 {
-			o.leak[h] = math.Min(0, o.leak[h])
+			o.leak[h].most(0, asOne)
 			open := p.ends[h/2].struck(h%2, dev)
 			if open != nil && open.Residual-m < 0.35 {
-				o.hard[h] = math.Min(0, o.hard[h])
+				o.hard[h].most(0, asOne)
 			}
 		}
-		o.leak[hRings] = math.Min(0, o.leak[hRings])
+		o.leak[hRings].most(0, asOne)
 	}
 	if len(shift) < 3 { // too few to tell a sensor by: as it was
 		return
 	}
-	o.shift, o.gain = m, capLo
+	raw := llr(math.Abs(m) / 0.10 / widen)
+	o.shift, o.gain = m, vote{llr: capLo, raw: raw, why: "impacts and noise have not moved alike by a third"}
 	if alike && math.Abs(m) > 0.35 { // vibration.md section 5: the healthy ten-turn maximum is 0.20
-		o.gain = capped(math.Max(advisoryClass, llr(math.Abs(m)/0.10/widen)))
+		o.gain = vote{llr: capped(math.Max(advisoryClass, raw)), raw: raw}
 	}
 }
 

@@ -39,6 +39,7 @@ type Judge struct {
 	layout measure.Layout
 	throws []bench
 	dev    []*duty.Deviation
+	last   *heardLast // what Explain tells; nil before the first block
 }
 
 // bench is one throw's hypotheses and what has been heard on them.
@@ -65,7 +66,7 @@ type trial struct {
 // mark is one block's evidence on one hypothesis. NaN: absent.
 type mark struct {
 	turn       int64
-	llr        [classes]float64
+	vote       [classes]vote
 	g, sd      float64 // pressure amplitude
 	area, aSd  float64 // m², of the deviation, and its standard deviation with all that is uncertain about it
 	loss, lSd  float64 // the same as a share of the path's throughput
@@ -179,13 +180,14 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 	temp := feel(&b.place, j.dev, blk.Settled)
 	vib.knocks(&b.place, j.dev, blk.Point.RPM)
 	b.sharePairs(&vib, &press)
+	j.last = &heardLast{blk: blk, press: press, judged: judged, shown: s.n}
 
 	var out []Finding
 	doubt := [2]bool{}
 	deaf := false
 	for i := range b.cases {
 		c := &b.cases[i]
-		if !c.judgeable(judged) || c.kind == AccelGain && math.IsNaN(vib.gain) {
+		if !c.judgeable(judged) || c.kind == AccelGain && math.IsNaN(vib.gain.llr) {
 			if c.grade > None {
 				out = append(out, c.found)
 			}

@@ -38,10 +38,12 @@ func (b *bench) doubts(c *trial, doubt *[2]bool, deaf *bool) {
 func (b *bench) sharePairs(v *heard, press *[hPressures]fitted) {
 	for _, h := range [2]int{0, 1} {
 		q := partner(h)
-		if math.IsNaN(v.leak[h]) || math.IsNaN(v.leak[q]) {
+		if math.IsNaN(v.leak[h].llr) || math.IsNaN(v.leak[q].llr) {
 			continue
 		}
-		pair := func(yes, no int) { v.leak[no] = math.Min(0, v.leak[no]) }
+		pair := func(yes, no int) {
+			v.leak[no].most(0, b.place.path(yes)+", which blows at the same angles, takes the noise")
+		}
 		hp, qp := press[h].chosen && press[h].llr >= alertClass, press[q].chosen && press[q].llr >= alertClass
 		switch {
 		case hp && qp: // both leak, says pressure: both are heard
@@ -108,24 +110,26 @@ func (b *bench) standingLeak(c *trial) (g float64) {
 
 // mark gathers a block's evidence on one hypothesis.
 func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v *heard, t *felt, doubt [2]bool, deaf bool) mark {
-	nan := math.NaN()
-	m := mark{g: nan, sd: nan, area: nan, aSd: nan, loss: nan, lSd: nan}
-	for k := range m.llr {
-		m.llr[k] = nan
+	m := noMark()
+	end := [2]string{b.place.id + "." + endName[0], b.place.id + "." + endName[1]}
+	withdrawn := ""
+	for e := range doubt {
+		if doubt[e] && (c.end == e || c.end < 0) {
+			withdrawn = "the pressure of " + end[e] + " is in doubt"
+		}
 	}
-	withdrawn := c.end >= 0 && doubt[c.end] || c.end < 0 && (doubt[0] || doubt[1])
+	pressure, vibration, temperature := &m.vote[measure.Pressure], &m.vote[measure.Vibration], &m.vote[measure.Temperature]
 	if c.sensor {
 		if c.kind == AccelGain {
-			m.llr[measure.Vibration] = v.gain
+			*vibration = v.gain
 			m.g = v.shift
 			return m
 		}
-		f := press[c.h]
-		if f.judged {
+		if f := press[c.h]; f.judged {
 			m.g, m.sd = f.g, f.sd
-			m.llr[measure.Pressure] = f.llr
-			if !f.first && f.llr > 0 { // only what explains the block best accuses a sensor
-				m.llr[measure.Pressure] = 0
+			*pressure = f.vote
+			if !f.first { // only what explains the block best accuses a sensor
+				pressure.most(0, "another pattern explains these pressures first")
 			}
 		}
 		return m
@@ -135,53 +139,61 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		return m // a leak blurs the departure that the lag is counted from
 	}
 	explained := b.ringsExplain(c, s)
-	if f := press[c.h]; f.judged && !withdrawn && !explained {
-		switch c.kind {
-		case Leaking:
-			m.llr[measure.Pressure], m.g, m.sd = f.llr, f.g, f.sd
-			m.slowSignal = c.slow.Step(f.z) >= 1
-			if c.grade == None && f.g < shadow*b.standingLeak(c) {
-				m.llr[measure.Pressure], m.slowSignal = math.Min(0, f.llr), false
-			}
-		case ImpactingHard: // a broken plate also leaks: that is its second witness
-			if f.chosen && f.llr > 0 && v.hard[c.h] >= 1 {
-				m.llr[measure.Pressure] = f.llr
-			}
+	f := press[c.h]
+	switch {
+	case !f.judged:
+	case withdrawn != "":
+		pressure.why = withdrawn
+	case explained:
+		pressure.why = "the rings are known to leak, and with the other end idle they read as this"
+	case c.kind == Leaking:
+		*pressure, m.g, m.sd = f.vote, f.g, f.sd
+		m.slowSignal = c.slow.Step(f.z) >= 1
+		if c.grade == None && f.g < shadow*b.standingLeak(c) {
+			pressure.most(0, "less than a twentieth of the leak that stands beside it")
+			m.slowSignal = false
+		}
+	case c.kind == ImpactingHard: // a broken plate also leaks: that is its second witness
+		if f.chosen && f.llr > 0 && v.hard[c.h].llr >= 1 {
+			*pressure = f.vote
 		}
 	}
-	if c.kind == OpeningLate && !withdrawn && v.late[c.h] >= 1 { // a loss alone may be anything: dirt, gas, speed
+	if c.kind == OpeningLate && withdrawn == "" && v.late[c.h].llr >= 1 { // a loss alone may be anything: dirt, gas, speed
 		ep := &b.place.ends[c.end]
 		z := beyondCrossing(j.dev, ep.open[c.group], ep.late[c.group])
 		if d := at(j.dev, ep.loss[c.group]); d != nil && !math.IsNaN(z) {
-			m.llr[measure.Pressure] = capped(llr(math.Min(z, d.Z))) // late and costly
+			*pressure = votes(math.Min(z, d.Z)) // late and costly
 		}
 	}
 	// Hard impacts and late openings are heard, or they are not there: other classes only join in. A leak that is known
 	// explains the warm cover.
-	heardIt := c.kind == Leaking || c.kind == ImpactingHard && v.hard[c.h] >= 1 || c.kind == OpeningLate && v.late[c.h] >= 1 ||
-		c.kind == Fluttering && v.loose[c.h] >= 1
+	heardIt := c.kind == Leaking || c.kind == ImpactingHard && v.hard[c.h].llr >= 1 || c.kind == OpeningLate && v.late[c.h].llr >= 1 ||
+		c.kind == Fluttering && v.loose[c.h].llr >= 1
 	if c.group >= 0 && heardIt && !leaks {
-		m.llr[measure.Temperature] = t.group[c.h]
+		*temperature = t.group[c.h]
 		m.valve = t.valve[c.h]
+	}
+	if deaf {
+		vibration.why = "the accelerometer is in doubt"
 	}
 	switch {
 	case c.packing():
 		b.markPacking(c, &m, v, t)
 	case c.kind == Leaking:
 		if !deaf && !explained {
-			m.llr[measure.Vibration] = v.leak[c.h]
+			*vibration = v.leak[c.h]
 		}
 		if c.h == hRings {
 			if s.noRings {
 				m.ambiguous = []string{b.place.group(crank.HE, suction), b.place.group(crank.CE, suction)}
 			}
-			m.llr[measure.Temperature] = t.rings
-			if c.grade == None && b.standingLeak(c) > 0 { // a valve that leaks warms the discharge gas as well
-				m.llr[measure.Temperature] = math.Min(0, t.rings)
+			*temperature = t.rings
+			if c.grade == None && b.standingLeak(c) > 0 {
+				temperature.most(0, "a valve that leaks warms the discharge gas as well")
 			}
 		} else {
 			m.ambiguous = s.structural(&b.place, c.end, c.group)
-			if p := press[c.h]; !(p.chosen && p.llr >= alertClass) && pairOf[c.h] == v.best && v.leak[c.h] > 0 {
+			if !(f.chosen && f.llr >= alertClass) && pairOf[c.h] == v.best && v.leak[c.h].llr > 0 {
 				q := partner(c.h)
 				if b.place.ends[q/2].works {
 					m.ambiguous = append(m.ambiguous, b.place.group(q/2, q%2))
@@ -190,19 +202,29 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			if m.valve != "" { // a leaking packing warms no cover; it may well be heard
 				m.ambiguous = slices.DeleteFunc(m.ambiguous, func(s string) bool { return s == b.place.id+".packing" })
 			}
-			if b.quietPacking(v, t) && c.end == crank.CE && c.group == suction && m.llr[measure.Pressure] > 0 {
-				m.llr[measure.Pressure] = 0 // the packing's case now
+			if b.quietPacking(v, t) && c.end == crank.CE && c.group == suction {
+				pressure.most(0, "valves quiet and gas no warmer: the packing's case")
 			}
 		}
 	case c.kind == ImpactingHard && !deaf:
-		m.llr[measure.Vibration] = v.hard[c.h]
-		if v.knock[c.h] && v.hard[c.h] > 0 {
+		*vibration = v.hard[c.h]
+		if v.knock[c.h] && v.hard[c.h].llr > 0 {
 			m.ambiguous = append(m.ambiguous, b.place.id+".crosshead")
 		}
 	case c.kind == OpeningLate && !deaf:
-		m.llr[measure.Vibration] = v.late[c.h]
+		*vibration = v.late[c.h]
 	case c.kind == Fluttering && !deaf:
-		m.llr[measure.Vibration] = v.loose[c.h]
+		*vibration = v.loose[c.h]
+	}
+	return m
+}
+
+// noMark is a block that says nothing.
+func noMark() mark {
+	nan := math.NaN()
+	m := mark{g: nan, sd: nan, area: nan, aSd: nan, loss: nan, lSd: nan}
+	for k := range m.vote {
+		m.vote[k] = silent
 	}
 	return m
 }
@@ -210,12 +232,12 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 // quietPacking tells whether a crank-end suction pattern must be the packing: valves quiet, gas no warmer. Both
 // witnesses must have been heard.
 func (b *bench) quietPacking(v *heard, t *felt) bool {
-	return v.leak[2] <= -1 && v.noiseZ[2] < 1 && !math.IsNaN(t.ofTd) && t.ofTd < 1
+	return v.leak[2].llr <= -1 && v.noiseZ[2] < 1 && !math.IsNaN(t.ofTd) && t.ofTd < 1
 }
 
 func (b *bench) markPacking(c *trial, m *mark, v *heard, t *felt) {
 	if !b.quietPacking(v, t) {
-		m.llr[measure.Pressure] = math.Min(0, m.llr[measure.Pressure])
+		m.vote[measure.Pressure].most(0, "a packing is taken for it only where the valves are quiet and the gas no warmer")
 	}
 	m.ambiguous = []string{b.place.group(crank.CE, suction)}
 }

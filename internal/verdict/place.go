@@ -115,3 +115,11 @@ func (ep *endPlace) struck(g int, dev []*duty.Deviation) *duty.Deviation {
 
 // group gives the name of a valve group.
 func (p *place) group(end, g int) string { return p.id + "." + endName[end] + "." + groupName[g] }
+
+// path gives the name of a leak's path.
+func (p *place) path(h int) string {
+	if h == hRings {
+		return p.id + ".rings"
+	}
+	return p.group(h/2, h%2)
+}

@@ -40,7 +40,7 @@ type fitted struct {
 	z      float64 // amplitude in spreads, turned so that positive means present
 	g, sd  float64 // amplitude in the hypothesis's unit and its spread
 	areaZ  float64 // of the leak area, NaN when there is none
-	llr    float64
+	vote
 }
 
 // sight is one block laid out for the contrast.
@@ -204,7 +204,7 @@ func (s *sight) contrast() (out [hPressures]fitted) {
 		}
 		took[best] = true
 		pick.chosen, pick.first = true, round == 0
-		pick.llr = capped(llr(pick.z))
+		pick.vote = votes(pick.z)
 		out[best] = pick
 		s.take(best, pick.g)
 	}
@@ -213,9 +213,9 @@ func (s *sight) contrast() (out [hPressures]fitted) {
 			continue
 		}
 		f, _, _ := s.fit(h)
-		f.llr = capped(llr(f.z))
-		if f.judged && f.llr > 0 && f.z < 4 {
-			f.llr = 0 // not the best explanation and no strong one: no evidence either way
+		f.vote = votes(f.z)
+		if f.judged && f.z < 4 { // not the best explanation and no strong one: no evidence either way
+			f.most(0, "other patterns explain these pressures better")
 		}
 		out[h] = f
 	}

@@ -84,8 +84,8 @@ func (j *Judge) Snapshot() Snapshot {
 					a, b := num(m.loss), num(m.lSd)
 					ms.Loss, ms.LossSD = &a, &b
 				}
-				for k, l := range m.llr {
-					ms.LLR[k] = num(l)
+				for k, v := range m.vote {
+					ms.LLR[k] = num(v.llr)
 				}
 				cs.Marks = append(cs.Marks, ms)
 			}
@@ -137,7 +137,7 @@ func (c *trial) restore(cs caseSnap) {
 			m.loss, m.lSd = float64(*ms.Loss), float64(*ms.LossSD)
 		}
 		for k, l := range ms.LLR {
-			m.llr[k] = float64(l)
+			m.vote[k] = vote{llr: float64(l), raw: math.NaN()}
 		}
 		c.marks = append(c.marks, m)
 	}

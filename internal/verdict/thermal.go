@@ -9,9 +9,9 @@ import (
 
 // felt is what temperatures say in one block.
 type felt struct {
-	group [4]float64 // NaN where absent
-	valve [4]string  // the valve whose cover stands out of its group, else ""
-	rings float64
+	group [4]vote
+	valve [4]string // the valve whose cover stands out of its group, else ""
+	rings vote
 	ofTd  float64 // z of the discharge temperature's excess, NaN where absent
 }
 
@@ -26,7 +26,7 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 	if !settled {
 		widen = 3 // metal follows a load change in minutes, not turns
 	}
-	out := felt{rings: math.NaN(), ofTd: math.NaN()}
+	out := felt{rings: silent, ofTd: math.NaN()}
 	n := 0.0
 	for e := range p.ends {
 		if d := at(dev, p.ends[e].excess); d != nil {
@@ -39,14 +39,17 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 	}
 	if n > 0 {
 		out.ofTd /= n
-		out.rings = math.Max(acquit, capped(llr(out.ofTd)))
+		out.rings = votes(out.ofTd)
+		out.rings.least(acquit)
 	}
 	common := [2]float64{p.warmth(dev, suction), p.warmth(dev, discharge)}
 	for h := range 4 {
 		e, g := h/2, h%2
-		out.group[h] = math.NaN()
+		out.group[h] = silent
 		if !math.IsNaN(out.ofTd) { // both ends share the discharge pipe: it supports, it names nothing
-			out.group[h] = math.Max(acquit, math.Min(1, llr(out.ofTd)))
+			out.group[h] = votes(out.ofTd)
+			out.group[h].least(acquit)
+			out.group[h].most(1, "both ends share the discharge pipe")
 		}
 		best, bestZ := "", math.Inf(-1)
 		bestK := 0.0
@@ -63,9 +66,10 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 		if best == "" {
 			continue
 		}
-		out.group[h] = math.Max(acquit, capped(llr(bestZ)))
+		out.group[h] = votes(bestZ)
+		out.group[h].least(acquit)
 		if bestK < coverStands {
-			out.group[h] = math.Min(0, out.group[h])
+			out.group[h].most(0, "no cover stands 3 K out of its group")
 		} else if bestZ > 3 {
 			out.valve[h] = best
 		}

@@ -12,7 +12,7 @@ import (
 func (c *trial) middle(class int) float64 {
 	var v []float64
 	for _, m := range c.marks {
-		if x := m.llr[class]; !math.IsNaN(x) {
+		if x := m.vote[class].llr; !math.IsNaN(x) {
 			v = append(v, x)
 		}
 	}
@@ -44,7 +44,7 @@ func (c *trial) weigh() (w weight) {
 		}
 		n := 0
 		for _, b := range last {
-			if b.llr[k] >= advisoryClass {
+			if b.vote[k].llr >= advisoryClass {
 				n++
 			}
 		}
@@ -86,7 +86,7 @@ func (j *Judge) grade(c *trial, blk duty.Block) {
 		if c.grade == None {
 			c.since = blk.Turn1
 			for _, m := range c.marks {
-				if slices.ContainsFunc(m.llr[:], func(l float64) bool { return l >= advisoryClass }) {
+				if slices.ContainsFunc(m.vote[:], func(v vote) bool { return v.llr >= advisoryClass }) {
 					c.since = m.turn
 					break
 				}

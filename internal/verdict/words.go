@@ -64,38 +64,43 @@ func (j *Judge) severity(f *Finding, c *trial) {
 	}
 }
 
+// circle is the deviations of one class that bear on a hypothesis: sign +1 where more speaks for it, nil where either does.
+type circle struct {
+	class measure.Class
+	idx   []int
+	sign  []float64
+	most  int // how many are worth telling
+}
+
 // evidence lists what speaks for the finding in the present block, strongest first: the class's weight is shared out
 // by each feature's part in the chi-square.
 func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Evidence {
 	m := &c.marks[len(c.marks)-1]
 	var out []Evidence
-	share := func(class measure.Class, idx []int, sign []float64, most int) {
-		total := m.llr[class]
-		if math.IsNaN(total) || total <= 0 {
-			return
-		}
+	for _, s := range j.circles(b, c, press) {
 		var es []Evidence
-		sum := 0.0
-		for k, i := range idx {
-			d := at(j.dev, i)
-			if d == nil || (sign != nil && d.Residual*sign[k] <= 0) || math.Abs(d.Z) < 1 {
-				continue
+		for _, w := range j.weighed(b, c, s, m.vote[s.class].llr) {
+			if w.Weight > 0 {
+				es = append(es, Evidence{Class: w.Class, Text: w.Text, Feature: w.Feature, Value: w.Value, Expected: w.Expected, Z: w.Z, LLR: w.Weight})
 			}
-			q := sq(clip(d.Z, 12))
-			sum += q
-			text := say(j.layout[i], d)
-			if n := j.layout[i].Name; n == "leak_area_mm2" || n == "leak_percent" {
-				text = j.sayLeak(b.path(c.h), b.common(c.h, j.dev), j.layout[i].Subject)
-			}
-			es = append(es, Evidence{Class: class, Text: text, Feature: i, Value: d.Value, Expected: d.Expected, Z: d.Z, LLR: q})
-		}
-		for i := range es {
-			es[i].LLR *= total / sum
 		}
 		slices.SortStableFunc(es, func(x, y Evidence) int { return cmp.Compare(y.LLR, x.LLR) })
-		out = append(out, es[:min(most, len(es))]...)
+		out = append(out, es[:min(s.most, len(es))]...)
 	}
+	slices.SortStableFunc(out, func(x, y Evidence) int { return cmp.Compare(y.LLR, x.LLR) })
+	return out
+}
 
+// text puts a deviation into words as it bears on a hypothesis.
+func (j *Judge) text(b *bench, c *trial, i int, d *duty.Deviation) string {
+	if n := j.layout[i].Name; c.kind == Leaking && (n == "leak_area_mm2" || n == "leak_percent") {
+		return j.sayLeak(b.path(c.h), b.common(c.h, j.dev), j.layout[i].Subject)
+	}
+	return say(j.layout[i], d)
+}
+
+// circles gathers what bears on a hypothesis.
+func (j *Judge) circles(b *bench, c *trial, press *[hPressures]fitted) (out []circle) {
 	var idx []int
 	var sign []float64
 	if c.kind == OpeningLate {
@@ -122,30 +127,36 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 			idx, sign = append(idx, i), append(sign, 1)
 		}
 	}
-	share(measure.Pressure, idx, sign, 5)
-
+	out = append(out, circle{measure.Pressure, idx, sign, 5})
+	vibration := func(most int, idx ...int) {
+		sign := make([]float64, len(idx))
+		for k := range sign {
+			sign[k] = 1
+		}
+		out = append(out, circle{measure.Vibration, idx, sign, most})
+	}
 	switch {
 	case c.kind == Leaking && !c.packing():
-		idx = []int{b.path(c.h).noise}
+		noise := b.path(c.h).noise
 		if c.h < hRings { // the partner, which acts at the same angles, may be the louder one
-			if d, q := at(j.dev, idx[0]), at(j.dev, b.path(partner(c.h)).noise); q != nil && (d == nil || d.Z < 0.7*q.Z) {
-				idx[0] = b.path(partner(c.h)).noise
+			if d, q := at(j.dev, noise), at(j.dev, b.path(partner(c.h)).noise); q != nil && (d == nil || d.Z < 0.7*q.Z) {
+				noise = b.path(partner(c.h)).noise
 			}
 		}
-		share(measure.Vibration, idx, []float64{1}, 1)
+		vibration(1, noise)
 	case c.kind == ImpactingHard:
 		ep := &b.place.ends[c.end]
-		idx = []int{ep.impact[c.group][0], ep.impact[c.group][1], ep.hits[c.group]}
-		if at(j.dev, idx[0]) == nil {
-			idx[0] = ep.plain[c.group]
+		open := ep.impact[c.group][0]
+		if at(j.dev, open) == nil {
+			open = ep.plain[c.group]
 		}
-		share(measure.Vibration, idx, []float64{1, 1, 1}, 2)
+		vibration(2, open, ep.impact[c.group][1], ep.hits[c.group])
 	case c.kind == Fluttering:
 		ep := &b.place.ends[c.end]
-		share(measure.Vibration, []int{ep.hits[c.group], ep.onset[c.group], ep.lag[c.group]}, []float64{1, 1, 1}, 3)
+		vibration(3, ep.hits[c.group], ep.onset[c.group], ep.lag[c.group])
 	case c.kind == OpeningLate:
 		ep := b.place.ends[c.end]
-		share(measure.Vibration, []int{ep.onset[c.group], ep.lag[c.group], ep.impact[c.group][0]}, []float64{1, 1, 1}, 3)
+		vibration(3, ep.onset[c.group], ep.lag[c.group], ep.impact[c.group][0])
 	case c.kind == AccelGain:
 		idx = nil
 		for e := range b.place.ends {
@@ -153,7 +164,7 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 				idx = append(idx, b.place.ends[e].impact[g][0])
 			}
 		}
-		share(measure.Vibration, idx, nil, 4)
+		out = append(out, circle{measure.Vibration, idx, nil, 4})
 	}
 	if c.group >= 0 {
 		idx = nil
@@ -163,11 +174,10 @@ func (j *Judge) evidence(b *bench, c *trial, press *[hPressures]fitted) []Eviden
 		if len(idx) == 0 {
 			idx = []int{b.place.ends[c.end].excess}
 		}
-		share(measure.Temperature, idx, nil, 1)
+		out = append(out, circle{measure.Temperature, idx, nil, 1})
 	} else if c.h == hRings {
-		share(measure.Temperature, []int{b.place.ends[0].excess, b.place.ends[1].excess}, []float64{1, 1}, 1)
+		out = append(out, circle{measure.Temperature, []int{b.place.ends[0].excess, b.place.ends[1].excess}, []float64{1, 1}, 1})
 	}
-	slices.SortStableFunc(out, func(x, y Evidence) int { return cmp.Compare(y.LLR, x.LLR) })
 	return out
 }
 
