@@ -32,6 +32,10 @@ type end struct {
 	disch   group
 	idle    bool
 	late    float64 // degrees after the outer dead centre; 0: none
+
+	stepPocket, addPocket float64 // of the load step, and what the script adds; shares of the swept volume
+	stepLate, addLate     float64 // likewise, degrees
+
 	hA      float64 // W/K, wall heat coefficient times surface
 	wall    float64 // K
 	ring    float64 // kg/s into the end past the rings
@@ -45,14 +49,10 @@ type end struct {
 
 // load puts a load step in force. Gas that a pocket adds or takes with it is at the cylinder's state.
 func (e *end) load(s skid.Step, first bool) {
-	vc := e.clear0 + s.Pocket[e.name]*e.swept
-	if !first {
-		e.m *= (e.v - e.vc + vc) / e.v
-	}
-	e.v += vc - e.vc
-	e.vc = vc
+	e.stepPocket, e.stepLate = s.Pocket[e.name], s.Late[e.name]
+	e.pocket(e.stepPocket+e.addPocket, first)
 	e.idle = s.Idle[e.name]
-	e.late = s.Late[e.name]
+	e.late = e.stepLate + e.addLate
 	for i := range e.suction.plates {
 		q := &e.suction.plates[i]
 		q.hold = 0
@@ -61,6 +61,16 @@ func (e *end) load(s skid.Step, first bool) {
 			q.x, q.v = q.d.Lift, 0
 		}
 	}
+}
+
+// pocket sets the clearance added to that of the cylinder, a share of the swept volume.
+func (e *end) pocket(share float64, first bool) {
+	vc := e.clear0 + share*e.swept
+	if !first {
+		e.m *= (e.v - e.vc + vc) / e.v
+	}
+	e.v += vc - e.vc
+	e.vc = vc
 }
 
 // volume at a piston travel from the head-end dead centre; stroke in m.

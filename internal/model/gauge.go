@@ -32,6 +32,7 @@ type channel struct {
 	passage    *section
 	gain, zero float64
 	drift      float64 // Pa, scripted
+	spoil      spoil   // scripted faults of the chain
 	grass      float64 // Pa rms
 	// acceleration
 	accel *shaker
@@ -48,6 +49,8 @@ type marker struct {
 	back   bool      // the pulse lies before the mark: its trailing edge is the active one
 	volts  float64
 	noise  float64 // V rms
+	faults marks
+	odd    *rand.Rand
 }
 
 func (m *Machine) buildChannels(seed uint64) error {
@@ -59,7 +62,7 @@ func (m *Machine) buildChannels(seed uint64) error {
 		}
 		gain, off := sc.Scale(m.bits)
 		c := &channel{id: sc.ID, input: sc.Input, kind: sc.Kind, perValue: 1 / gain, offset: -off / gain,
-			top: float64(int64(1)<<(m.bits-1)) - 1, gain: 1, rnd: stream(seed, 1000+uint64(sc.Input))}
+			top: float64(int64(1)<<(m.bits-1)) - 1, gain: 1, rnd: stream(seed, 1000+uint64(sc.Input)), spoil: healthy}
 		c.noise = adcNoise * c.top * m.par.Noise
 		m.inputs = max(m.inputs, sc.Input+1)
 		switch sc.Kind {
@@ -80,6 +83,7 @@ func (m *Machine) buildChannels(seed uint64) error {
 			if sc.ID == m.sk.Phase.Channel {
 				m.mark = newMarker(&m.sk.Phase, sc)
 				m.mark.noise *= m.par.Noise
+				m.mark.odd = stream(seed, 5)
 			}
 		}
 		m.chans = append(m.chans, c)
@@ -122,6 +126,7 @@ func (c *channel) slow(m *Machine, now float64) {
 	if tr := m.plan.zero[c.id]; tr != nil {
 		c.drift = tr.at(now)
 	}
+	c.spoil.slow(m, c.id, now)
 }
 
 // convert reads the channel's quantity at the present sample and gives the converter's code.
@@ -136,7 +141,7 @@ func (c *channel) convert(m *Machine) (int32, bool) {
 			}
 			v = c.passage.next(v)
 		}
-		v = v*c.gain + c.zero + c.drift
+		v = v*c.gain*c.spoil.gain + c.zero + c.drift
 		if c.grass > 0 {
 			v += c.grass * c.rnd.NormFloat64()
 		}
@@ -149,10 +154,17 @@ func (c *channel) convert(m *Machine) (int32, bool) {
 		}
 	}
 	x := v*c.perValue + c.offset
+	if c.spoil.any {
+		x = c.spoil.wire(x, c, m)
+	}
 	if c.noise > 0 {
 		x += c.noise * c.rnd.NormFloat64()
 	}
 	x = math.RoundToEven(x)
+	if c.spoil.flat {
+		x = c.spoil.last
+	}
+	c.spoil.last = x
 	switch {
 	case x > c.top:
 		return int32(c.top), true
@@ -193,6 +205,11 @@ func newMarker(p *skid.Phase, c *skid.Channel) *marker {
 // on the mark.
 func (k *marker) read(m *Machine) {
 	a := math.Mod(m.theta*180/math.Pi, 360)
+	if k.faults.slip != 0 {
+		a = math.Mod(a-k.faults.slip+720, 360)
+	}
+	k.faults.draw(a, k.odd)
+	turned := a
 	if k.back {
 		a = 360 - a
 	}
@@ -215,7 +232,13 @@ func (k *marker) read(m *Machine) {
 	}
 	for _, p := range [2]float64{before, next} {
 		up, down := (a-p+k.half)/(2*k.half), (k.width+k.half-(a-p))/(2*k.half)
+		if k.faults.miss && (p == 0 || p == 360) {
+			continue
+		}
 		f = max(f, min(up, down))
+	}
+	if k.faults.extra {
+		f = max(f, min((turned-k.faults.at+k.half)/(2*k.half), (k.width+k.half-(turned-k.faults.at))/(2*k.half)))
 	}
 	k.volts = k.lo + (k.hi-k.lo)*min(max(f, 0), 1)
 }

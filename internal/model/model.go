@@ -6,6 +6,20 @@
 // It emits: raw counts of every channel; process values; one Truth per end and turn, half a turn after it closed.
 // When it cannot: New refuses a skid without line pressures, or a script that names what the skid does not have.
 //
+// What can go wrong with it, by the name in a Script (units beside the constants in script.go):
+//
+//	valves      ValveLeak, Broken (plate cracked: harder blows), Missing (a piece gone: hole, harder blows, rattle),
+//	            Sticky (to the seat: opens late and hard; 0.02 to 0.1), Gummed (to the stop: closes late and hard;
+//	            0.002 to 0.01), Springs (weak 0.3: closes late; stiff 3 to 5: flutters)
+//	cylinder    RingLeak, PackingLeak
+//	load        LoadStep, Speed, SuctionPressure, DischargePressure, SuctionTemp; Pocket and LateClosing move a variable
+//	            pocket and stepless control on top of the load step; Recycle
+//	pressure    PressureZero (with Over: a drift), PressureGain
+//	vibration   AccelGain
+//	any channel Clip, OpenCircuit, Flat, Hum, Noisy, Swapped
+//	shaft mark  PhaseSlip, ExtraPulses, MissedPulses
+//	readings    FrozenProcess
+//
 // The gas is ideal with a constant R·Z and the volume isentropic exponent of the duty it was built for. Each end is one
 // well-mixed volume with an open-system energy balance (methods: Bloch and Hoefner, Reciprocating Compressors, 1996;
 // valve and cylinder equations as in Brun and Kurz, Compression Machinery for Oil and Gas, 2019, ch. 5).
@@ -69,6 +83,8 @@ type Machine struct {
 	forgotten    int            // readings before history[0]
 	historyEvery int64
 	truths       []Truth
+	loose        *rand.Rand // rattle of loose pieces
+	swaps        []exchange
 }
 
 // harmonic is one order of a periodic quantity, as a share: a·cos(nθ) + b·sin(nθ).
@@ -114,6 +130,7 @@ func New(sk *skid.Skid, s Script, o Options) (*Machine, error) {
 	m.noz = newNozzle(m.par.Gas.K)
 	m.scatter = stream(o.Seed, 1)
 	m.procNoise = stream(o.Seed, 2)
+	m.loose = stream(o.Seed, 4)
 	for _, h := range m.par.Ripple {
 		if h.Order < 1 || h.Order > maxOrder {
 			return nil, fmt.Errorf("model: ripple order %d is outside 1 to %d", h.Order, maxOrder)
@@ -130,6 +147,7 @@ func New(sk *skid.Skid, s Script, o Options) (*Machine, error) {
 	if err := m.buildChannels(o.Seed); err != nil {
 		return nil, err
 	}
+	m.wireSwaps()
 	m.historyEvery = int64(m.rate/4/slowEvery+0.5) * slowEvery
 	if m.historyEvery == 0 {
 		m.historyEvery = slowEvery
@@ -175,6 +193,9 @@ func (m *Machine) Fill(b *acq.Block, n int) {
 			if clipped && !b.Clip {
 				b.Clip, b.Note = true, "converter overload on "+c.id
 			}
+		}
+		for k := range m.swaps {
+			m.swaps[k].apply(b, i)
 		}
 	}
 }
@@ -248,7 +269,7 @@ func (m *Machine) slow() {
 	ahead := t + slowEvery*m.dt
 	m.dOm = (m.plan.speedAt(ahead)*math.Pi/30 - m.omega) / slowEvery
 	for i, s := range m.stages {
-		s.aim(m.plan.line(i, ahead))
+		s.aim(m.recycled(i, ahead))
 	}
 	if st := int(m.plan.step.at(t)); st != m.step {
 		m.setStep(st, false)
@@ -259,6 +280,12 @@ func (m *Machine) slow() {
 	for _, c := range m.chans {
 		c.slow(m, t)
 	}
+	if m.mark != nil {
+		m.mark.faults.slow(m, t)
+	}
+	for i := range m.swaps {
+		m.swaps[i].on = m.swaps[i].track.at(t) > 0.5
+	}
 	if len(m.truths) > truthsKept {
 		m.truths = append([]Truth(nil), m.truths[truthsKept/2:]...)
 	}
@@ -267,7 +294,7 @@ func (m *Machine) slow() {
 			m.forgotten += historyKept / 2
 			m.history = append(m.history[:0], m.history[historyKept/2:]...)
 		}
-		m.history = append(m.history, m.process())
+		m.history = append(m.history, m.reading(t))
 	}
 }
 

@@ -26,6 +26,24 @@ const (
 	Sticky                        // valve id; adhesion as a share of line pressure on top of the healthy one
 	AccelGain                     // channel id; factor on the accelerometer, 0: dead
 	PressureZero                  // channel id; Pa added to what the transmitter shows
+
+	Missing       // valve id; share of the sealing element that has broken away, 0..1: a hole, harder blows, a rattle
+	Gummed        // valve id; adhesion of the plate to its stop, share of line pressure (0.01 is much): closes late, sits hard
+	Springs       // valve id; factor on its spring forces: below 1 weak (late closing), above 2 too stiff (flutter)
+	Pocket        // end ("t1.he"); clearance added to that of the load step, share of the end's swept volume
+	LateClosing   // end; degrees added to the load step's late suction closing
+	Recycle       // stage; share of the delivered gas that comes back to suction
+	PressureGain  // channel id; factor on what the transmitter shows
+	Clip          // channel id; share of the converter's full scale at which the signal is cut off; 1: not
+	OpenCircuit   // channel id; 1: the cable is open, the input hears mains; 0: mended
+	Flat          // channel id; 1: the converter repeats its last code; 0: mended
+	Hum           // channel id; mains added to the signal, amplitude as a share of full scale
+	Noisy         // channel id; noise added to the signal, rms as a share of full scale
+	Swapped       // two channel ids with a blank between: 1: their cables are exchanged; 0: as they should be
+	PhaseSlip     // none; degrees by which the marks come later than the skid says
+	ExtraPulses   // none; share of turns with a pulse where none belongs
+	MissedPulses  // none; share of turns whose mark is missing
+	FrozenProcess // none; 1: the process values stay what they were; 0: they move again
 )
 
 // MM2 is a square millimetre in m².
@@ -98,6 +116,7 @@ type plan struct {
 	ring, packing map[string]*track
 	accelGain     map[string]*track
 	zero          map[string]*track
+	more
 }
 
 func newPlan(sk *skid.Skid, s Script, par Params) (plan, error) {
@@ -151,6 +170,7 @@ func newPlan(sk *skid.Skid, s Script, par Params) (plan, error) {
 			p.zero[c.ID] = &track{}
 		}
 	}
+	p.more = newMore(sk, lines)
 	changes := append([]Change{}, s.Changes...)
 	sort.SliceStable(changes, func(i, j int) bool { return changes[i].At < changes[j].At })
 	for _, c := range changes {
@@ -238,6 +258,24 @@ func (p *plan) put(sk *skid.Skid, c Change) error {
 		return named(p.accelGain, false)
 	case PressureZero:
 		return named(p.zero, false)
+	case Swapped:
+		return p.swap(c)
+	}
+	if m := p.byName(c.What); m != nil {
+		if err := permitted(c); err != nil {
+			return err
+		}
+		return named(m, false)
+	}
+	if tr := p.single(c.What); tr != nil {
+		if c.Where != "" {
+			return fmt.Errorf("this concerns the whole machine, not %q", c.Where)
+		}
+		if err := permitted(c); err != nil {
+			return err
+		}
+		tr.moves = append(tr.moves, c)
+		return nil
 	}
 	return fmt.Errorf("unknown quantity %d", c.What)
 }

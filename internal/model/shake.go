@@ -11,7 +11,7 @@ import (
 // cylinder, leak hiss well below); a real mounting would need its own.
 const (
 	refSpeed   = 4.0  // m/s, stop impact that gives a valve's reference peak
-	hissRef    = 0.40 // m/s² rms in the leak band from a jet of one per cent of a throw's throughput at a fully choked ratio
+	hissRef    = 0.45 // m/s² rms in the leak band from a jet of one per cent of a throw's throughput at a fully choked ratio
 	flowShare  = 0.08 // acoustic efficiency of open-valve flow against a leak jet
 	floorWhite = 0.2  // m/s² rms, accelerometer and cable, whole band
 	floorWork  = 0.5  // m/s² rms at rated speed, running gear, falling above about 2 kHz
@@ -144,7 +144,7 @@ func (t *throw) strike(m *Machine, q *plate, h hit, at float64) {
 			bounce = q.d.Stop
 		}
 		a := b.peak * h.speed / refSpeed * (q.d.Mass / q.healthy.Mass) * (1 + bounce) / 1.2
-		a *= 1 + 1.6*q.broken
+		a *= 1 + 1.6*max(q.broken, min(1, missingWeakens*q.missing))
 		if sc := m.par.Scatter; sc > 0 {
 			a *= math.Exp(0.1 * sc * s.rnd.NormFloat64())
 		}
@@ -154,6 +154,9 @@ func (t *throw) strike(m *Machine, q *plate, h hit, at float64) {
 		for _, c := range contactShape {
 			s.blows = append(s.blows, blow{due: at + b.delay + c.at*contact*s.rate, amp: a * c.share, valve: q.index, stop: h.stop})
 		}
+	}
+	if q.missing > 0 {
+		t.rattle(m, q, h, at)
 	}
 }
 

@@ -15,6 +15,9 @@ type plate struct {
 	hold      float64 // m, how far something holds it open: unloader or late closing
 	sticks    float64 // this opening's adhesion over the nominal one
 	broken    float64 // 0 whole .. 1
+	missing   float64 // share of the sealing element that is gone
+	springs   float64 // factor on the spring forces
+	grip      float64 // adhesion to the stop, share of line pressure
 	leak      float64 // m²
 	adhesion  float64 // share of line pressure
 	perLift   float64 // FlowArea/Lift
@@ -35,7 +38,9 @@ const heard = 0.1
 // refresh puts faults into the plate's mechanics: a broken plate has lost some mass and springs and bounces more.
 func (q *plate) refresh() {
 	q.d = q.healthy
-	b := q.broken
+	q.d.Stiffness *= q.springs
+	q.d.Preload *= q.springs
+	b := max(q.broken, min(1, missingWeakens*q.missing))
 	q.d.Mass *= 1 - 0.25*b
 	q.d.Stiffness *= 1 - 0.5*b
 	q.d.Preload *= 1 - 0.6*b
@@ -51,6 +56,8 @@ func (q *plate) force(dp, line float64) float64 {
 	f := q.d.ForceArea*dp - q.d.Preload - q.d.Stiffness*q.x - q.d.Damping*q.v
 	if q.x == 0 {
 		f -= q.adhesion * q.sticks * line * q.d.ForceArea
+	} else if q.grip > 0 && q.x >= q.d.Lift {
+		f += q.grip * q.sticks * line * q.d.ForceArea
 	}
 	return f
 }
