@@ -35,6 +35,7 @@ type cog struct {
 	open     bool
 	mark0    float64
 	bias     []float64 // pitches by which each mark comes late of itself: teeth cut unevenly, an uneven speed
+	swings   swings
 	marks    []float64 // the open turn's further marks; NaN: lost
 	q        Quality
 	nLost    int     // teeth lost in the open turn
@@ -71,7 +72,7 @@ func newCog(cfg *Config, r *ring, holes *spans) *cog {
 	n := len(at) - 1
 	c := &cog{det: newToothDetector(cfg, r, holes), ring: r, at: at, n: n, minT: cfg.Rate * 60 / cfg.MaxRPM, maxT: cfg.Rate * 60 / cfg.MinRPM,
 		keep: cfg.KeepSeconds * cfg.Rate, hist: periods{rate: cfg.Rate}, marks: make([]float64, 0, n), past: make([]pulse, 0, 2*n+24),
-		bias: make([]float64, n)}
+		bias: make([]float64, n), swings: swings{last: make([]float64, n)}}
 	c.restart()
 	c.lastEnd = math.Inf(-1)
 	return c
@@ -189,7 +190,7 @@ func (c *cog) running(p pulse) {
 		c.stray(s, late)
 	default:
 		c.cand, c.candSteps, c.candLate, c.hasCand = p, s, late, true
-		if math.Abs(late) < toothOnTime && !c.isWeak(p) {
+		if math.Abs(late) < toothOnTime && !c.isWeak(p, s) {
 			c.commit()
 			return
 		}
@@ -202,7 +203,7 @@ func (c *cog) running(p pulse) {
 // compare keeps the better of the waiting edge and another one in the same tooth's time.
 func (c *cog) compare(p pulse, late float64) {
 	score := func(p pulse, late float64) float64 {
-		if c.isWeak(p) {
+		if c.isWeak(p, c.candSteps) {
 			return 1 + math.Abs(late)
 		}
 		return math.Abs(late)
@@ -232,7 +233,15 @@ func (c *cog) stray(steps int, late float64) {
 	}
 }
 
-func (c *cog) isWeak(p pulse) bool { return p.height < c.det.usual/2 }
+// isWeak: less than half of the usual swing, and of what this tooth made a turn ago. A tooth that is lower than the others
+// every turn is made so.
+func (c *cog) isWeak(p pulse, steps int) bool {
+	usual := c.det.usual
+	if own := c.swings.last[(c.f.last+steps)%c.n]; own > 0 {
+		usual = min(usual, own)
+	}
+	return p.height < usual/2
+}
 
 func (c *cog) setDue() {
 	if c.hasCand {
@@ -295,7 +304,7 @@ func (c *cog) state() refState {
 		s.expect = c.period()
 	}
 	if c.det.have {
-		s.height = c.det.usual
+		s.height, s.noise = c.det.usual, c.swings.noise()
 	}
 	return s
 }

@@ -77,6 +77,7 @@ func (c *cog) searching() {
 		c.starting = !(c.expect > 0 && edges[0].pos-c.lastEnd < mostUnseen*c.expect)
 		c.f.begin(c.at, fit.mark, edges[0].pos, pitch)
 		clear(c.bias)
+		c.swings.forget()
 		c.f.bias = c.bias
 		c.open, c.hasCand, c.misfits, c.q = false, false, 0, 0
 		if fit.mark == 0 {

@@ -7,7 +7,7 @@ import "math"
 func (c *cog) commit() {
 	p, steps, late := c.cand, c.candSteps, c.candLate
 	c.hasCand, c.misfits = false, 0
-	if c.isWeak(p) {
+	if c.isWeak(p, steps) {
 		c.q |= Weak
 	}
 	for k := 1; k < steps; k++ {
@@ -28,6 +28,7 @@ func (c *cog) commit() {
 		return
 	}
 	c.f.accept(p.pos, steps, late)
+	c.swings.take(c.f.last, p.height, c.det.usual)
 	if steps == 1 {
 		b := &c.bias[c.f.last]
 		*b = min(max(*b+0.3*late, -0.4), 0.4)

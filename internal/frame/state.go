@@ -29,7 +29,8 @@ type Status struct {
 	State   State
 	RPM     float64 // NaN unless running or coasting
 	Height  float64 // usual height of a pulse or swing of a tooth, codes; NaN when not known
-	Noise   float64 // RMS of the signal at rest, codes; NaN when not known, and with a toothed wheel
+	Noise   float64 // RMS of the signal's noise, codes: at rest, or with teeth what does not repeat from turn to turn; NaN when not known
+	Least   float64 // multiple of the noise below which the usual height loses marks
 	Frames  int64   // frames given
 	Extra   int64   // pulses that were no marks
 	Missing int64   // marks, or teeth, that did not come while running
@@ -37,11 +38,22 @@ type Status struct {
 	LetGo   int64   // samples that went by without becoming part of a frame
 }
 
+// A pulse is looked for above six times the noise, at half its height at most. A tooth's swing must turn back by three
+// tenths of the usual one, and the extremes of noise on its top reach four times the noise up and down: measured, teeth
+// begin to be split or lost at about the given multiple (TestFaintTeeth).
+const (
+	leastMark  = 12
+	leastTooth = 25
+)
+
 // Status tells how the shaft reference is doing, as of the last sample added.
 func (a *Assembler) Status() Status {
 	r := a.ref.state()
-	s := Status{RPM: math.NaN(), Height: r.height, Noise: r.noise, Frames: a.frames, Extra: r.extra, Missing: r.missing,
+	s := Status{RPM: math.NaN(), Height: r.height, Noise: r.noise, Least: leastMark, Frames: a.frames, Extra: r.extra, Missing: r.missing,
 		Unclear: r.unclear, LetGo: a.letGo}
+	if a.cfg.Wheel.Teeth > 0 {
+		s.Least = leastTooth
+	}
 	quiet := float64(a.next) - max(r.lastPulse, float64(a.began))
 	if r.locked {
 		s.RPM = 60 * a.cfg.Rate / r.expect

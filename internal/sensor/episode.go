@@ -20,6 +20,7 @@ type episode struct {
 	tick        [phaseTimes]int64
 	turn, first [phaseTimes]int64 // of the newest suspicions, newest first
 	n           int
+	told        bool // stands until it is told to be gone
 }
 
 // doubt is one suspect turn, before or beside any confirmation.
@@ -48,7 +49,7 @@ func (e *episode) rest(turn, hold int64) {
 	if e.last == unknownTurn {
 		e.last = turn // restored: the hold begins with the first turn
 	}
-	if e.standing && (turn-e.last >= hold || turn < e.last-hold) {
+	if e.standing && !e.told && (turn-e.last >= hold || turn < e.last-hold) {
 		*e = episode{}
 	}
 }

@@ -23,6 +23,11 @@ func (w *Watch) marks(c *watched, f *frame.Frame) {
 			c.ep[Pulses].reason = say(c, Pulses)
 		}
 	}
+	if f.Q&frame.LostTooth != 0 {
+		if c.ep[Teeth].suspect(w.frames, f.Turn, f.Turn, f.Seq0, phaseTimes, phaseWithin) {
+			c.ep[Teeth].reason = say(c, Teeth)
+		}
+	}
 }
 
 // periods are the last two, samples; 0 not known.
@@ -50,10 +55,6 @@ func (p *periods) odd(f *frame.Frame) bool {
 	return f.Q&frame.Uneven != 0 && (now-was.last)*(was.last-was.before) < 0
 }
 
-// noisyPulse is the height of a pulse over the noise under which marks will soon be lost: they are looked for above
-// six times the noise.
-const noisyPulse = 12
-
 // Reference takes the state of the shaft reference as of sample seq: what frames cannot tell, because there are none.
 // For the same states at the same instants however the stream was cut, ask for it at fixed sample numbers.
 func (w *Watch) Reference(s frame.Status, seq int64) {
@@ -69,7 +70,7 @@ func (w *Watch) Reference(s frame.Status, seq int64) {
 				*e = episode{standing: true, since: w.turn, seq: seq, last: w.turn, reason: say(c, NoMarks)}
 			}
 		}
-		if e := &c.ep[Faint]; s.State == frame.StateRunning && s.Height < noisyPulse*s.Noise {
+		if e := &c.ep[Faint]; s.State == frame.StateRunning && s.Height < s.Least*s.Noise {
 			if e.suspect(c.looks, w.turn, w.turn, seq, 2, confirmWithin) {
 				e.reason = saidWeak(c, s.Height/s.Noise)
 			}

@@ -69,6 +69,8 @@ func say(c *watched, k Fault) string {
 		return c.ID + ": marks are missing or come at times that the shaft cannot do: usually the pick-up's gap, its mounting or the trigger level"
 	case Pulses:
 		return c.ID + ": extra, ringing or weak pulses beside the marks: usually a scratch on the shaft, run-out, the gap or interference; the marks are still told apart"
+	case Teeth:
+		return c.ID + ": teeth of the wheel do not come in some turns: usually a damaged tooth, dirt on the pick-up or its gap; the turns are still cut at the right tooth"
 	}
 	return c.ID + ": " + k.String()
 }

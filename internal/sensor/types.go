@@ -65,26 +65,32 @@ type Fault uint8
 
 // The faults, the gravest first: of several the first is shown.
 const (
-	Flat      Fault = iota // one code for a stretch that no live signal stands still
-	OpenCable              // mains and little else
-	Dead                   // no trace of the machine
-	LostBias               // mean off: supply, barrier or cable
-	Swapped                // the signal of another kind of sensor, or of the other end
-	Range                  // outside what can be believed
-	Clipped                // cut off at a rail
-	Noisy                  // far noisier than usual
-	Hum                    // mains far above usual
-	Gain                   // everything larger or smaller: see Shift
-	Zero                   // both plateaus shifted against the machine's other ends: see Shift
-	NoMarks                // phase reference: no marks though the shaft was at speed
-	Unsteady               // phase reference: marks missing, or at impossible times
-	Pulses                 // phase reference: extra, ringing or weak pulses
-	Faint                  // phase reference: marks that hardly stand out of the noise
+	Flat        Fault = iota // one code for a stretch that no live signal stands still
+	OpenCable                // mains and little else
+	Dead                     // no trace of the machine
+	LostBias                 // mean off: supply, barrier or cable
+	Swapped                  // the signal of another kind of sensor, or of the other end
+	Range                    // outside what can be believed
+	Clipped                  // cut off at a rail
+	Noisy                    // far noisier than usual
+	Hum                      // mains far above usual
+	Gain                     // everything larger or smaller: see Shift
+	Zero                     // both plateaus shifted against the machine's other ends: see Shift
+	Sensitivity              // a pressure reads too large or too small in proportion: see Tell
+	Drift                    // a pressure's zero has drifted beyond what is taken off it: see Tell
+	Gauge                    // the gauge passage rings otherwise than it did: see Tell
+	NoMarks                  // phase reference: no marks though the shaft was at speed
+	Unsteady                 // phase reference: marks missing, or at impossible times
+	Pulses                   // phase reference: extra, ringing or weak pulses
+	Teeth                    // phase reference: teeth of the wheel missing
+	Slipped                  // phase reference: the dead centres have moved against it: see Tell
+	Faint                    // phase reference: marks that hardly stand out of the noise
 	faults
 )
 
 var faultNames = [...]string{"flat", "open cable", "dead", "lost bias", "swapped", "out of range", "clipped", "noisy", "hum",
-	"gain", "zero", "no marks", "marks missing", "pulses", "faint marks"}
+	"gain", "zero", "sensitivity", "zero drift", "gauge passage", "no marks", "marks missing", "pulses", "teeth missing", "phase slip",
+	"faint marks"}
 
 func (f Fault) String() string {
 	if int(f) < len(faultNames) {
@@ -103,7 +109,7 @@ func (f Fault) category(k Kind) Category {
 		if k == Acceleration {
 			return MaintenanceRequired
 		}
-	case Pulses, Faint:
+	case Pulses, Teeth, Slipped, Faint, Drift, Gauge, Sensitivity:
 		return MaintenanceRequired
 	}
 	return OutOfSpecification
