@@ -107,7 +107,7 @@
 //
 //	leak_area_mm2             by the leak fit, signed, wall heat in it: compare with the healthy machine
 //	leak_percent              gas through that area in a turn over what the path's end (rings: both ends) delivers, by suction
-//	leak_noise_db             leak-band level where this path would leak most; at least 40 degrees free of events
+//	leak_noise_db             mean leak-band level where this path would leak most; at least 40 degrees free of events
 //	leak_shape                projection of the leak band on this path's nozzle flow
 //
 // # Features of a valve with a cover sensor (subject: the valve's id)

@@ -50,6 +50,7 @@ type Measurer struct {
 	loads        crank.Loads
 	motions      []crank.Motion // by throw
 	masked, busy []bool
+	flow         [5][]float64 // by leak path, on the usable degrees
 
 	ctx    []throwCtx
 	fitOne func(i int)

@@ -25,14 +25,20 @@ const (
 	whyBusy       = "too few degrees free of valve events"
 	whyNoFlow     = "no pressure difference over this path"
 	whyPressures  = "both ends' pressures are needed"
+	whySilent     = "no signal in the leak band"
 )
 
 // noise compares the leak band's mean square per degree, on the degrees free of events, with the flow each leak path
 // would have. With S_j the nozzle flow of path j from the live pressures, ⟨·⟩ the mean over the usable degrees and
 // y the mean square:
 //
-//	leak_noise_db = 10 lg ⟨w y⟩/⟨w⟩, w = max(0, S_j − ⟨S_j⟩)   the level where this path would be heard best
+//	leak_noise_db = 10 ⟨w lg y⟩/⟨w⟩, w = max(0, S_j − ⟨S_j⟩)   the level where this path would be heard best
 //	leak_shape    = ⟨(S_j − ⟨S_j⟩) y⟩/(σ(S_j)·⟨y⟩)             the projection of y on the path's shape
+//
+// The mean is that of the levels, not of the powers: a stray hit or the tail of an impact then counts as one degree of
+// many. On the model a leak of one path raises the level of its own path as far as with powers, and that of the other
+// path of its pair (see below) a fifth less far. Weights by 1/(flow of all paths)², which pick the dwells where other leaks are
+// quiet, gain nothing over w.
 //
 // Of all paths, a jet on path j moves the projection on its own shape most (Cauchy–Schwarz). Weights S_j in place of
 // w name the wrong one of a pair on the model. Head-end suction and
@@ -45,11 +51,22 @@ func (m *Measurer) noise(c *throwCtx, t *turn.Turn, w window.Result, throw int) 
 	if why = m.quiet(c, t, w, throw); why == "" {
 		why = m.hear(c)
 	}
+	var whys [5]string
+	if why == "" {
+		whys = m.flowsOf(c)
+	}
 	for j, at := range c.ix.path {
 		if at < 0 {
 			continue
 		}
-		if reason := why; reason != "" || !m.path(c, j, at, &reason) {
+		reason := why
+		if reason == "" {
+			reason = whys[j]
+		}
+		if reason == "" {
+			reason = m.path(c, j, at)
+		}
+		if reason != "" {
 			c.dst.absent(at+lNoise, reason)
 			c.dst.absent(at+lShape, reason)
 		}
@@ -165,32 +182,37 @@ func (m *Measurer) hear(c *throwCtx) string {
 	return ""
 }
 
-// path weighs y with the flow of one path; false, with a reason, when it has none.
-func (m *Measurer) path(c *throwCtx, j, at int, reason *string) bool {
-	*reason = whyPressures
-	e, rings := j/2, j == 4
-	he, ce := c.th.P[0], c.th.P[1]
-	if (rings && (he == nil || ce == nil)) || (!rings && c.th.P[e] == nil) {
-		return false
-	}
+// flowsOf lists the flow that each path would have on the usable degrees, up to one constant; what has none is empty, with
+// the reason.
+func (m *Measurer) flowsOf(c *throwCtx) (why [5]string) {
 	k := c.in.Gas.KV
 	if !(k > 1) {
 		k = adiabaticGas
 	}
 	critical := math.Pow(2/(k+1), k/(k-1))
-	line := math.NaN()
-	if !rings {
-		*reason = whyNoPlateau
-		w := &c.w.Ends[e]
-		if w.State == window.Idle && j%2 == 1 {
-			return false
-		}
-		line = [2]float64{w.Ps, w.Pd}[j%2]
-		if !known(line) {
-			return false
+	for j := range m.flow {
+		m.flow[j] = m.flow[j][:0]
+		if why[j] = m.flowOf(c, j, critical); why[j] != "" {
+			m.flow[j] = m.flow[j][:0]
 		}
 	}
-	m.x = m.x[:0]
+	return why
+}
+
+func (m *Measurer) flowOf(c *throwCtx, j int, critical float64) string {
+	e, rings := j/2, j == 4
+	he, ce := c.th.P[0], c.th.P[1]
+	if (rings && (he == nil || ce == nil)) || (!rings && c.th.P[e] == nil) {
+		return whyPressures
+	}
+	line := math.NaN()
+	if !rings {
+		w := &c.w.Ends[e]
+		line = [2]float64{w.Ps, w.Pd}[j%2]
+		if w.State == window.Idle && j%2 == 1 || !known(line) {
+			return whyNoPlateau
+		}
+	}
 	for i, b := range m.masked {
 		if b {
 			continue
@@ -204,32 +226,40 @@ func (m *Measurer) path(c *throwCtx, j, at int, reason *string) bool {
 		default:
 			up, down = line, c.th.P[e][i]
 		}
-		m.x = append(m.x, jet(up, down, critical))
+		m.flow[j] = append(m.flow[j], jet(up, down, critical))
 	}
-	n := float64(len(m.x))
+	return ""
+}
+
+// path weighs y with the flow of one path.
+func (m *Measurer) path(c *throwCtx, j, at int) (why string) {
+	x := m.flow[j]
+	n := float64(len(x))
 	var s, ss, y, sy float64
-	for i, v := range m.x {
+	for i, v := range x {
 		s += v
 		ss += v * v
 		y += m.y[i]
 		sy += v * m.y[i]
 	}
 	s, y = s/n, y/n
-	*reason = whyNoFlow
 	sigma := math.Sqrt(ss/n - s*s)
+	if !(sigma > 0) {
+		return whyNoFlow
+	}
 	var w, wy float64
-	for i, v := range m.x {
+	for i, v := range x {
 		if v > s {
 			w += v - s
-			wy += (v - s) * m.y[i]
+			wy += (v - s) * math.Log(m.y[i])
 		}
 	}
-	if !(sigma > 0 && y > 0 && wy > 0) {
-		return false
+	if !(y > 0) || math.IsInf(wy, 0) || math.IsNaN(wy) {
+		return whySilent
 	}
-	c.dst.set(at+lNoise, 10*math.Log10(wy/w))
+	c.dst.set(at+lNoise, 10/math.Ln10*wy/w)
 	c.dst.set(at+lShape, (sy/n-s*y)/(sigma*y))
-	return true
+	return ""
 }
 
 // jet is the flow of a nozzle of unit area from one pressure to a lower one, up to a constant: the upstream pressure

@@ -90,18 +90,16 @@ func TestOpeningsUnderLoadSwings(t *testing.T) {
 	}
 }
 
-// A leak of 1 % of an end's delivery is heard in its dwell: at least 2 dB. The model hisses with the energy of the jet and
-// draws each valve's coupling between 0.7 and 1.3 of the usual: what is 2.3 dB at 1 is 1.7 at 0.7, so not every valve can
-// reach 2. vibration.md section 3 has 3.0 to 3.9 dB on another model.
+// A leak of 1 % of an end's delivery is heard in its dwell: at least 2 dB, whatever the valve's coupling (the model draws
+// it between 0.7 and 1.3 of the usual). vibration.md section 3 has 3.0 to 3.9 dB on another model; the model's hiss was
+// set by those figures, so the mean is no check, but the least and the weights are.
 func TestOnePercentLeakIsHeard(t *testing.T) {
 	base := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 1.6, Seed: 3}
 	healthy := measured(t, base)
 	paths := []struct{ valve, subject string }{{"t1.he.s1", "t1.he.suction"}, {"t1.he.d1", "t1.he.discharge"}, {"t1.ce.s1", "t1.ce.suction"}, {"t1.ce.d1", "t1.ce.discharge"}}
 	least, rounds := 2.0, 1
 	if *sweep {
-		least, rounds = 1.5, 2
-	} else {
-		paths = paths[:1]
+		rounds = 2
 	}
 	for i, p := range paths {
 		// Size the hole so that 1 % of what the end delivers goes through it.
