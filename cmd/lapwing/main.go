@@ -41,7 +41,7 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 		SilenceUsage:  true,
 		SilenceErrors: true,
 	}
-	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), listenCommand())
+	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), listenCommand())
 	return cmd
 }
 

@@ -31,7 +31,7 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 		Args:    cobra.ExactArgs(1),
 		RunE: func(cmd *cobra.Command, args []string) (err error) {
 			o.Recording = args[0]
-			if o.LearnFrom, o.LearnTo, err = parseTurns(learn); err != nil {
+			if o.LearnFrom, o.LearnTo, err = parseTurns("--learn", learn); err != nil {
 				return err
 			}
 			o.Summary = cmd.OutOrStdout()
@@ -57,8 +57,8 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 	return cmd
 }
 
-// parseTurns reads FIRST:END.
-func parseTurns(s string) (from, to int64, err error) {
+// parseTurns reads FIRST:END of a flag.
+func parseTurns(flag, s string) (from, to int64, err error) {
 	if s == "" {
 		return 0, 0, nil
 	}
@@ -69,7 +69,7 @@ func parseTurns(s string) (from, to int64, err error) {
 		}
 	}
 	if !ok || err != nil || from < 0 || to <= from {
-		return 0, 0, fmt.Errorf("--learn %q: write FIRST:END with whole turn numbers, END above FIRST, e.g. 0:200", s)
+		return 0, 0, fmt.Errorf("%s %q: write FIRST:END with whole turn numbers, END above FIRST, e.g. 0:200", flag, s)
 	}
 	return from, to, nil
 }

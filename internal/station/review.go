@@ -27,6 +27,8 @@ type ReviewOptions struct {
 	Out                             io.Writer // the same, where there is no OutFile; nil: none
 	Summary                         io.Writer // nil: none
 	Progress                        io.Writer // a terminal for a progress bar; nil: none
+
+	each func(*Line, *Output) // hears of every turn; nil: nobody
 }
 
 // Review runs the whole line on a recording as fast as it goes. A damaged recording is reviewed as far as it can be
@@ -170,6 +172,9 @@ func (r *review) run(ctx context.Context) error {
 	var failed error
 	emit := func(o *Output) {
 		r.sum.add(r.sk, o)
+		if r.o.each != nil {
+			r.o.each(r.line, o)
+		}
 		if failed == nil {
 			failed = r.write(o)
 		}
