@@ -49,7 +49,8 @@ var floors = []floor{
 	{"suction_loss_kw", 0.05, 0.06},
 	{"discharge_loss_kw", 0.05, 0.06},
 	{"onset_deg", 0.3, 0},
-	{"cover_*", 1, 0}, // K
+	{"cover_c", 8, 0}, // K; it follows the duty by minutes, so that swings put it far off what the duty says
+	{"cover_*", 1, 0}, // against its group
 	{"t_excess_k", 2, 0},
 	{"t_*", 1, 0},
 	{"reversal_*", 1, 0.02},

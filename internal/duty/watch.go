@@ -197,13 +197,15 @@ type taps struct {
 
 const (
 	levelApart  = 0.03      // ln, beyond which the process values are late; valves and taps move slower and less
+	levelMost   = 0.4       // ln, beyond which a plateau is not believed, whoever agrees with it
+	levelAgree  = 0.015     // ln, within which the two ends have seen the same move
 	levelFollow = 1.0 / 8.0 // of the difference, per turn, that the share follows
 	levelMoves  = 0.003     // ln, by which a pressure told has moved and not merely been read again
 )
 
 // apart gives by how much the line pressures must have moved since they were told, as ln, and whether plateaus and
-// pressures are too far apart to be judged by. What stays apart for longer than the delay of pressures that stand still is no delay, but the share
-// at another flow.
+// pressures are too far apart to be judged by. What stays apart for longer than the delay of pressures that stand still
+// is no delay, but the share at another flow.
 func (l *taps) apart(in Input, delay int, moving bool) (off [2]float64, far bool) {
 	l.quiet++
 	if !(math.Abs(math.Log(in.Ps/l.told[0])) <= levelMoves && math.Abs(math.Log(in.Pd/l.told[1])) <= levelMoves) {
@@ -212,7 +214,9 @@ func (l *taps) apart(in Input, delay int, moving bool) (off [2]float64, far bool
 	if l.far >= delay && l.quiet >= delay {
 		l.have, l.far = [2]bool{}, 0
 	}
-	n := 0.0
+	var d [2][2]float64
+	var n float64
+	ahead := false // a plateau is beyond what a share may be off
 	for e := range in.Ends {
 		now := [2]float64{math.Log(in.OwnPs[e] / in.Ps), math.Log(in.OwnPd[e] / in.Pd)}
 		if in.Ends[e] == window.Idle || !known(now[0]) || !known(now[1]) {
@@ -223,17 +227,25 @@ func (l *taps) apart(in Input, delay int, moving bool) (off [2]float64, far bool
 			l.have[e], l.share[e] = true, now
 			continue
 		}
-		d := [2]float64{now[0] - l.share[e][0], now[1] - l.share[e][1]}
-		if math.Max(math.Abs(d[0]), math.Abs(d[1])) > levelApart {
-			far = true
-			continue
-		}
+		d[e] = [2]float64{now[0] - l.share[e][0], now[1] - l.share[e][1]}
+		ahead = ahead || beyond(d[e], levelApart)
+		far = far || beyond(d[e], levelApart) && !moving || beyond(d[e], levelMost)
 		n++
-		for k := range d {
-			if moving {
-				off[k] += (d[k] - off[k]) / n
-			} else {
-				l.share[e][k] += levelFollow * d[k]
+		for k := range off {
+			off[k] += (d[e][k] - off[k]) / n
+		}
+	}
+	// Pressures that two gauges saw move alike have moved; what one gauge alone says may be the gauge.
+	far = far || ahead && (n < 2 || beyond([2]float64{d[0][0] - d[1][0], d[0][1] - d[1][1]}, levelAgree))
+	if far || !moving {
+		off = [2]float64{}
+	}
+	if !moving {
+		for e := range d {
+			if !beyond(d[e], levelApart) {
+				for k := range d[e] {
+					l.share[e][k] += levelFollow * d[e][k]
+				}
 			}
 		}
 	}
@@ -283,6 +295,10 @@ func own(p [2]float64, ends [2]window.State) float64 {
 		}
 	}
 	return math.NaN()
+}
+
+func beyond(d [2]float64, limit float64) bool {
+	return math.Abs(d[0]) > limit || math.Abs(d[1]) > limit
 }
 
 func known(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }

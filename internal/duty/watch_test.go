@@ -55,14 +55,31 @@ func TestWatchScenarios(t *testing.T) {
 		"a load step told late is not judged":                                     {100, func(i int, in *Input) { in.Step = 1 + (i+42)/100; unload(in, i >= 50) }, nil, "S10=40?8C30=12"},
 		"an end that is idle though the step says otherwise is judged in the end": {140, func(i int, in *Input) { unload(in, i >= 50) }, nil, "S10=40?60C10=20"},
 		"traces that fit another pocket only":                                     {80, func(i int, in *Input) { in.OtherStep = i >= 30 && i < 36 }, nil, "S10=20?6C10=34"},
-		"line pressure told late is not judged": {120, func(i int, in *Input) {
+		"line pressure told late is taken from the plateaus that agree": {120, func(i int, in *Input) {
 			if i >= 40 {
 				in.OwnPd = [2]float64{56e5, 55.9e5}
 			}
 			if i >= 50 {
 				in.Pd = 55.6e5
 			}
-		}, nil, "S10=30?10C27=43"},
+		}, nil, "S10=30C37=43"},
+		"one plateau that moves alone is not judged at first": {120, func(i int, in *Input) {
+			if i >= 40 {
+				in.OwnPd[0] = 56e5
+			}
+		}, nil, "S10=30?19C10=51"},
+		"nor is one of a throw with one end at work": {120, func(i int, in *Input) {
+			in.Step = 2
+			unload(in, true)
+			if i >= 40 {
+				in.OwnPd[0] = 56e5
+			}
+		}, nil, "S10=30?19C10=51"},
+		"pressures that were never told are not judged once they stand": {120, func(i int, in *Input) {
+			if i >= 40 {
+				in.OwnPd = [2]float64{56e5, 55.9e5}
+			}
+		}, nil, "S10=30C18?19C10=33"},
 		"an invalid turn is unknown and no more": {40, func(i int, in *Input) { in.Valid = i != 20 }, nil, "S10=10?=19"},
 		"speed outside its range": {100, func(i int, in *Input) {
 			if i >= 20 && i < 30 {
