@@ -22,7 +22,6 @@ type end struct {
 	swept      float64
 	clear0, vc float64 // m³, clearance volume without and with the pocket
 	bore       float64
-	noz        *nozzle
 	gas        *Gas
 	par        *Params
 
@@ -162,9 +161,9 @@ func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
 		tb := pb * vb / (e.m * r)
 		rt := math.Sqrt(r * tb)
 		s.area, d.area = e.suction.area(), e.disch.area()
-		s.eval(e.noz, pb, rt)
-		d.eval(e.noz, pb, rt)
-		pk.eval(e.noz, pb, rt)
+		s.eval(t.stage.noz, pb, rt)
+		d.eval(t.stage.noz, pb, rt)
+		pk.eval(t.stage.noz, pb, rt)
 		// Energy of an ideal gas at constant volume: dp/dt = kR/V·Σ ṁT + (k−1)/V·Q.
 		ring := e.ring
 		ringT := e.ringT

@@ -20,8 +20,8 @@
 //	shaft mark  PhaseSlip, ExtraPulses, MissedPulses
 //	readings    FrozenProcess
 //
-// The gas is ideal with a constant R·Z and the volume isentropic exponent of the duty it was built for. Each end is one
-// well-mixed volume with an open-system energy balance (methods: Bloch and Hoefner, Reciprocating Compressors, 1996;
+// The gas of a stage is ideal within a turn, with the R·Z at suction and the mean volume isentropic exponent of its real
+// gas (package gas) at the present lines; both follow the script. Each end is one well-mixed volume with an open-system energy balance (methods: Bloch and Hoefner, Reciprocating Compressors, 1996;
 // valve and cylinder equations as in Brun and Kurz, Compression Machinery for Oil and Gas, 2019, ch. 5).
 package model
 
@@ -57,10 +57,11 @@ type Options struct {
 
 // Machine is a running compressor. It is not safe for concurrent use.
 type Machine struct {
-	sk   *skid.Skid
-	par  Params
-	plan plan
-	noz  *nozzle
+	sk    *skid.Skid
+	par   Params
+	plan  plan
+	gases *gasMap // nil: the gas is the same at every duty
+	gas0  Gas     // what gases says of the duty for which Params was made
 
 	rate, dt float64
 	bits     int
@@ -127,7 +128,6 @@ func New(sk *skid.Skid, s Script, o Options) (*Machine, error) {
 	if m.plan, err = newPlan(sk, s, m.par); err != nil {
 		return nil, err
 	}
-	m.noz = newNozzle(m.par.Gas.K)
 	m.scatter = stream(o.Seed, 1)
 	m.procNoise = stream(o.Seed, 2)
 	m.loose = stream(o.Seed, 4)
@@ -140,7 +140,7 @@ func New(sk *skid.Skid, s Script, o Options) (*Machine, error) {
 	}
 	m.theta = m.par.StartDeg * math.Pi / 180
 	m.omega = m.plan.speed.at(0) * math.Pi / 30
-	m.buildStages()
+	m.buildStages(sk)
 	if err := m.buildThrows(o.Seed); err != nil {
 		return nil, err
 	}
@@ -269,7 +269,9 @@ func (m *Machine) slow() {
 	ahead := t + slowEvery*m.dt
 	m.dOm = (m.plan.speedAt(ahead)*math.Pi/30 - m.omega) / slowEvery
 	for i, s := range m.stages {
-		s.aim(m.recycled(i, ahead))
+		l := m.recycled(i, ahead)
+		s.aim(l)
+		s.follow(m, l)
 	}
 	if st := int(m.plan.step.at(t)); st != m.step {
 		m.setStep(st, false)

@@ -9,6 +9,7 @@ const nearEqual = 0.002
 // nozzle is the isentropic nozzle function ψ of d = 1 − p_down/p_up, choked beyond its limit, as a table.
 // ṁ = A·p_up/√(R·T_up)·ψ.
 type nozzle struct {
+	k     float64   // exponent
 	choke float64   // d at which the throat chokes
 	scale float64   // table points per unit of d
 	g     []float64 // ψ0/√d, smooth down to d = 0
@@ -18,7 +19,7 @@ type nozzle struct {
 const nozzlePoints = 1024
 
 func newNozzle(k float64) *nozzle {
-	n := &nozzle{choke: 1 - math.Pow(2/(k+1), k/(k-1))}
+	n := &nozzle{k: k, choke: 1 - math.Pow(2/(k+1), k/(k-1))}
 	n.scale = nozzlePoints / n.choke
 	n.g = make([]float64, nozzlePoints+2)
 	for i := range n.g {

@@ -42,8 +42,10 @@ type Pulsation struct {
 // Params is all the physics that the skid file does not give. Typical fills it; tests change it.
 type Params struct {
 	Gas            Gas
+	Duty           skid.Line            // the duty for which Gas holds; without it the script's first line
 	Valves         map[string]ValveData // by valve id
 	Ring, Packing  float64              // m², effective healthy leak areas; packing at the crank end of each throw
+	SteadyGas      bool                 // the gas keeps its constants whatever the duty
 	WallHeat       float64              // factor on the wall heat transfer correlation; 0: adiabatic
 	WallAt         float64              // wall temperature between line temperatures: 0 suction, 1 discharge
 	Passage        float64              // volume of each valve passage, in swept volumes of the throw
@@ -98,7 +100,7 @@ func Typical(sk *skid.Skid, lines []skid.Line) (Params, error) {
 	if err != nil {
 		return p, err
 	}
-	p.Gas = g
+	p.Gas, p.Duty = g, skid.Line{Ps: lines[0].Ps, Pd: lines[0].Pd, Ts: lines[0].Ts}
 	for i := range sk.Throws {
 		t := &sk.Throws[i]
 		if t.Stage < 1 || t.Stage > len(lines) {

@@ -89,8 +89,8 @@ func newShaker(m *Machine, t *throw, id string, seed, use uint64) *shaker {
 	s.rush = newBand(900, 6000, m.rate)
 	// One per cent of the throw's throughput at the ideal speed of a ratio of 2.5.
 	swept := t.sk.Cylinder.Swept(crank.HE) + t.sk.Cylinder.Swept(crank.CE)
-	flow := 0.7 * swept * t.stage.ps / (t.r * t.stage.ts) * s.rated / (2 * math.Pi)
-	s.jetRef = 1 / (0.01 * flow * jetEnergy(&m.par.Gas, 2.5, 1, t.stage.ts*1.25))
+	flow := 0.7 * swept * t.stage.ps / (t.stage.gas.R * t.stage.ts) * s.rated / (2 * math.Pi)
+	s.jetRef = 1 / (0.01 * flow * jetEnergy(&t.stage.gas, 2.5, 1, t.stage.ts*1.25))
 	return s
 }
 

@@ -12,6 +12,10 @@ import (
 type stage struct {
 	ps, pd, ts    float64
 	dps, dpd, dts float64 // per sample
+
+	gas  Gas
+	noz  *nozzle
+	line skid.Line // for which gas was computed
 }
 
 func (s *stage) aim(l skid.Line) {
@@ -24,10 +28,25 @@ func (s *stage) move() {
 	s.ts += s.dts
 }
 
-func (m *Machine) buildStages() {
+func (m *Machine) buildStages(sk *skid.Skid) {
+	if !m.par.SteadyGas {
+		m.gases = newGasMap(sk)
+	}
+	if m.gases != nil {
+		base := m.par.Duty
+		if base.Ps == 0 {
+			base = m.plan.line(0, 0)
+		}
+		var ok bool
+		if m.gas0, ok = m.gases.at(base); !ok {
+			m.gases = nil // too near to its dew point to be followed
+		}
+	}
 	for i := range m.plan.ps {
 		l := m.plan.line(i, 0)
-		m.stages = append(m.stages, &stage{ps: l.Ps, pd: l.Pd, ts: l.Ts})
+		st := &stage{ps: l.Ps, pd: l.Pd, ts: l.Ts, gas: m.par.Gas, noz: newNozzle(m.par.Gas.K)}
+		st.follow(m, l)
+		m.stages = append(m.stages, st)
 	}
 }
 
@@ -46,7 +65,6 @@ type throw struct {
 	suctionT, suctionRT float64 // K, √(R·T)
 	dischT, dischRT     float64
 	passage             float64 // m³, each
-	r                   float64 // gas constant
 	discharge           float64 // K, what the discharge thermometer has got to (lagged)
 	next                int64   // number of the next head-end dead centre
 
@@ -57,14 +75,14 @@ func (m *Machine) buildThrows(seed uint64) error {
 	for i := range m.sk.Throws {
 		st := &m.sk.Throws[i]
 		cyl := st.Cylinder
-		t := &throw{index: i, sk: st, stage: m.stages[st.Stage-1], atm: m.sk.Machine.Atmosphere, r: m.par.Gas.R}
+		t := &throw{index: i, sk: st, stage: m.stages[st.Stage-1], atm: m.sk.Machine.Atmosphere}
 		if t.atm == 0 {
 			t.atm = 101325
 		}
 		t.passage = m.par.Passage * cyl.Swept(crank.HE)
-		td := t.adiabatic(m)
+		td := t.adiabatic()
 		t.suctionT, t.dischT, t.discharge = t.stage.ts, td, td
-		t.suctionRT, t.dischRT = math.Sqrt(t.r*t.suctionT), math.Sqrt(t.r*t.dischT)
+		t.suctionRT, t.dischRT = math.Sqrt(t.stage.gas.R*t.suctionT), math.Sqrt(t.stage.gas.R*t.dischT)
 		// Each throw hears its own pulsation: the phase moves with its dead centre.
 		t.pulseS = pulses(m.par.SuctionPulse, st.DeadCentre)
 		t.pulseD = pulses(m.par.DischargePulse, st.DeadCentre)
@@ -83,7 +101,7 @@ func (m *Machine) buildThrows(seed uint64) error {
 				return fmt.Errorf("model: throw %s: a working end needs suction and discharge valves", st.ID)
 			}
 			e := &end{name: st.ID + [2]string{".he", ".ce"}[side], side: side, area: cyl.Area(side), swept: cyl.Swept(side),
-				clear0: cyl.ClearanceVolume(side), bore: cyl.Bore, noz: m.noz, gas: &m.par.Gas, par: &m.par}
+				clear0: cyl.ClearanceVolume(side), bore: cyl.Bore, gas: &t.stage.gas, par: &m.par}
 			e.vc = e.clear0
 			e.diary = diary{throw: i, end: side}
 			e.disch.discharge = true
@@ -127,8 +145,8 @@ func pulses(ps []Pulsation, dc float64) []harmonic {
 	return out
 }
 
-func (t *throw) adiabatic(m *Machine) float64 {
-	g := &m.par.Gas
+func (t *throw) adiabatic() float64 {
+	g := &t.stage.gas
 	return t.stage.ts * math.Pow(math.Max(t.stage.pd/t.stage.ps, 1), (g.K-1)/g.K)
 }
 
@@ -144,7 +162,7 @@ func (t *throw) place(m *Machine) {
 		}
 		e.v = e.volume(t.travel, t.sk.Cylinder.Stroke)
 		own := math.Mod(deg+180*float64(side)+720, 360)
-		k := m.par.Gas.K
+		k := t.stage.gas.K
 		if own < 180 { // expanding from the discharge line
 			e.p = max(t.ps, t.pd*math.Pow(e.vc/e.v, k))
 		} else {
@@ -154,7 +172,7 @@ func (t *throw) place(m *Machine) {
 			e.p = t.ps
 		}
 		e.t = t.stage.ts * math.Pow(e.p/t.ps, (k-1)/k)
-		e.m = e.p * e.v / (t.r * e.t)
+		e.m = e.p * e.v / (t.stage.gas.R * e.t)
 	}
 }
 
@@ -242,7 +260,7 @@ func (t *throw) rings(m *Machine) {
 	a, b := t.ends[crank.HE], t.ends[crank.CE]
 	switch {
 	case a != nil && b != nil:
-		in, _ := m.noz.flow(a.p, math.Sqrt(t.r*a.t), b.p, math.Sqrt(t.r*b.t))
+		in, _ := t.stage.noz.flow(a.p, math.Sqrt(t.stage.gas.R*a.t), b.p, math.Sqrt(t.stage.gas.R*b.t))
 		a.ring = in * a.ringA
 		b.ring = -a.ring
 		a.ringT, b.ringT = b.t, a.t
@@ -259,7 +277,7 @@ func (t *throw) blind(m *Machine, e *end) {
 	if t.sk.BlindAtSuction {
 		pl = t.ps
 	}
-	in, _ := m.noz.flow(e.p, math.Sqrt(t.r*e.t), pl, t.suctionRT)
+	in, _ := t.stage.noz.flow(e.p, math.Sqrt(t.stage.gas.R*e.t), pl, t.suctionRT)
 	e.ring, e.ringT = in*e.ringA, t.suctionT
 	e.ringJet = ringJet(e, pl)
 }
@@ -276,13 +294,13 @@ func (t *throw) suctionIn(taken, tt float64) {
 	if taken == 0 {
 		return
 	}
-	mass := t.ps * t.passage / (t.r * t.suctionT)
+	mass := t.ps * t.passage / (t.stage.gas.R * t.suctionT)
 	if taken < 0 {
 		t.suctionT += (tt - t.suctionT) * math.Min(1, -taken/mass)
 	} else {
 		t.suctionT += (t.stage.ts - t.suctionT) * math.Min(1, taken/mass)
 	}
-	t.suctionRT = math.Sqrt(t.r * t.suctionT)
+	t.suctionRT = math.Sqrt(t.stage.gas.R * t.suctionT)
 }
 
 // dischIn mixes the discharge passage: out is what an end delivered, kg, at temperature tt; negative went back into it.
@@ -290,15 +308,15 @@ func (t *throw) dischIn(out, tt float64) {
 	if out <= 0 {
 		return // the line's gas is the passage's own
 	}
-	mass := t.pd * t.passage / (t.r * t.dischT)
+	mass := t.pd * t.passage / (t.stage.gas.R * t.dischT)
 	t.dischT += (tt - t.dischT) * math.Min(1, out/mass)
-	t.dischRT = math.Sqrt(t.r * t.dischT)
+	t.dischRT = math.Sqrt(t.stage.gas.R * t.dischT)
 }
 
 // slow follows faults and wall temperatures.
 func (t *throw) slow(m *Machine, now float64) {
 	ring := m.plan.ring[t.sk.ID].at(now)
-	ad := t.adiabatic(m)
+	ad := t.adiabatic()
 	t.controls(m, now)
 	for side, e := range t.ends {
 		if e == nil {

@@ -12,8 +12,8 @@ const thermometerLag = 12
 // warm moves thermometers and covers by one slow interval.
 func (t *throw) warm(m *Machine) {
 	dt := slowEvery * m.dt
-	t.discharge += (m.shown(t.stage.ts, t.dischT) - t.discharge) * math.Min(1, dt/thermometerLag)
-	flow := t.stage.ps / (t.r * t.stage.ts) * m.omega / (2 * math.Pi)
+	t.discharge += (t.stage.gas.shown(t.stage.ts, t.dischT) - t.discharge) * math.Min(1, dt/thermometerLag)
+	flow := t.stage.ps / (t.stage.gas.R * t.stage.ts) * m.omega / (2 * math.Pi)
 	for _, e := range t.ends {
 		if e == nil {
 			continue
@@ -53,8 +53,7 @@ func (q *plate) warm(t *throw, share, dt, lag float64) {
 
 // shown turns the temperature of the model's ideal gas into what a thermometer would show in the real one: the
 // temperature exponent instead of the volume exponent, on the same compression.
-func (m *Machine) shown(ts, t float64) float64 {
-	g := &m.par.Gas
+func (g *Gas) shown(ts, t float64) float64 {
 	if g.KT == 0 || g.KT == g.K || t <= 0 {
 		return t
 	}
