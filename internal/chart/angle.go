@@ -267,7 +267,7 @@ func (d *Drawing) event(pl *plot.Plot, ev Event, base float64, c colour) {
 		return
 	}
 	if finite(ev.Expected) {
-		pl.Add(label{x: ev.Expected, y: base + .02, text: "^", style: d.p.words(7, d.p.faint, draw.XCenter, draw.YCenter), dy: 1})
+		pl.Add(pointer{x: ev.Expected, y: base + .12, style: draw.LineStyle{Color: d.p.ink, Width: vg.Points(.6)}})
 	}
 	pl.Add(label{x: at, y: base + .8, text: ev.name(), style: d.p.words(6.5, d.p.ink, draw.XCenter, draw.YCenter)})
 }

@@ -131,6 +131,23 @@ func (l label) Plot(c draw.Canvas, p *plot.Plot) {
 	c.FillText(l.style, at, l.text)
 }
 
+// pointer is a small hollow triangle that points up at a place from below.
+type pointer struct {
+	x, y  float64
+	style draw.LineStyle
+}
+
+// Plot implements plot.Plotter.
+func (m pointer) Plot(c draw.Canvas, p *plot.Plot) {
+	fx, fy := p.Transforms(&c)
+	x, y := fx(m.x), fy(m.y)
+	if !c.ContainsX(x) {
+		return
+	}
+	const half, high = 2.2, 3.6
+	c.StrokeLines(m.style, []vg.Point{{X: x, Y: y}, {X: x - half, Y: y - high}, {X: x + half, Y: y - high}, {X: x, Y: y}})
+}
+
 func (p *palette) words(size float64, c color.Color, x text.XAlignment, y text.YAlignment) text.Style {
 	s := plot.New().Title.TextStyle
 	s.Font, s.Color, s.XAlign, s.YAlign = typeface(size), c, x, y

@@ -120,7 +120,8 @@ func (d *Drawing) fitted(pl *plot.Plot, end *End, s Stroke, stroke, e int) {
 	reach := []float64{v.lo * .97, v.hi * 1.03}
 	pl.Add(curve{x: func(i int) float64 { return reach[i] * litres }, y: func(i int) float64 { return at(reach[i]) }, n: 2,
 		style: draw.LineStyle{Color: d.p.ink, Width: vg.Points(.7)}})
-	mid := math.Sqrt(v.lo * v.hi)
+	along := [2]float64{.62, .38}[e] // the two ends' words at different heights, for their lines lie close together
+	mid := v.lo * math.Pow(v.hi/v.lo, along)
 	name := [2]string{"compression", "expansion"}[stroke]
 	style := d.p.words(7.5, d.p.end[e], draw.XLeft, draw.YBottom)
 	dx, dy := vg.Points(5), vg.Points(3)
