@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"fmt"
 	"io"
+	"strings"
 
 	"gonum.org/v1/plot"
 	"gonum.org/v1/plot/vg"
@@ -82,11 +83,12 @@ func (d *Drawing) lay(c draw.Canvas, paint bool) {
 	left := c.Min.X + vg.Points(margin)
 	c.FillText(title, vg.Point{X: left, Y: top}, d.title)
 	top -= vg.Points(15)
-	if d.about != "" {
-		title.Font, title.Color = typeface(8), d.p.faint
-		c.FillText(title, vg.Point{X: left, Y: top}, d.about)
-		top -= vg.Points(13)
+	title.Font, title.Color = typeface(8), d.p.faint
+	for line := range strings.Lines(d.about) {
+		c.FillText(title, vg.Point{X: left, Y: top}, strings.TrimSpace(line))
+		top -= vg.Points(11)
 	}
+	top -= vg.Points(2)
 	inner := draw.Crop(c, vg.Points(margin), -vg.Points(margin+4), vg.Points(margin), top-c.Max.Y)
 	total := 0.0
 	for _, r := range d.rows {

@@ -20,7 +20,7 @@ func RodLoad(p Picture, o Options) (*Drawing, error) {
 	l := now.Load
 	about := now.About
 	if finite(l.ReversalDeg) && finite(l.ReversalShare) {
-		about = fmt.Sprintf("%s; reversal %s°, lesser peak %s %% of the greater", about, number(l.ReversalDeg, 0), number(100*l.ReversalShare, 0))
+		about = fmt.Sprintf("%s\nreversal %s°, lesser peak %s %% of the greater", about, number(l.ReversalDeg, 0), number(100*l.ReversalShare, 0))
 	}
 	d, err := newDrawing(o, now.Name+": rod load over crank angle", about, 200, 110)
 	if err != nil {

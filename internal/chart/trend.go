@@ -43,7 +43,7 @@ func (t Trend) Over(o Options) (*Drawing, error) {
 	if pl.X.Max <= 0 {
 		pl.X.Max = 1
 	}
-	pl.Y.Min, pl.Y.Max = s.wide(.06, .22)
+	pl.Y.Min, pl.Y.Max = s.wide(.06, .25)
 	pl.X.Tick.Marker = clock{zero}
 	pl.X.Label.Text = "UTC, from " + zero.UTC().Format("2006-01-02 15:04:05")
 	band := thin(d.p.end[0], .16)
@@ -64,13 +64,14 @@ func (t Trend) Over(o Options) (*Drawing, error) {
 	if hasBand {
 		pl.Legend.Add("expected at this duty, ±3 spreads", box{fill: thin(d.p.end[0], .4)})
 	}
-	for _, m := range t.Marks {
+	pl.Legend.Left = true
+	for k, m := range t.Marks {
 		c := d.p.severity[min(max(m.Severity, 0), 3)]
 		if m.Severity < 1 {
 			c = hex(0x8a9299)
 		}
 		pl.Add(rules{x: []float64{at(m.At)}, style: draw.LineStyle{Color: c, Width: vg.Points(1.2)}})
-		pl.Add(label{x: at(m.At), y: pl.Y.Max, text: m.Text, style: d.p.words(7.5, c, draw.XLeft, draw.YTop), dx: vg.Points(3), dy: -vg.Points(2)})
+		pl.Add(label{x: at(m.At), y: pl.Y.Max, text: m.Text, style: d.p.words(7.5, c, draw.XLeft, draw.YTop), dx: vg.Points(3), dy: -vg.Points(2 + 9*float64(k%3))})
 	}
 	d.rows = []row{{name: "trend", plot: pl, share: 1}}
 	d.lay(draw.New(nowhere(d)), false)

@@ -6,7 +6,7 @@ import "time"
 // angle grid: point i at Lo + i·Step degrees after the head-end dead centre. SI units; NaN is not drawn.
 type Cylinder struct {
 	Name     string // t1
-	About    string // which turn, when, at what speed and load step: the line under the title
+	About    string // which turn, when, at what speed and load step: the lines under the title
 	Lo, Step float64
 	Ends     [2]*End // crank.HE, crank.CE; nil where there is nothing to show
 	Vib      []Vib

@@ -148,7 +148,7 @@ func (o *ChartOptions) turns(ctx context.Context, sk *skid.Skid) (*chart.Drawing
 		p.Reference = &c
 	}
 	if p.Reference != nil {
-		p.Turns[0].About += "; reference: " + p.Reference.About
+		p.Turns[0].About += "\nreference: " + p.Reference.About
 	}
 	return map[string]func(chart.Picture, chart.Options) (*chart.Drawing, error){
 		"angle": chart.Angle, "pv": chart.PV, "logpv": chart.LogPV, "load": chart.RodLoad}[o.Kind](p, o.Draw)
