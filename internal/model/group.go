@@ -13,6 +13,7 @@ type group struct {
 	mean      float64 // mean lift, share
 	above     bool    // mean lift has passed 30 % and no plate has sat since
 	wanted    bool    // its closing crossing is still to be booked
+	up        []bool  // by plate: it has passed 30 % of its lift and has not sat since
 }
 
 func (g *group) area() float64 {
@@ -62,12 +63,22 @@ func (g *group) voice(e *end, line, flow, area, leak, dt float64) {
 func (g *group) step(m *Machine, t *throw, e *end, dp, line, dt, deg0, ddeg, at, h float64) {
 	before := g.mean
 	sum := 0.0
+	if g.up == nil {
+		g.up = make([]bool, len(g.plates))
+	}
 	for i := range g.plates {
 		q := &g.plates[i]
 		hit := q.move(dp, line, dt, m.scatter, m.par.Scatter)
 		sum += q.x / q.d.Lift
 		if hit.speed > heard {
-			g.impact(m, t, e, q, hit, deg0, ddeg, at+h*hit.at)
+			g.impact(m, t, e, i, hit, deg0, ddeg, at+h*hit.at)
+		}
+		switch {
+		case !g.up[i] && q.x >= 0.3*q.d.Lift:
+			g.up[i] = true
+			g.reopened(e, i, deg0+ddeg*at)
+		case g.up[i] && q.x == 0:
+			g.up[i] = false
 		}
 	}
 	g.mean = sum / float64(len(g.plates))
@@ -105,7 +116,8 @@ func (g *group) cross(m *Machine, e *end, closing bool, deg, f float64) {
 }
 
 // impact books a plate's contact and sends it to the accelerometers.
-func (g *group) impact(m *Machine, t *throw, e *end, q *plate, h hit, deg0, ddeg, f float64) {
+func (g *group) impact(m *Machine, t *throw, e *end, i int, h hit, deg0, ddeg, f float64) {
+	q := &g.plates[i]
 	deg := deg0 + ddeg*f
 	at := float64(m.n-1) + f // in samples
 	t.strike(m, q, h, at)
@@ -118,8 +130,34 @@ func (g *group) impact(m *Machine, t *throw, e *end, q *plate, h hit, deg0, ddeg
 	switch {
 	case h.stop && math.IsNaN(ev.Open.Impact) && !math.IsNaN(ev.Open.Lift):
 		ev.Open.Impact, ev.Open.ImpactTime, ev.Open.Speed = in, at*m.dt, h.speed
-	case !h.stop && g.above:
+	case !h.stop && g.up[i]:
 		g.above = false
-		ev.Close.Impact, ev.Close.ImpactTime, ev.Close.Speed = in, at*m.dt, h.speed
+		b.shut(g, i, Event{Impact: in, ImpactTime: at * m.dt, Speed: h.speed})
+	}
+}
+
+// reopened strikes out the closing of a plate that has lifted again before the group's closing was over: it fluttered.
+func (g *group) reopened(e *end, i int, deg float64) {
+	if b, _ := e.diary.of(deg, g.discharge, true); b != nil {
+		b.shut(g, i, noEvent())
+	}
+}
+
+// shut books the last seat impact of one plate. That of the group is the hardest of its plates' last ones.
+func (b *book) shut(g *group, i int, ev Event) {
+	last := &b.last[0]
+	if g.discharge {
+		last = &b.last[1]
+	}
+	for len(*last) < len(g.plates) {
+		*last = append(*last, noEvent())
+	}
+	(*last)[i] = ev
+	c := &b.group(g.discharge).Close
+	c.Impact, c.ImpactTime, c.Speed = math.NaN(), math.NaN(), math.NaN()
+	for _, l := range *last {
+		if math.IsNaN(c.Speed) || l.Speed > c.Speed {
+			c.Impact, c.ImpactTime, c.Speed = l.Impact, l.ImpactTime, l.Speed
+		}
 	}
 }

@@ -205,7 +205,7 @@ func (t *throw) advance(m *Machine, before, ddeg float64) {
 		if m.n%heatEvery == 0 {
 			e.heat(deg0, m.omega)
 		}
-		e.fingers(deg0 + ddeg)
+		e.fingers(t.ps, deg0+ddeg)
 		s := cyl.Stroke
 		e.advance(m, t, e.volume(x0, s), e.volume(xm, s), e.volume(x1, s), deg0, ddeg)
 	}
@@ -231,9 +231,10 @@ func (t *throw) advance(m *Machine, before, ddeg float64) {
 	}
 }
 
-// fingers holds the suction plates open for late closing: from 60° before the outer dead centre, once a plate is up, to the set
-// angle behind it. Idle ends are held by load.
-func (e *end) fingers(deg float64) {
+// fingers holds the suction plates open for late closing: from 60° before the outer dead centre to the set angle behind it.
+// The unloader pushes a plate that flutters shut, but not one that the cylinder's pressure holds to its seat. Idle ends are
+// held by load.
+func (e *end) fingers(ps, deg float64) {
 	if e.late <= 0 || e.idle {
 		return
 	}
@@ -245,7 +246,7 @@ func (e *end) fingers(deg float64) {
 		q := &e.suction.plates[i]
 		switch {
 		case after >= -60 && after < e.late:
-			if q.x >= q.d.Lift {
+			if q.x >= q.d.Lift || after < 0 && e.p < 1.03*ps {
 				q.hold = q.d.Lift
 			}
 		default:

@@ -47,8 +47,10 @@ type Events struct {
 
 // Event is one opening or closing of a group, degrees after the turn's head-end dead centre and seconds from the first sample.
 type Event struct {
-	Lift, LiftTime     float64 // mean lift of the group crosses 10 %: first crossing up, or last one down
-	Impact, ImpactTime float64 // first plate hits its stop (opening) or its seat (closing)
+	Lift, LiftTime float64 // mean lift of the group crosses 10 %: first crossing up, or last one down
+	// Impact is that of the first plate to hit its stop (opening), or the hardest of the plates' last hits on their seats
+	// after having been open by more than 30 % (closing): a plate that flutters shut and opens again has not closed.
+	Impact, ImpactTime float64
 	Speed              float64 // m/s of that impact
 }
 
@@ -71,7 +73,8 @@ type book struct {
 	Truth
 	flowS, flowD, psSum, pdSum float64
 	m0                         float64
-	closed                     bool // the turn itself is over; late closings may still come
+	last                       [2][]Event // of suction and discharge, by plate: its last seat impact
+	closed                     bool       // the turn itself is over; late closings may still come
 }
 
 // diary keeps the books of one end: that of the turn that runs, and those waiting for their last closings.
