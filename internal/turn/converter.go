@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"slices"
 
+	"lapwing/internal/dsp"
 	"lapwing/internal/frame"
 )
 
@@ -14,7 +15,8 @@ type Converter struct {
 	press []*stream
 	vib   []*stream
 	all   []*stream // both
-	throw [][3]int  // per throw: index into press of both ends (-1: none), first index into vib
+	banks []*bank
+	throw [][3]int // per throw: index into press of both ends (-1: none), first index into vib
 
 	recs    []*record // consecutive revolutions, oldest first
 	spare   []*record
@@ -102,10 +104,15 @@ func New(cfg Config) (*Converter, error) {
 		c.hands[k].perDeg = make([]float64, c.grids[k].N)
 	}
 	c.all = slices.Concat(c.press, c.vib)
-	c.addOne = func(i int) {
-		s := c.all[i]
-		s.add(c.frame.Counts[s.ch.Input][c.skip:c.upTo], c.next)
+	for vib := c.vib; impact != nil && len(vib) > 0; {
+		n := min(len(vib), dsp.BankChannels)
+		b, err := newBank(impact, leak, vib[:n])
+		if err != nil {
+			return nil, fmt.Errorf("turn: %w", err)
+		}
+		c.banks, vib = append(c.banks, b), vib[n:]
 	}
+	c.addOne = c.addPiece
 	c.makeOne = c.throwOf
 	return c, nil
 }
@@ -173,9 +180,22 @@ func (c *Converter) push(f *frame.Frame, n int) {
 		return
 	}
 	c.frame, c.skip, c.upTo = f, skip, n
-	c.cfg.Do(len(c.all), c.addOne)
+	c.cfg.Do(len(c.banks)+len(c.press), c.addOne)
+	for _, s := range c.vib {
+		s.watch(f.Counts[s.ch.Input][skip:n], c.next)
+	}
 	c.frame = nil
 	c.next = f.Seq0 + int64(n)
+}
+
+// addPiece gives the frame's new samples to a bank of accelerometers or to a pressure.
+func (c *Converter) addPiece(i int) {
+	if i < len(c.banks) {
+		c.banks[i].add(c.frame.Counts, c.skip, c.upTo)
+		return
+	}
+	s := c.press[i-len(c.banks)]
+	s.add(c.frame.Counts[s.ch.Input][c.skip:c.upTo], c.next)
 }
 
 // drop forgets samples before seq.
@@ -195,6 +215,9 @@ func (c *Converter) drop(seq int64) {
 func (c *Converter) restart(seq int64) {
 	for _, s := range c.all {
 		s.restart()
+	}
+	for _, b := range c.banks {
+		b.filters.Reset()
 	}
 	c.base, c.next = seq, seq
 }

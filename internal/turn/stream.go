@@ -11,18 +11,16 @@ import (
 type stream struct {
 	ch           Channel
 	accel        bool
-	x            history // of a pressure; an accelerometer keeps the newest block only, as scratch
+	x            history // of a pressure
 	least        float64 // samples, the least σ of a pressure's kernel
 	impact, leak *band   // nil where the sampling rate does not allow them
 	bad          []span  // where values lay outside the valid range
 }
 
 type band struct {
-	filter *dsp.Filter
-	y      history
-	fresh  bool
-	late   int64   // samples by which y lags behind what it was made from
-	rest   float64 // what of a sample is left beside them
+	y    history
+	late int64   // samples by which y lags behind what it was made from
+	rest float64 // what of a sample is left beside them
 }
 
 // span is a range of samples, both ends in it.
@@ -37,7 +35,7 @@ const strays = 0.005
 
 func newBand(s dsp.SOS) *band {
 	d := delay(s)
-	return &band{filter: dsp.NewFilter(s), fresh: true, late: int64(math.Round(d)), rest: d - math.Round(d)}
+	return &band{late: int64(math.Round(d)), rest: d - math.Round(d)}
 }
 
 // delay is what a causal filter makes of "when", in samples: the centre of the energy of its answer to an impulse,
@@ -57,45 +55,30 @@ func delay(s dsp.SOS) float64 {
 // lived gives the values from which what happened at sample 0 of the history and later can be read in place.
 func (b *band) lived() []float64 { return b.y.live()[b.late:] }
 
-// add takes the samples from seq on.
+// add takes a pressure's samples from seq on.
 func (s *stream) add(counts []int32, seq int64) {
-	if len(counts) == 0 {
-		return
-	}
-	if s.accel {
-		s.x.reset()
-	}
-	x := s.x.more(len(counts))
-	gain, offset := s.ch.Gain, s.ch.Offset
-	least, most := counts[0], counts[0]
-	for i, n := range counts {
-		x[i] = gain*float64(n) + offset
-		least, most = min(least, n), max(most, n)
-	}
-	if s.outside(gain*float64(least)+offset) || s.outside(gain*float64(most)+offset) {
-		s.watch(x, seq)
-	}
-	switch {
-	case s.impact == nil:
-	case s.leak == nil:
-		s.impact.settle(x[0])
-		s.impact.filter.Process(s.impact.y.more(len(x)), x)
-	default:
-		s.impact.settle(x[0])
-		s.leak.settle(x[0])
-		dsp.Both(s.impact.filter, s.leak.filter, s.impact.y.more(len(x)), s.leak.y.more(len(x)), x)
-	}
+	dsp.Values(s.x.more(len(counts)), counts, s.ch.Gain, s.ch.Offset)
+	s.watch(counts, seq)
 }
+
+// value is a sample's; the conversion keeps a compiler from fusing what dsp.Values does not fuse.
+func (s *stream) value(n int32) float64 { return float64(s.ch.Gain*float64(n)) + s.ch.Offset }
 
 func (s *stream) outside(v float64) bool {
 	return (s.ch.Min != 0 || s.ch.Max != 0) && (v < s.ch.Min || v > s.ch.Max)
 }
 
 // watch notes the first and the last value outside the valid range.
-func (s *stream) watch(x []float64, seq int64) {
+func (s *stream) watch(counts []int32, seq int64) {
+	if s.ch.Min == 0 && s.ch.Max == 0 || len(counts) == 0 {
+		return
+	}
+	if least, most := dsp.Extremes(counts); !s.outside(s.value(least)) && !s.outside(s.value(most)) {
+		return
+	}
 	out := span{from: -1, to: -1}
-	for i, v := range x {
-		if s.outside(v) {
+	for i, n := range counts {
+		if s.outside(s.value(n)) {
 			if out.from < 0 {
 				out.from = seq + int64(i)
 			}
@@ -104,14 +87,6 @@ func (s *stream) watch(x []float64, seq int64) {
 		}
 	}
 	s.bad = append(s.bad, out)
-}
-
-// settle puts a filter that has seen nothing in the state of a stream that has always been x.
-func (b *band) settle(x float64) {
-	if b.fresh {
-		b.filter.Settle(x)
-		b.fresh = false
-	}
 }
 
 // drop forgets n samples; seq is the first that stays.
@@ -137,7 +112,6 @@ func (s *stream) restart() {
 	for _, b := range [2]*band{s.impact, s.leak} {
 		if b != nil {
 			b.y.reset()
-			b.fresh = true
 		}
 	}
 }

@@ -1,0 +1,44 @@
+package dsp
+
+import "golang.org/x/sys/cpu"
+
+// hasAVX2 is read once; nothing but speed hangs on it, since both forms give the same bits.
+var hasAVX2 = cpu.X86.HasAVX2
+
+// bankRun takes whole fours of samples in vectors and leaves the rest to the plain form.
+func bankRun(b *Bank, from, n int) {
+	if m := n &^ 3; hasAVX2 && m > 0 {
+		bankAVX2(b, from, m)
+		from, n = from+m, n-m
+	}
+	if n > 0 {
+		bankPlain(b, from, n)
+	}
+}
+
+// bankAVX2 is bankPlain with all four lanes side by side; n is a multiple of four.
+//
+//go:noescape
+func bankAVX2(b *Bank, from, n int)
+
+// valuesRun does the first n of them.
+func valuesRun(dst []float64, x []int32, gain, offset float64) (n int) {
+	if n = len(x) &^ 7; !hasAVX2 || n == 0 {
+		return 0
+	}
+	valuesAVX2(&dst[0], &x[0], n, gain, offset)
+	return n
+}
+
+//go:noescape
+func valuesAVX2(dst *float64, x *int32, n int, gain, offset float64)
+
+func extremesRun(x []int32) (least, most int32) {
+	if hasAVX2 {
+		return extremesAVX2(&x[0], len(x))
+	}
+	return extremesPlain(x)
+}
+
+//go:noescape
+func extremesAVX2(x *int32, n int) (least, most int32)
