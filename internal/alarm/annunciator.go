@@ -20,16 +20,21 @@ const (
 )
 
 // Timing is how a point's condition becomes an alarm and returns.
+//
+// A delay in turns counts evaluations that could judge the point, the first one included; with a delay in time as well,
+// both must have passed.
 type Timing struct {
 	OnDelay, OffDelay time.Duration
+	OnTurns, OffTurns int
 	Latch             bool // stays until it is acknowledged and reset, though the condition has gone
 }
 
 // Config is fixed for the life of an Annunciator.
 type Config struct {
-	Default Timing
-	Points  map[string]Timing // by key, where a point differs
-	MaxGap  time.Duration     // a longer time between two evaluations (a restart, a clock step) counts for no delay; default 1 min
+	Default  Timing
+	Points   map[string]Timing // by key, where a point differs
+	MaxShelf time.Duration     // the longest shelf; default 24 h
+	MaxGap   time.Duration     // a longer time between two evaluations (a restart, a clock step) counts for no delay; default 1 min
 }
 
 // Annunciator holds every alarm point. It has no clock: time is an argument. Not safe for concurrent use.
@@ -46,6 +51,9 @@ type Annunciator struct {
 func New(cfg Config) *Annunciator {
 	if cfg.MaxGap <= 0 {
 		cfg.MaxGap = time.Minute
+	}
+	if cfg.MaxShelf <= 0 {
+		cfg.MaxShelf = 24 * time.Hour
 	}
 	return &Annunciator{cfg: cfg, points: map[string]*Point{}, nextID: 1}
 }
@@ -115,14 +123,14 @@ func (a *Annunciator) advance(p *Point, c *Condition, dt time.Duration, now time
 	}
 	switch {
 	case c.Severity > level:
-		p.Falling, p.OffFor, p.OffLevel = false, 0, NoSeverity
-		if !p.Rising {
-			p.Rising, p.OnFor, p.OnLevel = true, 0, c.Severity
+		p.Falling, p.OffFor, p.OffTurns, p.OffLevel = false, 0, 0, NoSeverity
+		if p.OnTurns++; !p.Rising {
+			p.Rising, p.OnFor, p.OnTurns, p.OnLevel = true, 0, 1, c.Severity
 		} else {
 			p.OnFor += dt
 			p.OnLevel = min(p.OnLevel, c.Severity)
 		}
-		if p.OnFor < t.OnDelay {
+		if p.OnFor < t.OnDelay || p.OnTurns < t.OnTurns {
 			return ""
 		}
 		fresh := !p.Inner.Active()
@@ -134,9 +142,9 @@ func (a *Annunciator) advance(p *Point, c *Condition, dt time.Duration, now time
 			note = a.activation(p, now)
 		}
 	case c.Severity < level:
-		p.Rising, p.OnFor, p.OnLevel = false, 0, NoSeverity
-		if !p.Falling {
-			p.Falling, p.OffFor, p.OffLevel = true, 0, c.Severity
+		p.Rising, p.OnFor, p.OnTurns, p.OnLevel = false, 0, 0, NoSeverity
+		if p.OffTurns++; !p.Falling {
+			p.Falling, p.OffFor, p.OffTurns, p.OffLevel = true, 0, 1, c.Severity
 		} else {
 			p.OffFor += dt
 			p.OffLevel = max(p.OffLevel, c.Severity)
@@ -145,7 +153,7 @@ func (a *Annunciator) advance(p *Point, c *Condition, dt time.Duration, now time
 		if p.Chattering {
 			hold = max(hold, chatterSpan)
 		}
-		if p.OffFor < hold {
+		if p.OffFor < hold || p.OffTurns < t.OffTurns {
 			return ""
 		}
 		to := p.OffLevel
@@ -253,7 +261,11 @@ func (a *Annunciator) show(out []Transition, p *Point, now time.Time, by, note s
 		p.State, p.Since = state, now
 		return out
 	}
-	tr := Transition{ID: a.nextID, Key: p.Key, Subject: p.Subject, Kind: p.Kind, From: p.State, To: state, Severity: sev, Was: p.Severity,
+	from := p.State
+	if from == Unknown && state.Open() {
+		from = Normal // where the diagram begins: that nothing had judged the point before is no state of the plant
+	}
+	tr := Transition{ID: a.nextID, Key: p.Key, Subject: p.Subject, Kind: p.Kind, From: from, To: state, Severity: sev, Was: p.Severity,
 		At: now, Turn: p.Turn, Seq0: p.Seq0, Seq1: p.Seq1, Sentence: p.Sentence, By: by, Note: note, Order: p.Order, Flood: a.flood}
 	if p.Detail != nil {
 		tr.Detail = p.Detail
@@ -271,6 +283,12 @@ func (a *Annunciator) Standing(key string) bool {
 	p := a.points[key]
 	return p != nil && p.Inner.Active()
 }
+
+// Last is the id of the newest transition; 0 before the first.
+func (a *Annunciator) Last() uint64 { return a.nextID - 1 }
+
+// GoOnAfter lets ids go on after one that a journal holds. A snapshot that was lost must not make them begin anew.
+func (a *Annunciator) GoOnAfter(id uint64) { a.nextID = max(a.nextID, id+1) }
 
 // Flood reports whether more alarms come in than a person can follow.
 func (a *Annunciator) Flood() bool { return a.flood }

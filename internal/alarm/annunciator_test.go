@@ -2,6 +2,7 @@ package alarm
 
 import (
 	"encoding/json"
+	"errors"
 	"fmt"
 	"math"
 	"strings"
@@ -26,6 +27,8 @@ func letter(a *Annunciator, key string) byte {
 		return 'G'
 	case p.State == Suppressed:
 		return 'H'
+	case p.State == OutOfService:
+		return 'I'
 	case p.Rising && !p.Inner.Active():
 		return 'P'
 	}
@@ -68,9 +71,10 @@ func TestSeriesGivesStates(t *testing.T) {
 }
 
 // The transition diagram of ANSI/ISA-18.2-2016 (states A normal, B unacknowledged, C acknowledged, D returned
-// unacknowledged, E and F latched, G shelved, H suppressed by design; reference/handbook.md 9), act by act.
+// unacknowledged, E and F latched, G shelved, H suppressed by design, I out of service; reference/handbook.md 9), act by
+// act.
 // N: condition gone, 1-3: condition with that severity, ?: cannot be judged, S: suppressed by design, a: acknowledge,
-// r: reset, h: shelve for 10 s, u: unshelve, lower x: an act that must be refused follows.
+// r: reset, h: shelve for an hour, u: unshelve, o: out of service, i: back in service, x: an act that must be refused follows.
 func TestTransitionDiagram(t *testing.T) {
 	for name, c := range map[string]struct {
 		acts  string
@@ -98,6 +102,14 @@ func TestTransitionDiagram(t *testing.T) {
 		"shelved and stopped":                   {"N2hSu2", false, "NAGGHA"},
 		"unknown from the start":                {"??2", false, "??A"},
 		"stopped from the start":                {"SN", false, "HN"},
+		"out of service hides":                  {"N2oNi", false, "NAIID"},
+		"back in service shows anew":            {"N2aoi", false, "NACIA"},
+		"what came and went out of service":     {"No2Ni", false, "NIIIN"},
+		"nothing to acknowledge out of service": {"N2oxaxrxhxui", false, "NAIIIIIA"},
+		"out of service twice is refused":       {"N2oxo", false, "NAII"},
+		"back only what is out":                 {"N2xi", false, "NAA"},
+		"a shelf goes on behind":                {"N2hoi", false, "NAGIG"},
+		"out of service and stopped":            {"N2oSi2", false, "NAIIHA"},
 	} {
 		t.Run(name, func(t *testing.T) {
 			a := New(Config{Default: Timing{Latch: c.latch}})
@@ -125,13 +137,17 @@ func TestTransitionDiagram(t *testing.T) {
 					refuse = true
 					continue
 				case 'a':
-					tr, err = a.Acknowledge("k", "op", now)
+					tr, err = a.Acknowledge("k", "op", "", now)
 				case 'r':
-					tr, err = a.Reset("k", "op", now)
+					tr, err = a.Reset("k", "op", "", now)
 				case 'h':
-					tr, err = a.Shelve("k", "op", now.Add(time.Hour), now)
+					tr, err = a.Shelve("k", "op", "valve ordered", now.Add(time.Hour), now)
 				case 'u':
-					tr, err = a.Unshelve("k", "op", now)
+					tr, err = a.Unshelve("k", "op", "", now)
+				case 'o':
+					tr, err = a.TakeOut("k", "op", "cover off", now)
+				case 'i':
+					tr, err = a.Return("k", "op", "", now)
 				default:
 					act = false
 					cond := Condition{Key: "k", Subject: "t1.he.suction", Kind: "leaking", Known: r != '?'}
@@ -172,7 +188,7 @@ func TestSeverityChangesAreTransitions(t *testing.T) {
 			got = append(got, fmt.Sprintf("%d:%s>%s %s>%s", i, tr.From, tr.To, tr.Was, tr.Severity))
 		}
 	}
-	want := "2:unknown>unacknowledged none>advisory 5:unacknowledged>unacknowledged advisory>alert " +
+	want := "2:normal>unacknowledged none>advisory 5:unacknowledged>unacknowledged advisory>alert " +
 		"9:unacknowledged>unacknowledged alert>advisory"
 	if strings.Join(got, " ") != want {
 		t.Errorf("got  %s\nwant %s", strings.Join(got, " "), want)
@@ -182,7 +198,7 @@ func TestSeverityChangesAreTransitions(t *testing.T) {
 func TestShelfExpires(t *testing.T) {
 	a := New(Config{})
 	a.Step(at(0), []Condition{{Key: "k", Known: true, Severity: Alert}})
-	if _, err := a.Shelve("k", "op", at(10), at(1)); err != nil {
+	if _, err := a.Shelve("k", "op", "valve ordered", at(10), at(1)); err != nil {
 		t.Fatal(err)
 	}
 	if trs := a.Step(at(9), nil); len(trs) != 0 {
@@ -192,17 +208,23 @@ func TestShelfExpires(t *testing.T) {
 	if len(trs) != 1 || trs[0].From != Shelved || trs[0].To != Unacked || trs[0].Note != "shelving expired" {
 		t.Fatalf("at its time: %+v", trs)
 	}
-	for _, c := range []struct {
-		name string
-		err  error
-	}{
-		{"no end in the future", second(a.Shelve("k", "op", at(11), at(11)))},
-		{"no name", second(a.Shelve("k", "", at(20), at(11)))},
-		{"no point", second(a.Shelve("other", "op", at(20), at(11)))},
+	for name, c := range map[string]struct{ got, want error }{
+		"no end in the future": {second(a.Shelve("k", "op", "r", at(11), at(11))), ErrUntil},
+		"no name":              {second(a.Shelve("k", "", "r", at(20), at(11))), ErrBy},
+		"no point":             {second(a.Shelve("other", "op", "r", at(20), at(11))), ErrNoPoint},
+		"no reason":            {second(a.Shelve("k", "op", "", at(20), at(11))), ErrReason},
+		"too long":             {second(a.Shelve("k", "op", "r", at(12+86400), at(11))), ErrTooLong},
+		"out without a reason": {second(a.TakeOut("k", "op", "", at(11))), ErrReason},
+		"out without a name":   {second(a.TakeOut("k", "", "r", at(11))), ErrBy},
+		"not out":              {second(a.Return("k", "op", "", at(11))), ErrState},
 	} {
-		if c.err == nil {
-			t.Errorf("%s: shelved all the same", c.name)
+		if !errors.Is(c.got, c.want) {
+			t.Errorf("%s: %v", name, c.got)
 		}
+	}
+	tr, err := a.Shelve("k", "op", "valve ordered", at(20), at(11))
+	if err != nil || tr.Note != "shelved until "+at(20).Format(time.RFC3339)+": valve ordered" || tr.By != "op" {
+		t.Errorf("%+v, %v", tr, err)
 	}
 }
 
@@ -258,7 +280,7 @@ func TestFloodAndFirstUp(t *testing.T) {
 	for i := range 11 {
 		k := fmt.Sprintf("k%02d", 20-i)
 		a.Step(at(700), []Condition{{Key: k, Known: true}})
-		if _, err := a.Acknowledge(k, "op", at(701)); err != nil {
+		if _, err := a.Acknowledge(k, "op", "", at(701)); err != nil {
 			t.Fatal(err)
 		}
 	}
@@ -268,7 +290,7 @@ func TestFloodAndFirstUp(t *testing.T) {
 }
 
 func TestTextOfStatesAndSeverities(t *testing.T) {
-	for s := Unknown; s <= LatchedAcked; s++ {
+	for s := Unknown; s <= OutOfService; s++ {
 		b, err := json.Marshal(s)
 		var back State
 		if err != nil || json.Unmarshal(b, &back) != nil || back != s {

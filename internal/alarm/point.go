@@ -24,14 +24,19 @@ type Point struct {
 
 	ShelvedBy    string    `json:"shelved_by,omitempty"`
 	ShelvedUntil time.Time `json:"shelved_until,omitzero"`
+	ShelvedWhy   string    `json:"shelved_why,omitempty"`
+	OutBy        string    `json:"out_by,omitempty"` // who took it out of service; empty: in service
+	OutWhy       string    `json:"out_why,omitempty"`
 	ByDesign     string    `json:"by_design,omitempty"`
 	Chattering   bool      `json:"chattering,omitempty"`
 
 	// What the point would show were it neither shelved nor suppressed.
 	Inner     State         `json:"inner"`
-	Level     Severity      `json:"level"`     // of Inner
-	Announced bool          `json:"announced"` // this occurrence has been shown to people
-	OnFor     time.Duration `json:"on_for"`    // how long it has asked to rise
+	Level     Severity      `json:"level"`              // of Inner
+	Announced bool          `json:"announced"`          // this occurrence has been shown to people
+	OnFor     time.Duration `json:"on_for"`             // how long it has asked to rise
+	OnTurns   int           `json:"on_turns,omitempty"` // the same in evaluations that could judge it
+	OffTurns  int           `json:"off_turns,omitempty"`
 	OnLevel   Severity      `json:"on_level"`  // the level held throughout OnFor
 	OffFor    time.Duration `json:"off_for"`   // how long it has asked to fall
 	OffLevel  Severity      `json:"off_level"` // the highest level during OffFor
@@ -41,9 +46,11 @@ type Point struct {
 	Recent    []time.Time   `json:"recent,omitempty"` // activations of the last minute, for chatter
 }
 
-// shown is what people see: shelving hides everything (a person asked for it), suppression by design comes next.
+// shown is what people see: a person's word comes before suppression by design, out of service before a shelf.
 func (p *Point) shown() (State, Severity) {
 	switch {
+	case p.OutBy != "":
+		return OutOfService, NoSeverity
 	case !p.ShelvedUntil.IsZero():
 		return Shelved, NoSeverity
 	case p.ByDesign != "":
@@ -56,5 +63,6 @@ func (p *Point) shown() (State, Severity) {
 
 // rest clears both delays.
 func (p *Point) rest() {
-	p.Rising, p.Falling, p.OnFor, p.OffFor, p.OnLevel, p.OffLevel = false, false, 0, 0, NoSeverity, NoSeverity
+	p.Rising, p.OnFor, p.OnTurns, p.OnLevel = false, 0, 0, NoSeverity
+	p.Falling, p.OffFor, p.OffTurns, p.OffLevel = false, 0, 0, NoSeverity
 }

@@ -3,7 +3,7 @@ package alarm
 import "fmt"
 
 var stateText = [...]string{"unknown", "normal", "unacknowledged", "acknowledged", "returned-unacknowledged", "shelved",
-	"suppressed", "latched-unacknowledged", "latched-acknowledged"}
+	"suppressed", "latched-unacknowledged", "latched-acknowledged", "out-of-service"}
 
 var severityText = [...]string{"none", "advisory", "alert", "danger"}
 

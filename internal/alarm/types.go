@@ -16,6 +16,7 @@ const (
 	Suppressed      // by design: machine stopped, starting, unloaded, duty not seen
 	LatchedUnacked  // a latching point: condition gone, neither acknowledged nor reset
 	LatchedAcked    // a latching point: condition gone, acknowledged, waits for a reset
+	OutOfService    // taken out by a person, with a reason and without an end: maintenance
 )
 
 // Severity ranks alarms: advisory, alert, danger.
@@ -58,9 +59,27 @@ type Transition struct {
 	Seq0     int64     `json:"seq0"`
 	Seq1     int64     `json:"seq1"`
 	Sentence string    `json:"sentence"`
-	By       string    `json:"by,omitempty"` // who acknowledged or shelved
+	By       string    `json:"by,omitempty"` // who acknowledged, shelved, took out of service …
 	Note     string    `json:"note,omitempty"`
 	Order    int       `json:"order,omitempty"` // place in the first-up order: 1 came first since nothing stood; 0 not standing
 	Flood    bool      `json:"flood,omitempty"` // more activations than a person can follow are coming in
 	Detail   any       `json:"detail,omitempty"`
+}
+
+// Act is one order of a person, carried out or refused: the other kind of record of the journal. It stands before the
+// transitions that it made.
+type Act struct {
+	ID          uint64    `json:"id"`    // rises by one for ever, apart from the transitions' ids
+	After       uint64    `json:"after"` // id of the newest transition when it was done: its place among them
+	At          time.Time `json:"at"`
+	Verb        string    `json:"verb"`
+	Key         string    `json:"key,omitempty"`     // alarm point
+	Subject     string    `json:"subject,omitempty"` // valve group, baseline …, for orders that are not about an alarm point
+	By          string    `json:"by"`
+	Reason      string    `json:"reason,omitempty"`
+	Via         string    `json:"via"` // page, api, tool, mqtt
+	Accepted    bool      `json:"accepted"`
+	Said        string    `json:"said"`                  // what was done, or why it was refused
+	Transitions []uint64  `json:"transitions,omitempty"` // ids of what it changed
+	Clip        string    `json:"clip,omitempty"`        // raw samples it protected
 }

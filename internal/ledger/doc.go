@@ -10,6 +10,7 @@
 //
 //	head      "format"                       "lapwing ledger layout 1"
 //	journal   transition id, 8 bytes BE  ->  CRC32C, JSON of alarm.Transition
+//	act       act id, 8 bytes BE         ->  CRC32C, JSON of alarm.Act; its place among transitions is inside
 //	outbox    a sub-bucket per class: message id, 8 bytes BE -> CRC32C, flags, created, topic, payload
 //	doc       name                       ->  CRC32C, JSON
 //	baseline  version, 8 bytes BE        ->  CRC32C, JSON of created, note and the baseline

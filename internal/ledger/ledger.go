@@ -17,6 +17,7 @@ var ErrOrder = errors.New("transition out of order")
 
 var (
 	journalBucket  = []byte("journal")
+	actBucket      = []byte("act")
 	outboxBucket   = []byte("outbox")
 	docBucket      = []byte("doc")
 	baselineBucket = []byte("baseline")
@@ -29,7 +30,7 @@ const layoutVersion = 1
 // Options of a ledger; the zero value of a field means its default.
 type Options struct {
 	OutboxMax  int              // messages that may wait; default 100 000
-	JournalMax int              // transitions kept; default 1 000 000, then the oldest are let go and counted
+	JournalMax int              // transitions kept, and as many acts; default 1 000 000, then the oldest are let go and counted
 	Now        func() time.Time // default time.Now
 	LockWait   time.Duration    // for another process that holds the file; default 2 s
 }
@@ -54,6 +55,9 @@ type Stats struct {
 	LastMessage  uint64
 	Transitions  int // in the journal
 	LastJournal  uint64
+	Acts         int // of people, in the journal
+	LastAct      uint64
+	ActsGone     uint64
 	JournalGone  uint64 // let go since the file was made
 	Commits      uint64 // since Open
 	WorstCommit  time.Duration
@@ -156,7 +160,7 @@ func touchAll(tx *bolt.Tx) error {
 
 // prepare makes the buckets, sets bad records apart and counts what is there.
 func (l *Ledger) prepare(tx *bolt.Tx) error {
-	for _, name := range [][]byte{journalBucket, outboxBucket, docBucket, baselineBucket, countBucket, badBucket} {
+	for _, name := range [][]byte{journalBucket, actBucket, outboxBucket, docBucket, baselineBucket, countBucket, badBucket} {
 		if _, err := tx.CreateBucketIfNotExists(name); err != nil {
 			return err
 		}
@@ -188,6 +192,12 @@ func (l *Ledger) prepare(tx *bolt.Tx) error {
 	if last, _ := j.Cursor().Last(); last != nil {
 		s.LastJournal = binary.BigEndian.Uint64(last)
 	}
+	s.ActsGone = counter(tx, "acts gone")
+	acts := tx.Bucket(actBucket)
+	s.Acts, s.LastAct = acts.Stats().KeyN, counter(tx, "act")
+	if last, _ := acts.Cursor().Last(); last != nil {
+		s.LastAct = max(s.LastAct, binary.BigEndian.Uint64(last))
+	}
 	return nil
 }
 
@@ -217,7 +227,7 @@ func (l *Ledger) setApart(tx *bolt.Tx) (bad []string, err error) {
 		}
 		return err
 	}
-	err = errors.Join(sift("journal", tx.Bucket(journalBucket), true), sift("doc", tx.Bucket(docBucket), false),
+	err = errors.Join(sift("journal", tx.Bucket(journalBucket), true), sift("act", tx.Bucket(actBucket), true), sift("doc", tx.Bucket(docBucket), false),
 		sift("baseline", tx.Bucket(baselineBucket), true), sift("count", tx.Bucket(countBucket), false))
 	for _, c := range classes {
 		err = errors.Join(err, sift("outbox/"+c.String(), outbox(tx, c), true))

@@ -56,6 +56,7 @@ func (l *Ledger) adopt(after *Stats) {
 	s := &l.stat
 	s.Waiting, s.Dropped, s.LastMessage = after.Waiting, after.Dropped, after.LastMessage
 	s.Transitions, s.LastJournal, s.JournalGone = after.Transitions, after.LastJournal, after.JournalGone
+	s.Acts, s.LastAct, s.ActsGone = after.Acts, after.LastAct, after.ActsGone
 }
 
 // Journal appends a transition. Its ID must be above all before it: the same one twice is ErrOrder.
@@ -67,21 +68,43 @@ func (t *Tx) Journal(tr alarm.Transition) error {
 	if err != nil {
 		return fmt.Errorf("journal %d: %w", tr.ID, err)
 	}
-	b := t.tx.Bucket(journalBucket)
-	if err := b.Put(key(tr.ID), rec); err != nil {
+	if err := t.append(journalBucket, tr.ID, rec, &t.stat.Transitions, &t.stat.JournalGone, "journal gone"); err != nil {
 		return fmt.Errorf("journal %d: %w", tr.ID, err)
 	}
 	t.stat.LastJournal = tr.ID
-	t.stat.Transitions++
-	for t.stat.Transitions > t.opt.JournalMax {
+	return nil
+}
+
+// Act appends what a person ordered. Its ID must be above all before it: the same one twice is ErrOrder.
+func (t *Tx) Act(a alarm.Act) error {
+	if a.ID <= t.stat.LastAct {
+		return fmt.Errorf("act %d after %d: %w", a.ID, t.stat.LastAct, ErrOrder)
+	}
+	rec, err := sealJSON(a)
+	if err != nil {
+		return fmt.Errorf("act %d: %w", a.ID, err)
+	}
+	if err := t.append(actBucket, a.ID, rec, &t.stat.Acts, &t.stat.ActsGone, "acts gone"); err != nil {
+		return fmt.Errorf("act %d: %w", a.ID, err)
+	}
+	t.stat.LastAct = a.ID
+	return setCounter(t.tx, "act", a.ID)
+}
+
+// append puts a record at the end of a list of bounded length; the oldest are let go and counted.
+func (t *Tx) append(bucket []byte, id uint64, rec []byte, n *int, gone *uint64, counted string) error {
+	b := t.tx.Bucket(bucket)
+	if err := b.Put(key(id), rec); err != nil {
+		return err
+	}
+	for *n++; *n > t.opt.JournalMax; *n-- {
 		k, _ := b.Cursor().First()
 		if err := b.Delete(append([]byte{}, k...)); err != nil {
-			return fmt.Errorf("journal: let go: %w", err)
+			return fmt.Errorf("let go: %w", err)
 		}
-		t.stat.Transitions--
-		t.stat.JournalGone++
-		if err := setCounter(t.tx, "journal gone", t.stat.JournalGone); err != nil {
-			return fmt.Errorf("journal: let go: %w", err)
+		*gone++
+		if err := setCounter(t.tx, counted, *gone); err != nil {
+			return fmt.Errorf("let go: %w", err)
 		}
 	}
 	return nil

@@ -28,6 +28,9 @@ type Source interface {
 	Now() *wire.Now
 	// Export writes a clip and what belongs to it (WAV, skid file, process values, note) into dir.
 	Export(ctx context.Context, clip, dir string) error
+	// Order carries an order out between two turns, or refuses it; both are in the receipt. An error says that nothing
+	// was done.
+	Order(ctx context.Context, o wire.Order) (wire.Receipt, error)
 }
 
 // ErrNoClip says that a clip of that name does not exist. Source.Export wraps it.
@@ -112,7 +115,13 @@ func guard(next http.Handler) http.Handler {
 			http.Error(w, "this page answers to loopback addresses only", http.StatusMisdirectedRequest)
 			return
 		}
-		if r.Method != http.MethodGet && r.Method != http.MethodHead {
+		switch {
+		case r.URL.Path == ordersPath && r.Method == http.MethodPost:
+			if status, why := mayOrder(r); status != 0 {
+				http.Error(w, why, status)
+				return
+			}
+		case r.Method != http.MethodGet && r.Method != http.MethodHead:
 			h.Set("Allow", "GET, HEAD")
 			http.Error(w, "read only", http.StatusMethodNotAllowed)
 			return
@@ -147,6 +156,7 @@ func routes(src Source, log *slog.Logger) http.Handler {
 	mux.HandleFunc("GET /api/v1/clips", func(w http.ResponseWriter, r *http.Request) {
 		sendJSON(w, list(src.Now().Clips), log)
 	})
+	mux.HandleFunc("POST "+ordersPath, order(src, log))
 	c := clipper{src: src, log: log, busy: make(chan struct{}, exports)}
 	mux.HandleFunc("GET /api/v1/clips/{id}", c.send)
 	return mux

@@ -32,6 +32,8 @@ type still struct {
 	now     *wire.Now
 	export  func(ctx context.Context, clip, dir string) error
 	exports int
+	order   func(ctx context.Context, o wire.Order) (wire.Receipt, error)
+	ordered []wire.Order
 }
 
 func (s *still) Now() *wire.Now { return s.now }
@@ -42,6 +44,14 @@ func (s *still) Export(ctx context.Context, clip, dir string) error {
 		return fmt.Errorf("test: clip %q: %w", clip, ErrNoClip)
 	}
 	return s.export(ctx, clip, dir)
+}
+
+func (s *still) Order(ctx context.Context, o wire.Order) (wire.Receipt, error) {
+	s.ordered = append(s.ordered, o)
+	if s.order == nil {
+		return wire.Receipt{Version: 1, Act: wire.Act{Type: "act", ID: 1, Verb: o.Verb, By: o.By, Via: o.Via, Accepted: true}, OnDisk: true}, nil
+	}
+	return s.order(ctx, o)
 }
 
 func open(t *testing.T, src Source) string {

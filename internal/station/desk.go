@@ -14,7 +14,6 @@ import (
 	"time"
 
 	"lapwing/internal/alarm"
-	"lapwing/internal/duty"
 	"lapwing/internal/ledger"
 	"lapwing/internal/panel"
 	"lapwing/internal/tape"
@@ -103,33 +102,45 @@ func (s *Station) book(o *Output) error {
 		s.desk.say("learning", "the learning run gave no baseline: "+o.LearnError.Error())
 	}
 	if o.Baseline != nil {
-		if err := s.keepBaseline(o.Baseline); err != nil {
-			return err
-		}
+		s.unkept = o.Baseline
 	}
-	for i := range o.Transitions {
-		t := &o.Transitions[i]
-		said := wire.FromTransition(s.sk.ID, t, s.protect(t))
-		said.Journal = s.desk.id
-		s.unsaid = append(s.unsaid, saying{*t, said})
-	}
-	return s.commit()
+	s.append(o.Transitions)
+	return errors.Join(s.keepBaseline(), s.commit())
 }
 
-// saying is a transition with its outside form.
+// append takes transitions in for the next commit. After this nothing but the end of the process can lose them.
+func (s *Station) append(trs []alarm.Transition) {
+	for i := range trs {
+		t := &trs[i]
+		said := wire.FromTransition(s.sk.ID, t, s.protect(t))
+		said.Journal = s.desk.id
+		s.unsaid = append(s.unsaid, saying{tr: *t, said: said})
+	}
+}
+
+// saying is an entry of the journal that is not on disk yet: a transition with its outside form, or a person's act.
 type saying struct {
 	tr   alarm.Transition
 	said wire.Alarm
+	act  *alarm.Act
 }
 
-// commit writes the transitions that are not on disk yet. A disk that refuses (full, read-only) loses none of them: they
+// commit writes the entries that are not on disk yet. A disk that refuses (full, read-only) loses none of them: they
 // are tried again with every turn, in order, and page and health say so.
 func (s *Station) commit() error {
 	if len(s.unsaid) == 0 {
 		return nil
 	}
 	err := s.ledger.Commit(func(tx *ledger.Tx) error {
+		changed := false
 		for i := range s.unsaid {
+			if s.unsaid[i].act != nil {
+				if err := tx.Act(*s.unsaid[i].act); err != nil {
+					return err
+				}
+				continue
+			}
+			changed = true
 			tr, said := s.unsaid[i].tr, s.unsaid[i].said
 			if err := tx.Journal(tr); err != nil {
 				return err
@@ -148,23 +159,30 @@ func (s *Station) commit() error {
 				return err
 			}
 		}
+		if !changed {
+			return nil
+		}
 		if err := tx.PutDoc(docLine, s.line.Memory()); err != nil {
 			return err
 		}
 		return tx.AlarmSnapshot(s.line.Alarms().Snapshot())
 	})
 	if err != nil {
-		s.desk.say("ledger", fmt.Sprintf("%d alarm transitions are not on disk yet and were not sent: %v", len(s.unsaid), err))
+		s.desk.say("ledger", fmt.Sprintf("%d entries of the alarm journal are not on disk yet and were not sent: %v", len(s.unsaid), err))
 		return err
 	}
 	s.desk.say("ledger", "")
 	s.desk.mu.Lock()
 	for i := range s.unsaid {
+		if s.unsaid[i].act != nil {
+			continue
+		}
 		a := &s.unsaid[i].said
 		s.desk.note(*a)
 		s.log.Info("alarm", "id", a.ID, "point", a.Key, "from", a.From, "to", a.To, "severity", a.Severity, "said", a.Sentence)
 	}
 	s.desk.mu.Unlock()
+	clear(s.unsaid)
 	s.unsaid = s.unsaid[:0]
 	if s.pub != nil {
 		s.pub.Wake()
@@ -172,7 +190,12 @@ func (s *Station) commit() error {
 	return nil
 }
 
-func (s *Station) keepBaseline(b *duty.Baseline) error {
+// keepBaseline writes a baseline that is not on disk yet; one that the disk refuses is tried again with every turn.
+func (s *Station) keepBaseline() error {
+	b := s.unkept
+	if b == nil {
+		return nil
+	}
 	raw, err := b.Encode()
 	if err != nil {
 		return fmt.Errorf("station: baseline: %w", err)
@@ -180,14 +203,15 @@ func (s *Station) keepBaseline(b *duty.Baseline) error {
 	if _, err := s.ledger.PutBaseline("learning run", json.RawMessage(raw)); err != nil {
 		return err
 	}
+	s.unkept = nil
 	s.log.Info("baseline learnt", "first_turn", b.Turn0, "last_turn", b.Turn1, "load_steps", len(b.Cells))
 	return nil
 }
 
 // protect asks the tape for the raw samples around an alarm that is raised or grows worse.
 func (s *Station) protect(t *alarm.Transition) string {
-	if t.To != alarm.Unacked || t.Seq1 == 0 {
-		return ""
+	if t.To != alarm.Unacked || t.Seq1 == 0 || t.By != "" || t.From == alarm.Shelved || t.From == alarm.Suppressed {
+		return "" // what comes back into view was raised long ago, perhaps in a run with other sample numbers
 	}
 	from := max(0, t.Seq0-int64(s.sk.Tape.Pre.Seconds()*s.info.Rate))
 	c, err := s.tape.Protect(tape.Clip{

@@ -63,7 +63,17 @@ type Station struct {
 	progress atomic.Int64 // samples through the line
 	dropped  atomic.Int64 // blocks the line had no room for
 	desk     desk
-	unsaid   []saying // transitions not yet on disk; the compute goroutine's
+	orders   chan *request
+	ended    chan struct{} // closed when no order is carried out any more
+	endOnce  sync.Once
+
+	// The compute goroutine's own.
+	unsaid     []saying       // journal entries not yet on disk
+	unkept     *duty.Baseline // not yet on disk
+	lastAct    uint64         // id of the newest act
+	begun      bool
+	first, end int64     // sample numbers: of the first that came, and after the newest
+	heard      time.Time // monotonic: when the newest block came
 
 	closeOnce sync.Once
 	closeErr  error
@@ -81,7 +91,7 @@ func Open(o Options) (_ *Station, err error) {
 	if o.Log == nil {
 		o.Log = slog.New(slog.DiscardHandler)
 	}
-	s := &Station{o: o, log: o.Log}
+	s := &Station{o: o, log: o.Log, orders: make(chan *request, ordersWait), ended: make(chan struct{})}
 	if s.sk, err = skid.Load(o.SkidFile); err != nil {
 		return nil, err
 	}
@@ -99,6 +109,7 @@ func Open(o Options) (_ *Station, err error) {
 	if s.ledger, err = ledger.Open(filepath.Join(o.State, "state.db"), ledger.Options{}); err != nil {
 		return nil, err
 	}
+	s.lastAct = s.ledger.Stats().LastAct
 	newest, err := s.newestEntry()
 	if err != nil {
 		return nil, err
@@ -137,6 +148,7 @@ func (s *Station) openLine() error {
 			return err
 		}
 	}
+	alarms.GoOnAfter(s.ledger.Stats().LastJournal)
 	base, err := s.baseline()
 	if err != nil {
 		return err
@@ -251,7 +263,7 @@ type parcel struct {
 func (s *Station) Run(ctx context.Context) error {
 	inner, stop := context.WithCancel(context.WithoutCancel(ctx))
 	var edges sync.WaitGroup
-	defer func() { stop(); edges.Wait() }()
+	defer func() { s.endOrders(); stop(); edges.Wait() }()
 	if s.panel != nil {
 		edges.Go(func() {
 			if err := s.panel.Serve(); err != nil {
@@ -274,6 +286,7 @@ func (s *Station) Run(ctx context.Context) error {
 		srcErr <- s.read(reading, queue)
 	}()
 	lineErr := s.compute(queue)
+	edges.Go(func() { s.serveOrders(inner) })
 	stopReading()
 	for range queue { // a line that gave up must not leave the source waiting
 	}
@@ -357,7 +370,26 @@ func (s *Station) compute(queue <-chan *parcel) error {
 	}
 	lastHealth := time.Now()
 	var shown int64
-	for p := range queue {
+	silent := time.NewTicker(time.Second) // for a source that gives nothing
+	defer silent.Stop()
+	for {
+		var p *parcel
+		var more bool
+		select {
+		case p, more = <-queue:
+		case a := <-s.orders:
+			s.carryOut(a)
+			continue
+		case <-silent.C:
+			if err := s.expire(); err != nil && failing == nil {
+				failing = err
+				s.log.Error("results cannot be kept; trying again with every turn", "err", err)
+			}
+			continue
+		}
+		if !more {
+			break
+		}
 		for _, r := range p.rows {
 			h.put(r)
 		}
@@ -365,7 +397,9 @@ func (s *Station) compute(queue <-chan *parcel) error {
 			return fmt.Errorf("station: line: %w", err)
 		}
 		s.progress.Add(int64(p.block.N))
-		if end := p.block.Seq0 + int64(p.block.N); end-shown >= int64(s.info.Rate) {
+		end := p.block.Seq0 + int64(p.block.N)
+		s.pass(p.block.Seq0, end)
+		if end-shown >= int64(s.info.Rate) {
 			shown = end // a machine that stands still gives no turns: its snapshot is renewed all the same
 			s.publish(&Output{}, s.line.utc(float64(end)/s.info.Rate))
 		}
@@ -382,9 +416,21 @@ func (s *Station) compute(queue <-chan *parcel) error {
 	return failing
 }
 
+// pass notes where the sample clock stands.
+func (s *Station) pass(from, end int64) {
+	if !s.begun {
+		s.begun, s.first = true, from
+	}
+	s.end, s.heard = end, time.Now()
+}
+
+// endOrders lets nobody wait for an answer that will not come.
+func (s *Station) endOrders() { s.endOnce.Do(func() { close(s.ended) }) }
+
 // Close stops what Run left and writes what must outlive the process. It is safe after a failed Run and twice.
 func (s *Station) Close() error {
 	s.closeOnce.Do(func() {
+		s.endOrders()
 		if s.line != nil && s.ledger != nil {
 			s.closeErr = s.ledger.PutDoc(docLine, s.line.Memory())
 		}

@@ -10,7 +10,8 @@ import (
 //go:embed schema/*.json
 var schemas embed.FS
 
-// Schema gives the JSON Schema (draft 2020-12) of a message or a record: alarm, standing, features, health; turn,
+// Schema gives the JSON Schema (draft 2020-12) of a message, an order or a record: alarm, standing, features, health;
+// order, receipt, act; turn,
 // finding, transition.
 func Schema(name string) ([]byte, error) {
 	b, err := schemas.ReadFile("schema/" + name + ".json")

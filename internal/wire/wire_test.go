@@ -171,7 +171,7 @@ func TestFinding(t *testing.T) {
 }
 
 func states() *rapid.Generator[alarm.State] {
-	return rapid.SampledFrom([]alarm.State{alarm.Unknown, alarm.Normal, alarm.Unacked, alarm.Acked, alarm.ReturnedUnacked, alarm.Shelved, alarm.Suppressed, alarm.LatchedUnacked, alarm.LatchedAcked})
+	return rapid.SampledFrom([]alarm.State{alarm.Unknown, alarm.Normal, alarm.Unacked, alarm.Acked, alarm.ReturnedUnacked, alarm.Shelved, alarm.Suppressed, alarm.LatchedUnacked, alarm.LatchedAcked, alarm.OutOfService})
 }
 
 func drawTransition(rt *rapid.T, l measure.Layout) *alarm.Transition {
