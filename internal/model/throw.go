@@ -67,6 +67,7 @@ type throw struct {
 	passage             float64 // m³, each
 	discharge           float64 // K, what the discharge thermometer has got to (lagged)
 	next                int64   // number of the next head-end dead centre
+	pin                 pin
 
 	accels []*shaker
 }
@@ -75,7 +76,7 @@ func (m *Machine) buildThrows(seed uint64) error {
 	for i := range m.sk.Throws {
 		st := &m.sk.Throws[i]
 		cyl := st.Cylinder
-		t := &throw{index: i, sk: st, stage: m.stages[st.Stage-1], atm: m.sk.Machine.Atmosphere}
+		t := &throw{index: i, sk: st, stage: m.stages[st.Stage-1], atm: m.sk.Machine.Atmosphere, pin: pin{x0: math.NaN(), x1: math.NaN()}}
 		if t.atm == 0 {
 			t.atm = 101325
 		}
@@ -196,6 +197,7 @@ func (t *throw) advance(m *Machine, before, ddeg float64) {
 	xm := cyl.Travel(deg0 + 0.5*ddeg)
 	x1 := cyl.Travel(deg0 + ddeg)
 	t.travel = x1
+	t.pin.book(t, m.dt, x1, t.beside(crank.HE), t.beside(crank.CE))
 	t.lines(m)
 	t.rings(m)
 	for _, e := range t.ends {
@@ -212,9 +214,10 @@ func (t *throw) advance(m *Machine, before, ddeg float64) {
 	if deg := deg0 + ddeg; deg >= float64(t.next)*360 {
 		f := (float64(t.next)*360 - deg0) / ddeg
 		at := (float64(m.n-1) + f) * m.dt
+		rev := t.pin.turn()
 		for _, e := range t.ends {
 			if e != nil {
-				e.diary.finish(at, e.m, e.idle, m.step)
+				e.diary.finish(at, e.m, e.idle, m.step, rev)
 				if t.next >= 0 {
 					e.diary.begin(t.next, at, e.m)
 				}

@@ -27,9 +27,10 @@ type Truth struct {
 	Leaked    Leaks
 	Stored    float64 // gain of the gas in the end
 
-	Work   float64 // J, ∮ p dV over the turn as work done on the gas (positive for a compressor)
-	Power  float64 // W, Work times mean speed
-	Ps, Pd float64 // Pa, pressure in the passages behind the valves, weighted by the flow; NaN without flow
+	Work   float64        // J, ∮ p dV over the turn as work done on the gas (positive for a compressor)
+	Power  float64        // W, Work times mean speed
+	Ps, Pd float64        // Pa, pressure in the passages behind the valves, weighted by the flow; NaN without flow
+	Pin    crank.Reversal // of the combined load at the throw's crosshead pin
 
 	Impacts []Impact // all impacts above 0.1 m/s, in order
 }
@@ -93,13 +94,13 @@ func (d *diary) begin(rev int64, t, mass float64) {
 	d.cur = b
 }
 
-func (d *diary) finish(t, mass float64, idle bool, step int) {
+func (d *diary) finish(t, mass float64, idle bool, step int, pin crank.Reversal) {
 	b := d.cur
 	if b == nil {
 		return
 	}
 	b.closed = true
-	b.T1, b.Idle, b.Step = t, idle, step
+	b.T1, b.Idle, b.Step, b.Pin = t, idle, step, pin
 	b.Stored = mass - b.m0
 	b.RPM = 60 / (b.T1 - b.T0)
 	b.Power = b.Work / (b.T1 - b.T0)
