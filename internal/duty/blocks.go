@@ -2,6 +2,7 @@ package duty
 
 import (
 	"math"
+	"slices"
 
 	"lapwing/internal/measure"
 )
@@ -50,6 +51,47 @@ func NewBlocks(ref *Reference, cfg BlockConfig) *Blocks {
 	return &Blocks{cfg: cfg, ref: ref, throws: map[int]*gather{}}
 }
 
+// SlowTest is the state of one feature's slow test, to be carried over a restart or a change of baseline.
+type SlowTest struct {
+	Throw   int     `json:"throw"`
+	Subject string  `json:"subject"`
+	Name    string  `json:"name"`
+	Up      float64 `json:"up"`
+	Down    float64 `json:"down"`
+}
+
+// SlowTests gives the slow tests that have anything to remember, by throw and in layout order.
+func (b *Blocks) SlowTests() (out []SlowTest) {
+	for i, f := range b.ref.layout {
+		if g := b.throws[f.Throw]; g != nil && g.drift[i] != nil && *g.drift[i] != (Cusum{}) {
+			out = append(out, SlowTest{f.Throw, f.Subject, f.Name, g.drift[i].Up, g.drift[i].Down})
+		}
+	}
+	return out
+}
+
+// Resume takes slow tests back, apart from those that a renewal has touched: these begin anew. What does not belong to
+// the layout or is no state of a test is left out.
+func (b *Blocks) Resume(tests []SlowTest, touched []int) {
+	for _, t := range tests {
+		i := b.ref.layout.Find(t.Subject, t.Name)
+		ok := func(v float64) bool { return v >= 0 && v <= 2*CusumLimit }
+		if i < 0 || b.ref.layout[i].Throw != t.Throw || slices.Contains(touched, i) || !ok(t.Up) || !ok(t.Down) {
+			continue
+		}
+		b.gather(t.Throw).drift[i] = &Cusum{Up: t.Up, Down: t.Down}
+	}
+}
+
+func (b *Blocks) gather(throw int) *gather {
+	g := b.throws[throw]
+	if g == nil {
+		g = &gather{value: map[int][]float64{}, expected: map[int][]float64{}, res: map[int][]float64{}, drift: map[int]*Cusum{}}
+		b.throws[throw] = g
+	}
+	return g
+}
+
 // Add takes a throw's turn with its deviations; ok tells that a block is complete. Turns that are neither steady nor
 // changing, or whose duty was not seen, are passed over. A load step begins a new block.
 func (b *Blocks) Add(throw int, p Point, v *measure.Vector, devs []Deviation) (blk Block, ok bool) {
@@ -59,11 +101,7 @@ func (b *Blocks) Add(throw int, p Point, v *measure.Vector, devs []Deviation) (b
 	if seen, _ := b.ref.Seen(throw, p); !seen {
 		return blk, false
 	}
-	g := b.throws[throw]
-	if g == nil {
-		g = &gather{value: map[int][]float64{}, expected: map[int][]float64{}, res: map[int][]float64{}, drift: map[int]*Cusum{}}
-		b.throws[throw] = g
-	}
+	g := b.gather(throw)
 	if g.n > 0 && (p.Step != g.point.Step || p.Inferred != g.point.Inferred || v.Turn-g.first > int64(b.cfg.MaxSpan)) {
 		g.clear()
 	}

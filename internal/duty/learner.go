@@ -15,6 +15,8 @@ type LearnConfig struct {
 	Want     int   // turns per load step that a full baseline wants; default 600
 	MinTurns int   // turns without which a load step is not learnt at all; default 45
 	MaxTurns int   // turns kept per cell, above it every other run of turns is dropped; default 6000
+
+	NoWork func(throw, step int) bool // load steps at which a throw does no work and has nothing to learn; nil: none
 }
 
 // Learner collects turns that a person has declared healthy. Only steady turns count.
@@ -24,6 +26,8 @@ type Learner struct {
 	cells        []*lesson
 	turn0, turn1 int64
 	any          bool
+	over         *Baseline // what the run changes; nil: it begins from nothing
+	touched      []int     // of over, the features learnt anew; nil: whole load steps are added
 }
 
 // lesson is one cell's turns.
@@ -56,6 +60,40 @@ func NewLearner(layout measure.Layout, cfg LearnConfig) *Learner {
 	return &Learner{cfg: cfg, layout: layout}
 }
 
+// NewRenewal begins a run that learns some features of a baseline anew, after work on the machine, and leaves the rest
+// of it as it is.
+func NewRenewal(layout measure.Layout, cfg LearnConfig, over *Baseline, touched []int) (*Learner, error) {
+	l, err := NewAddition(layout, cfg, over)
+	if err != nil {
+		return nil, err
+	}
+	l.touched = slices.Clone(touched)
+	l.cfg.Steps, l.cfg.Throws = nil, 0 // only what was learnt before can be learnt anew
+	return l, nil
+}
+
+// NewAddition begins a run that adds load steps to a baseline which has not seen them, and leaves those that it has.
+func NewAddition(layout measure.Layout, cfg LearnConfig, over *Baseline) (*Learner, error) {
+	if _, err := over.Reference(layout); err != nil {
+		return nil, err
+	}
+	l := NewLearner(layout, cfg)
+	l.over = over
+	return l, nil
+}
+
+// wants tells whether the run has a use for a throw's load step.
+func (l *Learner) wants(throw, step int, inferred bool) bool {
+	if l.over == nil {
+		return true
+	}
+	had := l.over.cell(throw, step, inferred) != nil
+	if l.touched == nil {
+		return !had
+	}
+	return had && slices.ContainsFunc(l.touched, func(f int) bool { return l.layout[f].Throw == throw })
+}
+
 // Add takes one turn of one throw.
 func (l *Learner) Add(throw int, p Point, v *measure.Vector) {
 	if p.State != Steady {
@@ -68,18 +106,18 @@ func (l *Learner) Add(throw int, p Point, v *measure.Vector) {
 		l.turn1 = v.Turn
 	}
 	l.any = true
-	l.lesson(throw, p.Step, p.Inferred).add(vars(p.RPM, p.Ps, p.Pd), v, l.cfg.MaxTurns)
+	if l.wants(throw, p.Step, p.Inferred) {
+		l.lesson(throw, p.Step, p.Inferred).add(vars(p.RPM, p.Ps, p.Pd), v, l.cfg.MaxTurns)
+	}
 	// The same turn as it will look when the process values are gone.
-	if !p.Inferred && known(p.OwnPs) && known(p.OwnPd) && p.OwnPs > 0 && p.OwnPd > 0 {
+	if !p.Inferred && known(p.OwnPs) && known(p.OwnPd) && p.OwnPs > 0 && p.OwnPd > 0 && l.wants(throw, p.OwnStep, true) {
 		l.lesson(throw, p.OwnStep, true).add(vars(p.RPM, p.OwnPs, p.OwnPd), v, l.cfg.MaxTurns)
 	}
 }
 
 func (l *Learner) lesson(throw, step int, inferred bool) *lesson {
-	for _, c := range l.cells {
-		if c.throw == throw && c.step == step && c.inferred == inferred {
-			return c
-		}
+	if c := l.find(throw, step, inferred); c != nil {
+		return c
 	}
 	c := &lesson{throw: throw, step: step, inferred: inferred, stride: 1}
 	for i, f := range l.layout {
@@ -167,8 +205,21 @@ func (l *Learner) Coverage() []Coverage {
 		out = append(out, cv)
 		done[c] = true
 	}
+	none := func(t, s int) {
+		out = append(out, Coverage{Throw: t, Step: s, Want: l.cfg.Want, Missing: fmt.Sprintf("%d steady turns: this load step has not been run", l.cfg.Want)})
+	}
+	if l.over != nil && l.touched != nil {
+		for i := range l.over.Cells {
+			if c := &l.over.Cells[i]; !c.Inferred && l.wants(c.Throw, c.Step, false) && l.find(c.Throw, c.Step, false) == nil {
+				none(c.Throw, c.Step)
+			}
+		}
+	}
 	for t := range l.cfg.Throws {
 		for _, s := range l.cfg.Steps {
+			if l.cfg.NoWork != nil && l.cfg.NoWork(t, s) || !l.wants(t, s, false) {
+				continue
+			}
 			found := false
 			for _, c := range l.cells {
 				if c.throw == t && c.step == s && !done[c] {
@@ -177,7 +228,7 @@ func (l *Learner) Coverage() []Coverage {
 				}
 			}
 			if !found {
-				out = append(out, Coverage{Throw: t, Step: s, Want: l.cfg.Want, Missing: fmt.Sprintf("%d steady turns: this load step has not been run", l.cfg.Want)})
+				none(t, s)
 			}
 		}
 	}
@@ -195,9 +246,25 @@ func (l *Learner) Fit(h Header) (*Baseline, error) {
 		h.Turn0, h.Turn1 = l.turn0, l.turn1
 	}
 	b := &Baseline{Version: baselineVersion, LayoutHash: layoutHash(l.layout), Header: h, Cells: []Cell{}}
-	most := 0
+	most, enough := 0, 0
 	for _, c := range l.cells {
-		most = max(most, len(c.turn))
+		if most = max(most, len(c.turn)); len(c.turn) >= l.cfg.MinTurns {
+			enough++
+		}
+	}
+	if enough == 0 {
+		return nil, fmt.Errorf("duty: learn: %d steady turns at the most in one load step, at least %d are needed", most, l.cfg.MinTurns)
+	}
+	if l.over != nil {
+		b.Cells = l.over.Without(l.layout, l.touched).Cells
+	}
+	if l.touched != nil {
+		if err := l.renew(b); err != nil {
+			return nil, fmt.Errorf("duty: learn anew: %w", err)
+		}
+		return b, nil
+	}
+	for _, c := range l.cells {
 		if len(c.turn) < l.cfg.MinTurns {
 			continue
 		}
@@ -206,9 +273,6 @@ func (l *Learner) Fit(h Header) (*Baseline, error) {
 			return nil, fmt.Errorf("duty: learn throw %d, load step %d: %w", c.throw, c.step, err)
 		}
 		b.Cells = append(b.Cells, cell)
-	}
-	if len(b.Cells) == 0 {
-		return nil, fmt.Errorf("duty: learn: %d steady turns at the most in one load step, at least %d are needed", most, l.cfg.MinTurns)
 	}
 	slices.SortStableFunc(b.Cells, func(x, y Cell) int {
 		if x.Throw != y.Throw {
@@ -239,7 +303,7 @@ func (c *lesson) fit(layout measure.Layout) (Cell, error) {
 	cell.MaxLev = 1.5 * quantile(lev, 0.995)
 
 	for k, f := range c.features {
-		m, ok, err := c.fitFeature(layout[f], k, x)
+		m, ok, err := c.fitFeature(layout[f], k, x, nil)
 		if err != nil {
 			return cell, fmt.Errorf("%s %s: %w", layout[f].Subject, layout[f].Name, err)
 		}
@@ -250,8 +314,9 @@ func (c *lesson) fit(layout measure.Layout) (Cell, error) {
 	return cell, nil
 }
 
-// fitFeature fits one feature on the turns that had it. ok is false when those are too few.
-func (c *lesson) fitFeature(f measure.Feature, k int, x [][numTerms]float64) (m Model, ok bool, err error) {
+// fitFeature fits one feature on the turns that had it. ok is false when those are too few. With a prior the change from
+// it is fitted: terms that the turns do not bear stay the prior's.
+func (c *lesson) fitFeature(f measure.Feature, k int, x [][numTerms]float64, prior *Model) (m Model, ok bool, err error) {
 	var idx []int
 	for i := range c.values {
 		if known(c.values[i][k]) {
@@ -269,9 +334,12 @@ func (c *lesson) fitFeature(f measure.Feature, k int, x [][numTerms]float64) (m 
 	sh := shapeOf(own)
 	m.Lo, m.Hi = sh.Lo, sh.Hi
 	xs := make([][numTerms]float64, len(idx))
-	ys := make([]float64, len(idx))
+	ys, raw := make([]float64, len(idx)), make([]float64, len(idx))
 	for j, i := range idx {
-		xs[j], ys[j] = x[i], c.values[i][k]
+		xs[j], raw[j] = x[i], c.values[i][k]
+		if ys[j] = raw[j]; prior != nil {
+			ys[j] -= dot(&prior.Coef, &xs[j])
+		}
 		for t := range xs[j] {
 			if !sh.On[t] || f.Flat && t > 0 { // a feature that comes and goes bears fewer terms than its cell
 				xs[j][t] = 0
@@ -291,9 +359,12 @@ func (c *lesson) fitFeature(f measure.Feature, k int, x [][numTerms]float64) (m 
 		turns[j] = c.turn[i]
 	}
 	m.Lag1 = lag1(res, turns, m.Spread)
-	buf := slices.Clone(ys)
-	slices.Sort(buf)
-	m.Sys = math.Max(heldOut(xs, ys, w, &m), sysFloor(f, quantile(buf, 0.5)))
+	m.Sys = math.Max(heldOut(xs, ys, w, &m), sysFloor(f, median(raw)))
+	if prior != nil {
+		for t := range m.Coef {
+			m.Coef[t] += prior.Coef[t]
+		}
+	}
 	if m.Sys <= 0 { // a feature that is always exactly zero
 		m.Sys = 1e-12
 	}
