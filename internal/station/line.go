@@ -47,6 +47,8 @@ type Line struct {
 	alarms   *alarm.Annunciator
 	limits   []limitWatch
 	sensors  *sensors
+	angles   turn.Config // what turns was made of
+	gauges   *gauges
 
 	vec    measure.Vector
 	win    []window.Input
@@ -109,6 +111,7 @@ type Count struct {
 // Output is what one turn brought. Between turns (its Record has no Type) it brings only that the marks are gone.
 type Output struct {
 	Record      wire.Turn         // of a valid turn with throws or without, see Records
+	Turn        *turn.Turn        // valid until the next turn; nil between turns
 	Windows     window.Result     // valid until the next turn
 	At          time.Time         // of the turn's dead centre
 	Vector      *measure.Vector   // valid until the next turn
@@ -137,6 +140,12 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 	if l.uneven != nil {
 		marks.Marks.Shaft = l.shaft
 	}
+	l.gauges = newGauges(sk, info.Rate)
+	if base != nil && !learn.wanted() {
+		l.gauges.hold(base.Passages)
+	}
+	l.angles = marks
+	l.gauges.configure(&marks)
 	if l.turns, err = turn.New(marks); err != nil {
 		return nil, err
 	}
@@ -187,7 +196,11 @@ func (l *Line) Count() Count { return l.count }
 func (l *Line) Phase() frame.Status { return l.frames.Status() }
 
 // Channels is the state of every channel.
-func (l *Line) Channels() []wire.Channel { return l.sensors.health() }
+func (l *Line) Channels() []wire.Channel {
+	out := l.sensors.health()
+	l.gauges.remark(out)
+	return out
+}
 
 // Learnt gives the steady turns learnt so far and how many are wanted; 0, 0 when no learning run is on.
 func (l *Line) Learnt() (have, want int) {
@@ -218,6 +231,7 @@ type Memory struct {
 	Judge   *verdict.Snapshot `json:"judge,omitempty"`
 	Heard   *measure.Memory   `json:"heard,omitempty"` // what each valve sounds like
 	Sensors *sensor.Memory    `json:"sensors,omitempty"`
+	Gauges  []duty.Passage    `json:"gauges,omitempty"` // passages that were found and are undone
 }
 
 // Memory copies it out.
@@ -230,6 +244,7 @@ func (l *Line) Memory() Memory {
 	}
 	heard := l.measures.Snapshot()
 	m.Heard = &heard
+	m.Gauges = l.gauges.inForce()
 	return m
 }
 
@@ -245,6 +260,9 @@ func (l *Line) Remember(m Memory) error {
 	if m.Sensors != nil {
 		err = errors.Join(err, l.sensors.Restore(*m.Sensors))
 	}
+	if l.gauges.open {
+		l.gauges.take(m.Gauges, false)
+	}
 	return err
 }
 
@@ -258,6 +276,7 @@ func (l *Line) judgeBy(b *duty.Baseline) error {
 		return err
 	}
 	l.base, l.ref = b, ref
+	l.gauges.hold(b.Passages)
 	l.blocks = duty.NewBlocks(ref, duty.BlockConfig{Turns: l.sk.Detection.BlockTurns})
 	l.judge = verdict.New(l.layout, verdict.Config{Channels: judgeChannels(l.sk)})
 	return nil
@@ -342,6 +361,12 @@ func (l *Line) Flush(emit func(*Output)) {
 func (l *Line) frame(f *frame.Frame) {
 	l.sensors.Declare(l.learner != nil && (l.learn.Steady > 0 || f.Turn >= l.learn.From && f.Turn < l.learn.To))
 	l.sensors.Frame(f)
+	if l.gauges.changed {
+		if err := l.change(); err != nil { // cannot be: what is found lies far inside what may be undone
+			l.gauges.changed = false
+		}
+	}
+	l.gauges.frame(f)
 	l.turns.Add(f, l.turn)
 }
 
@@ -382,7 +407,7 @@ func (l *Line) shaft(t float64) turn.Shaft {
 const noStep = -1
 
 func (l *Line) turn(t *turn.Turn) {
-	o := Output{Vector: &l.vec, Points: l.points}
+	o := Output{Turn: t, Vector: &l.vec, Points: l.points}
 	l.count.Turns++
 	proc := l.proc(t.Time)
 	l.prepare(t, proc)
@@ -397,6 +422,7 @@ func (l *Line) turn(t *turn.Turn) {
 	for i := range l.points {
 		l.points[i] = l.classify(i, t, proc, w)
 	}
+	l.gauges.turn(t, w, l.points, l.sensors, l.utc(t.Time))
 	if t.Valid() {
 		l.refine(w)
 		l.measures.Measure(&l.vec, t, w, l.mea)
@@ -531,7 +557,7 @@ func (l *Line) teach(t *turn.Turn, o *Output) {
 }
 
 func (l *Line) endLearning(at float64, o *Output) {
-	b, err := l.learner.Fit(duty.Header{SkidHash: l.sk.Hash, Created: l.utc(at)})
+	b, err := l.learner.Fit(duty.Header{SkidHash: l.sk.Hash, Created: l.utc(at), Passages: l.gauges.inForce()})
 	l.learner = nil
 	if err == nil {
 		err = l.judgeBy(b)

@@ -1,0 +1,29 @@
+package station
+
+import (
+	"lapwing/internal/duty"
+	"lapwing/internal/turn"
+	"lapwing/internal/window"
+)
+
+// change makes the line undo other gauge passages from the next revolution on. The revolutions under way are lost to the
+// middle (four turns that are not valid, once), what the windows have learnt of the valves' lags begins anew, as every
+// opening moves, and so does a learning run.
+func (l *Line) change() error {
+	cfg := l.angles
+	cfg.Throws = append([]turn.ThrowConfig(nil), cfg.Throws...)
+	l.gauges.configure(&cfg)
+	turns, err := turn.New(cfg)
+	if err != nil {
+		return err
+	}
+	l.turns.Flush(l.turn)
+	l.turns = turns
+	l.windows = window.NewTracker(window.Config{Works: works(l.sk)})
+	if l.learner != nil {
+		l.learner = duty.NewLearner(l.layout, duty.LearnConfig{Steps: stepCodes(l.sk), Throws: len(l.sk.Throws), Want: l.sk.Detection.LearnTurns})
+		l.learnt = 0
+		clear(l.steady)
+	}
+	return nil
+}
