@@ -16,9 +16,25 @@ type Header struct {
 	Created  time.Time `json:"created"`
 	Turn0    int64     `json:"turn0"` // first and last turn learnt from
 	Turn1    int64     `json:"turn1"`
-	Note     string    `json:"note,omitempty"`     // who declared it healthy, and why
+	Note     string    `json:"note,omitempty"`     // why the machine was declared healthy
 	Passages []Passage `json:"passages,omitempty"` // gauge passages undone beside those of the skid file
+
+	Kind    Kind      `json:"kind,omitempty"`
+	Subject string    `json:"subject,omitempty"` // what was learnt anew
+	By      string    `json:"by,omitempty"`      // who declared the machine healthy
+	Over    time.Time `json:"over,omitzero"`     // Created of the baseline that this one changes
+	Doubts  []Doubt   `json:"doubts,omitempty"`  // what the examination at the end of the run found
 }
+
+// Kind says how a baseline came to be.
+type Kind string
+
+// The kinds.
+const (
+	Learnt  Kind = "learnt"  // from nothing
+	Added   Kind = "added"   // load steps added to an older one
+	Renewed Kind = "renewed" // a part learnt anew after work on it
+)
 
 // Baseline is what a machine showed when healthy, by throw and load step. Plain JSON; frozen once made.
 type Baseline struct {
@@ -94,6 +110,32 @@ func ParseBaseline(data []byte) (*Baseline, error) {
 	return &b, nil
 }
 
+// Fits tells whether the baseline may judge a machine: the same features, and the same skid file. anySkid lets another
+// version of the skid file pass, as one in which nothing but an address was changed.
+func (b *Baseline) Fits(layout measure.Layout, skidHash string, anySkid bool) error {
+	if _, err := b.Reference(layout); err != nil {
+		return err
+	}
+	if b.SkidHash != skidHash && !anySkid {
+		return fmt.Errorf("duty: the baseline was learnt with another version of the skid file (%s, now %s): geometry, clearances or channels may be others", short(b.SkidHash), short(skidHash))
+	}
+	for i, c := range b.Cells {
+		for _, m := range c.Models {
+			if layout.Find(m.Subject, m.Name) < 0 {
+				return fmt.Errorf("duty: baseline: cells[%d]: this machine has no %s %s", i, m.Subject, m.Name)
+			}
+		}
+	}
+	return nil
+}
+
+func short(hash string) string {
+	if len(hash) > 12 {
+		return hash[:12]
+	}
+	return hash
+}
+
 // layoutHash names a layout by what a baseline depends on: subjects, names and scales, in order.
 func layoutHash(l measure.Layout) string {
 	h := uint64(14695981039346656037) // FNV-1a, 64 bit
@@ -103,42 +145,6 @@ func layoutHash(l measure.Layout) string {
 		}
 	}
 	return fmt.Sprintf("%016x", h)
-}
-
-// Change is how far one feature's expectation moved between two baselines, at the duty in the middle of the older one.
-type Change struct {
-	Throw, Step   int
-	Subject, Name string
-	Old, New      float64 // SI
-	Spreads       float64 // (New−Old) over the older block spread
-}
-
-// Compare lists the features of cells that both baselines have, in the order of the older one. A middle duty that the
-// newer baseline has not seen is left out.
-func (b *Baseline) Compare(newer *Baseline) []Change {
-	var out []Change
-	for i := range b.Cells {
-		c := &b.Cells[i]
-		d := newer.cell(c.Throw, c.Step, c.Inferred)
-		if d == nil {
-			continue
-		}
-		if _, ok := d.Shape.inside(c.Shape.Centre); !ok {
-			continue
-		}
-		xo, xn := c.Shape.row(c.Shape.Centre), d.Shape.row(c.Shape.Centre)
-		for j := range c.Models {
-			m := &c.Models[j]
-			n := d.model(m.Subject, m.Name)
-			if n == nil {
-				continue
-			}
-			ch := Change{Throw: c.Throw, Step: c.Step, Subject: m.Subject, Name: m.Name, Old: dot(&m.Coef, &xo), New: dot(&n.Coef, &xn)}
-			ch.Spreads = (ch.New - ch.Old) / m.blockSpread(15)
-			out = append(out, ch)
-		}
-	}
-	return out
 }
 
 func (b *Baseline) cell(throw, step int, inferred bool) *Cell {
