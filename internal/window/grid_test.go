@@ -3,11 +3,9 @@ package window_test
 import (
 	"fmt"
 	"math"
-	"math/rand/v2"
 	"sort"
 	"testing"
 
-	"lapwing/internal/crank"
 	"lapwing/internal/model"
 	"lapwing/internal/skid"
 	"lapwing/internal/window"
@@ -52,69 +50,117 @@ func (a *tally) row(name string) string {
 // learning is how many turns a valve's lag is learnt in; widths of those turns are wide and are not counted with the rest.
 const learning = 14
 
+// inputs tells the tracker what the station would tell it.
+func (c *gridCase) inputs(sk *skid.Skid, p skid.Process, k float64) []window.Input {
+	step, _ := sk.FindStep(p.Step)
+	in := make([]window.Input, len(sk.Throws))
+	for i := range in {
+		line := p.Stages[sk.Throws[i].Stage-1]
+		in[i] = window.Input{Cylinder: sk.CylinderAt(i, p.Step), K: k, LinePs: line.Ps, LinePd: line.Pd}
+		for e := range in[i].Others {
+			name := sk.EndName(i, e)
+			in[i].IdleHint[e], in[i].Late[e] = step.Idle[name], step.Late[name]
+			for _, s := range sk.Steps {
+				in[i].Others[e] = append(in[i].Others[e], sk.CylinderAt(i, s.Code).Clearance[e])
+			}
+		}
+	}
+	return in
+}
+
+// exponent is the gas's volume exponent at the lines that the process values show first.
+func (c *gridCase) exponent(t testing.TB, sk *skid.Skid) float64 {
+	line := sk.Process.Stages[sk.Throws[c.throw].Stage-1]
+	d, err := c.gas.Duty(line.Ps, line.Ts, line.Pd)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return d.KV
+}
+
 // add runs one case and counts it from the first turn after learning on, what comes before in early. Events that the
 // model's books do not hold are not counted.
-func (a *tally) add(t *testing.T, r windowtest.Run, early *tally) {
-	whole := a
+func (a *tally) add(t *testing.T, c *gridCase, early *tally) {
 	turns := 0
-	sk := r.Skid()
-	tr := window.NewTracker(window.Config{})
+	sk := c.run.Skid()
+	works := make([][2]bool, len(sk.Throws))
+	for i := range works {
+		works[i] = [2]bool{sk.Throws[i].Ends[0].Works, sk.Throws[i].Ends[1].Works}
+	}
+	tr := window.NewTracker(window.Config{Works: works})
+	k := c.exponent(t, sk)
 	a.cases++
 	early.cases++
-	r.Turns(t, .6, func(tn windowtest.Turn) {
-		if a = early; turns >= learning {
-			a = whole
+	c.each(t, func(tn windowtest.Turn) {
+		b := a
+		if turns < learning {
+			b = early
 		}
 		turns++
-		a.turns++
-		line := tn.Process.Stages[0]
-		res := tr.Track(tn.Turn, []window.Input{{Cylinder: sk.CylinderAt(0, r.Step), K: windowtest.Gas().KV, LinePs: line.Ps, LinePd: line.Pd}})
-		for e, end := range res.Throws[0].Ends {
-			if tn.Truth[0][e].Rev < 0 || r.Step == windowtest.Unloaded && e == crank.CE {
-				continue
-			}
-			for ev, w := range end.W {
-				event := window.Event(ev)
-				// find asks for a window; one that is lost is counted by its truth.
-				truth, ok := find(tn, e, event, window.Window{})
-				if !ok {
-					continue
-				}
-				if w.State != window.Following {
-					a.notFollowing++
-					continue
-				}
-				a.seen[ev]++
-				a.width[ev] += w.Hi - w.Lo
-				if truth.Impact >= w.Lo && truth.Impact <= w.Hi {
-					a.in[ev]++
-				}
-				if event != window.SuctionOpens && event != window.DischargeOpens {
-					continue
-				}
-				if !math.IsNaN(w.Angle) {
-					a.err = append(a.err, math.Abs(w.Angle-truth.Lift))
-				}
-				if stranger(tn, e, event, w) {
-					if w.Shared {
-						a.marks++
-					} else {
-						a.strange++
-					}
-				}
-			}
-		}
+		b.turns++
+		res := tr.Track(tn.Turn, c.inputs(sk, tn.Process, k))
+		b.count(c.throw, tn, res)
 	})
 }
 
-// stranger says whether another event of the throw strikes inside the window.
-func stranger(tn windowtest.Turn, e int, ev window.Event, w window.Window) bool {
-	for e2 := range 2 {
-		for ev2 := range window.Event(window.Events) {
-			if e2 == e && ev2 == ev || tn.Truth[0][e2].Rev < 0 {
+// count books one turn of one throw.
+func (a *tally) count(throw int, tn windowtest.Turn, res window.Result) {
+	for e, end := range res.Throws[throw].Ends {
+		if tr := &tn.Truth[throw][e]; tr.Rev < 0 || tr.Idle {
+			continue
+		}
+		for ev, w := range end.W {
+			event := window.Event(ev)
+			// happened asks for a window; one that is lost is counted by its truth.
+			truth, ok := happened(tn, throw, e, event)
+			if !ok {
 				continue
 			}
-			if x, ok := find(tn, e2, ev2, w); ok && x.Impact >= w.Lo && x.Impact <= w.Hi {
+			if w.State != window.Following {
+				a.notFollowing++
+				continue
+			}
+			a.seen[ev]++
+			a.width[ev] += w.Hi - w.Lo
+			if truth.Impact >= w.Lo && truth.Impact <= w.Hi {
+				a.in[ev]++
+			}
+			if event != window.SuctionOpens && event != window.DischargeOpens {
+				continue
+			}
+			if !math.IsNaN(w.Angle) {
+				a.err = append(a.err, math.Abs(w.Angle-truth.Lift))
+			}
+			if stranger(tn, throw, e, event, w) {
+				if w.Shared {
+					a.marks++
+				} else {
+					a.strange++
+				}
+			}
+		}
+	}
+}
+
+// each gives the turns of a case, the first three left out.
+func (c *gridCase) each(t *testing.T, use func(windowtest.Turn)) {
+	if gridTurns != nil {
+		gridTurns(t, c, use)
+		return
+	}
+	c.run.Turns(t, 180/c.run.RPM, use)
+}
+
+var gridTurns func(t *testing.T, c *gridCase, use func(windowtest.Turn))
+
+// stranger says whether another event of the throw strikes inside the window.
+func stranger(tn windowtest.Turn, throw, e int, ev window.Event, w window.Window) bool {
+	for e2 := range 2 {
+		for ev2 := range window.Event(window.Events) {
+			if e2 == e && ev2 == ev || tn.Truth[throw][e2].Rev < 0 {
+				continue
+			}
+			if x, ok := happened(tn, throw, e2, ev2); ok && x.Impact >= w.Lo && x.Impact <= w.Hi {
 				return true
 			}
 		}
@@ -122,90 +168,40 @@ func stranger(tn windowtest.Turn, e int, ev window.Event, w window.Window) bool 
 	return false
 }
 
-// drawn changes the bench machine to one drawn at random; no constant of the package was fitted on these.
-func drawn(seed uint64) func(*skid.Skid) {
-	return func(sk *skid.Skid) {
-		rng := rand.New(rand.NewPCG(seed, 77))
-		between := func(lo, hi float64) float64 { return lo + (hi-lo)*rng.Float64() }
-		c := &sk.Throws[0].Cylinder
-		c.Stroke = between(.09, .2)
-		c.Bore = c.Stroke * between(1, 2.2)
-		c.ConRod = c.Stroke * between(2, 3)
-		c.PistonRod = c.Bore * between(.18, .3)
-		c.Clearance = [2]float64{between(.1, .4), between(.1, .4)}
-		sk.Throws[0].DeadCentre = between(0, 360)
-	}
+// happened gives the truth of an event on the padded grid's scale, as find does, for any throw.
+func happened(tn windowtest.Turn, throw, e int, ev window.Event) (model.Event, bool) {
+	one := windowtest.Turn{Truth: [][2]model.Truth{tn.Truth[throw]}}
+	return find(one, e, ev, window.Window{})
 }
 
-// TestGrid measures the windows over machines, ratios, speeds and load steps, and prints the table of DEVELOPERS.md.
-// In the daily run one case is held to the target for openings; the sweep reports and does not judge.
+// TestGrid measures the windows over machines, gases, ratios, speeds and load devices, and prints the table of
+// DEVELOPERS.md. The daily run holds one case to the target for openings; the sweep reports and does not judge.
 func TestGrid(t *testing.T) {
-	names := []string{"full", "pocket", "crank end unloaded", "late closing to 55°"}
-	var bySteps, byRatio [5]tally
-	var byRPM [4]tally
-	var byPulse [2]tally
-	var random, moving, early tally
-	for i, ratio := range []float64{1.15, 1.8, 2.5, 3.6, 6} {
-		for j, rpm := range []float64{250, 500, 1000, 1800} {
-			for step := range names {
-				for pulse := range byPulse {
-					if !*sweep && (i != 2 || j != 2 || step != 0 || pulse > 0) {
-						continue
-					}
-					r := windowtest.Run{Ratio: ratio, RPM: rpm, Step: step, Seconds: .8 + 34*60/rpm, Seed: uint64(100 + 10*i + j)}
-					if pulse > 0 {
-						r.Params = func(p *model.Params) {
-							p.SuctionPulse = []model.Pulsation{{Order: 2, Amp: .05, Phase: 110}}
-							p.DischargePulse = []model.Pulsation{{Order: 2, Amp: .05, Phase: 20}}
-						}
-					}
-					var one tally
-					one.add(t, r, &early)
-					for _, a := range []*tally{&bySteps[step], &byRatio[i], &byRPM[j], &bySteps[4], &byPulse[pulse]} {
-						a.merge(&one)
-					}
-				}
+	var names []string
+	rows := map[string]*tally{}
+	var early tally
+	for i, c := range gridCases(t) {
+		if !*sweep && i != 96 {
+			continue
+		}
+		var one tally
+		one.add(t, &c, &early)
+		for _, r := range c.rows {
+			if rows[r] == nil {
+				rows[r] = &tally{}
+				names = append(names, r)
 			}
+			rows[r].merge(&one)
 		}
 	}
-	for m := range uint64(8) {
-		for n := range 5 {
-			if !*sweep {
-				continue
-			}
-			rng := rand.New(rand.NewPCG(m, uint64(n)))
-			rpm := 400 + 800*rng.Float64()
-			random.add(t, windowtest.Run{Ratio: 1.4 + 3*rng.Float64(), RPM: rpm, Step: n % 4, Seconds: .8 + 34*60/rpm,
-				Seed: 900 + m, Machine: drawn(m)}, &early)
-		}
+	for _, n := range names {
+		t.Log(rows[n].row(n))
 	}
-	for n, ratio := range []float64{1.4, 2, 2.5, 3.6} {
-		for m, rpm := range [][2]float64{{950, 350}, {350, 950}} {
-			if *sweep {
-				moving.add(t, windowtest.Run{Ratio: ratio, RPM: rpm[0], Seconds: 6, Seed: uint64(50 + 2*n + m),
-					Changes: []model.Change{{At: 2, Over: 4, What: model.Speed, To: rpm[1]}}}, &early)
-			}
-		}
-	}
-	for i := range names {
-		t.Log(bySteps[i].row(names[i]))
-	}
-	for i, n := range []string{"ratio 1.15", "ratio 1.8", "ratio 2.5", "ratio 3.6", "ratio 6"} {
-		t.Log(byRatio[i].row(n))
-	}
-	for j, n := range []string{"250 rpm", "500 rpm", "1000 rpm", "1800 rpm"} {
-		t.Log(byRPM[j].row(n))
-	}
-	t.Log(byPulse[0].row("usual pulsation"))
-	t.Log(byPulse[1].row("±5 % pulsation"))
-	t.Log(bySteps[4].row("all of these"))
-	t.Log(random.row("drawn at random"))
-	t.Log(moving.row("speed 350 to 950 rpm in 4 s, up or down"))
 	t.Log(early.row("first 14 turns of every case"))
-	all := &bySteps[4]
 	if *sweep {
 		return // measured, not judged
 	}
+	all := rows["all of these"]
 	for _, ev := range []window.Event{window.SuctionOpens, window.DischargeOpens} {
 		if all.seen[ev] == 0 || float64(all.in[ev]) < .999*float64(all.seen[ev]) {
 			t.Errorf("event %d inside: %d of %d", ev, all.in[ev], all.seen[ev])

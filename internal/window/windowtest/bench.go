@@ -36,6 +36,16 @@ type Run struct {
 	Changes    []model.Change      // on top
 	Params     func(*model.Params) // changes to the physics; nil: none
 	Machine    func(*skid.Skid)    // changes to the machine; nil: none
+	Told       Told
+}
+
+// Told is what the line is told of the machine beside the truth.
+type Told struct {
+	U          float64 // degrees, 95 % half-width of angles: the shaft's ripple is then known; 0: it is not
+	LateDeg    float64 // dead centres are told this much too late
+	PassageHz  float64 // factor on the resonance of every gauge passage; 0: as it is
+	PassageQ   float64 // likewise on its damping
+	NoPassages bool    // passages are not told
 }
 
 // Turn is one valid turn of a run.
@@ -107,11 +117,26 @@ func (r Run) Turns(t testing.TB, settle float64, use func(Turn)) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	asm, err := frame.New(frame.Config{Rate: sk.Rate, Inputs: len(sk.Channels), Channel: 0, Auto: true, MinRPM: min(200, r.RPM/2), MaxRPM: max(1300, 1.2*r.RPM)})
+	least, most := r.RPM, r.RPM
+	for _, c := range r.Changes {
+		if c.What == model.Speed {
+			least, most = min(least, c.To), max(most, c.To)
+		}
+	}
+	fc := frame.Config{Rate: sk.Rate, Inputs: len(sk.Channels), Channel: 0, Auto: sk.Phase.AutoLevel, MinRPM: min(200, least/2), MaxRPM: max(1300, 1.2*most)}
+	if sk.Phase.Falling {
+		fc.Edge = frame.Falling
+	}
+	if mark, ok := sk.ChannelByID(sk.Phase.Channel); ok {
+		fc.Channel, fc.Threshold = mark.Input, sk.Phase.Threshold/(mark.VoltsFull/float64(int64(1)<<(m.Info().Bits-1)))
+	}
+	asm, err := frame.New(fc)
 	if err != nil {
 		t.Fatal(err)
 	}
-	conv, err := turn.New(converterOf(sk, m.Info().Bits))
+	tc := converterOf(sk, m.Info().Bits)
+	r.Told.tell(&tc, par.Ripple)
+	conv, err := turn.New(tc)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -144,6 +169,33 @@ func (r Run) Turns(t testing.TB, settle float64, use func(Turn)) {
 		}
 		if err := asm.Add(&b, func(f *frame.Frame) { conv.Add(f, emit) }); err != nil {
 			t.Fatal(err)
+		}
+	}
+}
+
+// tell puts what is told in the turn stage's configuration.
+func (k Told) tell(c *turn.Config, ripple []skid.Ripple) {
+	if k.U > 0 {
+		c.Marks.U = k.U
+		for _, r := range ripple {
+			c.Marks.Ripple = append(c.Marks.Ripple, turn.Ripple{Order: r.Order, Amp: r.Amp, PhaseDeg: r.Phase})
+		}
+	}
+	factor := func(f float64) float64 {
+		if f == 0 {
+			return 1
+		}
+		return f
+	}
+	for i := range c.Throws {
+		th := &c.Throws[i]
+		th.DeadCentreDeg = math.Mod(th.DeadCentreDeg+k.LateDeg+360, 360)
+		for e := range th.Pressure {
+			p := &th.Pressure[e].Passage
+			if k.NoPassages {
+				*p = turn.Passage{}
+			}
+			p.Hz, p.Q = p.Hz*factor(k.PassageHz), p.Q*factor(k.PassageQ)
 		}
 	}
 }
