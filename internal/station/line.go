@@ -39,7 +39,9 @@ type Line struct {
 	whole    int64 // sample at which the newest whole record begins
 	learn    LearnPlan
 	learner  *duty.Learner
-	learnt   int // steady turns that every throw has given to the learner
+	learnt   int     // steady turns that every throw has given to the learner
+	study    study   // what becomes of them
+	clock    float64 // s, sample clock of the newest turn
 	ref      *duty.Reference
 	base     *duty.Baseline
 	blocks   *duty.Blocks
@@ -67,14 +69,6 @@ type Line struct {
 	begun bool
 	start float64 // s, sample clock at the stream's first sample; a clip does not begin at sample 0
 }
-
-// LearnPlan says which turns a person has declared healthy: a range of turn numbers, or the next Steady turns.
-type LearnPlan struct {
-	From, To int64 // turn numbers, To not included; used when Steady is 0
-	Steady   int   // this many steady turns of every throw, from now on
-}
-
-func (p LearnPlan) wanted() bool { return p.Steady > 0 || p.To > p.From }
 
 // Records says which turns get a whole record. The others get the head only: a valid turn without throws.
 type Records uint8
@@ -120,7 +114,8 @@ type Output struct {
 	Judged      bool              // at least one throw's evidence block closed with this turn
 	News        []verdict.Finding // what the judge said of the throws whose block closed, ended findings with grade None
 	Transitions []alarm.Transition
-	Baseline    *duty.Baseline // set on the turn on which a learning run ended
+	Baseline    *duty.Baseline // set on the turn on which a learning run ended, and is in force
+	Proposed    *duty.Baseline // set instead where it waits for a person's word
 	LearnError  error          // why a learning run that ended gave no baseline
 }
 
@@ -166,7 +161,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 		return nil, err
 	}
 	if learn.wanted() {
-		l.learner = duty.NewLearner(l.layout, duty.LearnConfig{Steps: stepCodes(sk), Throws: n, Want: sk.Detection.LearnTurns})
+		l.learner = duty.NewLearner(l.layout, l.learnConfig())
 	} else if base != nil {
 		if err := l.judgeBy(base); err != nil {
 			return nil, err
@@ -231,6 +226,7 @@ type Memory struct {
 	Judge   *verdict.Snapshot `json:"judge,omitempty"`
 	Heard   *measure.Memory   `json:"heard,omitempty"` // what each valve sounds like
 	Sensors *sensor.Memory    `json:"sensors,omitempty"`
+	Slow    []duty.SlowTest   `json:"slow,omitempty"`   // the slow tests of the measures
 	Gauges  []duty.Passage    `json:"gauges,omitempty"` // passages that were found and are undone
 }
 
@@ -241,6 +237,7 @@ func (l *Line) Memory() Memory {
 	if l.judge != nil {
 		s := l.judge.Snapshot()
 		m.Judge = &s
+		m.Slow = l.blocks.SlowTests()
 	}
 	heard := l.measures.Snapshot()
 	m.Heard = &heard
@@ -253,6 +250,9 @@ func (l *Line) Remember(m Memory) error {
 	err := l.windows.Restore(m.Windows)
 	if m.Judge != nil && l.judge != nil {
 		err = errors.Join(err, l.judge.Restore(*m.Judge))
+	}
+	if l.blocks != nil {
+		l.blocks.Resume(m.Slow, nil)
 	}
 	if m.Heard != nil {
 		err = errors.Join(err, l.measures.Restore(*m.Heard))
@@ -268,19 +268,6 @@ func (l *Line) Remember(m Memory) error {
 
 // Alarms is the annunciator.
 func (l *Line) Alarms() *alarm.Annunciator { return l.alarms }
-
-// judgeBy puts a baseline in force.
-func (l *Line) judgeBy(b *duty.Baseline) error {
-	ref, err := b.Reference(l.layout)
-	if err != nil {
-		return err
-	}
-	l.base, l.ref = b, ref
-	l.gauges.hold(b.Passages)
-	l.blocks = duty.NewBlocks(ref, duty.BlockConfig{Turns: l.sk.Detection.BlockTurns})
-	l.judge = verdict.New(l.layout, verdict.Config{Channels: judgeChannels(l.sk)})
-	return nil
-}
 
 // Add passes a block through the line; emit hears of every turn that is complete.
 func (l *Line) Add(b *acq.Block, emit func(*Output)) error {
@@ -409,6 +396,7 @@ const noStep = -1
 func (l *Line) turn(t *turn.Turn) {
 	o := Output{Turn: t, Vector: &l.vec, Points: l.points}
 	l.count.Turns++
+	l.clock = t.Time
 	proc := l.proc(t.Time)
 	l.prepare(t, proc)
 	l.sensors.withdraw(t)
@@ -532,42 +520,6 @@ func (l *Line) classify(i int, t *turn.Turn, proc skid.Process, w window.Result)
 
 // processTooOld is the age beyond which process values no longer say what the machine is asked to do.
 const processTooOld = 30 * time.Second
-
-// teach adds a turn to a learning run and ends the run when it is due.
-func (l *Line) teach(t *turn.Turn, o *Output) {
-	if l.learner == nil {
-		return
-	}
-	byRange := l.learn.Steady == 0
-	if !byRange || (t.Number >= l.learn.From && t.Number < l.learn.To) {
-		least := math.MaxInt
-		for i := range l.points {
-			l.learner.Add(i, l.points[i], &l.vec)
-			if l.points[i].State == duty.Steady {
-				l.steady[i]++
-			}
-			least = min(least, l.steady[i])
-		}
-		l.learnt = least
-	}
-	if (byRange && t.Number < l.learn.To-1) || (!byRange && l.learnt < l.learn.Steady) {
-		return
-	}
-	l.endLearning(t.Time, o)
-}
-
-func (l *Line) endLearning(at float64, o *Output) {
-	b, err := l.learner.Fit(duty.Header{SkidHash: l.sk.Hash, Created: l.utc(at), Passages: l.gauges.inForce()})
-	l.learner = nil
-	if err == nil {
-		err = l.judgeBy(b)
-	}
-	if err != nil {
-		o.LearnError = err
-		return
-	}
-	o.Baseline = b
-}
 
 // decide gathers evidence, judges complete blocks and steps the alarms.
 func (l *Line) decide(t *turn.Turn, o *Output) {

@@ -1,7 +1,6 @@
 package station
 
 import (
-	"lapwing/internal/duty"
 	"lapwing/internal/turn"
 	"lapwing/internal/window"
 )
@@ -20,10 +19,6 @@ func (l *Line) change() error {
 	l.turns.Flush(l.turn)
 	l.turns = turns
 	l.windows = window.NewTracker(window.Config{Works: works(l.sk)})
-	if l.learner != nil {
-		l.learner = duty.NewLearner(l.layout, duty.LearnConfig{Steps: stepCodes(l.sk), Throws: len(l.sk.Throws), Want: l.sk.Detection.LearnTurns})
-		l.learnt = 0
-		clear(l.steady)
-	}
+	l.learnAgain()
 	return nil
 }
