@@ -19,8 +19,8 @@ import (
 // LAPWING_FIELD=long switches it on (`make field`), -v prints the tables.
 
 // lesson is the learning walk of a load step: corners and edges of the field and points between them.
-func lesson(step int) []asked {
-	walk := []asked{{1.76, 500, 8, 0}, {2.6, 500, 7, 0}, {3.7, 500, 8, 0}, {3.1, 620, 9, 0}, {3.7, 760, 7, 0}, {2.6, 760, 8, 0}, {1.76, 760, 9, 0}, {2.2, 880, 7, 0},
+func lesson(step int) []fieldDuty {
+	walk := []fieldDuty{{1.76, 500, 8, 0}, {2.6, 500, 7, 0}, {3.7, 500, 8, 0}, {3.1, 620, 9, 0}, {3.7, 760, 7, 0}, {2.6, 760, 8, 0}, {1.76, 760, 9, 0}, {2.2, 880, 7, 0},
 		{1.76, 1004, 7, 0}, {2.6, 1004, 9, 0}, {3.7, 1004, 8, 0}, {3.1, 880, 9, 0}, {2.2, 620, 7, 0}, {3.3, 690, 7, 0}, {1.76, 640, 7.5, 0}, {2.0, 1004, 8.5, 0}, {2.9, 560, 8.5, 0}}
 	for k := range walk {
 		walk[k].step = step
@@ -28,7 +28,7 @@ func lesson(step int) []asked {
 	return walk
 }
 
-var middle = asked{2.6, 740, 8, 0}
+var middle = fieldDuty{2.6, 740, 8, 0}
 
 const holdTurns = 90 // of each duty of the learning walk: half of them are steady
 
@@ -53,7 +53,7 @@ func wander(s model.Script, at, until float64, seed uint64, steps []int) model.S
 	in := func(lo, hi float64) float64 { return lo + (hi-lo)*r.Float64() }
 	rpm := s.RPM
 	for k := 0; at < until; k++ {
-		a := asked{ratio: in(1.8, 3.6), rpm: in(505, 995), ps: in(7.1, 8.9)}
+		a := fieldDuty{ratio: in(1.8, 3.6), rpm: in(505, 995), ps: in(7.1, 8.9)}
 		over := max(0.2, ramp(rpm, a.rpm))
 		s = s.Add(at, 2, model.SuctionPressure, "1", a.ps*1e5).Add(at, 2, model.DischargePressure, "1", a.ps*a.ratio*1e5).
 			Add(at, over, model.Speed, "", a.rpm)

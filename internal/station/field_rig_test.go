@@ -39,13 +39,13 @@ func fieldSkid(t testing.TB) *skid.Skid {
 	return sk
 }
 
-// asked is a duty of the machine.
-type asked struct {
+// fieldDuty is a duty of the machine.
+type fieldDuty struct {
 	ratio, rpm, ps float64 // ps in bar absolute
 	step           int
 }
 
-func (a asked) set(s model.Script, at, over float64) model.Script {
+func (a fieldDuty) set(s model.Script, at, over float64) model.Script {
 	s = s.Add(at, over, model.SuctionPressure, "1", a.ps*1e5).Add(at, over, model.DischargePressure, "1", a.ps*a.ratio*1e5).
 		Add(at, over, model.Speed, "", a.rpm)
 	return s.Add(at, 0, model.LoadStep, "", float64(a.step))
@@ -55,7 +55,7 @@ func (a asked) set(s model.Script, at, over float64) model.Script {
 func ramp(from, to float64) float64 { return 10 * math.Abs(to-from) / from }
 
 // begin is a script that starts at a duty.
-func begin(sk *skid.Skid, a asked) model.Script {
+func begin(sk *skid.Skid, a fieldDuty) model.Script {
 	l := sk.Process.Stages[0]
 	l.Ps, l.Pd = a.ps*1e5, a.ps*a.ratio*1e5
 	return model.Script{Lines: []skid.Line{l}, RPM: a.rpm, Step: a.step}

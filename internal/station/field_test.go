@@ -23,7 +23,7 @@ const (
 // While both line pressures, the speed and the load step move, every valve event lies in its window.
 func TestFieldWindowsFollow(t *testing.T) {
 	sk := fieldSkid(t)
-	s := begin(sk, asked{1.8, 1000, 8, 0}).Add(2, 2, model.DischargePressure, "1", 28.8e5).Add(3, 2, model.Speed, "", 820).
+	s := begin(sk, fieldDuty{1.8, 1000, 8, 0}).Add(2, 2, model.DischargePressure, "1", 28.8e5).Add(3, 2, model.Speed, "", 820).
 		Add(5.3, 0, model.LoadStep, "", 1).Add(6.6, 1, model.SuctionPressure, "1", 9e5).Add(6.8, 0, model.LoadStep, "", 2)
 	o := trial{machine: sk, seed: 1, script: s, seconds: 8.5}.run(t)
 	o.score(1, math.Inf(1)).meets(t)
@@ -34,7 +34,7 @@ func TestFieldWindowsFollow(t *testing.T) {
 // are named, and no valve.
 func TestFieldNamesWhatIsWrong(t *testing.T) {
 	sk := firstThrow(fieldSkid(t))
-	at := asked{2.6, 1000, 8, 0}
+	at := fieldDuty{2.6, 1000, 8, 0}
 	healthy := trial{machine: sk, seed: 1, script: begin(sk, at), seconds: 9.5, steady: 70}.run(t)
 	if healthy.learnt == nil || healthy.blocks < 4 {
 		t.Fatalf("%d blocks were judged after learning", healthy.blocks)
