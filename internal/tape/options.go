@@ -19,6 +19,8 @@ type Options struct {
 
 	MaxBytes  int64         // bound of the ring's file; default 4 GiB
 	MaxAge    time.Duration // oldest segment kept, counted back from the newest; default: no bound
+	Thin      Thinning      // keeps less of what is older; default: all of it until it rolls away
+	Reserve   bool          // take MaxBytes on the disk at once, so that others who fill it cannot starve the ring
 	ClipBytes int64         // bound of the clips' file; default MaxBytes/4
 	ClipsPath string        // default: clips.db beside the ring
 	ClipSpan  time.Duration // overlapping clips are merged up to this length; default 10 min
@@ -63,6 +65,9 @@ func (o Options) withDefaults(path string) (Options, error) {
 	}
 	if o.Segment < 0 || o.Queue < 0 || o.MaxAge < 0 || o.ClipSpan < 0 {
 		bad("a duration is negative")
+	}
+	if err := o.Thin.check(); err != nil {
+		errs = append(errs, err)
 	}
 	if filepath.Clean(o.ClipsPath) == filepath.Clean(path) {
 		bad("ring and clips are both %s", path)

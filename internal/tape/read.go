@@ -229,8 +229,11 @@ func (r *reader) give(s stretch) error {
 	case r.missing != "":
 		b.Lost = lo - r.span.From
 	}
-	if r.missing != "" {
+	switch {
+	case r.missing != "":
 		note = append(note, r.missing)
+	case b.Lost > 0 && (s.event == nil || s.event.Lost == 0):
+		note = append(note, "tape: not kept")
 	}
 	b.Note = strings.Join(note, "; ")
 	r.next, r.missing = hi, ""

@@ -63,7 +63,7 @@ func Open(path string, opt Options) (*Tape, error) {
 		queue: newQueue(max(opt.samples(opt.Queue), 1)), clip: make(map[string]*Clip),
 	}
 	ring, damage, err := openStore(path, boltfile.Options{
-		Kind: "tape", Version: layoutVersion, MaxBytes: opt.MaxBytes, Timeout: opt.LockWait, Disposable: true,
+		Kind: "tape", Version: layoutVersion, MaxBytes: opt.MaxBytes, Timeout: opt.LockWait, Disposable: true, Reserve: opt.Reserve,
 	}, opt.disk)
 	if err != nil {
 		return nil, fmt.Errorf("tape: ring: %w", err)

@@ -24,6 +24,7 @@ type writer struct {
 	key     uint64      // of the next segment
 	last    *segMeta    // newest segment of an earlier opening, nil for none
 	bad     map[uint64]bool
+	thin    [2]uint64 // by stage of thinning: number of the next segment to look at
 }
 
 func (t *Tape) newWriter() (*writer, error) {
@@ -248,30 +249,21 @@ func (w *writer) packSegment(n int) (*packed, error) {
 func (w *writer) commit(p *packed) error {
 	evict := w.t.ring.room(p.footprint())
 	evict = append(evict, w.tooOld(p.info, len(evict))...)
+	evict = append(evict, without(evict, w.thinned(p.info))...)
 	if len(evict) > 0 {
 		w.rescue(evict)
 	}
 	return w.t.ring.put(p, evict, w.t.opt.Skid, true)
 }
 
-// tooOld gives the segments, after the first skip ones, that are older than MaxAge when newest is the newest. Age is
-// told by UTC where both have it, by sample numbers within a run, and not at all otherwise.
+// tooOld gives the segments, after the first skip ones, that are older than MaxAge when newest is the newest. Those of
+// unknown age stay.
 func (w *writer) tooOld(newest segInfo, skip int) (gone []segInfo) {
 	if w.t.opt.MaxAge == 0 {
 		return nil
 	}
-	rate := w.t.opt.Info.Rate
 	for _, g := range w.t.ring.oldest(skip + 16)[skip:] { // a lowered limit is reached within minutes
-		var age float64
-		switch {
-		case g.utc0 != 0 && newest.utc0 != 0:
-			age = float64(newest.utc0-g.utc0) / 1e9
-		case g.run == newest.run:
-			age = float64(newest.seq0-g.seq0) / rate
-		default:
-			return gone
-		}
-		if age <= w.t.opt.MaxAge.Seconds() {
+		if age, known := w.age(g, newest); !known || age <= w.t.opt.MaxAge.Seconds() {
 			return gone
 		}
 		gone = append(gone, g)

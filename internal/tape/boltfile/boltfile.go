@@ -47,6 +47,7 @@ type Options struct {
 	MaxBytes   int64                // the file may not grow past this; 0: no bound
 	Timeout    time.Duration        // for the file lock; 0: 2 s
 	Disposable bool                 // unknown versions are moved aside too, and only the newest moved file is kept
+	Reserve    bool                 // take MaxBytes on the disk at once, where it is free and the file system can
 	Walk       func(*bolt.Tx) error // first reading; an error or a panic means that the file is damaged; may be nil
 }
 
@@ -70,6 +71,9 @@ func Open(path string, o Options) (*bolt.DB, *Damage, error) {
 	if err := createIfAbsent(path, o); err != nil {
 		return nil, nil, fmt.Errorf("boltfile: create %s: %w", path, err)
 	}
+	if err := reserve(path, o); err != nil {
+		return nil, nil, fmt.Errorf("boltfile: reserve %s: %w", path, err)
+	}
 	db, err := openChecked(path, o)
 	if err == nil {
 		return db, nil, nil
@@ -83,6 +87,9 @@ func Open(path string, o Options) (*bolt.DB, *Damage, error) {
 	}
 	if err := createIfAbsent(path, o); err != nil {
 		return nil, d, fmt.Errorf("boltfile: create %s: %w", path, err)
+	}
+	if err := reserve(path, o); err != nil {
+		return nil, d, fmt.Errorf("boltfile: reserve %s: %w", path, err)
 	}
 	if db, err = openChecked(path, o); err != nil {
 		return nil, d, fmt.Errorf("boltfile: open new %s: %w", path, err)
