@@ -42,3 +42,26 @@ func extremesRun(x []int32) (least, most int32) {
 
 //go:noescape
 func extremesAVX2(x *int32, n int) (least, most int32)
+
+// linesRun does all positions or none.
+func linesRun(l *LineFit, dst [2][]float64, pos []float64, x [2][]float64, shift int) (done bool) {
+	if !hasAVX2 || len(pos) < 4 || l.reach < 1 {
+		return false
+	}
+	linesAVX2(l, &dst[0][0], &dst[1][0], &pos[0], len(pos), &x[0][0], &x[1][0], shift)
+	return true
+}
+
+//go:noescape
+func linesAVX2(l *LineFit, dst0, dst1, pos *float64, n int, x0, x1 *float64, shift int)
+
+func levelsRun(b *Bins, peak, rms, square, x, y []float64) {
+	if hasAVX2 {
+		levelsAVX2(b, &peak[0], &rms[0], &square[0], &x[0], &y[0])
+		return
+	}
+	levelsPlain(b, peak, rms, square, x, y)
+}
+
+//go:noescape
+func levelsAVX2(b *Bins, peak, rms, square, x, y *float64)

@@ -42,7 +42,9 @@ type Converter struct {
 
 // hand is what works on one throw, and what it found.
 type hand struct {
+	ladder   ladder
 	k        kernel
+	bins     dsp.Bins
 	perDeg   []float64 // samples per degree at the grid angles
 	why      string
 	seq0, to int64 // samples used

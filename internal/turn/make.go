@@ -134,41 +134,45 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 			t.Bad[e] = ends[e].suspect(lo, hi, overload)
 		}
 	}
-	if ends[0] == nil && ends[1] == nil {
-		return
-	}
+	// Ends without a known passage share the fit; a transducer whose passage is to be undone has kernels of its own.
 	off := c.m.ref - c.base
-	for i, p := range t.Pos {
-		laid, shaped := 0.0, Passage{} // both ends share the kernel unless their passages differ
-		least := width(g.Step * h.perDeg[i])
-		for e, s := range ends {
-			if s == nil {
-				continue
-			}
-			sigma := max(least, s.least)
-			fresh := sigma != laid
-			if fresh {
-				h.k.lay(p, sigma)
-				laid = sigma
-			}
-			if way := s.ch.Passage; fresh || way != shaped {
-				shaped = way
-				if way.Hz == 0 {
-					h.k.line()
-				} else {
-					h.k.undo(way, sigma, c.cfg.Rate)
-				}
-			}
-			t.P[e][i] = h.k.value(s.x.live()[h.k.first+off:])
+	var p, x [2][]float64
+	n := 0
+	for e, s := range ends {
+		switch {
+		case s == nil:
+		case s.ch.Passage.Hz == 0:
+			p[n], x[n] = t.P[e], s.x.live()
+			n++
+		default:
+			c.undone(t, h, g.Step, e, s)
 		}
+	}
+	if n > 0 {
+		h.lines(p, x, t.Pos, g.Step, off)
+	}
+}
+
+// undone fills in the pressures of an end whose passage is known.
+func (c *Converter) undone(t *Throw, h *hand, step float64, e int, s *stream) {
+	x, off := s.x.live(), c.m.ref-c.base
+	for i, p := range t.Pos {
+		sigma := max(width(step*h.perDeg[i]), s.least)
+		h.k.lay(p, sigma)
+		h.k.undo(s.ch.Passage, sigma, c.cfg.Rate)
+		t.P[e][i] = h.k.value(x[h.k.first+off:])
 	}
 }
 
 // vibration fills in the accelerometers of throw k.
 func (c *Converter) vibration(k int, lo, hi int64, overload bool) {
-	t := &c.throws[k]
+	t, h := &c.throws[k], &c.hands[k]
+	if len(t.Vib) == 0 {
+		return
+	}
 	from, to := first(t.Pos), end(t.Pos)
 	off := c.m.ref - c.base
+	h.cut(t.Pos, off)
 	for j := range t.Vib {
 		v, s := &t.Vib[j], c.vib[c.throw[k][2]+j]
 		v.Suspect = s.suspect(lo, hi, overload)
@@ -180,7 +184,7 @@ func (c *Converter) vibration(k int, lo, hi int64, overload bool) {
 			leak = s.leak.lived()
 		}
 		impact := s.impact.lived()
-		v.bin(t.Pos, impact, leak, -off)
+		h.bins.Levels(v.Peak, v.RMS, v.Leak, impact, leak)
 		v.Seq0, v.X = from+c.m.ref, impact[from+off:to+off:to+off]
 	}
 }
