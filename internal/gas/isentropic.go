@@ -20,7 +20,12 @@ func (p Path) Work() float64 { return p.To.H - p.From.H }
 
 // Isentropic follows the gas from T1 (K), p1 (Pa absolute) to p2 at constant entropy. Errors as At.
 func (m *Mixture) Isentropic(t1, p1, p2 float64) (Path, error) {
-	from, err := m.At(t1, p1)
+	return m.isentropic(t1, p1, p2, (*Mixture).At)
+}
+
+// isentropic takes the states at both ends by at.
+func (m *Mixture) isentropic(t1, p1, p2 float64, at func(m *Mixture, t, p float64) (State, error)) (Path, error) {
+	from, err := at(m, t1, p1)
 	if err != nil {
 		return Path{}, fmt.Errorf("gas: start of the compression: %w", err)
 	}
@@ -37,7 +42,7 @@ func (m *Mixture) Isentropic(t1, p1, p2 float64) (Path, error) {
 			break
 		}
 	}
-	to, err := m.At(t, p2)
+	to, err := at(m, t, p2)
 	if err != nil {
 		return Path{}, fmt.Errorf("gas: end of the compression: %w", err)
 	}

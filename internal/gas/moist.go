@@ -5,19 +5,27 @@ import (
 	"math"
 )
 
-// Range of the saturation formula, K: from the triple point of water to its critical point.
+// Range of the saturation formulas, K: ice from 150 K, liquid from the triple point of water to its critical point.
 const (
-	tripleT   = 273.16
-	criticalT = 647.096
-	criticalP = 22.064e6
+	coldestIce = 150.0
+	tripleT    = 273.16
+	tripleP    = 611.657
+	criticalT  = 647.096
+	criticalP  = 22.064e6
 )
 
-// Saturation is the vapour pressure of water over liquid, Pa, at T in K: W. Wagner and A. Pruss, J. Phys. Chem. Ref.
+// Saturation is the vapour pressure of water, Pa, at T in K. Over liquid: W. Wagner and A. Pruss, J. Phys. Chem. Ref.
 // Data 22 (1993) 783, the form of IAPWS SR1-86(1992), coefficients from memory and checked against printed values of
-// IAPWS-IF97 in the tests. Below the triple point (ice) and above the critical point it is refused with ErrRange.
+// IAPWS-IF97 in the tests. Over ice: IAPWS R14-08(2011), coefficients from memory and checked against the value that it
+// prints for 230 K: a dew point below 0 °C is taken as a frost point. Outside 150 to 647.096 K: ErrRange.
 func Saturation(t float64) (float64, error) {
-	if !(t >= tripleT && t <= criticalT) {
-		return 0, fmt.Errorf("gas: water at %.2f K is outside its saturation line (273.16 to 647.096 K): %w", t, ErrRange)
+	if !(t >= coldestIce && t <= criticalT) {
+		return 0, fmt.Errorf("gas: water at %.2f K is outside its saturation line (150 to 647.096 K): %w", t, ErrRange)
+	}
+	if t < tripleT {
+		x := t / tripleT
+		s := -21.2144006*math.Pow(x, 1.0/300) + 27.3203819*math.Pow(x, 1.20666667) - 6.10598130*math.Pow(x, 1.70333333)
+		return tripleP * math.Exp(s/x), nil
 	}
 	u := 1 - t/criticalT
 	s := -7.85951783*u + 1.84408259*math.Pow(u, 1.5) - 11.7866497*math.Pow(u, 3) + 22.6807411*math.Pow(u, 3.5) -
@@ -115,6 +123,21 @@ func RemainderSpread(composition []Fraction, as []string, ps, ts, pd float64) ([
 		out = append(out, p)
 	}
 	return out, nil
+}
+
+// Dry gives the gas without its water; nil where it has none, or is nothing else.
+func (m *Mixture) Dry() *Mixture {
+	w := m.blend.co.find("water")
+	x := m.blend.x
+	if x[w] == 0 || x[w] == 1 {
+		return nil
+	}
+	rest := 1 - x[w]
+	x[w] = 0
+	for i := range x {
+		x[i] /= rest
+	}
+	return &Mixture{Note: note(m.Note, "without its water"), blend: newBlend(m.blend.co, x)}
 }
 
 func note(old, more string) string {

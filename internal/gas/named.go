@@ -24,8 +24,14 @@ func gases() []named {
 		{"pipeline-gas", []Fraction{{"methane", .93}, {"ethane", .035}, {"propane", .008}, {"n_butane", .002},
 			{"isobutane", .0015}, {"n_pentane", .0005}, {"nitrogen", .013}, {"carbon_dioxide", .01}}},
 		{"biomethane", []Fraction{{"methane", .968}, {"carbon_dioxide", .018}, {"nitrogen", .01}, {"oxygen", .004}}},
+		{"biogas", []Fraction{{"methane", .60}, {"carbon_dioxide", .385}, {"nitrogen", .01}, {"oxygen", .005}}},
+		{"synthesis-gas", []Fraction{{"hydrogen", .66}, {"carbon_monoxide", .28}, {"carbon_dioxide", .03}, {"methane", .02},
+			{"nitrogen", .01}}},
 		{"methane", one("methane")},
 		{"carbon-dioxide", one("carbon_dioxide")},
+		{"oxygen", one("oxygen")},
+		{"helium", one("helium")},
+		{"argon", one("argon")},
 	}
 }
 

@@ -91,7 +91,16 @@ func TestSaturation(t *testing.T) {
 		}
 		near(t, "saturation", p, k[1], 2e-4)
 	}
-	for _, bad := range []float64{270, 650, math.NaN()} {
+	// IAPWS R14-08, table of check values: 8.94735 Pa over ice at 230 K (from memory); and both lines meet at the triple
+	// point, 611.657 Pa.
+	for _, k := range [][2]float64{{230, 8.94735}, {tripleT - 1e-6, 611.657}, {tripleT, 611.657}} {
+		p, err := Saturation(k[0])
+		if err != nil {
+			t.Fatal(err)
+		}
+		near(t, "saturation", p, k[1], 1e-4)
+	}
+	for _, bad := range []float64{140, 650, math.NaN()} {
 		if _, err := Saturation(bad); !errors.Is(err, ErrRange) {
 			t.Errorf("%g K: %v", bad, err)
 		}
@@ -118,6 +127,43 @@ func TestMoist(t *testing.T) {
 	if _, err := dry.Moist(400, 101325, 1); err == nil {
 		t.Error("more water than pressure accepted")
 	}
+}
+
+// TestWetGas: gas that is saturated behind a scrubber goes over the dew point with the next breath; its numbers go on
+// without a step, and say so. What condenses besides water is refused as before.
+func TestWetGas(t *testing.T) {
+	raw, err := Named("biogas")
+	if err != nil {
+		t.Fatal(err)
+	}
+	saturated, err := raw.Moist(308, 1.1e5, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	vapour, err := saturated.Duty(1.1e5, 313, 3.3e5)
+	if err != nil || vapour.Wet {
+		t.Fatalf("5 K over the dew point: %+v %v", vapour, err)
+	}
+	wet, err := saturated.Duty(1.1e5, 305, 3.3e5)
+	if err != nil || !wet.Wet {
+		t.Fatalf("3 K under the dew point: %+v %v", wet, err)
+	}
+	near(t, "exponent", wet.KV, vapour.KV, 3e-3)
+	if _, err := saturated.At(305, 1.1e5); !errors.Is(err, ErrTwoPhase) {
+		t.Errorf("the state itself must say that water condenses: %v", err)
+	}
+	oily, err := New([]Fraction{{"methane", .8}, {"n_octane", .19}, {"water", .01}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if _, err := oily.Duty(5e5, 300, 1e6); !errors.Is(err, ErrTwoPhase) && !errors.Is(err, ErrNoGas) {
+		t.Errorf("a gas that condenses without water too: %v", err)
+	}
+	if d := raw.Dry(); d != nil {
+		t.Error("dry gas was dried")
+	}
+	dry := saturated.Dry()
+	near(t, "molar mass without the water", dry.M(), raw.M(), 1e-12)
 }
 
 func TestRemainder(t *testing.T) {

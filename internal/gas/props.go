@@ -1,6 +1,7 @@
 package gas
 
 import (
+	"errors"
 	"fmt"
 	"math"
 )
@@ -14,6 +15,7 @@ type Props struct {
 	KV  float64 // isentropic volume exponent, average over the compression
 	KT  float64 // isentropic temperature exponent, average over the compression
 	T2s float64 // K, discharge temperature of an isentropic compression
+	Wet bool    // some of the water would condense; the numbers are those of gas that keeps it as vapour
 }
 
 // Gas is anything that can tell its properties at a duty: suction pressure (Pa absolute) and temperature (K),
@@ -22,13 +24,23 @@ type Gas interface {
 	Duty(ps, ts, pd float64) (Props, error)
 }
 
-// Duty computes the properties of a mixture; errors as At.
+// Duty computes the properties of a mixture; errors as At. A gas that is saturated with water at suction, as behind a
+// scrubber, is computed all the same, with Wet set: only where without its water it would stay gas.
 func (m *Mixture) Duty(ps, ts, pd float64) (Props, error) {
 	path, err := m.Isentropic(ts, ps, pd)
+	wet := false
+	if errors.Is(err, ErrTwoPhase) {
+		if dry := m.Dry(); dry != nil {
+			if _, stays := dry.Isentropic(ts, ps, pd); stays == nil {
+				path, err = m.isentropic(ts, ps, pd, (*Mixture).vapour)
+				wet = err == nil
+			}
+		}
+	}
 	if err != nil {
 		return Props{}, err
 	}
-	return Props{M: m.M(), R: m.R(), Zs: path.From.Z, Zd: path.To.Z, KV: path.KV, KT: path.KT, T2s: path.To.T}, nil
+	return Props{Wet: wet, M: m.M(), R: m.R(), Zs: path.From.Z, Zd: path.To.Z, KV: path.KV, KT: path.KT, T2s: path.To.T}, nil
 }
 
 // Fixed is a gas given by its own numbers, the same at every duty.

@@ -46,6 +46,15 @@ func (m *Mixture) At(t, p float64) (State, error) {
 	return s.state(density), nil
 }
 
+// vapour gives the gas at T and p whether or not part of it would condense.
+func (m *Mixture) vapour(t, p float64) (State, error) {
+	s, density, err := m.root(t, p)
+	if err != nil {
+		return State{}, err
+	}
+	return s.state(density), nil
+}
+
 // root finds the gas density without asking whether the gas is stable against condensing.
 func (m *Mixture) root(t, p float64) (*isotherm, float64, error) {
 	if !(t >= lowestT && t <= highestT && p > 0 && p <= highestP) {

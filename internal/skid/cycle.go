@@ -37,6 +37,11 @@ const cyclePoints = 3600 // one turn in tenths of a degree: peaks stand at corne
 
 // ideal computes a throw's cycle in a load step, for its line and the gas's properties there.
 func (sk *Skid) ideal(throw int, st Step, line Line, g gas.Props) idealThrow {
+	return sk.idealHeld(throw, st, line, g, -1, 0)
+}
+
+// idealHeld is ideal with one end held at a pressure all turn; −1: none.
+func (sk *Skid) idealHeld(throw int, st Step, line Line, g gas.Props, heldEnd int, held float64) idealThrow {
 	t := &sk.Throws[throw]
 	c := sk.CylinderAt(throw, st.Code)
 	out := idealThrow{kv: g.KV}
@@ -54,6 +59,9 @@ func (sk *Skid) ideal(throw int, st Step, line Line, g gas.Props) idealThrow {
 		end := idealCycle(c, e, t.Ends[e].Works, st.Idle[name], late, line.Ps, line.Pd, g.KV)
 		out.ends[e] = end
 		p[e] = crank.Pressure{P: end.p, Held: blind}
+		if e == heldEnd {
+			p[e] = crank.Pressure{Held: held}
+		}
 		out.power += end.work * sk.Machine.RatedRPM / 60
 		out.flow += end.ve * end.swept * line.Ps / (g.Zs * g.R * line.Ts) * sk.Machine.RatedRPM / 60
 	}

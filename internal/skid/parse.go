@@ -85,7 +85,7 @@ func (r *reader) skid(root *yaml.Node, sk *Skid) {
 	}
 	r.channels(o, sk)
 	r.phase(o, sk)
-	r.gas(o, &sk.Gas)
+	r.gas(o, &sk.Gas, sk.Machine.Atmosphere)
 	r.throws(o, sk)
 	r.channelUse(sk)
 	r.steps(o, sk)
@@ -100,6 +100,7 @@ func (r *reader) skid(root *yaml.Node, sk *Skid) {
 func (r *reader) machine(o *object, m *Machine) {
 	m.Atmosphere = standardAtmosphere
 	s := o.sub("machine", true, "rated_rpm", "min_rpm", "max_rpm", "rod_load_compression_kn", "rod_load_tension_kn",
+		"gas_load_compression_kn", "gas_load_tension_kn",
 		"atmosphere_bar_abs", "inertia_kgm2")
 	if s == nil {
 		return
@@ -116,6 +117,8 @@ func (r *reader) machine(o *object, m *Machine) {
 	}
 	m.RodLoadCompression = 1e3 * zero(s.num("rod_load_compression_kn", bounds{0.1, 5000}, false))
 	m.RodLoadTension = 1e3 * zero(s.num("rod_load_tension_kn", bounds{0.1, 5000}, false))
+	m.GasLoadCompression = 1e3 * zero(s.num("gas_load_compression_kn", bounds{0.1, 5000}, false))
+	m.GasLoadTension = 1e3 * zero(s.num("gas_load_tension_kn", bounds{0.1, 5000}, false))
 	if v := s.numOr("atmosphere_bar_abs", bounds{0.5, 1.1}, standardAtmosphere/1e5); !math.IsNaN(v) {
 		m.Atmosphere = v * 1e5
 	}

@@ -115,6 +115,7 @@ func (r *reader) limits(o *object, sk *Skid) {
 		}
 		sk.Limits = append(sk.Limits, l)
 	}
+	sk.ratedLimits()
 }
 
 func (sk *Skid) subjects() []string {
@@ -160,6 +161,9 @@ func (sk *Skid) CheckLimits(names func(subject string) []string) error {
 	r := &reader{file: sk.File}
 	for i, l := range sk.Limits {
 		path := fmt.Sprintf("limits[%d]", i)
+		if l.From != "" {
+			continue // made here, with names that are right
+		}
 		known := names(l.Subject)
 		if len(known) == 0 {
 			r.problem(sk.at[path+".of"], path+".of", "subjects are "+list(sk.subjects())+" and what lies below them", "nothing is measured at %q", l.Subject)

@@ -11,8 +11,8 @@ import (
 )
 
 // gas reads what is compressed: a composition, a named gas, or fixed numbers.
-func (r *reader) gas(o *object, g *Gas) {
-	s := o.sub("gas", true, "name", "named", "mole_percent", "fixed")
+func (r *reader) gas(o *object, g *Gas, atm float64) {
+	s := o.sub("gas", true, "name", "named", "mole_percent", "remainder", "moisture", "fixed")
 	if s == nil {
 		return
 	}
@@ -27,6 +27,12 @@ func (r *reader) gas(o *object, g *Gas) {
 		return
 	}
 	g.Name, _ = s.text("name", nil, "a name for people", false)
+	for _, k := range []string{"remainder", "moisture"} {
+		if s.has(k) && (s.has("fixed") || k == "remainder" && !s.has("mole_percent")) {
+			s.wrong(k, "delete it, or list the gas under mole_percent", "%s belongs to an analysis", k)
+			return
+		}
+	}
 	switch {
 	case s.has("named"):
 		r.named(s, g)
@@ -35,6 +41,7 @@ func (r *reader) gas(o *object, g *Gas) {
 	default:
 		r.composition(s, g)
 	}
+	r.moisture(s, g, atm)
 }
 
 func (r *reader) named(s *object, g *Gas) {
@@ -57,7 +64,49 @@ func (r *reader) named(s *object, g *Gas) {
 	}
 }
 
-// composition reads mole per cent by component. The sum must be 100 within half a per cent; it is then normalised.
+// moisture adds water to a gas that was analysed dry: relative humidity at a temperature and pressure, or a dew point at
+// a pressure.
+func (r *reader) moisture(s *object, g *Gas, atm float64) {
+	w := s.sub("moisture", false, "relative_humidity_percent", "dew_point_c", "at_temperature_c", "at_pressure_bar_abs", "at_pressure_bar_gauge")
+	if w == nil {
+		return
+	}
+	const fix = "write relative_humidity_percent with at_temperature_c, or dew_point_c; and the pressure for which it was stated"
+	humid, dew := w.has("relative_humidity_percent"), w.has("dew_point_c")
+	if humid == dew {
+		r.problem(w.at, w.path, fix, "the moisture is given in %d ways", map[bool]int{false: 0, true: 2}[humid])
+		return
+	}
+	if dew && w.has("at_temperature_c") {
+		w.wrong("at_temperature_c", "delete it", "a dew point is a temperature by itself")
+		return
+	}
+	share, t := 1.0, math.NaN()
+	if dew {
+		t = w.num("dew_point_c", bounds{-100, 200}, true)
+	} else {
+		share = w.num("relative_humidity_percent", bounds{0.1, 100}, true) / 100
+		t = w.num("at_temperature_c", bounds{-100, 200}, true)
+	}
+	p := w.pressure("at_pressure", bounds{0.05, 700}, true, atm)
+	if g.Mixture == nil || math.IsNaN(share+t+p) {
+		return
+	}
+	wet, err := g.Mixture.Moist(t+273.15, p, share)
+	if err != nil {
+		r.problem(w.at, w.path, "check temperature and pressure, and that the analysis is that of dry gas", "%s", strings.TrimPrefix(err.Error(), "gas: "))
+		return
+	}
+	g.Mixture, g.WaterAt = wet, p
+	for _, c := range wet.Composition() {
+		if c.Name == "water" {
+			g.Water = c.X
+		}
+	}
+}
+
+// composition reads mole per cent by component. The sum must be 100 within half a per cent, and is then normalised, or a
+// remainder says what the rest is taken as.
 func (r *reader) composition(s *object, g *Gas) {
 	const fix = "list the components: methane: 96.5"
 	keys, values := s.entries("mole_percent", true, fix)
@@ -90,11 +139,14 @@ func (r *reader) composition(s *object, g *Gas) {
 			s.wrong("mole_percent", fix, "no component")
 		}
 		return
+	case s.has("remainder"):
+		r.remainder(s, g, all)
+		return
 	case math.Abs(sum-1) < 0.01:
 		s.wrong("mole_percent", "multiply by 100: the unit is mole per cent", "the components add up to %s, which looks like fractions", short(sum))
 		return
 	case math.Abs(sum-100) > 0.5:
-		s.wrong("mole_percent", "check the analysis; up to half a per cent off is evened out", "the components add up to %s, not to 100", short(sum))
+		s.wrong("mole_percent", "check the analysis; up to half a per cent off is evened out, and for a rest that was not analysed write remainder: with the component it is taken as", "the components add up to %s, not to 100", short(sum))
 		return
 	}
 	m, err := gas.New(all)
@@ -102,7 +154,29 @@ func (r *reader) composition(s *object, g *Gas) {
 		s.wrong("mole_percent", fix, "%s", strings.TrimPrefix(err.Error(), "gas: "))
 		return
 	}
-	g.Mixture = m
+	g.Mixture, g.Listed = m, all
+	if g.Name == "" {
+		g.Name = "a mixture"
+	}
+}
+
+// remainder takes what the analysis does not name as one component.
+func (r *reader) remainder(s *object, g *Gas, all []gas.Fraction) {
+	as, ok := s.text("remainder", nil, "the component that the rest is taken as: ethane", true)
+	if !ok {
+		return
+	}
+	m, err := gas.WithRemainder(all, as)
+	if err != nil {
+		s.wrong("remainder", "name a component of a gas; it may stand for at most 20 %", "%s", strings.TrimPrefix(err.Error(), "gas: "))
+		return
+	}
+	g.Mixture, g.Listed, g.Remainder = m, all, as
+	g.Unknown = 1
+	for _, c := range all {
+		g.Unknown -= c.X
+	}
+	g.Unknown = max(0, g.Unknown)
 	if g.Name == "" {
 		g.Name = "a mixture"
 	}

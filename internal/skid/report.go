@@ -27,6 +27,7 @@ func Report(w io.Writer, sk *Skid, rate float64) error {
 	p.cylinders(sk)
 	p.valves(sk)
 	p.steps(sk, ds)
+	p.failed(sk, ds)
 	p.sampling(sk)
 	p.channels(sk)
 	p.edges(sk)
@@ -130,6 +131,9 @@ func (p *page) head(sk *Skid) {
 		row("rated rod load", f("compression %s, tension %s", known(m.RodLoadCompression/1e3, "%.4g kN"), known(m.RodLoadTension/1e3, "%.4g kN"))),
 		row("shaft mark", f("channel %s, %s edge, %s", ph.Channel, edge, threshold)),
 	)
+	if m.GasLoadCompression+m.GasLoadTension > 0 {
+		rows = append(rows, row("rated gas load", f("compression %s, tension %s", known(m.GasLoadCompression/1e3, "%.4g kN"), known(m.GasLoadTension/1e3, "%.4g kN"))))
+	}
 	if ph.Wheel.Teeth > 0 {
 		rows = append(rows, row("toothed wheel", f("%v, %d teeth a turn; a turn opens with the first tooth after the index", ph.Wheel, ph.Wheel.Marks())))
 	}
@@ -156,6 +160,9 @@ func (p *page) gas(sk *Skid, ds []duty) {
 	p.title("Gas: %s", sk.Gas.Name)
 	var rows []string
 	if m := sk.Gas.Mixture; m != nil {
+		if m.Note != "" {
+			rows = append(rows, row("taken as", m.Note))
+		}
 		var parts []string
 		for _, c := range m.Composition() {
 			parts = append(parts, f("%s %.4g %%", c.Name, c.X*100))
@@ -174,6 +181,9 @@ func (p *page) gas(sk *Skid, ds []duty) {
 			row(f("stage %d", n), f("%s %s → %s absolute, ratio %.2f", bar(l.Ps), celsius(l.Ts), bar(l.Pd), l.Pd/l.Ps)),
 			row("", f("Z %.4f suction, %.4f discharge; volume exponent %.4f, temperature exponent %.4f", g.Zs, g.Zd, g.KV, g.KT)),
 			row("", f("loss-free discharge temperature %s", celsius(g.T2s))))
+		if g.Wet {
+			rows = append(rows, row("", "some of its water condenses at suction; computed as if it stayed vapour"))
+		}
 	}
 	p.table(rows)
 }

@@ -58,12 +58,7 @@ func (p *page) endRow(sk *Skid, i, e int, s Step, end idealEnd) string {
 }
 
 func rodRow(sk *Skid, i int, it idealThrow) string {
-	m := sk.Machine
 	span := func(r crank.Reversal) string { return f("+%.1f/−%.1f kN", r.MaxCompression/1e3, r.MaxTension/1e3) }
-	rated := "–"
-	if m.RodLoadCompression > 0 && m.RodLoadTension > 0 {
-		rated = f("%.0f/%.0f %%", 100*it.pin.MaxCompression/m.RodLoadCompression, 100*it.pin.MaxTension/m.RodLoadTension)
-	}
-	return row(sk.Throws[i].ID, span(it.gas), span(it.pin), rated, f("%.0f°, %.0f %%", it.pin.Longest, 100*it.pin.Share),
+	return row(sk.Throws[i].ID, span(it.gas), span(it.pin), sk.Machine.shares(it), f("%.0f°, %.0f %%", it.pin.Longest, 100*it.pin.Share),
 		f("%.1f kW", it.power/1e3), f("%.0f kg/h", it.flow*3600))
 }

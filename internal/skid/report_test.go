@@ -84,7 +84,7 @@ func TestEachOddityIsDoubtedAtItsPlace(t *testing.T) {
 		"a channel nobody uses":     {"    accelerometers: [a2]\n", "", "channels[6]", "channel a2 is not used"},
 		"no covers":                 {", covers: [TT-1221, TT-1222]", "", "throws[1].crank_end", "2 of 4 valves of t2.ce have no cover"},
 		"a hot discharge":           {"p_suction_bar_abs: 8\n", "p_suction_bar_abs: 4\n", "process.stages[0]", "loss-free discharge temperature"},
-		"rod load over rating":      {"rod_load_compression_kn: 110", "rod_load_compression_kn: 40", "load_steps[0]", "rated +40/−100 kN"},
+		"rod load over rating":      {"rod_load_compression_kn: 110", "rod_load_compression_kn: 40", "load_steps[0]", "pin load of t1 in step 0 is 49 kN in compression, rated 40 kN"},
 		"exchanged pressures":       {"p_suction_bar_abs: 8\n", "p_suction_bar_abs: 28\n", "process.stages[0]", "is not below discharge pressure"},
 		"a range just too small":    {"valid_max_bar_abs: 42\n", "valid_max_bar_abs: 23\n", "channels[1]", "reads to 23.0 bar, the discharge line has 22.0 bar"},
 		"a range far too wide":      {"{v: 5, bar_abs: 40}], valid_min_bar_abs: 0.5, valid_max_bar_abs: 42}", "{v: 5, bar_abs: 400}]}", "channels[2]", "reads to 900 bar"},
@@ -101,6 +101,9 @@ func TestEachOddityIsDoubtedAtItsPlace(t *testing.T) {
 		"a cold discharge":          {"# t_discharge_c: 105", "t_discharge_c: 60", "process.stages[0]", "loss-free compression gives 97 °C"},
 		"no passage":                {"site: ", "site: ", "channels", "the passage resonance of 4 pressure channels"},
 		"uneven analysis":           {"methane: 96.8", "methane: 96.6", "gas.mole_percent", "normalised"},
+		"rod load near its rating":  {"rod_load_tension_kn: 100", "rod_load_tension_kn: 40", "load_steps[0]", "pin load of t1 in step 0 takes 94 % of the rated tension"},
+		"gas load over its rating":  {"rod_load_tension_kn: 100", "gas_load_tension_kn: 45\n  rod_load_tension_kn: 100", "load_steps[3]", "gas load of t2 in step 3 is 49 kN in tension, rated 45 kN"},
+		"a limit beyond the rating": {"high: 110", "high: 130", "limits[2].high", "is 130 kN, the rating 110 kN"},
 		"tiny valves":               {"flow_area_mm2: 1350", "flow_area_mm2: 135", "throws[0].head_end.suction.flow_area_mm2", "0.7 % of the piston area"},
 	} {
 		t.Run(name, func(t *testing.T) {

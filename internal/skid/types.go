@@ -43,6 +43,8 @@ type Machine struct {
 	RatedRPM, MinRPM, MaxRPM float64
 	RodLoadCompression       float64 // N, rated combined rod load, 0 unknown
 	RodLoadTension           float64 // N, positive number, 0 unknown
+	GasLoadCompression       float64 // N, rated gas rod load (of frame and distance piece), 0 unknown
+	GasLoadTension           float64 // N, positive number, 0 unknown
 	Atmosphere               float64 // Pa, default 101325
 	Inertia                  float64 // kg m², rotating, 0 unknown
 }
@@ -72,6 +74,12 @@ type Gas struct {
 	Name    string
 	Mixture *gas.Mixture
 	Fixed   *gas.Fixed
+
+	Listed    []gas.Fraction // the analysis as written, mole fractions; nil when the gas is named or fixed
+	Unknown   float64        // share that the analysis does not name, 0: none
+	Remainder string         // the component that the unknown share is taken as
+	Water     float64        // mole fraction of water added by moisture, 0: none
+	WaterAt   float64        // Pa, pressure for which the moisture was stated
 }
 
 // Throw is one cylinder on its crank throw.
@@ -163,6 +171,7 @@ type Limit struct {
 	Deadband          float64
 	OnDelay, OffDelay time.Duration
 	Severity          string // advisory, alert, danger
+	From              string // path of the rating that the limit was made from; empty: the file states the limit itself
 }
 
 // Tape bounds the rolling raw buffer.
