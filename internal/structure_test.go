@@ -95,6 +95,24 @@ func TestEdgesDoNotKnowEachOther(t *testing.T) {
 	}
 }
 
+// TestTheModelSharesNoFormulas: the modelled machine tests the analysis only while both work things out for themselves.
+// Common are the geometry of the slider-crank, the equation of state, the skid file, and the form of a block.
+func TestTheModelSharesNoFormulas(t *testing.T) {
+	shared := map[string]bool{"acq": true, "crank": true, "gas": true, "skid": true}
+	for im := range sources(t, "model") {
+		if room, ok := strings.CutPrefix(im, "lapwing/internal/"); ok && !shared[room] {
+			t.Errorf("internal/model imports internal/%s: what it would test is then computed by itself", room)
+		}
+	}
+	for _, r := range pure {
+		for im := range sources(t, r) {
+			if im == "lapwing/internal/model" || im == "lapwing/internal/scenario" {
+				t.Errorf("internal/%s imports %s: the analysis must not know the truth", r, im)
+			}
+		}
+	}
+}
+
 func TestEveryPackageSaysWhatItIs(t *testing.T) {
 	err := filepath.WalkDir("..", func(path string, d os.DirEntry, err error) error {
 		if err != nil || !d.IsDir() || d.Name() == "testdata" || (strings.HasPrefix(d.Name(), ".") && path != "..") {

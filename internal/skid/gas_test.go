@@ -6,6 +6,7 @@ import (
 	"testing"
 
 	"lapwing/internal/gas"
+	"lapwing/internal/measure"
 )
 
 // gasFile is the example with another gas.
@@ -158,5 +159,15 @@ func TestOneValveFailedOpen(t *testing.T) {
 	var b strings.Builder
 	if err := Report(&b, sk, 0); err != nil || !strings.Contains(b.String(), "with one valve failed open") {
 		t.Errorf("not in the report: %v", err)
+	}
+}
+
+// TestRatingsBoundMeasuresThatExist: the names that the limits are made with are those of the throw's measures.
+func TestRatingsBoundMeasuresThatExist(t *testing.T) {
+	l := measure.NewLayout(measure.Machine{Throws: []measure.Throw{{ID: "t1"}}})
+	for _, r := range (Machine{}).ratings() {
+		if l.Find("t1", r.measure) < 0 {
+			t.Errorf("no measure %s", r.measure)
+		}
 	}
 }
