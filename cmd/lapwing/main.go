@@ -32,7 +32,11 @@ func root() *cobra.Command {
                  lapwing datum REC.wav    dead centres, clearances, pressure zeros from a recording
                  lapwing ripple REC.wav   how unevenly the shaft turns, from a toothed wheel
   control room   lapwing listen           alarms as they arrive over MQTT
-  analyst        lapwing pull CLIP        raw samples around an event, as WAV
+                 lapwing alarms           what stands, and the keys to name it by
+                 lapwing ack KEY          acknowledge; also reset, shelve, unshelve, out, back
+                 lapwing journal          who did what, when and why
+  analyst        lapwing cut LABEL        protect the raw samples of the last seconds
+                 lapwing pull CLIP        raw samples around an event, as WAV
                  lapwing review REC.wav   the same analysis again, offline
   new here?      lapwing demo             a modelled machine, from healthy to alarm
 
@@ -41,7 +45,8 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 		SilenceUsage:  true,
 		SilenceErrors: true,
 	}
-	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), listenCommand())
+	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), listenCommand(), alarmsCommand(), journalCommand())
+	cmd.AddCommand(orderCommands()...)
 	return cmd
 }
 

@@ -113,18 +113,12 @@ func (l *Ledger) Journal(fromID uint64, max int) ([]alarm.Transition, error) {
 		var errs []error
 		cur := tx.Bucket(journalBucket).Cursor()
 		for k, v := cur.Seek(key(fromID)); k != nil && len(out) < max; k, v = cur.Next() {
-			var rec struct {
-				alarm.Transition
-				Detail json.RawMessage `json:"detail"`
-			}
-			if err := unsealJSON(v, &rec); err != nil {
+			tr, err := decodeTransition(v)
+			if err != nil {
 				errs = append(errs, fmt.Errorf("transition %d: %w", binary.BigEndian.Uint64(k), err))
 				continue
 			}
-			if len(rec.Detail) > 0 {
-				rec.Transition.Detail = rec.Detail
-			}
-			out = append(out, rec.Transition)
+			out = append(out, tr)
 		}
 		return errors.Join(errs...)
 	})
@@ -132,6 +126,20 @@ func (l *Ledger) Journal(fromID uint64, max int) ([]alarm.Transition, error) {
 		return out, fmt.Errorf("ledger: journal: %w", err)
 	}
 	return out, nil
+}
+
+func decodeTransition(v []byte) (alarm.Transition, error) {
+	var rec struct {
+		alarm.Transition
+		Detail json.RawMessage `json:"detail"`
+	}
+	if err := unsealJSON(v, &rec); err != nil {
+		return alarm.Transition{}, err
+	}
+	if len(rec.Detail) > 0 {
+		rec.Transition.Detail = rec.Detail
+	}
+	return rec.Transition, nil
 }
 
 // Doc reads a document into v; false when there is none.

@@ -31,10 +31,17 @@ type Source interface {
 	// Order carries an order out between two turns, or refuses it; both are in the receipt. An error says that nothing
 	// was done.
 	Order(ctx context.Context, o wire.Order) (wire.Receipt, error)
+	// Journal gives one page of the alarm journal.
+	Journal(f wire.JournalFilter) (wire.JournalPage, error)
+	// Alarms gives every alarm point, shown or not.
+	Alarms() wire.Alarms
 }
 
 // ErrNoClip says that a clip of that name does not exist. Source.Export wraps it.
 var ErrNoClip = errors.New("no such clip")
+
+// ErrQuery says that a request asks for something that cannot be; what the source says of it is for the asker.
+var ErrQuery = errors.New("not understood")
 
 // Panel serves the page. Open it, then Serve, then Close.
 type Panel struct {
@@ -156,7 +163,10 @@ func routes(src Source, log *slog.Logger) http.Handler {
 	mux.HandleFunc("GET /api/v1/clips", func(w http.ResponseWriter, r *http.Request) {
 		sendJSON(w, list(src.Now().Clips), log)
 	})
+	mux.HandleFunc("GET /api/v1/alarms", func(w http.ResponseWriter, r *http.Request) { sendJSON(w, src.Alarms(), log) })
+	mux.HandleFunc("GET /api/v1/journal", journal(src, log))
 	mux.HandleFunc("POST "+ordersPath, order(src, log))
+	learning(mux, src, log)
 	c := clipper{src: src, log: log, busy: make(chan struct{}, exports)}
 	mux.HandleFunc("GET /api/v1/clips/{id}", c.send)
 	return mux

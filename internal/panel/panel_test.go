@@ -34,6 +34,8 @@ type still struct {
 	exports int
 	order   func(ctx context.Context, o wire.Order) (wire.Receipt, error)
 	ordered []wire.Order
+	journal func(f wire.JournalFilter) (wire.JournalPage, error)
+	asked   []wire.JournalFilter
 }
 
 func (s *still) Now() *wire.Now { return s.now }
@@ -53,6 +55,16 @@ func (s *still) Order(ctx context.Context, o wire.Order) (wire.Receipt, error) {
 	}
 	return s.order(ctx, o)
 }
+
+func (s *still) Journal(f wire.JournalFilter) (wire.JournalPage, error) {
+	s.asked = append(s.asked, f)
+	if s.journal == nil {
+		return wire.JournalPage{Version: 1}, nil
+	}
+	return s.journal(f)
+}
+
+func (s *still) Alarms() wire.Alarms { return wire.Alarms{Version: 1, Points: []wire.Point{}} }
 
 func open(t *testing.T, src Source) string {
 	t.Helper()

@@ -30,6 +30,8 @@ type desk struct {
 	open     map[string]wire.Alarm // by key, what stands
 	named    map[string]string     // by key, the single valve that the standing alarm names
 	findings []wire.Finding
+	points   wire.Alarms
+	pointsAt time.Time         // sample time of the turn that they were looked at; zero: something has changed since
 	latest   *wire.Turn        // whole
 	good     int64             // number of the newest valid turn, with a whole record or without
 	trouble  map[string]string // by cause
@@ -173,6 +175,7 @@ func (s *Station) commit() error {
 	}
 	s.desk.say("ledger", "")
 	s.desk.mu.Lock()
+	s.desk.pointsAt = time.Time{}
 	for i := range s.unsaid {
 		if s.unsaid[i].act != nil {
 			continue
@@ -247,6 +250,10 @@ func (s *Station) publish(o *Output, at time.Time) {
 	if o.Judged {
 		d.findings = wireFindings(o.Findings, s.line)
 		renewed = d.renew(d.findings, o.At)
+	}
+	if d.pointsAt.IsZero() || at.Sub(d.pointsAt).Abs() >= time.Second {
+		s.look()
+		d.pointsAt = at
 	}
 	n := &wire.Now{Skid: s.sk.ID, Name: s.sk.Name, Site: s.sk.Site, At: at, Latest: d.latest, Findings: d.findings,
 		Standing: d.standing(), Journal: slices.Clone(d.journal), Clips: s.clips(), Caution: wire.Caution}
@@ -372,6 +379,13 @@ func (s *Station) health(at time.Time) wire.Health {
 	h.Tape = wire.TapeHealth{Bytes: st.LiveBytes, Limit: s.sk.Tape.MaxBytes, Oldest: st.OldestUTC, Newest: st.NewestUTC, Dropped: int64(st.QueueDroppedBlocks), Clips: st.Clips}
 	if s.pub != nil {
 		h.Uplink = s.pub.Status()
+	}
+	if a := s.line.Alarms(); a.Flood() {
+		said := "alarm flood: more alarms have come within ten minutes than a person can follow"
+		if open := a.Open(); len(open) > 0 {
+			said += "; the first of those that stand was " + open[0].Key
+		}
+		h.Trouble = append(h.Trouble, said)
 	}
 	s.desk.mu.Lock()
 	for _, k := range slices.Sorted(maps.Keys(s.desk.trouble)) {

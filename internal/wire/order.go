@@ -26,6 +26,7 @@ type Order struct {
 	ForS    float64   `json:"for_s,omitempty"`   // s, how long a shelf lasts
 	Until   time.Time `json:"until,omitzero"`    // or when it ends, UTC
 	Turns   int       `json:"turns,omitempty"`   // steady turns of a learning run
+	Add     bool      `json:"add,omitempty"`     // a learning run adds load steps to the baseline in force
 	Auto    bool      `json:"accept,omitempty"`  // a learning run is accepted by itself at its end
 	Label   string    `json:"label,omitempty"`   // of a clip that is cut by hand
 	LastS   float64   `json:"last_s,omitempty"`  // s, how far back a clip goes from now
@@ -73,10 +74,10 @@ var verbFields = map[string]struct{ needs, may []string }{
 	VerbTakeOut:     {[]string{"key", "reason"}, nil},
 	VerbReturn:      {[]string{"key"}, []string{"reason"}},
 	VerbCutClip:     {[]string{"label"}, []string{"reason", "last_s", "from", "to"}},
-	VerbLearnStart:  {[]string{"turns"}, []string{"reason", "subject", "accept"}},
+	VerbLearnStart:  {nil, []string{"turns", "reason", "subject", "add", "accept"}},
 	VerbLearnAccept: {nil, []string{"reason"}},
 	VerbLearnDrop:   {nil, []string{"reason"}},
-	VerbRenew:       {[]string{"subject"}, []string{"reason", "turns"}},
+	VerbRenew:       {[]string{"subject"}, []string{"reason", "turns", "accept"}},
 }
 
 // Verbs lists the verbs, in alphabetical order.
@@ -112,7 +113,7 @@ func ParseOrder(raw []byte) (Order, error) {
 // has tells which fields an order has.
 func (o *Order) has() map[string]bool {
 	return map[string]bool{"key": o.Key != "", "subject": o.Subject != "", "reason": o.Reason != "", "for_s": o.ForS != 0, "until": !o.Until.IsZero(),
-		"turns": o.Turns != 0, "accept": o.Auto, "label": o.Label != "", "last_s": o.LastS != 0, "from": !o.From.IsZero(), "to": !o.To.IsZero()}
+		"turns": o.Turns != 0, "add": o.Add, "accept": o.Auto, "label": o.Label != "", "last_s": o.LastS != 0, "from": !o.From.IsZero(), "to": !o.To.IsZero()}
 }
 
 // Check says what an order lacks or has too much of, without regard to what is possible now.
@@ -144,7 +145,7 @@ func (o *Order) Check() error {
 			return bad("%s needs %s", o.Verb, n)
 		}
 	}
-	for _, n := range []string{"key", "subject", "reason", "for_s", "until", "turns", "accept", "label", "last_s", "from", "to"} {
+	for _, n := range []string{"key", "subject", "reason", "for_s", "until", "turns", "add", "accept", "label", "last_s", "from", "to"} {
 		if has[n] && !slices.Contains(f.needs, n) && !slices.Contains(f.may, n) {
 			return bad("%s takes no %s", o.Verb, n)
 		}

@@ -408,7 +408,7 @@ func TestTurnInFull(t *testing.T) {
 
 // Every number that people read says its unit, or is one that has none.
 func TestUnitsInNames(t *testing.T) {
-	unit := regexp.MustCompile(`(_bar|_bar_abs|_kw|_kn|_j|_deg|_rpm|_percent|_kg_h|_mm2|_g|_ms|_db|_ln|_c|_k|_s|_bytes|_turns)$`)
+	unit := regexp.MustCompile(`(_bar|_bar_abs|_kw|_kn|_j|_deg|_rpm|_percent|_kg_h|_nm3_h|_kwh_1000nm3|_mm2|_g|_ms|_db|_ln|_c|_k|_s|_bytes|_turns)$`)
 	bare := map[string]bool{"ratio_plateau": true, "ratio_line": true, "flow_balance": true, "n_comp_early": true, "n_comp_late": true, "n_exp_early": true, "n_exp_late": true,
 		"n_comp_early_se": true, "n_comp_late_se": true, "n_exp_early_se": true, "n_exp_late_se": true, "leak_residual": true, "leak_shape": true,
 		"crest": true, "extra_hits": true, "extra_hits_45": true}
