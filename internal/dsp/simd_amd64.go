@@ -65,3 +65,8 @@ func levelsRun(b *Bins, peak, rms, square, x, y []float64) {
 
 //go:noescape
 func levelsAVX2(b *Bins, peak, rms, square, x, y *float64)
+
+func momentsVectors(m *Moments, from, n int) { momentsAVX2(m, &m.x[from], n) }
+
+//go:noescape
+func momentsAVX2(m *Moments, x *int32, n int)

@@ -2,6 +2,8 @@
 
 package dsp
 
+const hasAVX2 = false
+
 func bankRun(b *Bank, from, n int) { bankPlain(b, from, n) }
 
 func valuesRun(dst []float64, x []int32, gain, offset float64) (n int) { return 0 }
@@ -15,3 +17,5 @@ func linesRun(l *LineFit, dst [2][]float64, pos []float64, x [2][]float64, shift
 func levelsRun(b *Bins, peak, rms, square, x, y []float64) {
 	levelsPlain(b, peak, rms, square, x, y)
 }
+
+func momentsVectors(m *Moments, from, n int) { momentsPlain(m, from, n) }

@@ -1,6 +1,10 @@
 package sensor
 
-import "math"
+import (
+	"math"
+
+	"lapwing/internal/dsp"
+)
 
 // parts is how many stretches a turn is looked at in: the quietest ones show the noise without the valves.
 const parts = 32
@@ -28,50 +32,29 @@ const railShare = 1e-4
 // take scans x, the samples of one turn; least 64 of them.
 func (s *scan) take(x []int32) {
 	*s = scan{n: len(x), min: x[0], max: x[0]}
-	base := x[0] // keeps the sums small: no cancellation far from zero
-	var sum, sq, sd, sd4, sdd float64
+	var m dsp.Moments // about the first code: no cancellation far from zero
+	m.Begin(x)
+	var sum, sdd float64
 	var means, white [parts]float64
 	var tops, bottoms [parts]int32
-	var last, run, longest int64
-	prev, pd := 0.0, 0.0
 	for k := range parts {
 		from, to := k*len(x)/parts, (k+1)*len(x)/parts
-		var ps int64
-		var pdd float64
-		hi, lo := x[from], x[from]
-		for _, v := range x[from:to] {
-			n := int64(v) - int64(base)
-			ps += n
-			f := float64(n)
-			d := f - prev
-			dd := d - pd
-			prev, pd = f, d
-			sq += f * f
-			d2 := d * d
-			sd += d2
-			sd4 += d2 * d2
-			pdd += dd * dd
-			step := n - last // without a branch: noise would mispredict it
-			last = n
-			run = run&^((step|-step)>>63) + 1
-			longest = max(longest, run)
-			lo, hi = min(lo, v), max(hi, v)
-		}
-		bottoms[k], tops[k] = lo, hi
-		s.min, s.max = min(s.min, lo), max(s.max, hi)
+		p := m.Part(to)
+		bottoms[k], tops[k] = p.Least, p.Most
+		s.min, s.max = min(s.min, p.Least), max(s.max, p.Most)
 		n := float64(to - from)
-		sum += float64(ps)
-		sdd += pdd
-		means[k], white[k] = float64(ps)/n, pdd/n/6 // a second difference of white noise has six times its variance
+		sum += p.Sum
+		sdd += p.Bent
+		means[k], white[k] = p.Sum/n, p.Bent/n/6 // a second difference of white noise has six times its variance
 	}
-	s.run = int(longest)
+	s.run = m.Longest()
 	n := float64(len(x))
-	s.mean = float64(base) + sum/n
-	v := max(0, sq/n-sum/n*(sum/n))
+	s.mean = m.Base() + sum/n
+	v := max(0, m.Square()/n-sum/n*(sum/n))
 	s.rms = math.Sqrt(v)
-	if v > 0 && sd > 0 {
+	if sd := m.Two(); v > 0 && sd > 0 {
 		s.rough = sd / n / (2 * v)
-		s.kurtosis = n * sd4 / (sd * sd)
+		s.kurtosis = n * m.Four() / (sd * sd)
 	}
 	s.quiet, s.white = math.Sqrt(third(&white)), math.Sqrt(sdd/n/6)
 	s.rails(x, &bottoms, &tops)
