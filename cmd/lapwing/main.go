@@ -45,8 +45,9 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 		SilenceUsage:  true,
 		SilenceErrors: true,
 	}
-	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), listenCommand(), alarmsCommand(), journalCommand())
+	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), tablesCommand(), listenCommand(), alarmsCommand(), journalCommand())
 	cmd.AddCommand(orderCommands()...)
+	cmd.AddCommand(baselineCommand())
 	return cmd
 }
 
