@@ -23,7 +23,6 @@ type end struct {
 	clear0, vc float64 // m³, clearance volume without and with the pocket
 	bore       float64
 	gas        *Gas
-	par        *Params
 
 	p, m, t float64 // Pa, kg, K
 	v       float64 // m³
@@ -36,6 +35,7 @@ type end struct {
 	stepLate, addLate     float64 // likewise, degrees
 
 	hA      float64 // W/K, wall heat coefficient times surface
+	heated  float64 // factor on it
 	wall    float64 // K
 	ring    float64 // kg/s into the end past the rings
 	ringT   float64 // K, of that gas
@@ -93,7 +93,7 @@ func powk(r, k float64) float64 {
 // heat refreshes the wall heat coefficient: Nu = 0.053·Re^0.8·Pr^0.6 on the hydraulic diameter 6V/A with a swirl speed that
 // follows the crank (Adair, Qvale and Pearson, 1972; constants as repeated by later comparisons, the swirl from memory).
 func (e *end) heat(deg, omega float64) {
-	if e.par.WallHeat == 0 {
+	if e.heated == 0 {
 		e.hA = 0
 		return
 	}
@@ -113,7 +113,7 @@ func (e *end) heat(deg, omega float64) {
 	re := e.m / e.v * swirl * de * de / (2 * mu)
 	cp := g.K / (g.K - 1) * g.R
 	nu := 0.053 * math.Pow(re, 0.8) * math.Pow(g.Prandtl, 0.6)
-	e.hA = e.par.WallHeat * nu * mu * cp / g.Prandtl / de * surface
+	e.hA = e.heated * nu * mu * cp / g.Prandtl / de * surface
 }
 
 // path is one opening of the end to a neighbouring space during one sub-step.

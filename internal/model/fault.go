@@ -36,6 +36,7 @@ type more struct {
 	gain, clip, open, flat      map[string]*track // by channel
 	hum, noisy                  map[string]*track // by channel
 	slip, extra, missed, frozen track
+	heat, exponent, weight      track // of the whole machine
 	swaps                       []*swapPlan
 }
 
@@ -45,7 +46,7 @@ type swapPlan struct {
 }
 
 func newMore(sk *skid.Skid, lines []skid.Line) more {
-	p := more{missing: map[string]*track{}, gummed: map[string]*track{}, springs: map[string]*track{}, pocket: map[string]*track{},
+	p := more{heat: track{base: 1}, weight: track{base: 1}, missing: map[string]*track{}, gummed: map[string]*track{}, springs: map[string]*track{}, pocket: map[string]*track{},
 		late: map[string]*track{}, recycle: map[string]*track{}, gain: map[string]*track{}, clip: map[string]*track{},
 		open: map[string]*track{}, flat: map[string]*track{}, hum: map[string]*track{}, noisy: map[string]*track{}}
 	for i := range lines {
@@ -117,6 +118,12 @@ func (p *more) single(w What) *track {
 		return &p.missed
 	case FrozenProcess:
 		return &p.frozen
+	case WallHeat:
+		return &p.heat
+	case GasExponent:
+		return &p.exponent
+	case GasWeight:
+		return &p.weight
 	}
 	return nil
 }
@@ -139,6 +146,12 @@ func permitted(c Change) error {
 		lo = 0.001
 	case PhaseSlip:
 		lo, hi = -180, 180
+	case WallHeat:
+		hi = 10
+	case GasExponent:
+		lo, hi = -0.2, 0.2
+	case GasWeight:
+		lo, hi = 0.3, 3
 	}
 	if c.To < lo || c.To > hi {
 		return fmt.Errorf("%g is outside %g to %g", c.To, lo, hi)

@@ -65,6 +65,9 @@ func TestValveFaults(t *testing.T) {
 		{"a pocket that opens without a load step: the discharge opens later", Script{}.Add(0, 0, Pocket, "t1.he", 0.2), opens, 2, 30},
 		{"stepless late closing: likewise", Script{}.Add(0, 0, LateClosing, "t1.he", 60), opens, 2, 40},
 		{"and the suction closes late", Script{}.Add(0, 0, LateClosing, "t1.he", 60), func(tr Truth) float64 { return tr.Suction.Close.Impact }, 40, 70},
+		{"a lighter gas of a higher exponent: the discharge opens earlier", Script{}.Add(0, 0, GasExponent, "", 0.05), opens, -6, -0.5},
+		{"half the molar mass: half the delivery", Script{}.Add(0, 0, GasWeight, "", 0.5), func(tr Truth) float64 { return tr.Delivered / 0.03255 }, -0.55, -0.45},
+		{"no wall heat: the discharge opens otherwise, a little", Script{}.Add(0, 0, WallHeat, "", 0), func(tr Truth) float64 { return math.Abs(opens(tr) - 292.467) }, 0.02, 2},
 		{"worn rings: the suction opens earlier", Script{}.Add(0, 0, RingLeak, "t1", 40*MM2), func(tr Truth) float64 { return tr.Suction.Open.Lift }, -20, -1},
 	} {
 		was, is := meanOf(t, Script{}, c.look), meanOf(t, c.s, c.look)

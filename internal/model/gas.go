@@ -95,20 +95,25 @@ func (g *gasMap) node(key [3]int) (Gas, bool) {
 const nozzleStep = 0.005
 
 // follow gives the stage the gas of its present line: what Params says, moved by as much as the real gas moves from the
-// duty for which Params was made. Where the gas cannot be computed, the last that could be holds.
-func (s *stage) follow(m *Machine, l skid.Line) {
-	if l == s.line || m.gases == nil {
+// duty for which Params was made, and by what the script makes of it. Where the gas cannot be computed, the last that
+// could be holds.
+func (s *stage) follow(m *Machine, l skid.Line, t float64) {
+	other, weight := m.plan.exponent.at(t), m.plan.weight.at(t)
+	if l == s.line && other == s.other && weight == s.weight {
 		return
 	}
-	s.line = l
-	g, ok := m.gases.at(l)
-	if !ok {
-		return
+	if l != s.line && m.gases != nil {
+		if g, ok := m.gases.at(l); ok {
+			s.real = Gas{R: m.par.Gas.R * (g.R / m.gas0.R), K: m.par.Gas.K + (g.K - m.gas0.K), KT: m.par.Gas.KT}
+			if m.par.Gas.KT != 0 {
+				s.real.KT += g.KT - m.gas0.KT
+			}
+		}
 	}
-	s.gas.R = m.par.Gas.R * (g.R / m.gas0.R)
-	s.gas.K = m.par.Gas.K + (g.K - m.gas0.K)
-	if m.par.Gas.KT != 0 {
-		s.gas.KT = m.par.Gas.KT + (g.KT - m.gas0.KT)
+	s.line, s.other, s.weight = l, other, weight
+	s.gas.R, s.gas.K, s.gas.KT = s.real.R/weight, s.real.K+other, s.real.KT
+	if s.gas.KT != 0 {
+		s.gas.KT += other
 	}
 	if math.Abs(s.gas.K-s.noz.k) > nozzleStep {
 		s.noz = newNozzle(s.gas.K)

@@ -11,7 +11,8 @@
 //	valves      ValveLeak, Broken (plate cracked: harder blows), Missing (a piece gone: hole, harder blows, rattle),
 //	            Sticky (to the seat: opens late and hard; 0.02 to 0.1), Gummed (to the stop: closes late and hard;
 //	            0.002 to 0.01), Springs (weak 0.3: closes late; stiff 3 to 5: flutters)
-//	cylinder    RingLeak, PackingLeak
+//	cylinder    RingLeak, PackingLeak, WallHeat
+//	gas         GasExponent, GasWeight: another gas than the skid says
 //	load        LoadStep, Speed, SuctionPressure, DischargePressure, SuctionTemp; Pocket and LateClosing move a variable
 //	            pocket and stepless control on top of the load step; Recycle
 //	pressure    PressureZero (with Over: a drift), PressureGain
@@ -271,7 +272,7 @@ func (m *Machine) slow() {
 	for i, s := range m.stages {
 		l := m.recycled(i, ahead)
 		s.aim(l)
-		s.follow(m, l)
+		s.follow(m, l, ahead)
 	}
 	if st := int(m.plan.step.at(t)); st != m.step {
 		m.setStep(st, false)

@@ -44,6 +44,9 @@ const (
 	ExtraPulses   // none; share of turns with a pulse where none belongs
 	MissedPulses  // none; share of turns whose mark is missing
 	FrozenProcess // none; 1: the process values stay what they were; 0: they move again
+	WallHeat      // none; factor on the heat that walls and gas exchange
+	GasExponent   // none; added to both isentropic exponents: another gas than the skid says
+	GasWeight     // none; factor on the gas's molar mass
 )
 
 // MM2 is a square millimetre in m².

@@ -13,9 +13,10 @@ type stage struct {
 	ps, pd, ts    float64
 	dps, dpd, dts float64 // per sample
 
-	gas  Gas
-	noz  *nozzle
-	line skid.Line // for which gas was computed
+	gas, real     Gas // in the cylinders, and what the skid's gas is at the line
+	noz           *nozzle
+	line          skid.Line // for which gas was computed
+	other, weight float64   // what the script makes of it
 }
 
 func (s *stage) aim(l skid.Line) {
@@ -44,8 +45,8 @@ func (m *Machine) buildStages(sk *skid.Skid) {
 	}
 	for i := range m.plan.ps {
 		l := m.plan.line(i, 0)
-		st := &stage{ps: l.Ps, pd: l.Pd, ts: l.Ts, gas: m.par.Gas, noz: newNozzle(m.par.Gas.K)}
-		st.follow(m, l)
+		st := &stage{ps: l.Ps, pd: l.Pd, ts: l.Ts, gas: m.par.Gas, real: m.par.Gas, noz: newNozzle(m.par.Gas.K)}
+		st.follow(m, l, 0)
 		m.stages = append(m.stages, st)
 	}
 }
@@ -102,7 +103,7 @@ func (m *Machine) buildThrows(seed uint64) error {
 				return fmt.Errorf("model: throw %s: a working end needs suction and discharge valves", st.ID)
 			}
 			e := &end{name: st.ID + [2]string{".he", ".ce"}[side], side: side, area: cyl.Area(side), swept: cyl.Swept(side),
-				clear0: cyl.ClearanceVolume(side), bore: cyl.Bore, gas: &t.stage.gas, par: &m.par}
+				clear0: cyl.ClearanceVolume(side), bore: cyl.Bore, gas: &t.stage.gas}
 			e.vc = e.clear0
 			e.diary = diary{throw: i, end: side}
 			e.disch.discharge = true
@@ -322,11 +323,12 @@ func (t *throw) slow(m *Machine, now float64) {
 	ring := m.plan.ring[t.sk.ID].at(now)
 	ad := t.adiabatic()
 	t.controls(m, now)
+	heat := m.plan.heat.at(now)
 	for side, e := range t.ends {
 		if e == nil {
 			continue
 		}
-		e.ringA = ring
+		e.ringA, e.heated = ring, m.par.WallHeat*heat
 		if side == crank.CE {
 			e.packing = m.plan.packing[t.sk.ID].at(now)
 		}
