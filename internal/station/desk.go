@@ -102,9 +102,13 @@ func (s *Station) book(o *Output) error {
 	if o.LearnError != nil {
 		s.log.Error("the learning run gave no baseline", "err", o.LearnError)
 		s.desk.say("learning", "the learning run gave no baseline: "+o.LearnError.Error())
+		s.learning.dirty = true
 	}
 	if o.Baseline != nil {
 		s.unkept = o.Baseline
+	}
+	if o.Proposed != nil {
+		s.proposed(o.Proposed)
 	}
 	s.append(o.Transitions)
 	return errors.Join(s.keepBaseline(), s.commit())
@@ -193,24 +197,6 @@ func (s *Station) commit() error {
 	return nil
 }
 
-// keepBaseline writes a baseline that is not on disk yet; one that the disk refuses is tried again with every turn.
-func (s *Station) keepBaseline() error {
-	b := s.unkept
-	if b == nil {
-		return nil
-	}
-	raw, err := b.Encode()
-	if err != nil {
-		return fmt.Errorf("station: baseline: %w", err)
-	}
-	if _, err := s.ledger.PutBaseline("learning run", json.RawMessage(raw)); err != nil {
-		return err
-	}
-	s.unkept = nil
-	s.log.Info("baseline learnt", "first_turn", b.Turn0, "last_turn", b.Turn1, "load_steps", len(b.Cells))
-	return nil
-}
-
 // protect asks the tape for the raw samples around an alarm that is raised or grows worse.
 func (s *Station) protect(t *alarm.Transition) string {
 	if t.To != alarm.Unacked || t.Seq1 == 0 || t.By != "" || t.From == alarm.Shelved || t.From == alarm.Suppressed {
@@ -260,6 +246,7 @@ func (s *Station) publish(o *Output, at time.Time) {
 	d.mu.Unlock()
 	n.Health = s.health(at)
 	s.now.Store(n)
+	s.showLearning(at)
 	for i := range renewed {
 		if b, err := json.Marshal(renewed[i]); err == nil && s.pub != nil {
 			s.pub.Offer(s.topics.Standing(renewed[i].Key), b, true)

@@ -174,7 +174,7 @@ func (s *Station) do(o Order, now time.Time) (done, error) {
 	case wire.VerbCutClip:
 		return s.cutClip(o, now)
 	}
-	return done{}, fmt.Errorf("%s: %w", o.Verb, errNotBuilt)
+	return s.learnOrder(o)
 }
 
 // cutClip protects a stretch of raw samples that a person asks for. It has a label, so that it is not let go for room.

@@ -63,6 +63,7 @@ type Station struct {
 	progress atomic.Int64 // samples through the line
 	dropped  atomic.Int64 // blocks the line had no room for
 	desk     desk
+	learning learningDesk
 	orders   chan *request
 	ended    chan struct{} // closed when no order is carried out any more
 	endOnce  sync.Once
@@ -158,6 +159,7 @@ func (s *Station) openLine() error {
 	if err != nil && base != nil && s.o.Learn == 0 {
 		// A baseline learnt with other features is kept on disk and not used.
 		s.log.Warn("the kept baseline does not fit this skid file; declare the machine healthy again with --learn", "err", err)
+		s.learning.inForce = 0
 		s.line, err = NewLine(s.sk, s.info, nil, plan, nil, alarms)
 	}
 	if err != nil {
@@ -175,7 +177,10 @@ func (s *Station) openLine() error {
 			s.log.Warn("what the line remembered of before is not used whole", "err", err)
 		}
 	}
-	return s.desk.restore(s.ledger, s.line.Alarms(), s.sk.ID)
+	if err := s.desk.restore(s.ledger, s.line.Alarms(), s.sk.ID); err != nil {
+		return err
+	}
+	return s.resumeLearning()
 }
 
 // newestEntry is the time of the newest entry of the journal; zero when it is empty.
@@ -189,7 +194,8 @@ func (s *Station) newestEntry() (time.Time, error) {
 
 func (s *Station) baseline() (*duty.Baseline, error) {
 	var raw json.RawMessage
-	_, ok, err := s.ledger.Baseline(0, &raw)
+	info, ok, err := s.ledger.Baseline(0, &raw)
+	s.learning.inForce = info.Version
 	if err != nil || !ok {
 		return nil, err
 	}
