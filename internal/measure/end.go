@@ -62,6 +62,7 @@ func (m *Measurer) end(c *throwCtx, e int) {
 	m.exponents(c, e, at, w)
 	m.losses(c, e, at, w)
 	m.flows(c, e, at, w)
+	m.form(c, e, at, w)
 }
 
 func allPositive(p []float64) bool {
@@ -78,16 +79,24 @@ func allPositive(p []float64) bool {
 func (m *Measurer) cycle(c *throwCtx, e, at int) {
 	p, v := c.th.P[e], c.v[e]
 	lo, hi := p[c.i0], p[c.i0]
-	work := 0.0
+	work, lag := 0.0, 0.0
 	for i := c.i0; i < c.i1; i++ {
 		lo, hi = min(lo, p[i]), max(hi, p[i])
-		work -= (p[i] + p[i+1]) / 2 * (v[i+1] - v[i])
+		dv := v[i+1] - v[i]
+		work -= (p[i] + p[i+1]) / 2 * dv
+		lag -= (p[i-1] + p[i]) / 2 * dv
 	}
 	c.dst.set(at+ePMin, lo)
 	c.dst.set(at+ePMax, hi)
 	c.dst.set(at+eWork, work)
 	c.dst.set(at+ePower, work*c.hz)
 	c.dst.set(at+eMep, work/c.in.Cylinder.Swept(e))
+	if work > 0 {
+		c.dst.set(at+ePowerU, math.Abs(lag-work)/c.th.Grid.Step*c.th.U/work)
+	} else {
+		c.dst.absent(at+ePowerU, whyNoWork)
+	}
+	m.steep(c, e, at)
 }
 
 // levels gives plateaus, ratios and the temperatures that follow from them.
@@ -285,6 +294,7 @@ func (m *Measurer) flows(c *throwCtx, e, at int, w *window.End) {
 	veS, veD := math.NaN(), math.NaN()
 	if from := opened(s); math.IsNaN(from) {
 		c.dst.absent(at+eVeS, s.Why)
+		c.dst.absent(at+eVeSU, s.Why)
 	} else {
 		full := w.Trapped[window.Compression]
 		if math.IsNaN(full) {
@@ -292,12 +302,15 @@ func (m *Measurer) flows(c *throwCtx, e, at int, w *window.End) {
 		}
 		veS = (full - cyl.Volume(e, from)) / swept
 		c.dst.set(at+eVeS, veS)
+		c.dst.set(at+eVeSU, c.openingShare(e, from))
 	}
 	if from := opened(d); math.IsNaN(from) {
 		c.dst.absent(at+eVeD, d.Why)
+		c.dst.absent(at+eVeDU, d.Why)
 	} else {
 		veD = (cyl.Volume(e, from) - clear) / swept
 		c.dst.set(at+eVeD, veD)
+		c.dst.set(at+eVeDU, c.openingShare(e, from))
 	}
 
 	c.dst.absent(at+eCapS, c.dst.Why[at+eVeS])

@@ -44,6 +44,7 @@ func (m *Measurer) loadsOf(c *throwCtx) {
 	lo, hi = extremes(m.loads.Gas)
 	c.dst.set(at+tGasMax, hi)
 	c.dst.set(at+tGasMin, lo)
+	m.shares(c)
 	r := crank.Reverse(m.loads.Pin)
 	c.dst.set(at+tReversal, r.Longest)
 	c.dst.set(at+tReversalShare, r.Share)
@@ -56,8 +57,25 @@ func (m *Measurer) loadsOf(c *throwCtx) {
 	}
 }
 
+// shares gives the load in the piston rod, and the pin's as shares of the rated loads.
+func (m *Measurer) shares(c *throwCtx) {
+	at := c.ix.throw
+	lo, hi := extremes(m.loads.Rod)
+	c.dst.set(at+tPistonMax, hi)
+	c.dst.set(at+tPistonMin, lo)
+	c.dst.absent(at+tRatedComp, whyRated)
+	c.dst.absent(at+tRatedTens, whyRated)
+	if rated := m.cfg.Machine.RatedCompression; rated > 0 {
+		c.dst.set(at+tRatedComp, max(0, c.dst.V[at+tRodMax])/rated)
+	}
+	if rated := m.cfg.Machine.RatedTension; rated > 0 {
+		c.dst.set(at+tRatedTens, max(0, -c.dst.V[at+tRodMin])/rated)
+	}
+}
+
 func (m *Measurer) noLoads(c *throwCtx, why string) {
-	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalShare, tPinPulls, tPinPushes} {
+	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalShare, tPinPulls, tPinPushes,
+		tPistonMax, tPistonMin, tRatedComp, tRatedTens} {
 		c.dst.absent(c.ix.throw+k, why)
 	}
 }

@@ -23,12 +23,6 @@ type Config struct {
 	Do func(n int, f func(i int))
 }
 
-// Gas is what the measures need of the gas at one throw's duty; NaN or 0 where it is not known. R J/(kg K); Zs and Zd
-// compressibility at suction and discharge; KV and KT volume and temperature isentropic exponents, never interchanged.
-type Gas struct {
-	R, Zs, Zd, KV, KT float64
-}
-
 // Input is what the measures are told about one throw for one turn.
 type Input struct {
 	Cylinder       crank.Cylinder // with the open pocket in it
@@ -200,6 +194,7 @@ func (m *Measurer) Measure(dst *Vector, t *turn.Turn, w window.Result, in []Inpu
 	}
 	for i := range m.ctx { // every throw has been heard: what rings across is known
 		if c := &m.ctx[i]; c.th != nil {
+			m.results(c)
 			m.events(c)
 			m.noise(c, t, w, i)
 		}

@@ -2,38 +2,12 @@ package measure
 
 import (
 	"math"
-	"os"
-	"strings"
 	"testing"
 
 	"pgregory.net/rapid"
 
 	"lapwing/internal/window"
 )
-
-func TestEveryFeatureIsDocumented(t *testing.T) {
-	doc, err := os.ReadFile("doc.go")
-	if err != nil {
-		t.Fatal(err)
-	}
-	m := twoEnds()
-	m.Throws[0].Acoustic = true
-	m.Throws[0].Ends[0].Suction = []Valve{{ID: "t1.he.s1", Cover: true}}
-	seen := map[string]bool{}
-	for _, f := range NewLayout(m) {
-		if key := f.Subject + " " + f.Name; seen[key] {
-			t.Errorf("%s twice in the layout", key)
-		} else {
-			seen[key] = true
-		}
-		if !strings.Contains(string(doc), "//\t"+f.Name+"\n") && !strings.Contains(string(doc), "//\t"+f.Name+" ") {
-			t.Errorf("%s is not in the table of doc.go", f.Name)
-		}
-		if f.Scale == 0 || f.What == "" {
-			t.Errorf("%s has no scale or no meaning", f.Name)
-		}
-	}
-}
 
 func TestSingleActing(t *testing.T) {
 	m := twoEnds()

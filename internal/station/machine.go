@@ -106,7 +106,7 @@ func rippleBook(sk *skid.Skid, marks int) (*ripple.Book, error) {
 }
 
 func measureMachine(sk *skid.Skid) measure.Machine {
-	var m measure.Machine
+	m := measure.Machine{RatedCompression: sk.Machine.RodLoadCompression, RatedTension: sk.Machine.RodLoadTension}
 	valves := func(vs []skid.Valve) (out []measure.Valve) {
 		for _, v := range vs {
 			out = append(out, measure.Valve{ID: v.ID, Cover: v.Cover != ""})
