@@ -18,6 +18,7 @@ type Header struct {
 	Turn1    int64     `json:"turn1"`
 	Note     string    `json:"note,omitempty"`     // why the machine was declared healthy
 	Passages []Passage `json:"passages,omitempty"` // gauge passages undone beside those of the skid file
+	Zeros    []Zero    `json:"zeros,omitempty"`    // what was taken off pressures whose zero had drifted
 
 	Kind    Kind      `json:"kind,omitempty"`
 	Subject string    `json:"subject,omitempty"` // what was learnt anew

@@ -14,3 +14,9 @@ type Passage struct {
 	Orders  float64   `json:"orders,omitempty"` // of the shaft
 	Found   time.Time `json:"found,omitzero"`
 }
+
+// Zero is what was taken off a pressure channel while a baseline was learnt, as its zero had drifted since an earlier one.
+type Zero struct {
+	Channel string  `json:"channel"`
+	Pa      float64 `json:"pa"`
+}

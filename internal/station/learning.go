@@ -268,7 +268,7 @@ func (l *Line) endLearning(at float64, o *Output) {
 
 // propose makes a baseline of the run so far, examines it and lets it wait.
 func (l *Line) propose() (*duty.Baseline, error) {
-	h := duty.Header{SkidHash: l.sk.Hash, Created: l.utc(l.clock), Kind: l.learn.kind(), Subject: l.learn.Subject, By: l.learn.By, Note: l.learn.Note, Passages: l.gauges.inForce()}
+	h := duty.Header{SkidHash: l.sk.Hash, Created: l.utc(l.clock), Kind: l.learn.kind(), Subject: l.learn.Subject, By: l.learn.By, Note: l.learn.Note, Passages: l.gauges.inForce(), Zeros: l.levels.off()}
 	if h.Kind != duty.Learnt {
 		h.Over = l.base.Created
 	}
@@ -297,8 +297,12 @@ func (l *Line) judgeBy(b *duty.Baseline) error {
 	if err != nil {
 		return err
 	}
+	fresh := l.ref == nil
 	l.base, l.ref = b, ref
 	l.gauges.hold(b.Passages)
+	if l.levels.anew(); fresh {
+		l.levels.take(b.Zeros)
+	}
 	l.blocks = duty.NewBlocks(ref, duty.BlockConfig{Turns: l.sk.Detection.BlockTurns})
 	l.judge = verdict.New(l.layout, verdict.Config{Channels: judgeChannels(l.sk)})
 	return nil

@@ -51,6 +51,7 @@ type Line struct {
 	sensors  *sensors
 	angles   turn.Config // what turns was made of
 	gauges   *gauges
+	levels   *levels
 
 	vec    measure.Vector
 	win    []window.Input
@@ -149,6 +150,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 	if l.sensors, err = newSensors(sk, info, l.layout, l.each); err != nil {
 		return nil, err
 	}
+	l.levels = newLevels(sk, l.layout)
 	l.windows = window.NewTracker(window.Config{Works: works(sk)})
 	l.record, l.whole = wire.NewRecorder(sk, l.layout, info.Rate), never
 	for i := range sk.Throws {
@@ -194,6 +196,7 @@ func (l *Line) Phase() frame.Status { return l.frames.Status() }
 func (l *Line) Channels() []wire.Channel {
 	out := l.sensors.health()
 	l.gauges.remark(out)
+	l.levels.remark(out)
 	return out
 }
 
@@ -228,6 +231,7 @@ type Memory struct {
 	Sensors *sensor.Memory    `json:"sensors,omitempty"`
 	Slow    []duty.SlowTest   `json:"slow,omitempty"`   // the slow tests of the measures
 	Gauges  []duty.Passage    `json:"gauges,omitempty"` // passages that were found and are undone
+	Zeros   []duty.Zero       `json:"zeros,omitempty"`  // what is taken off the pressures
 }
 
 // Memory copies it out.
@@ -241,7 +245,7 @@ func (l *Line) Memory() Memory {
 	}
 	heard := l.measures.Snapshot()
 	m.Heard = &heard
-	m.Gauges = l.gauges.inForce()
+	m.Gauges, m.Zeros = l.gauges.inForce(), l.levels.off()
 	return m
 }
 
@@ -262,6 +266,8 @@ func (l *Line) Remember(m Memory) error {
 	}
 	if l.gauges.open {
 		l.gauges.take(m.Gauges, false)
+	} else {
+		l.levels.take(m.Zeros)
 	}
 	return err
 }
@@ -400,6 +406,7 @@ func (l *Line) turn(t *turn.Turn) {
 	proc := l.proc(t.Time)
 	l.prepare(t, proc)
 	l.sensors.withdraw(t)
+	l.levels.correct(t)
 	if l.uneven != nil && t.Valid() {
 		for i := range l.behind {
 			l.behind[i] = l.win[i].LinePs
@@ -415,6 +422,7 @@ func (l *Line) turn(t *turn.Turn) {
 		l.refine(w)
 		l.measures.Measure(&l.vec, t, w, l.mea)
 		l.sensors.strip(&l.vec, t)
+		l.levels.strip(&l.vec)
 		l.sensors.level(t, w)
 	} else {
 		l.count.Invalid++
@@ -531,6 +539,7 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 		for i := range l.points {
 			l.devs = l.ref.Deviate(l.devs[:0], i, l.points[i], &l.vec)
 			l.sensors.compare(i, t, l.points[i], l.devs)
+			l.levels.compare(i, t, t.Time, l.points[i], l.devs, l.sensors)
 			block, ok := l.blocks.Add(i, l.points[i], &l.vec, l.devs)
 			if !ok {
 				continue
