@@ -1,11 +1,14 @@
 package turn
 
 // history is a channel's recent values. The oldest go by moving its beginning; memory is moved only when the end is
-// reached, so that a value is copied about once however often the oldest are dropped.
+// reached, so that a value is copied about once in three turns however often the oldest are dropped.
 type history struct {
 	buf  []float64
 	from int // what lies before is forgotten
 }
+
+// roomFor is how many times what is held there is memory for, when it is taken.
+const roomFor = 4
 
 // live gives the values held.
 func (h *history) live() []float64 { return h.buf[h.from:] }
@@ -16,7 +19,7 @@ func (h *history) more(n int) []float64 {
 		live := h.live()
 		to := h.buf[:0]
 		if 2*(len(live)+n) > cap(h.buf) {
-			to = make([]float64, 0, 2*(len(live)+n))
+			to = make([]float64, 0, roomFor*(len(live)+n))
 		}
 		h.buf, h.from = append(to, live...), 0
 	}
