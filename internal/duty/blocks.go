@@ -156,7 +156,9 @@ func (b *Blocks) close(throw int, g *gather) Block {
 			c = &Cusum{}
 			g.drift[i] = c
 		}
-		d.Drift = c.Step(d.Z)
+		if d.Drift = c.Share(); g.settled { // what is slow can wait for steady duty, where blocks are nearest to independent
+			d.Drift = c.Step(d.Z)
+		}
 		if math.IsNaN(d.Z) {
 			continue
 		}

@@ -11,7 +11,7 @@ import (
 // endless averaging would still leave, because the duty itself is never known exactly. abs is in the unit that people
 // read, rel is a share of the feature's usual value; the larger counts.
 type floor struct {
-	name     string // exact, or a prefix when it ends in *
+	name     string // exact; a prefix when it ends in *
 	abs, rel float64
 }
 
@@ -33,8 +33,8 @@ var floors = []floor{
 	{"leak_phase_deg", 0.03, 0},
 	{"leak_zero_bar", 0.02, 0},
 	{"leak_residual", 0, 0.2},
-	{"suction_opens_deg", 0.15, 0}, // regressed on the duty, where the *_late ones need it hardly
-	{"discharge_opens_deg", 0.15, 0},
+	{"suction_opens_deg", 0.25, 0}, // regressed on the duty, where the *_late ones need it hardly
+	{"discharge_opens_deg", 0.25, 0},
 	{"suction_closes_deg", 1, 0}, // ill-conditioned at full load (windows.md)
 	{"discharge_closes_deg", 0.5, 0},
 	{"leak_noise_db", 0.6, 0},
@@ -42,18 +42,21 @@ var floors = []floor{
 	{"impact_ln", 0.10, 0}, // openings; closings below
 	{"impact_norm_ln", 0.10, 0},
 	{"extra_hits_45", 2.5, 0}, // ten in 45 turns are then three spreads over a healthy rate of 0.05 a turn (vibration.md section 4)
-	{"pin_*", 1, 0},
+	{"pin_*", 1.5, 0},
 	{"peak_g", 0, 0.15},
 	{"rms_g", 0, 0.12},
-	{"lag_ms", 0.03, 0.10}, // healthy blocks spread over −27…+20 % under load swings (vibration.md section 4)
-	{"suction_loss_kw", 0.05, 0.06},
-	{"discharge_loss_kw", 0.05, 0.06},
+	{"lag_ms", 0.03, 0.10},          // healthy blocks spread over −27…+20 % under load swings (vibration.md section 4)
+	{"suction_loss_kw", 0.05, 0.12}, // follows a pressure difference of a few per cent
+	{"discharge_loss_kw", 0.05, 0.12},
+	{"power_kw", 0, 0.015},
+	{"indicated_power_kw", 0, 0.015},
+	{"capacity_*", 0, 0.015},
 	{"onset_deg", 0.3, 0},
-	{"cover_c", 8, 0}, // K; it follows the duty by minutes, so that swings put it far off what the duty says
-	{"cover_*", 1, 0}, // against its group
-	{"t_excess_k", 2, 0},
+	{"cover_c", 8, 0},    // K; it follows the duty by minutes, so that swings put it far off what the duty says
+	{"cover_*", 1, 0},    // against its group
+	{"t_excess_k", 5, 0}, // follows the duty by minutes
 	{"t_*", 1, 0},
-	{"reversal_*", 1, 0.02},
+	{"reversal_*", 1.5, 0.02},
 	{"*", 0, 0.01},
 }
 
@@ -70,9 +73,14 @@ func sysFloor(f measure.Feature, usual float64) float64 {
 			break
 		}
 	}
-	abs := fl.abs
-	if f.Name == "impact_ln" && strings.HasSuffix(f.Subject, ".closes") {
-		abs = 0.35 // closings cannot be predicted (vibration.md section 1)
+	abs, rel := fl.abs, fl.rel
+	if strings.HasSuffix(f.Subject, ".closes") { // closings cannot be predicted (vibration.md section 1)
+		switch f.Name {
+		case "impact_ln":
+			abs = 0.35
+		case "peak_g", "rms_g":
+			rel = 0.35
+		}
 	}
-	return math.Max(abs/scale, fl.rel*math.Abs(usual))
+	return math.Max(abs/scale, rel*math.Abs(usual))
 }

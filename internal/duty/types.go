@@ -37,7 +37,7 @@ type Deviation struct {
 	Z        float64 // Residual/Spread
 	N        int     // turns behind it
 	Seen     bool    // the baseline has seen this duty; when false Z must not be used
-	Drift    float64 // blocks only: two-sided CUSUM of Z as a share of its decision limit, signed; beyond ±1 is a slow change
+	Drift    float64 // blocks only: two-sided CUSUM of Z over settled blocks as a share of its decision limit, signed; beyond ±1 is a slow change
 }
 
 // Block is the evidence of one throw over a stretch of turns at seen duty.
