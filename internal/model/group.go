@@ -130,8 +130,12 @@ func (g *group) impact(m *Machine, t *throw, e *end, i int, h hit, deg0, ddeg, f
 	switch {
 	case h.stop && math.IsNaN(ev.Open.Impact) && !math.IsNaN(ev.Open.Lift):
 		ev.Open.Impact, ev.Open.ImpactTime, ev.Open.Speed = in, at*m.dt, h.speed
-	case !h.stop && g.up[i]:
-		g.above = false
+	case !h.stop:
+		if g.up[i] {
+			g.above = false
+		} else if !(h.speed > b.closing(g, i).Speed) { // a bounce, or no closing at all
+			break
+		}
 		b.shut(g, i, Event{Impact: in, ImpactTime: at * m.dt, Speed: h.speed})
 	}
 }
@@ -143,8 +147,8 @@ func (g *group) reopened(e *end, i int, deg float64) {
 	}
 }
 
-// shut books the last seat impact of one plate. That of the group is the hardest of its plates' last ones.
-func (b *book) shut(g *group, i int, ev Event) {
+// closing is the seat impact of one plate that counts so far.
+func (b *book) closing(g *group, i int) *Event {
 	last := &b.last[0]
 	if g.discharge {
 		last = &b.last[1]
@@ -152,10 +156,17 @@ func (b *book) shut(g *group, i int, ev Event) {
 	for len(*last) < len(g.plates) {
 		*last = append(*last, noEvent())
 	}
-	(*last)[i] = ev
+	return &(*last)[i]
+}
+
+// shut books the closing of one plate: the hardest hit on its seat since it was last open by more than 30 %. The group's
+// is the hardest of its plates'.
+func (b *book) shut(g *group, i int, ev Event) {
+	*b.closing(g, i) = ev
 	c := &b.group(g.discharge).Close
 	c.Impact, c.ImpactTime, c.Speed = math.NaN(), math.NaN(), math.NaN()
-	for _, l := range *last {
+	for i := range g.plates {
+		l := b.closing(g, i)
 		if math.IsNaN(c.Speed) || l.Speed > c.Speed {
 			c.Impact, c.ImpactTime, c.Speed = l.Impact, l.ImpactTime, l.Speed
 		}

@@ -49,8 +49,8 @@ type Events struct {
 // Event is one opening or closing of a group, degrees after the turn's head-end dead centre and seconds from the first sample.
 type Event struct {
 	Lift, LiftTime float64 // mean lift of the group crosses 10 %: first crossing up, or last one down
-	// Impact is that of the first plate to hit its stop (opening), or the hardest of the plates' last hits on their seats
-	// after having been open by more than 30 % (closing): a plate that flutters shut and opens again has not closed.
+	// Impact is that of the first plate to hit its stop (opening), or the hardest hit on a seat since its plate was last
+	// open by more than 30 % (closing): a plate that flutters shut and opens again has not closed.
 	Impact, ImpactTime float64
 	Speed              float64 // m/s of that impact
 }
@@ -74,7 +74,7 @@ type book struct {
 	Truth
 	flowS, flowD, psSum, pdSum float64
 	m0                         float64
-	last                       [2][]Event // of suction and discharge, by plate: its last seat impact
+	last                       [2][]Event // of suction and discharge, by plate: its closing so far
 	closed                     bool       // the turn itself is over; late closings may still come
 }
 
