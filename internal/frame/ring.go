@@ -27,7 +27,7 @@ func (r *ring) room(n int, keep int64) {
 	}
 	drop := int(min(max(keep-r.first, 0), int64(have)))
 	live := have - drop
-	grow := 2 * (live + n)
+	grow := 3 * (live + n) // what is held is then moved once in two frames
 	for i, x := range r.buf {
 		if grow > cap(x) {
 			y := make([]int32, live, grow)

@@ -13,8 +13,13 @@ func decode(dst [][]int32, raw []byte, f format) (note string) {
 	case f.float:
 		return decodeFloat(dst, raw)
 	case f.width == 2:
+		channels, frames := apart16(dst, raw)
 		for c := range dst {
-			x, at := dst[c], 2*c
+			done := 0
+			if c < channels {
+				done = frames
+			}
+			x, at := dst[c][done:], 2*(len(dst)*done+c)
 			for i := range x {
 				x[i] = int32(int16(binary.LittleEndian.Uint16(raw[at:])))
 				at += 2 * len(dst)
