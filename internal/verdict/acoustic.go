@@ -17,6 +17,7 @@ type heard struct {
 	late   [4]vote    // opening late after its pressure, per group
 	loose  [4]vote    // fluttering, per group
 	knock  [4]bool    // the opening's impact lies where the crosshead may knock
+	either [4]bool    // what was heard of its opening may be its partner's: the windows are one
 	gain   vote       // everything louder or softer alike
 	shift  float64    // by how much, ln
 }
@@ -29,7 +30,7 @@ var pairOf = [5]int{0, 1, 1, 0, 2}
 func partner(h int) int { return 3 - h }
 
 // With one end idle the rings blow like the loaded end's suction: ringsApart tells whether they are a path of their own.
-func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApart bool) heard {
+func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApart bool, rpm float64) heard {
 	widen := 1.0
 	if !settled {
 		widen = 1.5
@@ -81,12 +82,12 @@ func listen(p *place, l measure.Layout, dev []*duty.Deviation, settled, ringsApa
 			out.leak[h].most(0, "the noise stands out more at the angles of another path")
 		}
 	}
-	out.impacts(p, dev, widen, noise)
+	out.impacts(p, dev, widen, noise, rpm)
 	return out
 }
 
 // impacts judges the opening impacts and their moment; closings support only, they are hardly predictable.
-func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []float64) {
+func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []float64, rpm float64) {
 	var shift []float64
 	var late [4]float64
 	for h := range 4 {
@@ -99,7 +100,7 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			z := open.Z / widen
 			o.hard[h] = vote{llr: llr(z), raw: llr(z)}
 			// Healthy blocks reach 0.23; 0.35 and three spreads is the rule of vibration.md section 4.
-			if open.Residual < 0.35 {
+			if open.Residual < hardLn {
 				o.hard[h].most(0, "the opening is less than 1.42 times as hard as usual")
 			} else if z > 3 {
 				o.hard[h].least(advisoryClass)
@@ -107,10 +108,14 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			if shut != nil {
 				o.hard[h].llr += 0.3 * math.Max(0, llr(shut.Z/widen))
 			}
-			if hits != nil && open.Residual >= 0.35 { // a broken plate rattles
+			if hits != nil && open.Residual >= hardLn { // a broken plate rattles
 				o.hard[h].llr += 0.3 * math.Max(0, llr(hits.Z/widen))
 			}
 			o.hard[h].llr = capped(o.hard[h].llr)
+		} else if r, z := louder(at(dev, p.ends[e].peak[g])); r >= hardLn && z/widen > 3 {
+			o.hard[h], o.either[h] = votes(z/widen), true
+			o.hard[h].least(advisoryClass)
+			o.hard[h].most(advisoryClass, "heard in a window that two openings share")
 		} else if shut != nil {
 			o.hard[h] = votes(shut.Z / widen)
 			o.hard[h].most(1, "only the closing was heard")
@@ -134,8 +139,63 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			o.late[2+g].most(0, "both ends are late alike: a wrong duty, not two valves")
 		}
 	}
+	o.beside(p, dev, rpm)
 	o.flutter(p, dev, late, widen)
 	o.common(dev, p, shift, noise, widen)
+}
+
+// hardLn is the least rise of an opening's impact, ln, that is called hard.
+const hardLn = 0.35
+
+// louder gives the rise of a peak, ln, and its spreads.
+func louder(d *duty.Deviation) (ln, z float64) {
+	if d == nil || !(d.Expected > 0 && d.Value > 0) {
+		return 0, 0
+	}
+	return math.Log(d.Value / d.Expected), d.Z
+}
+
+// Two openings within ringMs of each other ring into one another, even where they were told apart: of two that are hard
+// the one that is harder by muchHarder (ln) explains the other.
+const (
+	ringMs     = 5.0
+	muchHarder = 0.3
+)
+
+// beside judges what openings that act close together make of each other.
+func (o *heard) beside(p *place, dev []*duty.Deviation, rpm float64) {
+	var rise, angle [4]float64
+	for h := range rise {
+		rise[h], angle[h] = math.NaN(), math.NaN()
+		ep := &p.ends[h/2]
+		if d := ep.struck(h%2, dev); d != nil {
+			rise[h] = d.Residual
+		} else if o.either[h] {
+			rise[h], _ = louder(at(dev, ep.peak[h%2]))
+		}
+		if d := at(dev, ep.onset[h%2]); d != nil {
+			angle[h] = d.Value
+		} else if d := at(dev, ep.open[h%2]); d != nil {
+			angle[h] = d.Value
+		}
+	}
+	for h := range rise {
+		for q := range rise {
+			if q == h || math.IsNaN(rise[h]) || math.IsNaN(rise[q]) {
+				continue
+			}
+			gap := angle[h] - angle[q]
+			gap -= 360 * math.Round(gap/360)
+			if math.Abs(gap) < ringMs*6*rpm/1000 && rise[h] >= hardLn && rise[q] > rise[h]+muchHarder {
+				o.hard[h].most(0, "a harder blow beside it rings into this one: "+p.path(q))
+			}
+		}
+		if q := partner(h); o.either[h] && p.ends[q/2].struck(q%2, dev) != nil { // the other was heard for itself
+			if o.either[h] = false; rise[q] >= hardLn {
+				o.hard[h].most(0, "the blow is that of "+p.path(q)+" in the same window")
+			}
+		}
+	}
 }
 
 // flutter: after an opening that is no harder than usual the plate strikes again and again; a late impact goes with it
@@ -160,12 +220,16 @@ func (o *heard) flutter(p *place, dev []*duty.Deviation, late [4]float64, widen 
 		}
 		o.loose[h] = votes(d.Z / widen)
 		switch {
-		case open.Residual >= 0.35:
+		case open.Residual >= hardLn:
 			o.loose[h].most(0, "the opening itself is harder than usual")
 		case late[h] < -1:
 			o.loose[h].most(0, "the impact comes sooner than usual")
 		case h != most && !(late[h] > 3):
 			o.loose[h].most(0, "another group has more extra hits")
+		}
+		// Its partner's plate, opening in the same window, would be heard here.
+		if q := partner(h); o.loose[h].llr > 0 && p.ends[q/2].works && (hits[q] == nil || hits[q].Residual > 0.5*d.Residual) {
+			o.either[h] = true
 		}
 		if o.loose[h].llr >= advisoryClass { // what it explains is not sticking as well
 			o.late[h].most(0, "a plate that flutters strikes late as well")
@@ -233,13 +297,18 @@ func (o *heard) common(dev []*duty.Deviation, p *place, shift, noise []float64, 
 }
 
 // sticking is how much later the opening's impact comes than the crossing of the plateau says, in spreads; the larger
-// of that and of the lag after the departure. A leak moves crossing and impact together and cancels. NaN: not known.
+// of that and of the lag after the departure. A leak moves crossing and impact together and cancels. An impact that is
+// where it always was is not late, wherever the pressures put the crossing. NaN: not known.
 func sticking(ep *endPlace, g int, dev []*duty.Deviation) float64 {
 	z := math.NaN()
 	if d := at(dev, ep.lag[g]); d != nil {
 		z = d.Z
 	}
-	if x := beyondCrossing(dev, ep.onset[g], ep.late[g]); !math.IsNaN(x) && !(x < z) {
+	x := beyondCrossing(dev, ep.onset[g], ep.late[g])
+	if x > 1 {
+		x = math.Max(1, math.Min(x, 2*at(dev, ep.onset[g]).Z))
+	}
+	if !math.IsNaN(x) && !(x < z) {
 		z = x
 	}
 	return z

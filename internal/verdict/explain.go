@@ -147,7 +147,12 @@ func (j *Judge) reason(b *bench, c *trial) Reasoning {
 
 // weighed lists a class's deviations with their parts in its vote. What is too small to count has weight 0.
 func (j *Judge) weighed(b *bench, c *trial, s circle, total float64) (out []Weighed) {
-	sum := 0.0
+	sum, small := 0.0, true
+	for k, i := range s.idx {
+		if d := at(j.dev, i); d != nil && (s.sign == nil || d.Z*s.sign[k] > 0) && math.Abs(d.Z) >= 1 {
+			small = false
+		}
+	}
 	for k, i := range s.idx {
 		d := at(j.dev, i)
 		if d == nil {
@@ -162,7 +167,7 @@ func (j *Judge) weighed(b *bench, c *trial, s circle, total float64) (out []Weig
 		}
 		w := Weighed{Class: s.class, Feature: i, Text: j.text(b, c, i, d), Value: d.Value, Expected: d.Expected, Spread: d.Spread,
 			Z: d.Z, N: d.N, Sign: sign, Raw: llr(z)}
-		if z >= 1 && total > 0 {
+		if (z >= 1 || small && z > 0) && total > 0 { // many small ones may make a large one together
 			w.Weight = sq(clip(d.Z, 12))
 			sum += w.Weight
 		}

@@ -14,6 +14,7 @@ type Config struct {
 	DangerLossPercent float64        // a confirmed leak beyond this share of an end's delivery is danger; default 15
 	Fade              int            // contrary blocks before a finding steps down; default 6
 	Channels          []ThrowChannel // by throw: channel ids, so that a sensor finding names its sensor
+	Start             float64        // s since 1970 of the sample clock's zero, so that a trend outlives a restart; 0: unknown
 }
 
 // ThrowChannel names a throw's sensors.
@@ -61,6 +62,8 @@ type trial struct {
 	since         int64
 	contrary      int
 	found         Finding
+	along         string // the quantity that course is of
+	course        course
 }
 
 // mark is one block's evidence on one hypothesis. NaN: absent.
@@ -176,7 +179,7 @@ func (j *Judge) Judge(blk duty.Block) []Finding {
 		}
 	}
 	press := s.contrast()
-	vib := listen(&b.place, j.layout, j.dev, blk.Settled, judged[0] && judged[1])
+	vib := listen(&b.place, j.layout, j.dev, blk.Settled, judged[0] && judged[1], blk.Point.RPM)
 	temp := feel(&b.place, j.dev, blk.Settled)
 	vib.knocks(&b.place, j.dev, blk.Point.RPM)
 	b.sharePairs(&vib, &press)

@@ -382,7 +382,7 @@ func TestFindingsCarryCautionsAndNumbers(t *testing.T) {
 			if len(f.Settle) == 0 || !strings.Contains(strings.Join(f.Next, " "), "isolate, depressurise") {
 				t.Fatalf("no caution: %+v", f)
 			}
-			if f.Seq1 <= f.Seq0 || f.SinceTurn == 0 || len(f.Evidence) == 0 || len(f.Severity) != 2 {
+			if f.Seq1 <= f.Seq0 || f.SinceTurn == 0 || len(f.Evidence) == 0 || len(f.Severity) < 2 || f.Trend.Way == "" || !strings.Contains(f.Sentence, "Next: ") {
 				t.Fatalf("incomplete: %+v", f)
 			}
 			for _, e := range f.Evidence {

@@ -38,6 +38,14 @@ func (b *bench) doubts(c *trial, doubt *[2]bool, deaf *bool) {
 func (b *bench) sharePairs(v *heard, press *[hPressures]fitted) {
 	for _, h := range [2]int{0, 1} {
 		q := partner(h)
+		// Of a blow in a window that both share one of the two is told, and the other with it.
+		if v.either[h] && v.either[q] && v.hard[h].llr > 0 && v.hard[q].llr > 0 {
+			no := h
+			if b.hits(h) || !b.hits(q) && v.hard[h].raw >= v.hard[q].raw {
+				no = q
+			}
+			v.hard[no].most(0, "booked on "+b.place.path(partner(no))+", which shares its window")
+		}
 		if math.IsNaN(v.leak[h].llr) || math.IsNaN(v.leak[q].llr) {
 			continue
 		}
@@ -79,9 +87,14 @@ func (b *bench) ringsExplain(c *trial, s *sight) bool {
 	return false
 }
 
-func (b *bench) standing(h int) bool {
+func (b *bench) standing(h int) bool { return b.stands(h, Leaking) }
+
+func (b *bench) hits(h int) bool { return b.stands(h, ImpactingHard) }
+
+// stands tells whether a group has a finding of a kind.
+func (b *bench) stands(h int, kind string) bool {
 	for i := range b.cases {
-		if c := &b.cases[i]; c.kind == Leaking && c.h == h && c.group >= 0 && c.grade > None {
+		if c := &b.cases[i]; c.kind == kind && c.h == h && c.group >= 0 && c.grade > None {
 			return true
 		}
 	}
@@ -211,12 +224,21 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 		if v.knock[c.h] && v.hard[c.h].llr > 0 {
 			m.ambiguous = append(m.ambiguous, b.place.id+".crosshead")
 		}
+		b.eitherOf(c, v, v.hard[c.h].llr, &m)
 	case c.kind == OpeningLate && !deaf:
 		*vibration = v.late[c.h]
 	case c.kind == Fluttering && !deaf:
 		*vibration = v.loose[c.h]
+		b.eitherOf(c, v, v.loose[c.h].llr, &m)
 	}
 	return m
+}
+
+// eitherOf names the partner whose opening shares the window that something was heard in.
+func (b *bench) eitherOf(c *trial, v *heard, llr float64, m *mark) {
+	if q := partner(c.h); v.either[c.h] && llr > 0 && b.place.ends[q/2].works {
+		m.ambiguous = append(m.ambiguous, b.place.path(q))
+	}
 }
 
 // noMark is a block that says nothing.

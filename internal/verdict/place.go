@@ -32,10 +32,12 @@ type endPlace struct {
 	f      [patternLen]int
 	ratio  int
 	excess int
+	power  int
 	loss   [2]int
 	path   [2]pathPlace
 	impact [2][2]int // group; opens (the slope's share taken out), closes
 	plain  [2]int    // opening, the slope's share left in
+	peak   [2]int    // opening, of both events where its window is shared
 	hits   [2]int    // after the opening
 	lag    [2]int    // opening
 	onset  [2]int    // opening
@@ -78,12 +80,13 @@ func places(l measure.Layout) []place {
 				ep.f[i] = l.Find(s, name)
 				ep.works = ep.works || ep.f[i] >= 0
 			}
-			ep.ratio, ep.excess = l.Find(s, "ratio_plateau"), l.Find(s, "t_excess_k")
+			ep.ratio, ep.excess, ep.power = l.Find(s, "ratio_plateau"), l.Find(s, "t_excess_k"), l.Find(s, "indicated_power_kw")
 			for g, name := range groupName {
 				ep.loss[g] = l.Find(s, name+"_loss_kw")
 				ep.path[g] = paths(s + "." + name)
 				ep.impact[g] = [2]int{l.Find(s+"."+name+".opens", "impact_norm_ln"), l.Find(s+"."+name+".closes", "impact_ln")}
 				ep.plain[g], ep.hits[g] = l.Find(s+"."+name+".opens", "impact_ln"), l.Find(s+"."+name+".opens", "extra_hits_45")
+				ep.peak[g] = l.Find(s+"."+name+".opens", "peak_g")
 				ep.onset[g] = l.Find(s+"."+name+".opens", "onset_deg")
 				ep.open[g], ep.late[g] = l.Find(s, name+"_opens_deg"), l.Find(s, name+"_opens_late_deg")
 				ep.lag[g] = l.Find(s+"."+name+".opens", "lag_ms")

@@ -32,6 +32,8 @@ type caseSnap struct {
 	Slow     duty.Cusum `json:"slow"`
 	Marks    []markSnap `json:"marks"`
 	Found    *Finding   `json:"found,omitempty"`
+	Along    string     `json:"along,omitempty"`
+	Course   [][3]num   `json:"course,omitempty"` // time s, size, blocks
 }
 
 type markSnap struct {
@@ -91,7 +93,10 @@ func (j *Judge) Snapshot() Snapshot {
 			}
 			if c.grade > None {
 				f := c.found
-				cs.Found = &f
+				cs.Found, cs.Along = &f, c.along
+				for _, p := range c.course {
+					cs.Course = append(cs.Course, [3]num{num(p.t), num(p.v), num(p.n)})
+				}
 			}
 			ts.Cases = append(ts.Cases, cs)
 		}
@@ -128,6 +133,10 @@ func (c *trial) restore(cs caseSnap) {
 	c.grade, c.since, c.contrary, c.slow, c.found = cs.Grade, cs.Since, cs.Contrary, cs.Slow, Finding{}
 	if cs.Found != nil {
 		c.found = *cs.Found
+	}
+	c.along, c.course = cs.Along, nil
+	for _, p := range cs.Course[max(0, len(cs.Course)-coursePoints+1):] {
+		c.course = append(c.course, point{float64(p[0]), float64(p[1]), float64(p[2])})
 	}
 	c.marks = nil
 	for _, ms := range cs.Marks[max(0, len(cs.Marks)-history):] {

@@ -43,6 +43,7 @@ type Finding struct {
 	Seq0, Seq1 int64   // raw samples of the last block
 	Throw      int
 	Severity   []Quantity
+	Trend      Trend
 	Evidence   []Evidence // strongest first
 	Sentence   string     // one sentence for the operator
 	Settle     []string   // what would confirm or refute it

@@ -99,7 +99,7 @@ func (j *Judge) grade(c *trial, blk duty.Block) {
 		if c.contrary++; c.contrary >= j.cfg.Fade {
 			c.grade, c.contrary = max(now, hold), 0
 			if c.grade == None {
-				c.slow = duty.Cusum{}
+				c.slow, c.course = duty.Cusum{}, nil
 			}
 		}
 	}

@@ -17,51 +17,14 @@ func (j *Judge) write(b *bench, c *trial, blk duty.Block, press *[hPressures]fit
 	m := &c.marks[len(c.marks)-1]
 	f := Finding{Subject: c.subject, Kind: c.kind, Grade: c.grade, Odds: w.total, SinceTurn: c.since, Turn: blk.Turn1,
 		Seq0: blk.Seq0, Seq1: blk.Seq1, Throw: blk.Throw, Valve: m.valve, Ambiguous: slices.Clone(m.ambiguous)}
-	j.severity(&f, c)
+	j.severity(&f, b, c, blk.Point.RPM)
+	if c.grade > None {
+		f.Trend = c.follow(j.cfg.Start+blk.Time, f.Severity)
+	}
 	f.Evidence = j.evidence(b, c, press)
 	f.Settle, f.Next = advice(c, &f)
-	f.Sentence = sentence(j.layout, c, &f)
+	f.Sentence = sentence(j.layout, b, c, &f)
 	return f
-}
-
-// severity puts numbers with honest intervals on a leak and on a sensor's error. The patterns' own uncertainty (35 %)
-// and that of the fitted area (reference/leaks.md section 4) are in them; formal intervals are far too narrow.
-func (j *Judge) severity(f *Finding, c *trial) {
-	g, sd := c.amplitude()
-	half := func(v, s, share float64) float64 { return 2 * math.Hypot(s, share*v) }
-	switch c.kind {
-	case Leaking:
-		if !math.IsNaN(g) && g > 0 {
-			h := half(g, sd, templateError/2)
-			f.Severity = append(f.Severity, Quantity{"lost_capacity_percent", g, math.Max(0, g-h), g + h})
-		}
-		if a, s := c.newest(func(m *mark) (float64, float64) { return m.area, m.aSd }); !math.IsNaN(a) {
-			f.Severity = append(f.Severity, Quantity{"leak_area_mm2", 1e6 * a, math.Max(0, 1e6*(a-2*s)), 1e6 * (a + 2*s)})
-		}
-		if l, s := c.newest(func(m *mark) (float64, float64) { return m.loss, m.lSd }); !math.IsNaN(l) {
-			f.Severity = append(f.Severity, Quantity{"leak_percent", 100 * l, math.Max(0, 100*(l-2*s)), 100 * (l + 2*s)})
-		}
-	case DeadCentre: // amplitude: degrees that the pressures are plotted too early
-		if !math.IsNaN(g) {
-			f.Severity = append(f.Severity, Quantity{"early_deg", g, g - half(g, sd, 0.2), g + half(g, sd, 0.2)})
-		}
-	case PressureZero:
-		if !math.IsNaN(g) {
-			f.Severity = append(f.Severity, Quantity{"zero_percent_of_suction", g, g - half(g, sd, 0.2), g + half(g, sd, 0.2)})
-		}
-	case Clearance: // the pattern is that of a clearance assumed too high
-		if !math.IsNaN(g) {
-			f.Severity = append(f.Severity, Quantity{"clearance_points_lower", g, g - half(g, sd, 0.3), g + half(g, sd, 0.3)})
-		}
-	case GasChanged:
-		if !math.IsNaN(g) {
-			f.Severity = append(f.Severity, Quantity{"exponent_change", g / 100, (g - half(g, sd, 0.2)) / 100, (g + half(g, sd, 0.2)) / 100})
-		}
-	case AccelGain: // healthy blocks move by up to 0.20 in ln (reference/vibration.md section 5)
-		if !math.IsNaN(g) {
-			f.Severity = append(f.Severity, Quantity{"gain_ratio", math.Exp(g), math.Exp(g - 0.2), math.Exp(g + 0.2)})
-		}
-	}
 }
 
 // circle is the deviations of one class that bear on a hypothesis: sign +1 where more speaks for it, nil where either does.
@@ -150,6 +113,9 @@ func (j *Judge) circles(b *bench, c *trial, press *[hPressures]fitted) (out []ci
 		if at(j.dev, open) == nil {
 			open = ep.plain[c.group]
 		}
+		if at(j.dev, open) == nil {
+			open = ep.peak[c.group]
+		}
 		vibration(2, open, ep.impact[c.group][1], ep.hits[c.group])
 	case c.kind == Fluttering:
 		ep := &b.place.ends[c.end]
@@ -222,11 +188,16 @@ func say(f measure.Feature, d *duty.Deviation) string {
 	case "mass_exp_percent":
 		return fmt.Sprintf("gas seems to %s %.2f %% while expanding%s", more("gain", "lose"), math.Abs(r), end)
 	case "leak_noise_db":
-		return fmt.Sprintf("noise floor at the angles of %s %+.1f dB", f.Subject, r)
+		if strings.HasSuffix(f.Subject, ".rings") {
+			return fmt.Sprintf("noise at the angles where rings leak %+.1f dB", r)
+		}
+		return fmt.Sprintf("noise while %s is closed %+.1f dB", f.Subject, r)
 	case "impact_ln":
 		return fmt.Sprintf("impact at %s %.2g times the usual", f.Subject, math.Exp(d.Residual))
 	case "impact_norm_ln":
 		return fmt.Sprintf("impact at %s %.2g times the usual", f.Subject, math.Exp(d.Residual))
+	case "peak_g":
+		return fmt.Sprintf("peak at %s %.2g times the usual, in a window that two openings share", f.Subject, d.Value/d.Expected)
 	case "extra_hits_45":
 		return fmt.Sprintf("%.0f extra hits in 45 turns after %s, usually %.0f", d.Value, f.Subject, math.Max(0, d.Expected))
 	case "lag_ms":
@@ -248,73 +219,4 @@ func above(v float64) string {
 		return "below"
 	}
 	return "above"
-}
-
-// known ranks pressure evidence by how well an operator knows it: openings and leak areas before exponents, if strong.
-func known(l measure.Layout, e Evidence) int {
-	if e.Feature < 0 || math.Abs(e.Z) < 3 {
-		return 0
-	}
-	switch n := l[e.Feature].Name; {
-	case strings.HasSuffix(n, "_opens_late_deg"):
-		return 2
-	case n == "leak_area_mm2" || n == "leak_percent":
-		return 1
-	}
-	return 0
-}
-
-var gradeWords = [...]string{None: "ended", Advisory: "possible", Alert: "confirmed", Danger: "confirmed and severe"}
-
-// sentence is the one line for the operator: what, how sure, why, how much, and what it may be mistaken for.
-func sentence(l measure.Layout, c *trial, f *Finding) string {
-	var s strings.Builder
-	what := map[string]string{Leaking: "leaking", ImpactingHard: "impacting hard", OpeningLate: "opening late (sticking)", Fluttering: "fluttering",
-		DeadCentre: "angle reference has moved", PressureZero: "pressure zero has moved", Clearance: "clearance is not what it was",
-		GasChanged: "gas differs from the baseline's", AccelGain: "accelerometer sensitivity has changed"}[c.kind]
-	fmt.Fprintf(&s, "%s %s, %s", f.Subject, what, gradeWords[f.Grade])
-	if f.Grade == None {
-		return s.String()
-	}
-	leak := sizedWords(f.Severity)
-	// One or two witnesses of each class, strongest class first; of the pressures those that people know best.
-	n := map[measure.Class]int{}
-	sep := ": "
-	said := slices.Clone(f.Evidence)
-	slices.SortStableFunc(said, func(x, y Evidence) int {
-		if x.Class != y.Class || x.Class != measure.Pressure {
-			return 0
-		}
-		return cmp.Compare(known(l, y), known(l, x))
-	})
-	for _, e := range said {
-		if e.Feature >= 0 && leak != "" && strings.HasPrefix(l[e.Feature].Name, "leak_") && e.Class == measure.Pressure {
-			continue // said at the end, over more blocks
-		}
-		if n[e.Class] >= 2 || (e.Class == measure.Temperature && f.Valve != "") {
-			continue
-		}
-		n[e.Class]++
-		s.WriteString(sep + e.Text)
-		sep = ", "
-	}
-	s.WriteString(leak)
-	for _, q := range f.Severity {
-		if c.sensor && !math.IsNaN(q.Lo) {
-			fmt.Fprintf(&s, "; %s about %.3g (%.3g to %.3g)", strings.ReplaceAll(q.Name, "_", " "), q.Value, q.Lo, q.Hi)
-		} else if q.Name == "lost_capacity_percent" && leak == "" {
-			fmt.Fprintf(&s, "; about %.1f %% of this end's delivery lost (%.1f to %.1f)", q.Value, q.Lo, q.Hi)
-		}
-	}
-	if f.Valve != "" {
-		for _, e := range f.Evidence {
-			if e.Class == measure.Temperature {
-				s.WriteString("; " + e.Text)
-			}
-		}
-	}
-	if len(f.Ambiguous) > 0 {
-		s.WriteString("; cannot be told from " + strings.Join(f.Ambiguous, " or "))
-	}
-	return s.String()
 }
