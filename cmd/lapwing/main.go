@@ -35,6 +35,7 @@ func root() *cobra.Command {
                  lapwing alarms           what stands, and the keys to name it by
                  lapwing ack KEY          acknowledge; also reset, shelve, unshelve, out, back
                  lapwing journal          who did what, when and why
+                 lapwing why SUBJECT      why something was found, or why nothing was
   analyst        lapwing cut LABEL        protect the raw samples of the last seconds
                  lapwing pull CLIP        raw samples around an event, as WAV
                  lapwing review REC.wav   the same analysis again, offline
@@ -45,7 +46,7 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 		SilenceUsage:  true,
 		SilenceErrors: true,
 	}
-	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), tablesCommand(), listenCommand(), alarmsCommand(), journalCommand())
+	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), tablesCommand(), listenCommand(), alarmsCommand(), journalCommand(), whyCommand())
 	cmd.AddCommand(orderCommands()...)
 	cmd.AddCommand(baselineCommand())
 	return cmd

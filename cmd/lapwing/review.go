@@ -25,6 +25,10 @@ Times (t_s) are seconds from the first sample of the recording, also those of th
 Without --learn (or --baseline) there is nothing to compare with: turns are measured, not judged.
 Pressures in the process file are absolute; its columns are those of a pulled clip.
 
+With --why FILE it also writes, for every turn and throw, what it was compared with and which measures were
+off, or why it was not compared; and for every block of turns, how each hypothesis was weighed on which
+evidence, raised or not.
+
 Monitoring only. Before anybody touches a valve or transducer because of a finding: isolate,
 depressurise and lock out; follow site permits, local codes and licensed practice.`,
 		Example: `  lapwing review --skid skid.yaml rec.wav --process process.csv --learn 0:200 --out turns.jsonl`,
@@ -53,6 +57,7 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 	f.StringVar(&o.Baseline, "baseline", "", "baseline file to judge by (JSON), instead of learning")
 	f.StringVar(&o.SaveBaseline, "save-baseline", "", "write the learnt baseline here")
 	f.StringVar(&out, "out", "", "file for the records, one JSON object a line; - for standard output")
+	f.StringVar(&o.WhyFile, "why", "", "file for the reasons: what each turn was compared with, and how every hypothesis was weighed (JSON lines)")
 	_ = cmd.MarkFlagRequired("skid")
 	return cmd
 }

@@ -58,3 +58,16 @@ func TestJournal(t *testing.T) {
 		t.Errorf("alarms: %d %s", resp.StatusCode, body)
 	}
 }
+
+func TestWhy(t *testing.T) {
+	url := open(t, &still{now: full()}) + "api/v1/why"
+	for query, want := range map[string]int{"": 200, "?subject=t1.he.suction&turn=4711": 200, "?turn=0": 400, "?turn=x": 400, "?subjekt=t1": 400, "?turn=1&turn=2": 400, "?subject=busy": 503, "?subject=%ff": 400} {
+		resp, body := ask(t, url+query, nil)
+		if resp.StatusCode != want {
+			t.Errorf("%s: %d %s", query, resp.StatusCode, body)
+		}
+		if want == 200 && (!strings.Contains(body, `"said":[]`) || strings.Contains(body, "null")) {
+			t.Errorf("%s: %s", query, body)
+		}
+	}
+}

@@ -35,6 +35,8 @@ type Source interface {
 	Journal(f wire.JournalFilter) (wire.JournalPage, error)
 	// Alarms gives every alarm point, shown or not.
 	Alarms() wire.Alarms
+	// Why says why a subject (empty: all) was found to be as it is by the block of a turn (0: the newest).
+	Why(ctx context.Context, subject string, turn int64) (wire.Why, error)
 }
 
 // ErrNoClip says that a clip of that name does not exist. Source.Export wraps it.
@@ -164,6 +166,7 @@ func routes(src Source, log *slog.Logger) http.Handler {
 		sendJSON(w, list(src.Now().Clips), log)
 	})
 	mux.HandleFunc("GET /api/v1/alarms", func(w http.ResponseWriter, r *http.Request) { sendJSON(w, src.Alarms(), log) })
+	mux.HandleFunc("GET /api/v1/why", why(src, log))
 	mux.HandleFunc("GET /api/v1/journal", journal(src, log))
 	mux.HandleFunc("POST "+ordersPath, order(src, log))
 	learning(mux, src, log)

@@ -64,6 +64,13 @@ func (s *still) Journal(f wire.JournalFilter) (wire.JournalPage, error) {
 	return s.journal(f)
 }
 
+func (s *still) Why(_ context.Context, subject string, turn int64) (wire.Why, error) {
+	if subject == "busy" {
+		return wire.Why{}, ErrBusy
+	}
+	return wire.Why{Version: 1, Subject: subject, Turn: turn}, nil
+}
+
 func (s *still) Alarms() wire.Alarms { return wire.Alarms{Version: 1, Points: []wire.Point{}} }
 
 func open(t *testing.T, src Source) string {

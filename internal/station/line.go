@@ -49,6 +49,7 @@ type Line struct {
 	alarms   *alarm.Annunciator
 	limits   []limitWatch
 	sensors  *sensors
+	reasons  *reasons    // nil: not kept
 	angles   turn.Config // what turns was made of
 	gauges   *gauges
 	levels   *levels
@@ -428,6 +429,7 @@ func (l *Line) turn(t *turn.Turn) {
 		l.count.Invalid++
 		l.whole = never // what comes next is news
 		l.count.Reasons[t.Reason]++
+		l.reasons.lost(t, l.points)
 	}
 	if o.Windows = w; t.Valid() && l.wants(t) {
 		o.Record = l.record.Record(t, w, &l.vec, l.points)
@@ -535,11 +537,16 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 	now := l.utc(t.Time)
 	conds = l.limitConditions(conds, t)
 	conds = l.sensors.conditions(conds, t.Number, t.Seq1, l.reach())
-	if l.ref != nil {
+	if l.ref == nil {
+		for i := range l.points {
+			l.reasons.add(i, t, l.points[i], l.notCompared(i), nil, nil)
+		}
+	} else {
 		for i := range l.points {
 			l.devs = l.ref.Deviate(l.devs[:0], i, l.points[i], &l.vec)
 			l.sensors.compare(i, t, l.points[i], l.devs)
 			l.levels.compare(i, t, t.Time, l.points[i], l.devs, l.sensors)
+			l.reasons.add(i, t, l.points[i], l.notCompared(i), l.layout, l.devs)
 			block, ok := l.blocks.Add(i, l.points[i], &l.vec, l.devs)
 			if !ok {
 				continue
@@ -547,6 +554,7 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 			l.count.Blocks++
 			o.Judged = true
 			findings := l.judge.Judge(block)
+			l.reasons.judged(l.judge)
 			o.News = append(o.News, findings...)
 			conds = l.findingConditions(conds, i, &block, findings)
 		}

@@ -28,47 +28,58 @@ const (
 // errNotBuilt is the answer to a verb that is known and cannot be carried out by this build.
 var errNotBuilt = errors.New("not built in")
 
-// request is an order on its way to the compute goroutine. Whoever sets taken first decides: the compute goroutine, which
-// then answers, or the asker, who withdraws.
+// request is something that must happen in the compute goroutine. Whoever sets taken first decides: the compute
+// goroutine, which then does it, or the asker, who withdraws.
 type request struct {
-	order  Order
-	taken  atomic.Bool
-	answer chan wire.Receipt
+	do    func()
+	taken atomic.Bool
+	done  chan struct{}
 }
 
 // Order hands an order to the compute goroutine, where it is carried out between two turns, and waits for the answer. An
 // order that is refused is no error: the receipt says so. An error means that it was not carried out.
-func (s *Station) Order(ctx context.Context, o Order) (wire.Receipt, error) {
-	a := &request{order: o, answer: make(chan wire.Receipt, 1)}
+func (s *Station) Order(ctx context.Context, o Order) (r wire.Receipt, err error) {
+	if err = s.between(ctx, func() { r = s.execute(o) }); err != nil {
+		return wire.Receipt{}, fmt.Errorf("station: order: %w", err)
+	}
+	return r, nil
+}
+
+// between has something done by the compute goroutine between two turns, and waits for it. An error means that it was
+// not done and will not be.
+func (s *Station) between(ctx context.Context, do func()) error {
+	a := &request{do: do, done: make(chan struct{})}
 	select {
 	case <-s.ended:
-		return wire.Receipt{}, fmt.Errorf("station: order: %w", panel.ErrNotRunning)
+		return panel.ErrNotRunning
 	default:
 	}
 	select {
 	case s.orders <- a:
 	default:
-		return wire.Receipt{}, fmt.Errorf("station: order: %w", panel.ErrBusy)
+		return panel.ErrBusy
 	}
 	var why error
 	select {
-	case r := <-a.answer:
-		return r, nil
+	case <-a.done:
+		return nil
 	case <-ctx.Done():
 		why = fmt.Errorf("%w: %w", panel.ErrBusy, ctx.Err())
 	case <-s.ended:
 		why = panel.ErrNotRunning
 	}
 	if a.taken.CompareAndSwap(false, true) {
-		return wire.Receipt{}, fmt.Errorf("station: order withdrawn: %w", why)
+		return fmt.Errorf("withdrawn: %w", why)
 	}
-	return <-a.answer, nil
+	<-a.done
+	return nil
 }
 
-// carryOut executes a waiting order unless its asker has gone. Compute goroutine.
+// carryOut does what waits, unless its asker has gone. Compute goroutine.
 func (s *Station) carryOut(a *request) {
 	if a.taken.CompareAndSwap(false, true) {
-		a.answer <- s.execute(a.order)
+		a.do()
+		close(a.done)
 	}
 }
 

@@ -25,6 +25,7 @@ type ReviewOptions struct {
 	Baseline, SaveBaseline          string
 	OutFile                         string    // one JSON record a line; made only once all inputs are found good
 	Out                             io.Writer // the same, where there is no OutFile; nil: none
+	WhyFile                         string    // why things were found, or were not: a line a turn and throw, and one a block
 	Summary                         io.Writer // nil: none
 	Progress                        io.Writer // a terminal for a progress bar; nil: none
 
@@ -76,6 +77,14 @@ func Review(ctx context.Context, o ReviewOptions) (err error) {
 		}
 		defer func() { err = errors.Join(err, f.Close()) }()
 		o.Out = f
+	}
+	if o.WhyFile != "" {
+		var why *whyFile
+		why, err = keepReasons(r.line, o.WhyFile, o.SkidFile, o.Recording, o.ProcessCSV, o.Baseline, o.OutFile)
+		if err != nil {
+			return err
+		}
+		defer func() { err = errors.Join(err, why.close()) }()
 	}
 	if o.Out != nil {
 		r.out = bufio.NewWriterSize(o.Out, 1<<16)

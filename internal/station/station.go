@@ -166,6 +166,7 @@ func (s *Station) openLine() error {
 		return err
 	}
 	s.line.crew = newCrew()
+	s.line.reasons = newReasons(len(s.sk.Throws))
 	if s.o.OnTurn == nil {
 		s.line.records = Newest
 	}
