@@ -1,14 +1,14 @@
 package turn
 
 // history is a channel's recent values. The oldest go by moving its beginning; memory is moved only when the end is
-// reached, so that a value is copied about once in three turns however often the oldest are dropped.
+// reached, so that a value is copied about once in two turns however often the oldest are dropped.
 type history struct {
 	buf  []float64
 	from int // what lies before is forgotten
 }
 
 // roomFor is how many times what is held there is memory for, when it is taken.
-const roomFor = 4
+const roomFor = 3
 
 // live gives the values held.
 func (h *history) live() []float64 { return h.buf[h.from:] }
