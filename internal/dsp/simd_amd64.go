@@ -70,3 +70,13 @@ func momentsVectors(m *Moments, from, n int) { momentsAVX2(m, &m.x[from], n) }
 
 //go:noescape
 func momentsAVX2(m *Moments, x *int32, n int)
+
+func logsVectors(dst, x []float64, n int) (done int) { return logsAVX2(&dst[0], &x[0], n) }
+
+//go:noescape
+func logsAVX2(dst, x *float64, n int) (done int)
+
+func expsVectors(dst, x []float64, n int) (done int) { return expsAVX2(&dst[0], &x[0], n) }
+
+//go:noescape
+func expsAVX2(dst, x *float64, n int) (done int)

@@ -19,3 +19,7 @@ func levelsRun(b *Bins, peak, rms, square, x, y []float64) {
 }
 
 func momentsVectors(m *Moments, from, n int) { momentsPlain(m, from, n) }
+
+func logsVectors(dst, x []float64, n int) (done int) { return 0 }
+
+func expsVectors(dst, x []float64, n int) (done int) { return 0 }
