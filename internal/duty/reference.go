@@ -42,6 +42,9 @@ func (b *Baseline) Reference(layout measure.Layout) (*Reference, error) {
 // Layout gives the layout it is bound to.
 func (r *Reference) Layout() measure.Layout { return r.layout }
 
+// Baseline gives the baseline behind it.
+func (r *Reference) Baseline() *Baseline { return r.b }
+
 func (r *Reference) find(throw int, p Point) *bound {
 	for i := range r.cells {
 		if c := &r.cells[i]; c.Throw == throw && c.Step == p.Step && c.Inferred == p.Inferred {
