@@ -300,6 +300,7 @@ func (l *Line) judgeBy(b *duty.Baseline) error {
 	fresh := l.ref == nil
 	l.base, l.ref = b, ref
 	l.gauges.hold(b.Passages)
+	l.slip.Anew()
 	if l.levels.anew(); fresh {
 		l.levels.take(b.Zeros)
 	}

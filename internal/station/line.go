@@ -53,6 +53,7 @@ type Line struct {
 	angles   turn.Config // what turns was made of
 	gauges   *gauges
 	levels   *levels
+	slip     *slip
 
 	vec    measure.Vector
 	win    []window.Input
@@ -151,7 +152,7 @@ func NewLine(sk *skid.Skid, info acq.Info, proc processAt, learn LearnPlan, base
 	if l.sensors, err = newSensors(sk, info, l.layout, l.each); err != nil {
 		return nil, err
 	}
-	l.levels = newLevels(sk, l.layout)
+	l.levels, l.slip = newLevels(sk, l.layout), newSlip(sk, l.layout)
 	l.windows = window.NewTracker(window.Config{Works: works(sk)})
 	l.record, l.whole = wire.NewRecorder(sk, l.layout, info.Rate), never
 	for i := range sk.Throws {
@@ -546,6 +547,7 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 			l.devs = l.ref.Deviate(l.devs[:0], i, l.points[i], &l.vec)
 			l.sensors.compare(i, t, l.points[i], l.devs)
 			l.levels.compare(i, t, t.Time, l.points[i], l.devs, l.sensors)
+			l.slip.compare(i, t, l.points[i], l.devs, l.sensors)
 			l.reasons.add(i, t, l.points[i], l.notCompared(i), l.layout, l.devs)
 			block, ok := l.blocks.Add(i, l.points[i], &l.vec, l.devs)
 			if !ok {
