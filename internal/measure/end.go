@@ -189,10 +189,12 @@ func (m *Measurer) between(c *throwCtx, e int, r window.Run, low, high float64) 
 	m.x, m.y = m.x[:0], m.y[:0]
 	for i := r.I0; i < r.I1; i++ {
 		if p := c.th.P[e][i]; p >= low && p <= high {
-			m.x = append(m.x, math.Log(c.v[e][i]))
-			m.y = append(m.y, math.Log(p))
+			m.x = append(m.x, c.v[e][i])
+			m.y = append(m.y, p)
 		}
 	}
+	dsp.Logs(m.x, m.x)
+	dsp.Logs(m.y, m.y)
 }
 
 func (m *Measurer) exponent(c *throwCtx, e int, r window.Run, low, high float64, n, se int) {

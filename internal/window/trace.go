@@ -48,12 +48,12 @@ func (tr *trace) load(p []float64) bool {
 	if len(p) != tr.grid.N {
 		return false
 	}
-	for i, v := range p {
+	for _, v := range p {
 		if !(v > 0) || math.IsInf(v, 1) {
 			return false
 		}
-		tr.lnP[i] = math.Log(v)
 	}
+	dsp.Logs(tr.lnP, p)
 	return true
 }
 
