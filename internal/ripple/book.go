@@ -25,6 +25,8 @@ type Book struct {
 	cfg   Config
 	steps map[int]*computed
 	now   *computed // what the newest answer was taken from; nil: a measured ripple, or none
+	why   string    // why nothing could be computed of the newest turns …
+	mute  int       // … so many in a row
 }
 
 // computed is the ripple of one load step as its own turns gave it.
@@ -69,6 +71,13 @@ func (b *Book) Learn(t *turn.Turn, ps []float64) (why string) {
 	if c == nil {
 		return ""
 	}
+	defer func() {
+		if b.why = why; why == "" {
+			b.mute = 0
+		} else {
+			b.mute++
+		}
+	}()
 	h, why := b.cfg.Torque.Of(t, ps)
 	if why != "" { // what is in force may be long out of date, and nothing tells
 		if len(c.list) > 0 {

@@ -199,6 +199,7 @@ func (l *Line) Channels() []wire.Channel {
 	out := l.sensors.health()
 	l.gauges.remark(out)
 	l.levels.remark(out)
+	l.remarkRipple(out)
 	return out
 }
 
@@ -234,6 +235,7 @@ type Memory struct {
 	Slow    []duty.SlowTest   `json:"slow,omitempty"`   // the slow tests of the measures
 	Gauges  []duty.Passage    `json:"gauges,omitempty"` // passages that were found and are undone
 	Zeros   []duty.Zero       `json:"zeros,omitempty"`  // what is taken off the pressures
+	Ripple  ripple.Memory     `json:"ripple,omitempty"` // the computed ripple by load step
 }
 
 // Memory copies it out.
@@ -248,6 +250,9 @@ func (l *Line) Memory() Memory {
 	heard := l.measures.Snapshot()
 	m.Heard = &heard
 	m.Gauges, m.Zeros = l.gauges.inForce(), l.levels.off()
+	if l.uneven != nil {
+		m.Ripple = l.uneven.Snapshot()
+	}
 	return m
 }
 
@@ -270,6 +275,9 @@ func (l *Line) Remember(m Memory) error {
 		l.gauges.take(m.Gauges, false)
 	} else {
 		l.levels.take(m.Zeros)
+	}
+	if l.uneven != nil {
+		err = errors.Join(err, l.uneven.Restore(m.Ripple))
 	}
 	return err
 }

@@ -3,7 +3,22 @@ package station
 import (
 	"lapwing/internal/turn"
 	"lapwing/internal/window"
+	"lapwing/internal/wire"
 )
+
+// remarkRipple says of the phase reference what is known of the shaft's ripple where that is computed, and why it is not.
+func (l *Line) remarkRipple(out []wire.Channel) {
+	if l.uneven == nil || l.slip.channel < 0 {
+		return
+	}
+	c := &out[l.slip.channel]
+	if say := l.uneven.Say(); say != "" {
+		if c.Reason != "" {
+			say = c.Reason + "; " + say
+		}
+		c.Reason = say
+	}
+}
 
 // change makes the line undo other gauge passages from the next revolution on. The revolutions under way are lost to the
 // middle (four turns that are not valid, once), what the windows have learnt of the valves' lags begins anew, as every
