@@ -52,7 +52,7 @@ func TestMeasuredRunLengthAgreesWithTables(t *testing.T) {
 	for _, c := range []struct{ h, shift, want float64 }{
 		{4, 0, 168}, {4, 0.5, 26.6}, {4, 1, 8.38}, {4, 2, 3.34}, {5, 0, 465}, {5, 0.5, 38.0}, {5, 1, 10.4}, {5, 2, 4.01},
 	} {
-		got, se := runs(1, 4000, 0.5, c.h, c.shift, 0)
+		got, se := runs(1, 2500, 0.5, c.h, c.shift, 0)
 		t.Logf("h %g, shift %g: %.2f ± %.2f, table %g", c.h, c.shift, got, se, c.want)
 		if math.Abs(got-c.want) > 4*se+0.005*c.want {
 			t.Errorf("h %g, shift %g: %.2f ± %.2f, table %g", c.h, c.shift, got, se, c.want)
