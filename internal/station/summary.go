@@ -114,6 +114,9 @@ func (s *summary) print(w io.Writer, l *Line, took time.Duration, signal float64
 		fmt.Fprintln(w, "no baseline:", s.learnErr)
 	case s.baseline != nil:
 		fmt.Fprintf(w, "baseline learnt from turns %d to %d, %d load steps and throws\n", s.baseline.Turn0, s.baseline.Turn1, len(s.baseline.Cells))
+		for _, d := range s.baseline.Doubts {
+			fmt.Fprintln(w, "doubt, was it healthy? "+d.String())
+		}
 	case l.Judging():
 		fmt.Fprintln(w, "judged by the baseline given")
 	default:
