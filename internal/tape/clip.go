@@ -17,8 +17,8 @@ var (
 	ErrBadSpan = errors.New("span is empty or of no run")
 )
 
-// Clip is a stretch of samples that the roll does not touch. Protect takes ID, Reason, AlarmID, Run, From and To; the
-// rest is filled in by the tape.
+// Clip is a stretch of samples that the roll does not touch. Protect takes ID, Reason, AlarmID, Run, From, To and
+// State; the rest is filled in by the tape.
 type Clip struct {
 	ID      string `json:"id"`
 	Reason  string `json:"reason"`             // one sentence for people
@@ -34,6 +34,8 @@ type Clip struct {
 	Have     int64    `json:"have"`                // samples stored, per channel, when complete
 	Short    string   `json:"short,omitempty"`     // why fewer than asked for; empty when whole
 	Asked    int64    `json:"asked_ns"`            // UTC ns, when Protect was called
+
+	State []byte `json:"-"` // for Protect only: what the analysis knew at From; see Tape.State
 }
 
 // Protect asks for a clip. It returns when the wish is on disk; the samples are copied by the writer, and the clip is
@@ -63,6 +65,8 @@ func (t *Tape) Protect(c Clip) (Clip, error) {
 		c.Alarms = []uint64{c.AlarmID}
 	}
 	c.Asked = time.Now().UnixNano()
+	state, at := c.State, stateAt{c.Run, c.From}
+	c.State = nil
 	var gone []string
 	if old := t.find(c.ID); old != nil {
 		if old.Run != c.Run {
@@ -85,8 +89,28 @@ func (t *Tape) Protect(c Clip) (Clip, error) {
 		}
 		gone = append(gone, old.ID)
 	}
+	if c.From != at.from || t.clips.full(stateCost(len(state))) {
+		state = nil
+	}
+	tidied := func() {}
 	err := t.clips.update(func(tx *bolt.Tx) error {
 		b := tx.Bucket(clipBucket)
+		if state != nil {
+			if err := putState(tx, at, state); err != nil {
+				return err
+			}
+		}
+		var err error
+		if tidied, err = t.tidyStates(tx, func(f func(*Clip)) {
+			f(&c)
+			for id, other := range t.clip {
+				if !slices.Contains(gone, id) {
+					f(other)
+				}
+			}
+		}); err != nil {
+			return err
+		}
 		if c.ID == "" {
 			n, err := b.NextSequence()
 			if err != nil {
@@ -104,6 +128,7 @@ func (t *Tape) Protect(c Clip) (Clip, error) {
 	if err != nil {
 		return Clip{}, fmt.Errorf("tape: protect %s: %w", c.ID, err)
 	}
+	tidied()
 	for _, id := range gone {
 		delete(t.clip, id)
 	}
@@ -174,8 +199,19 @@ func (t *Tape) release(c *Clip) error {
 		}
 		return true
 	})
+	tidied := func() {}
 	err := t.clips.update(func(tx *bolt.Tx) error {
-		if err := remove(tx, gone); err != nil {
+		err := remove(tx, gone)
+		if err != nil {
+			return err
+		}
+		if tidied, err = t.tidyStates(tx, func(f func(*Clip)) {
+			for _, other := range t.clip {
+				if other != c {
+					f(other)
+				}
+			}
+		}); err != nil {
 			return err
 		}
 		return tx.Bucket(clipBucket).Delete([]byte(c.ID))
@@ -184,6 +220,7 @@ func (t *Tape) release(c *Clip) error {
 		return fmt.Errorf("tape: release %s: %w", c.ID, err)
 	}
 	t.clips.account(nil, gone)
+	tidied()
 	delete(t.clip, c.ID)
 	return nil
 }

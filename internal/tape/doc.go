@@ -25,6 +25,7 @@
 //	idx    segment number              ->   48 bytes: run, samples, first and last sample number, UTC, size, CRC32C
 //	skid   SHA-256 of the skid file    ->   the file, zstd
 //	clips  clip id (clips.db only)     ->   CRC32C, then JSON
+//	states run and sample (clips.db)   ->   a sub-bucket: what the analysis knew where a clip begins
 //
 // One sub-bucket per segment is what keeps bytes written per byte kept near one: large values in a flat bucket are
 // copied again and again by their neighbours' commits. Segment numbers rise for ever over both files and all restarts.

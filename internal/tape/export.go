@@ -51,10 +51,11 @@ type note struct {
 	Damage    string   `json:"damage,omitempty"`
 	Cautions  []string `json:"cautions"`
 	ProcessNo string   `json:"process_note,omitempty"`
+	StateNote string   `json:"state_note,omitempty"`
 }
 
 // ExportClip writes a clip as dst.wav, with the skid file in force as dst.skid.yaml, the process values as
-// dst.process.csv and a note with reason and cautions as dst.json; files whose contents are not known are left out and
+// dst.process.csv, the state of the analysis at its beginning as dst.state and a note with reason and cautions as dst.json; files whose contents are not known are left out and
 // the note says so. dst may end in .wav. Counts are as sampled. Unreadable segments become gaps; the error is then a
 // *DamageError and the files are there all the same.
 func (t *Tape) ExportClip(dst, id string) (Exported, error) {
@@ -186,6 +187,18 @@ func (e *exporter) beside(t *Tape, damage *DamageError) error {
 		}
 	} else {
 		n.ProcessNo = "no process values were known"
+	}
+	if e.clip != nil {
+		switch state, err := t.State(e.clip.ID); {
+		case err == nil && e.out.First != e.clip.From:
+			n.StateNote = "the samples begin later than the state of the analysis"
+		case err == nil:
+			if err := e.write(".state", state); err != nil {
+				return err
+			}
+		case !errors.Is(err, ErrNoState):
+			n.StateNote = err.Error()
+		}
 	}
 	body, err := json.MarshalIndent(n, "", "  ")
 	if err != nil {

@@ -31,11 +31,12 @@ type store struct {
 	disk  func(kind string) error // may be nil
 	bound int64                   // bytes of segments it may hold; lowered when the file turns out to be more fragmented than reckoned
 
-	mu    sync.RWMutex // guards what follows
-	db    *bolt.DB
-	segs  []segInfo // ascending key
-	live  int64
-	stats storeStats
+	mu     sync.RWMutex // guards what follows
+	db     *bolt.DB
+	segs   []segInfo // ascending key
+	live   int64
+	states int64 // bytes of clips' states, which live holds too
+	stats  storeStats
 }
 
 type storeStats struct {

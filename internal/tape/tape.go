@@ -81,6 +81,9 @@ func Open(path string, opt Options) (*Tape, error) {
 	if err == nil {
 		err = t.tidySkids()
 	}
+	if err == nil {
+		err = t.countStates()
+	}
 	if err != nil {
 		return nil, errors.Join(err, ring.close(), t.clips.close())
 	}
@@ -166,6 +169,23 @@ func (t *Tape) tidySkids() error {
 			return fmt.Errorf("tape: tidy %s: %w", s.path, err)
 		}
 	}
+	return nil
+}
+
+func (t *Tape) countStates() error {
+	done := func() {}
+	err := t.clips.update(func(tx *bolt.Tx) (err error) {
+		done, err = t.tidyStates(tx, func(f func(*Clip)) {
+			for _, c := range t.clip {
+				f(c)
+			}
+		})
+		return err
+	})
+	if err != nil {
+		return fmt.Errorf("tape: states in %s: %w", t.clips.path, err)
+	}
+	done()
 	return nil
 }
 
