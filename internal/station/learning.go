@@ -112,6 +112,18 @@ func (l *Line) learnAgain() {
 	clear(l.steady)
 }
 
+// declares tells whether a run says of the channels too that they are as they should be: all of a run over the whole
+// machine, and a renewal that may have changed a channel. Work on a valve leaves what is usual on the channels alone.
+func (l *Line) declares(turn int64) bool {
+	switch {
+	case l.learner == nil || l.learn.Add:
+		return false
+	case l.learn.Subject != "" && strings.Count(l.place(l.learn.Subject), ".") == 2 || strings.HasSuffix(l.learn.Subject, ".rings") || strings.HasSuffix(l.learn.Subject, ".packing"):
+		return false
+	}
+	return l.learn.Steady > 0 || turn >= l.learn.From && turn < l.learn.To
+}
+
 // leastTurns that a load step is learnt from at all.
 const leastTurns = 45
 

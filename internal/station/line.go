@@ -362,7 +362,7 @@ func (l *Line) Flush(emit func(*Output)) {
 }
 
 func (l *Line) frame(f *frame.Frame) {
-	l.sensors.Declare(l.learner != nil && (l.learn.Steady > 0 || f.Turn >= l.learn.From && f.Turn < l.learn.To))
+	l.sensors.Declare(l.declares(f.Turn))
 	l.sensors.Frame(f)
 	if l.gauges.changed {
 		if err := l.change(); err != nil { // cannot be: what is found lies far inside what may be undone
@@ -507,8 +507,8 @@ func (l *Line) refine(w window.Result) {
 		if math.IsNaN(ts) && len(l.sk.Process.Stages) >= l.sk.Throws[i].Stage {
 			ts = l.sk.Process.Stages[l.sk.Throws[i].Stage-1].Ts
 		}
-		if p, ok := l.gas.at(ps, ts, pd); ok {
-			in.Gas = measure.Gas{R: p.R, Zs: p.Zs, Zd: p.Zd, KV: p.KV, KT: p.KT}
+		if p, ok := l.gas.measures(ps, ts, pd); ok {
+			in.Gas = p
 		}
 	}
 }
