@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"lapwing/internal/crank"
+	"lapwing/internal/dsp"
 )
 
 const degPerRad = 180 / math.Pi
@@ -13,6 +14,7 @@ type Fitter struct {
 	set  Settings
 	rows [][sUnknowns]float64
 	y    []float64
+	lnV  []float64
 
 	strokes []stroke
 	shapes  shapes
@@ -190,15 +192,20 @@ const (
 func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift float64, zero [2]float64, every int) {
 	n := (s.To - s.From + every - 1) / every
 	if cap(f.rows) < n {
-		f.rows, f.y = make([][sUnknowns]float64, n), make([]float64, n)
+		f.rows, f.y, f.lnV = make([][sUnknowns]float64, n), make([]float64, n), make([]float64, n)
 	}
-	rows, y := f.rows[:n], f.y[:n]
+	rows, y, lnVs := f.rows[:n], f.y[:n], f.lnV[:n]
 
 	other, compress := 1-s.end, s.kind == Compression
 	rings := q.use[RG]
 	half := in.Step * float64(every) / degPerRad / 2
 	perK, perOmega := in.K, 1/in.omega(0)
 	shape := f.shapes.of(in, s.end, shift)
+	owns := f.gas.of(in, st, s.end, s.Range, every, zero[s.end], compress)
+	var others []gas
+	if rings {
+		others = f.gas.of(in, st, other, s.Range, every, zero[other], !compress)
+	}
 	var before [sAreas]float64 // rates at the point before
 	var sum [sUnknowns]float64
 	sumY := 0.0
@@ -206,7 +213,7 @@ func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift flo
 	for j := range n {
 		i := s.From + j*every
 		v, lnV, slope := shape.at(i)
-		own := f.gas.at(in, st, s.end, i, zero[s.end], compress)
+		own := &owns[i]
 		if len(in.Omega) > 1 {
 			perOmega = 1 / in.Omega[i]
 		}
@@ -215,7 +222,7 @@ func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift flo
 		rate[sSuction] = st.rate(own, &st.suction, scale)
 		rate[sDischarge] = st.rate(own, &st.discharge, scale)
 		if rings {
-			rate[sRings] = st.rate(own, f.gas.at(in, st, other, i, zero[other], !compress), scale)
+			rate[sRings] = st.rate(own, &others[i], scale)
 		}
 		row := &rows[j]
 		if j == 0 {
@@ -229,8 +236,8 @@ func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift flo
 		before = rate
 		// A grid that reads δ too low computes V at the wrong place: Y falls by k V′/V δ.
 		row[sPhase] = -in.K * slope
-		row[sZero] = lnV // for now
 		way.add(lnV, own.lnP)
+		lnVs[j] = lnV
 		y[j] = own.lnP + in.K*lnV
 		for c, x := range row {
 			sum[c] += x
@@ -242,9 +249,13 @@ func (f *Fitter) addStroke(q *normal, in *Input, st *states, s stroke, shift flo
 	// a zero.
 	way.ready()
 	sum[sZero] = 0
-	for j := range rows {
-		rows[j][sZero] = math.Exp(-way.at(rows[j][sZero]))
-		sum[sZero] += rows[j][sZero]
+	for j, lnV := range lnVs {
+		lnVs[j] = -way.at(lnV)
+	}
+	dsp.Exps(lnVs, lnVs)
+	for j, inverse := range lnVs {
+		rows[j][sZero] = inverse
+		sum[sZero] += inverse
 	}
 	var mean [sUnknowns]float64
 	for c := range sum {
@@ -281,7 +292,7 @@ func (w *polytrope) at(x float64) float64 { return w.y + w.slope*(x-w.x) }
 
 // fill turns a solution into people's terms.
 func (f *Fitter) fill(out *Fit, in *Input, st *states, q *normal, sol *solution) {
-	sd := func(u int) float64 { return out.sigma * math.Sqrt(sol.inv[u]) }
+	sd := func(u int) float64 { return out.sigma * math.Sqrt(sol.variance(u)) }
 	nan := math.NaN()
 	flow := [Paths]float64{nan, nan, nan, nan, nan}
 	if f.set.Mass {

@@ -52,9 +52,28 @@ func (q *normal) addRows(col [sUnknowns]int, rows [][sUnknowns]float64, y []floa
 
 // solution of a problem; unused unknowns are zero.
 type solution struct {
-	x   [unknowns]float64
-	inv [unknowns]float64 // diagonal of the inverse of the normal matrix: variances for unit noise
-	ss  float64           // Σ residual² of the data, priors left out
+	x  [unknowns]float64
+	ss float64 // Σ residual² of the data, priors left out
+
+	l     [unknowns][unknowns]float64 // Cholesky factor of the scaled normal matrix
+	scale [unknowns]float64           // of its columns; zero for an unused unknown
+}
+
+// variance is an unknown's for unit noise: the diagonal of the inverse of the normal matrix, the square of a column of
+// the inverse factor.
+func (s *solution) variance(u int) float64 {
+	var col [unknowns]float64
+	col[u] = 1 / s.l[u][u]
+	sum := col[u] * col[u]
+	for i := u + 1; i < unknowns; i++ {
+		v := 0.0
+		for k := u; k < i; k++ {
+			v -= s.l[i][k] * col[k]
+		}
+		col[i] = v / s.l[i][i]
+		sum += col[i] * col[i]
+	}
+	return sum * s.scale[u] * s.scale[u]
 }
 
 // leastPivot is the share of a column's square that must not be explained by the columns before it.
@@ -63,8 +82,7 @@ const leastPivot = 1e-9
 // solve adds to each unknown a prior of precision prior[i] (1/variance, in units of the noise variance) centred on
 // centre[i], and solves by Cholesky after scaling every column to length one. Not ok: two columns are the same.
 func (q *normal) solve(prior, centre *[unknowns]float64) (s solution, ok bool) {
-	var scale [unknowns]float64
-	var l [unknowns][unknowns]float64
+	scale, l := &s.scale, &s.l
 	for i := range unknowns {
 		if !q.use[i] {
 			continue
@@ -101,36 +119,24 @@ func (q *normal) solve(prior, centre *[unknowns]float64) (s solution, ok bool) {
 			l[i][i] = math.Sqrt(v)
 		}
 	}
-	back := func(rhs [unknowns]float64) [unknowns]float64 {
-		for i := range unknowns {
-			for k := range i {
-				rhs[i] -= l[i][k] * rhs[k]
-			}
-			rhs[i] /= l[i][i]
-		}
-		for i := unknowns - 1; i >= 0; i-- {
-			for k := i + 1; k < unknowns; k++ {
-				rhs[i] -= l[k][i] * rhs[k]
-			}
-			rhs[i] /= l[i][i]
-		}
-		return rhs
-	}
-	var rhs [unknowns]float64
+	var z [unknowns]float64
 	for i := range unknowns {
 		if q.use[i] {
-			rhs[i] = (q.b[i] + prior[i]*centre[i]) * scale[i]
+			z[i] = (q.b[i] + prior[i]*centre[i]) * scale[i]
 		}
+		for k := range i {
+			z[i] -= l[i][k] * z[k]
+		}
+		z[i] /= l[i][i]
 	}
-	z := back(rhs)
-	for i := range unknowns {
-		if !q.use[i] {
-			continue
+	for i := unknowns - 1; i >= 0; i-- {
+		for k := i + 1; k < unknowns; k++ {
+			z[i] -= l[k][i] * z[k]
 		}
+		z[i] /= l[i][i]
+	}
+	for i := range unknowns {
 		s.x[i] = z[i] * scale[i]
-		var unit [unknowns]float64
-		unit[i] = 1
-		s.inv[i] = back(unit)[i] * scale[i] * scale[i]
 	}
 	s.ss = q.yy
 	for i := range unknowns {

@@ -21,7 +21,7 @@ func TestSolveClosedForm(t *testing.T) {
 		t.Fatalf("%v %v", s.x, ok)
 	}
 	// Unit noise: variance 1/Σx².
-	if v := s.inv[HS]; math.Abs(v*8e-6-1) > 1e-12 {
+	if v := s.variance(HS); math.Abs(v*8e-6-1) > 1e-12 {
 		t.Errorf("variance %g, want %g", v, 1/8e-6)
 	}
 	// A prior as strong as the data draws the answer half way to its centre.

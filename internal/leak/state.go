@@ -1,6 +1,10 @@
 package leak
 
-import "math"
+import (
+	"math"
+
+	"lapwing/internal/dsp"
+)
 
 // gas is the state inside an end as the flow through an opening needs it. One logarithm and one exponential a point
 // give all of it: p^((k−1)/k) is p over p^(1/k).
@@ -33,8 +37,13 @@ func (in *Input) states() states {
 // at gives the state at pressure p.
 func (s *states) at(p float64, compressing bool) gas {
 	lnP := math.Log(p)
-	a := math.Exp((lnP - s.lnPs) * s.n.inv)
-	g := gas{p: p, inv: 1 / p, a: a, invA: 1 / a, lnP: lnP}
+	return s.of(p, lnP, math.Exp((lnP-s.lnPs)*s.n.inv), compressing)
+}
+
+// of is at with ln p and (p/Ps)^(1/k) given.
+func (s *states) of(p, lnP, a float64, compressing bool) gas {
+	inverse := 1 / (p * a) // one division for both
+	g := gas{p: p, inv: a * inverse, a: a, invA: p * inverse, lnP: lnP}
 	g.rt = s.exp * p * g.invA
 	if compressing {
 		g.rt = s.comp * p * g.invA
@@ -43,27 +52,54 @@ func (s *states) at(p float64, compressing bool) gas {
 }
 
 // table keeps the states of a pass: where one end compresses the other expands, and both strokes ask for both.
-type table [2][]gas
+type table struct {
+	gas    [2][]gas
+	filled [2][]int // points that have their state
+
+	at         []int // scratch of fill: points and what belongs to them
+	p, lnP, aa []float64
+}
 
 // forget makes the table ready for other pressures or zeros.
 func (t *table) forget(in *Input) {
-	for end := range t {
-		if n := len(in.P[end]); n > cap(t[end]) {
-			t[end] = make([]gas, n)
+	for end := range t.gas {
+		if n := len(in.P[end]); n > cap(t.gas[end]) {
+			t.gas[end] = make([]gas, n)
 		} else {
-			t[end] = t[end][:n]
-			clear(t[end])
+			t.gas[end] = t.gas[end][:cap(t.gas[end])]
+			for _, i := range t.filled[end] {
+				t.gas[end][i].p = 0
+			}
+			t.gas[end] = t.gas[end][:n]
 		}
+		t.filled[end] = t.filled[end][:0]
 	}
 }
 
-// at gives the state of an end at a grid point. A point lies in strokes of one direction only.
-func (t *table) at(in *Input, s *states, end, i int, zero float64, compressing bool) *gas {
-	g := &t[end][i]
-	if g.p == 0 {
-		*g = s.at(in.P[end][i]-zero, compressing)
+// of gives an end's states on the grid, with those of a stroke's points in place. A point lies in strokes of one
+// direction only.
+func (t *table) of(in *Input, s *states, end int, r Range, every int, zero float64, compressing bool) []gas {
+	all := t.gas[end]
+	t.at, t.p = t.at[:0], t.p[:0]
+	for i := r.From; i < r.To; i += every {
+		if all[i].p == 0 {
+			t.at, t.p = append(t.at, i), append(t.p, in.P[end][i]-zero)
+		}
 	}
-	return g
+	if n := len(t.p); n > cap(t.lnP) {
+		t.lnP, t.aa = make([]float64, n, 2*n), make([]float64, n, 2*n)
+	}
+	lnP, a := t.lnP[:len(t.p)], t.aa[:len(t.p)]
+	dsp.Logs(lnP, t.p)
+	for j, l := range lnP {
+		a[j] = float64((l - s.lnPs) * s.n.inv)
+	}
+	dsp.Exps(a, a)
+	for j, i := range t.at {
+		all[i] = s.of(t.p[j], lnP[j], a[j], compressing)
+	}
+	t.filled[end] = append(t.filled[end], t.at...)
+	return all
 }
 
 // rate gives g: how fast ln p of an end in state in rises per radian, per m² and per k, through an opening to a place
