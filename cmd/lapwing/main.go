@@ -31,6 +31,7 @@ func root() *cobra.Command {
   technician     lapwing check FILE       what the skid file says, and every doubt
                  lapwing datum REC.wav    dead centres, clearances, pressure zeros from a recording
                  lapwing ripple REC.wav   how unevenly the shaft turns, from a toothed wheel
+                 lapwing baseline         learn, accept, renew, compare what the machine shows when healthy
   control room   lapwing listen           alarms as they arrive over MQTT
                  lapwing alarms           what stands, and the keys to name it by
                  lapwing ack KEY          acknowledge; also reset, shelve, unshelve, out, back

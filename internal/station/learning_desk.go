@@ -23,7 +23,7 @@ type learningDesk struct {
 
 const (
 	docLearning = "learning run"
-	showEvery   = 2 * time.Second // in sample time: coverage costs a sort
+	showEvery   = 5 * time.Second // in sample time: coverage costs a sort
 )
 
 // learnDoc is what a restart must know of a learning run: the turns of one that is on are lost and it begins anew; one
