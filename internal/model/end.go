@@ -9,9 +9,11 @@ import (
 
 // Sub-steps: fine while a plate moves, coarse while all rest.
 const (
-	fineStep   = 5e-6  // s
+	fineStep   = 10e-6 // s
+	plateSteps = 2     // of a plate in a fine step
 	coarseStep = 20e-6 // s
-	heatEvery  = 8     // samples between two looks at the wall heat coefficient
+	heatEvery  = 16    // samples between two looks at the wall heat coefficient
+	jetEvery   = 4     // samples between two looks at the speed of leaking gas and at the passages: less than half a degree
 )
 
 // end is one working side of a cylinder: one volume of gas and its valves.
@@ -109,26 +111,41 @@ func (e *end) heat(deg, omega float64) {
 		swirl *= 2
 	}
 	g := e.gas
-	mu := g.Viscosity * math.Pow(e.t/300, 0.75)
+	warm := math.Sqrt(e.t / 300)
+	mu := g.Viscosity * warm * math.Sqrt(warm) // ~T^0.75
 	re := e.m / e.v * swirl * de * de / (2 * mu)
 	cp := g.K / (g.K - 1) * g.R
-	nu := 0.053 * math.Pow(re, 0.8) * math.Pow(g.Prandtl, 0.6)
+	nu := 0.053 * math.Exp(0.8*math.Log(re)) * g.pr06
 	e.hA = e.heated * nu * mu * cp / g.Prandtl / de * surface
 }
 
 // path is one opening of the end to a neighbouring space during one sub-step.
 type path struct {
-	area, p, t, rt float64 // m², Pa and K of the neighbour, √(R·T)
-	in, slope      float64 // kg/s into the end and its derivative to the end's pressure
+	area, p, t  float64 // m², Pa and K of the neighbour
+	perP, perRT float64 // 1/p, 1/√(R·T) of it
+	in, slope   float64 // kg/s into the end and its derivative to the end's pressure
 }
 
-func (c *path) eval(n *nozzle, p, rt float64) {
+func pathTo(area, p, t, rt float64) path {
+	return path{area: area, p: p, t: t, perP: 1 / p, perRT: 1 / rt}
+}
+
+// eval works out the flow at the end's pressure, given with its reciprocal and 1/√(R·T) of the end.
+func (c *path) eval(n *nozzle, p, perP, perRT float64) {
 	if c.area <= 0 {
 		c.in, c.slope = 0, 0
 		return
 	}
-	in, sl := n.flow(p, rt, c.p, c.rt)
+	in, sl := n.between(p, perP, perRT, c.p, c.perP, c.perRT)
 	c.in, c.slope = in*c.area, sl*c.area
+}
+
+// from is the temperature of what flows; t that of the end.
+func (c *path) from(t float64) float64 {
+	if c.in < 0 {
+		return t
+	}
+	return c.t
 }
 
 // advance moves the end by one sampling interval. v0, vm, v1 are its volumes at the beginning, the middle and the end of it;
@@ -144,9 +161,13 @@ func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
 	dt := m.dt * h
 	b, c := -3*v0+4*vm-v1, 2*v0-4*vm+2*v1
 	va := v0
-	s := path{p: t.ps, t: t.suctionT, rt: t.suctionRT}
-	d := path{p: t.pd, t: t.dischT, rt: t.dischRT}
-	pk := path{area: e.packing, p: t.atm, t: 300, rt: math.Sqrt(r * 300)}
+	s := pathTo(0, t.ps, t.suctionT, t.suctionRT)
+	d := pathTo(0, t.pd, t.dischT, t.dischRT)
+	var pk path
+	if e.packing > 0 {
+		pk = pathTo(e.packing, t.atm, 300, math.Sqrt(r*300))
+	}
+	noz, perR := t.stage.noz, 1/r
 	book := e.diary.cur
 	var sumS, sumD, sumPack, work float64
 	leakS, leakD := 0.0, 0.0
@@ -157,40 +178,30 @@ func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
 		vc := v0 + f*(b+f*c)
 		pa := e.p
 		// Adiabatic to the middle of the sub-step, then what flows and heats at constant volume, then adiabatic to its end.
-		pb := pa * powk(va/vb, k)
-		tb := pb * vb / (e.m * r)
-		rt := math.Sqrt(r * tb)
+		perV := 1 / vb
+		pb := pa * powk(va*perV, k)
+		perPB := 1 / pb
+		rtb := pb * vb / e.m
+		perRT := 1 / math.Sqrt(rtb)
+		tb := rtb * perR
 		s.area, d.area = e.suction.area(), e.disch.area()
-		s.eval(t.stage.noz, pb, rt)
-		d.eval(t.stage.noz, pb, rt)
-		pk.eval(t.stage.noz, pb, rt)
+		s.eval(noz, pb, perPB, perRT)
+		d.eval(noz, pb, perPB, perRT)
+		pk.eval(noz, pb, perPB, perRT)
 		// Energy of an ideal gas at constant volume: dp/dt = kR/V·Σ ṁT + (k−1)/V·Q.
 		ring := e.ring
 		ringT := e.ringT
 		if ring < 0 {
 			ringT = tb
 		}
-		up := func(c *path) float64 {
-			if c.in < 0 {
-				return tb
-			}
-			return c.t
-		}
-		ts, td, tk := up(&s), up(&d), up(&pk)
-		kr := k * r / vb
-		rate := kr*(s.in*ts+d.in*td+pk.in*tk+ring*ringT) + (k-1)/vb*e.hA*(e.wall-tb)
+		ts, td, tk := s.from(tb), d.from(tb), pk.from(tb)
+		kr := k * r * perV
+		rate := kr*(s.in*ts+d.in*td+pk.in*tk+ring*ringT) + (k-1)*perV*e.hA*(e.wall-tb)
 		stiff := -kr * (s.slope*ts + d.slope*td + pk.slope*tk)
 		// Exponential step of the linearised equation: second order, and stable however large the open area is.
-		z := stiff * dt
-		phi := 1 - z*(0.5-z/6)
-		if z > 1e-3 {
-			phi = -math.Expm1(-z) / z
-		}
-		dp := rate * dt * phi
-		mean := 0.0 // the pressure change at which the linearised flows have their mean over the sub-step
-		if stiff > 0 {
-			mean = (rate - dp/dt) / stiff
-		}
+		end, mid := relax(stiff * dt)
+		dp := rate * dt * end
+		mean := rate * dt * mid // the pressure change at which the linearised flows have their mean over the sub-step
 		fs, fd, fp := s.in+s.slope*mean, d.in+d.slope*mean, pk.in+pk.slope*mean
 		e.m += (fs + fd + fp + ring) * dt
 		pd := pb + dp
@@ -199,26 +210,29 @@ func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
 		sumS += fs * dt
 		sumD += fd * dt
 		sumPack -= fp * dt
-		if s.area > 0 {
-			leakS -= fs * dt * e.suction.leakArea() / s.area
-		}
-		if d.area > 0 {
-			leakD += fd * dt * e.disch.leakArea() / d.area
-		}
+		leakS -= fs * dt * e.suction.leakShare(s.area)
+		leakD += fd * dt * e.disch.leakShare(d.area)
 		va = vc
 		if busy {
-			at := (float64(i)) * h
-			e.suction.step(m, t, e, t.ps-e.p, t.ps, dt, deg0, ddeg, at, h)
-			e.disch.step(m, t, e, e.p-t.pd, t.pd, dt, deg0, ddeg, at, h)
+			// The plates take smaller steps; the pressure goes from what it was to what it is.
+			for j := range plateSteps {
+				f := (float64(j) + 0.5) / plateSteps
+				p := pa + f*(e.p-pa)
+				at := (float64(i) + float64(j)/plateSteps) * h
+				e.suction.step(m, t, e, t.ps-p, t.ps, dt/plateSteps, deg0, ddeg, at, h/plateSteps)
+				e.disch.step(m, t, e, p-t.pd, t.pd, dt/plateSteps, deg0, ddeg, at, h/plateSteps)
+			}
 		}
 	}
 	e.v = va
 	e.t = e.p * e.v / (e.m * r)
 	inv := 1 / m.dt
-	e.suction.voice(e, t.ps, sumS*inv, s.area, leakS*inv, m.dt)
-	e.disch.voice(e, t.pd, sumD*inv, d.area, leakD*inv, m.dt)
-	e.packJet = 0
-	if e.packing > 0 {
+	if m.n%jetEvery == 0 {
+		e.suction.u2, e.disch.u2 = e.jet(t.ps, sumS), e.jet(t.pd, sumD)
+	}
+	e.suction.voice(sumS*inv, s.area, leakS*inv, m.dt)
+	e.disch.voice(sumD*inv, d.area, leakD*inv, m.dt)
+	if e.packing > 0 && m.n%jetEvery == 0 {
 		e.packJet = math.Abs(sumPack) * inv * jetEnergy(e.gas, e.p, t.atm, e.t)
 	}
 	t.suctionIn(sumS, e.t)
@@ -243,6 +257,21 @@ func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
 	}
 }
 
+// relax gives what a quantity that relaxes at a rate has done after z time constants, as a share of what it would have
+// done without: at the end, (1 − e^−z)/z, and on the mean, (1 − (1 − e^−z)/z)/z.
+func relax(z float64) (end, mean float64) {
+	switch {
+	case z < 0.01:
+		mean = 1./2 - z*(1./6-z*(1./24-z/120))
+	case z < 0.3:
+		mean = 1./2 - z*(1./6-z*(1./24-z*(1./120-z*(1./720-z*(1./5040-z*(1./40320-z*(1./362880-z/3628800)))))))
+	default:
+		end = (1 - math.Exp(-z)) / z
+		return end, (1 - end) / z
+	}
+	return 1 - z*mean, mean
+}
+
 // busy tells whether the end needs fine steps in this interval.
 func (e *end) busy(t *throw) bool {
 	for i := range e.suction.plates {
@@ -256,6 +285,14 @@ func (e *end) busy(t *throw) bool {
 		}
 	}
 	return false
+}
+
+// jet is jetEnergy of the flow between the end and a line; flow is positive into the end.
+func (e *end) jet(line, flow float64) float64 {
+	if flow < 0 {
+		return jetEnergy(e.gas, e.p, line, e.t)
+	}
+	return jetEnergy(e.gas, line, e.p, e.t)
 }
 
 // jetEnergy is the square of the ideal speed of gas at t expanding between two pressures, (m/s)², up to a ratio of 4.

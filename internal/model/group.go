@@ -11,6 +11,7 @@ type group struct {
 	discharge bool
 	plates    []plate
 	mean      float64 // mean lift, share
+	u2        float64 // (m/s)², square of the ideal speed of what flows
 	above     bool    // mean lift has passed 30 % and no plate has sat since
 	wanted    bool    // its closing crossing is still to be booked
 	up        []bool  // by plate: it has passed 30 % of its lift and has not sat since
@@ -35,14 +36,29 @@ func (g *group) leakArea() float64 {
 	return a
 }
 
+// leakShare is the closed plates' part of an area that is that of the whole group.
+func (g *group) leakShare(area float64) float64 {
+	if area <= 0 {
+		return 0
+	}
+	shut, open := 0.0, false
+	for i := range g.plates {
+		if g.plates[i].x == 0 {
+			shut += g.plates[i].leak
+		} else {
+			open = true
+		}
+	}
+	if !open {
+		return 1
+	}
+	return shut / area
+}
+
 // voice shares the group's flow among its valves for noise and cover temperatures. Sound power goes as mass flow times the
 // square of its speed.
-func (g *group) voice(e *end, line, flow, area, leak, dt float64) {
-	from, to := line, e.p
-	if flow < 0 {
-		from, to = e.p, line
-	}
-	u2 := jetEnergy(e.gas, from, to, e.t)
+func (g *group) voice(flow, area, leak, dt float64) {
+	u2 := g.u2
 	closed := g.leakArea()
 	for i := range g.plates {
 		q := &g.plates[i]

@@ -61,3 +61,14 @@ func (n *nozzle) flow(p, rt, pl, rtl float64) (in, slope float64) {
 	psi, ds := n.at(1 - p/pl)
 	return pl / rtl * psi, -ds / rtl
 }
+
+// between is flow with the reciprocals of all four given: a path is looked at so often that divisions count.
+func (n *nozzle) between(p, perP, perRT, pl, perPl, perRTl float64) (in, slope float64) {
+	if p >= pl {
+		d := 1 - pl*perP
+		psi, ds := n.at(d)
+		return -p * perRT * psi, -(psi + ds*(1-d)) * perRT
+	}
+	psi, ds := n.at(1 - p*perPl)
+	return pl * perRTl * psi, -ds * perRTl
+}

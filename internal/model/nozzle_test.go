@@ -64,3 +64,19 @@ func TestPowk(t *testing.T) {
 		}
 	})
 }
+
+// TestRelax: against the exponential in its exact form.
+func TestRelax(t *testing.T) {
+	for _, z := range []float64{0, 1e-9, 1e-4, 0.0099, 0.0101, 0.1, 0.2999, 0.3001, 2, 50} {
+		end, mean := relax(z)
+		want, mid := 1.0, 0.5
+		if z > 0 {
+			want = -math.Expm1(-z) / z
+			mid = (math.Expm1(-z) + z) / (z * z)
+		}
+		within(t, "end", end, want, 1e-10)
+		if z > 1e-4 { // below, the exact form loses its digits
+			within(t, "mean", mean, mid, 1e-9)
+		}
+	}
+}

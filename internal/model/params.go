@@ -15,6 +15,8 @@ type Gas struct {
 	KT        float64 // isentropic temperature exponent: what a thermometer at the discharge sees; 0: K
 	Viscosity float64 // Pa s at 300 K
 	Prandtl   float64
+
+	pr06 float64 // Prandtl^0.6
 }
 
 // ValveData describes one valve as a single plate on springs.

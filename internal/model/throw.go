@@ -46,6 +46,7 @@ func (m *Machine) buildStages(sk *skid.Skid) {
 	for i := range m.plan.ps {
 		l := m.plan.line(i, 0)
 		st := &stage{ps: l.Ps, pd: l.Pd, ts: l.Ts, gas: m.par.Gas, real: m.par.Gas, noz: newNozzle(m.par.Gas.K)}
+		st.gas.pr06 = math.Pow(m.par.Gas.Prandtl, 0.6)
 		st.follow(m, l, 0)
 		m.stages = append(m.stages, st)
 	}
@@ -59,6 +60,7 @@ type throw struct {
 	ends   [2]*end // nil: does not work
 	atm    float64
 	travel float64 // m, at the present sample
+	before float64 // m, at the sample before it
 
 	pulseS, pulseD []harmonic
 	ps, pd         float64 // Pa, in the passages now, pulsation in
@@ -66,6 +68,8 @@ type throw struct {
 	suctionT, suctionRT float64 // K, √(R·T)
 	dischT, dischRT     float64
 	passage             float64 // m³, each
+	perSuction          float64 // 1/(kg K): 1/(mass·temperature) of the suction passage
+	perDisch            float64 // likewise
 	discharge           float64 // K, what the discharge thermometer has got to (lagged)
 	next                int64   // number of the next head-end dead centre
 	pin                 pin
@@ -85,6 +89,7 @@ func (m *Machine) buildThrows(seed uint64) error {
 		td := t.adiabatic()
 		t.suctionT, t.dischT, t.discharge = t.stage.ts, td, td
 		t.suctionRT, t.dischRT = math.Sqrt(t.stage.gas.R*t.suctionT), math.Sqrt(t.stage.gas.R*t.dischT)
+		t.perSuction, t.perDisch = t.stage.gas.R/(t.stage.ps*t.passage), t.stage.gas.R/(t.stage.pd*t.passage)
 		// Each throw hears its own pulsation: the phase moves with its dead centre.
 		t.pulseS = pulses(m.par.SuctionPulse, st.DeadCentre)
 		t.pulseD = pulses(m.par.DischargePulse, st.DeadCentre)
@@ -195,11 +200,20 @@ func (t *throw) advance(m *Machine, before, ddeg float64) {
 	deg0 := before - t.sk.DeadCentre
 	cyl := &t.sk.Cylinder
 	x0 := t.travel
-	xm := cyl.Travel(deg0 + 0.5*ddeg)
 	x1 := cyl.Travel(deg0 + ddeg)
+	// Half way, from the last three travels: exact but for the third derivative, some 10⁻¹¹ m.
+	xm := 0.5*(x0+x1) - 0.125*(x1-2*x0+t.before)
+	if m.n == 1 {
+		xm = cyl.Travel(deg0 + 0.5*ddeg)
+	}
+	t.before = x0
 	t.travel = x1
 	t.pin.book(t, m.dt, x1, t.beside(crank.HE), t.beside(crank.CE))
 	t.lines(m)
+	if r := t.stage.gas.R; m.n%jetEvery == 0 {
+		t.suctionRT, t.dischRT = math.Sqrt(r*t.suctionT), math.Sqrt(r*t.dischT)
+		t.perSuction, t.perDisch = r/(t.ps*t.passage), r/(t.pd*t.passage)
+	}
 	t.rings(m)
 	for _, e := range t.ends {
 		if e == nil {
@@ -269,7 +283,9 @@ func (t *throw) rings(m *Machine) {
 		a.ring = in * a.ringA
 		b.ring = -a.ring
 		a.ringT, b.ringT = b.t, a.t
-		a.ringJet = ringJet(a, b.p)
+		if m.n%jetEvery == 0 {
+			a.ringJet = ringJet(a, b.p)
+		}
 	case a == nil:
 		t.blind(m, b)
 	default:
@@ -284,7 +300,9 @@ func (t *throw) blind(m *Machine, e *end) {
 	}
 	in, _ := t.stage.noz.flow(e.p, math.Sqrt(t.stage.gas.R*e.t), pl, t.suctionRT)
 	e.ring, e.ringT = in*e.ringA, t.suctionT
-	e.ringJet = ringJet(e, pl)
+	if m.n%jetEvery == 0 {
+		e.ringJet = ringJet(e, pl)
+	}
 }
 
 // ringJet is the sound power scale of the flow past the rings; they hiss less loudly outside than a valve does.
@@ -299,13 +317,13 @@ func (t *throw) suctionIn(taken, tt float64) {
 	if taken == 0 {
 		return
 	}
-	mass := t.ps * t.passage / (t.stage.gas.R * t.suctionT)
+	share := taken * t.perSuction * t.suctionT // of the passage's mass
 	if taken < 0 {
-		t.suctionT += (tt - t.suctionT) * math.Min(1, -taken/mass)
+		share, tt = -share, tt-t.suctionT
 	} else {
-		t.suctionT += (t.stage.ts - t.suctionT) * math.Min(1, taken/mass)
+		tt = t.stage.ts - t.suctionT
 	}
-	t.suctionRT = math.Sqrt(t.stage.gas.R * t.suctionT)
+	t.suctionT += tt * min(1, share)
 }
 
 // dischIn mixes the discharge passage: out is what an end delivered, kg, at temperature tt; negative went back into it.
@@ -313,9 +331,7 @@ func (t *throw) dischIn(out, tt float64) {
 	if out <= 0 {
 		return // the line's gas is the passage's own
 	}
-	mass := t.pd * t.passage / (t.stage.gas.R * t.dischT)
-	t.dischT += (tt - t.dischT) * math.Min(1, out/mass)
-	t.dischRT = math.Sqrt(t.stage.gas.R * t.dischT)
+	t.dischT += (tt - t.dischT) * min(1, out*t.perDisch*t.dischT)
 }
 
 // slow follows faults and wall temperatures.
