@@ -45,6 +45,7 @@ type Annunciator struct {
 	order  int         // last place given in the first-up order
 	recent []time.Time // activations of the last ten minutes
 	flood  bool
+	hidden bool // something changed that shows in no transition, since Saved
 }
 
 // New gives an annunciator with no points; a point comes into being with its first condition.
@@ -73,6 +74,7 @@ func (a *Annunciator) Step(now time.Time, conds []Condition) []Transition {
 	for _, key := range a.expired(now) {
 		p := a.points[key]
 		a.unshelve(p)
+		a.hidden = true // out of service it shows in nothing
 		out = a.show(out, p, now, "", "shelving expired")
 	}
 	for i := range conds {
@@ -110,7 +112,9 @@ func (a *Annunciator) evaluate(out []Transition, c *Condition, now time.Time) []
 		dt = 0
 	}
 	p.Last = now
+	inner, level := p.Inner, p.Level
 	note := a.advance(p, c, dt, now)
+	a.hidden = a.hidden || p.Inner != inner || p.Level != level
 	return a.show(out, p, now, "", note)
 }
 
@@ -286,6 +290,13 @@ func (a *Annunciator) Standing(key string) bool {
 
 // Last is the id of the newest transition; 0 before the first.
 func (a *Annunciator) Last() uint64 { return a.nextID - 1 }
+
+// Unsaved reports whether a point has changed since Saved, be it behind a shelf, where no transition shows it: a restart
+// must not forget that either.
+func (a *Annunciator) Unsaved() bool { return a.hidden }
+
+// Saved says that a snapshot of the present state is kept.
+func (a *Annunciator) Saved() { a.hidden = false }
 
 // GoOnAfter lets ids go on after one that a journal holds. A snapshot that was lost must not make them begin anew.
 func (a *Annunciator) GoOnAfter(id uint64) { a.nextID = max(a.nextID, id+1) }

@@ -17,6 +17,9 @@
 //	count     name                       ->  CRC32C, JSON number: last message id, drops per class
 //	bad       bucket/key                 ->  records whose checksum failed, as they were found
 //
+// A commit whose end is not known (the disk fails while it is written) may be made again as it was: the ids that were not
+// taken over are given once more, and the same records are written in their places.
+//
 // Values are small and keys rise, so flat buckets are right here; the big samples are the tape's, in other files, so
 // that their commits never hold up an alarm's.
 package ledger

@@ -33,6 +33,11 @@ type Options struct {
 	JournalMax int              // transitions kept, and as many acts; default 1 000 000, then the oldest are let go and counted
 	Now        func() time.Time // default time.Now
 	LockWait   time.Duration    // for another process that holds the file; default 2 s
+
+	// Fault is for tests: it is asked before every step of a commit, and an error makes the step fail as a bad disk
+	// would. The steps are begin, journal, act, enqueue, document, baseline, count, flush, and done: the disk has it
+	// and does not say so.
+	Fault func(step string) error
 }
 
 // Ledger is an open state file. Its methods may be called from any goroutine.

@@ -27,6 +27,9 @@ func (l *Ledger) Commit(f func(*Tx) error) error {
 	l.commit.Lock()
 	defer l.commit.Unlock()
 	var after Stats
+	if err := l.opt.fault("begin"); err != nil {
+		return fmt.Errorf("ledger: commit: %w", l.failed(err))
+	}
 	err := l.update(func(btx *bolt.Tx) error {
 		l.mu.Lock()
 		tx := &Tx{tx: btx, opt: &l.opt, now: l.opt.Now(), stat: l.stat}
@@ -35,19 +38,43 @@ func (l *Ledger) Commit(f func(*Tx) error) error {
 		if err := f(tx); err != nil {
 			return err
 		}
+		if err := tx.opt.fault("count"); err != nil {
+			return err
+		}
 		if tx.changed {
 			if err := setCounter(btx, "message", tx.stat.LastMessage); err != nil {
 				return err
 			}
 		}
 		after = tx.stat
-		return nil
+		return tx.opt.fault("flush")
 	})
+	if err == nil {
+		if err = l.opt.fault("done"); err != nil {
+			err = l.failed(err)
+		}
+	}
 	if err != nil {
 		return fmt.Errorf("ledger: commit: %w", err)
 	}
 	l.adopt(&after)
 	return nil
+}
+
+func (o *Options) fault(step string) error {
+	if o.Fault == nil {
+		return nil
+	}
+	return o.Fault(step)
+}
+
+// failed counts a commit that failed outside the transaction.
+func (l *Ledger) failed(err error) error {
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	l.stat.FailedCommit++
+	l.stat.LastError = err
+	return err
 }
 
 func (l *Ledger) adopt(after *Stats) {
@@ -68,6 +95,9 @@ func (t *Tx) Journal(tr alarm.Transition) error {
 	if err != nil {
 		return fmt.Errorf("journal %d: %w", tr.ID, err)
 	}
+	if err := t.opt.fault("journal"); err != nil {
+		return fmt.Errorf("journal %d: %w", tr.ID, err)
+	}
 	if err := t.append(journalBucket, tr.ID, rec, &t.stat.Transitions, &t.stat.JournalGone, "journal gone"); err != nil {
 		return fmt.Errorf("journal %d: %w", tr.ID, err)
 	}
@@ -82,6 +112,9 @@ func (t *Tx) Act(a alarm.Act) error {
 	}
 	rec, err := sealJSON(a)
 	if err != nil {
+		return fmt.Errorf("act %d: %w", a.ID, err)
+	}
+	if err := t.opt.fault("act"); err != nil {
 		return fmt.Errorf("act %d: %w", a.ID, err)
 	}
 	if err := t.append(actBucket, a.ID, rec, &t.stat.Acts, &t.stat.ActsGone, "acts gone"); err != nil {
@@ -118,6 +151,9 @@ func (t *Tx) Enqueue(c Class, topic string, payload []byte, retain bool) (uint64
 	}
 	if topic == "" || len(topic) > math.MaxUint16 {
 		return 0, fmt.Errorf("enqueue: topic of %d bytes", len(topic))
+	}
+	if err := t.opt.fault("enqueue"); err != nil {
+		return 0, fmt.Errorf("enqueue %s: %w", topic, err)
 	}
 	m := Message{ID: t.stat.LastMessage + 1, Class: c, Topic: topic, Payload: payload, Retain: retain, Created: t.now}
 	if err := outbox(t.tx, c).Put(key(m.ID), m.encode()); err != nil {
@@ -160,6 +196,9 @@ func (t *Tx) giveWay() error {
 
 // PutDoc stores v as JSON under a name, in place of what was there.
 func (t *Tx) PutDoc(name string, v any) error {
+	if err := t.opt.fault("document"); err != nil {
+		return fmt.Errorf("document %s: %w", name, err)
+	}
 	rec, err := sealJSON(v)
 	if err != nil {
 		return fmt.Errorf("document %s: %w", name, err)
@@ -185,6 +224,9 @@ func (t *Tx) AlarmSnapshot(v any) error { return t.PutDoc(alarmSnapshot, v) }
 
 // PutBaseline appends a baseline and gives its version, from 1 up. Earlier ones stay.
 func (t *Tx) PutBaseline(note string, v any) (version uint64, err error) {
+	if err := t.opt.fault("baseline"); err != nil {
+		return 0, fmt.Errorf("baseline: %w", err)
+	}
 	body, err := json.Marshal(v)
 	if err != nil {
 		return 0, fmt.Errorf("baseline: %w", err)

@@ -27,6 +27,7 @@ type desk struct {
 	mu       sync.Mutex
 	id       string                // of the journal: a fresh state folder begins a new one
 	journal  []wire.Alarm          // newest first
+	kept     uint64                // id of the newest transition that is on disk
 	open     map[string]wire.Alarm // by key, what stands
 	named    map[string]string     // by key, the single valve that the standing alarm names
 	findings []wire.Finding
@@ -52,6 +53,7 @@ func (d *desk) restore(l *ledger.Ledger, alarms *alarm.Annunciator, skidID strin
 		}
 	}
 	last := l.Stats().LastJournal
+	d.kept, d.journal = last, nil
 	from := uint64(0)
 	if last > 2000 {
 		from = last - 2000
@@ -114,13 +116,18 @@ func (s *Station) book(o *Output) error {
 	return errors.Join(s.keepBaseline(), s.commit())
 }
 
-// append takes transitions in for the next commit. After this nothing but the end of the process can lose them.
+// append takes transitions in for the next commit. After this nothing but the end of the process can lose them. The page
+// shows them at once, whatever the disk does.
 func (s *Station) append(trs []alarm.Transition) {
 	for i := range trs {
 		t := &trs[i]
 		said := wire.FromTransition(s.sk.ID, t, s.protect(t))
 		said.Journal = s.desk.id
 		s.unsaid = append(s.unsaid, saying{tr: *t, said: said})
+		s.desk.mu.Lock()
+		s.desk.note(said)
+		s.desk.pointsAt = time.Time{}
+		s.desk.mu.Unlock()
 	}
 }
 
@@ -134,11 +141,12 @@ type saying struct {
 // commit writes the entries that are not on disk yet. A disk that refuses (full, read-only) loses none of them: they
 // are tried again with every turn, in order, and page and health say so.
 func (s *Station) commit() error {
-	if len(s.unsaid) == 0 {
+	alarms := s.line.Alarms()
+	if len(s.unsaid) == 0 && !alarms.Unsaved() {
 		return nil
 	}
 	err := s.ledger.Commit(func(tx *ledger.Tx) error {
-		changed := false
+		changed := alarms.Unsaved()
 		for i := range s.unsaid {
 			if s.unsaid[i].act != nil {
 				if err := tx.Act(*s.unsaid[i].act); err != nil {
@@ -171,29 +179,29 @@ func (s *Station) commit() error {
 		if err := tx.PutDoc(docLine, s.line.Memory()); err != nil {
 			return err
 		}
-		return tx.AlarmSnapshot(s.line.Alarms().Snapshot())
+		return tx.AlarmSnapshot(alarms.Snapshot())
 	})
 	if err != nil {
 		s.desk.say("ledger", fmt.Sprintf("%d entries of the alarm journal are not on disk yet and were not sent: %v", len(s.unsaid), err))
 		return err
 	}
+	alarms.Saved()
 	s.desk.say("ledger", "")
 	s.desk.mu.Lock()
-	s.desk.pointsAt = time.Time{}
 	for i := range s.unsaid {
 		if s.unsaid[i].act != nil {
 			continue
 		}
 		a := &s.unsaid[i].said
-		s.desk.note(*a)
+		s.desk.kept = a.ID
 		s.log.Info("alarm", "id", a.ID, "point", a.Key, "from", a.From, "to", a.To, "severity", a.Severity, "said", a.Sentence)
 	}
 	s.desk.mu.Unlock()
-	clear(s.unsaid)
-	s.unsaid = s.unsaid[:0]
-	if s.pub != nil {
+	if s.pub != nil && len(s.unsaid) > 0 {
 		s.pub.Wake()
 	}
+	clear(s.unsaid)
+	s.unsaid = s.unsaid[:0]
 	return nil
 }
 
@@ -302,7 +310,7 @@ func (d *desk) renew(findings []wire.Finding, at time.Time) (due []wire.Alarm) {
 			before = a.At
 		}
 		named := f.Valve != "" && d.named[a.Key] != f.Valve
-		if at.Sub(before).Abs() < renewEvery && !named {
+		if at.Sub(before).Abs() < renewEvery && !named || a.ID > d.kept {
 			continue
 		}
 		a.Sentence, a.Detail, a.Renewed = f.Sentence, *f, at.UTC()

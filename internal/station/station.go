@@ -140,16 +140,10 @@ func Open(o Options) (_ *Station, err error) {
 
 // openLine restores what a restart must not forget: alarm states, baseline, learnt windows.
 func (s *Station) openLine() error {
-	alarms := alarm.New(AlarmTiming(s.sk))
-	var snap alarm.Snapshot
-	if ok, err := s.ledger.AlarmSnapshot(&snap); err != nil {
+	alarms, err := restoreAlarms(s.ledger, AlarmTiming(s.sk))
+	if err != nil {
 		return err
-	} else if ok {
-		if err := alarms.Restore(snap); err != nil {
-			return err
-		}
 	}
-	alarms.GoOnAfter(s.ledger.Stats().LastJournal)
 	base, err := s.baseline()
 	if err != nil {
 		return err
@@ -182,6 +176,21 @@ func (s *Station) openLine() error {
 		return err
 	}
 	return s.resumeLearning()
+}
+
+// restoreAlarms gives the alarm points as they stood with the newest transition of the journal.
+func restoreAlarms(l *ledger.Ledger, cfg alarm.Config) (*alarm.Annunciator, error) {
+	a := alarm.New(cfg)
+	var snap alarm.Snapshot
+	if ok, err := l.AlarmSnapshot(&snap); err != nil {
+		return nil, err
+	} else if ok {
+		if err := a.Restore(snap); err != nil {
+			return nil, err
+		}
+	}
+	a.GoOnAfter(l.Stats().LastJournal)
+	return a, nil
 }
 
 // newestEntry is the time of the newest entry of the journal; zero when it is empty.
