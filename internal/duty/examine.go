@@ -41,10 +41,17 @@ const (
 	mostZero     = 0.03 // pressure zero, share of suction pressure
 )
 
+// What an end without a like may show, suction and discharge: how much more than its other group, per cent of
+// throughput, and how far its late exponents may lie apart in the leak's direction.
+var (
+	aloneMore     = [2]float64{2.0, 0.8}
+	aloneExponent = [2]float64{0.015, 0.008}
+)
+
 // Examine looks for a fault that was there already while a baseline was learnt: areas, late exponents, flow balance, leak
 // noise, discharge temperature, each held against the other end, the twin throw of the stage, or an absolute limit. k
 // gives the gas's volume exponent at a throw's duty; NaN where it is not known, then the exponents are not held against
-// it. touched limits it to a renewal's features; nil: all.
+// it.
 //
 // A fault that is equal in both ends of a cylinder and in its twins is seen only above the absolute limits.
 func (b *Baseline) Examine(layout measure.Layout, k func(throw int, rpm, ps, pd float64) float64) []Doubt {
@@ -127,7 +134,11 @@ func (x *examined) group(b *Baseline, end, g int) (Doubt, bool) {
 		d.Evidence = []string{fmt.Sprintf("leak area reads %.1f %% of throughput, wall heat explains %.1f %% at the most", area, mostPercent)}
 		return d, true
 	}
-	for _, o := range x.likes(b, end) {
+	likes := x.likes(b, end)
+	if len(likes) == 0 {
+		return x.alone(d, end, g)
+	}
+	for _, o := range likes {
 		part := "." + endNames[o.end]
 		their := o.x.at(part+"."+groupNames[g], "leak_percent")
 		if math.IsNaN(their) {
@@ -156,6 +167,24 @@ func (x *examined) group(b *Baseline, end, g int) (Doubt, bool) {
 	return d, false
 }
 
+// alone holds the groups of an end that has no like against each other. The rings of a single-acting cylinder leak as
+// its suction group does, and more is allowed there; wall heat makes the late compression exponent the lesser one.
+func (x *examined) alone(d Doubt, end, g int) (Doubt, bool) {
+	part := "." + endNames[end]
+	area, other := x.at(part+"."+groupNames[g], "leak_percent"), x.at(part+"."+groupNames[1-g], "leak_percent")
+	n := x.at(part, "n_comp_late") - x.at(part, "n_exp_late")
+	if more := area - other; !(more > aloneMore[g]) || !(signs[g]*n > aloneExponent[g]) {
+		return d, false
+	}
+	d.Text = "it may leak already"
+	if g == 0 {
+		d.Text = "it or the rings may leak already"
+	}
+	d.Evidence = []string{fmt.Sprintf("leak area reads %.1f %% of throughput, the end's %s group %.1f %%", area, groupNames[1-g], other),
+		fmt.Sprintf("late exponents, compression less expansion, %+.3f", n)}
+	return d, true
+}
+
 // like is another end whose healthy readings should be much the same.
 type like struct {
 	x   *examined
@@ -165,7 +194,10 @@ type like struct {
 // likes gives the cylinder's other end, then the same end of the throws that have the same pressures and the same size:
 // told by their suction pressure, ratio and indicated work.
 func (x *examined) likes(b *Baseline, end int) []like {
-	out := []like{{x, 1 - end}}
+	var out []like
+	if !math.IsNaN(x.at("."+endNames[1-end], "n_comp_late")) {
+		out = append(out, like{x, 1 - end})
+	}
 	for i := range b.Cells {
 		c := &b.Cells[i]
 		if c.Throw == x.c.Throw || c.Step != x.c.Step || c.Inferred {
