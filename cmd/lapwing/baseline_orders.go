@@ -16,7 +16,6 @@ func (b *baselines) ordering(cmd *cobra.Command, o *wire.Order) *cobra.Command {
 
 func (b *baselines) learnCommand() *cobra.Command {
 	o := wire.Order{Verb: wire.VerbLearnStart}
-	var add bool
 	cmd := &cobra.Command{
 		Use: "learn", Short: "Declare the machine healthy from now on and learn it", Args: cobra.NoArgs,
 		Long: `learn starts a learning run over the next steady turns. Run the machine through the load steps,
@@ -25,15 +24,12 @@ by itself; what it gave then waits for accept or drop, with whatever is doubtful
 With --add the baseline in force stays, and load steps that it has not seen are added to it.`,
 		Example: `  lapwing baseline learn --turns 3000 --by "R. Example" --reason "valves overhauled, leak test passed"`,
 		RunE: func(cmd *cobra.Command, _ []string) error {
-			if add {
-				o.Subject = "load-steps"
-			}
 			return b.give(cmd.Context(), cmd.OutOrStdout(), o)
 		},
 	}
 	cmd.Flags().IntVar(&o.Turns, "turns", 600, "steady turns of every throw, 45 at least")
 	cmd.Flags().BoolVar(&o.Auto, "accept", false, "put it in force at its end without another word")
-	cmd.Flags().BoolVar(&add, "add", false, "add load steps to the baseline in force")
+	cmd.Flags().BoolVar(&o.Add, "add", false, "add load steps to the baseline in force")
 	return b.ordering(cmd, &o)
 }
 

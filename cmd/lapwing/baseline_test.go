@@ -160,7 +160,7 @@ func TestBaselineOrders(t *testing.T) {
 		want wire.Order
 	}{
 		{[]string{"learn", "--by", "A", "--turns", "100", "--reason", "overhauled"}, wire.Order{Verb: wire.VerbLearnStart, By: "A", Turns: 100, Reason: "overhauled"}},
-		{[]string{"learn", "--by", "A", "--add", "--accept"}, wire.Order{Verb: wire.VerbLearnStart, By: "A", Turns: 600, Subject: "load-steps", Auto: true}},
+		{[]string{"learn", "--by", "A", "--add", "--accept"}, wire.Order{Verb: wire.VerbLearnStart, By: "A", Turns: 600, Add: true, Auto: true}},
 		{[]string{"renew", "t1.he.s1", "--by", "A"}, wire.Order{Verb: wire.VerbRenew, By: "A", Turns: 600, Subject: "t1.he.s1"}},
 		{[]string{"accept", "--by", "A"}, wire.Order{Verb: wire.VerbLearnAccept, By: "A"}},
 	} {

@@ -39,10 +39,7 @@ func (s *Station) learnOrder(o Order) (done, error) {
 	var err error
 	switch o.Verb {
 	case wire.VerbLearnStart:
-		p := LearnPlan{Steady: o.Turns, By: o.By, Note: o.Reason, Subject: o.Subject, Propose: !o.Auto}
-		if o.Subject == addSubject {
-			p.Subject, p.Add = "", true
-		}
+		p := LearnPlan{Steady: o.Turns, By: o.By, Note: o.Reason, Subject: o.Subject, Add: o.Add, Propose: !o.Auto}
 		if err = s.line.StartLearning(p); err == nil {
 			d.said = fmt.Sprintf("a learning run has begun: %d steady turns", s.line.learn.Steady)
 			if p.Propose {
@@ -84,9 +81,6 @@ func (s *Station) learnOrder(o Order) (done, error) {
 	}
 	return d, nil
 }
-
-// addSubject as the subject of learn-start adds load steps to the baseline in force.
-const addSubject = "load-steps"
 
 // proposed tells that a run has ended and waits.
 func (s *Station) proposed(b *duty.Baseline) {
