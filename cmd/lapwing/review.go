@@ -22,7 +22,12 @@ measures), one per finding and per alarm transition, and a summary on the termin
 samples with the same process values give the same turn records as the live daemon, bit for bit.
 Times (t_s) are seconds from the first sample of the recording, also those of the process file.
 
-Without --learn (or --baseline) there is nothing to compare with: turns are measured, not judged.
+A pulled clip has a .state file beside it: what the live line knew at its first sample, baseline and
+alarm states too. The review goes on from there, and its records are the live ones bit for bit, also
+turn numbers and times. It fits the version of the program that took it; --cold does without.
+
+Without a state and without --learn (or --baseline) there is nothing to compare with: turns are
+measured, not judged.
 Pressures in the process file are absolute; its columns are those of a pulled clip.
 
 With --why FILE it also writes, for every turn and throw, what it was compared with and which measures were
@@ -56,6 +61,8 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 	f.StringVar(&learn, "learn", "", "turns declared healthy, FIRST:END (END not included), e.g. 0:200")
 	f.StringVar(&o.Baseline, "baseline", "", "baseline file to judge by (JSON), instead of learning")
 	f.StringVar(&o.SaveBaseline, "save-baseline", "", "write the learnt baseline here")
+	f.StringVar(&o.State, "state", "", "state of the line to go on from; without it the .state file beside the recording")
+	f.BoolVar(&o.Cold, "cold", false, "start without a state, as if the monitor had just been switched on")
 	f.StringVar(&out, "out", "", "file for the records, one JSON object a line; - for standard output")
 	f.StringVar(&o.WhyFile, "why", "", "file for the reasons: what each turn was compared with, and how every hypothesis was weighed (JSON lines)")
 	_ = cmd.MarkFlagRequired("skid")

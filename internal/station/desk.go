@@ -211,7 +211,7 @@ func (s *Station) protect(t *alarm.Transition) string {
 		return "" // what comes back into view was raised long ago, perhaps in a run with other sample numbers
 	}
 	from := max(0, t.Seq0-int64(s.sk.Tape.Pre.Seconds()*s.info.Rate))
-	c, err := s.tape.Protect(tape.Clip{
+	c, err := s.cut(tape.Clip{
 		ID:     fmt.Sprintf("%s-%d", t.At.UTC().Format("20060102T150405Z"), t.ID),
 		Reason: fmt.Sprintf("alarm %d: %s %s, %s", t.ID, t.Subject, t.Kind, t.Severity), AlarmID: t.ID,
 		From: from, To: t.Seq1 + int64(s.sk.Tape.Post.Seconds()*s.info.Rate),

@@ -207,7 +207,7 @@ func (s *Station) cutClip(o Order, now time.Time) (done, error) {
 	if from = max(from, s.first); to <= from {
 		return done{}, errors.New("nothing of that time has been recorded by this run of the monitor")
 	}
-	c, err := s.tape.Protect(tape.Clip{ID: now.UTC().Format("20060102T150405Z") + "-hand-" + strconv.FormatUint(s.lastAct, 10),
+	c, err := s.cut(tape.Clip{ID: now.UTC().Format("20060102T150405Z") + "-hand-" + strconv.FormatUint(s.lastAct, 10),
 		Reason: fmt.Sprintf("cut by hand: %s", o.Label), From: from, To: to})
 	if err == nil && c.Label == "" {
 		err = s.tape.Keep(c.ID, o.Label)

@@ -23,6 +23,8 @@ type ReviewOptions struct {
 	SkidFile, Recording, ProcessCSV string
 	LearnFrom, LearnTo              int64 // turns declared healthy, LearnTo not included; both 0: none
 	Baseline, SaveBaseline          string
+	State                           string    // state of the line at the recording's first sample; "": the one beside the recording, if any
+	Cold                            bool      // start without a state, as if the machine had just been switched on
 	OutFile                         string    // one JSON record a line; made only once all inputs are found good
 	Out                             io.Writer // the same, where there is no OutFile; nil: none
 	WhyFile                         string    // why things were found, or were not: a line a turn and throw, and one a block
@@ -68,8 +70,9 @@ func Review(ctx context.Context, o ReviewOptions) (err error) {
 	if r.line, err = NewLine(sk, src.Info(), r.held.at, LearnPlan{From: o.LearnFrom, To: o.LearnTo}, base, alarm.New(AlarmTiming(sk))); err != nil {
 		return err
 	}
-	r.line.crew = newCrew()
-	defer r.line.crew.close()
+	crew := newCrew()
+	defer crew.close()
+	r.line.crew = crew
 	if o.OutFile != "" {
 		f, err := create(o.OutFile, o.SkidFile, o.Recording, o.ProcessCSV, o.Baseline)
 		if err != nil {
@@ -92,6 +95,9 @@ func Review(ctx context.Context, o ReviewOptions) (err error) {
 		r.line.records = Heads
 	}
 	r.remark(base)
+	if err := r.resume(crew); err != nil {
+		return err
+	}
 	began := time.Now()
 	err = errors.Join(r.run(ctx), r.learnt())
 	if o.Summary != nil {
@@ -177,6 +183,35 @@ func (r *review) remark(base *duty.Baseline) {
 	}
 }
 
+// resume goes on from the state of the line that lies beside a clip, unless something else was asked for.
+func (r *review) resume(c *crew) error {
+	path := r.o.State
+	if path == "" {
+		path = stateBeside(r.o.Recording)
+	}
+	switch {
+	case r.o.Cold || path == "":
+		return nil
+	case r.o.State == "" && (r.o.Baseline != "" || r.line.learn.wanted()):
+		r.sum.remarks = append(r.sum.remarks, "state: not used, since another baseline was asked for: the first turns differ from the live ones")
+		return nil
+	}
+	restore, remark, err := openResume(path, r.sk, r.src.Info(), r.src.Meta().Seq0)
+	if err != nil {
+		return err
+	}
+	records := r.line.records
+	if err := restore(r.line, r.held); err != nil {
+		return err
+	}
+	r.line.goOn(records, c)
+	if remark == "" {
+		remark = "state: goes on from that of the live line, bit for bit"
+	}
+	r.sum.remarks = append(r.sum.remarks, remark)
+	return nil
+}
+
 func (r *review) run(ctx context.Context) error {
 	var failed error
 	emit := func(o *Output) {
@@ -226,7 +261,7 @@ func (r *review) run(ctx context.Context) error {
 
 // learnt keeps the baseline, or says why a learning run that was asked for gave none.
 func (r *review) learnt() error {
-	if !r.line.learn.wanted() {
+	if !(LearnPlan{From: r.o.LearnFrom, To: r.o.LearnTo}).wanted() {
 		return nil
 	}
 	switch {

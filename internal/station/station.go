@@ -63,6 +63,7 @@ type Station struct {
 	progress atomic.Int64 // samples through the line
 	dropped  atomic.Int64 // blocks the line had no room for
 	desk     desk
+	states   states
 	learning learningDesk
 	orders   chan *request
 	ended    chan struct{} // closed when no order is carried out any more
@@ -148,7 +149,7 @@ func (s *Station) openLine() error {
 	if err != nil {
 		return err
 	}
-	plan := LearnPlan{Steady: s.o.Learn}
+	plan := LearnPlan{Steady: s.o.Learn, Note: "declared healthy with --learn"}
 	s.line, err = NewLine(s.sk, s.info, nil, plan, base, alarms)
 	if err != nil && base != nil && s.o.Learn == 0 {
 		// A baseline learnt with other features is kept on disk and not used.
@@ -376,6 +377,7 @@ func cloneBlock(b *acq.Block) acq.Block {
 func (s *Station) compute(queue <-chan *parcel) error {
 	h := newHeld()
 	s.line.proc = h.at
+	stateless := false
 	var failing error // of the last turn: said once when it begins, and at the end if it lasts
 	emit := func(o *Output) {
 		err := s.take(o)
@@ -415,6 +417,10 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		s.progress.Add(int64(p.block.N))
 		end := p.block.Seq0 + int64(p.block.N)
 		s.pass(p.block.Seq0, end)
+		if err := s.states.note(end, s.info.Rate, s.sk.Tape.Pre, s.sk, s.line, h); err != nil && !stateless {
+			stateless = true // clips without a state are clips all the same
+			s.log.Error("clips begin without the state of the line", "err", err)
+		}
 		if end-shown >= int64(s.info.Rate) {
 			shown = end // a machine that stands still gives no turns: its snapshot is renewed all the same
 			s.publish(&Output{}, s.line.utc(float64(end)/s.info.Rate))
