@@ -38,6 +38,7 @@ const (
 	eTExcess
 	eLeakZero
 	// For the eye.
+	eTDischarge
 	eSuctionExpected
 	eDischargeExpected
 	eUndershoot
@@ -149,6 +150,8 @@ func endDefs() [endCount]def {
 		eLeakZero: {name: "leak_zero_bar", unit: "bar", class: Pressure, scale: bar, what: "pressure zero that the leak fit finds: the transducer reads this much too high",
 			source: srcLeaks, valid: "leak fit", unc: "turn 0.3 %, block 0.1 % of suction pressure; follows the line transmitters"},
 
+		eTDischarge: {name: "t_discharge_c", unit: "°C", class: Temperature, scale: one, shift: zeroC, what: "discharge temperature of the stage, as measured",
+			source: "process value", valid: "discharge temperature known, the end delivers", unc: "thermometer; lags a change of load by minutes", eye: true},
 		eSuctionExpected: {name: "suction_expected_deg", unit: "°", class: Pressure, scale: one, what: "suction opening of a sealed cylinder",
 			how: "where V_close (p_close/p_open)^(1/KV) lies, from this turn's plateaus", source: "windows.md 3", valid: "plateaus and KV known", unc: "KV by 0.01: 0.3°", eye: true},
 		eDischargeExpected: {name: "discharge_expected_deg", unit: "°", class: Pressure, scale: one, what: "discharge opening of a sealed cylinder",

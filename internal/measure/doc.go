@@ -153,6 +153,8 @@
 //		source: methods.md 1.1. there when: discharge temperature known. uncertain by: thermometers; lags a change of load by minutes
 //	leak_zero_bar [bar, pressure] pressure zero that the leak fit finds: the transducer reads this much too high
 //		source: leaks.md. there when: leak fit. uncertain by: turn 0.3 %, block 0.1 % of suction pressure; follows the line transmitters
+//	t_discharge_c [°C, temperature] discharge temperature of the stage, as measured
+//		source: process value. there when: discharge temperature known, the end delivers. uncertain by: thermometer; lags a change of load by minutes
 //	suction_expected_deg [°, pressure] suction opening of a sealed cylinder: where V_close (p_close/p_open)^(1/KV) lies, from this turn's plateaus
 //		source: windows.md 3. there when: plateaus and KV known. uncertain by: KV by 0.01: 0.3°
 //	discharge_expected_deg [°, pressure] discharge opening of a sealed cylinder: likewise

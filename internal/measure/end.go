@@ -107,7 +107,7 @@ func (m *Measurer) levels(c *throwCtx, e, at int, w *window.End) {
 	if known(in.LinePs, in.LinePd) {
 		c.dst.set(at+eRatioLine, in.LinePd/in.LinePs)
 	}
-	for _, k := range []int{ePd, eRatio, eTAdiabatic, eTExcess} {
+	for _, k := range []int{ePd, eRatio, eTAdiabatic, eTExcess, eTDischarge} {
 		c.dst.absent(at+k, whyNotDeliver)
 	}
 	if w.State == window.NotDelivering {
@@ -115,6 +115,10 @@ func (m *Measurer) levels(c *throwCtx, e, at int, w *window.End) {
 	}
 	c.dst.set(at+ePd, w.Pd)
 	c.dst.set(at+eRatio, w.Pd/w.Ps)
+	c.dst.absent(at+eTDischarge, whyNoDischargeT)
+	if known(in.Td) {
+		c.dst.set(at+eTDischarge, in.Td)
+	}
 	c.dst.absent(at+eTAdiabatic, whyGas)
 	c.dst.absent(at+eTExcess, whyGas)
 	if t2 := adiabatic(in, w); known(t2) {
