@@ -16,8 +16,9 @@ func TestFaintTeeth(t *testing.T) {
 		{"36-1, slow", func(s *cogs) { s.wheel, s.rpm, s.rate, s.seconds = Wheel{Teeth: 36, Missing: 1}, 200, 20000, 6 }},
 		{"12+1, coil", func(s *cogs) { s.coil, s.wheel = true, Wheel{Teeth: 12, Extra: true} }},
 	} {
-		for _, over := range []float64{200, 60, 40, 30, 25, 20, 15, 10} {
+		for _, over := range []float64{200, 40, 20, 10} {
 			s := usualCogs()
+			s.seconds = 2
 			c.set(&s)
 			s.noise = math.Abs(s.height) / over
 			got, st := frames(t, s.config(), cutUp(s.signal(), 512))
@@ -28,7 +29,7 @@ func TestFaintTeeth(t *testing.T) {
 				}
 			}
 			ratio := st.Height / st.Noise
-			if read := ratio / over; !(read > 0.95 && read < 2) {
+			if read := ratio / over; !(read > 0.8 && read < 2.2) {
 				t.Errorf("%s, swing %g × noise: said to be %.1f ×", c.name, over, ratio)
 			}
 			if hurt > 0 && ratio > st.Least || hurt == 0 && ratio < st.Least/2 {

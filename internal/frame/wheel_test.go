@@ -128,6 +128,7 @@ func TestTeethAtAnySpeed(t *testing.T) {
 	} {
 		for _, fixed := range []bool{false, true} {
 			s := usualCogs()
+			s.seconds = 2
 			set(&s)
 			t.Run(name, func(t *testing.T) {
 				cfg := s.config()

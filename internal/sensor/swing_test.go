@@ -22,7 +22,7 @@ func TestHealthyUnderSwings(t *testing.T) {
 	runs := []struct {
 		skid    string
 		seconds float64
-	}{{"biomethane-two-throw.yaml", 5.5}}
+	}{{"biomethane-two-throw.yaml", 5}}
 	whole := os.Getenv("LAPWING_LONG") != ""
 	if whole {
 		runs[0].seconds = 150
