@@ -19,10 +19,10 @@ var overlapping = []struct {
 	valves  string
 }{{0, window.SuctionOpens, "t1.he.suction.opens", "t1.he.s"}, {1, window.DischargeOpens, "t1.ce.discharge.opens", "t1.ce.d"}}
 
-func overlapRun(seed uint64, rpm, seconds float64) windowtest.Run {
+func overlapRun(seed uint64, rpm, from, seconds float64) windowtest.Run {
 	return windowtest.Run{Ratio: 2.2, RPM: rpm, Seconds: seconds, Seed: seed, Changes: []model.Change{
-		{At: 2.6, What: model.LoadStep, To: windowtest.Pocket},
-		{At: 3, Over: seconds - 3, What: model.DischargePressure, Where: "1", To: 20e5 * 4.4}}}
+		{At: from, What: model.LoadStep, To: windowtest.Pocket},
+		{At: from + .4, Over: seconds - from - .4, What: model.DischargePressure, Where: "1", To: 20e5 * 4.4}}}
 }
 
 type pairTurn struct {
@@ -83,14 +83,17 @@ func TestOverlappingEventsAreToldApart(t *testing.T) {
 	}
 	gaps := []float64{0.4, 0.8, 1.3, 2, 3, 4, math.Inf(1)}
 	cells := make([]cell, len(gaps))
-	seeds, speeds, seconds := []uint64{2}, []float64{900}, 5.4
+	seeds, speeds, from, seconds := []uint64{2}, []float64{1200}, 1.7, 3.4
 	if *sweep {
-		seeds, speeds, seconds = []uint64{1, 2, 3, 4, 5, 6}, []float64{600, 900}, 40
+		seeds, speeds, from, seconds = []uint64{1, 2, 3, 4, 5, 6}, []float64{600, 900}, 2.6, 40
 	}
 	for _, rpm := range speeds {
 		for _, seed := range seeds {
-			r := overlapRun(seed, rpm, seconds)
-			full, truth := hearPair(t, r, -1), [2]map[int64]pairTurn{hearPair(t, r, 0), hearPair(t, r, 1)}
+			r := overlapRun(seed, rpm, from, seconds)
+			full, truth := hearPair(t, r, -1), [2]map[int64]pairTurn{hearPair(t, r, 0)}
+			if *sweep {
+				truth[1] = hearPair(t, r, 1)
+			}
 			for n, p := range full {
 				k := 0
 				for !(math.Abs(p.gap) < gaps[k]) && k < len(gaps)-1 {
@@ -100,7 +103,8 @@ func TestOverlappingEventsAreToldApart(t *testing.T) {
 				c.n++
 				for i := range p.impact {
 					c.sharing[i][p.sharing[i]]++
-					if d := p.impact[i] - truth[i][n].impact[i]; !math.IsNaN(d) {
+					one, known := truth[i][n] // only the first event's truth is played every day
+					if d := p.impact[i] - one.impact[i]; known && !math.IsNaN(d) {
 						c.booked[i]++
 						c.sum[i] += d
 						c.sq[i] += d * d

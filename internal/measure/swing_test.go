@@ -34,7 +34,7 @@ func TestOpeningsUnderLoadSwings(t *testing.T) {
 	subjects := []string{"t1.he.suction.opens", "t1.he.discharge.opens", "t1.ce.suction.opens", "t1.ce.discharge.opens"}
 	var late, plain, norm [4][]float64
 	perDeg := [4][]float64{}
-	seconds, least := 7.0, 40
+	seconds, least := 4.5, 25
 	if *sweep {
 		seconds, least = 120, 500
 	}
@@ -93,21 +93,26 @@ func TestOpeningsUnderLoadSwings(t *testing.T) {
 // A leak of 1 % of an end's delivery is heard in its dwell: at least 2 dB, whatever the valve's coupling (the model draws
 // it between 0.7 and 1.3 of the usual). vibration.md section 3 has 3.0 to 3.9 dB on another model; the model's hiss was
 // set by those figures, so the mean is no check, but the least and the weights are.
+// onePercent are the holes in mm² of head-end suction, discharge, crank-end suction, discharge that cost 1 %.
+var onePercent = [4]float64{2.79, 1.58, 2.30, 1.52}
+
 func TestOnePercentLeakIsHeard(t *testing.T) {
-	base := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 1.6, Seed: 3}
-	healthy := measured(t, base)
+	healthy := measured(t, base())
 	paths := []struct{ valve, subject string }{{"t1.he.s1", "t1.he.suction"}, {"t1.he.d1", "t1.he.discharge"}, {"t1.ce.s1", "t1.ce.suction"}, {"t1.ce.d1", "t1.ce.discharge"}}
 	least, rounds := 2.0, 1
 	if *sweep {
 		rounds = 2
 	}
 	for i, p := range paths {
+		if !*sweep && (i == 1 || i == 2) { // the loudest and the quietest will do
+			continue
+		}
 		// Size the hole so that 1 % of what the end delivers goes through it.
-		area, leaked, delivered := [4]float64{2.79, 1.58, 2.30, 1.52}[i]*model.MM2, 0.0, 0.0
+		area, leaked, delivered := onePercent[i]*model.MM2, 0.0, 0.0
 		var out *outcome
 		hole := 0.0
 		for range rounds {
-			r := base
+			r := base()
 			r.Changes = []model.Change{{What: model.ValveLeak, Where: p.valve, To: area}}
 			out = measured(t, r)
 			leaked, delivered = 0, 0

@@ -5,25 +5,24 @@ import (
 	"sort"
 	"testing"
 
-	"lapwing/internal/measure"
 	"lapwing/internal/model"
-	"lapwing/internal/window"
-	"lapwing/internal/window/windowtest"
 )
 
 // What the trade takes for granted, asked of the model: common practice, no source.
 func TestFactsOfTheTrade(t *testing.T) {
 	opens := map[float64]float64{}
 	for _, ratio := range []float64{1.6, 2.5, 3.6} {
-		r := windowtest.Run{Ratio: ratio, RPM: 900, Seconds: 1.4, Seed: 11}
+		r := base()
+		if ratio != r.Ratio {
+			r.Ratio, r.Seconds = ratio, 1.1
+		}
 		turns, eight := 0, 0
 		var speed [2][2][]float64 // suction, discharge by opening, closing
-		var at []float64
-		each(t, r, func(_ int64, tn windowtest.Turn, w window.Result, v *measure.Vector, l measure.Layout) {
+		o := measured(t, r)
+		for i := 0; i < len(o.truth); i += 2 {
 			turns++
 			n := 0
-			for e := range 2 {
-				tr := tn.Truth[0][e]
+			for _, tr := range o.truth[i : i+2] {
 				if tr.Rev < 0 {
 					continue
 				}
@@ -39,14 +38,11 @@ func TestFactsOfTheTrade(t *testing.T) {
 			if n == 8 {
 				eight++
 			}
-			if x := v.V[l.Find("t1.he", "suction_opens_deg")]; !math.IsNaN(x) {
-				at = append(at, x)
-			}
-		})
-		if turns < 8 || eight < turns-1 { // the first turn's books may not be whole
+		}
+		if turns < 4 || eight < turns-1 { // the first turn's books may not be whole
 			t.Errorf("ratio %g: %d of %d turns have eight valve events", ratio, eight, turns)
 		}
-		opens[ratio] = mid(at)
+		opens[ratio] = o.get(t, "t1.he", "suction_opens_deg")
 		so, sc, do, dc := mid(speed[0][0]), mid(speed[0][1]), mid(speed[1][0]), mid(speed[1][1])
 		t.Logf("ratio %.1f: head-end suction opens at %.1f°; impacts m/s: suction %.2f opening %.2f closing, discharge %.2f and %.2f",
 			ratio, opens[ratio], so, sc, do, dc)
@@ -72,10 +68,10 @@ func mid(x []float64) float64 {
 
 // The row of packing in the table of directions; the other rows are in TestLeaksOnTheModel.
 func TestPackingLeakMoves(t *testing.T) {
-	base := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 1.3, Seed: 3}
-	healthy := measured(t, base)
-	base.Changes = []model.Change{{What: model.PackingLeak, Where: "t1", To: 10 * model.MM2}}
-	o := measured(t, base)
+	r := base()
+	healthy := measured(t, r)
+	r.Changes = []model.Change{{What: model.PackingLeak, Where: "t1", To: 10 * model.MM2}}
+	o := measured(t, r)
 	for _, k := range []struct {
 		name string
 		sign float64
@@ -100,22 +96,26 @@ func TestYoungLeak(t *testing.T) {
 	noise := [][2]string{{"t1.he.suction", "leak_noise_db"}}
 	all := append(append(append([][2]string(nil), pressure...), event...), noise...)
 	run := func(mm2 float64) [][]float64 {
-		r := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 2, Seed: 3}
+		r := base()
+		if *sweep {
+			r.Seconds = 6
+		}
 		if mm2 > 0 {
 			r.Changes = []model.Change{{What: model.ValveLeak, Where: "t1.he.s1", To: mm2 * model.MM2}}
 		}
+		o := measured(t, r)
 		out := make([][]float64, len(all))
-		each(t, r, func(_ int64, _ windowtest.Turn, _ window.Result, v *measure.Vector, l measure.Layout) {
-			for i, f := range all {
-				if x := v.V[l.Find(f[0], f[1])]; !math.IsNaN(x) {
-					out[i] = append(out[i], x)
-				}
-			}
-		})
+		for i, f := range all {
+			out[i] = o.each[o.layout.Find(f[0], f[1])]
+		}
 		return out
 	}
 	healthy := run(0)
-	for _, mm2 := range []float64{2, 8} {
+	sizes := []float64{onePercent[0]} // played for TestOnePercentLeakIsHeard, too
+	if *sweep {
+		sizes = []float64{2, 8}
+	}
+	for _, mm2 := range sizes {
 		leaky := run(mm2)
 		most := func(from, to int) float64 {
 			top := 0.0
