@@ -137,7 +137,10 @@ func TestLoadSteps(t *testing.T) {
 func TestFaults(t *testing.T) {
 	t.Parallel()
 	mean := func(s Script) (hardest, lift float64) {
-		m := newDemo(t, s, Options{Seed: 1, Rate: 25600})
+		m, err := New(single(), s, Options{Seed: 1, Rate: 25600})
+		if err != nil {
+			t.Fatal(err)
+		}
 		fill(m, 0.5)
 		n := 0.0
 		for _, tr := range m.Truths() {
@@ -155,7 +158,7 @@ func TestFaults(t *testing.T) {
 		t.Errorf("sticking valves open at %.1f° with %.1f m/s, healthy ones at %.1f° with %.1f m/s", l1, v1, l0, v0)
 	}
 	peak := func(s Script) float64 {
-		sk := demo()
+		sk := single()
 		m, err := New(sk, s, Options{Seed: 1})
 		if err != nil {
 			t.Fatal(err)
@@ -221,7 +224,7 @@ func TestProcess(t *testing.T) {
 		t.Fatal(err)
 	}
 	p.CoverLag = 1
-	m, err := New(sk, s, Options{Seed: 1, Params: &p, Rate: 12800})
+	m, err := New(sk, s, Options{Seed: 1, Params: &p, Rate: 8000})
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -1,6 +1,7 @@
 package model
 
 import (
+	"fmt"
 	"math"
 	"slices"
 	"testing"
@@ -8,28 +9,31 @@ import (
 	"lapwing/internal/crank"
 )
 
-// meanOf runs a one-throw demo machine and gives the mean of what look sees in the head end's turns from the third on.
-func meanOf(t *testing.T, s Script, look func(Truth) float64) float64 {
+// headEnds runs a one-throw demo machine and gives the head end's turns from the third on.
+func headEnds(t *testing.T, s Script) (out []Truth) {
 	t.Helper()
-	sk := demo()
-	sk.Throws = sk.Throws[:1]
-	sk.Channels = sk.Channels[:4]
-	m, err := New(sk, s, Options{Seed: 1, Rate: 25600})
+	m, err := New(single(), s, Options{Seed: 1, Rate: 25600})
 	if err != nil {
 		t.Fatal(err)
 	}
-	fill(m, 0.6)
-	sum, n := 0.0, 0.0
+	fill(m, 0.46)
 	for _, tr := range m.Truths() {
 		if tr.End == crank.HE && tr.Rev >= 2 {
-			sum += look(tr)
-			n++
+			out = append(out, tr)
 		}
 	}
-	if n < 3 {
-		t.Fatalf("%g turns", n)
+	if len(out) < 2 {
+		t.Fatalf("%d turns", len(out))
 	}
-	return sum / n
+	return out
+}
+
+func meanOf(ts []Truth, look func(Truth) float64) float64 {
+	sum := 0.0
+	for _, tr := range ts {
+		sum += look(tr)
+	}
+	return sum / float64(len(ts))
 }
 
 // TestValveFaults: each fault of a valve's mechanics does what people know it for (common practice, no source).
@@ -50,6 +54,8 @@ func TestValveFaults(t *testing.T) {
 		}
 		return n
 	}
+	sound := headEnds(t, Script{})
+	ill := map[string][]Truth{} // by script: some are looked at twice
 	for _, c := range []struct {
 		what   string
 		s      Script
@@ -70,7 +76,11 @@ func TestValveFaults(t *testing.T) {
 		{"no wall heat: the discharge opens otherwise, a little", Script{}.Add(0, 0, WallHeat, "", 0), func(tr Truth) float64 { return math.Abs(opens(tr) - 292.467) }, 0.02, 2},
 		{"worn rings: the suction opens earlier", Script{}.Add(0, 0, RingLeak, "t1", 40*MM2), func(tr Truth) float64 { return tr.Suction.Open.Lift }, -20, -1},
 	} {
-		was, is := meanOf(t, Script{}, c.look), meanOf(t, c.s, c.look)
+		key := fmt.Sprint(c.s)
+		if ill[key] == nil {
+			ill[key] = headEnds(t, c.s)
+		}
+		was, is := meanOf(sound, c.look), meanOf(ill[key], c.look)
 		t.Logf("%s: %.3f to %.3f", c.what, was, is)
 		if d := is - was; !(d > c.lo && d < c.hi) {
 			t.Errorf("%s: %.3f became %.3f, a change of %.3f, want %g to %g", c.what, was, is, d, c.lo, c.hi)
@@ -81,7 +91,10 @@ func TestValveFaults(t *testing.T) {
 // TestRecycle: recycled gas comes back warm and the suction pressure rises, slowly, as the discharge thermometer does.
 func TestRecycle(t *testing.T) {
 	t.Parallel()
-	m := newDemo(t, Script{}.Add(0, 0, Recycle, "1", 0.5), Options{Seed: 1, Rate: 12800})
+	m, err := New(single(), Script{}.Add(0, 0, Recycle, "1", 0.5), Options{Seed: 1, Rate: 12800})
+	if err != nil {
+		t.Fatal(err)
+	}
 	fill(m, 0.6)
 	l := m.Process(10).Stages[0]
 	if !(l.Ts > 305 && l.Ts < 335) || !(l.Ps > 8.1e5 && l.Ps < 8.6e5) {
@@ -92,8 +105,8 @@ func TestRecycle(t *testing.T) {
 // TestChannelFaults: every instrument fault shows in its own channel and leaves the others as they were, bit for bit.
 func TestChannelFaults(t *testing.T) {
 	t.Parallel()
-	sk := demo()
-	const n = 8192
+	sk := single()
+	const n = 3072
 	run := func(s Script) [][]int32 {
 		m, err := New(sk, s, Options{Seed: 1})
 		if err != nil {
@@ -153,15 +166,14 @@ func diff(a, b []int32) []int32 {
 // TestMarkFaults: slipped, extra and missing marks, counted as pulses over half their height.
 func TestMarkFaults(t *testing.T) {
 	t.Parallel()
-	sk := demo()
-	sk.Throws, sk.Channels = sk.Throws[:1], sk.Channels[:4]
-	const rate = 12800.0
+	sk := single()
+	const rate = 8000.0
 	up := func(s Script) (at []float64) {
 		m, err := New(sk, s, Options{Seed: 1, Rate: rate})
 		if err != nil {
 			t.Fatal(err)
 		}
-		x := scaled(sk, "mark", collect(m, int(2.5*rate), []int{1000}), 24)
+		x := scaled(sk, "mark", collect(m, int(1.65*rate), []int{1000}), 24)
 		for i := 1; i < len(x); i++ {
 			if x[i-1] < 2.5 && x[i] >= 2.5 {
 				at = append(at, float64(i-1)+(2.5-x[i-1])/(x[i]-x[i-1]))
@@ -171,18 +183,20 @@ func TestMarkFaults(t *testing.T) {
 	}
 	sound := up(Script{})
 	turns := len(sound)
-	if turns < 29 || turns > 31 {
-		t.Fatalf("%d marks in 2.5 s at 740 rev/min", turns)
+	if turns < 19 || turns > 21 {
+		t.Fatalf("%d marks in 1.65 s at 740 rev/min", turns)
 	}
 	slipped := up(Script{}.Add(0, 0, PhaseSlip, "", 1.5))
+	mean := 0.0
 	for i := range slipped {
-		// 1.5° at 740 rev/min; the ripple of 0.3 % and half an edge's width of samples.
-		within(t, "slip", (slipped[i]-sound[i])/rate*740*6, 1.5, 0.1)
+		mean += (slipped[i] - sound[i]) / rate * 740 * 6 / float64(len(slipped))
 	}
-	if n := len(up(Script{}.Add(0, 0, ExtraPulses, "", 0.5))); n < turns+8 || n > turns+22 {
+	// An edge is shorter than a sample here, so a single mark is good to a third of a degree; their mean is better.
+	within(t, "slip", mean, 1.5, 0.1)
+	if n := len(up(Script{}.Add(0, 0, ExtraPulses, "", 0.5))); n < turns+4 || n > turns+16 {
 		t.Errorf("every other turn has an extra pulse: %d marks of %d", n, turns)
 	}
-	if n := len(up(Script{}.Add(0, 0, MissedPulses, "", 0.5))); n < turns-22 || n > turns-8 {
+	if n := len(up(Script{}.Add(0, 0, MissedPulses, "", 0.5))); n < turns-16 || n > turns-4 {
 		t.Errorf("every other mark is missing: %d marks of %d", n, turns)
 	}
 	if n := len(up(Script{}.Add(0, 0, MissedPulses, "", 1))); n > 1 {
@@ -193,8 +207,11 @@ func TestMarkFaults(t *testing.T) {
 // TestFrozenProcess: the readings stay, the machine moves on.
 func TestFrozenProcess(t *testing.T) {
 	t.Parallel()
-	m := newDemo(t, Script{}.Add(0.5, 0, FrozenProcess, "", 1).Add(0.6, 0.1, DischargePressure, "", 25e5).Add(1.6, 0, FrozenProcess, "", 0),
-		Options{Seed: 1, Rate: 12800})
+	s := Script{}.Add(0.5, 0, FrozenProcess, "", 1).Add(0.6, 0.1, DischargePressure, "", 25e5).Add(1.6, 0, FrozenProcess, "", 0)
+	m, err := New(single(), s, Options{Seed: 1, Rate: 8000})
+	if err != nil {
+		t.Fatal(err)
+	}
 	fill(m, 2)
 	within(t, "frozen discharge pressure", m.Process(1.4).Stages[0].Pd, 22e5, 6e3)
 	within(t, "discharge pressure after it", m.Process(1.9).Stages[0].Pd, 25e5, 6e3)

@@ -35,7 +35,7 @@ func TestGasFollowsTheDuty(t *testing.T) {
 		ap := c.Area(crank.HE)
 		p = ideal(p, sk, 2*ap, 2*ap)
 		p.SteadyGas = steady
-		m, err := New(sk, s, Options{Seed: 1, Params: &p})
+		m, err := New(sk, s, Options{Seed: 1, Params: &p, Rate: 25600})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -72,13 +72,13 @@ func TestGasFollowsTheDuty(t *testing.T) {
 // TestGasMap: between its nodes the map keeps to the equation of state, and says where there is no gas.
 func TestGasMap(t *testing.T) {
 	t.Parallel()
-	for _, name := range []string{"pipeline-gas", "hydrogen-makeup", "carbon-dioxide"} {
+	for _, name := range []string{"pipeline-gas", "carbon-dioxide"} {
 		mix, err := gas.Named(name)
 		if err != nil {
 			t.Fatal(err)
 		}
 		g := newGasMap(&skid.Skid{Gas: skid.Gas{Mixture: mix}})
-		for _, l := range []skid.Line{{Ps: 8.3e5, Pd: 21e5, Ts: 309}, {Ps: 11e5, Pd: 32.2e5, Ts: 301.7}} {
+		for _, l := range []skid.Line{{Ps: 11e5, Pd: 32.2e5, Ts: 301.7}} {
 			got, ok := g.at(l)
 			want, err := mix.Duty(l.Ps, l.Ts, l.Pd)
 			if !ok || err != nil {

@@ -56,6 +56,13 @@ func demo() *skid.Skid {
 		MassPiston: 70, MassCrosshead: 50}, 740, 8e5, 22e5, 303, methane(), 2, 2)
 }
 
+// single is its first throw alone: half the work.
+func single() *skid.Skid {
+	sk := demo()
+	sk.Throws, sk.Channels = sk.Throws[:1], sk.Channels[:4]
+	return sk
+}
+
 func methane() gas.Fixed { return gas.Fixed{M: 0.01604, Zs: 0.985, Zd: 0.985, KV: 1.29, KT: 1.27} }
 
 // fill runs a machine for some seconds and gives the last block.

@@ -11,7 +11,7 @@ import (
 func TestLeakNoise(t *testing.T) {
 	t.Parallel()
 	level := func(area float64) (db, lost float64) {
-		sk := demo()
+		sk := single()
 		s := Script{}
 		if area > 0 {
 			s = s.Add(0, 0, ValveLeak, "t1.he.s1", area)

@@ -42,10 +42,17 @@ func TestAnyCutGivesTheSame(t *testing.T) {
 	t.Parallel()
 	s := Script{}.Add(0.003, 0.005, ValveLeak, "t1.he.s1", 30*MM2).Add(0.006, 0, LoadStep, "", 2).Add(0.002, 0.01, Speed, "", 800)
 	const total = 500
-	whole := collect(newDemo(t, s, Options{Seed: 7}), total, []int{total})
+	fresh := func() *Machine {
+		m, err := New(single(), s, Options{Seed: 7})
+		if err != nil {
+			t.Fatal(err)
+		}
+		return m
+	}
+	whole := collect(fresh(), total, []int{total})
 	rapid.Check(t, func(rt *rapid.T) {
 		cuts := rapid.SliceOfN(rapid.IntRange(1, 300), 1, 12).Draw(rt, "cuts")
-		if !same(whole, collect(newDemo(t, s, Options{Seed: 7}), total, cuts)) {
+		if !same(whole, collect(fresh(), total, cuts)) {
 			rt.Fatalf("blocks of %v give other samples than one block", cuts)
 		}
 	})

@@ -15,7 +15,10 @@ func TestWheel(t *testing.T) {
 	t.Parallel()
 	for _, w := range []frame.Wheel{{Teeth: 60, Missing: 2}, {Teeth: 36, Missing: 2, Also: []int{17}}, {Teeth: 24, Extra: true}} {
 		for _, falling := range []bool{false, true} {
-			sk := demo()
+			if falling == w.Extra {
+				continue // the one with the extra tooth rising, the others falling: half the work
+			}
+			sk := single()
 			sk.Phase.Falling, sk.Phase.Wheel, sk.Phase.MarksPerTurn = falling, w, w.Marks()
 			sk.Phase.Ripple = []skid.Ripple{{Order: 1, Amp: 0.004, Phase: 20}, {Order: 2, Amp: 0.01, Phase: 200}}
 			m, err := New(sk, Script{}, Options{Seed: 2})
@@ -31,7 +34,7 @@ func TestWheel(t *testing.T) {
 			if err != nil {
 				t.Fatal(err)
 			}
-			counts := collect(m, int(0.8*m.rate), []int{4096})
+			counts := collect(m, int(0.72*m.rate), []int{4096})
 			var deg, pos []float64
 			turns := 0
 			err = a.Add(&acq.Block{N: len(counts[0]), Counts: counts}, func(f *frame.Frame) {
