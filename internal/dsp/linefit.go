@@ -11,22 +11,21 @@ import "math"
 type LineFit struct {
 	c     float64   // 1/σ²
 	reach int       // samples to either side
-	table []float64 // pairs: the Gaussian, 1 in the middle, and i from −reach to reach
+	table []float64 // the Gaussian from −reach to reach, 1 in the middle
 }
 
 // Set makes σ (samples) and the reach. It allocates only when the reach is longer than ever before.
 func (l *LineFit) Set(sigma float64, reach int) {
 	l.c, l.reach = 1/(sigma*sigma), reach
 	n := 2*reach + 1
-	if cap(l.table) < 2*n {
-		l.table = make([]float64, 2*n, 4*n)
+	if cap(l.table) < n {
+		l.table = make([]float64, n, 2*n)
 	}
-	l.table = l.table[:2*n]
+	l.table = l.table[:n]
 	// Each value from the one before, by a ratio that itself falls by a constant factor: exact for a Gaussian.
 	v, ratio, q := 1.0, math.Exp(-l.c/2), math.Exp(-l.c)
 	for i := range reach + 1 {
-		l.table[2*(reach-i)], l.table[2*(reach+i)] = v, v
-		l.table[2*(reach-i)+1], l.table[2*(reach+i)+1] = float64(-i), float64(i)
+		l.table[reach-i], l.table[reach+i] = v, v
 		v *= ratio
 		ratio *= q
 	}
@@ -69,29 +68,33 @@ func (l *LineFit) plain(dst [2][]float64, pos []float64, x [2][]float64, shift i
 		}
 		r := e * e
 		r *= r
+		// Moments by sums of sums: with S the sum so far, the sum of all S is the sum of (n − j)·h over the samples j = 0 …
+		// n−1, which takes an addition where the product would take two operations more.
 		w := 1.0
 		var m0, m1, m2, a0, b0, a1, b1 float64
 		i := int(c) + shift
 		u, v := x[0][i:], x[1][i:]
-		u, v = u[:len(l.table)/2], v[:len(l.table)/2]
-		for j := range u {
-			h := float64(l.table[2*j] * w)
+		u, v = u[:len(l.table)], v[:len(l.table)]
+		for j, g := range l.table {
+			h := float64(g * w)
 			w = float64(w * r)
-			hj := float64(h * l.table[2*j+1])
 			m0 += h
-			m1 += hj
-			m2 += float64(hj * l.table[2*j+1])
+			m1 += m0
+			m2 += m1
 			a0 += float64(h * u[j])
-			b0 += float64(hj * u[j])
+			b0 += a0
 			a1 += float64(h * v[j])
-			b1 += float64(hj * v[j])
+			b1 += a1
 		}
-		dm := float64(d * m0) // moments about the position
-		s1 := m1 + dm
-		s2 := m2 + float64(d*(m1+m1+dm))
+		// About the position: sample j lies i = j − reach + d = q − (n − j) from it, with n = 2·reach + 1 and q = reach + 1 + d.
+		// s1 is the sum of h·i, s2 of h·i²; m2 is the sum of (n−j)(n−j+1)/2·h.
+		q := float64(l.reach+1) + d
+		qm := float64(q * m0)
+		s1 := qm - m1
+		s2 := float64(q*(qm-(m1+m1))) + ((m2 + m2) - m1)
 		det := float64(m0*s2) - float64(s1*s1)
-		dst[0][k] = (float64(s2*a0) - float64(s1*(b0+float64(d*a0)))) / det
-		dst[1][k] = (float64(s2*a1) - float64(s1*(b1+float64(d*a1)))) / det
+		dst[0][k] = (float64(s2*a0) - float64(s1*(float64(q*a0)-b0))) / det
+		dst[1][k] = (float64(s2*a1) - float64(s1*(float64(q*a1)-b1))) / det
 	}
 }
 

@@ -1,42 +1,57 @@
 #include "go_asm.h"
 #include "textflag.h"
 
-// One more sample at each of four positions. The four samples lie at X bytes beyond R8, R9, R10, R11 in the one signal
-// and SI bytes further in the other; T(BX) holds the Gaussian and the sample's number.
-// Y0 power of r, Y1 r; sums Y2 h, Y3 h·j, Y4 h·j²; Y5 h·u, Y6 h·j·u; Y7 h·v, Y8 h·j·v.
-#define SAMPLE(T, X) \
-	VBROADCASTSD (T)(BX), Y9         \
-	VBROADCASTSD (T+8)(BX), Y10      \
+// The sums after one more sample at each of four positions, u in U and v in V; G(BX) holds the Gaussian.
+// Y0 power of r, Y1 r; Y2 sum of h, Y3 of Y2, Y4 of Y3; Y5 h·u, Y6 of Y5; Y7 h·v, Y8 of Y7.
+#define SUMS(G, U, V) \
+	VBROADCASTSD (G)(BX), Y9         \
 	VMULPD Y0, Y9, Y9                \
 	VMULPD Y1, Y0, Y0                \
-	VMULPD Y10, Y9, Y11              \
-	VMULPD Y10, Y11, Y10             \
 	VADDPD Y9, Y2, Y2                \
-	VADDPD Y11, Y3, Y3               \
-	VADDPD Y10, Y4, Y4               \
-	VMOVSD (X)(R8), X12              \
-	VMOVSD (X)(R10), X13             \
-	VMOVHPD (X)(R9), X12, X12        \
-	VMOVHPD (X)(R11), X13, X13       \
-	VINSERTF128 $1, X13, Y12, Y12    \
-	VMOVSD (X)(R8)(SI*1), X14        \
-	VMOVSD (X)(R10)(SI*1), X15       \
-	VMOVHPD (X)(R9)(SI*1), X14, X14  \
-	VMOVHPD (X)(R11)(SI*1), X15, X15 \
-	VINSERTF128 $1, X15, Y14, Y14    \
-	VMULPD Y12, Y9, Y13              \
-	VMULPD Y12, Y11, Y12             \
-	VMULPD Y14, Y9, Y15              \
-	VMULPD Y14, Y11, Y14             \
-	VADDPD Y13, Y5, Y5               \
-	VADDPD Y12, Y6, Y6               \
-	VADDPD Y15, Y7, Y7               \
-	VADDPD Y14, Y8, Y8
+	VMULPD U, Y9, U                  \
+	VMULPD V, Y9, V                  \
+	VADDPD Y2, Y3, Y3                \
+	VADDPD U, Y5, Y5                 \
+	VADDPD V, Y7, Y7                 \
+	VADDPD Y3, Y4, Y4                \
+	VADDPD Y5, Y6, Y6                \
+	VADDPD Y7, Y8, Y8
 
-// Height of one signal: (s2·a - s1·(b + d·a)) / det, with d Y0, s1 Y9, s2 Y10, det Y11; A becomes the height.
+// Two samples each: those of the one signal lie at R8, R9, R10, R11, those of the other SI bytes further.
+#define TWO \
+	VMOVUPD (R8), X10                       \
+	VMOVUPD (R9), X11                       \
+	VINSERTF128 $1, (R10), Y10, Y10         \
+	VINSERTF128 $1, (R11), Y11, Y11         \
+	VMOVUPD (R8)(SI*1), X12                 \
+	VMOVUPD (R9)(SI*1), X13                 \
+	VINSERTF128 $1, (R10)(SI*1), Y12, Y12   \
+	VINSERTF128 $1, (R11)(SI*1), Y13, Y13   \
+	VUNPCKLPD Y11, Y10, Y14                 \
+	VUNPCKLPD Y13, Y12, Y15                 \
+	VUNPCKHPD Y11, Y10, Y10                 \
+	VUNPCKHPD Y13, Y12, Y12                 \
+	SUMS(0, Y14, Y15)                       \
+	SUMS(8, Y10, Y12)
+
+// The last sample each.
+#define ONE \
+	VMOVSD (R8), X10                 \
+	VMOVSD (R10), X11                \
+	VMOVHPD (R9), X10, X10           \
+	VMOVHPD (R11), X11, X11          \
+	VINSERTF128 $1, X11, Y10, Y10    \
+	VMOVSD (R8)(SI*1), X12           \
+	VMOVSD (R10)(SI*1), X13          \
+	VMOVHPD (R9)(SI*1), X12, X12     \
+	VMOVHPD (R11)(SI*1), X13, X13    \
+	VINSERTF128 $1, X13, Y12, Y12    \
+	SUMS(0, Y10, Y12)
+
+// Height of one signal: (s2·a - s1·(q·a - b)) / det, with q Y0, s1 Y9, s2 Y10, det Y11; A becomes the height.
 #define HEIGHT(A, B) \
 	VMULPD A, Y0, Y12    \
-	VADDPD Y12, B, B     \
+	VSUBPD B, Y12, B     \
 	VMULPD B, Y9, B      \
 	VMULPD A, Y10, A     \
 	VSUBPD B, A, A       \
@@ -114,24 +129,29 @@ series:
 	MOVQ LineFit_reach(DI), R12  // two samples each, and one
 
 two:
-	SAMPLE(0, 0)
-	SAMPLE(16, 8)
-	ADDQ $32, BX
+	TWO
+	ADDQ $16, BX
 	ADDQ $16, R8
 	ADDQ $16, R9
 	ADDQ $16, R10
 	ADDQ $16, R11
 	DECQ R12
 	JNZ two
-	SAMPLE(0, 0)
+	ONE
 
-	VMOVUPD 0(SP), Y0            // d
-	VMULPD Y2, Y0, Y12           // d·m0
-	VADDPD Y12, Y3, Y9           // s1 = m1 + d·m0
+	MOVQ LineFit_reach(DI), BX
+	INCQ BX
+	VCVTSI2SDQ BX, X9, X9
+	VBROADCASTSD X9, Y9
+	VADDPD 0(SP), Y9, Y0         // q = reach + 1 + d
+	VMULPD Y2, Y0, Y12           // q·m0
+	VSUBPD Y3, Y12, Y9           // s1 = q·m0 - m1
 	VADDPD Y3, Y3, Y10
-	VADDPD Y12, Y10, Y10
+	VSUBPD Y10, Y12, Y10
 	VMULPD Y10, Y0, Y10
-	VADDPD Y10, Y4, Y10          // s2 = m2 + d·(m1 + m1 + d·m0)
+	VADDPD Y4, Y4, Y11
+	VSUBPD Y3, Y11, Y11
+	VADDPD Y11, Y10, Y10         // s2 = q·(q·m0 - 2·m1) + (2·m2 - m1)
 	VMULPD Y10, Y2, Y11
 	VMULPD Y9, Y9, Y12
 	VSUBPD Y12, Y11, Y11         // det = m0·s2 - s1·s1
