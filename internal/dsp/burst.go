@@ -10,7 +10,17 @@ func Rectify(dst, src []float64, w int) {
 		panic("dsp: Rectify: dst and src differ in length")
 	}
 	w = max(w, 1)
-	for i := range src {
+	done := 0
+	if n := (len(src) - w + 1) &^ 3; hasAVX2 && n > 0 { // whole fours of outputs with all their samples
+		rectifyPlain(dst[:w-1], src[:w-1], w, 0)
+		rectifyVectors(dst[w-1:], src, n, w)
+		done = w - 1 + n
+	}
+	rectifyPlain(dst, src, w, done)
+}
+
+func rectifyPlain(dst, src []float64, w, from int) {
+	for i := from; i < len(src); i++ {
 		lo := max(0, i-w+1)
 		var s float64 // summed afresh: a running sum would carry the rounding of everything before
 		for _, v := range src[lo : i+1] {

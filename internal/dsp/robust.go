@@ -104,7 +104,7 @@ func upTo(w []float64, p float64) int {
 }
 
 func middle(a, b, c float64) float64 {
-	return math.Max(math.Min(a, b), math.Min(math.Max(a, b), c))
+	return max(min(a, b), min(max(a, b), c))
 }
 
 // TheilSen fits y = a + b*x by the median of the slopes of all pairs with different x; a is the median of y - b*x.

@@ -80,3 +80,8 @@ func expsVectors(dst, x []float64, n int) (done int) { return expsAVX2(&dst[0], 
 
 //go:noescape
 func expsAVX2(dst, x *float64, n int) (done int)
+
+func rectifyVectors(dst, src []float64, n, w int) { rectifyAVX2(&dst[0], &src[0], n, w) }
+
+//go:noescape
+func rectifyAVX2(dst, src *float64, n, w int)

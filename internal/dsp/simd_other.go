@@ -23,3 +23,5 @@ func momentsVectors(m *Moments, from, n int) { momentsPlain(m, from, n) }
 func logsVectors(dst, x []float64, n int) (done int) { return 0 }
 
 func expsVectors(dst, x []float64, n int) (done int) { return 0 }
+
+func rectifyVectors(dst, src []float64, n, w int) {}
