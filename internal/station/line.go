@@ -49,6 +49,7 @@ type Line struct {
 	alarms   *alarm.Annunciator
 	limits   []limitWatch
 	sensors  *sensors
+	readings readings
 	reasons  *reasons    // nil: not kept
 	angles   turn.Config // what turns was made of
 	gauges   *gauges
@@ -65,7 +66,8 @@ type Line struct {
 	part   [][]int32 // scratch of cut
 	conds  []alarm.Condition
 	out    func(*Output)
-	crew   *crew // nil: everything one after the other
+	marked func(turn int64, at float64) // hears of every phase mark that opens a turn; nil: nobody
+	crew   *crew                        // nil: everything one after the other
 	count  Count
 	steady []int
 
@@ -362,6 +364,9 @@ func (l *Line) Flush(emit func(*Output)) {
 }
 
 func (l *Line) frame(f *frame.Frame) {
+	if l.marked != nil {
+		l.marked(f.Turn, f.Mark0)
+	}
 	l.sensors.Declare(l.declares(f.Turn))
 	l.sensors.Frame(f)
 	if l.gauges.changed {
@@ -546,6 +551,7 @@ func (l *Line) decide(t *turn.Turn, o *Output) {
 	now := l.utc(t.Time)
 	conds = l.limitConditions(conds, t)
 	conds = l.sensors.conditions(conds, t.Number, t.Seq1, l.reach())
+	conds = l.readingConditions(conds, t)
 	if l.ref == nil {
 		for i := range l.points {
 			l.reasons.add(i, t, l.points[i], l.notCompared(i), nil, nil)

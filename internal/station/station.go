@@ -162,6 +162,7 @@ func (s *Station) openLine() error {
 	}
 	s.line.crew = newCrew()
 	s.line.reasons = newReasons(len(s.sk.Throws))
+	s.line.marked = func(turn int64, at float64) { s.tape.Mark(tape.Mark{Turn: turn, At: at}) }
 	if s.o.OnTurn == nil {
 		s.line.records = Newest
 	}

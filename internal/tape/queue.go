@@ -10,7 +10,7 @@ import (
 type item struct {
 	block   *acq.Block // a copy
 	process *ProcessRow
-	marks   []float64
+	mark    *Mark
 	flush   chan error
 }
 

@@ -70,3 +70,16 @@ func (s *store) load(g segInfo) (*packed, error) {
 	}
 	return p, nil
 }
+
+// meta reads a segment's description alone.
+func (s *store) meta(g segInfo) (rec []byte, err error) {
+	err = s.view(func(tx *bolt.Tx) error {
+		seg := tx.Bucket(rawBucket).Bucket(bigEndian(g.key))
+		if seg == nil {
+			return errGone
+		}
+		rec = append([]byte(nil), seg.Get(metaKey)...)
+		return nil
+	})
+	return rec, err
+}

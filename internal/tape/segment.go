@@ -40,7 +40,7 @@ type segMeta struct {
 	Source   string       `json:"source,omitempty"`
 	Skid     string       `json:"skid,omitempty"` // SHA-256 of the skid file in force, hex
 	Events   []event      `json:"events,omitempty"`
-	Marks    []float64    `json:"marks,omitempty"`   // phase marks that became known during the segment, sample numbers
+	Marks    []Mark       `json:"marks,omitempty"`   // phase marks that became known during the segment
 	Process  []ProcessRow `json:"process,omitempty"` // the row in force at the start, then those that came
 }
 

@@ -112,12 +112,14 @@ func (t *Tape) Process(seq int64, p skid.Process) {
 	}
 }
 
-// Marks notes phase marks, as sample numbers with fraction. They may come a few turns after their samples.
-func (t *Tape) Marks(at []float64) {
-	if len(at) > 0 {
-		t.queue.put(item{marks: append([]float64(nil), at...)})
-	}
+// Mark is the phase mark that opens a turn.
+type Mark struct {
+	Turn int64   `json:"turn"`
+	At   float64 `json:"at"` // sample number, with fraction
 }
+
+// Mark notes a phase mark. It may come a few turns after its samples.
+func (t *Tape) Mark(m Mark) { t.queue.put(item{mark: &m}) }
 
 // Flush commits all that was appended before it, the open segment too, and fills clips as far as samples have come.
 func (t *Tape) Flush(ctx context.Context) error {

@@ -86,8 +86,8 @@ func (w *writer) handle(it item) {
 	case it.process != nil:
 		w.row = it.process
 		w.cur.Process = append(w.cur.Process, *it.process)
-	case it.marks != nil:
-		w.cur.Marks = append(w.cur.Marks, it.marks...)
+	case it.mark != nil:
+		w.cur.Marks = append(w.cur.Marks, *it.mark)
 	case it.flush != nil:
 		err := w.cut()
 		for w.fillClips(16) {
