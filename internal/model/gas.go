@@ -102,8 +102,11 @@ func (s *stage) follow(m *Machine, l skid.Line, t float64) {
 	if l == s.line && other == s.other && weight == s.weight {
 		return
 	}
-	if l != s.line && m.gases != nil {
-		if g, ok := m.gases.at(l); ok {
+	if l != s.line && m.gases != nil && (l != m.base || m.gas0.R > 0) {
+		if m.gas0.R == 0 {
+			m.gas0, _ = m.gases.at(m.base)
+		}
+		if g, ok := m.gases.at(l); ok && m.gas0.R > 0 {
 			s.real = Gas{R: m.par.Gas.R * (g.R / m.gas0.R), K: m.par.Gas.K + (g.K - m.gas0.K), KT: m.par.Gas.KT}
 			if m.par.Gas.KT != 0 {
 				s.real.KT += g.KT - m.gas0.KT

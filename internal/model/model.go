@@ -61,8 +61,9 @@ type Machine struct {
 	sk    *skid.Skid
 	par   Params
 	plan  plan
-	gases *gasMap // nil: the gas is the same at every duty
-	gas0  Gas     // what gases says of the duty for which Params was made
+	gases *gasMap   // nil: the gas is the same at every duty
+	base  skid.Line // the duty for which Params was made
+	gas0  Gas       // what gases says of it, once that was asked
 
 	rate, dt float64
 	bits     int

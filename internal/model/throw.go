@@ -33,15 +33,8 @@ func (m *Machine) buildStages(sk *skid.Skid) {
 	if !m.par.SteadyGas {
 		m.gases = newGasMap(sk)
 	}
-	if m.gases != nil {
-		base := m.par.Duty
-		if base.Ps == 0 {
-			base = m.plan.line(0, 0)
-		}
-		var ok bool
-		if m.gas0, ok = m.gases.at(base); !ok {
-			m.gases = nil // too near to its dew point to be followed
-		}
+	if m.base = m.par.Duty; m.base.Ps == 0 {
+		m.base = m.plan.line(0, 0)
 	}
 	for i := range m.plan.ps {
 		l := m.plan.line(i, 0)

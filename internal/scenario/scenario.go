@@ -37,6 +37,11 @@ var runs = map[string]maker{
 	"swings":   {"a healthy machine whose load moves all the time; it never ends", swings},
 	"standing": {"the leak is there from the first turn, and is repaired after two minutes", standing},
 	"unsteady": {"as standing, while the load moves all the time", unsteady},
+	"broken":   {"as grow, with a piece that breaks out of a discharge valve", ill("broken")},
+	"sticking": {"as grow, with discharge valves that stick to their seats", ill("sticking")},
+	"rings":    {"as grow, with piston rings that wear", ill("rings")},
+	"drifting": {"as grow, with a pressure transmitter whose zero drifts", ill("zero-drift")},
+	"slipped":  {"as grow, with a shaft mark that comes 1.5° late", ill("slip")},
 }
 
 // Names lists the scenarios.
@@ -118,6 +123,34 @@ func slowness(sk *skid.Skid) float64 { return max(1, 740/sk.Machine.RatedRPM) }
 
 func grow(sk *skid.Skid) Run {
 	f := slowness(sk)
+	r := learnt(sk)
+	r.Script = r.Script.Add(142*f, 25*f, model.ValveLeak, victim(sk), 30*model.MM2)
+	r.Chapters = append(r.Chapters,
+		Chapter{142 * f, fmt.Sprintf("Suction valve %s begins to leak: 30 mm² over %.0f s, while the load goes on moving.", victim(sk), 25*f)},
+		Chapter{167 * f, "The leak has stopped growing."})
+	return r
+}
+
+// ill is grow with another fault.
+func ill(name string) func(sk *skid.Skid) Run {
+	return func(sk *skid.Skid) Run {
+		f := slowness(sk)
+		r := learnt(sk)
+		for _, x := range Faults(sk) {
+			if x.Name == name {
+				r.Script = x.With(r.Script, 142*f, 25*f)
+				r.Chapters = append(r.Chapters, Chapter{142 * f, x.Text})
+				return r
+			}
+		}
+		r.Chapters = append(r.Chapters, Chapter{142 * f, "This machine cannot have that fault."})
+		return r
+	}
+}
+
+// learnt is a run with healthy turns to learn from, then load swings that are judged.
+func learnt(sk *skid.Skid) Run {
+	f := slowness(sk)
 	full, part := float64(sk.Steps[0].Code), float64(second(sk))
 	s := model.Script{Step: sk.Steps[0].Code}
 	s = walk(s, sk, 4*f, 5*f, 1, field) // to 69 f
@@ -128,13 +161,10 @@ func grow(sk *skid.Skid) Run {
 	s = walk(s, sk, 118*f, 4*f, 0.8, []duty{{0.12, 0.02, 0.3}, {-0.1, 0.06, 0.8}, {0, -0.05, 0}})
 	s = s.Add(130*f, 0, model.LoadStep, "", part)
 	s = s.Add(138*f, 0, model.LoadStep, "", full)
-	s = s.Add(142*f, 25*f, model.ValveLeak, victim(sk), 30*model.MM2)
 	s = walk(s, sk, 150*f, 8*f, 0.5, []duty{{0.1, 0, 0}, {-0.1, 0.05, 0.5}, {0, 0, 0}})
 	return Run{Script: s, Duration: 195 * f, Learn: 440, Chapters: []Chapter{
 		{0, "The machine is declared healthy. Lapwing learns what each measure does as the load moves."},
 		{116 * f, "The load moves again: pressures, speed, pockets. The windows follow; nothing may be said."},
-		{142 * f, fmt.Sprintf("Suction valve %s begins to leak: 30 mm² over %.0f s, while the load goes on moving.", victim(sk), 25*f)},
-		{167 * f, "The leak has stopped growing."},
 	}}
 }
 
