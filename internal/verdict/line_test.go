@@ -184,13 +184,12 @@ func (l *line) leaking(t *testing.T, r windowtest.Run, subject string, c model.C
 
 // On the modelled machine at one duty, learnt from some 50 turns: physics that know nothing of this package's tables.
 func TestModelLeaksAtOneDuty(t *testing.T) {
+	if !sweeping() {
+		t.Skip("seconds of the model: run with -sweep; station's TestFieldNamesWhatIsWrong runs always")
+	}
 	l := newLine(windowtest.Run{})
 	l.learn(t, windowtest.Run{Ratio: 2.5, RPM: 1000, Seconds: 4.8, Seed: 1})
-	leaks := modelLeaks[:1]
-	if sweeping() {
-		leaks = modelLeaks
-	}
-	for _, c := range leaks {
+	for _, c := range modelLeaks {
 		l.leaking(t, windowtest.Run{Ratio: 2.5, RPM: 1000, Seconds: 4.2, Seed: 1}, c.subject, c.change)
 	}
 }
@@ -198,6 +197,9 @@ func TestModelLeaksAtOneDuty(t *testing.T) {
 // Springs five times too strong on one group of the modelled machine: its plates flutter. That group is named, and the
 // noise of it accuses no other.
 func TestModelFlutter(t *testing.T) {
+	if !sweeping() {
+		t.Skip("seconds of the model: run with -sweep; TestOtherKinds and TestExtraHitsAreFlutterUnlessHard run always")
+	}
 	l := newLine(windowtest.Run{})
 	at := windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 7.2, Seed: 1}
 	l.learn(t, at)

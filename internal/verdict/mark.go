@@ -5,6 +5,7 @@ import (
 	"slices"
 
 	"lapwing/internal/crank"
+	"lapwing/internal/duty"
 	"lapwing/internal/measure"
 )
 
@@ -171,11 +172,16 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			*pressure = f.vote
 		}
 	}
-	if c.kind == OpeningLate && withdrawn == "" && v.late[c.h].llr >= 1 { // a loss alone may be anything: dirt, gas, speed
+	// A loss alone may be anything: dirt, gas, speed. It counts beside a late impact, or where the impact is not heard
+	// for itself beside a late departure.
+	if unheard := c.kind == OpeningLate && math.IsNaN(v.late[c.h].llr); c.kind == OpeningLate && withdrawn == "" && (unheard || v.late[c.h].llr >= 1) {
 		ep := &b.place.ends[c.end]
 		z := beyondCrossing(j.dev, ep.open[c.group], ep.late[c.group])
 		if d := at(j.dev, ep.loss[c.group]); d != nil && !math.IsNaN(z) {
 			*pressure = votes(math.Min(z, d.Z)) // late and costly
+			if unheard && b.lateAlike(c.group, j.dev) {
+				pressure.most(0, "both ends are late alike: a wrong duty, not two valves")
+			}
 		}
 	}
 	// Hard impacts and late openings are heard, or they are not there: other classes only join in. A leak that is known
@@ -239,6 +245,16 @@ func (b *bench) eitherOf(c *trial, v *heard, llr float64, m *mark) {
 	if q := partner(c.h); v.either[c.h] && llr > 0 && b.place.ends[q/2].works {
 		m.ambiguous = append(m.ambiguous, b.place.path(q))
 	}
+}
+
+// lateAlike tells whether a group's departures are late at both ends.
+func (b *bench) lateAlike(g int, dev []*duty.Deviation) bool {
+	for e := range b.place.ends {
+		if z := beyondCrossing(dev, b.place.ends[e].open[g], b.place.ends[e].late[g]); !(z > 1.5) {
+			return false
+		}
+	}
+	return true
 }
 
 // noMark is a block that says nothing.
