@@ -31,6 +31,8 @@ func (r *recent) centre(scratch []float64) (median, sigma float64) {
 	return median, dsp.MADToSigma * dsp.MedianInPlace(w)
 }
 
+func (r *recent) count() int { return len(r.v) }
+
 // opener is the memory of one end's suction or discharge opening.
 type opener struct {
 	lag      recent  // ms from the departure to the burst's peak
@@ -47,6 +49,8 @@ type endMemory struct {
 	late   float64   // degrees after the dead centre, the last late suction closing; 0: not late
 	missed int       // turns without a late closing found
 	idle   bool      // the last good turn showed no work
+	heard  [2]recent // degrees after the dead centre, loudest and last burst of suction closings at full load
+	lag    recent    // ms from a late suction closing to its burst
 }
 
 // Memory is a tracker's state in plain numbers, for JSON: what a restart should not have to learn again.
@@ -61,6 +65,9 @@ type EndMemory struct {
 	LateDeg        float64    `json:"late_deg,omitempty"`    // last late suction closing, degrees after the dead centre
 	LateMissed     int        `json:"late_missed,omitempty"` // turns since it was seen
 	Idle           bool       `json:"idle,omitempty"`        // the last good turn showed no work
+	LoudestDeg     []float64  `json:"loudest_deg,omitempty"` // suction closings heard at full load, degrees after the dead centre
+	LastDeg        []float64  `json:"last_deg,omitempty"`    // likewise, the last burst of each
+	LateLagMs      []float64  `json:"late_lag_ms,omitempty"` // late closing to impact
 }
 
 // OpenMemory is what was learnt of one opening. Lists are oldest first.
@@ -83,6 +90,7 @@ func (t *Tracker) Snapshot() Memory {
 			ends[e] = EndMemory{
 				DischargeOpens: s.open[Compression].save(), SuctionOpens: s.open[Expansion].save(),
 				LateDeg: s.late, LateMissed: s.missed, Idle: s.idle,
+				LoudestDeg: slices.Clone(s.heard[0].v), LastDeg: slices.Clone(s.heard[1].v), LateLagMs: slices.Clone(s.lag.v),
 			}
 		}
 		m.Throws = append(m.Throws, ends)
@@ -108,6 +116,9 @@ func (t *Tracker) Restore(m Memory) error {
 					return fmt.Errorf("window: restore: throw %d end %d: %w", i, e, err)
 				}
 			}
+			if err := checkList(heardTurns, ends[e].LoudestDeg, ends[e].LastDeg, ends[e].LateLagMs); err != nil {
+				return fmt.Errorf("window: restore: throw %d end %d: %w", i, e, err)
+			}
 			if l := ends[e].LateDeg; !(l >= 0 && l < 180) || ends[e].LateMissed < 0 {
 				return fmt.Errorf("window: restore: throw %d end %d: late closing %g° is none", i, e, l)
 			}
@@ -120,6 +131,9 @@ func (t *Tracker) Restore(m Memory) error {
 			s.open[Compression].load(ends[e].DischargeOpens)
 			s.open[Expansion].load(ends[e].SuctionOpens)
 			s.late, s.missed, s.idle = ends[e].LateDeg, ends[e].LateMissed, ends[e].Idle
+			s.heard[0].v = append(s.heard[0].v[:0], ends[e].LoudestDeg...)
+			s.heard[1].v = append(s.heard[1].v[:0], ends[e].LastDeg...)
+			s.lag.v = append(s.lag.v[:0], ends[e].LateLagMs...)
 		}
 	}
 	return nil
@@ -129,15 +143,23 @@ func (m OpenMemory) check() error {
 	if len(m.LagMs) > lagTurns || len(m.OffsetDeg) > offsetTurns || len(m.RejectedDeg) > reseedTurns {
 		return fmt.Errorf("more turns remembered than are ever kept")
 	}
-	for _, list := range [][]float64{m.LagMs, m.OffsetDeg, m.RejectedDeg, {m.LastDeg}} {
+	if m.Missed < 0 {
+		return fmt.Errorf("missed turns are negative")
+	}
+	return checkList(lagTurns, m.LagMs, m.OffsetDeg, m.RejectedDeg, []float64{m.LastDeg})
+}
+
+// checkList refuses remembered lists that are longer than kept or hold what is no angle or lag.
+func checkList(most int, lists ...[]float64) error {
+	for _, list := range lists {
+		if len(list) > most {
+			return fmt.Errorf("more turns remembered than are ever kept")
+		}
 		for _, v := range list {
 			if math.IsNaN(v) || math.Abs(v) > 1000 {
 				return fmt.Errorf("%g is no remembered angle or lag", v)
 			}
 		}
-	}
-	if m.Missed < 0 {
-		return fmt.Errorf("missed turns are negative")
 	}
 	return nil
 }

@@ -86,7 +86,7 @@ func (t *Tracker) place(th *throw, tt *turn.Throw, e int, out *End) {
 		start := strokeStart(e, s)
 		if w := &out.W[opens(s)]; w.State == Following || w.State == Holding {
 			at := see.at[s]
-			w.Lo, w.Hi = at-lead-u, at+t.tail(&mem.open[s], m)+u+ringMs*m
+			w.Lo, w.Hi = at-lead-u, at+t.tail(&mem.open[s], m)+u
 			if w.State == Holding { // the prediction is good to 2–3° in a load swing
 				w.Lo, w.Hi = w.Lo-3, w.Hi+3
 			}
@@ -100,7 +100,7 @@ func (t *Tracker) place(th *throw, tt *turn.Throw, e int, out *End) {
 		if w.State == Lost || w.State == Idle {
 			continue
 		}
-		lo, hi := closingWindow(s, see.close[s], m)
+		lo, hi := t.closingWindow(mem, s, see.close[s], m)
 		w.Lo, w.Hi = start+lo-u, start+hi+u+ringMs*m
 	}
 	for k := range out.W {
@@ -111,17 +111,18 @@ func (t *Tracker) place(th *throw, tt *turn.Throw, e int, out *End) {
 	}
 }
 
-// tail is how far an opening's window reaches past the departure, degrees: learnt, or wide enough for any valve.
+// tail is how far an opening's window reaches past the departure, degrees: learnt, or wide enough for any valve. The
+// lag is learnt to the burst's peak, which comes after the impact, so nothing is added for the ringing.
 func (t *Tracker) tail(o *opener, m float64) float64 {
 	if len(o.lag.v) < lagLeast {
-		return searchDeg + searchMs*m
+		return searchDeg + (searchMs+ringMs)*m
 	}
 	median, sigma := o.lag.centre(t.buf)
 	return (median+max(0.25, min(4*sigma, 1)))*m + afterPeak
 }
 
 // closingWindow gives the limits of a closing's window after its dead centre; c is the closing found, NaN when none.
-func closingWindow(stroke int, c, m float64) (lo, hi float64) {
+func (t *Tracker) closingWindow(mem *endMemory, stroke int, c, m float64) (lo, hi float64) {
 	if math.IsNaN(c) {
 		c = 0
 	}
@@ -129,9 +130,22 @@ func closingWindow(stroke int, c, m float64) (lo, hi float64) {
 	case stroke == Expansion:
 		return math.Min(-7, c-3), math.Max(3+0.8*m, c+5+0.6*m)
 	case c > lateClosing:
-		return c - 3, c + 4 + 0.5*m
+		if mem.lag.count() < heardLeast {
+			return c - 3, c + 8 + 1.1*m
+		}
+		median, sigma := mem.lag.centre(t.buf)
+		return c - 3, c + math.Max(4+0.5*m, (median+max(0.25, min(4*sigma, 1)))*m+afterPeak)
 	}
-	return math.Min(-9, c-3), math.Max(12+0.5*m, c+8+1.1*m)
+	lo, hi = math.Min(-9, c-3), math.Max(12+0.5*m, c+8+1.1*m)
+	if mem.heard[0].count() >= heardLeast {
+		loudest, scatter := mem.heard[0].centre(t.buf)
+		last, spread := mem.heard[1].centre(t.buf)
+		if scatter <= heardSigma && spread <= heardSigma { // the peak comes up to half a millisecond after the impact
+			lo = math.Min(-9, loudest-heardSpare-0.5*m-scatter)
+			hi = math.Max(hi, last+heardSpare/2+spread)
+		}
+	}
+	return lo, hi
 }
 
 // share marks the windows in which another event of the throw may ring.

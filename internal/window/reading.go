@@ -12,6 +12,7 @@ type reading struct {
 	ps, pd        [2]float64 // Pa, suction and discharge plateau beside the stroke
 	closed        [2]Run
 	open          [2]float64 // degrees, the lasting departure that ends the stroke
+	rise          [2]float64 // degrees from there to riseTimes as much departure
 	close         [2]float64 // degrees after its dead centre, the closing that begins it
 	thermo, meets [2]float64 // degrees, the line extended to the plateau it ends in, and to that which it starts from
 	trapped       [2]float64 // m³
@@ -21,20 +22,25 @@ type reading struct {
 // read finds plateaus, strokes and events.
 func (t *Tracker) read(tr *trace, e int, k float64) reading {
 	nan := [2]float64{math.NaN(), math.NaN()}
-	r := reading{open: nan, close: nan, thermo: nan, meets: nan, trapped: nan, expected: nan}
+	r := reading{open: nan, rise: nan, close: nan, thermo: nan, meets: nan, trapped: nan, expected: nan}
 	comp, exp := strokeStart(e, Compression), strokeStart(e, Expansion)
 	// The plateau each stroke starts from and the one it ends in.
 	r.ps = [2]float64{t.plateau(tr, comp-180+suctionLo, comp-3), t.plateau(tr, exp+suctionLo, exp+plateauEnd)}
 	r.pd = [2]float64{t.plateau(tr, comp+dischargLo, comp+plateauEnd), t.plateau(tr, exp-180+dischargLo, exp-3)}
 	ratio := math.Log(r.pd[Compression] / r.ps[Compression])
-	if ratio < idleRatio {
-		r.idle = whyIdle
-		return r
-	}
 	short := [2]bool{}
 	for s := range r.closed {
 		r.closed[s] = tr.run(s, k)
-		short[s] = tr.drop(r.closed[s]) < idleStroke*ratio
+		drop := tr.drop(r.closed[s])
+		short[s] = drop < idleStroke*ratio
+		// Pulsation may bring the plateaus together; what compresses and expands all the same works.
+		if ratio < idleRatio && drop < idleDrop {
+			r.idle = whyIdle
+		}
+	}
+	if r.idle != "" {
+		r.closed = [2]Run{}
+		return r
 	}
 	if short[Compression] && short[Expansion] && ratio < idleShort {
 		r.idle = whyShortStroke
@@ -49,7 +55,7 @@ func (t *Tracker) read(tr *trace, e int, k float64) reading {
 		var from, before int
 		last[s], from = tr.lastLine(r.closed[s])
 		first[s], before = tr.firstLine(r.closed[s])
-		r.open[s] = tr.opening(s, last[s], from)
+		r.open[s], r.rise[s] = tr.opening(s, last[s], from)
 		r.close[s] = tr.closing(s, first[s], before) - strokeStart(e, s)
 	}
 	// A plateau must not contain its own opening (pocket, high ratio).

@@ -18,13 +18,26 @@ const (
 	sigmas        = 5.0 // and at least this many times the scatter about the line
 	openLasting   = 0.6 // degrees a departure must last
 	closeLasting  = 1.0
+	closeMean     = 2.0 // degrees averaged for a suction closing
 
-	// The departure comes this much after the valve has lifted to 10 %. Measured as 0.3° and 0.6°, medians of the 24
-	// machines; a time is meant, so it is taken as what these are at 750 rpm, the middle of their speeds.
+	// A departure is seen after the valve has lifted to 10 %, and the later the slower the pressure goes with the volume.
+	// How fast it grows tells: the lift lies before the departure by a share of the rise, the angle from there to
+	// riseTimes as much departure, less a constant and a time. Fitted by least absolute error to the model's lift on
+	// 240 cases of the grid; without a rise, the medians of windows.md section 2 at 750 rpm.
+	riseTimes = 4.0
+	riseReach = 15.0 // degrees
+	riseS     = 0.70
+	riseD     = 0.89
+	riseSDeg  = 0.40
+	riseDDeg  = 0.27
+	riseSMs   = -0.030
+	riseDMs   = -0.014
+
 	liftSuctionMs   = 0.07
 	liftDischargeMs = 0.13
 
 	idleRatio   = 0.10  // ln(pd/ps) below which the end does no work
+	idleDrop    = 0.05  // and ln p over a closed stroke below which it does not either
 	idleStroke  = 0.45  // share of ln(pd/ps) that a working end's closed stroke covers at least
 	idleShort   = 0.35  // ln(pd/ps) below which an end without closed strokes is idle and not merely misread
 	latestOpen  = 166.0 // degrees into the stroke: what is left of it then is under 2 % of the swept volume, and heat and blow-by bend an end away from its line there that never opens
@@ -48,9 +61,29 @@ const (
 	searchDeg  = 14.0
 	searchMs   = 0.3
 	afterPeak  = 1.0 // degrees after the learnt lag
-	ringMs     = 0.5 // ms of ring-up added to every tail
+	ringMs     = 0.5 // ms of ring-up added to every tail that is not learnt from the ringing itself
 	burstRatio = 4.0 // peak over the background before the window, for a burst to be learnt from
 	backDeg    = 7.5 // degrees of background
+
+	heardFrom  = -28.0 // degrees after the dead centre: where a suction closing's impact is listened for …
+	heardTo    = 42.0
+	heardRun   = 2.0 // degrees into the closed stroke, and ms, to where it may ring
+	heardRunMs = 1.0
+	heardTurns = 20  // memory
+	heardLeast = 8   // turns before it is used
+	heardShare = 0.4 // of the loudest: the last burst as loud as this is the closing; what flutters before and bounces after is not
+	heardSpare = 3.0 // degrees of the window on either side of it
+	heardApart = 1.0 // ms between two bursts
+	heardRise  = 1.5 // times what was heard three to one of these before it
+	heardSigma = 4.0 // degrees of scatter beyond which it is not believed
+	hushed     = 3.0 // degrees before the other end's discharge closing, from where its burst may be …
+	hushedDeg  = 5.0 // … to this much after it
+	hushedMs   = 1.0
+	heardOfTop = 0.03 // of the turn's loudest: the least that is a closing of this throw
+
+	afterOpening   = 4.0 // degrees after an opening's departure, and ms, in which it may ring
+	afterOpeningMs = 3.0
+	foreignMs      = 1.5 // more for what comes from another throw
 
 	lateClosing    = 20.0 // degrees after the dead centre: from there the window follows the closing itself
 	earliestClose  = -30.0
@@ -74,6 +107,7 @@ const (
 	whyLate        = "follows the late closing"
 	whyDeadCentre  = "anchored at the dead centre; the pressure shows the closing poorly at full load"
 	whyClosing     = "anchored at the dead centre and the closing found"
+	whyHeard       = "anchored at the dead centre, and reaching to where the closing is heard"
 	whyNoClosing   = "anchored at the dead centre; no closing found"
 	whyHeldLate    = "closing not found; held at the last late closing"
 	whyNoOpening   = "no departure from the closed line found; held at the predicted angle"

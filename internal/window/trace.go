@@ -144,8 +144,9 @@ func (tr *trace) firstLine(r Run) (l dsp.Line, before int) {
 }
 
 // opening gives the angle of the first lasting departure from the line, in the sense of an opening: below the line
-// in compression, above it in expansion. NaN when there is none before the limit.
-func (tr *trace) opening(stroke int, l dsp.Line, from int) float64 {
+// in compression, above it in expansion; and how much further the trace takes to be riseTimes as far off the line. NaN
+// when there is none before the limit.
+func (tr *trace) opening(stroke int, l dsp.Line, from int) (at, rise float64) {
 	start := strokeStart(tr.end, stroke)
 	sense, limit := -1.0, start+latestOpen
 	if stroke == Expansion {
@@ -154,7 +155,7 @@ func (tr *trace) opening(stroke int, l dsp.Line, from int) float64 {
 	floor := math.Max(sigmas*l.Sigma, openResidual)
 	last, need := tr.index(limit), tr.points(openLasting)
 	prev, count := 0.0, 0
-	at := math.NaN()
+	at, rise = math.NaN(), math.NaN()
 	for i := from; i <= last; i++ {
 		r := sense * (tr.lnP[i] - l.At(tr.lnV[i]))
 		if r <= floor {
@@ -168,20 +169,46 @@ func (tr *trace) opening(stroke int, l dsp.Line, from int) float64 {
 			}
 		}
 		if count++; count >= need {
-			return at
+			return at, tr.rise(sense, l, riseTimes*floor, i+1-count) - at
 		}
+	}
+	return math.NaN(), math.NaN()
+}
+
+// rise gives the angle at which the trace first lies further off the line than a level, going on from a point; NaN when
+// it does not within riseReach.
+func (tr *trace) rise(sense float64, l dsp.Line, level float64, from int) float64 {
+	prev := 0.0
+	for i := max(from-1, 0); i < min(from+tr.points(riseReach), tr.grid.N); i++ {
+		r := sense * (tr.lnP[i] - l.At(tr.lnV[i]))
+		if r > level {
+			if prev < r && prev <= level && i >= from {
+				return tr.grid.At(i) - tr.grid.Step*(r-level)/(r-prev)
+			}
+			return tr.grid.At(i)
+		}
+		prev = r
 	}
 	return math.NaN()
 }
 
-// closing walks back from the run along its line and gives the angle at which the trace lastingly leaves it.
+// closing walks back from the run along its line and gives the angle at which the trace lastingly leaves it. At suction
+// pressure a transmitter's noise is a larger share, and the residual is the mean of a few points there.
 func (tr *trace) closing(stroke int, l dsp.Line, from int) float64 {
-	floor := math.Max(sigmas*l.Sigma, closeResidual)
+	half := 0
+	if stroke == Compression {
+		half = tr.points(closeMean / 2)
+	}
+	floor := math.Max(sigmas*l.Sigma/math.Sqrt(float64(2*half+1)), closeResidual)
 	first, need := tr.index(strokeStart(tr.end, stroke)+earliestClose), tr.points(closeLasting)
 	prev, count := 0.0, 0
 	at := math.NaN()
-	for i := from; i >= first; i-- {
-		r := math.Abs(tr.lnP[i] - l.At(tr.lnV[i]))
+	for i := from; i >= max(first, half); i-- {
+		sum := 0.0
+		for j := i - half; j <= i+half; j++ {
+			sum += tr.lnP[j] - l.At(tr.lnV[j])
+		}
+		r := math.Abs(sum) / float64(2*half+1)
 		if r <= floor {
 			prev, count = r, 0
 			continue

@@ -31,6 +31,7 @@ type Tracker struct {
 	throws []throw
 	out    []Throw
 	buf    []float64 // scratch
+	deaf   []bool    // scratch
 }
 
 type throw struct {
@@ -38,16 +39,23 @@ type throw struct {
 	other  [2]trace // of a clearance that the load step told does not give
 	memory [2]endMemory
 	now    [2]sight
+
+	good    bool      // this turn shows something
+	foreign []float64 // degrees, where other throws' openings ring
 }
 
 // sight is what was seen at one end in this turn, before windows are placed.
 type sight struct {
 	working bool
 	open    [2]float64 // departure as found, by stroke; NaN
+	rise    [2]float64 // degrees from there to riseTimes as much departure; NaN
 	at      [2]float64 // where the opening is taken to be: found or held; NaN
 	close   [2]float64 // closing that begins the stroke, degrees after its dead centre; NaN
+	runs    float64    // degrees, where the closed compression begins; NaN
 	k       float64
 	perMs   float64 // degrees per ms
+
+	heldLate bool // close[Compression] is the last late closing, not this turn's
 }
 
 // NewTracker makes a tracker that has learnt nothing yet.
@@ -74,6 +82,7 @@ func (t *Tracker) Track(tn *turn.Turn, duty []Input) Result {
 		if tn.Valid() && i < len(tn.Throws) && i < len(duty) && usable(&tn.Throws[i]) {
 			tt = &tn.Throws[i]
 		}
+		th.good = tt != nil
 		for e := range out.Ends {
 			var in Input
 			if i < len(duty) {
@@ -83,6 +92,15 @@ func (t *Tracker) Track(tn *turn.Turn, duty []Input) Result {
 		}
 		if tt != nil {
 			t.learn(th, tt)
+		}
+	}
+	for i := range t.throws { // every throw has been seen: what rings across is known
+		th, out := &t.throws[i], &t.out[i]
+		var tt *turn.Throw
+		if th.good {
+			tt = &tn.Throws[i]
+			t.around(tn, i)
+			t.hear(th, tt)
 		}
 		for e := range out.Ends {
 			t.place(th, tt, e, &out.Ends[e])
@@ -103,7 +121,7 @@ func (t *Tracker) end(th *throw, tt *turn.Throw, i, e int, in Input, out *End) {
 	*out = blank()
 	see := &th.now[e]
 	nan := math.NaN()
-	*see = sight{open: [2]float64{nan, nan}, at: [2]float64{nan, nan}, close: [2]float64{nan, nan}, k: in.K}
+	*see = sight{runs: nan, open: [2]float64{nan, nan}, rise: [2]float64{nan, nan}, at: [2]float64{nan, nan}, close: [2]float64{nan, nan}, k: in.K}
 	if !(see.k > 1) {
 		see.k = 1.3
 	}
@@ -187,8 +205,11 @@ func (t *Tracker) look(th *throw, tt *turn.Throw, e int, in Input, out *End) {
 	if _, ok := t.misfit(mem, &r); !ok {
 		r, out.Clearance = t.otherwise(th, tt, e, in, r)
 	}
-	see.open, see.close = r.open, r.close
+	see.open, see.rise, see.close = r.open, r.rise, r.close
 	out.Ps, out.Pd, out.Closed, out.Trapped, out.State = r.ps[Compression], r.pd[Compression], r.closed, r.trapped, Following
+	if c := out.Closed[Compression]; c.OK {
+		see.runs = tt.Grid.At(c.I0)
+	}
 	idling := false
 	for s := range out.Closed {
 		o, c := &out.W[opens(s)], &out.W[closes(s)]
@@ -265,7 +286,7 @@ func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 			o.rejected.v = o.rejected.v[:0]
 			o.missed, o.seen, o.last = 0, true, found
 			see.at[s] = found
-			w.Angle = found - see.perMs*[2]float64{liftDischargeMs, liftSuctionMs}[s]
+			w.Angle = found - see.behind(s)
 			w.State, w.Why = Following, whyFound
 			w.Conf = 0.95 - 0.4*math.Abs(dev-offset)/plausibleFirst
 			if len(o.offset.v) < firstTurns {
@@ -294,6 +315,18 @@ func (t *Tracker) believe(o *opener, see *sight, s int, w *Window, out *End) {
 		w.Conf = 0.3 * (1 - float64(o.missed-1)/holdTurns)
 	}
 	out.State = worse(out.State, w.State)
+}
+
+// behind is how far the departure found lies after the lift.
+func (see *sight) behind(s int) float64 {
+	share, deg, ms, plain := riseD, riseDDeg, riseDMs, liftDischargeMs
+	if s == Expansion {
+		share, deg, ms, plain = riseS, riseSDeg, riseSMs, liftSuctionMs
+	}
+	if math.IsNaN(see.rise[s]) {
+		return plain * see.perMs
+	}
+	return share*see.rise[s] - deg - ms*see.perMs
 }
 
 // agree reports whether the rejected openings agree among themselves: then the prediction is wrong.
@@ -351,7 +384,7 @@ func (t *Tracker) closingOf(mem *endMemory, see *sight, s, e int, in Input, out 
 	w.State = Following
 	switch {
 	case math.IsNaN(c) && s == Compression && mem.late > 0:
-		see.close[s] = mem.late
+		see.close[s], see.heldLate = mem.late, true
 		w.State, w.Conf, w.Why = Holding, 0.2, whyHeldLate
 	case math.IsNaN(c):
 		w.Conf, w.Why = 0.2, whyNoClosing
@@ -359,6 +392,8 @@ func (t *Tracker) closingOf(mem *endMemory, see *sight, s, e int, in Input, out 
 		w.Angle, w.Conf, w.Why = start+c, 0.6, whyClosing
 	case c > lateClosing:
 		w.Angle, w.Conf, w.Why = start+c, 0.7, whyLate
+	case mem.heard[0].count() >= heardLeast:
+		w.Angle, w.Conf, w.Why = start+c, 0.4, whyHeard
 	default:
 		w.Angle, w.Conf, w.Why = start+c, 0.3, whyDeadCentre
 	}
