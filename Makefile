@@ -6,7 +6,7 @@ GO         ?= go
 STATICCHECK = honnef.co/go/tools/cmd/staticcheck@v0.8.2
 SHARED     ?= $(abspath ../shared)
 
-.PHONY: field demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
+.PHONY: field soak demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
 
 build: bin/lapwing bin/lapwingd
 
@@ -51,6 +51,18 @@ system: build
 # The whole field on the model, ten minutes, with tables: windows against the truth, healthy walks, every fault.
 field:
 	LAPWING_FIELD=long $(GO) test -count=1 -timeout 40m -v -run TestField ./internal/station
+
+# The soak on the model: healthy machines under random load for false alarms, growing faults for what is found and when,
+# faults of sensors for what is not blamed on valves. Each machine can be run alone:
+#   make soak SEED=3 MACHINES=1 TURNS=10000      make soak SOAK=faults SEED=1 RUNS=3 FAULT=rings      make soak SOAK=sensors
+SOAK     ?= healthy
+SEED     ?= 1
+MACHINES ?= 10
+TURNS    ?= 10000
+RUNS     ?= 3
+soak:
+	LAPWING_SOAK=$(SOAK) SEED=$(SEED) MACHINES=$(MACHINES) TURNS=$(TURNS) RUNS=$(RUNS) FAULT="$(FAULT)" LOAD="$(LOAD)" \
+	  nice -n 19 $(GO) test -count=1 -timeout 12h -v -run '^TestSoak' ./internal/station
 
 # Figures, never a test: every room's benchmarks; the line stage by stage; the line against scipy in one run.
 PYTHON  ?= /usr/bin/python3
