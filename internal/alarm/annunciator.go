@@ -282,10 +282,12 @@ func (a *Annunciator) show(out []Transition, p *Point, now time.Time, by, note s
 	return append(out, tr)
 }
 
-// Standing reports whether the point's condition stands, shown or not: what a deadband needs to know.
-func (a *Annunciator) Standing(key string) bool {
-	p := a.points[key]
-	return p != nil && p.Inner.Active()
+// Level is how severe the point's condition stands, shown or not: what a deadband needs to know.
+func (a *Annunciator) Level(key string) Severity {
+	if p := a.points[key]; p != nil && p.Inner.Active() {
+		return p.Level
+	}
+	return NoSeverity
 }
 
 // Last is the id of the newest transition; 0 before the first.

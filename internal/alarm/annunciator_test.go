@@ -60,7 +60,7 @@ func TestSeriesGivesStates(t *testing.T) {
 			a := New(Config{Default: c.timing})
 			var got []byte
 			for i, v := range c.values {
-				a.Step(at(float64(i)), l.Conditions(nil, v, a.Standing, int64(i), 0, 1))
+				a.Step(at(float64(i)), Ladder{l}.Conditions(nil, v, a.Level, "", int64(i), 0, 1))
 				got = append(got, letter(a, l.HighKey()))
 			}
 			if string(got) != c.want {
@@ -317,13 +317,13 @@ func TestTextOfStatesAndSeverities(t *testing.T) {
 
 func TestDetailTravels(t *testing.T) {
 	a := New(Config{})
-	l := Limit{Subject: "t1", Measure: "rod_load_max_kn", High: 120, Low: -100, Severity: Danger}
-	trs := a.Step(at(0), l.Conditions(nil, 131.25, a.Standing, 7, 100, 200))
+	l := Limit{Subject: "t1", Measure: "rod_load_max_kn", What: "largest combined rod load", Unit: "kN", High: 120, Low: -100, Severity: Danger}
+	trs := a.Step(at(0), Ladder{l}.Conditions(nil, 131.25, a.Level, "", 7, 100, 200))
 	b, err := json.Marshal(trs)
 	if err != nil || len(trs) != 1 {
 		t.Fatal(len(trs), err)
 	}
-	for _, want := range []string{`"detail":{"value":131.25,"limit":120,"deadband":0}`, `"t1: rod_load_max_kn is 131.2, at or above its limit of 120"`,
+	for _, want := range []string{`"detail":{"value":131.25,"limit":120,"deadband":0}`, `"t1: largest combined rod load: 131.2 kN, at or above its limit of 120 kN"`,
 		`"to":"unacknowledged"`, `"severity":"danger"`, `"seq0":100`} {
 		if !strings.Contains(string(b), want) {
 			t.Errorf("%s lacks %s", b, want)

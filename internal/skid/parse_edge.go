@@ -90,7 +90,7 @@ func (r *reader) limits(o *object, sk *Skid) {
 	const fix = "list the limits: - {of: t1.he, measure: …, high: …, severity: alert}"
 	for i, n := range o.list("limits", 0, 1000, false, fix) {
 		path := fmt.Sprintf("limits[%d]", i)
-		s := r.object(n, path, "of", "measure", "high", "low", "deadband", "on_delay_s", "off_delay_s", "severity")
+		s := r.object(n, path, "of", "measure", "high", "low", "deadband", "on_delay_s", "off_delay_s", "on_turns", "off_turns", "latch", "unless", "severity")
 		if s == nil {
 			continue
 		}
@@ -110,12 +110,30 @@ func (r *reader) limits(o *object, sk *Skid) {
 		l.Deadband = s.numOr("deadband", bounds{0, 1e12}, 0)
 		l.OnDelay = seconds(s.numOr("on_delay_s", bounds{0, 86400}, 10))
 		l.OffDelay = seconds(s.numOr("off_delay_s", bounds{0, 86400}, 30))
+		l.OnTurns, _ = s.whole("on_turns", 1, 100000, false)
+		l.OffTurns, _ = s.whole("off_turns", 1, 100000, false)
+		l.Latch = s.choice("latch", "no", "yes", "no") == "yes"
+		r.unless(s, &l)
 		if s.node("severity", true, "write severity: advisory, alert or danger") != nil {
 			l.Severity = s.choice("severity", "", "advisory", "alert", "danger")
 		}
 		sk.Limits = append(sk.Limits, l)
 	}
 	sk.ratedLimits()
+}
+
+// unless reads the duty states in which a limit is suppressed by design.
+func (r *reader) unless(s *object, l *Limit) {
+	states := []string{"starting", "changing", "unloaded", "out-of-range"}
+	fix := "list some of " + list(states)
+	for i, n := range s.list("unless", 1, len(states), false, fix) {
+		word, ok := r.word(n, fmt.Sprintf("%s.unless[%d]", s.path, i), nil, fix)
+		if ok && (!slices.Contains(states, word) || slices.Contains(l.Unless, word)) {
+			s.wrong("unless", fix, "%q is no duty state, or stands twice", clip(word))
+		} else if ok {
+			l.Unless = append(l.Unless, word)
+		}
+	}
 }
 
 func (sk *Skid) subjects() []string {

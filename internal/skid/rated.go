@@ -76,6 +76,20 @@ func (sk *Skid) limited(subject, measure string) bool {
 	return false
 }
 
+// manner says in what else a limit differs from a plain one.
+func manner(l Limit) (out string) {
+	if l.OnTurns > 0 || l.OffTurns > 0 {
+		out += fmt.Sprintf("; at least %d turns to come, %d to go", l.OnTurns, l.OffTurns)
+	}
+	if l.Latch {
+		out += "; stays until it is acknowledged and reset"
+	}
+	if len(l.Unless) > 0 {
+		out += "; suppressed while " + list(l.Unless)
+	}
+	return out
+}
+
 func from(l Limit) string {
 	if l.From == "" {
 		return ""

@@ -64,7 +64,7 @@ func (p *page) edges(sk *Skid) {
 		if !math.IsNaN(l.Low) {
 			bound += " below " + short(l.Low)
 		}
-		rows = append(rows, row("limit", f("%s of %s%s: %s after %s; off after %s back by %s", l.Measure, l.Subject, bound, l.Severity, l.OnDelay, l.OffDelay, short(l.Deadband))+from(l)))
+		rows = append(rows, row("limit", f("%s of %s%s: %s after %s; off after %s back by %s", l.Measure, l.Subject, bound, l.Severity, l.OnDelay, l.OffDelay, short(l.Deadband))+manner(l)+from(l)))
 	}
 	if len(sk.Limits) == 0 {
 		rows = append(rows, row("limits", "none; findings come from the baseline"))

@@ -170,8 +170,11 @@ type Limit struct {
 	Low               float64 // NaN: none
 	Deadband          float64
 	OnDelay, OffDelay time.Duration
-	Severity          string // advisory, alert, danger
-	From              string // path of the rating that the limit was made from; empty: the file states the limit itself
+	OnTurns, OffTurns int      // the same in turns that could be judged; with a time as well, both must have passed
+	Latch             bool     // stays until it is acknowledged and reset
+	Unless            []string // duty states of its throw in which it is suppressed by design: starting, changing, unloaded, out-of-range
+	Severity          string   // advisory, alert, danger
+	From              string   // path of the rating that the limit was made from; empty: the file states the limit itself
 }
 
 // Tape bounds the rolling raw buffer.

@@ -1,73 +1,18 @@
 package station
 
 import (
-	"fmt"
 	"slices"
 	"strings"
 	"time"
 
 	"lapwing/internal/alarm"
 	"lapwing/internal/duty"
-	"lapwing/internal/measure"
-	"lapwing/internal/skid"
-	"lapwing/internal/turn"
 	"lapwing/internal/verdict"
 	"lapwing/internal/wire"
 )
 
-// limitWatch is a limit of the skid file bound to its feature.
-type limitWatch struct {
-	alarm.Limit
-	feature int
-}
-
-func limitWatches(sk *skid.Skid, layout measure.Layout) (out []limitWatch, err error) {
-	if err := sk.CheckLimits(func(subject string) []string { return namesOf(layout, subject) }); err != nil {
-		return nil, err
-	}
-	for _, l := range sk.Limits {
-		i := layout.Find(l.Subject, l.Measure)
-		var sev alarm.Severity
-		if err := sev.UnmarshalText([]byte(l.Severity)); err != nil {
-			return nil, fmt.Errorf("station: limit on %s %s: %w", l.Subject, l.Measure, err)
-		}
-		out = append(out, limitWatch{feature: i, Limit: alarm.Limit{Subject: l.Subject, Measure: l.Measure, High: l.High, Low: l.Low, Deadband: l.Deadband, Severity: sev}})
-	}
-	return out, nil
-}
-
-func namesOf(layout measure.Layout, subject string) (out []string) {
-	for i := range layout {
-		if layout[i].Subject == subject {
-			out = append(out, layout[i].Name)
-		}
-	}
-	return out
-}
-
 // findingOffDelay is how long the evidence must be gone before a finding's alarm returns.
 const findingOffDelay = time.Minute
-
-// AlarmTiming gives the delays of every point: limits as the skid file says; findings come after several blocks that
-// agree, so they need no on-delay, and go only after a minute without their evidence.
-func AlarmTiming(sk *skid.Skid) alarm.Config {
-	c := alarm.Config{Default: alarm.Timing{OffDelay: findingOffDelay}, Points: map[string]alarm.Timing{}}
-	for _, l := range sk.Limits {
-		a := alarm.Limit{Subject: l.Subject, Measure: l.Measure}
-		t := alarm.Timing{OnDelay: l.OnDelay, OffDelay: l.OffDelay}
-		c.Points[a.HighKey()], c.Points[a.LowKey()] = t, t
-	}
-	return c
-}
-
-func (l *Line) limitConditions(conds []alarm.Condition, t *turn.Turn) []alarm.Condition {
-	for i := range l.limits {
-		w := &l.limits[i]
-		f := &l.layout[w.feature]
-		conds = w.Conditions(conds, l.vec.V[w.feature]*f.Scale+f.Shift, l.alarms.Standing, t.Number, t.Seq0, t.Seq1)
-	}
-	return conds
-}
 
 // findingConditions turns a throw's findings after a block into conditions. An open point of the throw that has no
 // finding is told that its condition is gone, but only once the judge has heard enough since the start to know.

@@ -47,6 +47,7 @@ const (
 	VerbLearnStart  = "learn-start"
 	VerbLearnAccept = "learn-accept"
 	VerbLearnDrop   = "learn-drop"
+	VerbImport      = "baseline-import" // of a file that came with POST /api/v1/baselines
 	VerbRenew       = "renew"
 )
 
@@ -77,6 +78,7 @@ var verbFields = map[string]struct{ needs, may []string }{
 	VerbLearnStart:  {nil, []string{"turns", "reason", "subject", "add", "accept"}},
 	VerbLearnAccept: {nil, []string{"reason"}},
 	VerbLearnDrop:   {nil, []string{"reason"}},
+	VerbImport:      {[]string{"reason"}, nil},
 	VerbRenew:       {[]string{"subject"}, []string{"reason", "turns", "accept"}},
 }
 

@@ -28,6 +28,7 @@ func TestOrdersThatAreRight(t *testing.T) {
 		wire.VerbLearnStart:  nil,
 		wire.VerbLearnAccept: nil,
 		wire.VerbLearnDrop:   nil,
+		wire.VerbImport:      {`"reason":"new computer"`},
 		wire.VerbRenew:       {`"subject":"t1.he.suction"`},
 	}
 	if len(good) != len(wire.Verbs()) {

@@ -186,7 +186,7 @@ func drawTransition(rt *rapid.T, l measure.Layout) *alarm.Transition {
 	case 1:
 		tr.Detail = wire.FromFinding(drawFinding(rt, l), l)
 	case 2:
-		tr.Detail = alarm.LimitDetail{Value: 61, Limit: 60, Deadband: 1}
+		tr.Detail = alarm.LimitDetail{Value: 61, Limit: 60, Deadband: 1, Next: rapid.SampledFrom([][]string{nil, {"compare"}}).Draw(rt, "next")}
 	case 3:
 		tr.Detail = json.RawMessage(`{"error":"could not be written"}`)
 	}
