@@ -6,6 +6,7 @@ import "math"
 const (
 	densityTop  = 4.0
 	densityStep = 0.02
+	nearBy      = 1.08 // of a density thought to be close
 )
 
 // gasRoot gives the molar density (mol/m³) that is reached from the dilute gas by compressing at constant temperature
@@ -29,10 +30,16 @@ func (s *isotherm) gasRoot(p float64) (density float64, ok bool) {
 }
 
 // liquidRoot gives the molar density that is reached from the dense liquid by expanding, and whether there is one.
-// Above the critical region it is the same as the gas root.
-func (s *isotherm) liquidRoot(p float64) (density float64, ok bool) {
+// Above the critical region it is the same as the gas root. near is a density thought to be close, 0: none; the way down
+// then begins a little above it, where that is still liquid above p.
+func (s *isotherm) liquidRoot(p, near float64) (density float64, ok bool) {
 	dr := 1 / s.vr
 	hi, started := densityTop*dr, false
+	if top := nearBy * near; near > 0 && top < hi {
+		if v, slope := s.pressure(top); v > p && slope > 0 {
+			hi, started = top, true
+		}
+	}
 	for lo := hi; lo > 0; lo -= densityStep * 2 * dr {
 		v, slope := s.pressure(lo)
 		switch {

@@ -91,6 +91,11 @@ type isotherm struct {
 
 func (b *blend) at(t float64) *isotherm {
 	s := &isotherm{blend: b, t: t, tau: b.tr / t}
+	n := 0
+	for i := range b.groups {
+		n += len(b.groups[i].terms)
+	}
+	s.coef = make([]float64, 0, n)
 	lnTau := math.Log(s.tau)
 	for _, g := range b.groups {
 		for _, k := range g.terms {

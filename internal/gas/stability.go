@@ -99,6 +99,7 @@ func (s *isotherm) attraction(i int) float64 { return 5.37 * (s.co.comp[i].tc/s.
 
 // trial follows one trial phase from composition y and reports whether it ends below the tangent plane.
 func (s *isotherm) trial(p, density float64, goal, y [nComponents]float64) bool {
+	near := 0.0 // mol/m³, of the trial before
 	for range trialIterations {
 		sum := 0.0
 		for _, v := range y {
@@ -108,10 +109,11 @@ func (s *isotherm) trial(p, density float64, goal, y [nComponents]float64) bool 
 			y[i] /= sum
 		}
 		ph := newBlend(s.co, y).at(s.t)
-		d, ok := ph.liquidRoot(p)
+		d, ok := ph.liquidRoot(p, near)
 		if !ok {
 			return false // this trial boils away
 		}
+		near = d
 		lnPhi := ph.lnFugacity(d)
 		var next [nComponents]float64
 		total, away, change := 0.0, 0.0, 0.0
@@ -130,7 +132,7 @@ func (s *isotherm) trial(p, density float64, goal, y [nComponents]float64) bool 
 		if away < 1e-3 && math.Abs(d/density-1) < 1e-2 {
 			return false // fell back to the gas itself
 		}
-		if change < 1e-6 {
+		if change < 1e-6 || change < 1e-3 && math.Abs(total-1) > 0.1 { // far from the plane a rough answer is enough
 			return total > 1+1e-6
 		}
 		y = next
