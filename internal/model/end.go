@@ -27,6 +27,7 @@ type end struct {
 	gas        *Gas
 
 	p, m, t float64 // Pa, kg, K
+	k       float64 // isentropic exponent at the present pressure
 	v       float64 // m³
 	suction group
 	disch   group
@@ -151,7 +152,13 @@ func (c *path) from(t float64) float64 {
 // advance moves the end by one sampling interval. v0, vm, v1 are its volumes at the beginning, the middle and the end of it;
 // deg0 and ddeg the throw's unwrapped angle at the beginning and its advance.
 func (e *end) advance(m *Machine, t *throw, v0, vm, v1, deg0, ddeg float64) {
-	k, r := e.gas.K, e.gas.R
+	if m.n%jetEvery == 0 {
+		e.k = e.gas.K
+		if e.gas.slope != 0 {
+			e.k += e.gas.slope * math.Log(e.p/t.stage.mid)
+		}
+	}
+	k, r := e.k, e.gas.R
 	busy := e.busy(t)
 	n := int(math.Ceil(m.dt / coarseStep * 0.999))
 	if busy {

@@ -73,6 +73,7 @@ func (g *gasMap) at(l skid.Line) (Gas, bool) {
 		out.R += w * n.R
 		out.K += w * n.K
 		out.KT += w * n.KT
+		out.slope += w * n.slope
 	}
 	return out, true
 }
@@ -81,9 +82,10 @@ func (g *gasMap) node(key [3]int) (Gas, bool) {
 	n, known := g.nodes[key]
 	if !known {
 		ps := math.Exp(float64(key[0]) * nodeLnP)
-		d, err := g.of.Duty(ps, float64(key[2])*nodeT, ps*math.Exp(max(float64(key[1])*nodeLnPR, leastLnPR)))
+		lnPR := max(float64(key[1])*nodeLnPR, leastLnPR)
+		path, err := g.of.Isentropic(float64(key[2])*nodeT, ps, ps*math.Exp(lnPR))
 		if err == nil {
-			n = Gas{R: d.R * d.Zs, K: d.KV, KT: d.KT}
+			n = Gas{R: g.of.R() * path.From.Z, K: path.KV, KT: path.KT, slope: (path.To.KappaV - path.From.KappaV) / lnPR}
 		}
 		g.nodes[key] = n
 	}
@@ -102,7 +104,7 @@ func (s *stage) follow(m *Machine, l skid.Line, t float64) {
 	if l == s.line && other == s.other && weight == s.weight {
 		return
 	}
-	if l != s.line && m.gases != nil && (l != m.base || m.gas0.R > 0) {
+	if l != s.line && m.gases != nil && (l != m.base || m.gas0.R > 0 || m.par.RealPath) {
 		if m.gas0.R == 0 {
 			m.gas0, _ = m.gases.at(m.base)
 		}
@@ -111,10 +113,13 @@ func (s *stage) follow(m *Machine, l skid.Line, t float64) {
 			if m.par.Gas.KT != 0 {
 				s.real.KT += g.KT - m.gas0.KT
 			}
+			if m.par.RealPath {
+				s.real.slope, s.mid = g.slope, math.Sqrt(l.Ps*l.Pd)
+			}
 		}
 	}
 	s.line, s.other, s.weight = l, other, weight
-	s.gas.R, s.gas.K, s.gas.KT = s.real.R/weight, s.real.K+other, s.real.KT
+	s.gas.R, s.gas.K, s.gas.KT, s.gas.slope = s.real.R/weight, s.real.K+other, s.real.KT, s.real.slope
 	if s.gas.KT != 0 {
 		s.gas.KT += other
 	}

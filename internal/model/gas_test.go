@@ -119,3 +119,44 @@ func TestStagesHaveTheirGas(t *testing.T) {
 		within(t, "R·Z of the stage", m.stages[i].gas.R, want.R*want.Zs, 1e-3*want.R)
 	}
 }
+
+// TestRealPath: with RealPath the closed strokes begin at the exponent that GERG-2008 has at suction and end at that of
+// discharge, and keep to the mean between: pressure over volume then follows the real isentrope at every point.
+func TestRealPath(t *testing.T) {
+	t.Parallel()
+	sk := pipeline(t)
+	const ps, pd, ts = 30e5, 110e5, 290.0
+	sk.Process.Stages[0] = skid.Line{Ps: ps, Pd: pd, Ts: ts}
+	p, err := Typical(sk, nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	ap := sk.Throws[0].Cylinder.Area(crank.HE)
+	p = ideal(p, sk, 2*ap, 2*ap)
+	p.RealPath = true
+	m, err := New(sk, Script{}, Options{Seed: 1, Params: &p, Rate: 25600})
+	if err != nil {
+		t.Fatal(err)
+	}
+	l := settle(t, m, 0, crank.HE, 3)
+	path, err := sk.Gas.Mixture.Isentropic(ts, ps, pd)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if path.To.KappaV-path.From.KappaV < 0.03 {
+		t.Fatalf("the exponent hardly moves: %.4f to %.4f", path.From.KappaV, path.To.KappaV)
+	}
+	t.Logf("GERG-2008: %.4f at suction, %.4f at discharge, mean %.4f", path.From.KappaV, path.To.KappaV, path.KV)
+	for _, c := range []struct{ lo, hi float64 }{{1.05 * ps, 1.35 * ps}, {0.75 * pd, 0.97 * pd}, {1.05 * ps, 0.97 * pd}} {
+		a, err := sk.Gas.Mixture.Isentropic(ts, ps, c.lo)
+		if err != nil {
+			t.Fatal(err)
+		}
+		b, err := sk.Gas.Mixture.Isentropic(ts, ps, c.hi)
+		if err != nil {
+			t.Fatal(err)
+		}
+		want := math.Log(c.hi/c.lo) / math.Log(b.To.Rho/a.To.Rho)
+		within(t, "exponent between two pressures", l.exponent(crank.HE, true, c.lo, c.hi), want, 0.006)
+	}
+}

@@ -22,7 +22,8 @@
 //	readings    FrozenProcess
 //
 // The gas of a stage is ideal within a turn, with the R·Z at suction and the mean volume isentropic exponent of its real
-// gas (package gas) at the present lines; both follow the script. Each end is one well-mixed volume with an open-system energy balance (methods: Bloch and Hoefner, Reciprocating Compressors, 1996;
+// gas (package gas) at the present lines; both follow the script. With Params.RealPath the exponent also moves within the
+// stroke, as along the real isentrope. Each end is one well-mixed volume with an open-system energy balance (methods: Bloch and Hoefner, Reciprocating Compressors, 1996;
 // valve and cylinder equations as in Brun and Kurz, Compression Machinery for Oil and Gas, 2019, ch. 5).
 package model
 

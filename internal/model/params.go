@@ -16,7 +16,8 @@ type Gas struct {
 	Viscosity float64 // Pa s at 300 K
 	Prandtl   float64
 
-	pr06 float64 // Prandtl^0.6
+	pr06  float64 // Prandtl^0.6
+	slope float64 // of the exponent over ln p, along the compression
 }
 
 // ValveData describes one valve as a single plate on springs.
@@ -48,6 +49,7 @@ type Params struct {
 	Valves         map[string]ValveData // by valve id
 	Ring, Packing  float64              // m², effective healthy leak areas; packing at the crank end of each throw
 	SteadyGas      bool                 // the gas keeps its constants whatever the duty
+	RealPath       bool                 // the exponent varies within the stroke, from the gas's at suction to that at discharge
 	WallHeat       float64              // factor on the wall heat transfer correlation; 0: adiabatic
 	WallAt         float64              // wall temperature between line temperatures: 0 suction, 1 discharge
 	Passage        float64              // volume of each valve passage, in swept volumes of the throw

@@ -17,6 +17,7 @@ type stage struct {
 	noz           *nozzle
 	line          skid.Line // for which gas was computed
 	other, weight float64   // what the script makes of it
+	mid           float64   // Pa, where the exponent is the mean one
 }
 
 func (s *stage) aim(l skid.Line) {
@@ -173,6 +174,7 @@ func (t *throw) place(m *Machine) {
 		}
 		e.t = t.stage.ts * math.Pow(e.p/t.ps, (k-1)/k)
 		e.m = e.p * e.v / (t.stage.gas.R * e.t)
+		e.k = k
 	}
 }
 
