@@ -37,6 +37,7 @@ type Source interface {
 	Alarms() wire.Alarms
 	// Why says why a subject (empty: all) was found to be as it is by the block of a turn (0: the newest).
 	Why(ctx context.Context, subject string, turn int64) (wire.Why, error)
+	Puller
 }
 
 // ErrNoClip says that a clip of that name does not exist. Source.Export wraps it.
@@ -47,8 +48,9 @@ var ErrQuery = errors.New("not understood")
 
 // Panel serves the page. Open it, then Serve, then Close.
 type Panel struct {
-	ln  net.Listener
-	srv *http.Server
+	ln    net.Listener
+	srv   *http.Server
+	pulls *pulls
 }
 
 // Open binds the address, which must be loopback.
@@ -71,8 +73,9 @@ func Open(listen string, src Source, log *slog.Logger) (*Panel, error) {
 	if log == nil {
 		log = slog.New(slog.DiscardHandler)
 	}
-	p := &Panel{ln: ln, srv: &http.Server{
-		Handler:           guard(routes(src, log)),
+	pulls := newPulls(src, log)
+	p := &Panel{ln: ln, pulls: pulls, srv: &http.Server{
+		Handler:           guard(routesWith(src, pulls, log)),
 		ReadHeaderTimeout: 5 * time.Second, ReadTimeout: 10 * time.Second, WriteTimeout: 30 * time.Second, IdleTimeout: time.Minute, MaxHeaderBytes: 16 << 10,
 		ErrorLog: slog.NewLogLogger(log.Handler(), slog.LevelDebug),
 	}}
@@ -94,6 +97,7 @@ func (p *Panel) Serve() error {
 func (p *Panel) Close() error {
 	ctx, cancel := context.WithTimeout(context.Background(), 2*time.Second)
 	defer cancel()
+	defer p.pulls.close()
 	if err := p.srv.Shutdown(ctx); err != nil {
 		return p.srv.Close()
 	}
@@ -125,7 +129,7 @@ func guard(next http.Handler) http.Handler {
 			return
 		}
 		switch {
-		case r.URL.Path == ordersPath && r.Method == http.MethodPost:
+		case (r.URL.Path == ordersPath || r.URL.Path == baselinesPath) && r.Method == http.MethodPost:
 			if status, why := mayOrder(r); status != 0 {
 				http.Error(w, why, status)
 				return
@@ -143,7 +147,9 @@ func guard(next http.Handler) http.Handler {
 	})
 }
 
-func routes(src Source, log *slog.Logger) http.Handler {
+func routes(src Source, log *slog.Logger) http.Handler { return routesWith(src, newPulls(src, log), log) }
+
+func routesWith(src Source, pulls *pulls, log *slog.Logger) http.Handler {
 	mux := http.NewServeMux()
 	var seen newest
 	mux.HandleFunc("GET /{$}", func(w http.ResponseWriter, r *http.Request) {
@@ -170,6 +176,7 @@ func routes(src Source, log *slog.Logger) http.Handler {
 	mux.HandleFunc("GET /api/v1/journal", journal(src, log))
 	mux.HandleFunc("POST "+ordersPath, order(src, log))
 	learning(mux, src, log)
+	pulls.routes(mux)
 	c := clipper{src: src, log: log, busy: make(chan struct{}, exports)}
 	mux.HandleFunc("GET /api/v1/clips/{id}", c.send)
 	return mux
