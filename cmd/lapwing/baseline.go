@@ -217,7 +217,12 @@ func (b *baselines) give(ctx context.Context, w io.Writer, o wire.Order) error {
 	if err != nil {
 		return err
 	}
-	req, err := http.NewRequestWithContext(ctx, http.MethodPost, strings.TrimRight(b.daemon, "/")+"/api/v1/orders", bytes.NewReader(raw))
+	return b.post(ctx, w, "/api/v1/orders", raw)
+}
+
+// post sends what the daemon answers as an order.
+func (b *baselines) post(ctx context.Context, w io.Writer, path string, raw []byte) error {
+	req, err := http.NewRequestWithContext(ctx, http.MethodPost, strings.TrimRight(b.daemon, "/")+path, bytes.NewReader(raw))
 	if err != nil {
 		return err
 	}

@@ -4,6 +4,8 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"net/url"
+	"os"
 	"text/tabwriter"
 
 	"github.com/spf13/cobra"
@@ -150,14 +152,26 @@ func (b *baselines) importCommand() *cobra.Command {
 	var skidFile, by, reason string
 	var other bool
 	cmd := &cobra.Command{
-		Use: "import FILE", Short: "Store a baseline file in the state folder of a daemon that is down", Args: cobra.ExactArgs(1),
-		Long: `import checks a baseline file against the skid file and stores it as the newest baseline, by which the
-daemon judges when it is started. It is refused when it was learnt with other measures, or with
-another version of the skid file: --other-skid lets that pass, for a file in which nothing about the
-machine, its gas or its channels has changed.`,
+		Use: "import FILE", Short: "Hand a baseline file to the daemon, where it waits to be accepted", Args: cobra.ExactArgs(1),
+		Long: `import hands a baseline file to the running daemon, where it waits to be accepted or dropped as what a
+learning run gave. It is refused when it was learnt with other measures, or with another version of
+the skid file: --other-skid lets that pass, for a file in which nothing about the machine, its gas or
+its channels has changed. With --state (and --skid, to check by) it is stored in the state folder of a
+daemon that is down, which judges by it when it is started.`,
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if b.state == "" {
-				return errors.New("name the state folder with --state; the daemon must be down")
+				raw, err := os.ReadFile(args[0])
+				if err != nil {
+					return err
+				}
+				q := url.Values{"by": {by}, "reason": {reason}}
+				if other {
+					q.Set("other_skid", "yes")
+				}
+				return b.post(cmd.Context(), cmd.OutOrStdout(), "/api/v1/baselines?"+q.Encode(), raw)
+			}
+			if skidFile == "" {
+				return errors.New("name the skid file to check by with --skid")
 			}
 			sk, err := skid.Load(skidFile)
 			if err != nil {
@@ -179,11 +193,11 @@ machine, its gas or its channels has changed.`,
 		},
 	}
 	f := cmd.Flags()
-	f.StringVar(&skidFile, "skid", "", "skid file of the machine (required)")
+	f.StringVar(&skidFile, "skid", "", "skid file of the machine, with --state")
 	f.StringVar(&by, "by", "", "who imports it (required)")
 	f.StringVar(&reason, "reason", "", "why (required)")
 	f.BoolVar(&other, "other-skid", false, "take one that was learnt with another version of the skid file")
-	for _, n := range []string{"skid", "by", "reason"} {
+	for _, n := range []string{"by", "reason"} {
 		_ = cmd.MarkFlagRequired(n)
 	}
 	return cmd

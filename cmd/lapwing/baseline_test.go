@@ -170,12 +170,25 @@ func TestBaselineOrders(t *testing.T) {
 			t.Errorf("%v gives %+v", c.args, last)
 		}
 	}
+	mux.HandleFunc("POST /api/v1/baselines", func(w http.ResponseWriter, r *http.Request) {
+		raw, _ := io.ReadAll(r.Body)
+		if q := r.URL.Query(); string(raw) != "file" || q.Get("by") != "A" || q.Get("reason") != "new computer & more" || q.Get("other_skid") != "yes" || r.Header.Get(panel.OrderHeader) != "tool" {
+			t.Errorf("import of %q with %v", raw, q)
+		}
+		_ = json.NewEncoder(w).Encode(wire.Receipt{Version: 1, Act: wire.Act{Type: "act", Accepted: true, Said: "it waits"}, OnDisk: true})
+	})
+	file := filepath.Join(t.TempDir(), "b.json")
+	if err := os.WriteFile(file, []byte("file"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	out, err := baselineTool(t, "import", file, "--by", "A", "--reason", "new computer & more", "--other-skid", "--daemon", srv.URL)
+	has(t, "import", out, err, "it waits")
 	if _, err := baselineTool(t, "drop", "--by", "A", "--daemon", srv.URL); err == nil || !strings.Contains(err.Error(), "refused: said of learn-drop") {
 		t.Errorf("a refused order: %v", err)
 	}
 	if _, err := baselineTool(t, "accept", "--daemon", srv.URL); err == nil {
 		t.Error("an order of nobody")
 	}
-	out, err := baselineTool(t, "status", "--daemon", srv.URL)
+	out, err = baselineTool(t, "status", "--daemon", srv.URL)
 	has(t, "status", out, err, "it waits", "t1     2          40 of 600  1.80–2.60", "560 more steady turns", "doubt: t1.he.suction may leak")
 }

@@ -127,6 +127,9 @@ func (x *examined) group(b *Baseline, end, g int) (Doubt, bool) {
 	if math.IsNaN(area) {
 		return Doubt{}, false
 	}
+	if g == 0 && x.works(1-end) && math.IsNaN(x.at(".rings", "leak_percent")) {
+		return Doubt{}, false // valves closing late on both ends: what the rings leak reads on the suction groups (leaks.md section 2)
+	}
 	subject := x.throwID() + own + "." + groupNames[g]
 	d := Doubt{Subject: subject, Step: x.c.Step}
 	if area > mostPercent {
@@ -191,11 +194,16 @@ type like struct {
 	end int
 }
 
-// likes gives the cylinder's other end, then the same end of the throws that have the same pressures and the same size:
-// told by their suction pressure, ratio and indicated work.
+// works tells whether an end compressed at this load step.
+func (x *examined) works(end int) bool { return !math.IsNaN(x.at("."+endNames[end], "n_comp_late")) }
+
+// likes gives the cylinder's other end, then the same end of the throws that have the same pressures and the same size,
+// told by their suction pressure, ratio and indicated work, and whose other end works or rests likewise: beside an end
+// that rests the rings leak as the loaded end's suction group does.
 func (x *examined) likes(b *Baseline, end int) []like {
 	var out []like
-	if !math.IsNaN(x.at("."+endNames[1-end], "n_comp_late")) {
+	pair := x.works(1 - end)
+	if pair {
 		out = append(out, like{x, 1 - end})
 	}
 	for i := range b.Cells {
@@ -205,7 +213,7 @@ func (x *examined) likes(b *Baseline, end int) []like {
 		}
 		o := examined{c: c, layout: x.layout}
 		near := func(a, b, share float64) bool { return math.Abs(a-b) <= share*math.Abs(a) }
-		if near(x.c.Shape.Centre[2], c.Shape.Centre[2], 0.002) && math.Abs(x.c.Shape.Centre[0]-c.Shape.Centre[0]) < 0.02 &&
+		if o.works(1-end) == pair && near(x.c.Shape.Centre[2], c.Shape.Centre[2], 0.002) && math.Abs(x.c.Shape.Centre[0]-c.Shape.Centre[0]) < 0.02 &&
 			near(x.at("."+endNames[end], "indicated_work_j"), o.at("."+endNames[end], "indicated_work_j"), 0.1) {
 			out = append(out, like{&o, end})
 		}

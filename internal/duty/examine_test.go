@@ -89,6 +89,9 @@ func TestExamination(t *testing.T) {
 		"single-acting, discharge":                 {with(alone, map[string]float64{"t1.he.discharge leak_percent": 4.2, "t1.he n_comp_late": 1.305, "t1.he n_exp_late": 1.29}), "t1.he.discharge", "the end's suction group 3.1 %"},
 		"single-acting, suction or rings":          {with(alone, map[string]float64{"t1.he.suction leak_percent": 4.9, "t1.he n_comp_late": 1.28, "t1.he n_exp_late": 1.31}), "t1.he.suction", "it or the rings"},
 		"single-acting, areas without a witness":   {with(alone, map[string]float64{"t1.he.discharge leak_percent": 4.2}), "", ""},
+		"one end rests, the twin's does not":       {with(single, map[string]float64{"t1.he.suction leak_percent": 1.9}), "", ""},
+		"late closing, no ring area":               {map[string]float64{"t1.rings leak_percent": gone, "t1.he.suction leak_percent": 4.4}, "", ""},
+		"late closing, discharge":                  {map[string]float64{"t1.rings leak_percent": gone, "t1.he.discharge leak_percent": 2}, "t1.he.discharge", "t1.ce.discharge 0.6 %"},
 		"nothing is known of the leaks and no gas": {map[string]float64{"t1.he.suction leak_percent": gone, "t1.he n_comp_late": gone}, "", ""},
 	} {
 		t.Run(name, func(t *testing.T) {

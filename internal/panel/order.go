@@ -52,31 +52,36 @@ func order(src Source, log *slog.Logger) http.HandlerFunc {
 		ctx, cancel := context.WithTimeout(r.Context(), orderWait)
 		defer cancel()
 		receipt, err := src.Order(ctx, o)
-		switch {
-		case errors.Is(err, ErrBusy):
-			w.Header().Set("Retry-After", "2")
-			http.Error(w, "not carried out: "+ErrBusy.Error(), http.StatusServiceUnavailable)
-			return
-		case errors.Is(err, ErrNotRunning):
-			http.Error(w, "not carried out: "+ErrNotRunning.Error(), http.StatusServiceUnavailable)
-			return
-		case err != nil:
-			log.Error("panel: order", "err", err)
-			http.Error(w, "the order was not carried out; see the log", http.StatusInternalServerError)
-			return
-		}
-		b, err := json.Marshal(receipt)
-		if err != nil {
-			log.Error("panel: order", "err", err)
-			http.Error(w, "the answer could not be written; see the log and the journal", http.StatusInternalServerError)
-			return
-		}
-		w.Header().Set("Content-Type", "application/json")
-		if !receipt.Accepted {
-			w.WriteHeader(http.StatusConflict)
-		}
-		_, _ = w.Write(append(b, '\n'))
+		answer(w, receipt, err, log)
 	}
+}
+
+// answer tells what became of an order.
+func answer(w http.ResponseWriter, receipt wire.Receipt, err error, log *slog.Logger) {
+	switch {
+	case errors.Is(err, ErrBusy):
+		w.Header().Set("Retry-After", "2")
+		http.Error(w, "not carried out: "+ErrBusy.Error(), http.StatusServiceUnavailable)
+		return
+	case errors.Is(err, ErrNotRunning):
+		http.Error(w, "not carried out: "+ErrNotRunning.Error(), http.StatusServiceUnavailable)
+		return
+	case err != nil:
+		log.Error("panel: order", "err", err)
+		http.Error(w, "the order was not carried out; see the log", http.StatusInternalServerError)
+		return
+	}
+	b, err := json.Marshal(receipt)
+	if err != nil {
+		log.Error("panel: order", "err", err)
+		http.Error(w, "the answer could not be written; see the log and the journal", http.StatusInternalServerError)
+		return
+	}
+	w.Header().Set("Content-Type", "application/json")
+	if !receipt.Accepted {
+		w.WriteHeader(http.StatusConflict)
+	}
+	_, _ = w.Write(append(b, '\n'))
 }
 
 // mayOrder refuses an order that a person at this machine did not mean: one that a page of another site sends through

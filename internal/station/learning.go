@@ -201,6 +201,18 @@ func (l *Line) inForce(b *duty.Baseline) error {
 	return err
 }
 
+// ImportBaseline lets a baseline that was learnt elsewhere or before wait for a person's word. The caller has checked
+// that it fits.
+func (l *Line) ImportBaseline(b *duty.Baseline, by, note string) error {
+	if l.learner != nil || l.study.proposal != nil {
+		return cannotLearn("a run is on or what was learnt last waits: accept or drop it first")
+	}
+	c := *b
+	c.Note = strings.TrimSpace(c.Note + " imported by " + by + ": " + note)
+	l.learn, l.learnt, l.study = LearnPlan{By: by, Note: note, Propose: true}, 0, study{over: l.base, proposal: &c}
+	return nil
+}
+
 // DropLearning throws a run or its outcome away. Of a renewal, the baseline of before is whole again.
 func (l *Line) DropLearning() (string, error) {
 	said := ""
@@ -317,7 +329,7 @@ func (l *Line) judgeBy(b *duty.Baseline) error {
 		l.levels.take(b.Zeros)
 	}
 	l.blocks = duty.NewBlocks(ref, duty.BlockConfig{Turns: l.sk.Detection.BlockTurns})
-	l.judge = verdict.New(l.layout, verdict.Config{Channels: judgeChannels(l.sk)})
+	l.judge = verdict.New(l.layout, verdict.Config{Channels: judgeChannels(l.sk), Start: float64(l.info.Start.Unix())})
 	return nil
 }
 

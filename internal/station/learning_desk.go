@@ -1,10 +1,12 @@
 package station
 
 import (
+	"context"
 	"encoding/json"
 	"fmt"
 	"math"
 	"strings"
+	"sync"
 	"sync/atomic"
 	"time"
 
@@ -19,6 +21,9 @@ type learningDesk struct {
 	at      time.Time // sample time at which it was shown last
 	inForce uint64    // version of the baseline in force; 0: none of the stored ones
 	dirty   bool      // the document on disk is not how things stand
+
+	one      sync.Mutex                    // one import at a time
+	imported atomic.Pointer[duty.Baseline] // on its way to the compute goroutine
 }
 
 const (
@@ -65,6 +70,14 @@ func (s *Station) learnOrder(o Order) (done, error) {
 		if n := len(b.Doubts); n > 0 {
 			d.said += fmt.Sprintf(", with %d doubts", n)
 		}
+	case wire.VerbImport:
+		b := s.learning.imported.Swap(nil)
+		if b == nil {
+			err = cannotLearn("no file came with it")
+		} else if err = s.line.ImportBaseline(b, o.By, o.Reason); err == nil {
+			s.proposed(s.line.Proposal())
+			d.said = fmt.Sprintf("the baseline of %s waits to be accepted or dropped", b.Created.UTC().Format(time.RFC3339))
+		}
 	case wire.VerbLearnDrop:
 		if d.said, err = s.line.DropLearning(); err == nil {
 			s.desk.say("learning", "")
@@ -82,10 +95,28 @@ func (s *Station) learnOrder(o Order) (done, error) {
 	return d, nil
 }
 
+// Import checks a baseline file and lets it wait for a person's word. Any goroutine.
+func (s *Station) Import(ctx context.Context, raw []byte, anySkid bool, o Order) (wire.Receipt, error) {
+	s.learning.one.Lock()
+	defer s.learning.one.Unlock()
+	b, err := duty.ParseBaseline(raw)
+	if err == nil {
+		err = b.Fits(s.line.layout, s.sk.Hash, anySkid)
+	}
+	if err != nil {
+		r := wire.Receipt{Version: 1, Caution: wire.Caution}
+		r.Type, r.Verb, r.By, r.Reason, r.Via, r.Said = "act", o.Verb, o.By, o.Reason, o.Via, err.Error()
+		return r, nil
+	}
+	s.learning.imported.Store(b)
+	defer s.learning.imported.Store(nil)
+	return s.Order(ctx, o)
+}
+
 // proposed tells that a run has ended and waits.
 func (s *Station) proposed(b *duty.Baseline) {
 	s.learning.dirty, s.learning.at = true, time.Time{}
-	s.desk.say("learning", fmt.Sprintf("a learning run has ended with %d doubts and waits to be accepted or dropped", len(b.Doubts)))
+	s.desk.say("learning", fmt.Sprintf("a baseline was learnt or imported, with %d doubts, and waits to be accepted or dropped", len(b.Doubts)))
 	s.log.Info("a learning run waits to be accepted or dropped", "first_turn", b.Turn0, "last_turn", b.Turn1, "doubts", len(b.Doubts))
 	s.doubts(b)
 }

@@ -201,7 +201,30 @@ func exchange(t *testing.T, o Options, h **hand) {
 		}
 	}
 	*h = byHand(t, o)
+	again(t, *h, raw)
 	if w := (*h).state(t, "none"); w.InForce == nil || w.InForce.ID != 2 {
 		t.Errorf("in force: %+v", w.InForce)
 	}
+}
+
+// again hands the file to the running station, where it waits.
+func again(t *testing.T, h *hand, raw []byte) {
+	go func() { h.carryOut(<-h.orders) }()
+	o := Order{Verb: wire.VerbImport, By: "R. Example", Reason: "back to the first", Via: "tool"}
+	r, err := h.Import(t.Context(), raw, false, o)
+	if err != nil || !r.Accepted || !strings.Contains(r.Said, "waits to be accepted") {
+		t.Fatalf("import: %+v, %v", r, err)
+	}
+	if w := h.state(t, "proposed"); w.InForce == nil || w.InForce.ID != 2 || !strings.Contains(w.Proposed.Note, "imported by R. Example: back to the first") {
+		t.Errorf("imported: %+v", w)
+	}
+	for _, bad := range [][]byte{nil, []byte("{}"), []byte(strings.Replace(string(raw), h.sk.Hash, "another", 1))} {
+		if r, err := h.Import(t.Context(), bad, false, o); err != nil || r.Accepted {
+			t.Errorf("a bad file: %+v, %v", r, err)
+		}
+	}
+	if r := h.execute(o); r.Accepted || !strings.Contains(r.Said, "no file came") {
+		t.Errorf("an import without a file: %+v", r)
+	}
+	h.order(t, Order{Verb: wire.VerbLearnDrop}, "thrown away")
 }

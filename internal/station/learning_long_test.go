@@ -47,6 +47,9 @@ func TestFieldContaminatedLearning(t *testing.T) {
 				}
 			}
 			for _, step := range configSkid(t, name).Steps {
+				if len(step.Idle) == 4 {
+					continue // all ends of two throws: nothing is compressed then
+				}
 				silent(step.Name, 3, func(sk *skid.Skid) model.Script {
 					s := lineRatio(sk, 1)
 					s.Step = step.Code
