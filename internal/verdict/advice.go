@@ -33,6 +33,9 @@ func advice(c *trial, f *Finding) (settle, next []string) {
 			if slices.ContainsFunc(f.Ambiguous, func(s string) bool { return strings.HasSuffix(s, ".rings") }) {
 				settle = append(settle, "At this load step leaking rings read as suction valves. Both ends alike suggest the rings; a load step with both ends at work and no late closing tells them apart.")
 			}
+			if slices.ContainsFunc(f.Ambiguous, func(s string) bool { return strings.HasSuffix(s, ".packing") }) {
+				settle = append(settle, "Look at the packing vent's flow or temperature: a packing leak shows there, a valve leak does not.")
+			}
 			next = []string{planRepair}
 			if f.Grade == Danger {
 				next = []string{"The loss is large: ask the machinery engineer now whether the machine should be unloaded or stopped.", planRepair}

@@ -76,6 +76,7 @@ type mark struct {
 	slowSignal bool
 	valve      string
 	ambiguous  []string
+	rather     string // of these, the one that the temperatures speak for
 }
 
 // New makes a judge of a layout.

@@ -523,3 +523,34 @@ func TestCommonWarmthNamesNoValve(t *testing.T) {
 		t.Errorf("one cover that stands out of %d is not named", covers)
 	}
 }
+
+// A crank end's suction pattern that stands long with every cover cold speaks for the packing; a warm cover names the
+// valve instead, and at first nothing is said either way.
+func TestColdCoversSpeakForThePacking(t *testing.T) {
+	s := newSynth(11)
+	baseline := commission(t, s, 900, nil)
+	for name, c := range map[string]struct {
+		cover float64
+		end   string
+		turns int
+		want  bool
+	}{"cold": {0, "t1.ce.suction", 500, true}, "cold, but young": {0, "t1.ce.suction", 150, false}, "warm": {9, "t1.ce.suction", 500, false}, "the head end has no packing": {0, "t1.he.suction", 500, false}} {
+		t.Run(name, func(t *testing.T) {
+			s := newSynth(11)
+			r := baseline.fresh()
+			s.leak[c.end] = 4
+			s.cover["t1.ce.s1"] = c.cover
+			last := ""
+			r.run(s, c.turns, nil, func(_ duty.Block, fs []Finding) {
+				for _, f := range fs {
+					if f.Subject == c.end {
+						last = f.Sentence
+					}
+				}
+			})
+			if got := strings.Contains(last, "speak for t1.packing"); got != c.want || last == "" {
+				t.Error(last)
+			}
+		})
+	}
+}

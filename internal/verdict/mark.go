@@ -221,6 +221,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			if m.valve != "" { // a leaking packing warms no cover; it may well be heard
 				m.ambiguous = slices.DeleteFunc(m.ambiguous, func(s string) bool { return s == b.place.id+".packing" })
 			}
+			m.rather = b.ratherPacking(c, &m, t)
 			if b.quietPacking(v, t) && c.end == crank.CE && c.group == suction {
 				pressure.most(0, "valves quiet and gas no warmer: the packing's case")
 			}
@@ -271,6 +272,24 @@ func noMark() mark {
 // witnesses must have been heard.
 func (b *bench) quietPacking(v *heard, t *felt) bool {
 	return v.leak[2].llr <= -1 && v.noiseZ[2] < 1 && !math.IsNaN(t.ofTd) && t.ofTd < 1
+}
+
+// coverTurns is how long covers must have had to warm up, and ratherLoss how much must leak, before cold ones say anything.
+const (
+	coverTurns = 300
+	ratherLoss = 2.0 // % of the end's delivery
+)
+
+// ratherPacking names the packing where a crank end's suction pattern has stood long and strong and no cover of the group
+// is any warmer: gas that goes back through a suction valve heats it, gas that leaves by the packing does not.
+func (b *bench) ratherPacking(c *trial, m *mark, t *felt) string {
+	if c.end != crank.CE || c.group != suction || c.grade == None || !(m.g >= ratherLoss) || !t.cold[c.h] {
+		return ""
+	}
+	if n := len(c.marks); n < history-1 || c.marks[n-1].turn-c.since < coverTurns {
+		return ""
+	}
+	return b.place.id + ".packing"
 }
 
 func (b *bench) markPacking(c *trial, m *mark, v *heard, t *felt) {

@@ -76,6 +76,9 @@ func sentence(l measure.Layout, b *bench, c *trial, f *Finding) string {
 	}
 	if len(f.Ambiguous) > 0 {
 		s.WriteString("; cannot be told from " + strings.Join(f.Ambiguous, " or "))
+		if m := &c.marks[len(c.marks)-1]; m.rather != "" {
+			s.WriteString(", and covers that stay cold speak for " + m.rather)
+		}
 	}
 	return s.String() + ". Next: " + nextWords(c, f) + "."
 }

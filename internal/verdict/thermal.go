@@ -11,12 +11,16 @@ import (
 type felt struct {
 	group [4]vote
 	valve [4]string // the valve whose cover stands out of its group, else ""
+	cold  [4]bool   // covers are measured, and none is warmer than usual
 	rings vote
 	ofTd  float64 // z of the discharge temperature's excess, NaN where absent
 }
 
 // coverStands is the least departure of a cover from its group, in kelvin, that names a valve.
 const coverStands = 3.0
+
+// coverCold is the rise, in kelvin, below which no cover of a group is warmer.
+const coverCold = 1.0
 
 // acquit is all that a cold cover or pipe may say against a leak: small leaks warm little, and slowly.
 const acquit = -0.5
@@ -66,6 +70,7 @@ func feel(p *place, dev []*duty.Deviation, settled bool) felt {
 		if best == "" {
 			continue
 		}
+		out.cold[h] = settled && bestK < coverCold
 		out.group[h] = votes(bestZ)
 		out.group[h].least(acquit)
 		if bestK < coverStands {
