@@ -155,11 +155,18 @@ func (a *Annunciator) unshelve(p *Point) {
 	}
 }
 
-// expired gives the keys whose shelf has ended, sorted.
+// expired gives the keys whose shelf has ended, sorted. A clock that was set back keeps nothing hidden for longer than
+// the longest shelf.
 func (a *Annunciator) expired(now time.Time) []string {
 	var keys []string
 	for k, p := range a.points {
-		if !p.ShelvedUntil.IsZero() && !now.Before(p.ShelvedUntil) {
+		if p.ShelvedUntil.IsZero() {
+			continue
+		}
+		if p.ShelvedUntil.Sub(now) > a.cfg.MaxShelf {
+			p.ShelvedUntil, a.hidden = now.Add(a.cfg.MaxShelf), true
+		}
+		if !now.Before(p.ShelvedUntil) {
 			keys = append(keys, k)
 		}
 	}
