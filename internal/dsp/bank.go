@@ -53,9 +53,9 @@ func (b *Bank) Reset() { b.fresh = true }
 
 // Process filters the next samples: in, f and g have an entry for each channel, all of the same length. f and g may
 // share their slices, if the filters are the same.
-func (b *Bank) Process(f, g [][]float64, in [][]int32) { b.process(f, g, in, bankRun) }
+func (b *Bank) Process(f, g [][]float64, in [][]int32) { b.process(f, g, in, hasAVX2) }
 
-func (b *Bank) process(f, g [][]float64, in [][]int32, run func(b *Bank, from, n int)) {
+func (b *Bank) process(f, g [][]float64, in [][]int32, vectors bool) {
 	if len(in) != b.n || len(f) != b.n || len(g) != b.n {
 		panic("dsp: Bank: number of channels")
 	}
@@ -75,7 +75,12 @@ func (b *Bank) process(f, g [][]float64, in [][]int32, run func(b *Bank, from, n
 	}
 	for from := 0; from < n; {
 		m := min(n-from, flushEvery-b.seen)
-		run(b, from, m)
+		fours := 0
+		if vectors && m >= 4 {
+			fours = m &^ 3
+			bankAVX2(b, from, fours)
+		}
+		bankPlain(b, from+fours, m-fours)
 		from += m
 		if b.seen += m; b.seen == flushEvery {
 			b.flush()

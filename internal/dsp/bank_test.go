@@ -57,7 +57,7 @@ func noise(n int, most int32, seed uint32) []int32 {
 // However the stream is cut, whatever the number of channels and whichever form is taken, each band is what a Filter of
 // its own makes of the channel, to the last bit.
 func TestBankIsFourFilters(t *testing.T) {
-	forms := map[string]func(b *Bank, from, n int){"chosen": bankRun, "plain": bankPlain}
+	forms := map[string]bool{"chosen": hasAVX2, "plain": false}
 	rapid.Check(t, func(t *rapid.T) {
 		lo := rapid.Float64Range(100, 8000).Draw(t, "lo")
 		f, err := BandPass(2, lo, rapid.Float64Range(lo+200, 24000).Draw(t, "hi"), 51200)
@@ -87,7 +87,7 @@ func TestBankIsFourFilters(t *testing.T) {
 				h.Process(want[j][k], x)
 			}
 		}
-		for name, run := range forms {
+		for name, vectors := range forms {
 			b, err := NewBank(f, g, gain, offset)
 			if err != nil {
 				t.Fatal(err)
@@ -104,7 +104,7 @@ func TestBankIsFourFilters(t *testing.T) {
 						out[j] = append(out[j], got[j][k][from:])
 					}
 				}
-				b.process(out[0], out[1], part, run)
+				b.process(out[0], out[1], part, vectors)
 				from = to
 			}
 			for j := range got {
@@ -176,7 +176,7 @@ func BenchmarkBank(b *testing.B) {
 	for k := range in {
 		in[k], y[k], z[k] = noise(n, 2000, uint32(k)), make([]float64, n), make([]float64, n)
 	}
-	for name, run := range map[string]func(b *Bank, from, n int){"chosen": bankRun, "plain": bankPlain} {
+	for name, vectors := range map[string]bool{"chosen": hasAVX2, "plain": false} {
 		b.Run(name, func(b *testing.B) {
 			bank, err := NewBank(f, g, []float64{1, 1, 1, 1}, make([]float64, 4))
 			if err != nil {
@@ -184,7 +184,7 @@ func BenchmarkBank(b *testing.B) {
 			}
 			b.ReportAllocs()
 			for b.Loop() {
-				bank.process(y, z, in, run)
+				bank.process(y, z, in, vectors)
 			}
 			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*n*4), "ns/sample")
 		})

@@ -25,10 +25,10 @@ func (b *Bins) Add(from, to int) {
 // Levels gives, for every bin, the largest magnitude and the root mean square of x, and the mean square of y. y may be
 // nil; then square is not used. x and y are finite.
 func (b *Bins) Levels(peak, rms, square, x, y []float64) {
-	b.levels(peak, rms, square, x, y, levelsRun)
+	b.levels(peak, rms, square, x, y, hasAVX2)
 }
 
-func (b *Bins) levels(peak, rms, square, x, y []float64, run func(b *Bins, peak, rms, square, x, y []float64)) {
+func (b *Bins) levels(peak, rms, square, x, y []float64, vectors bool) {
 	n := len(b.at) / 2
 	if n == 0 {
 		return
@@ -39,7 +39,12 @@ func (b *Bins) levels(peak, rms, square, x, y []float64, run func(b *Bins, peak,
 	if int(b.end) > min(len(x), len(y)) {
 		panic("dsp: Bins: samples missing")
 	}
-	run(b, peak[:n], rms[:n], square[:n], x, y)
+	peak, rms, square = peak[:n], rms[:n], square[:n]
+	if vectors {
+		levelsAVX2(b, &peak[0], &rms[0], &square[0], &x[0], &y[0])
+		return
+	}
+	levelsPlain(b, peak, rms, square, x, y)
 }
 
 func levelsPlain(b *Bins, peak, rms, square, x, y []float64) {

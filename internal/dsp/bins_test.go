@@ -34,7 +34,7 @@ func TestBinsLevels(t *testing.T) {
 			got[k], plain[k] = make([]float64, n), make([]float64, n)
 		}
 		b.Levels(got[0], got[1], got[2], x, y)
-		b.levels(plain[0], plain[1], plain[2], x, y, levelsPlain)
+		b.levels(plain[0], plain[1], plain[2], x, y, false)
 		for i := range n {
 			var peak, sx, sy float64
 			from, to := b.at[2*i], b.at[2*i+1]
@@ -88,10 +88,10 @@ func BenchmarkBins(b *testing.B) {
 		x = append(x, float64(c))
 	}
 	p, r, s := make([]float64, n), make([]float64, n), make([]float64, n)
-	for name, run := range map[string]func(b *Bins, peak, rms, square, x, y []float64){"chosen": levelsRun, "plain": levelsPlain} {
+	for name, vectors := range map[string]bool{"chosen": hasAVX2, "plain": false} {
 		b.Run(name, func(b *testing.B) {
 			for b.Loop() {
-				bins.levels(p, r, s, x, x, run)
+				bins.levels(p, r, s, x, x, vectors)
 			}
 			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/(float64(b.N)*4.74*n), "ns/sample")
 		})

@@ -13,7 +13,7 @@ func Rectify(dst, src []float64, w int) {
 	done := 0
 	if n := (len(src) - w + 1) &^ 3; hasAVX2 && n > 0 { // whole fours of outputs with all their samples
 		rectifyPlain(dst[:w-1], src[:w-1], w, 0)
-		rectifyVectors(dst[w-1:], src, n, w)
+		rectifyAVX2(&dst[w-1], &src[0], n, w)
 		done = w - 1 + n
 	}
 	rectifyPlain(dst, src, w, done)

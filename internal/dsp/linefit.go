@@ -46,9 +46,11 @@ func (l *LineFit) At(dst [2][]float64, pos []float64, x [2][]float64, from int64
 		panic("dsp: LineFit: samples missing")
 	}
 	dst[0], dst[1] = dst[0][:n], dst[1][:n]
-	if done := linesRun(l, dst, pos, x, shift); !done {
-		l.plain(dst, pos, x, shift)
+	if hasAVX2 && n >= 4 && l.reach > 0 {
+		linesAVX2(l, &dst[0][0], &dst[1][0], &pos[0], n, &x[0][0], &x[1][0], shift)
+		return
 	}
+	l.plain(dst, pos, x, shift)
 }
 
 // nearest gives the sample nearest to a position.

@@ -13,7 +13,7 @@ func logs(dst, x []float64, vectors bool) {
 	dst = dst[:len(x)]
 	for i := 0; i < len(x); {
 		if n := (len(x) - i) &^ 3; vectors && n > 0 {
-			i += logsVectors(dst[i:], x[i:], n)
+			i += logsAVX2(&dst[i], &x[i], n)
 		}
 		for to := min(i+4, len(x)); i < to; i++ { // the rest, or four of which one is not usual
 			dst[i] = log(x[i])
@@ -25,7 +25,7 @@ func exps(dst, x []float64, vectors bool) {
 	dst = dst[:len(x)]
 	for i := 0; i < len(x); {
 		if n := (len(x) - i) &^ 3; vectors && n > 0 {
-			i += expsVectors(dst[i:], x[i:], n)
+			i += expsAVX2(&dst[i], &x[i], n)
 		}
 		for to := min(i+4, len(x)); i < to; i++ {
 			dst[i] = exp(x[i])

@@ -42,7 +42,7 @@ func (m *Moments) part(to int, vectors bool) Part {
 		from += n
 	}
 	if n := (to - from) &^ 7; vectors && n > 0 {
-		momentsVectors(m, from, n)
+		momentsAVX2(m, &m.x[from], n)
 		from += n
 	}
 	momentsPlain(m, from, to-from)

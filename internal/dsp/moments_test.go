@@ -61,13 +61,13 @@ func TestMoments(t *testing.T) {
 
 func BenchmarkMoments(b *testing.B) {
 	x := noise(3413, 2000, 1)
-	for name, run := range map[string]bool{"chosen": hasAVX2, "plain": false} {
+	for name, vectors := range map[string]bool{"chosen": hasAVX2, "plain": false} {
 		b.Run(name, func(b *testing.B) {
 			var m Moments
 			for b.Loop() {
 				m.Begin(x)
 				for k := range 32 {
-					m.part((k+1)*len(x)/32, run)
+					m.part((k+1)*len(x)/32, vectors)
 				}
 			}
 			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*len(x)), "ns/sample")

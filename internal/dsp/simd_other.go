@@ -4,24 +4,13 @@ package dsp
 
 const hasAVX2 = false
 
-func bankRun(b *Bank, from, n int) { bankPlain(b, from, n) }
-
-func valuesRun(dst []float64, x []int32, gain, offset float64) (n int) { return 0 }
-
-func extremesRun(x []int32) (least, most int32) { return extremesPlain(x) }
-
-func linesRun(l *LineFit, dst [2][]float64, pos []float64, x [2][]float64, shift int) (done bool) {
-	return false
-}
-
-func levelsRun(b *Bins, peak, rms, square, x, y []float64) {
-	levelsPlain(b, peak, rms, square, x, y)
-}
-
-func momentsVectors(m *Moments, from, n int) { momentsPlain(m, from, n) }
-
-func logsVectors(dst, x []float64, n int) (done int) { return 0 }
-
-func expsVectors(dst, x []float64, n int) (done int) { return 0 }
-
-func rectifyVectors(dst, src []float64, n, w int) {}
+// Never called.
+func bankAVX2(*Bank, int, int)                                                       {}
+func valuesAVX2(*float64, *int32, int, float64, float64)                             {}
+func extremesAVX2(*int32, int) (int32, int32)                                        { return 0, 0 }
+func linesAVX2(*LineFit, *float64, *float64, *float64, int, *float64, *float64, int) {}
+func levelsAVX2(*Bins, *float64, *float64, *float64, *float64, *float64)             {}
+func momentsAVX2(*Moments, *int32, int)                                              {}
+func logsAVX2(*float64, *float64, int) int                                           { return 0 }
+func expsAVX2(*float64, *float64, int) int                                           { return 0 }
+func rectifyAVX2(*float64, *float64, int, int)                                       {}
