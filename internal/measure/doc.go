@@ -122,9 +122,9 @@
 //	ve_discharge_percent [%, pressure] volumetric efficiency by discharge: (V_opens − V_clearance)/V_swept
 //		source: methods.md 1.1. there when: discharge opening found. uncertain by: ve_discharge_u_percent for the angle; clearance does not enter
 //	capacity_suction_kg_h [kg/h, pressure] capacity by suction: VE_s V_swept p_s/(Zs R Ts) n; suction plateau, line temperature
-//		source: methods.md 1.1. there when: gas and suction temperature known. uncertain by: ve and pressure; charge heating and the leaks of a healthy machine make it read 0.5 to 3 % high
+//		source: methods.md 1.1. there when: gas and suction temperature known. uncertain by: ve and pressure; charge heating and the leaks of a healthy machine make it read 0.5 to 3 % high, with hydrogen and slowly up to 14 %
 //	capacity_discharge_kg_h [kg/h, pressure] capacity by discharge: VE_d V_swept p_d/(Zd R Td) n; measured Td, adiabatic where none is known
-//		source: methods.md 1.1. there when: gas and a temperature known. uncertain by: ve and pressure; charge heating and the leaks of a healthy machine make it read 0.5 to 3 % high
+//		source: methods.md 1.1. there when: gas and a temperature known. uncertain by: ve and pressure; charge heating and the leaks of a healthy machine make it read 0.5 to 3 % high, with hydrogen and slowly up to 14 %
 //	flow_balance [1, pressure] suction flow over discharge flow: always with the adiabatic Td: a thermometer lags by minutes
 //		source: methods.md 1.1. there when: gas and suction temperature known. uncertain by: healthy 0.988 to 0.997 on the model; drifts with temperature, 0.013 a block
 //	n_comp_early [1, pressure] exponent of early compression: −d ln p/d ln V by least squares, from 8 % of ln(pd/ps) to the middle
@@ -185,8 +185,8 @@
 //		source: DIN 1343, from memory. there when: gas and suction temperature known. uncertain by: as capacity_suction_kg_h
 //	capacity_discharge_nm3_h [Nm³/h, pressure] capacity by discharge as normal volume: likewise
 //		source: DIN 1343, from memory. there when: gas and a temperature known. uncertain by: as capacity_discharge_kg_h
-//	delivered_kg_h [kg/h, pressure] gas delivered, leaks taken off: capacity by suction less what the leak fit sends through suction valves and rings in a turn, and through the discharge valves while suction is open; signed as fitted
-//		source: mass balance of an end. there when: leak fit, gas and suction temperature known. uncertain by: 2 % at 95 % on the model, see the figures below; restless turn by turn (0.5 to 1.5 %)
+//	delivered_kg_h [kg/h, pressure] gas delivered, leaks taken off: capacity by suction less the room that the fitted leaks take: through the suction valves, and past rings and discharge valves while suction is open, by T/Ts of the leaking gas; signed as fitted
+//		source: mass balance of an end. there when: leak fit, gas and suction temperature known. uncertain by: median of 13 turns 1.6 % at 95 % on the model, see the figures above; a turn 0.5 to 1.5 %
 //	delivered_nm3_h [Nm³/h, pressure] gas delivered as normal volume: as capacity_suction_nm3_h
 //		source: DIN 1343, from memory. there when: as delivered_kg_h. uncertain by: as delivered_kg_h
 //	isentropic_efficiency_percent [%, pressure] isentropic efficiency from line to line: delivered mass times the real gas's isentropic enthalpy rise between the lines, over indicated power
