@@ -253,7 +253,7 @@ func TestScriptErrors(t *testing.T) {
 		"unknown stage":   Script{}.Add(0, 0, SuctionPressure, "2", 1e5),
 		"unknown step":    Script{}.Add(0, 0, LoadStep, "", 17),
 		"negative leak":   Script{}.Add(0, 0, ValveLeak, "t1.he.s1", -1e-6),
-		"no speed":        Script{}.Add(0, 0, Speed, "", 0),
+		"backwards":       Script{}.Add(0, 0, Speed, "", -10),
 		"not a number":    Script{}.Add(0, 0, Speed, "", math.NaN()),
 		"unknown what":    Script{}.Add(0, 0, What(99), "", 1),
 		"no pressure":     {Lines: []skid.Line{{Ps: math.NaN(), Pd: 1e6, Ts: 300}}},

@@ -23,8 +23,9 @@
 //
 // The gas of a stage is ideal within a turn, with the R·Z at suction and the mean volume isentropic exponent of its real
 // gas (package gas) at the present lines; both follow the script. With Params.RealPath the exponent also moves within the
-// stroke, as along the real isentrope. Each end is one well-mixed volume with an open-system energy balance (methods: Bloch and Hoefner, Reciprocating Compressors, 1996;
-// valve and cylinder equations as in Brun and Kurz, Compression Machinery for Oil and Gas, 2019, ch. 5).
+// stroke, as along the real isentrope. Each end is one well-mixed volume with an open-system energy balance (methods:
+// Bloch and Hoefner, Reciprocating Compressors, 1996; valve and cylinder equations as in Brun and Kurz, Compression
+// Machinery for Oil and Gas, 2019, ch. 5).
 package model
 
 import (
@@ -81,6 +82,7 @@ type Machine struct {
 	chans        []*channel
 	inputs       int
 	mark         *marker
+	once         *marker    // beside a wheel whose teeth are all alike
 	scatter      *rand.Rand // turn-to-turn scatter: breakaway, transfer of impacts
 	procNoise    *rand.Rand
 	history      []skid.Process // the newest readings, at most historyKept
@@ -215,6 +217,9 @@ func (m *Machine) sample() {
 	m.n++
 	if m.mark != nil {
 		m.mark.read(m)
+	}
+	if m.once != nil {
+		m.once.read(m)
 	}
 	for _, t := range m.throws {
 		t.shake(m)

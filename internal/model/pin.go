@@ -6,6 +6,9 @@ import (
 	"lapwing/internal/crank"
 )
 
+// pinMost bounds what is kept of a turn that does not end because the machine stands.
+const pinMost = 1 << 19
+
 // pin keeps a turn's combined rod load at the crosshead pin, from the true pressures and the piston's travel at three
 // samples in a row: whatever the shaft does within the turn is in it.
 type pin struct {
@@ -19,7 +22,9 @@ func (q *pin) book(t *throw, dt, travel, he, ce float64) {
 		c := &t.sk.Cylinder
 		acc := (travel - 2*q.x1 + q.x0) / (dt * dt)
 		gas := (he-t.atm)*c.Area(crank.HE) - (ce-t.atm)*c.Area(crank.CE)
-		q.load = append(q.load, gas-(c.MassPiston+c.MassCrosshead)*acc)
+		if len(q.load) < pinMost {
+			q.load = append(q.load, gas-(c.MassPiston+c.MassCrosshead)*acc)
+		}
 	}
 	q.x0, q.x1 = q.x1, travel
 }

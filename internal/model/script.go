@@ -17,7 +17,7 @@ const (
 	SuctionPressure   What = iota // stage ("1"); Pa absolute
 	DischargePressure             // stage; Pa absolute
 	SuctionTemp                   // stage; K
-	Speed                         // none; rev/min
+	Speed                         // none; rev/min; 0: it stands
 	LoadStep                      // none; load-step code; takes effect at once
 	ValveLeak                     // valve id; m² of effective leak area on top of the healthy one
 	RingLeak                      // throw id; m², likewise
@@ -233,8 +233,8 @@ func (p *plan) put(sk *skid.Skid, c Change) error {
 	case SuctionTemp:
 		return stage(p.ts)
 	case Speed:
-		if c.To <= 0 {
-			return fmt.Errorf("speed must be positive, got %g rev/min", c.To)
+		if c.To < 0 {
+			return fmt.Errorf("speed must not be negative, got %g rev/min", c.To)
 		}
 		p.speed.moves = append(p.speed.moves, c)
 		return nil

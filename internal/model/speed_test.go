@@ -1,6 +1,7 @@
 package model
 
 import (
+	"math"
 	"testing"
 
 	"lapwing/internal/crank"
@@ -52,5 +53,47 @@ func TestValvesSuitTheirSpeed(t *testing.T) {
 				t.Errorf("rated %g: no turn", rated)
 			}
 		}
+	}
+}
+
+// TestStopAndStart: the shaft runs down to a standstill and up again; while it stands it passes no mark, everything stays a
+// number, and the ends come to rest at the pressure that their leaks let them have.
+func TestStopAndStart(t *testing.T) {
+	t.Parallel()
+	sk := single()
+	s := Script{}.Add(0.3, 0.4, Speed, "", 0).Add(1.2, 0.4, Speed, "", 740)
+	m, err := New(sk, s, Options{Seed: 1, Rate: 12800})
+	if err != nil {
+		t.Fatal(err)
+	}
+	x := scaled(sk, "mark", collect(m, int(2.2*m.rate), []int{640}), 24)
+	up := func(from, to float64) (n int) {
+		for i := int(from * m.rate); i < int(to*m.rate); i++ {
+			if x[i-1] < 2.5 && x[i] >= 2.5 {
+				n++
+			}
+		}
+		return n
+	}
+	if a, b, c := up(0.01, 0.3), up(0.72, 1.2), up(1.65, 2.2); a < 3 || b != 0 || c < 6 {
+		t.Errorf("%d marks before the stop, %d while it stands, %d after it", a, b, c)
+	}
+	for _, tr := range m.Truths() {
+		if !(tr.RPM > 0 && tr.Delivered > -1 && tr.Work > -1e6 && tr.Power < 1e6) {
+			t.Errorf("turn %d: %+v", tr.Rev, tr)
+		}
+	}
+	p := m.Process(2.2)
+	if !(p.Stages[0].Td > 250) || len(p.Covers) == 0 {
+		t.Errorf("readings %+v", p)
+	}
+	for id, v := range p.Covers {
+		if !(v > 250 && v < 450) {
+			t.Errorf("cover %s is at %g K", id, v)
+		}
+	}
+	fill(m, 0.5)
+	if tr := last(t, m, 0, crank.HE); math.Abs(tr.RPM-740) > 20 {
+		t.Errorf("runs at %.0f rev/min after the start", tr.RPM)
 	}
 }

@@ -39,7 +39,10 @@ func (q *plate) warm(t *throw, share, dt, lag float64) {
 		target = t.discharge - 0.12*(t.discharge-t.stage.ts)
 		hot = 0.5 * (t.discharge - t.stage.ts)
 	}
-	g := math.Max(q.leaked, 0) / dt / share
+	g := 0.0
+	if share > 0 { // a machine that stands passes nothing to compare with
+		g = math.Max(q.leaked, 0) / dt / share
+	}
 	q.leaked = 0
 	target += hot * g / (g + 0.06)
 	// Small steady differences between covers: a few tenths of a kelvin by position.
