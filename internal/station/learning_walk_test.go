@@ -113,14 +113,31 @@ func TestFieldRunLength(t *testing.T) {
 		} {
 			all, states := walkBlocks(t, sk, walk.script, seed, walk.seconds, l.learnt, &l.windows)
 			t.Logf("seed %d, %s: turns by state %v", seed, walk.name, states)
+			var bear []reading
+			for _, r := range all {
+				if bears(r.name) {
+					bear = append(bear, r)
+				}
+			}
 			for _, only := range []bool{false, true} {
-				report(t, all, only)
+				report(t, "all measures", all, only)
+				report(t, "those that findings stand on", bear, only)
 			}
 		}
 	}
 }
 
-func report(t *testing.T, all []reading, settled bool) {
+// bears tells whether a leak, a late opening or a hard impact is found by a measure.
+func bears(name string) bool {
+	for _, p := range []string{"leak_percent", "leak_area_mm2", "leak_noise_db", "leak_shape", "n_comp_", "n_exp_", "mass_", "suction_opens_late_deg", "discharge_opens_late_deg", "ve_", "flow_balance", "impact_norm_ln", "extra_hits_45", "cover_above"} {
+		if strings.HasPrefix(name, p) {
+			return true
+		}
+	}
+	return false
+}
+
+func report(t *testing.T, what string, all []reading, settled bool) {
 	var lags []float64
 	n, wild := 0, [3]int{}
 	signals, names := map[float64]int{}, map[string]int{}
@@ -159,6 +176,6 @@ func report(t *testing.T, all []reading, settled bool) {
 	if len(lags) == 0 {
 		lags = []float64{math.NaN()}
 	}
-	t.Logf("  settled only %v: %d values of %d measures, lag-1 median %.2f; beyond 3, 4, 5 spreads: %v; slow test signals at 2, 4, 6, 8: %d %d %d %d %s", settled, n, len(all), lags[len(lags)/2],
+	t.Logf("  %s, settled only %v: %d values of %d measures, lag-1 median %.2f; beyond 3, 4, 5 spreads: %v; slow test signals at 2, 4, 6, 8: %d %d %d %d %s", what, settled, n, len(all), lags[len(lags)/2],
 		wild, signals[2], signals[4], signals[6], signals[8], fmt.Sprint(names))
 }
