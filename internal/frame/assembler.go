@@ -35,9 +35,12 @@ func New(cfg Config) (*Assembler, error) {
 	}
 	a := &Assembler{cfg: cfg, turn: cfg.FirstTurn}
 	a.ring.buf = make([][]int32, cfg.Inputs)
-	if a.cfg.Wheel.Teeth > 0 {
+	switch {
+	case a.cfg.Wheel.Separate:
+		a.ref = newApart(&a.cfg, &a.ring, &a.holes)
+	case a.cfg.Wheel.Teeth > 0:
 		a.ref = newCog(&a.cfg, &a.ring, &a.holes)
-	} else {
+	default:
 		a.ref = newOneMark(&a.cfg, &a.ring, &a.holes)
 	}
 	return a, nil

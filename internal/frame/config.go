@@ -32,6 +32,7 @@ type Config struct {
 	Threshold   float64 // codes; where Auto is false, the level whose crossing is the mark
 	Hysteresis  float64 // codes, >= 0, between the crossing and being ready for the next; 0: by the pulse's height. Teeth: what the signal must turn back by
 	Wheel       Wheel   // zero: one mark a turn
+	Index       int     // index of the signal of the mark apart, with Wheel.Separate; its levels are found
 	MinRPM      float64 // slower is standstill; 0: 30
 	MaxRPM      float64 // faster cannot be a shaft mark; 0: 2500
 	KeepSeconds float64 // longest frame kept; 0: 2.2 turns at MinRPM, at least 3 s
@@ -64,6 +65,9 @@ func (c Config) withDefaults() (Config, error) {
 	}
 	if c.Channel < 0 || c.Channel >= c.Inputs {
 		no("phase channel %d is none of the %d inputs", c.Channel, c.Inputs)
+	}
+	if c.Wheel.Separate && (c.Index < 0 || c.Index >= c.Inputs || c.Index == c.Channel) {
+		no("channel %d of the mark apart is none of the %d inputs, or that of the teeth", c.Index, c.Inputs)
 	}
 	if c.Edge > Falling {
 		no("edge %d, want Rising or Falling", c.Edge)

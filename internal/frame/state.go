@@ -28,7 +28,7 @@ func (s State) String() string {
 type Status struct {
 	State   State
 	RPM     float64 // NaN unless running or coasting
-	Height  float64 // usual height of a pulse or swing of a tooth, codes; NaN when not known
+	Height  float64 // usual height of a pulse (of the mark apart, where there is one) or swing of a tooth, codes; NaN when not known
 	Noise   float64 // RMS of the signal's noise, codes: at rest, or with teeth what does not repeat from turn to turn; NaN when not known
 	Least   float64 // multiple of the noise below which the usual height loses marks
 	Frames  int64   // frames given
@@ -51,7 +51,7 @@ func (a *Assembler) Status() Status {
 	r := a.ref.state()
 	s := Status{RPM: math.NaN(), Height: r.height, Noise: r.noise, Least: leastMark, Frames: a.frames, Extra: r.extra, Missing: r.missing,
 		Unclear: r.unclear, LetGo: a.letGo}
-	if a.cfg.Wheel.Teeth > 0 {
+	if a.cfg.Wheel.Teeth > 0 && !a.cfg.Wheel.Separate {
 		s.Least = leastTooth
 	}
 	quiet := float64(a.next) - max(r.lastPulse, float64(a.began))

@@ -18,6 +18,10 @@ type Wheel struct {
 	Extra   bool      // one tooth more, half a pitch before mark 0
 	Also    []int     // further missing teeth, as whole pitches after mark 0, increasing
 	Degrees []float64 // measured angles of the marks after mark 0, like Angles; nil: equal pitches
+
+	// Separate says that all teeth are alike and that a sensor of its own sees one mark a turn (Config.Index): mark 0 is
+	// the first tooth after that mark.
+	Separate bool
 }
 
 // Limits of a wheel.
@@ -64,6 +68,8 @@ func (w Wheel) String() string {
 	switch {
 	case w.Teeth == 0:
 		return "one mark"
+	case w.Separate:
+		return fmt.Sprintf("%d and a mark apart", w.Teeth)
 	case w.Extra:
 		return fmt.Sprintf("%d+1", w.Teeth)
 	}
@@ -85,7 +91,7 @@ func (w Wheel) String() string {
 // next.
 func (w Wheel) Check() error {
 	if w.Teeth == 0 {
-		if w.Missing != 0 || w.Extra || w.Also != nil || w.Degrees != nil {
+		if w.Missing != 0 || w.Extra || w.Also != nil || w.Degrees != nil || w.Separate {
 			return fmt.Errorf("a wheel without teeth")
 		}
 		return nil
@@ -95,6 +101,9 @@ func (w Wheel) Check() error {
 	}
 	if w.Missing < 0 || w.Missing > w.Teeth/4 {
 		return fmt.Errorf("wheel of %d teeth with %d missing, want at most a quarter", w.Teeth, w.Missing)
+	}
+	if w.Separate && (w.Extra || w.Missing > 0 || w.Also != nil) {
+		return fmt.Errorf("wheel with an index of its own and a mark apart: the index is one or the other")
 	}
 	if w.Extra && w.Missing > 0 {
 		return fmt.Errorf("wheel with an extra tooth and %d missing: the index is one or the other", w.Missing)
@@ -120,7 +129,7 @@ func (w Wheel) Check() error {
 			}
 		}
 	}
-	if w.repeats() {
+	if !w.Separate && w.repeats() {
 		return fmt.Errorf("wheel %v looks the same several times a turn: nothing tells where a turn begins", w)
 	}
 	return nil

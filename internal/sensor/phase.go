@@ -13,6 +13,14 @@ func (w *Watch) marks(c *watched, f *frame.Frame) {
 		return
 	}
 	c.seen = true
+	if f.Q&frame.LostTooth != 0 && (c.Teeth || !w.apart) {
+		if c.ep[Teeth].suspect(w.frames, f.Turn, f.Turn, f.Seq0, phaseTimes, phaseWithin) {
+			c.ep[Teeth].reason = say(c, Teeth)
+		}
+	}
+	if c.Teeth {
+		return
+	}
 	if w.ref.odd(f) {
 		if c.ep[Unsteady].suspect(w.frames, f.Turn, f.Turn, f.Seq0, phaseTimes, phaseWithin) {
 			c.ep[Unsteady].reason = say(c, Unsteady)
@@ -21,11 +29,6 @@ func (w *Watch) marks(c *watched, f *frame.Frame) {
 	if f.Q&(frame.Extra|frame.Bounced|frame.Weak) != 0 {
 		if c.ep[Pulses].suspect(w.frames, f.Turn, f.Turn, f.Seq0, phaseTimes, phaseWithin) {
 			c.ep[Pulses].reason = say(c, Pulses)
-		}
-	}
-	if f.Q&frame.LostTooth != 0 {
-		if c.ep[Teeth].suspect(w.frames, f.Turn, f.Turn, f.Seq0, phaseTimes, phaseWithin) {
-			c.ep[Teeth].reason = say(c, Teeth)
 		}
 	}
 }
@@ -60,7 +63,7 @@ func (p *periods) odd(f *frame.Frame) bool {
 func (w *Watch) Reference(s frame.Status, seq int64) {
 	for i := range w.ch {
 		c := &w.ch[i]
-		if c.Kind != Phase {
+		if c.Kind != Phase || c.Teeth {
 			continue
 		}
 		c.looks++

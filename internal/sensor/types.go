@@ -42,6 +42,8 @@ type Channel struct {
 	Gain     float64 // SI unit per V
 	Min, Max float64 // SI, outside is not believable; both zero: not checked
 
+	Teeth bool // of a phase channel: a wheel's teeth, beside a mark apart on another one
+
 	// Of a pressure channel: degrees of rotation from the mark to the dead centre with the least volume of its end
 	// (crank end: half a turn after the head end's), NaN when not known.
 	InnerDead float64

@@ -23,6 +23,7 @@ type Watch struct {
 	frames   int64
 	declared bool
 	ref      periods      // of the shaft
+	apart    bool         // a channel has the teeth, another one the mark
 	frame    *frame.Frame // being scanned
 	scanOne  func(i int)
 }
@@ -79,6 +80,7 @@ func New(cfg Config) (*Watch, error) {
 	w.scanOne = w.scanChannel
 	for i, c := range cfg.Channels {
 		d := &w.ch[i]
+		w.apart = w.apart || c.Teeth
 		*d = watched{Channel: c, lo: math.Inf(-1), hi: math.Inf(1), rail: [2]float64{math.NaN(), math.NaN()}}
 		if c.Kind != Phase {
 			d.slow = newSlow(cfg.Rate)

@@ -209,7 +209,7 @@ func (d *doubter) end(i, e int) {
 
 func (d *doubter) channels() {
 	sk := d.sk
-	used := map[string]bool{sk.Phase.Channel: true}
+	used := map[string]bool{sk.Phase.Channel: true, sk.Phase.Index: true}
 	stage := map[string]int{}
 	for i := range sk.Throws {
 		t := &sk.Throws[i]

@@ -161,7 +161,7 @@ func (r *reader) phase(o *object, sk *Skid) {
 		o.r.problem(o.at, "phase", "write `phase:` with `channel: …` below it; without a mark on the shaft there is no crank angle and nothing can be watched", "the phase reference is missing")
 		return
 	}
-	s := o.sub("phase", true, "channel", "marks_per_turn", "teeth", "missing", "extra", "also_missing", "edge", "threshold_v", "hysteresis_v", "uncertainty_deg", "ripple")
+	s := o.sub("phase", true, "channel", "marks_per_turn", "teeth", "missing", "extra", "also_missing", "index_channel", "edge", "threshold_v", "hysteresis_v", "uncertainty_deg", "ripple")
 	if s == nil {
 		return
 	}

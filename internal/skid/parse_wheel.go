@@ -7,7 +7,7 @@ import (
 	"lapwing/internal/frame"
 )
 
-const wheelFix = "a wheel called 60-2 is `teeth: 60` and `missing: 2`, 36-2-1 is `teeth: 36`, `missing: 2` and `also_missing: [17]`, 12+1 is `teeth: 12` and `extra: 1`; for one mark a turn leave teeth out"
+const wheelFix = "a wheel called 60-2 is `teeth: 60` and `missing: 2`, 36-2-1 is `teeth: 36`, `missing: 2` and `also_missing: [17]`, 12+1 is `teeth: 12` and `extra: 1`, a ring gear beside a sensor with one mark a turn is `teeth: 90` and `index_channel: …`; for one mark a turn leave teeth out"
 
 // margin is by how much the shaft may run faster than max_rpm before its marks are not believed.
 const margin = 1.5
@@ -20,7 +20,7 @@ func (r *reader) wheel(s *object, sk *Skid) {
 		return
 	}
 	if !s.has("teeth") {
-		for _, k := range []string{"missing", "extra", "also_missing"} {
+		for _, k := range []string{"missing", "extra", "also_missing", "index_channel"} {
 			if s.has(k) {
 				s.wrong(k, wheelFix, "this belongs to a toothed wheel, and teeth is not given")
 			}
@@ -48,6 +48,17 @@ func (r *reader) wheel(s *object, sk *Skid) {
 			return
 		}
 		w.Also = append(w.Also, at)
+	}
+	if s.has("index_channel") {
+		p.Index, _ = s.text("index_channel", inputID, "the id of the channel with one mark a turn", false)
+		w.Separate = p.Index != ""
+		if p.Index != "" {
+			r.refer(sk, join2(s.path, "index_channel"), s.fields["index_channel"], p.Index, PhaseMark)
+		}
+		if p.Index != "" && p.Index == p.Channel {
+			s.wrong("index_channel", "name the channel of the sensor that sees one mark a turn; channel is that of the teeth", "teeth and mark are on one channel")
+			return
+		}
 	}
 	if !ok || w.Teeth == 0 {
 		return

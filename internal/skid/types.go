@@ -52,6 +52,7 @@ type Machine struct {
 // Phase describes the shaft reference.
 type Phase struct {
 	Channel      string      // channel id
+	Index        string      // channel id of a mark apart, one a turn, beside a wheel whose teeth are all alike; empty: none
 	Wheel        frame.Wheel // zero: one mark a turn
 	MarksPerTurn int         // of the wheel; 1 without
 	Falling      bool        // active edge

@@ -25,6 +25,10 @@ func frameConfig(sk *skid.Skid, info acq.Info) frame.Config {
 	if sk.Phase.Falling {
 		c.Edge = frame.Falling
 	}
+	if sk.Phase.Index != "" {
+		once, _ := sk.ChannelByID(sk.Phase.Index)
+		c.Index = once.Input
+	}
 	if sk.Machine.MaxRPM > 0 {
 		c.MaxRPM = 1.5 * sk.Machine.MaxRPM
 	}

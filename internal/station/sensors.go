@@ -56,6 +56,7 @@ func newSensors(sk *skid.Skid, info acq.Info, layout measure.Layout, do func(int
 		case skid.Acceleration:
 			d.Kind = sensor.Acceleration
 		}
+		d.Teeth = c.Kind == skid.PhaseMark && sk.Phase.Index != "" && c.ID == sk.Phase.Channel
 		at[c.ID] = i
 		s.keys, s.wells = append(s.keys, c.ID+"/"+sensorKind), append(s.wells, c.ID+": nothing is wrong with the channel any more")
 		s.kinds = append(s.kinds, c.Kind)
