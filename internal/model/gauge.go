@@ -34,6 +34,7 @@ type channel struct {
 	drift      float64 // Pa, scripted
 	spoil      spoil   // scripted faults of the chain
 	grass      float64 // Pa rms
+	once       bool    // the mark apart from the wheel
 	// acceleration
 	accel *shaker
 	rnd   *rand.Rand
@@ -84,6 +85,14 @@ func (m *Machine) buildChannels(seed uint64) error {
 				m.mark = newMarker(&m.sk.Phase, sc)
 				m.mark.noise *= m.par.Noise
 				m.mark.odd = stream(seed, 5)
+			} else if sc.ID == m.sk.Phase.Index { // one mark a turn, two fifths of a pitch before the wheel's mark 0
+				p := m.sk.Phase
+				p.Wheel, p.AutoLevel = skid.Phase{}.Wheel, true
+				m.once, c.once = newMarker(&p, sc), true
+				m.once.width = 10
+				m.once.noise *= m.par.Noise
+				m.once.odd = stream(seed, 6)
+				m.once.faults.slip = -0.4 * 360 / float64(max(1, m.sk.Phase.Wheel.Teeth))
 			}
 		}
 		m.chans = append(m.chans, c)
@@ -148,9 +157,12 @@ func (c *channel) convert(m *Machine) (int32, bool) {
 	case c.accel != nil:
 		v = c.accel.out
 	case c.kind == skid.PhaseMark && m.mark != nil:
-		v = m.mark.volts
-		if m.mark.noise > 0 {
-			v += m.mark.noise * c.rnd.NormFloat64()
+		k := m.mark
+		if c.once {
+			k = m.once
+		}
+		if v = k.volts; k.noise > 0 {
+			v += k.noise * c.rnd.NormFloat64()
 		}
 	}
 	x := v*c.perValue + c.offset
