@@ -83,10 +83,14 @@ type takenState struct {
 	data []byte
 }
 
-// note takes a state when one is due at sample end. It reaches back as far as an alarm's clip does.
+// note takes a state when one is due, before the block that begins with sample end is added. States reach back as far as
+// an alarm's clip does.
 func (k *states) note(end int64, rate float64, reach time.Duration, sk *skid.Skid, l *Line, h *held) error {
-	if end < k.next {
+	if n := len(k.kept); end < k.next && (n == 0 || end >= k.kept[n-1].seq) {
 		return nil
+	}
+	if n := len(k.kept); n > 0 && end < k.kept[n-1].seq { // the source counts anew
+		k.kept = k.kept[:0]
 	}
 	every := k.every
 	if every == 0 {

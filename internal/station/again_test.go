@@ -113,7 +113,7 @@ func TestAClipReviewedIsTheLiveLineAgain(t *testing.T) {
 				transitions++
 			case head.Type != "turn" || head.Turn > last-3: // at the end of a clip the next turn's marks are missing
 			case line != live[head.Turn]:
-				t.Fatalf("clip %s (turns %d to %d), turn %d:\n%s\nlive:\n%s", c.ID, first, last, head.Turn, line, live[head.Turn])
+				t.Fatalf("clip %s (turns %d to %d), turn %d: %s", c.ID, first, last, head.Turn, parting(line, live[head.Turn]))
 			default:
 				same++
 			}
@@ -163,4 +163,14 @@ func TestStateRefused(t *testing.T) {
 			t.Errorf("%s: %v", name, err)
 		}
 	}
+}
+
+// parting shows where two texts part.
+func parting(a, b string) string {
+	i := 0
+	for i < len(a) && i < len(b) && a[i] == b[i] {
+		i++
+	}
+	cut := func(s string) string { return s[max(0, min(i, len(s))-120):min(len(s), i+60)] }
+	return cut(a) + " … live: " + cut(b)
 }

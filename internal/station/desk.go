@@ -92,6 +92,7 @@ func (d *desk) note(a wire.Alarm) {
 // take books everything that one turn brought: first what must not be lost, then what is shown.
 func (s *Station) take(o *Output) error {
 	err := s.book(o)
+	s.reference(o)
 	s.publish(o, o.At)
 	if s.o.OnTurn != nil && o.Record.Type != "" {
 		s.o.OnTurn(&o.Record)

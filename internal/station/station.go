@@ -64,10 +64,12 @@ type Station struct {
 	dropped  atomic.Int64 // blocks the line had no room for
 	desk     desk
 	states   states
-	learning learningDesk
-	orders   chan *request
-	ended    chan struct{} // closed when no order is carried out any more
-	endOnce  sync.Once
+
+	referenced referenced
+	learning   learningDesk
+	orders     chan *request
+	ended      chan struct{} // closed when no order is carried out any more
+	endOnce    sync.Once
 
 	// The compute goroutine's own.
 	unsaid     []saying       // journal entries not yet on disk
@@ -412,16 +414,16 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		for _, r := range p.rows {
 			h.put(r)
 		}
+		if err := s.states.note(p.block.Seq0, s.info.Rate, s.sk.Tape.Pre, s.sk, s.line, h); err != nil && !stateless {
+			stateless = true // clips without a state are clips all the same
+			s.log.Error("clips begin without the state of the line", "err", err)
+		}
 		if err := s.line.Add(&p.block, emit); err != nil {
 			return fmt.Errorf("station: line: %w", err)
 		}
 		s.progress.Add(int64(p.block.N))
 		end := p.block.Seq0 + int64(p.block.N)
 		s.pass(p.block.Seq0, end)
-		if err := s.states.note(end, s.info.Rate, s.sk.Tape.Pre, s.sk, s.line, h); err != nil && !stateless {
-			stateless = true // clips without a state are clips all the same
-			s.log.Error("clips begin without the state of the line", "err", err)
-		}
 		if end-shown >= int64(s.info.Rate) {
 			shown = end // a machine that stands still gives no turns: its snapshot is renewed all the same
 			s.publish(&Output{}, s.line.utc(float64(end)/s.info.Rate))
