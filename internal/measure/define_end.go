@@ -68,13 +68,13 @@ func endDefs() [endCount]def {
 	const (
 		delivers  = "end delivers"
 		gasAndT   = "gas and suction temperature known"
-		plateauU  = "transmitter (zero and gain); turn 0.05 %"
-		openU     = "U; median error 0.3° suction, 0.1° discharge, see Windows, measured"
+		plateauU  = "transmitter (zero and gain); turn 0.02 to 0.05 %"
+		openU     = "U; turn 0.1 to 0.3° suction, 0.06 to 0.2° discharge; against the truth see Windows, measured"
 		closeU    = "suction ill-conditioned at full load (3 to 9°), discharge 1 to 2°"
-		lateU     = "turn 0.05 to 0.1°; zero error of 1 % moves it by 0.3°"
-		exponentU = "its standard error; 0.024 a degree of dead centre, 0.016 (compression) or 0.051 (expansion) a point of clearance"
+		lateU     = "turn 0.01 to 0.02°, block under load swings 0.05 to 0.09°; a zero error moves it"
+		exponentU = "turn 0.0004 to 0.003; dead centre 0.023 (compression) and 0.017 (expansion) a degree, clearance 0.016 and 0.051 a point (worked/ex4, ex5)"
 		flowU     = "ve and pressure; charge heating and the leaks of a healthy machine make it read 0.5 to 3 % high, with hydrogen and slowly up to 14 %"
-		losses    = "the line's pressure against the transmitter's zero: 0.3 % of the pressure is 5 to 10 % of the loss"
+		losses    = "the line's pressure against the transmitter's zero: 0.3 % of the pressure is up to 10 % of the loss; turn 0.02 to 0.12 % of indicated power"
 	)
 	return [endCount]def{
 		ePs: {name: "p_suction_bar_abs", unit: "bar", class: Pressure, scale: bar, what: "suction plateau in the cylinder",
@@ -114,7 +114,7 @@ func endDefs() [endCount]def {
 			how: "work over swept volume", source: "worked/ex2", valid: "always", unc: "as indicated_power_kw"},
 		eVeS: {name: "ve_suction_percent", unit: "%", class: Pressure, scale: percent, what: "volumetric efficiency by suction",
 			how:    "(V_trapped − V_opens)/V_swept; V_trapped where the compression line meets the suction plateau: it holds for early, full and late closing",
-			source: srcMethods, valid: "suction opening found", unc: "ve_suction_u_percent for the angle; turn 0.05 to 0.15 points"},
+			source: srcMethods, valid: "suction opening found", unc: "ve_suction_u_percent for the angle; turn 0.01 to 0.06 points"},
 		eVeD: {name: "ve_discharge_percent", unit: "%", class: Pressure, scale: percent, what: "volumetric efficiency by discharge",
 			how: "(V_opens − V_clearance)/V_swept", source: srcMethods, valid: "discharge opening found", unc: "ve_discharge_u_percent for the angle; clearance does not enter"},
 		eCapS: {name: "capacity_suction_kg_h", unit: "kg/h", class: Pressure, scale: perHour, what: "capacity by suction",
@@ -132,7 +132,7 @@ func endDefs() [endCount]def {
 		eNExpLate: {name: "n_exp_late", unit: "1", class: Pressure, scale: one, what: "exponent of late expansion",
 			how: "from the middle down to 8 %", source: srcMethods, valid: "6 points", unc: exponentU},
 		eNCompEarlySE: {name: "n_comp_early_se", unit: "1", class: Pressure, scale: one, what: "standard error of n_comp_early",
-			how: "for independent residuals", source: "least squares", valid: "6 points", unc: "neighbouring points are smoothed together: too small by up to 2"},
+			how: "for independent residuals", source: "least squares", valid: "6 points", unc: "bend and pulsation are in it: turns scatter by half of it"},
 		eNCompLateSE: {name: "n_comp_late_se", unit: "1", class: Pressure, scale: one, what: "standard error of n_comp_late",
 			how: "likewise", source: "least squares", valid: "6 points", unc: "likewise"},
 		eNExpEarlySE: {name: "n_exp_early_se", unit: "1", class: Pressure, scale: one, what: "standard error of n_exp_early",
@@ -140,11 +140,11 @@ func endDefs() [endCount]def {
 		eNExpLateSE: {name: "n_exp_late_se", unit: "1", class: Pressure, scale: one, what: "standard error of n_exp_late",
 			how: "likewise", source: "least squares", valid: "6 points", unc: "likewise"},
 		eMassComp: {name: "mass_comp_percent", unit: "%", class: Pressure, scale: percent, what: "apparent gain of gas while compressing",
-			how: "Δm/m = Δ(ln p + KV ln V)/KV, first to last tenth of the stroke", source: srcLeaks, valid: "12 points, KV known", unc: "wall heat and a wrong clearance read as gas; block 0.05"},
+			how: "Δm/m = Δ(ln p + KV ln V)/KV, first to last tenth of the stroke", source: srcLeaks, valid: "12 points, KV known", unc: "wall heat and a wrong clearance read as gas; turn 0.01 to 0.03, block under load swings 0.05"},
 		eMassExp: {name: "mass_exp_percent", unit: "%", class: Pressure, scale: percent, what: "apparent gain of gas while expanding",
 			how: "over the expansion", source: srcLeaks, valid: "12 points, KV known", unc: "likewise"},
 		eTAdiabatic: {name: "t_adiabatic_c", unit: "°C", class: Process, scale: one, shift: zeroC, what: "discharge temperature of an adiabatic compression",
-			how: "Ts (pd/ps)^((KT−1)/KT) over the plateaus", source: srcBloch + " A-1", valid: gasAndT, unc: "suction thermometer; 0.3 K a per cent of ratio"},
+			how: "Ts (pd/ps)^((KT−1)/KT) over the plateaus", source: srcBloch + " A-1", valid: gasAndT, unc: "suction thermometer; 0.8 K a per cent of ratio"},
 		eTExcess: {name: "t_excess_k", unit: "K", class: Temperature, scale: one, what: "measured discharge temperature above the adiabatic one",
 			source: srcMethods, valid: "discharge temperature known", unc: "thermometers; lags a change of load by minutes"},
 		eLeakZero: {name: "leak_zero_bar", unit: "bar", class: Pressure, scale: bar, what: "pressure zero that the leak fit finds: the transducer reads this much too high",
@@ -153,19 +153,19 @@ func endDefs() [endCount]def {
 		eTDischarge: {name: "t_discharge_c", unit: "°C", class: Temperature, scale: one, shift: zeroC, what: "discharge temperature of the stage, as measured",
 			source: "process value", valid: "discharge temperature known, the end delivers", unc: "thermometer; lags a change of load by minutes", eye: true},
 		eSuctionExpected: {name: "suction_expected_deg", unit: "°", class: Pressure, scale: one, what: "suction opening of a sealed cylinder",
-			how: "where V_close (p_close/p_open)^(1/KV) lies, from this turn's plateaus", source: "windows.md 3", valid: "plateaus and KV known", unc: "KV by 0.01: 0.3°", eye: true},
+			how: "where V_close (p_close/p_open)^(1/KV) lies, from this turn's plateaus", source: "windows.md 3", valid: "plateaus and KV known", unc: "KV by 0.01: 0.2° at ratio 2.5", eye: true},
 		eDischargeExpected: {name: "discharge_expected_deg", unit: "°", class: Pressure, scale: one, what: "discharge opening of a sealed cylinder",
-			how: "likewise", source: "windows.md 3", valid: "plateaus and KV known", unc: "KV by 0.01: 0.2°", eye: true},
+			how: "likewise", source: "windows.md 3", valid: "plateaus and KV known", unc: "KV by 0.01: 0.4° at ratio 2.5", eye: true},
 		eUndershoot: {name: "suction_undershoot_percent", unit: "%", class: Pressure, scale: percent, what: "how far the pressure falls below the suction plateau to open the valves",
-			how: "1 − p_min/plateau within 25° of the opening", source: srcBloch + " p. 137: 5 to 15 % is usual", valid: "opening found on this turn", unc: "noise of one point; passage ringing that is not undone", eye: true},
+			how: "1 − p_min/plateau within 25° of the opening", source: srcBloch + " p. 137: 5 to 15 % is usual", valid: "opening found on this turn", unc: "turn 0.1 to 0.2; passage ringing that is not undone", eye: true},
 		eOvershoot: {name: "discharge_overshoot_percent", unit: "%", class: Pressure, scale: percent, what: "how far the pressure rises above the discharge plateau to open the valves",
 			how: "p_max/plateau − 1 within 25° of the opening", source: srcBloch + " p. 137: 5 to 15 % is usual", valid: "opening found on this turn", unc: "likewise", eye: true},
 		ePulseS: {name: "suction_pulsation_percent", unit: "%", class: Pressure, scale: percent, what: "pulsation on the suction plateau",
-			how: "highest less lowest pressure 26 to 3° before the outer dead centre, of the plateau; what is left of the valve's drop is in it", source: srcOwn, valid: "end works", unc: "noise of two points", eye: true},
+			how: "highest less lowest pressure 26 to 3° before the outer dead centre, of the plateau; what is left of the valve's drop is in it", source: srcOwn, valid: "end works", unc: "turn 0.04 to 0.2", eye: true},
 		ePulseD: {name: "discharge_pulsation_percent", unit: "%", class: Pressure, scale: percent, what: "pulsation on the discharge plateau",
 			how: "likewise 20 to 3° before the inner one", source: srcOwn, valid: delivers, unc: "likewise", eye: true},
 		eRise: {name: "p_rise_bar_deg", unit: "bar/°", class: Pressure, scale: bar, what: "steepest rise of the pressure",
-			how: "difference over 2°, over 0…360°", source: srcOwn, valid: "always", unc: "noise over 2°", eye: true},
+			how: "difference over 2°, over 0…360°", source: srcOwn, valid: "always", unc: "turn 0.4 to 1.5 %", eye: true},
 		eFall: {name: "p_fall_bar_deg", unit: "bar/°", class: Pressure, scale: bar, what: "steepest fall of the pressure, negative",
 			how: "likewise", source: srcOwn, valid: "always", unc: "likewise", eye: true},
 		eStraightComp: {name: "comp_scatter_percent", unit: "%", class: Pressure, scale: percent, what: "straightness of the compression line",
@@ -174,7 +174,7 @@ func endDefs() [endCount]def {
 			how: "likewise", source: "windows.md 2", valid: "closed stroke found", unc: "likewise", eye: true},
 		eClearance: {name: "clearance_percent", unit: "%", class: Pressure, scale: percent, what: "clearance that the expansion implies",
 			how: "p^(−1/KV) against displaced volume is a straight line: where it meets zero, of the swept volume", source: "closed form", valid: "closed stroke found, KV known",
-			unc: "0.7 points a degree of dead centre; a leak shifts it; KV by 0.01: 0.4 points", eye: true},
+			unc: "turn 0.01 points; dead centre, zero, KV and leaks move it", eye: true},
 		eLossShareS: {name: "suction_loss_percent", unit: "%", class: Pressure, scale: percent, what: "suction valves' share of the indicated power",
 			source: srcBrun, valid: "loss known, end does work", unc: "as suction_loss_kw", eye: true},
 		eLossShareD: {name: "discharge_loss_percent", unit: "%", class: Pressure, scale: percent, what: "discharge valves' share of the indicated power",
@@ -185,12 +185,12 @@ func endDefs() [endCount]def {
 			how: "likewise", source: "DIN 1343, from memory", valid: "gas and a temperature known", unc: "as capacity_discharge_kg_h", eye: true},
 		eDelivered: {name: "delivered_kg_h", unit: "kg/h", class: Pressure, scale: perHour, what: "gas delivered, leaks taken off",
 			how: "capacity by suction less the room that the fitted leaks take: through the suction valves, and past rings and discharge valves while suction is open, by T/Ts of the leaking gas; signed as fitted", source: "mass balance of an end",
-			valid: "leak fit, " + gasAndT, unc: "median of 13 turns 1.6 % at 95 % on the model, see the figures above; a turn 0.5 to 1.5 %", eye: true},
+			valid: "leak fit, " + gasAndT, unc: "median of 13 turns 1.6 % at 95 % on the model, see the figures above; a turn 0.3 to 0.9 %", eye: true},
 		eDeliveredNorm: {name: "delivered_nm3_h", unit: "Nm³/h", class: Pressure, scale: perHour, what: "gas delivered as normal volume",
 			how: "as capacity_suction_nm3_h", source: "DIN 1343, from memory", valid: "as delivered_kg_h", unc: "as delivered_kg_h", eye: true},
 		eEfficiency: {name: "isentropic_efficiency_percent", unit: "%", class: Pressure, scale: percent, what: "isentropic efficiency from line to line",
 			how: "delivered mass times the real gas's isentropic enthalpy rise between the lines, over indicated power", source: srcBrun + " p. 209",
-			valid: "as delivered_kg_h, line pressures known", unc: "delivered_kg_h and indicated_power_kw", eye: true},
+			valid: "as delivered_kg_h, line pressures known", unc: "delivered_kg_h and indicated_power_kw; turn 0.4 to 0.8 points", eye: true},
 		eSpecific: {name: "specific_energy_kwh_1000nm3", unit: "kWh/1000 Nm³", class: Pressure, scale: 1 / 3600.0, what: "indicated energy for gas delivered",
 			how: "indicated power over delivered_nm3_h", source: "trade usage", valid: "as delivered_kg_h", unc: "likewise", eye: true},
 		ePowerU: {name: "power_u_percent", unit: "%", class: Pressure, scale: percent, what: "what the angle scale leaves open in the indicated power",

@@ -84,7 +84,7 @@ func pathDefs() [pathCount]def {
 			how: "over what the path's end (rings: both ends) takes in, by suction", source: srcLeaks, valid: "leak fit, throughput known", unc: area},
 		lNoise: {name: "leak_noise_db", unit: "dB", class: Vibration, scale: one, what: "leak-band level where this path would leak most, dB over 1 (m/s²)²",
 			how:    "10 ⟨w lg y⟩/⟨w⟩, y mean square at 10 to 20 kHz on the degrees free of events, w = max(0, S − ⟨S⟩), S the path's nozzle flow",
-			source: "vibration.md 3", valid: "accelerometer; 40° free of events", unc: "turn 0.2 to 0.7 dB, block 0.1 dB"},
+			source: "vibration.md 3", valid: "accelerometer; 40° free of events", unc: "turn 0.2 to 0.4 dB at constant duty"},
 		lShape: {name: "leak_shape", unit: "1", class: Vibration, scale: one, what: "projection of the leak-band noise on the path's own leak flow",
 			how: "⟨(S − ⟨S⟩) y⟩/(σ(S)⟨y⟩)", source: "vibration.md 3", valid: "as leak_noise_db", unc: "names the pair, not its member"},
 	}

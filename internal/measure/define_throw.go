@@ -31,8 +31,8 @@ const (
 func throwDefs() [throwCount]def {
 	const (
 		both   = "both ends' pressures, or one blind by design"
-		loadU  = "gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part"
-		turnsU = "0.3° and U, more where the load crosses zero at a small slope"
+		loadU  = "gain of the transmitters, masses; turn 0.1 to 0.2 %"
+		turnsU = "U; turn 0.01 to 0.05°; 3° where the load stays near zero for long"
 		sumU   = "as those of the ends"
 	)
 	return [throwCount]def{
@@ -57,7 +57,7 @@ func throwDefs() [throwCount]def {
 		tCapacity: {name: "capacity_kg_h", unit: "kg/h", class: Pressure, scale: perHour, what: "capacity by suction of both ends",
 			how: "an idle end counts nothing", source: srcMethods, valid: "every working end known", unc: sumU},
 		tLeakPhase: {name: "leak_phase_deg", unit: "°", class: Pressure, scale: one, what: "phase shift that the leak fit finds, to be added to the angles",
-			source: srcLeaks, valid: "leak fit", unc: "turn 0.05 to 0.1°"},
+			source: srcLeaks, valid: "leak fit", unc: "turn 0.03 to 0.1°"},
 		tLeakRMS: {name: "leak_residual", unit: "1", class: Pressure, scale: one, what: "what the leak fit leaves over, in ln p",
 			source: srcLeaks, valid: "leak fit", unc: "–"},
 

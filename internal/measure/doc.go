@@ -35,37 +35,37 @@
 // Subject t1: absent while an end that works has no sound pressure, unless the line says otherwise.
 //
 //	rod_load_max_kn [kN, pressure] largest combined rod load at the crosshead pin, compression: gas load less inertia of piston, rod and crosshead, at the instantaneous speed
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	rod_load_min_kn [kN, pressure] least combined rod load at the crosshead pin, tension negative: likewise
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	gas_load_max_kn [kN, pressure] largest gas rod load, compression: p_HE A_HE − p_CE A_CE − p_atm (A_HE − A_CE)
 //		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters
 //	gas_load_min_kn [kN, pressure] least gas rod load, tension negative: likewise
 //		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters
 //	reversal_deg [°, pressure] longest unbroken stay of the pin load in its shorter direction: at least 15° are asked for
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: 0.3° and U, more where the load crosses zero at a small slope
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long
 //	reversal_percent [%, pressure] peak of the pin load's lesser direction over that of the greater: at least 3 % are asked for
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	pin_pulls_deg [°, pressure] the pin load turns from compression to tension
-//		source: vibration.md 2. there when: once a turn. uncertain by: 0.3° and U, more where the load crosses zero at a small slope
+//		source: vibration.md 2. there when: once a turn. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long
 //	pin_pushes_deg [°, pressure] the pin load turns from tension to compression
-//		source: vibration.md 2. there when: once a turn. uncertain by: 0.3° and U, more where the load crosses zero at a small slope
+//		source: vibration.md 2. there when: once a turn. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long
 //	power_kw [kW, pressure] indicated power of both ends: idle ends with what they take
 //		source: methods.md 1.1. there when: every working end known. uncertain by: as those of the ends
 //	capacity_kg_h [kg/h, pressure] capacity by suction of both ends: an idle end counts nothing
 //		source: methods.md 1.1. there when: every working end known. uncertain by: as those of the ends
 //	leak_phase_deg [°, pressure] phase shift that the leak fit finds, to be added to the angles
-//		source: leaks.md. there when: leak fit. uncertain by: turn 0.05 to 0.1°
+//		source: leaks.md. there when: leak fit. uncertain by: turn 0.03 to 0.1°
 //	leak_residual [1, pressure] what the leak fit leaves over, in ln p
 //		source: leaks.md. there when: leak fit. uncertain by: –
 //	piston_rod_max_kn [kN, pressure] largest load in the piston rod at the crosshead, compression: gas load less inertia of piston and rod
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	piston_rod_min_kn [kN, pressure] least load in the piston rod at the crosshead, tension negative: likewise
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	rod_load_compression_rated_percent [%, pressure] rod_load_max_kn as share of the rated load: 0 where the pin is never pushed
-//		source: skid file, rod_load_compression_kn. there when: rated load given. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: skid file, rod_load_compression_kn. there when: rated load given. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	rod_load_tension_rated_percent [%, pressure] rod_load_min_kn as share of the rated load: 0 where the pin is never pulled
-//		source: skid file, rod_load_tension_kn. there when: rated load given. uncertain by: gain of the transmitters; masses 1 % are 0.3 to 1 % of the inertia part
+//		source: skid file, rod_load_tension_kn. there when: rated load given. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	valve_loss_kw [kW, pressure] power lost in all valves of the throw
 //		source: Brun & Kurz 2019. there when: every delivering end known. uncertain by: as those of the ends
 //	valve_loss_percent [%, pressure] valves' share of power_kw
@@ -84,9 +84,9 @@
 // Subject t1.he, t1.ce: absent without a sound, positive pressure; beyond the extremes, work and power absent on an idle end, too.
 //
 //	p_suction_bar_abs [bar, pressure] suction plateau in the cylinder: median 26 to 3° before the outer dead centre
-//		source: windows.md 3. there when: also on an idle end. uncertain by: transmitter (zero and gain); turn 0.05 %
+//		source: windows.md 3. there when: also on an idle end. uncertain by: transmitter (zero and gain); turn 0.02 to 0.05 %
 //	p_discharge_bar_abs [bar, pressure] discharge plateau in the cylinder: median 20 to 3° before the inner dead centre
-//		source: windows.md 3. there when: end delivers. uncertain by: transmitter (zero and gain); turn 0.05 %
+//		source: windows.md 3. there when: end delivers. uncertain by: transmitter (zero and gain); turn 0.02 to 0.05 %
 //	p_min_bar_abs [bar, pressure] lowest pressure of the turn: over 0…360°
 //		source: own definition. there when: always. uncertain by: transmitter; noise of one point
 //	p_max_bar_abs [bar, pressure] highest pressure of the turn: over 0…360°
@@ -96,21 +96,21 @@
 //	ratio_line [1, process] pressure ratio of the lines
 //		source: methods.md 1.1. there when: line pressures known. uncertain by: line transmitters; up to 1 s late
 //	suction_opens_deg [°, pressure] suction valves open: lasting departure from the closed line
-//		source: windows.md 2. there when: found on this turn. uncertain by: U; median error 0.3° suction, 0.1° discharge, see Windows, measured
+//		source: windows.md 2. there when: found on this turn. uncertain by: U; turn 0.1 to 0.3° suction, 0.06 to 0.2° discharge; against the truth see Windows, measured
 //	suction_closes_deg [°, pressure] suction valves close: walked back along the closed line
 //		source: windows.md 2. there when: found on this turn. uncertain by: suction ill-conditioned at full load (3 to 9°), discharge 1 to 2°
 //	discharge_opens_deg [°, pressure] discharge valves open: lasting departure from the closed line
-//		source: windows.md 2. there when: found on this turn. uncertain by: U; median error 0.3° suction, 0.1° discharge, see Windows, measured
+//		source: windows.md 2. there when: found on this turn. uncertain by: U; turn 0.1 to 0.3° suction, 0.06 to 0.2° discharge; against the truth see Windows, measured
 //	discharge_closes_deg [°, pressure] discharge valves close: walked back along the closed line
 //		source: windows.md 2. there when: found on this turn. uncertain by: suction ill-conditioned at full load (3 to 9°), discharge 1 to 2°
 //	suction_opens_late_deg [°, pressure] suction opening later than a sealed cylinder's: closed line ∩ plateau, minus that of V_close (p_close/p_open)^(1/KV)
-//		source: windows.md 2, 3. there when: following. uncertain by: turn 0.05 to 0.1°; zero error of 1 % moves it by 0.3°
+//		source: windows.md 2, 3. there when: following. uncertain by: turn 0.01 to 0.02°, block under load swings 0.05 to 0.09°; a zero error moves it
 //	discharge_opens_late_deg [°, pressure] discharge opening later than a sealed cylinder's: as suction_opens_late_deg
-//		source: windows.md 2, 3. there when: following. uncertain by: turn 0.05 to 0.1°; zero error of 1 % moves it by 0.3°
+//		source: windows.md 2, 3. there when: following. uncertain by: turn 0.01 to 0.02°, block under load swings 0.05 to 0.09°; a zero error moves it
 //	suction_loss_kw [kW, pressure] power lost in the suction valves: ∫(p_line − p)dV from the opening to the dead centre and on to a late closing, times turns a second; the plateau where no line is known
-//		source: Brun & Kurz 2019. there when: opening found. uncertain by: the line's pressure against the transmitter's zero: 0.3 % of the pressure is 5 to 10 % of the loss
+//		source: Brun & Kurz 2019. there when: opening found. uncertain by: the line's pressure against the transmitter's zero: 0.3 % of the pressure is up to 10 % of the loss; turn 0.02 to 0.12 % of indicated power
 //	discharge_loss_kw [kW, pressure] power lost in the discharge valves: ∫(p − p_line)(−dV), likewise
-//		source: Brun & Kurz 2019. there when: opening found. uncertain by: the line's pressure against the transmitter's zero: 0.3 % of the pressure is 5 to 10 % of the loss
+//		source: Brun & Kurz 2019. there when: opening found. uncertain by: the line's pressure against the transmitter's zero: 0.3 % of the pressure is up to 10 % of the loss; turn 0.02 to 0.12 % of indicated power
 //	indicated_work_j [J, pressure] indicated work of one turn: −∮p dV over 0…360°, trapezoids; positive for work done on the gas
 //		source: methods.md 1.1. there when: always. uncertain by: as indicated_power_kw
 //	indicated_power_kw [kW, pressure] indicated power: work times turns a second
@@ -118,7 +118,7 @@
 //	mean_pressure_bar [bar, pressure] mean effective pressure: work over swept volume
 //		source: worked/ex2. there when: always. uncertain by: as indicated_power_kw
 //	ve_suction_percent [%, pressure] volumetric efficiency by suction: (V_trapped − V_opens)/V_swept; V_trapped where the compression line meets the suction plateau: it holds for early, full and late closing
-//		source: methods.md 1.1. there when: suction opening found. uncertain by: ve_suction_u_percent for the angle; turn 0.05 to 0.15 points
+//		source: methods.md 1.1. there when: suction opening found. uncertain by: ve_suction_u_percent for the angle; turn 0.01 to 0.06 points
 //	ve_discharge_percent [%, pressure] volumetric efficiency by discharge: (V_opens − V_clearance)/V_swept
 //		source: methods.md 1.1. there when: discharge opening found. uncertain by: ve_discharge_u_percent for the angle; clearance does not enter
 //	capacity_suction_kg_h [kg/h, pressure] capacity by suction: VE_s V_swept p_s/(Zs R Ts) n; suction plateau, line temperature
@@ -128,15 +128,15 @@
 //	flow_balance [1, pressure] suction flow over discharge flow: always with the adiabatic Td: a thermometer lags by minutes
 //		source: methods.md 1.1. there when: gas and suction temperature known. uncertain by: healthy 0.988 to 0.997 on the model; drifts with temperature, 0.013 a block
 //	n_comp_early [1, pressure] exponent of early compression: −d ln p/d ln V by least squares, from 8 % of ln(pd/ps) to the middle
-//		source: methods.md 1.1. there when: 6 points. uncertain by: its standard error; 0.024 a degree of dead centre, 0.016 (compression) or 0.051 (expansion) a point of clearance
+//		source: methods.md 1.1. there when: 6 points. uncertain by: turn 0.0004 to 0.003; dead centre 0.023 (compression) and 0.017 (expansion) a degree, clearance 0.016 and 0.051 a point (worked/ex4, ex5)
 //	n_comp_late [1, pressure] exponent of late compression: from the middle to 92 %
-//		source: methods.md 1.1. there when: 6 points. uncertain by: its standard error; 0.024 a degree of dead centre, 0.016 (compression) or 0.051 (expansion) a point of clearance
+//		source: methods.md 1.1. there when: 6 points. uncertain by: turn 0.0004 to 0.003; dead centre 0.023 (compression) and 0.017 (expansion) a degree, clearance 0.016 and 0.051 a point (worked/ex4, ex5)
 //	n_exp_early [1, pressure] exponent of early expansion: from 92 % down to the middle: high pressure comes first
-//		source: methods.md 1.1. there when: 6 points. uncertain by: its standard error; 0.024 a degree of dead centre, 0.016 (compression) or 0.051 (expansion) a point of clearance
+//		source: methods.md 1.1. there when: 6 points. uncertain by: turn 0.0004 to 0.003; dead centre 0.023 (compression) and 0.017 (expansion) a degree, clearance 0.016 and 0.051 a point (worked/ex4, ex5)
 //	n_exp_late [1, pressure] exponent of late expansion: from the middle down to 8 %
-//		source: methods.md 1.1. there when: 6 points. uncertain by: its standard error; 0.024 a degree of dead centre, 0.016 (compression) or 0.051 (expansion) a point of clearance
+//		source: methods.md 1.1. there when: 6 points. uncertain by: turn 0.0004 to 0.003; dead centre 0.023 (compression) and 0.017 (expansion) a degree, clearance 0.016 and 0.051 a point (worked/ex4, ex5)
 //	n_comp_early_se [1, pressure] standard error of n_comp_early: for independent residuals
-//		source: least squares. there when: 6 points. uncertain by: neighbouring points are smoothed together: too small by up to 2
+//		source: least squares. there when: 6 points. uncertain by: bend and pulsation are in it: turns scatter by half of it
 //	n_comp_late_se [1, pressure] standard error of n_comp_late: likewise
 //		source: least squares. there when: 6 points. uncertain by: likewise
 //	n_exp_early_se [1, pressure] standard error of n_exp_early: likewise
@@ -144,11 +144,11 @@
 //	n_exp_late_se [1, pressure] standard error of n_exp_late: likewise
 //		source: least squares. there when: 6 points. uncertain by: likewise
 //	mass_comp_percent [%, pressure] apparent gain of gas while compressing: Δm/m = Δ(ln p + KV ln V)/KV, first to last tenth of the stroke
-//		source: leaks.md. there when: 12 points, KV known. uncertain by: wall heat and a wrong clearance read as gas; block 0.05
+//		source: leaks.md. there when: 12 points, KV known. uncertain by: wall heat and a wrong clearance read as gas; turn 0.01 to 0.03, block under load swings 0.05
 //	mass_exp_percent [%, pressure] apparent gain of gas while expanding: over the expansion
 //		source: leaks.md. there when: 12 points, KV known. uncertain by: likewise
 //	t_adiabatic_c [°C, process] discharge temperature of an adiabatic compression: Ts (pd/ps)^((KT−1)/KT) over the plateaus
-//		source: Bloch & Hoefner 1996 A-1. there when: gas and suction temperature known. uncertain by: suction thermometer; 0.3 K a per cent of ratio
+//		source: Bloch & Hoefner 1996 A-1. there when: gas and suction temperature known. uncertain by: suction thermometer; 0.8 K a per cent of ratio
 //	t_excess_k [K, temperature] measured discharge temperature above the adiabatic one
 //		source: methods.md 1.1. there when: discharge temperature known. uncertain by: thermometers; lags a change of load by minutes
 //	leak_zero_bar [bar, pressure] pressure zero that the leak fit finds: the transducer reads this much too high
@@ -156,19 +156,19 @@
 //	t_discharge_c [°C, temperature] discharge temperature of the stage, as measured
 //		source: process value. there when: discharge temperature known, the end delivers. uncertain by: thermometer; lags a change of load by minutes
 //	suction_expected_deg [°, pressure] suction opening of a sealed cylinder: where V_close (p_close/p_open)^(1/KV) lies, from this turn's plateaus
-//		source: windows.md 3. there when: plateaus and KV known. uncertain by: KV by 0.01: 0.3°
+//		source: windows.md 3. there when: plateaus and KV known. uncertain by: KV by 0.01: 0.2° at ratio 2.5
 //	discharge_expected_deg [°, pressure] discharge opening of a sealed cylinder: likewise
-//		source: windows.md 3. there when: plateaus and KV known. uncertain by: KV by 0.01: 0.2°
+//		source: windows.md 3. there when: plateaus and KV known. uncertain by: KV by 0.01: 0.4° at ratio 2.5
 //	suction_undershoot_percent [%, pressure] how far the pressure falls below the suction plateau to open the valves: 1 − p_min/plateau within 25° of the opening
-//		source: Bloch & Hoefner 1996 p. 137: 5 to 15 % is usual. there when: opening found on this turn. uncertain by: noise of one point; passage ringing that is not undone
+//		source: Bloch & Hoefner 1996 p. 137: 5 to 15 % is usual. there when: opening found on this turn. uncertain by: turn 0.1 to 0.2; passage ringing that is not undone
 //	discharge_overshoot_percent [%, pressure] how far the pressure rises above the discharge plateau to open the valves: p_max/plateau − 1 within 25° of the opening
 //		source: Bloch & Hoefner 1996 p. 137: 5 to 15 % is usual. there when: opening found on this turn. uncertain by: likewise
 //	suction_pulsation_percent [%, pressure] pulsation on the suction plateau: highest less lowest pressure 26 to 3° before the outer dead centre, of the plateau; what is left of the valve's drop is in it
-//		source: own definition. there when: end works. uncertain by: noise of two points
+//		source: own definition. there when: end works. uncertain by: turn 0.04 to 0.2
 //	discharge_pulsation_percent [%, pressure] pulsation on the discharge plateau: likewise 20 to 3° before the inner one
 //		source: own definition. there when: end delivers. uncertain by: likewise
 //	p_rise_bar_deg [bar/°, pressure] steepest rise of the pressure: difference over 2°, over 0…360°
-//		source: own definition. there when: always. uncertain by: noise over 2°
+//		source: own definition. there when: always. uncertain by: turn 0.4 to 1.5 %
 //	p_fall_bar_deg [bar/°, pressure] steepest fall of the pressure, negative: likewise
 //		source: own definition. there when: always. uncertain by: likewise
 //	comp_scatter_percent [%, pressure] straightness of the compression line: scatter of ln p about the line ln p over ln V of the closed stroke
@@ -176,7 +176,7 @@
 //	exp_scatter_percent [%, pressure] straightness of the expansion line: likewise
 //		source: windows.md 2. there when: closed stroke found. uncertain by: likewise
 //	clearance_percent [%, pressure] clearance that the expansion implies: p^(−1/KV) against displaced volume is a straight line: where it meets zero, of the swept volume
-//		source: closed form. there when: closed stroke found, KV known. uncertain by: 0.7 points a degree of dead centre; a leak shifts it; KV by 0.01: 0.4 points
+//		source: closed form. there when: closed stroke found, KV known. uncertain by: turn 0.01 points; dead centre, zero, KV and leaks move it
 //	suction_loss_percent [%, pressure] suction valves' share of the indicated power
 //		source: Brun & Kurz 2019. there when: loss known, end does work. uncertain by: as suction_loss_kw
 //	discharge_loss_percent [%, pressure] discharge valves' share of the indicated power
@@ -186,11 +186,11 @@
 //	capacity_discharge_nm3_h [Nm³/h, pressure] capacity by discharge as normal volume: likewise
 //		source: DIN 1343, from memory. there when: gas and a temperature known. uncertain by: as capacity_discharge_kg_h
 //	delivered_kg_h [kg/h, pressure] gas delivered, leaks taken off: capacity by suction less the room that the fitted leaks take: through the suction valves, and past rings and discharge valves while suction is open, by T/Ts of the leaking gas; signed as fitted
-//		source: mass balance of an end. there when: leak fit, gas and suction temperature known. uncertain by: median of 13 turns 1.6 % at 95 % on the model, see the figures above; a turn 0.5 to 1.5 %
+//		source: mass balance of an end. there when: leak fit, gas and suction temperature known. uncertain by: median of 13 turns 1.6 % at 95 % on the model, see the figures above; a turn 0.3 to 0.9 %
 //	delivered_nm3_h [Nm³/h, pressure] gas delivered as normal volume: as capacity_suction_nm3_h
 //		source: DIN 1343, from memory. there when: as delivered_kg_h. uncertain by: as delivered_kg_h
 //	isentropic_efficiency_percent [%, pressure] isentropic efficiency from line to line: delivered mass times the real gas's isentropic enthalpy rise between the lines, over indicated power
-//		source: Brun & Kurz 2019 p. 209. there when: as delivered_kg_h, line pressures known. uncertain by: delivered_kg_h and indicated_power_kw
+//		source: Brun & Kurz 2019 p. 209. there when: as delivered_kg_h, line pressures known. uncertain by: delivered_kg_h and indicated_power_kw; turn 0.4 to 0.8 points
 //	specific_energy_kwh_1000nm3 [kWh/1000 Nm³, pressure] indicated energy for gas delivered: indicated power over delivered_nm3_h
 //		source: trade usage. there when: as delivered_kg_h. uncertain by: likewise
 //	power_u_percent [%, pressure] what the angle scale leaves open in the indicated power: slope dW/dθ of this very trace times U over W, U the turn's angle uncertainty (95 %)
@@ -209,7 +209,7 @@
 //	leak_percent [%, pressure] gas through that area in a turn, per cent of the path's throughput, signed: over what the path's end (rings: both ends) takes in, by suction
 //		source: leaks.md. there when: leak fit, throughput known. uncertain by: see Leak areas, measured; wall heat is in it: compare with the healthy machine
 //	leak_noise_db [dB, vibration] leak-band level where this path would leak most, dB over 1 (m/s²)²: 10 ⟨w lg y⟩/⟨w⟩, y mean square at 10 to 20 kHz on the degrees free of events, w = max(0, S − ⟨S⟩), S the path's nozzle flow
-//		source: vibration.md 3. there when: accelerometer; 40° free of events. uncertain by: turn 0.2 to 0.7 dB, block 0.1 dB
+//		source: vibration.md 3. there when: accelerometer; 40° free of events. uncertain by: turn 0.2 to 0.4 dB at constant duty
 //	leak_shape [1, vibration] projection of the leak-band noise on the path's own leak flow: ⟨(S − ⟨S⟩) y⟩/(σ(S)⟨y⟩)
 //		source: vibration.md 3. there when: as leak_noise_db. uncertain by: names the pair, not its member
 //

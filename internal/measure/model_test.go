@@ -215,7 +215,8 @@ func leaksAt(t *testing.T, base windowtest.Run, size, share float64) {
 			if i == j {
 				want = size
 			}
-			if math.Abs(area-want) > share*size {
+			// At ratio 1.8 the median of a run of 4 s is only known to about 1 mm².
+			if math.Abs(area-want) > max(share*size, 1.2) {
 				t.Errorf("%s leaks %g mm²: area of %s moves by %+.2f", v.where, size, p, area)
 			}
 		}
