@@ -11,8 +11,6 @@ import (
 // Extra hits are flutter, whether the impact is late or not; with a hard impact they are part of that. What the others hear
 // of them is not theirs.
 func TestExtraHitsAreFlutterUnlessHard(t *testing.T) {
-	healthy := newSynth(8)
-	baseline := commission(t, healthy, 900, nil)
 	for name, c := range map[string]struct {
 		do   func(s *synth)
 		kind string // the only kind that may be said of the group; empty: none
@@ -23,10 +21,10 @@ func TestExtraHitsAreFlutterUnlessHard(t *testing.T) {
 		"both":          {func(s *synth) { s.rattle["t1.he.discharge"], s.stick["t1.he.discharge"] = 20, 0.5 }, Fluttering},
 	} {
 		t.Run(name, func(t *testing.T) {
-			s := newSynth(8)
+			s, r := commissioned(t, 8)
 			c.do(s)
 			said := map[string]bool{}
-			baseline.fresh().run(s, 300, nil, func(_ duty.Block, fs []Finding) {
+			r.run(s, 300, nil, func(_ duty.Block, fs []Finding) {
 				for _, f := range fs {
 					said[f.Subject+"/"+f.Kind] = true
 				}
@@ -47,7 +45,7 @@ func TestHardImpactAtReversalMayBeKnock(t *testing.T) {
 	for shift, near := range map[float64]bool{-1: true, 30: false} {
 		s := newSynth(8)
 		s.pins = shift
-		r := commission(t, s, 900, nil)
+		r := commission(t, s, 500, nil)
 		s.hit["t1.he.discharge"] = 0.8
 		found := false
 		r.run(s, 200, nil, func(_ duty.Block, fs []Finding) {

@@ -12,8 +12,7 @@ import (
 // An explanation says of every hypothesis what was heard, what it weighs, and what the next grade would take; asking
 // changes nothing.
 func TestExplainAgreesWithTheFindings(t *testing.T) {
-	s := newSynth(21)
-	r := commission(t, s, 500, nil)
+	s, r := commissioned(t, 21)
 	if _, ok := r.judge.Explain(); ok {
 		t.Error("explained before the first block")
 	}
@@ -90,8 +89,7 @@ func TestExplainAgreesWithTheFindings(t *testing.T) {
 
 // What would have raised a leak that nobody hears is the second class, and the explanation says so.
 func TestExplainSaysWhatIsMissing(t *testing.T) {
-	s := newSynth(8)
-	r := commission(t, s, 900, nil)
+	s, r := commissioned(t, 8)
 	s.leak["t1.he.discharge"], s.quiet = 4, true
 	r.run(s, 150, nil, func(duty.Block, []Finding) {})
 	x, _ := r.judge.Explain()

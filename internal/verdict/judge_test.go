@@ -225,8 +225,6 @@ func TestSensorErrorsAreNotLeaks(t *testing.T) {
 }
 
 func TestOtherKinds(t *testing.T) {
-	healthy := newSynth(8)
-	baseline := commission(t, healthy, 900, nil)
 	for name, c := range map[string]struct {
 		do      func(s *synth)
 		subject string
@@ -253,9 +251,7 @@ func TestOtherKinds(t *testing.T) {
 			"t1.ce.suction", Leaking, Danger, "", "confirmed and severe"},
 	} {
 		t.Run(name, func(t *testing.T) {
-			s := newSynth(8)
-			s.r = rand.New(rand.NewPCG(9, uint64(len(name))))
-			r := baseline.fresh()
+			s, r := commissioned(t, 8)
 			c.do(s)
 			var last *Finding
 			r.run(s, 300, nil, func(_ duty.Block, fs []Finding) {
@@ -318,8 +314,7 @@ func TestIdleEndIsNotJudged(t *testing.T) {
 func TestSameBlocksSameFindings(t *testing.T) {
 	var runs [2]string
 	for k := range runs {
-		s := newSynth(21)
-		r := commission(t, s, 500, nil)
+		s, r := commissioned(t, 21)
 		s.leak["t1.he.suction"], s.cover["t1.he.s1"], s.hit["t1.ce.discharge"] = 3, 9, 0.9
 		var b strings.Builder
 		r.run(s, 200, nil, func(_ duty.Block, fs []Finding) {
@@ -336,8 +331,7 @@ func TestSameBlocksSameFindings(t *testing.T) {
 
 // A restart between any two blocks changes nothing.
 func TestRestartChangesNoFinding(t *testing.T) {
-	s := newSynth(21)
-	r := commission(t, s, 500, nil)
+	s, r := commissioned(t, 21)
 	again := New(s.layout, Config{})
 	n := 0
 	check := func(blk duty.Block, fs []Finding) {
@@ -372,8 +366,7 @@ func TestRestartChangesNoFinding(t *testing.T) {
 
 // A finding must say what people need: the caution always, and nothing that JSON cannot hold save a missing interval.
 func TestFindingsCarryCautionsAndNumbers(t *testing.T) {
-	s := newSynth(31)
-	r := commission(t, s, 500, nil)
+	s, r := commissioned(t, 21)
 	s.leak["t1.he.suction"] = 5
 	n := 0
 	r.run(s, 150, nil, func(_ duty.Block, fs []Finding) {
@@ -473,8 +466,7 @@ func TestWhatIsKnownExplainsOneEndedDuty(t *testing.T) {
 func TestALeakExplainsItsCompany(t *testing.T) {
 	for name, leak := range map[string]float64{"without a leak": 0, "with a leak": 4} {
 		t.Run(name, func(t *testing.T) {
-			s := newSynth(11)
-			r := commission(t, s, 900, nil)
+			s, r := commissioned(t, 11)
 			s.leak["t1.he.suction"] = leak
 			s.cover["t1.he.s1"] = 3 * leak
 			r.run(s, 120, nil, func(duty.Block, []Finding) {})
@@ -497,8 +489,7 @@ func TestALeakExplainsItsCompany(t *testing.T) {
 
 // A leak in one valve warms the gas of its whole throw against the stage's other throws: the covers' common part names none.
 func TestCommonWarmthNamesNoValve(t *testing.T) {
-	s := newSynth(11)
-	r := commission(t, s, 900, nil)
+	s, r := commissioned(t, 11)
 	covers := 0
 	for _, f := range s.layout {
 		if f.Name == "cover_above_group_k" {
@@ -527,8 +518,6 @@ func TestCommonWarmthNamesNoValve(t *testing.T) {
 // A crank end's suction pattern that stands long with every cover cold speaks for the packing; a warm cover names the
 // valve instead, and at first nothing is said either way.
 func TestColdCoversSpeakForThePacking(t *testing.T) {
-	s := newSynth(11)
-	baseline := commission(t, s, 900, nil)
 	for name, c := range map[string]struct {
 		cover float64
 		end   string
@@ -536,8 +525,7 @@ func TestColdCoversSpeakForThePacking(t *testing.T) {
 		want  bool
 	}{"cold": {0, "t1.ce.suction", 500, true}, "cold, but young": {0, "t1.ce.suction", 150, false}, "warm": {9, "t1.ce.suction", 500, false}, "the head end has no packing": {0, "t1.he.suction", 500, false}} {
 		t.Run(name, func(t *testing.T) {
-			s := newSynth(11)
-			r := baseline.fresh()
+			s, r := commissioned(t, 11)
 			s.leak[c.end] = 4
 			s.cover["t1.ce.s1"] = c.cover
 			last := ""

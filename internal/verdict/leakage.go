@@ -75,7 +75,7 @@ func sizedWords(severity []Quantity) string {
 	for _, q := range severity {
 		switch q.Name {
 		case "leak_area_mm2":
-			area = fmt.Sprintf("; leak area %.3g mm² (%.3g to %.3g)", q.Value, q.Lo, q.Hi)
+			area = fmt.Sprintf("; leak area %s mm² (%s to %s)", figure(q.Value), figure(q.Lo), figure(q.Hi))
 		case "leak_percent":
 			loss = fmt.Sprintf(", %.1f %% of its throughput (%.1f to %.1f)", q.Value, q.Lo, q.Hi)
 		}
@@ -84,6 +84,14 @@ func sizedWords(severity []Quantity) string {
 		return ""
 	}
 	return area + loss
+}
+
+// figure writes a size to a tenth where that means something.
+func figure(v float64) string {
+	if math.Abs(v) < 10 {
+		return fmt.Sprintf("%.1f", v)
+	}
+	return fmt.Sprintf("%.0f", v)
 }
 
 // sayLeak puts a path's leak into words: area and share of throughput, with intervals.

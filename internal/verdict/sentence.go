@@ -57,7 +57,7 @@ func sentence(l measure.Layout, b *bench, c *trial, f *Finding) string {
 	}
 	sep := ": "
 	for _, e := range tell(l, f) {
-		s.WriteString(sep + e)
+		s.WriteString(sep + c.short(e))
 		sep = ", "
 	}
 	if size := size(c, f); size != "" {
@@ -139,6 +139,17 @@ func tell(l measure.Layout, f *Finding) (out []string) {
 		out = append(out, e.Text)
 	}
 	return out
+}
+
+// short leaves out of a witness's words what the sentence has said already: which part, and which end.
+func (c *trial) short(text string) string {
+	text = strings.ReplaceAll(text, "while "+c.subject+" is closed", "while closed")
+	text = strings.ReplaceAll(text, c.subject+".opens", "opening")
+	text = strings.ReplaceAll(text, c.subject+".closes", "closing")
+	if c.end >= 0 {
+		text = strings.ReplaceAll(text, " ("+endWords[c.end]+")", "")
+	}
+	return strings.ReplaceAll(text, " at this duty", "")
 }
 
 // size is how large a finding is, in words.

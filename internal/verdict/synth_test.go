@@ -265,3 +265,15 @@ func (r *rig) run(s *synth, turns int, move func(i int), each func(blk duty.Bloc
 		}
 	}
 }
+
+// commissioned is a machine at one duty and the line that has learnt it: learnt once for all tests that ask for the seed.
+func commissioned(t testing.TB, seed uint64) (*synth, *rig) {
+	if ordinary[seed] == nil {
+		ordinary[seed] = commission(t, newSynth(seed), 700, nil)
+	}
+	s := newSynth(seed) // the same machine …
+	s.r = rand.New(rand.NewPCG(seed, 77))
+	return s, ordinary[seed].fresh() // … later
+}
+
+var ordinary = map[uint64]*rig{}
