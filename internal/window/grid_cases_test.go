@@ -225,10 +225,9 @@ func otherCases(t testing.TB) []gridCase {
 				if down > 0 {
 					from, to = to, from
 				}
-				over := 36 * 60 / (.5 * (from + to))
-				r := windowtest.Run{RPM: from, Seconds: over + 8*60/from + 1, Seed: uint64(50 + i), Machine: machine, Told: told(rng),
-					Changes: []model.Change{{At: 8 * 60 / from, Over: over, What: model.Speed, To: to}}}
-				out = append(out, gridCase{rows: []string{[]string{"start-up from 100 rpm", "coast-down to 100 rpm"}[down]}, run: r, gas: g})
+				r := windowtest.Run{RPM: from, Seconds: 13.5, Seed: uint64(50 + i), Machine: machine, Told: told(rng),
+					Changes: []model.Change{{At: 3, Over: 10, What: model.Speed, To: to}}}
+				out = append(out, gridCase{rows: []string{[]string{"start-up from 100 rpm in 10 s", "coast-down to 100 rpm in 10 s"}[down]}, run: r, gas: g})
 			}
 			// A recycle valve opens: warm gas at a higher pressure comes back to suction, and discharge gives way.
 			rng := rand.New(rand.NewPCG(uint64(10*i+k), 3))

@@ -1,9 +1,11 @@
 package window_test
 
 import (
+	"flag"
 	"fmt"
 	"math"
 	"sort"
+	"strings"
 	"testing"
 
 	"lapwing/internal/model"
@@ -11,6 +13,8 @@ import (
 	"lapwing/internal/window"
 	"lapwing/internal/window/windowtest"
 )
+
+var only = flag.String("only", "", "with -sweep: the cases of the rows whose name holds this")
 
 // tally counts, over a group of cases, what the windows did with the model's impacts while following.
 type tally struct {
@@ -181,7 +185,7 @@ func TestGrid(t *testing.T) {
 	rows := map[string]*tally{}
 	var early tally
 	for i, c := range gridCases(t) {
-		if !*sweep && i != 96 {
+		if !*sweep && i != 96 || *only != "" && !strings.Contains(strings.Join(c.rows, ","), *only) {
 			continue
 		}
 		var one tally

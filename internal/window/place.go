@@ -134,14 +134,14 @@ func (t *Tracker) closingWindow(mem *endMemory, stroke int, c, m float64) (lo, h
 			return c - 3, c + 8 + 1.1*m
 		}
 		median, sigma := mem.lag.centre(t.buf)
-		return c - 3, c + math.Max(4+0.5*m, (median+max(0.25, min(4*sigma, 1)))*m+afterPeak)
+		return c - lead, c + (median+max(0.25, min(4*sigma, 1))-ringMs)*m + afterPeak // learnt from the ringing
 	}
 	lo, hi = math.Min(-9, c-3), math.Max(12+0.5*m, c+8+1.1*m)
 	if mem.heard[0].count() >= heardLeast {
 		loudest, scatter := mem.heard[0].centre(t.buf)
 		last, spread := mem.heard[1].centre(t.buf)
 		if scatter <= heardSigma && spread <= heardSigma { // the peak comes up to half a millisecond after the impact
-			lo = math.Min(-9, loudest-heardSpare-0.5*m-scatter)
+			lo = math.Min(-9, loudest-heardSpare-0.3*m-scatter)
 			hi = math.Max(hi, last+heardSpare/2+spread)
 		}
 	}

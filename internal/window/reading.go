@@ -56,7 +56,11 @@ func (t *Tracker) read(tr *trace, e int, k float64) reading {
 		last[s], from = tr.lastLine(r.closed[s])
 		first[s], before = tr.firstLine(r.closed[s])
 		r.open[s], r.rise[s] = tr.opening(s, last[s], from)
-		r.close[s] = tr.closing(s, first[s], before) - strokeStart(e, s)
+		near := first[s]
+		if s == Compression {
+			near = tr.nearLine(r.closed[s])
+		}
+		r.close[s] = tr.closing(s, near, before) - strokeStart(e, s)
 	}
 	// A plateau must not contain its own opening (pocket, high ratio).
 	if d := r.open[Expansion] - exp + 6; d > suctionLo {
@@ -78,6 +82,10 @@ func (t *Tracker) read(tr *trace, e int, k float64) reading {
 		r.trapped[s] = tr.trapped(meet(first[s], start), s)
 		r.thermo[s] = tr.angleOf(meet(last[s], end), s)
 		r.expected[s] = tr.angleOf(r.trapped[s]*math.Pow(start/end, 1/k), s)
+		if math.IsNaN(r.expected[s]) { // the plateau is not what the stroke starts from: pulsation, late closing
+			i := r.closed[s].I0
+			r.expected[s] = tr.angleOf(math.Exp(tr.lnV[i]+(first[s].At(tr.lnV[i])-math.Log(end))/k), s)
+		}
 		r.meets[s] = tr.angleOf(meet(first[s], start), s)
 	}
 	return r

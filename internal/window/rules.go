@@ -11,7 +11,9 @@ const (
 
 	fitShare  = 0.45 // of the run, for the line behind an opening or a closing
 	fitLeast  = 9.0  // degrees, but at least this
-	fitMargin = 0.8  // degrees left out next to the opening
+	nearShare = 0.2  // of the run, for the line that a suction closing is walked back along
+	nearLeast = 12.0
+	fitMargin = 0.8 // degrees left out next to the opening
 
 	openResidual  = 0.004 // least ln p residual that counts as a departure
 	closeResidual = 0.003

@@ -143,6 +143,14 @@ func (tr *trace) firstLine(r Run) (l dsp.Line, before int) {
 	return dsp.FitLine(tr.lnV[r.I0:hi], tr.lnP[r.I0:hi]), r.I0 - 1
 }
 
+// nearLine fits the very beginning of a run: at suction pressure the stroke is long and its line not quite straight (heat),
+// and what is behind it is short in volume.
+func (tr *trace) nearLine(r Run) dsp.Line {
+	n := max(int(nearShare*float64(r.I1-r.I0)), tr.points(nearLeast))
+	hi := min(r.I0+n, r.I1)
+	return dsp.FitLine(tr.lnV[r.I0:hi], tr.lnP[r.I0:hi])
+}
+
 // opening gives the angle of the first lasting departure from the line, in the sense of an opening: below the line
 // in compression, above it in expansion; and how much further the trace takes to be riseTimes as far off the line. NaN
 // when there is none before the limit.
