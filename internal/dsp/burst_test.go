@@ -22,3 +22,25 @@ func TestRectifyForms(t *testing.T) {
 		}
 	})
 }
+
+func TestPeakAndMeanSquareArePlain(t *testing.T) {
+	if p, at := PeakAbs(nil); p != 0 || at != -1 || !math.IsNaN(MeanSquare(nil)) {
+		t.Errorf("of nothing: peak %g at %d, mean square %g", p, at, MeanSquare(nil))
+	}
+	rapid.Check(t, func(t *rapid.T) {
+		x := rapid.SliceOfN(rapid.OneOf(rapid.Float64Range(-1e6, 1e6), rapid.SampledFrom([]float64{0, math.Copysign(0, -1), -3, 3})), 1, 30).Draw(t, "x")
+		peak, at, sum := math.Abs(x[0]), 0, 0.0
+		for i, v := range x {
+			if math.Abs(v) > peak {
+				peak, at = math.Abs(v), i
+			}
+			sum += v * v
+		}
+		if p, i := PeakAbs(x); p != peak || i != at {
+			t.Fatalf("peak %g at %d, want %g at %d", p, i, peak, at)
+		}
+		if got, want := MeanSquare(x), sum/float64(len(x)); math.Abs(got-want) > 1e-14*want {
+			t.Fatalf("mean square %g, want %g", got, want)
+		}
+	})
+}
