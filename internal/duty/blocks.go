@@ -13,6 +13,7 @@ type BlockConfig struct {
 	Spacing  int // take every n-th usable turn; default 1
 	MinValid int // turns a feature needs in a block; default half of Turns, rounded up
 	MaxSpan  int // turns from first to last above which a block is stale and begun anew; default 20·Turns·Spacing
+	Slow     int // settled blocks whose median is one step of the slow test; default 8
 }
 
 // Blocks gathers turns at seen duty into blocks, per throw.
@@ -32,6 +33,7 @@ type gather struct {
 	rpm, ps, pd          []float64
 	value, expected, res map[int][]float64 // by feature
 	drift                map[int]*Cusum
+	slow                 map[int][]float64 // Z of settled blocks since the slow test's last step
 }
 
 // NewBlocks gathers against a reference.
@@ -47,6 +49,9 @@ func NewBlocks(ref *Reference, cfg BlockConfig) *Blocks {
 	}
 	if cfg.MaxSpan <= 0 {
 		cfg.MaxSpan = 20 * cfg.Turns * cfg.Spacing
+	}
+	if cfg.Slow <= 0 {
+		cfg.Slow = 8
 	}
 	return &Blocks{cfg: cfg, ref: ref, throws: map[int]*gather{}}
 }
@@ -86,7 +91,7 @@ func (b *Blocks) Resume(tests []SlowTest, touched []int) {
 func (b *Blocks) gather(throw int) *gather {
 	g := b.throws[throw]
 	if g == nil {
-		g = &gather{value: map[int][]float64{}, expected: map[int][]float64{}, res: map[int][]float64{}, drift: map[int]*Cusum{}}
+		g = &gather{value: map[int][]float64{}, expected: map[int][]float64{}, res: map[int][]float64{}, drift: map[int]*Cusum{}, slow: map[int][]float64{}}
 		b.throws[throw] = g
 	}
 	return g
@@ -151,20 +156,33 @@ func (b *Blocks) close(throw int, g *gather) Block {
 		d := Deviation{Feature: i, Value: median(g.value[i]), Expected: median(g.expected[i]), Residual: median(res), N: len(res), Seen: true}
 		d.Spread = m.blockSpread(len(res))
 		d.Z = d.Residual / d.Spread
-		c := g.drift[i]
-		if c == nil {
-			c = &Cusum{}
-			g.drift[i] = c
-		}
-		if d.Drift = c.Share(); g.settled { // what is slow can wait for steady duty, where blocks are nearest to independent
-			d.Drift = c.Step(d.Z)
-		}
 		if math.IsNaN(d.Z) {
 			continue
 		}
+		d.Drift = b.slowly(g, i, d.Z)
 		blk.Dev = append(blk.Dev, d)
 	}
 	return blk
+}
+
+// slowly passes a block's deviation to the slow test, which takes the median of some settled blocks at a time: what is
+// slow can wait, and such steps are nearer to independent than blocks are.
+func (b *Blocks) slowly(g *gather, feature int, z float64) float64 {
+	c := g.drift[feature]
+	if c == nil {
+		c = &Cusum{}
+		g.drift[feature] = c
+	}
+	if !g.settled {
+		return c.Share()
+	}
+	few := append(g.slow[feature], z)
+	if len(few) >= b.cfg.Slow {
+		c.Step(median(few))
+		few = few[:0]
+	}
+	g.slow[feature] = few
+	return c.Share()
 }
 
 // clear begins a new block; the slow test goes on.

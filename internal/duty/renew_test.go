@@ -203,6 +203,39 @@ func TestRenewalWaitsForEveryLoadStep(t *testing.T) {
 	}
 }
 
+// The slow test steps once for so many settled blocks, by their median; blocks that are not settled do not count.
+func TestSlowTestSteps(t *testing.T) {
+	b := learnt(t, 1, 600, nil, 0, 0)
+	ref, err := b.Reference(testLayout)
+	if err != nil {
+		t.Fatal(err)
+	}
+	bl := NewBlocks(ref, BlockConfig{})
+	p := &plant{r: rand.New(rand.NewPCG(7, 7)), ratio: 2.5, rpm: 750, ps: 20e5}
+	m := &b.Cells[0].Models[0]
+	for n := 1; n <= 24; n++ { // every third block is not settled and wild
+		wild := n%3 == 0
+		for k := range 15 {
+			pt, v := p.next()
+			if wild && k == 7 {
+				pt.State = Changing
+			}
+			v.V[0] = m.Coef[0] + 3*m.blockSpread(15)
+			if wild {
+				v.V[0] += 1
+			}
+			blk, ok := bl.Add(0, pt, &v, ref.Deviate(nil, 0, pt, &v))
+			if !ok {
+				continue
+			}
+			steps := float64((n - n/3) / 8)
+			if want := steps * (3 - CusumK) / CusumLimit; math.Abs(blk.Dev[0].Drift-want) > 1e-6 {
+				t.Fatalf("block %d: drift %g, want %g", n, blk.Dev[0].Drift, want)
+			}
+		}
+	}
+}
+
 // The slow test goes on over a restart and over a renewal, but not for what the work touched.
 func TestSlowTestsGoOn(t *testing.T) {
 	b := learnt(t, 1, 600, nil, 0, 0)
@@ -220,7 +253,7 @@ func TestSlowTestsGoOn(t *testing.T) {
 		}
 		return last
 	}
-	one := NewBlocks(ref, BlockConfig{})
+	one := NewBlocks(ref, BlockConfig{Slow: 1})
 	run(one, 30)
 	two, three := NewBlocks(ref, BlockConfig{}), NewBlocks(ref, BlockConfig{})
 	two.Resume(one.SlowTests(), nil)

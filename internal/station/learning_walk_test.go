@@ -138,7 +138,8 @@ func bears(name string) bool {
 }
 
 func report(t *testing.T, what string, all []reading, settled bool) {
-	var lags []float64
+	var lags, later, steps []float64
+	sq := 0.0
 	n, wild := 0, [3]int{}
 	signals, names := map[float64]int{}, map[string]int{}
 	for i := range all {
@@ -156,12 +157,17 @@ func report(t *testing.T, what string, all []reading, settled bool) {
 				}
 			}
 		}
-		if len(z) > 30 {
+		if len(eights(z)) > 10 {
 			lags = append(lags, lag(z))
+			later = append(later, lag(eights(z)))
 		}
+		for _, v := range z {
+			sq += v * v
+		}
+		steps = append(steps, eights(z)...)
 		for _, limit := range []float64{2, 4, 6, duty.CusumLimit} {
 			var c duty.Cusum
-			for _, v := range z {
+			for _, v := range eights(z) {
 				if math.Abs(c.Step(v))*duty.CusumLimit >= limit {
 					signals[limit]++
 					c = duty.Cusum{}
@@ -172,10 +178,15 @@ func report(t *testing.T, what string, all []reading, settled bool) {
 			}
 		}
 	}
-	slices.Sort(lags)
-	if len(lags) == 0 {
-		lags = []float64{math.NaN()}
+	t.Logf("  %s, settled only %v: %d values of %d measures, rms %.2f, lag-1 median %.2f; beyond 3, 4, 5 spreads: %v; %d steps of the slow test, lag-1 median %.2f, signals at 2, 4, 6, 8: %d %d %d %d %s", what, settled, n, len(all),
+		math.Sqrt(sq/float64(n)), quantileOf(lags, 0.5), wild, len(steps), quantileOf(later, 0.5), signals[2], signals[4], signals[6], signals[8], fmt.Sprint(names))
+}
+
+// eights gives the medians of eight values at a time, as the slow test takes them.
+func eights(z []float64) (out []float64) {
+	for ; len(z) >= 8; z = z[8:] {
+		few := slices.Sorted(slices.Values(z[:8]))
+		out = append(out, (few[3]+few[4])/2)
 	}
-	t.Logf("  %s, settled only %v: %d values of %d measures, lag-1 median %.2f; beyond 3, 4, 5 spreads: %v; slow test signals at 2, 4, 6, 8: %d %d %d %d %s", what, settled, n, len(all), lags[len(lags)/2],
-		wild, signals[2], signals[4], signals[6], signals[8], fmt.Sprint(names))
+	return out
 }
