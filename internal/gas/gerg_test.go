@@ -227,7 +227,8 @@ func TestIsentropicTable(t *testing.T) {
 			continue
 		}
 		props, err := m.Duty(num(t, row, "P1_kPa")*1e3, num(t, row, "T1_K"), num(t, row, "P2_kPa")*1e3)
-		if err != nil || props.T2s != path.T2() || props.Zd != path.To.Z || props.KV != path.KV {
+		if err != nil || props.T2s != path.T2() || props.Zd != path.To.Z || props.KV != path.KV ||
+			props.KVs != path.From.KappaV || props.KVd != path.To.KappaV {
 			t.Errorf("Duty differs from Isentropic: %+v, %v", props, err)
 		}
 	}

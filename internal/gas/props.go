@@ -14,6 +14,8 @@ type Props struct {
 	Zd  float64 // ... and at discharge, at the isentropic temperature
 	KV  float64 // isentropic volume exponent, average over the compression
 	KT  float64 // isentropic temperature exponent, average over the compression
+	KVs float64 // volume exponent at suction ...
+	KVd float64 // ... and at discharge: dense gas begins a stroke with another one than it ends with
 	T2s float64 // K, discharge temperature of an isentropic compression
 	Wet bool    // some of the water would condense; the numbers are those of gas that keeps it as vapour
 }
@@ -40,7 +42,8 @@ func (m *Mixture) Duty(ps, ts, pd float64) (Props, error) {
 	if err != nil {
 		return Props{}, err
 	}
-	return Props{Wet: wet, M: m.M(), R: m.R(), Zs: path.From.Z, Zd: path.To.Z, KV: path.KV, KT: path.KT, T2s: path.To.T}, nil
+	return Props{Wet: wet, M: m.M(), R: m.R(), Zs: path.From.Z, Zd: path.To.Z, KV: path.KV, KT: path.KT,
+		KVs: path.From.KappaV, KVd: path.To.KappaV, T2s: path.To.T}, nil
 }
 
 // Fixed is a gas given by its own numbers, the same at every duty.
@@ -74,6 +77,6 @@ func (f Fixed) Duty(ps, ts, pd float64) (Props, error) {
 	if !(ps > 0 && ts > 0 && pd > 0) {
 		return Props{}, fmt.Errorf("gas: suction %g Pa and %g K, discharge %g Pa: all must be positive", ps, ts, pd)
 	}
-	return Props{M: f.M, R: gasConstant / f.M, Zs: f.Zs, Zd: f.Zd, KV: f.KV, KT: f.KT,
+	return Props{M: f.M, R: gasConstant / f.M, Zs: f.Zs, Zd: f.Zd, KV: f.KV, KT: f.KT, KVs: f.KV, KVd: f.KV,
 		T2s: ts * math.Pow(pd/ps, (f.KT-1)/f.KT)}, nil
 }

@@ -181,6 +181,9 @@ func (p *page) gas(sk *Skid, ds []duty) {
 			row(f("stage %d", n), f("%s %s → %s absolute, ratio %.2f", bar(l.Ps), celsius(l.Ts), bar(l.Pd), l.Pd/l.Ps)),
 			row("", f("Z %.4f suction, %.4f discharge; volume exponent %.4f, temperature exponent %.4f", g.Zs, g.Zd, g.KV, g.KT)),
 			row("", f("loss-free discharge temperature %s", celsius(g.T2s))))
+		if math.Abs(g.KVd-g.KVs) > 0.02 {
+			rows = append(rows, row("", f("%.3f at suction and %.3f at discharge: the closed strokes of a sound machine are bent a little", g.KVs, g.KVd)))
+		}
 		if g.Wet {
 			rows = append(rows, row("", "some of its water condenses at suction; computed as if it stayed vapour"))
 		}
