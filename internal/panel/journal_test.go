@@ -1,6 +1,7 @@
 package panel
 
 import (
+	"encoding/json"
 	"errors"
 	"fmt"
 	"strings"
@@ -68,6 +69,25 @@ func TestWhy(t *testing.T) {
 		}
 		if want == 200 && (!strings.Contains(body, `"said":[]`) || strings.Contains(body, "null")) {
 			t.Errorf("%s: %s", query, body)
+		}
+	}
+}
+
+func TestSchemasAreServed(t *testing.T) {
+	url := open(t, &still{now: full()}) + "api/v1/schemas"
+	_, body := ask(t, url, nil)
+	var names []string
+	if err := json.Unmarshal([]byte(body), &names); err != nil || len(names) < 10 {
+		t.Fatalf("%v: %s", err, body)
+	}
+	for _, n := range names {
+		if resp, body := ask(t, url+"/"+n, nil); resp.StatusCode != 200 || !strings.Contains(body, "urn:lapwing:schema:"+n+":1") {
+			t.Errorf("%s: %d", n, resp.StatusCode)
+		}
+	}
+	for _, n := range []string{"nothing", "..%2fdoc", "alarm.json"} {
+		if resp, _ := ask(t, url+"/"+n, nil); resp.StatusCode != 404 {
+			t.Errorf("%s: %d", n, resp.StatusCode)
 		}
 	}
 }

@@ -4,6 +4,25 @@
 // the snapshot as JSON, clips as tar. It reads what is there and slows nobody. When nothing is judged, or
 // nothing new comes, it says so: silence must not look like health. A network address is refused until the page has a
 // login.
+//
+// # API
+//
+//	GET  /api/v1/now             everything's present state
+//	GET  /api/v1/alarms          every alarm point, also shelved, suppressed and out of service, with its key
+//	GET  /api/v1/journal         transitions and people's acts, newest first, in pages; filters: from, to (RFC 3339), subject,
+//	                             key, kind, severity (or worse), type (transition, act), verb, by; order=oldest, detail=yes,
+//	                             limit (1 to 1000), page (next of the page before); format=csv or jsonl gives all of it
+//	GET  /api/v1/why             reasons; subject and turn may be given: hypotheses, evidence and what the next grade takes
+//	POST /api/v1/orders          what a person orders, one wire.Order; 200 carried out, 409 refused, both with a receipt
+//	GET  /api/v1/clips           protected raw samples; /api/v1/clips/{id} one of them as tar
+//	GET  /api/v1/pull            see pulls: by clip, time or turns, resumable
+//	GET  /api/v1/learning        see learning; /api/v1/baselines lists and gives baselines, POST takes one
+//	GET  /api/v1/schemas         names of the JSON Schemas of all this; /api/v1/schemas/{name} one of them
+//
+// An order is carried out between two turns, also while the machine stands, and is in the journal whether it was carried
+// out or refused: who, when, why, by which way. It must be application/json, at most wire.MaxOrder bytes, with the header
+// Lapwing-Order: page, tool or api, and from no other site's page. 503 says that nothing was done. There is no login:
+// who may reach a loopback address of this machine may give orders, in any name.
 package panel
 
 import (
@@ -147,7 +166,9 @@ func guard(next http.Handler) http.Handler {
 	})
 }
 
-func routes(src Source, log *slog.Logger) http.Handler { return routesWith(src, newPulls(src, log), log) }
+func routes(src Source, log *slog.Logger) http.Handler {
+	return routesWith(src, newPulls(src, log), log)
+}
 
 func routesWith(src Source, pulls *pulls, log *slog.Logger) http.Handler {
 	mux := http.NewServeMux()
@@ -172,6 +193,16 @@ func routesWith(src Source, pulls *pulls, log *slog.Logger) http.Handler {
 		sendJSON(w, list(src.Now().Clips), log)
 	})
 	mux.HandleFunc("GET /api/v1/alarms", func(w http.ResponseWriter, r *http.Request) { sendJSON(w, src.Alarms(), log) })
+	mux.HandleFunc("GET /api/v1/schemas", func(w http.ResponseWriter, r *http.Request) { sendJSON(w, wire.SchemaNames(), log) })
+	mux.HandleFunc("GET /api/v1/schemas/{name}", func(w http.ResponseWriter, r *http.Request) {
+		b, err := wire.Schema(r.PathValue("name"))
+		if err != nil {
+			http.Error(w, "no such schema", http.StatusNotFound)
+			return
+		}
+		w.Header().Set("Content-Type", "application/schema+json")
+		_, _ = w.Write(b)
+	})
 	mux.HandleFunc("GET /api/v1/why", why(src, log))
 	mux.HandleFunc("GET /api/v1/journal", journal(src, log))
 	mux.HandleFunc("POST "+ordersPath, order(src, log))

@@ -5,6 +5,7 @@ import (
 	"encoding/json"
 	"errors"
 	"io"
+	"net/http"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -171,13 +172,56 @@ type finished struct{ acq.Source }
 
 func (finished) Read(context.Context, *acq.Block) error { return io.EOF }
 
-// While the page of a recording that has ended is still up, orders are still carried out.
+// While the page of a recording that has ended is still up, orders are still carried out: here as the page takes them,
+// and as it shows what came of them.
 func TestOrdersAfterTheSourceHasEnded(t *testing.T) {
 	s := staffed(t)
 	s.src = finished{s.src}
+	var err error
+	if s.panel, err = panel.Open("127.0.0.1:0", s, nil); err != nil {
+		t.Fatal(err)
+	}
 	s.o.AtEnd = func(ctx context.Context) {
-		if r, err := s.Order(ctx, Order{Verb: "acknowledge", Key: "t1.he.suction/leaking", By: "A"}); err != nil || !r.Accepted {
-			t.Errorf("%+v, %v", r, err)
+		defer http.DefaultClient.CloseIdleConnections()
+		ask := func(method, path, body string) (int, string) {
+			req, err := http.NewRequestWithContext(ctx, method, s.PageURL()+"api/v1/"+path, strings.NewReader(body))
+			if err != nil {
+				t.Error(err)
+				return 0, ""
+			}
+			req.Header.Set("Content-Type", "application/json")
+			req.Header.Set(panel.OrderHeader, "page")
+			resp, err := http.DefaultClient.Do(req)
+			if err != nil {
+				t.Error(err)
+				return 0, ""
+			}
+			defer resp.Body.Close()
+			b, err := io.ReadAll(resp.Body)
+			if err != nil {
+				t.Error(err)
+			}
+			return resp.StatusCode, string(b)
+		}
+		const order = `{"verb":"acknowledge","key":"t1.he.suction/leaking","by":"A. Operator"}`
+		for i, c := range []struct {
+			method, path, body string
+			status             int
+			holds              string
+		}{
+			{"POST", "orders", order, 200, `"said":"t1.he.suction/leaking: acknowledged, now acknowledged"`},
+			{"POST", "orders", order, 409, `it is acknowledged`},
+			{"GET", "journal?type=act&limit=1", "", 200, `"by":"A. Operator"`},
+			{"GET", "journal?type=act&limit=1", "", 200, `"next":`},
+			{"GET", "journal?page=nonsense", "", 400, "is no page of it"},
+			{"GET", "journal?subject=t1&order=oldest&format=csv", "", 200, "acknowledge,page,true,"},
+			{"GET", "alarms", "", 200, `"key":"t1.he.suction/leaking","subject":"t1.he.suction","kind":"leaking","state":"acknowledged","severity":"alert"`},
+			{"GET", "why?subject=t1.he.suction", "", 200, "no turn has come yet"},
+			{"GET", "now", "", 200, `"to":"acknowledged"`},
+		} {
+			if status, body := ask(c.method, c.path, c.body); status != c.status || !strings.Contains(body, c.holds) {
+				t.Errorf("%d: %s %s: %d %.600s", i, c.method, c.path, status, body)
+			}
 		}
 	}
 	if err := s.Run(t.Context()); err != nil {
