@@ -9,9 +9,10 @@ import "math"
 // kept, times the i-th power of r = exp(−c d), up to a factor that does not matter. Where the processor has vectors of
 // four (AVX2), four positions go side by side; each takes the same steps as alone, so the bits are the same.
 type LineFit struct {
-	c     float64   // 1/σ²
-	reach int       // samples to either side
-	table []float64 // the Gaussian from −reach to reach, 1 in the middle
+	c     float64         // 1/σ²
+	reach int             // samples to either side
+	table []float64       // the Gaussian from −reach to reach, 1 in the middle
+	deep  [][8][4]float64 // scratch of Restore
 }
 
 // Set makes σ (samples) and the reach. It allocates only when the reach is longer than ever before.
@@ -41,10 +42,7 @@ func (l *LineFit) At(dst [2][]float64, pos []float64, x [2][]float64, from int64
 	if x[1] == nil {
 		x[1], dst[1] = x[0], dst[0]
 	}
-	shift := int(-from) - l.reach
-	if lo, hi := int(nearest(pos[0]))+shift, int(nearest(pos[n-1]))-int(from)+l.reach; lo < 0 || hi >= min(len(x[0]), len(x[1])) || !(pos[0] <= pos[n-1]) {
-		panic("dsp: LineFit: samples missing")
-	}
+	shift := l.check(pos, min(len(x[0]), len(x[1])), from)
 	dst[0], dst[1] = dst[0][:n], dst[1][:n]
 	if hasAVX2 && n >= 4 && l.reach > 0 {
 		linesAVX2(l, &dst[0][0], &dst[1][0], &pos[0], n, &x[0][0], &x[1][0], shift)
@@ -53,23 +51,24 @@ func (l *LineFit) At(dst [2][]float64, pos []float64, x [2][]float64, from int64
 	l.plain(dst, pos, x, shift)
 }
 
+// check refuses positions without samples, and gives what the index of a position's first sample is beyond the sample
+// nearest to it.
+func (l *LineFit) check(pos []float64, samples int, from int64) (shift int) {
+	first, last := pos[0], pos[len(pos)-1]
+	shift = int(-from) - l.reach
+	if lo, hi := int(nearest(first))+shift, int(nearest(last))-int(from)+l.reach; lo < 0 || hi >= samples || !(first <= last) {
+		panic("dsp: LineFit: samples missing")
+	}
+	return shift
+}
+
 // nearest gives the sample nearest to a position.
 func nearest(pos float64) float64 { return math.Floor(pos + 0.5) }
 
 // plain takes one position after the other.
 func (l *LineFit) plain(dst [2][]float64, pos []float64, x [2][]float64, shift int) {
 	for k, p := range pos {
-		c := nearest(p)
-		d := c - p
-		// exp by its series: a quarter of what is wanted is at most 0.2, where the rest is below 3e-14, and any error is
-		// only another Gaussian
-		z := float64(-0.25 * l.c * d)
-		e := 1.0
-		for _, f := range expSeries {
-			e = 1 + float64(float64(z*f)*e)
-		}
-		r := e * e
-		r *= r
+		c, d, r := l.step(p)
 		// Moments by sums of sums: with S the sum so far, the sum of all S is the sum of (n − j)·h over the samples j = 0 …
 		// n−1, which takes an addition where the product would take two operations more.
 		w := 1.0
@@ -98,6 +97,21 @@ func (l *LineFit) plain(dst [2][]float64, pos []float64, x [2][]float64, shift i
 		dst[0][k] = (float64(s2*a0) - float64(s1*(float64(q*a0)-b0))) / det
 		dst[1][k] = (float64(s2*a1) - float64(s1*(float64(q*a1)-b1))) / det
 	}
+}
+
+// step gives the sample nearest to a position, how far after it that lies, and r.
+func (l *LineFit) step(p float64) (c, d, r float64) {
+	c = nearest(p)
+	d = c - p
+	// exp by its series: a quarter of what is wanted is at most 0.2, where the rest is below 3e-14, and any error is only
+	// another Gaussian
+	z := float64(-0.25 * l.c * d)
+	e := 1.0
+	for _, f := range expSeries {
+		e = 1 + float64(float64(z*f)*e)
+	}
+	r = e * e
+	return c, d, r * r
 }
 
 // expSeries is the exponential's in nested form, 1/9 to 1.

@@ -18,6 +18,9 @@ func extremesAVX2(x *int32, n int) (least, most int32)
 func linesAVX2(l *LineFit, dst0, dst1, pos *float64, n int, x0, x1 *float64, shift int)
 
 //go:noescape
+func sumsAVX2(l *LineFit, out *[8][4]float64, pos *float64, n int, x *float64, shift int)
+
+//go:noescape
 func levelsAVX2(b *Bins, peak, rms, square, x, y *float64)
 
 //go:noescape

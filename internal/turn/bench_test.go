@@ -9,6 +9,7 @@ import (
 
 func TestSteadyStateAllocatesNothing(t *testing.T) {
 	cfg, frames := machine(t, 40)
+	cfg.Throws[0].Pressure[1].Passage = Passage{900, 8}
 	c := converter(t, cfg)
 	i, seen := 0, 0
 	count := func(t *Turn) {

@@ -42,8 +42,8 @@ type Converter struct {
 
 // hand is what works on one throw, and what it found.
 type hand struct {
-	ladder   ladder
-	k        kernel
+	plain    ladder    // of the ends without a known passage
+	undone   [2]ladder // by end, of those with one
 	bins     dsp.Bins
 	perDeg   []float64 // samples per degree at the grid angles
 	why      string

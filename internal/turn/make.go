@@ -4,6 +4,7 @@ import (
 	"math"
 	"slices"
 
+	"lapwing/internal/dsp"
 	"lapwing/internal/frame"
 )
 
@@ -114,7 +115,7 @@ func (c *Converter) ask(r *record) (u float64, why string) {
 	return s.U, ""
 }
 
-// reach gives the half-open range of sample numbers that the kernels and bins of a grid touch; pos is relative.
+// reach gives the half-open range of sample numbers that the fits and bins of a grid touch; pos is relative.
 func (c *Converter) reach(g *grid, pos, perDeg []float64) (lo, hi int64) {
 	n := len(pos) - 1
 	edge := func(i int) float64 { return reachSigmas*roundedUp*max(width(g.Step*perDeg[i]), c.least) + 2 }
@@ -134,7 +135,7 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 			t.Bad[e] = ends[e].suspect(lo, hi, overload)
 		}
 	}
-	// Ends without a known passage share the fit; a transducer whose passage is to be undone has kernels of its own.
+	// Ends without a known passage share the fit; a transducer whose passage is to be undone has one of its own.
 	off := c.m.ref - c.base
 	var p, x [2][]float64
 	n := 0
@@ -145,23 +146,22 @@ func (c *Converter) pressures(k int, lo, hi int64, overload bool) {
 			p[n], x[n] = t.P[e], s.x.live()
 			n++
 		default:
-			c.undone(t, h, g.Step, e, s)
+			lead1, lead2 := s.ch.Passage.leads(c.cfg.Rate)
+			h.undone[e].runs(h.perDeg, g.Step, s.least, func(fit *dsp.LineFit, i, j int) {
+				fit.Restore(t.P[e][i:j], t.Pos[i:j], s.x.live(), -off, lead1, lead2)
+			})
 		}
 	}
-	if n > 0 {
-		h.lines(p, x, t.Pos, g.Step, off)
+	if n == 0 {
+		return
 	}
-}
-
-// undone fills in the pressures of an end whose passage is known.
-func (c *Converter) undone(t *Throw, h *hand, step float64, e int, s *stream) {
-	x, off := s.x.live(), c.m.ref-c.base
-	for i, p := range t.Pos {
-		sigma := max(width(step*h.perDeg[i]), s.least)
-		h.k.lay(p, sigma)
-		h.k.undo(s.ch.Passage, sigma, c.cfg.Rate)
-		t.P[e][i] = h.k.value(x[h.k.first+off:])
-	}
+	h.plain.runs(h.perDeg, g.Step, 0, func(fit *dsp.LineFit, i, j int) {
+		part := [2][]float64{p[0][i:j]}
+		if n > 1 {
+			part[1] = p[1][i:j]
+		}
+		fit.At(part, t.Pos[i:j], x, -off)
+	})
 }
 
 // vibration fills in the accelerometers of throw k.

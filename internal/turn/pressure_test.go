@@ -135,13 +135,3 @@ func TestKernelBiasOfSteepStroke(t *testing.T) {
 		}
 	}
 }
-
-// The series and the library's exponential agree over the joint and to the stated rest.
-func TestExponentials(t *testing.T) {
-	for z := -0.8; z <= 0.8; z += 0.001 {
-		up, down := exponentials(z)
-		if math.Abs(up/math.Exp(z)-1) > 4e-13 || math.Abs(down/math.Exp(-z)-1) > 4e-13 {
-			t.Fatalf("%g: %.16g and %.16g, want %.16g and %.16g", z, up, down, math.Exp(z), math.Exp(-z))
-		}
-	}
-}

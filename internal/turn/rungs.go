@@ -6,6 +6,17 @@ import (
 	"lapwing/internal/dsp"
 )
 
+const (
+	sigmaSteps   = 0.5 // σ of the Gaussian in grid steps
+	sigmaSamples = 0.8 // and at least, in samples
+	reachSigmas  = 4.0 // where the Gaussian is cut off
+	rungs        = 256 // σ is rounded up to exp(i/rungs), by less than 0.4 %:
+	roundedUp    = 1.004
+)
+
+// width gives σ in samples for the local number of samples per grid step.
+func width(perStep float64) float64 { return max(sigmaSteps*perStep, sigmaSamples) }
+
 // rung is one of the widths that σ is rounded up to, exp(i/rungs): lo < σ <= hi is taken as hi.
 type rung struct {
 	i      float64
@@ -55,20 +66,15 @@ func (l *ladder) step(sigma float64) (*dsp.LineFit, *rung) {
 // reach is how many samples to either side a Gaussian takes.
 func reach(sigma float64) int { return int(math.Ceil(reachSigmas * sigma)) }
 
-// lines fills in the values of one pressure or two without a passage to undo. off is where in x the sample at position
-// 0 lies.
-func (h *hand) lines(p, x [2][]float64, pos []float64, step float64, off int64) {
-	for i := 0; i < len(pos); {
-		fit, r := h.ladder.step(width(step * h.perDeg[i]))
+// runs calls f with every run of grid points [i, j) whose widths, at least so many samples, have the same rung.
+func (l *ladder) runs(perDeg []float64, step, least float64, f func(fit *dsp.LineFit, i, j int)) {
+	for i := 0; i < len(perDeg); {
+		fit, r := l.step(max(width(step*perDeg[i]), least))
 		j := i + 1
-		for j < len(pos) && r.has(width(step*h.perDeg[j])) {
+		for j < len(perDeg) && r.has(max(width(step*perDeg[j]), least)) {
 			j++
 		}
-		part := [2][]float64{p[0][i:j]}
-		if x[1] != nil {
-			part[1] = p[1][i:j]
-		}
-		fit.At(part, pos[i:j], x, -off)
+		f(fit, i, j)
 		i = j
 	}
 }

@@ -12,7 +12,7 @@ type stream struct {
 	ch           Channel
 	accel        bool
 	x            history // of a pressure
-	least        float64 // samples, the least σ of a pressure's kernel
+	least        float64 // samples, the least σ of a pressure's fit
 	impact, leak *band   // nil where the sampling rate does not allow them
 	bad          []span  // where values lay outside the valid range
 }

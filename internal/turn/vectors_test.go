@@ -17,6 +17,7 @@ import (
 func TestTurnsWithoutVectors(t *testing.T) {
 	const again = "LAPWING_TURN_AGAIN"
 	cfg, frames := machine(t, 12)
+	cfg.Throws[0].Pressure[1].Passage = Passage{900, 8}
 	sum, valid := fnv.New128a(), 0
 	for _, turn := range run(converter(t, cfg), frames) {
 		if turn.Valid() {
