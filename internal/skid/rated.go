@@ -165,6 +165,44 @@ func (d *doubter) limits() {
 	}
 }
 
+// worst writes the largest share of each rating over all throws and load steps.
+func (p *page) worst(sk *Skid, ds []duty) {
+	var words []string
+	for _, r := range sk.Machine.ratings() {
+		if r.value == 0 {
+			continue
+		}
+		most, where := 0.0, ""
+		for i := range sk.Throws {
+			d := ds[sk.Throws[i].Stage-1]
+			if d.err != nil {
+				continue
+			}
+			for _, s := range sk.Steps {
+				it := sk.ideal(i, s, d.line, d.gas)
+				load := it.gas
+				if r.combined {
+					load = it.pin
+				}
+				v := load.MaxCompression
+				if r.tension {
+					v = load.MaxTension
+				}
+				if v/r.value > most {
+					most, where = v/r.value, f("%s, step %d", sk.Throws[i].ID, s.Code)
+				}
+			}
+		}
+		if where != "" {
+			words = append(words, f("%.0f %% of %s (%s)", 100*most, r.key, where))
+		}
+	}
+	if len(words) > 0 {
+		fmt.Fprintln(p.w)
+		p.wrapped("At most, before valve losses: "+strings.Join(words, ", ")+".", "  ", 110)
+	}
+}
+
 // failed writes what the rod loads become when one valve of an end stands open all turn: API 618 wants the combined
 // load checked for a failed valve in any place (6.6; from memory). First load step only.
 func (p *page) failed(sk *Skid, ds []duty) {

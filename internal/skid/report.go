@@ -27,6 +27,7 @@ func Report(w io.Writer, sk *Skid, rate float64) error {
 	p.cylinders(sk)
 	p.valves(sk)
 	p.steps(sk, ds)
+	p.worst(sk, ds)
 	p.failed(sk, ds)
 	p.sampling(sk)
 	p.channels(sk)
