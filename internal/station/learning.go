@@ -38,9 +38,10 @@ func (p LearnPlan) kind() duty.Kind {
 
 // study is a learning run of the line, from its beginning to a person's word about it.
 type study struct {
-	touched  []int          // of a renewal: the features learnt anew
-	over     *duty.Baseline // the baseline that was in force when it began, whole
-	proposal *duty.Baseline // the run has ended and waits
+	touched  []int           // of a renewal: the features learnt anew
+	over     *duty.Baseline  // the baseline that was in force when it began, whole
+	proposal *duty.Baseline  // the run has ended and waits
+	coverage []duty.Coverage // of the run that has ended
 }
 
 // ErrLearning is wrapped by orders about learning that cannot be carried out now.
@@ -176,13 +177,21 @@ func (l *Line) AcceptLearning(by string) (*duty.Baseline, error) {
 		return nil, cannotLearn("nothing waits for a word")
 	}
 	accepted := *b
-	if accepted.Note = strings.TrimSpace(accepted.Note); by != "" && by != accepted.By {
-		accepted.Note = strings.TrimSpace(accepted.Note + " accepted by " + by)
+	if by != "" && by != accepted.By {
+		accepted.Note = noted(accepted.Note, "accepted by "+by)
 	}
 	if err := l.inForce(&accepted); err != nil {
 		return nil, err
 	}
 	return &accepted, nil
+}
+
+// noted adds to a note.
+func noted(note, more string) string {
+	if note = strings.TrimSpace(note); note == "" {
+		return more
+	}
+	return note + "; " + more
 }
 
 // inForce ends a study with its outcome in force.
@@ -208,7 +217,7 @@ func (l *Line) ImportBaseline(b *duty.Baseline, by, note string) error {
 		return cannotLearn("a run is on or what was learnt last waits: accept or drop it first")
 	}
 	c := *b
-	c.Note = strings.TrimSpace(c.Note + " imported by " + by + ": " + note)
+	c.Note = noted(c.Note, "imported by "+by+": "+note)
 	l.learn, l.learnt, l.study = LearnPlan{By: by, Note: note, Propose: true}, 0, study{over: l.base, proposal: &c}
 	return nil
 }
@@ -301,6 +310,7 @@ func (l *Line) propose() (*duty.Baseline, error) {
 		return nil, err
 	}
 	b.Doubts = b.Examine(l.layout, l.exponent)
+	l.study.coverage = l.learner.Coverage()
 	l.learner, l.study.proposal = nil, b
 	return b, nil
 }

@@ -219,10 +219,10 @@ func (l *Line) Learnt() (have, want int) {
 // Judging reports whether a baseline is in force.
 func (l *Line) Judging() bool { return l.ref != nil }
 
-// Coverage tells what the learning run has seen; nil when none is on.
+// Coverage tells what the learning run has seen, also while its outcome waits; nil when there is none.
 func (l *Line) Coverage() []duty.Coverage {
 	if l.learner == nil {
-		return nil
+		return l.study.coverage
 	}
 	return l.learner.Coverage()
 }
