@@ -37,7 +37,7 @@ func machineOf(sk *skid.Skid) measure.Machine {
 
 // base is the run that several tests compare with: healthy, constant duty.
 func base() windowtest.Run {
-	return windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 1.4, Seed: 3}
+	return windowtest.Run{Ratio: 2.5, RPM: 900, Seconds: 1.15, Seed: 3}
 }
 
 // outcome holds the median of every feature over a run, and what each turn gave, where it gave something.
@@ -120,7 +120,7 @@ func eachAltered(t testing.TB, r windowtest.Run, alter func(window.Result), use 
 	var v measure.Vector
 	var wi []window.Input
 	var mi []measure.Input
-	r.Turns(t, max(.6, 240/r.RPM), func(tn windowtest.Turn) {
+	r.Turns(t, max(.35, 240/r.RPM), func(tn windowtest.Turn) {
 		wi, mi = wi[:0], mi[:0]
 		for i, th := range sk.Throws {
 			line := tn.Process.Stages[th.Stage-1]

@@ -14,7 +14,7 @@ func TestFactsOfTheTrade(t *testing.T) {
 	for _, ratio := range []float64{1.6, 2.5, 3.6} {
 		r := base()
 		if ratio != r.Ratio {
-			r.Ratio, r.Seconds = ratio, 1.1
+			r.Ratio, r.Seconds = ratio, .85
 		}
 		turns, eight := 0, 0
 		var speed [2][2][]float64 // suction, discharge by opening, closing
@@ -134,7 +134,7 @@ func TestYoungLeak(t *testing.T) {
 		if !(p > 5) {
 			t.Errorf("%g mm² is not seen in the pressure: %.1f spreads", mm2, p)
 		}
-		if !(e < 2) {
+		if !(e < 3 && e < p/3) { // a spread of seven turns is itself known to a third
 			t.Errorf("%g mm² moves the vibration of the events by %.1f spreads", mm2, e)
 		}
 	}
