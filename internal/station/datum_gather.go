@@ -41,6 +41,7 @@ type dutyMean struct {
 	ratio, rpm, ps                float64 // of its first turn
 	mean                          datum.Mean
 	sumPs, sumPd, sumTs, sumK, rz float64
+	bend                          float64 // of the exponent along a stroke, summed
 }
 
 // halfStretch is the first of two turns that make a stretch.
@@ -173,6 +174,9 @@ func (g *gathering) average(i int, t *turn.Turn, w *window.Throw, p duty.Point) 
 		}
 	}
 	m.mean.Add(t.Throws[i].P, closed, t.Throws[i].Omega)
+	if g, ok := g.line.gas.at(p.Ps, in.Ts, p.Pd); ok && g.T2s > in.Ts {
+		m.bend += (g.KVd - g.KVs) / math.Log(g.T2s/in.Ts) // dense gas ends a stroke with another exponent than it begins with
+	}
 	m.sumPs, m.sumPd, m.sumTs, m.sumK = m.sumPs+p.Ps, m.sumPd+p.Pd, m.sumTs+in.Ts, m.sumK+in.Gas.KV
 	m.rz += in.Gas.R * (in.Gas.Zs + in.Gas.Zd) / 2
 }
@@ -226,7 +230,7 @@ func (g *gathering) input(i int) *datum.Input {
 			continue
 		}
 		d := m.mean.Duty()
-		d.Ps, d.Pd, d.Ts, d.K, d.RZ = m.sumPs/n, m.sumPd/n, m.sumTs/n, m.sumK/n, m.rz/n
+		d.Ps, d.Pd, d.Ts, d.K, d.RZ, d.KSlope = m.sumPs/n, m.sumPd/n, m.sumTs/n, m.sumK/n, m.rz/n, m.bend/n
 		at := g.sk.CylinderAt(i, m.step)
 		for e := range d.Pocket {
 			d.Pocket[e] = at.Clearance[e] - th.Cylinder.Clearance[e]
