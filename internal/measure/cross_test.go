@@ -13,7 +13,7 @@ import (
 // throw 1 is felt at all, nothing that arrives is booked as an impact of it.
 func TestTwoThrowsHearEachOther(t *testing.T) {
 	for _, mute := range []bool{false, true} {
-		r := windowtest.Run{Ratio: 2.5, RPM: 800, Seconds: .95, Seed: 1, Throws: 2}
+		r := windowtest.Run{Ratio: 2.5, RPM: 800, Seconds: 1.15, Seed: 1, Throws: 2}
 		if *sweep {
 			r = swinging(5, 40)
 			r.Throws = 2

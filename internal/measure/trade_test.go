@@ -14,7 +14,7 @@ func TestFactsOfTheTrade(t *testing.T) {
 	for _, ratio := range []float64{1.6, 2.5, 3.6} {
 		r := base()
 		if ratio != r.Ratio {
-			r.Ratio, r.Seconds = ratio, .85
+			r.Ratio, r.Seconds = ratio, 1
 		}
 		turns, eight := 0, 0
 		var speed [2][2][]float64 // suction, discharge by opening, closing
