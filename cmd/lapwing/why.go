@@ -81,7 +81,7 @@ func printWhy(w io.Writer, a *wire.Why, full bool) error {
 		fmt.Fprintln(tw)
 		for k := range b.Cases {
 			if c := &b.Cases[k]; full || c.Grade != "none" || a.Subject != "" {
-				printCase(tw, c)
+				printCase(tw, c, full)
 			}
 		}
 	}
@@ -102,17 +102,28 @@ func printWhy(w io.Writer, a *wire.Why, full bool) error {
 	return tw.Flush()
 }
 
-func printCase(tw io.Writer, c *wire.WhyCase) {
+func printCase(tw io.Writer, c *wire.WhyCase, full bool) {
 	fmt.Fprintf(tw, "  %s %s: %s\n", c.Subject, c.Kind, c.Grade)
 	if !c.Judged {
 		fmt.Fprintf(tw, "    not judged: %s\n", c.Why)
 		return
 	}
 	for _, v := range c.Classes {
+		if v.Weight == nil && !full {
+			continue
+		}
 		fmt.Fprintf(tw, "    %s\t%s in this block, %s over the last ones\t%s\n", v.Class, number(v.Weight, "%.1f"), number(v.Median, "%.1f"), v.Why)
 	}
+	quiet := 0
 	for _, e := range c.Evidence {
+		if !full && (e.Spreads == nil || *e.Spreads < 1 && *e.Spreads > -1) {
+			quiet++
+			continue
+		}
 		fmt.Fprintf(tw, "      %s\t%s for %s\t%s spreads\tweighs %s\n", e.Measure, number(e.Value, "%.5g"), number(e.Expected, "%.5g"), number(e.Spreads, "%+.1f"), number(e.Weight, "%.1f"))
+	}
+	if quiet > 0 {
+		fmt.Fprintf(tw, "      %d other measures are within one spread of what is expected (--full shows them)\n", quiet)
 	}
 	for _, m := range c.Missing {
 		fmt.Fprintf(tw, "    %s\n", m)

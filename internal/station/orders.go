@@ -7,6 +7,7 @@ import (
 	"math"
 	"slices"
 	"strconv"
+	"strings"
 	"sync/atomic"
 	"time"
 
@@ -125,7 +126,7 @@ func (s *Station) execute(o Order) wire.Receipt {
 	}
 	act.Accepted, act.Said, act.Clip = err == nil, d.said, d.clip
 	if err != nil {
-		act.Said = err.Error()
+		act.Said = strings.TrimPrefix(err.Error(), "alarm: ")
 	}
 	for i := range d.transitions {
 		act.Transitions = append(act.Transitions, d.transitions[i].ID)

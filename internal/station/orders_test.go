@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/json"
 	"errors"
+	"fmt"
 	"io"
 	"net/http"
 	"path/filepath"
@@ -331,5 +332,23 @@ func TestOrdersOutliveARestart(t *testing.T) {
 	}
 	if _, err := ledger.Open(filepath.Join(s.o.State, "state.db"), ledger.Options{LockWait: time.Millisecond}); err == nil {
 		t.Error("two hold the state file")
+	}
+}
+
+// More than ten alarms within ten minutes are a flood: page and health say so, and name the first that still stands.
+func TestFloodIsSaid(t *testing.T) {
+	s := staffed(t) // two stand
+	var keys []string
+	for i := range 9 {
+		keys = append(keys, fmt.Sprintf("t2.ce.d%d/leaking", i))
+	}
+	s.raise(t, alarm.Advisory, keys[:8]...)
+	if said := s.Now().Health.Trouble; len(said) != 0 {
+		t.Errorf("ten alarms: %q", said)
+	}
+	s.raise(t, alarm.Advisory, keys[8])
+	said := s.Now().Health.Trouble
+	if len(said) != 1 || !strings.Contains(said[0], "alarm flood") || !strings.Contains(said[0], "t1.he.suction/leaking") || !s.Alarms().Flood {
+		t.Errorf("eleven alarms: %q", said)
 	}
 }

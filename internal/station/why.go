@@ -206,7 +206,6 @@ func (l *Line) whyThrow(w *wire.Why, throw int, about string, turnNumber int64, 
 			}
 		}
 		w.Blocks = append(w.Blocks, b)
-		l.sayBlock(at, ask, keep, say)
 	}
 	for i := range turns {
 		k := &turns[i]
@@ -221,9 +220,18 @@ func (l *Line) whyThrow(w *wire.Why, throw int, about string, turnNumber int64, 
 			}
 		}
 		w.Turns = append(w.Turns, t)
-		if k.turn == ask && k.reason != "" {
-			say("%s: turn %d was not compared with the baseline: %s", id, ask, k.reason)
+		if k.turn != ask {
+			continue
 		}
+		switch {
+		case k.reason != "":
+			say("%s: turn %d was not compared with the baseline: %s", id, ask, k.reason)
+		case at != nil && ask > at.Turn1:
+			say("%s: turn %d was compared; the block that it belongs to is not complete yet", id, ask)
+		}
+	}
+	if at != nil {
+		l.sayBlock(at, keep, say)
 	}
 	if at == nil && l.ref != nil {
 		say("%s: no block of comparable turns has been complete since the start (%d turns make one), so nothing can be raised yet", id, l.sk.Detection.BlockTurns)
@@ -231,11 +239,8 @@ func (l *Line) whyThrow(w *wire.Why, throw int, about string, turnNumber int64, 
 }
 
 // sayBlock says in words what a block came to.
-func (l *Line) sayBlock(x *verdict.Explanation, ask int64, keep func(string) bool, say func(string, ...any)) {
+func (l *Line) sayBlock(x *verdict.Explanation, keep func(string) bool, say func(string, ...any)) {
 	where := fmt.Sprintf("turns %d to %d", x.Turn0, x.Turn1)
-	if ask > x.Turn1 {
-		where += fmt.Sprintf(" (turn %d belongs to a block that is not complete yet)", ask)
-	}
 	var strongest *verdict.Reasoning
 	raised := 0
 	for i := range x.Cases {
@@ -268,18 +273,22 @@ func (l *Line) sayBlock(x *verdict.Explanation, ask int64, keep func(string) boo
 
 // votes lists what the classes say, as it grades.
 func votes(r *verdict.Reasoning) string {
-	var out []string
+	var out, not []string
 	for _, v := range r.Classes {
 		if !math.IsNaN(v.LLR) {
 			out = append(out, fmt.Sprintf("%s %.1f", v.Class, v.Median))
-		} else if v.Why != "" {
-			out = append(out, fmt.Sprintf("%s absent (%s)", v.Class, v.Why))
+		} else {
+			not = append(not, v.Class.String())
 		}
 	}
 	if len(out) == 0 {
 		return "no evidence"
 	}
-	return strings.Join(out, ", ") + fmt.Sprintf(" (together %.1f, natural log)", r.Total)
+	said := strings.Join(out, ", ") + fmt.Sprintf(" (together %.1f, natural log)", r.Total)
+	if len(not) > 0 {
+		said += ", nothing of " + strings.Join(not, ", ")
+	}
+	return said
 }
 
 func wireTurnReason(throw string, k *turnReason) wire.WhyTurn {
