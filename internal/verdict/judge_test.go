@@ -79,7 +79,7 @@ func TestPatternsAgreeWithWorkedLeaks(t *testing.T) {
 func TestHealthyMachineRaisesNothing(t *testing.T) {
 	blocks, advisories := 0, 0
 	standing := map[string]bool{}
-	seeds, turns, least := uint64(1), 3000, 120
+	seeds, turns, least := uint64(1), 1800, 70
 	if *sweep {
 		seeds, turns, least = 5, 9000, 2000
 	}
@@ -122,11 +122,11 @@ func TestLeaksAreBookedToTheirPath(t *testing.T) {
 				}
 			}
 		}
-		baseline := commission(t, healthy, 2000, move(healthy))
+		baseline := commission(t, healthy, map[bool]int{false: 1200, true: 2000}[*sweep], move(healthy))
 		turns := map[string]int{"steady": 180, "swings": 375}[load] // some duties of the swings were never learnt
 		for _, subject := range []string{"t1.he.suction", "t1.he.discharge", "t1.ce.suction", "t1.ce.discharge", "t1.rings"} {
 			for _, g := range []float64{1, 2, 5} {
-				if !*sweep && (g == 2) != (load == "swings") {
+				if !*sweep && g != map[string]float64{"steady": 1, "swings": 2}[load] {
 					continue
 				}
 				name := fmt.Sprintf("%s %s %g %%", load, subject, g)
@@ -181,8 +181,6 @@ func TestLeaksAreBookedToTheirPath(t *testing.T) {
 
 // Errors of the instruments and of the process: a finding about them, and no valve above advisory.
 func TestSensorErrorsAreNotLeaks(t *testing.T) {
-	healthy := newSynth(5)
-	baseline := commission(t, healthy, 900, nil)
 	for name, c := range map[string]struct {
 		do            func(s *synth)
 		subject, kind string
@@ -197,13 +195,11 @@ func TestSensorErrorsAreNotLeaks(t *testing.T) {
 		"accelerometer twice as loud": {func(s *synth) { s.louder = 0.7 }, "a1", AccelGain},
 	} {
 		t.Run(name, func(t *testing.T) {
-			s := newSynth(5)
-			s.r = rand.New(rand.NewPCG(6, uint64(len(name))))
-			r := baseline.fresh()
+			s, r := commissioned(t, 5)
 			r.judge = New(s.layout, Config{Channels: []ThrowChannel{{Pressure: [2]string{"p1", ""}, Accel: "a1"}}})
 			c.do(s)
 			named := false
-			r.run(s, 450, nil, func(_ duty.Block, fs []Finding) {
+			r.run(s, 240, nil, func(_ duty.Block, fs []Finding) {
 				for _, f := range fs {
 					if f.Subject == c.subject && f.Kind == c.kind {
 						named = true
@@ -277,8 +273,8 @@ func TestOtherKinds(t *testing.T) {
 // An unloaded end accuses none of its own valves; what stood before stays as it was.
 func TestIdleEndIsNotJudged(t *testing.T) {
 	s := newSynth(11)
-	move := func(i int) { s.idle[1] = (i/300)%2 == 1 }
-	r := commission(t, s, 1300, move)
+	move := func(i int) { s.idle[1] = (i/200)%2 == 1 }
+	r := commission(t, s, 800, move)
 	s.idle = [2]bool{}
 	s.leak["t1.ce.suction"] = 5
 	r.run(s, 150, nil, func(duty.Block, []Finding) {})
@@ -287,7 +283,7 @@ func TestIdleEndIsNotJudged(t *testing.T) {
 		t.Fatalf("not raised: %+v", before)
 	}
 	s.leak["t1.ce.suction"] = 0
-	r.run(s, 600, func(int) { s.idle[1] = true }, func(_ duty.Block, fs []Finding) {
+	r.run(s, 300, func(int) { s.idle[1] = true }, func(_ duty.Block, fs []Finding) {
 		if len(fs) != 1 || fs[0].Turn != before[0].Turn || fs[0].Grade != before[0].Grade {
 			t.Fatalf("an idle end changed it: %+v", fs)
 		}
@@ -429,6 +425,8 @@ func TestGradeText(t *testing.T) {
 // With one end idle, rings blow and leak like the loaded end's suction (reference/leaks.md section 2), and two impacts
 // are too few to tell an accelerometer by: what is known from before explains what is seen.
 func TestWhatIsKnownExplainsOneEndedDuty(t *testing.T) {
+	healthy := newSynth(11)
+	baseline := commission(t, healthy, 800, func(i int) { healthy.idle[0] = (i/200)%2 == 1 })
 	for name, c := range map[string]struct {
 		both, one func(s *synth)
 		subject   string
@@ -438,8 +436,7 @@ func TestWhatIsKnownExplainsOneEndedDuty(t *testing.T) {
 	} {
 		t.Run(name, func(t *testing.T) {
 			s := newSynth(11)
-			r := commission(t, s, 1300, func(i int) { s.idle[0] = (i/300)%2 == 1 })
-			s.idle = [2]bool{}
+			r := baseline.fresh()
 			c.both(s)
 			only := func(_ duty.Block, fs []Finding) {
 				for _, f := range fs {
