@@ -1,6 +1,7 @@
 // Package frame cuts the stream of samples into revolutions on the shaft's phase reference.
 //
-// Needs: blocks of all inputs in order, one of them the phase signal: one mark a turn, or a toothed wheel.
+// Needs: blocks of all inputs in order, one of them the phase signal: one mark a turn, or a toothed wheel; or two, a wheel
+// of equal teeth and one mark a turn apart from it.
 // Waits: until the closing mark is sure: a twentieth of a turn after it, up to two fifths when it came off its time; half a
 // tooth with a wheel. A wheel is found after a turn and its index, and gone through again from there.
 // Emits: one Frame per revolution, raw codes and sub-sample marks (with a wheel one for each tooth), with what was wrong in Q.
@@ -28,4 +29,8 @@
 // neighbours. When edges stand in the gap and teeth are lost, the place on the wheel is looked for anew, and the turn is cut
 // where it belongs; what cannot be told apart is one frame marked Missing. A coil's signal wants its steep side as active edge
 // (the flat one is lost in the gap); some wheels say nothing of the turn and are refused (Wheel.Check).
+//
+// A wheel beside a mark of its own (Wheel.Separate): the mark cuts the turns as above, and each cut is moved to the tooth that
+// follows it, so that angles count from a tooth's edge. Which tooth that is, is learnt as a distance from the mark, so that
+// neither jitter nor a lost tooth shifts it; a mark that comes within a tenth of a pitch after a tooth's edge belongs to that tooth.
 package frame

@@ -49,12 +49,13 @@ const (
 	leastOrders    = 12  // of the shaft: below lie the harmonics of the cycle itself
 	lowest         = 120 // Hz
 	highestShare   = .19 // of the rate: 2.2 f₀ must lie well below half the rate
+	lengthApart    = .2  // share by which the lengths of stretches may differ
 	mostApart      = .05 // share by which the parts' frequencies may differ, one standard deviation
 	leastQ, mostQ  = 2.0, 40.0
 )
 
-// Find looks for the passage of one channel; rate is in samples per second. Stretches whose length is more than 2 %
-// off the median are left out.
+// Find looks for the passage of one channel; rate is in samples per second. Stretches whose length is more than a fifth
+// off the median are left out: the shaft's harmonics at several steady speeds blur each other, and the passage stands.
 func Find(rate float64, list []Stretch) Found {
 	list = alike(list)
 	if len(list) < LeastStretches {
@@ -123,7 +124,7 @@ func none(n int, format string, a ...any) Found {
 	return Found{Reason: fmt.Sprintf(format, a...), Hz: nan, Q: nan, HzU: nan, QU: nan, Fall: nan, Orders: nan, Stretches: n}
 }
 
-// alike keeps the stretches whose length is within 2 % of the median one.
+// alike keeps the stretches whose length is within a fifth of the median one.
 func alike(list []Stretch) (out []Stretch) {
 	var n []float64
 	for _, s := range list {
@@ -134,7 +135,7 @@ func alike(list []Stretch) (out []Stretch) {
 	}
 	mid := dsp.Median(n)
 	for _, s := range list {
-		if math.Abs(float64(len(s.X))-mid) <= .02*mid && !slices.ContainsFunc(s.X, func(v float64) bool { return math.IsNaN(v - v) }) {
+		if math.Abs(float64(len(s.X))-mid) <= lengthApart*mid && !slices.ContainsFunc(s.X, func(v float64) bool { return math.IsNaN(v - v) }) {
 			out = append(out, s)
 		}
 	}

@@ -15,5 +15,12 @@
 // with what the channel did in the turns that were declared healthy, or in its first good ones.
 //
 // What a baseline is needed for (gain of an accelerometer, zero of a pressure transmitter) shows in the state too, but
-// it is the judge that raises it: see Shift.
+// it is the judge that raises it: see Shift. Level follows pressure zeros as slowly as temperature moves them and finds
+// sensitivities that are off, Slip watches the phase reference by the fitted phase; what they find, and what the station
+// finds of gauge passages, is told with Tell: maintenance required, the channel stays in use.
+//
+// Measured on the modelled biomethane machine (TestPressureErrorsAreTheChannels, TestPhaseSlipIsThePhaseReferences of
+// station, LAPWING_FIELD=1): zeros off by 0.5, 1, 2 % of span either way named by the judge after 3 to 7 s, sensitivities
+// off by 1, 2, 5 % named here after 18 to 23 s and within 0.1 points of the truth, slips of 0.5 and 1.5° after 12 s and
+// within 0.01°; 12 + 12 + 4 cases, no valve named in any.
 package sensor

@@ -75,7 +75,7 @@ const (
 	gaugeSpacing = 2   // turns between two pairs while nothing is known …
 	gaugeWatch   = 24  // … and once it is
 	gaugeEvery   = 600 // s from look to look
-	gaugeSame    = .02 // share within which the turns of a look are of one length
+	gaugeSame    = .15 // share within which the turns of a look are of one length
 	gaugeOther   = 12  // pairs in a row of another length: the machine has another speed now
 	gaugeLong    = 4000
 	// A passage has changed when its frequency is off by more than a twentieth and more than three half-widths, or its Q
