@@ -53,6 +53,7 @@ func (b *baselines) dropCommand() *cobra.Command {
 
 func (b *baselines) renewCommand() *cobra.Command {
 	o := wire.Order{Verb: wire.VerbRenew}
+	var more bool
 	cmd := &cobra.Command{
 		Use: "renew PART", Short: "Learn one part anew after work on it", Args: cobra.ExactArgs(1),
 		Long: `renew starts a learning run for what work on one part has touched, and for nothing else; that is not
@@ -61,13 +62,17 @@ judged until the run is accepted. The part is a throw (t1), an end (t1.he), a va
 
 A new valve, for instance, touches its own group's impacts and covers, everything that stands on the
 pressure of that end, and the leak areas of the cylinder, which are fitted together. Every load step
-has to be run again before it is judged again.`,
+has to be run again before it is judged again; with --more a later run adds those that an earlier one
+has not seen.`,
 		Example: `  lapwing baseline renew t1.he.suction --by "R. Example" --reason "s1 replaced"`,
 		RunE: func(cmd *cobra.Command, args []string) error {
-			o.Subject = args[0]
+			if o.Subject = args[0]; more {
+				o.Verb, o.Add = wire.VerbLearnStart, true
+			}
 			return b.give(cmd.Context(), cmd.OutOrStdout(), o)
 		},
 	}
 	cmd.Flags().IntVar(&o.Turns, "turns", 600, "steady turns of the throw, 45 at least")
+	cmd.Flags().BoolVar(&more, "more", false, "go on with load steps that an earlier renewal of this part has not seen")
 	return b.ordering(cmd, &o)
 }

@@ -162,6 +162,7 @@ func TestBaselineOrders(t *testing.T) {
 		{[]string{"learn", "--by", "A", "--turns", "100", "--reason", "overhauled"}, wire.Order{Verb: wire.VerbLearnStart, By: "A", Turns: 100, Reason: "overhauled"}},
 		{[]string{"learn", "--by", "A", "--add", "--accept"}, wire.Order{Verb: wire.VerbLearnStart, By: "A", Turns: 600, Add: true, Auto: true}},
 		{[]string{"renew", "t1.he.s1", "--by", "A"}, wire.Order{Verb: wire.VerbRenew, By: "A", Turns: 600, Subject: "t1.he.s1"}},
+		{[]string{"renew", "t1.he.s1", "--by", "A", "--more"}, wire.Order{Verb: wire.VerbLearnStart, By: "A", Turns: 600, Subject: "t1.he.s1", Add: true}},
 		{[]string{"accept", "--by", "A"}, wire.Order{Verb: wire.VerbLearnAccept, By: "A"}},
 	} {
 		out, err := baselineTool(t, append(c.args, "--daemon", srv.URL)...)

@@ -28,6 +28,7 @@ type Learner struct {
 	any          bool
 	over         *Baseline // what the run changes; nil: it begins from nothing
 	touched      []int     // of over, the features learnt anew; nil: whole load steps are added
+	more         bool      // only load steps that lack some of them
 }
 
 // lesson is one cell's turns.
@@ -72,6 +73,17 @@ func NewRenewal(layout measure.Layout, cfg LearnConfig, over *Baseline, touched 
 	return l, nil
 }
 
+// NewContinuation goes on with a renewal: it learns the touched features at the load steps that an earlier run has not
+// seen, and leaves everything that is there.
+func NewContinuation(layout measure.Layout, cfg LearnConfig, over *Baseline, touched []int) (*Learner, error) {
+	l, err := NewRenewal(layout, cfg, over, touched)
+	if err != nil {
+		return nil, err
+	}
+	l.more = true
+	return l, nil
+}
+
 // NewAddition begins a run that adds load steps to a baseline which has not seen them, and leaves those that it has.
 func NewAddition(layout measure.Layout, cfg LearnConfig, over *Baseline) (*Learner, error) {
 	if _, err := over.Reference(layout); err != nil {
@@ -87,11 +99,13 @@ func (l *Learner) wants(throw, step int, inferred bool) bool {
 	if l.over == nil {
 		return true
 	}
-	had := l.over.cell(throw, step, inferred) != nil
+	cell := l.over.cell(throw, step, inferred)
 	if l.touched == nil {
-		return !had
+		return cell == nil
 	}
-	return had && slices.ContainsFunc(l.touched, func(f int) bool { return l.layout[f].Throw == throw })
+	return cell != nil && slices.ContainsFunc(l.touched, func(f int) bool {
+		return l.layout[f].Throw == throw && !(l.more && cell.model(l.layout[f].Subject, l.layout[f].Name) != nil)
+	})
 }
 
 // Add takes one turn of one throw.
@@ -256,7 +270,11 @@ func (l *Learner) Fit(h Header) (*Baseline, error) {
 		return nil, fmt.Errorf("duty: learn: %d steady turns at the most in one load step, at least %d are needed", most, l.cfg.MinTurns)
 	}
 	if l.over != nil {
-		b.Cells = l.over.Without(l.layout, l.touched).Cells
+		drop := l.touched
+		if l.more {
+			drop = nil
+		}
+		b.Cells = l.over.Without(l.layout, drop).Cells
 	}
 	if l.touched != nil {
 		if err := l.renew(b); err != nil {

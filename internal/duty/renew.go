@@ -139,7 +139,7 @@ func (l *Learner) renew(b *Baseline) error {
 		}
 		prior := l.over.cell(cell.Throw, cell.Step, cell.Inferred)
 		for k, f := range fresh.features {
-			if !slices.Contains(touched, f) {
+			if !slices.Contains(touched, f) || cell.model(l.layout[f].Subject, l.layout[f].Name) != nil {
 				continue
 			}
 			m, ok, err := fresh.fitFeature(l.layout[f], k, x, prior.model(l.layout[f].Subject, l.layout[f].Name))

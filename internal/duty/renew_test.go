@@ -174,6 +174,29 @@ func TestRenewalWaitsForEveryLoadStep(t *testing.T) {
 		t.Errorf("coverage says %q", said)
 	}
 
+	// The rest can follow in a second run, which leaves what the first one gave.
+	c, err := NewContinuation(testLayout, LearnConfig{}, b, []int{1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	feed(c, 2, 100)
+	if _, err := c.Fit(Header{}); err == nil {
+		t.Error("nothing new was run, and a baseline came of it")
+	}
+	feed(c, 1, 100)
+	both, err := c.Fit(Header{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, cell := range both.Cells {
+		if cell.model("t1.he", "discharge_opens_late_deg") == nil {
+			t.Errorf("load step %d was run and lacks a measure", cell.Step)
+		}
+		if cell.Step == 2 && !slices.Equal(cell.Models, b.Cells[i].Models) {
+			t.Error("load step 2 has changed")
+		}
+	}
+
 	// And the other way round: a load step that was never learnt is added, the others stay bit for bit.
 	a, err := NewAddition(testLayout, LearnConfig{Steps: []int{1, 2, 3}, Throws: 1}, old)
 	if err != nil {

@@ -20,7 +20,7 @@ type LearnPlan struct {
 
 	By, Note string // who says so, and why
 	Subject  string // the part that was worked on: it alone is learnt anew; empty: everything
-	Add      bool   // load steps that the baseline in force has not seen are added to it
+	Add      bool   // load steps that the baseline in force has not seen are added to it; with a Subject, those at which that part has not been learnt anew yet
 	Propose  bool   // what was learnt waits for AcceptLearning; otherwise it is in force at once
 }
 
@@ -59,8 +59,6 @@ func (l *Line) StartLearning(p LearnPlan) error {
 		return cannotLearn("a run is on, %d of %d steady turns: wait for its end, or drop it", l.learnt, l.learn.Steady)
 	case l.study.proposal != nil:
 		return cannotLearn("what was learnt last waits for a word: accept or drop it first")
-	case p.Subject != "" && p.Add:
-		return cannotLearn("either one part is learnt anew or load steps are added")
 	case (p.Subject != "" || p.Add) && l.base == nil:
 		return cannotLearn("no baseline is in force that could be changed: learn the whole machine")
 	case p.Steady < 0 || p.Steady > 0 && p.Steady < leastTurns:
@@ -81,7 +79,7 @@ func (l *Line) StartLearning(p LearnPlan) error {
 	if err != nil {
 		return err
 	}
-	if s.touched != nil {
+	if s.touched != nil && !p.Add {
 		if err := l.judgeOn(l.base.Without(l.layout, s.touched), s.touched); err != nil {
 			return err
 		}
@@ -92,10 +90,12 @@ func (l *Line) StartLearning(p LearnPlan) error {
 }
 
 func (l *Line) newLearner(p LearnPlan, s *study) (*duty.Learner, error) {
-	switch p.kind() {
-	case duty.Renewed:
+	switch {
+	case p.Subject != "" && p.Add:
+		return duty.NewContinuation(l.layout, l.learnConfig(), s.over, s.touched)
+	case p.Subject != "":
 		return duty.NewRenewal(l.layout, l.learnConfig(), s.over, s.touched)
-	case duty.Added:
+	case p.Add:
 		return duty.NewAddition(l.layout, l.learnConfig(), s.over)
 	}
 	return duty.NewLearner(l.layout, l.learnConfig()), nil

@@ -253,6 +253,9 @@ func (s *Station) showLearning(at time.Time) {
 	}
 	if p := l.Proposal(); p != nil || l.learner != nil {
 		w.Kind, w.Subject, w.By, w.Note, w.Withheld = string(l.learn.kind()), l.learn.Subject, l.learn.By, l.learn.Note, len(l.study.touched)
+		if l.learn.Add {
+			w.Withheld = 0
+		}
 		w.Turns, w.Want = l.learnt, l.learn.Steady
 		if l.learn.Steady == 0 {
 			w.Want = int(min(l.learn.To-l.learn.From, math.MaxInt32))
