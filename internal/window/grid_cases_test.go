@@ -145,20 +145,25 @@ func told(rng *rand.Rand) windowtest.Told {
 
 var shares = []float64{1, .5, .75, 1.1}
 
-// gridCases lists the whole grid. Machines of each make run at 50 to 110 % of their rated speed.
-func gridCases(t testing.TB) []gridCase {
+// daily is the case of the grid that every test run plays.
+const daily = 121
+
+// gridCases lists the whole grid, or the daily case alone. Machines of each make run at 50 to 110 % of their rated speed.
+func gridCases(t testing.TB, all bool) []gridCase {
 	var out []gridCase
-	n := 0
+	n := -1
 	for i, ratio := range []float64{1.15, 1.8, 2.5, 3.6, 6} {
 		for j, m := range makes() {
 			for step := range devices {
 				for pulse := range 2 {
+					if n++; !all && n != daily {
+						continue
+					}
 					rng := rand.New(rand.NewPCG(uint64(n), 5))
-					n++
 					machine, g := m.of(t, ratio, rng)
 					share := shares[(i+j+step+2*pulse)%4]
 					rpm := m.rated * share
-					r := windowtest.Run{RPM: rpm, Step: step, Seconds: 37 * 60 / rpm, Seed: uint64(1000 + n), Machine: machine, Told: told(rng)}
+					r := windowtest.Run{RPM: rpm, Step: step, Seconds: 37 * 60 / rpm, Seed: uint64(1001 + n), Machine: machine, Told: told(rng)}
 					rows := []string{devices[step], fmt.Sprintf("ratio %g", ratio), m.name, fmt.Sprintf("%.0f %% of rated speed", 100*share),
 						[]string{"usual pulsation", "±5 % pulsation"}[pulse], "all of these"}
 					if pulse > 0 {
@@ -168,6 +173,9 @@ func gridCases(t testing.TB) []gridCase {
 				}
 			}
 		}
+	}
+	if !all {
+		return out
 	}
 	return append(out, otherCases(t)...)
 }
@@ -180,9 +188,9 @@ func swell(amp, s, d float64) func(*model.Params) {
 	}
 }
 
-// drawnMake is a machine drawn at random; no constant of the package was fitted on these.
+// drawnMake is a machine drawn at random. The draw was changed after the last constant of the package was set.
 func drawnMake(seed uint64) makeOf {
-	rng := rand.New(rand.NewPCG(seed, 77))
+	rng := rand.New(rand.NewPCG(seed, 2026))
 	between := func(lo, hi float64) float64 { return lo + (hi-lo)*rng.Float64() }
 	m := makeOf{gas: gas.Names()[rng.IntN(len(gas.Names()))], rated: 250 * math.Pow(7.2, rng.Float64()), ts: between(285, 320)}
 	m.ps = between(2, 15) * 1e5

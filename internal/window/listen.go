@@ -60,7 +60,9 @@ func (t *Tracker) train(th *throw, tt *turn.Throw, e int, lo, hi float64) (loude
 		}
 		top := 0.0 // the throw's loudest of the turn
 		for _, p := range vib.Peak {
-			top = math.Max(top, p)
+			if p > top {
+				top = p
+			}
 		}
 		t.buf = append(t.buf[:0], vib.RMS[a:b+1]...)
 		floor := math.Max(burstRatio*dsp.MedianInPlace(t.buf), heardOfTop*top)

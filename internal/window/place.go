@@ -2,6 +2,7 @@ package window
 
 import (
 	"math"
+	"slices"
 
 	"lapwing/internal/turn"
 )
@@ -138,14 +139,18 @@ func (t *Tracker) closingWindow(mem *endMemory, stroke int, c, m float64) (lo, h
 	}
 	lo, hi = math.Min(-9, c-3), math.Max(12+0.5*m, c+8+1.1*m)
 	if mem.heard[0].count() >= heardLeast {
-		loudest, scatter := mem.heard[0].centre(t.buf)
-		last, spread := mem.heard[1].centre(t.buf)
-		if scatter <= heardSigma && spread <= heardSigma { // the peak comes up to half a millisecond after the impact
-			lo = math.Min(-9, loudest-heardSpare-0.3*m-scatter)
-			hi = math.Max(hi, last+heardSpare/2+spread)
-		}
+		// The peak comes up to half a millisecond after the impact.
+		lo = math.Max(math.Min(-9, t.passed(&mem.heard[0], heardEarly)-heardSpare-0.3*m), earliestHeard)
+		hi = math.Max(hi-heardLess, t.passed(&mem.heard[1], heardLate)+heardSpare/2)
 	}
 	return lo, hi
+}
+
+// passed gives the value that a share of the remembered ones does not pass.
+func (t *Tracker) passed(r *recent, p float64) float64 {
+	w := append(t.buf[:0], r.v...)
+	slices.Sort(w)
+	return w[int(p*float64(len(w)-1)+0.5)]
 }
 
 // share marks the windows in which another event of the throw may ring.
