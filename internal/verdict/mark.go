@@ -168,7 +168,7 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 			m.slowSignal = false
 		}
 	case c.kind == ImpactingHard: // a broken plate also leaks: that is its second witness
-		if f.chosen && f.llr > 0 && v.hard[c.h].llr >= 1 {
+		if f.chosen && f.llr > 0 && v.hard[c.h].llr >= 1 && !v.either[c.h] {
 			*pressure = f.vote
 		}
 	}
