@@ -164,8 +164,13 @@ func stay(load []float64, step, sign float64) (total, longest float64) {
 		return 360, 360
 	}
 	run := 0.0
-	for j := range n {
-		a, b := sign*load[(start+j)%n], sign*load[(start+j+1)%n]
+	b := sign * load[start]
+	for i := start; ; {
+		if i++; i == n {
+			i = 0
+		}
+		a := b
+		b = sign * load[i]
 		switch {
 		case a > 0 && b > 0:
 			run += step
@@ -177,6 +182,8 @@ func stay(load []float64, step, sign float64) (total, longest float64) {
 		case b > 0: // enters
 			run = step * b / (b - a)
 		}
+		if i == start {
+			return total, longest
+		}
 	}
-	return total, longest
 }
