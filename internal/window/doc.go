@@ -16,9 +16,15 @@
 // ill-conditioned for suction closing at full load, where the volume hardly changes. The intersection of the line
 // with the end's own plateau is the most repeatable angle (Window.Thermo), and the one that leakage moves.
 //
+// The valve has lifted a little before its opening departs from the line by as much as can be told, and the more so
+// the slower the trace moves: Window.Angle takes that back by how fast the departure grows.
+//
 // The estimators, their constants and the widths were measured on an independent model (figures beside the
 // constants). The lag from departure to impact belongs to the valve and is learnt, in milliseconds, from the
-// vibration; the tail of a window follows it, its lead is never narrowed.
+// vibration; the tail of a window follows it, its lead is never narrowed. So is the lag of a late suction closing. A
+// suction closing at full load is listened for: a valve may flutter shut well before the dead centre, or float well
+// beyond it with the pulsation of the line, and no pressure shows either. Its window reaches to where it is heard,
+// leaving out what rings of events that the pressure does show.
 //
 // The control system tells of a load step up to a second late. Until then the volumes may be wrong by a pocket, and a
 // stroke looks open or ends in the wrong place: when the clearance told makes no sense of the trace and that of another

@@ -126,7 +126,7 @@ func TestModelSweep(t *testing.T) {
 				if !*sweep && !quick[[3]int{i, j, step}] {
 					continue
 				}
-				seconds := 1.5
+				seconds := 1.2
 				if *sweep {
 					seconds = 6
 				}
@@ -159,7 +159,7 @@ func TestModelSwing(t *testing.T) {
 	} {
 		r.Seconds = 6
 		if !*sweep {
-			if r.Seconds = 2.6; i > 0 {
+			if r.Seconds = 2.2; i > 0 {
 				break
 			}
 		}

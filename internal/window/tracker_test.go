@@ -50,7 +50,7 @@ func TestWindowsFollowTheDuty(t *testing.T) {
 	for _, name := range names {
 		s := all[name].solve()
 		tr := NewTracker(Config{})
-		for n := range int64(14) {
+		for n := range int64(9) {
 			res := tr.Track(s.turn(n), s.input())
 			for e, end := range res.Throws[0].Ends {
 				if s.idle[e] {
@@ -78,7 +78,7 @@ func TestWindowsFollowTheDuty(t *testing.T) {
 					shut++
 					if in {
 						shutIn++
-					} else if n == 13 {
+					} else if n == 8 {
 						t.Logf("%s: end %d event %d hit %.1f outside [%.1f, %.1f] %s", name, e, k, truth.hit, w.Lo, w.Hi, w.Why)
 					}
 				}
