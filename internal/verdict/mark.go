@@ -163,6 +163,10 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 	case c.kind == Leaking:
 		*pressure, m.g, m.sd = f.vote, f.g, f.sd
 		m.slowSignal = c.slow.Step(f.z) >= 1
+		if f.areaZ < areaLeast { // a clipped or a blocked transducer bends everything but leaks nothing (NaN is not less)
+			pressure.most(0, "the closed strokes show no leak of this path")
+			m.slowSignal = false
+		}
 		if c.grade == None && f.g < shadow*b.standingLeak(c) {
 			pressure.most(0, "less than a twentieth of the leak that stands beside it")
 			m.slowSignal = false
@@ -257,6 +261,10 @@ func (b *bench) lateAlike(g int, dev []*duty.Deviation) bool {
 	}
 	return true
 }
+
+// areaLeast is the least rise of a path's fitted area, in spreads, without which no pattern makes a leak of it: the areas
+// decide and name the path (reference/leaks.md section 4).
+const areaLeast = 1.0
 
 // noMark is a block that says nothing.
 func noMark() mark {
