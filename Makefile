@@ -45,8 +45,15 @@ fuzz:
 	  done; done
 
 # The programs as their users run them: real broker, real clients, other programs opening what we wrote.
-system: build
-	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/...
+system: build out/strangers/.made
+	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_STRANGERS="$(CURDIR)/out/strangers" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/...
+
+# Programs of others that open what ours write, from the npm registry.
+STRANGERS := @duckdb/node-api@1.5.6-r.1 sparkplug-payload@1.0.3
+out/strangers/.made: Makefile
+	mkdir -p out/strangers
+	npm install --prefix out/strangers --no-save --no-package-lock --no-audit --no-fund --loglevel=error $(STRANGERS)
+	touch $@
 
 # The whole field on the model, ten minutes, with tables: windows against the truth, healthy walks, every fault.
 field:
@@ -82,7 +89,7 @@ bench-setup:
 	apt-get install -y -q --no-install-recommends python3-scipy
 
 # Tools that the tests need and a plain Debian with Go, make and git has not.
-NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox
+NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox node:nodejs npm:npm
 setup:
 	@missing=""; for n in $(NEED); do \
 	  PATH="$$PATH:/usr/sbin" command -v $${n%%:*} >/dev/null 2>&1 || missing="$$missing $${n##*:}"; done; \

@@ -11,6 +11,7 @@ import (
 	"log/slog"
 	"os"
 	"path/filepath"
+	"slices"
 	"sync"
 	"time"
 
@@ -182,10 +183,11 @@ func (r *room) close() error {
 // pull fetches the clip of the first alarm, as an analyst would.
 func pull(ctx context.Context, st *station.Station, dir string, say *teller) error {
 	clips := st.Now().Clips
-	if len(clips) == 0 {
+	i := slices.IndexFunc(clips, func(c wire.Clip) bool { return len(c.Alarms) > 0 }) // others are references
+	if i < 0 {
 		return nil
 	}
-	c := clips[0]
+	c := clips[i]
 	out := filepath.Join(dir, "clip-"+c.ID)
 	if err := os.MkdirAll(out, 0o755); err != nil {
 		return fmt.Errorf("demo: %w", err)
