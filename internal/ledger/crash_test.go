@@ -38,7 +38,7 @@ func commitForEver(path string) {
 }
 
 func TestKilledAtAnyMoment(t *testing.T) {
-	const rounds = 20
+	const rounds = 12
 	exe, err := os.Executable()
 	if err != nil {
 		t.Fatal(err)

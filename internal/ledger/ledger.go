@@ -38,6 +38,8 @@ type Options struct {
 	// would. The steps are begin, journal, act, enqueue, document, baseline, count, flush, and done: the disk has it
 	// and does not say so.
 	Fault func(step string) error
+
+	noSync bool // for tests of what is kept, not of whether it is kept: no waiting for the disk
 }
 
 // Ledger is an open state file. Its methods may be called from any goroutine.
@@ -91,6 +93,7 @@ func Open(path string, opt Options) (*Ledger, error) {
 	if err != nil {
 		return nil, fmt.Errorf("ledger: %w", err)
 	}
+	db.NoSync = opt.noSync
 	l := &Ledger{opt: opt, path: path, db: db}
 	l.stat = Stats{Waiting: map[Class]int{}, Dropped: map[Class]uint64{}, Damage: damage}
 	if err := l.update(l.prepare); err != nil {

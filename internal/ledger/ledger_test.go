@@ -158,7 +158,7 @@ func TestOutboxAgainstAPlainSlice(t *testing.T) {
 	rapid.Check(t, func(rt *rapid.T) {
 		path := filepath.Join(t.TempDir(), "state.db")
 		const bound = 8
-		opt := Options{OutboxMax: bound}
+		opt := Options{OutboxMax: bound, noSync: true}
 		l := open(t, path, opt)
 		type entry struct {
 			id uint64
