@@ -102,6 +102,9 @@ func (s *summary) print(w io.Writer, l *Line, took time.Duration, signal float64
 	for _, r := range s.remarks {
 		fmt.Fprintln(w, r)
 	}
+	for _, r := range l.found() {
+		fmt.Fprintln(w, r)
+	}
 	for _, end := range sortedKeys(s.states) {
 		fmt.Fprintf(w, "%s windows:", end)
 		for _, st := range sortedKeys(s.states[end]) {

@@ -1,10 +1,28 @@
 package station
 
 import (
+	"fmt"
+	"math"
+
 	"lapwing/internal/turn"
 	"lapwing/internal/window"
 	"lapwing/internal/wire"
 )
+
+// found lists, for a summary, what the line has found out about its channels by itself and acts on.
+func (l *Line) found() (out []string) {
+	for i := range l.gauges.ch {
+		if c := &l.gauges.ch[i]; !c.stated && c.say() != "" {
+			out = append(out, c.id+": "+c.say())
+		}
+	}
+	for _, z := range l.levels.off() {
+		if math.Abs(z.Pa) >= leastRemark {
+			out = append(out, fmt.Sprintf("%s: %+.3f bar of zero drift since the baseline taken off", z.Channel, z.Pa/1e5))
+		}
+	}
+	return out
+}
 
 // remarkRipple says of the phase reference what is known of the shaft's ripple where that is computed, and why it is not.
 func (l *Line) remarkRipple(out []wire.Channel) {

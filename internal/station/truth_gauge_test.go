@@ -149,6 +149,9 @@ func TestPassageIsFoundFrozenAndWatched(t *testing.T) {
 	if c := channelNamed(t, learnt.Channels(), ce); c.State != "good" || c.Reason != "" {
 		t.Errorf("%+v", c)
 	}
+	if f := learnt.found(); len(f) != 1 || !strings.HasPrefix(f[0], he+": gauge passage") {
+		t.Errorf("for the summary: %q", f)
+	}
 	if m := learnt.Memory(); len(m.Gauges) != 1 || m.Gauges[0] != p {
 		t.Errorf("memory %+v", m.Gauges)
 	}
