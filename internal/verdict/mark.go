@@ -205,6 +205,9 @@ func (j *Judge) mark(b *bench, c *trial, s *sight, press *[hPressures]fitted, v 
 	case c.kind == Leaking:
 		if !deaf && !explained {
 			*vibration = v.leak[c.h]
+			if f.judged && f.areaZ < areaLeast { // noise may come from elsewhere: a plate that flutters, a packing, a bearing
+				vibration.most(noiseAlone, "the closed strokes show no leak of this path")
+			}
 		}
 		if c.h == hRings {
 			if s.noRings {
@@ -265,6 +268,9 @@ func (b *bench) lateAlike(g int, dev []*duty.Deviation) bool {
 // areaLeast is the least rise of a path's fitted area, in spreads, without which no pattern makes a leak of it: the areas
 // decide and name the path (reference/leaks.md section 4).
 const areaLeast = 1.0
+
+// noiseAlone is all that noise may say of a path on which pressure, that can see it, sees no leak: less than an advisory.
+const noiseAlone = 2.0
 
 // noMark is a block that says nothing.
 func noMark() mark {

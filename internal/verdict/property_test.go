@@ -189,6 +189,9 @@ func TestNoLeakWithoutAnArea(t *testing.T) {
 						return 4 * patternOf(leakTable[dischargePath], 2.5)[k] / (sd[0]/3 + sd[1])
 					}
 				}
+				if area == 0 && f.Subject == "t1.he.discharge" && f.Name == "leak_noise_db" {
+					return 12 // nor does noise
+				}
 				if f.Subject == "t1.he.discharge" && f.Name == "leak_area_mm2" || f.Subject == "t1.he.discharge" && f.Name == "leak_percent" {
 					return area
 				}
