@@ -190,6 +190,9 @@ func printLearning(w io.Writer, l *wire.Learning) {
 			fmt.Fprintln(w, "  doubt: "+d)
 		}
 	}
+	for _, d := range l.Drifting {
+		fmt.Fprintf(w, "%s %s has moved %s slowly and stayed there\n", d.Subject, d.Measure, d.Way)
+	}
 	if l.InForce != nil {
 		fmt.Fprintf(w, "in force: baseline %d of %s, %s\n", l.InForce.ID, l.InForce.Created.UTC().Format("2006-01-02 15:04:05Z"), orDash(l.InForce.Kind, l.InForce.Subject))
 		for _, d := range l.InForce.Doubts {

@@ -42,6 +42,9 @@ func (c *Cusum) Share() float64 {
 	return c.Up / CusumLimit
 }
 
+// Share is the state of a carried test as a share of its limit, signed.
+func (t SlowTest) Share() float64 { return (&Cusum{Up: t.Up, Down: t.Down}).Share() }
+
 // RunLength is the mean number of values between false signals of a one-sided test with reference k and limit h, by
 // Siegmund's approximation (D. Siegmund, Sequential Analysis, 1985): b = h + 1.166,
 //

@@ -268,8 +268,27 @@ func (s *Station) showLearning(at time.Time) {
 	for _, c := range l.Coverage() {
 		w.Coverage = append(w.Coverage, covered(s.sk.Throws[c.Throw].ID, &c))
 	}
+	w.Drifting = l.drifting()
 	w.Said = saidOf(w)
 	d.shown.Store(w)
+}
+
+// drifting lists the measures whose slow test signals.
+func (l *Line) drifting() []wire.Drifting {
+	out := []wire.Drifting{}
+	if l.blocks == nil {
+		return out
+	}
+	for _, t := range l.blocks.SlowTests() {
+		d := wire.Drifting{Subject: t.Subject, Measure: t.Name, Way: "up", Limits: math.Round(math.Abs(t.Share())*100) / 100}
+		if t.Share() < 0 {
+			d.Way = "down"
+		}
+		if d.Limits >= 1 {
+			out = append(out, d)
+		}
+	}
+	return out
 }
 
 func saidOf(w *wire.Learning) string {

@@ -204,6 +204,29 @@ func TestLearningRunFromOrderToJudgement(t *testing.T) {
 	p.turns(t, 20)
 	check("accepted", true)
 
+	// What moves slowly and stays is told, also after a restart, and not after its renewal.
+	var tests []duty.SlowTest
+	for _, f := range [][2]string{{"t1.he", "n_comp_late"}, {"t1.ce", "n_comp_late"}} {
+		tests = append(tests, duty.SlowTest{Subject: f[0], Name: f[1], Down: duty.CusumLimit + 1})
+	}
+	l.blocks.Resume(tests, nil)
+	if d := l.drifting(); len(d) != 2 || d[0].Measure != "n_comp_late" || d[0].Way != "down" || d[0].Limits != 1.13 {
+		t.Errorf("drifting: %+v", d)
+	}
+	if m := l.Memory(); len(m.Slow) < 2 {
+		t.Errorf("the memory holds %+v", m.Slow)
+	}
+	if err := l.Renew("t1.he.s1", "A", "", 60); err != nil {
+		t.Fatal(err)
+	}
+	if d := l.drifting(); len(d) != 1 || d[0].Subject != "t1.ce" {
+		t.Errorf("drifting while the other end is learnt anew: %+v", d)
+	}
+	if _, err := l.DropLearning(); err != nil {
+		t.Fatal(err)
+	}
+	again = l.base
+
 	// A run is ended early.
 	if err := l.StartLearning(LearnPlan{Steady: 500, By: "A", Propose: true}); err != nil {
 		t.Fatal(err)

@@ -4,20 +4,30 @@ import "time"
 
 // Learning says what is being learnt, what waits for a person's word, and what is in force: GET /api/v1/learning.
 type Learning struct {
-	Version  int       `json:"v"`
-	Skid     string    `json:"skid"`
-	State    string    `json:"state"`             // none, running, proposed
-	Kind     string    `json:"kind,omitempty"`    // learnt, added, renewed
-	Subject  string    `json:"subject,omitempty"` // of a renewal
-	By       string    `json:"by,omitempty"`
-	Note     string    `json:"note,omitempty"`
-	Turns    int       `json:"steady_turns"`        // of this run so far
-	Want     int       `json:"steady_turns_wanted"` // at which it ends
-	Coverage []Covered `json:"coverage"`
-	Withheld int       `json:"measures_withheld"` // not judged until the run is accepted or thrown away
-	Proposed *Baseline `json:"proposed,omitempty"`
-	InForce  *Baseline `json:"in_force,omitempty"`
-	Said     string    `json:"said"` // one sentence for people: where it stands and what to do next
+	Version  int        `json:"v"`
+	Skid     string     `json:"skid"`
+	State    string     `json:"state"`             // none, running, proposed
+	Kind     string     `json:"kind,omitempty"`    // learnt, added, renewed
+	Subject  string     `json:"subject,omitempty"` // of a renewal
+	By       string     `json:"by,omitempty"`
+	Note     string     `json:"note,omitempty"`
+	Turns    int        `json:"steady_turns"`        // of this run so far
+	Want     int        `json:"steady_turns_wanted"` // at which it ends
+	Coverage []Covered  `json:"coverage"`
+	Withheld int        `json:"measures_withheld"` // not judged until the run is accepted or thrown away
+	Proposed *Baseline  `json:"proposed,omitempty"`
+	InForce  *Baseline  `json:"in_force,omitempty"`
+	Drifting []Drifting `json:"drifting"` // measures whose slow test says that they have left the baseline for good
+	Said     string     `json:"said"`     // one sentence for people: where it stands and what to do next
+}
+
+// Drifting is a measure that has moved slowly and lastingly since its baseline was learnt. It is no finding: those need
+// two kinds of evidence.
+type Drifting struct {
+	Subject string  `json:"subject"`
+	Measure string  `json:"measure"`
+	Way     string  `json:"way"`   // up, down
+	Limits  float64 `json:"limit"` // of the slow test, by how many times its limit is reached, at most 2
 }
 
 // Covered is how far one throw's load step has been learnt.
