@@ -172,7 +172,7 @@ func TestJournalCommand(t *testing.T) {
 			t.Errorf("%v: taken", wrong)
 		}
 	}
-	if _, err := handTool(t, "journal", "--state", t.TempDir()); err == nil || !strings.Contains(err.Error(), "no journal") {
+	if _, err := handTool(t, "journal", "--state", t.TempDir()); err == nil || !strings.Contains(err.Error(), "no state folder") {
 		t.Errorf("%v", err)
 	}
 }

@@ -2,8 +2,6 @@ package station
 
 import (
 	"fmt"
-	"os"
-	"path/filepath"
 	"strconv"
 	"strings"
 
@@ -25,7 +23,7 @@ func (s *Station) Journal(f wire.JournalFilter) (wire.JournalPage, error) {
 
 // JournalIn gives a page of the journal of a daemon that is down.
 func JournalIn(state string, f wire.JournalFilter) (wire.JournalPage, error) {
-	l, err := openJournal(state)
+	l, err := stateFile(state)
 	if err != nil {
 		return wire.JournalPage{}, err
 	}
@@ -35,7 +33,7 @@ func JournalIn(state string, f wire.JournalFilter) (wire.JournalPage, error) {
 
 // AlarmsIn gives the alarm points of a daemon that is down, as they were when it stopped.
 func AlarmsIn(state string) (wire.Alarms, error) {
-	l, err := openJournal(state)
+	l, err := stateFile(state)
 	if err != nil {
 		return wire.Alarms{}, err
 	}
@@ -49,19 +47,6 @@ func AlarmsIn(state string) (wire.Alarms, error) {
 		out.Points = append(out.Points, wire.FromState(&snap.Points[i]))
 	}
 	return out, nil
-}
-
-// openJournal opens the state file of a daemon that is down.
-func openJournal(state string) (*ledger.Ledger, error) {
-	path := filepath.Join(state, "state.db")
-	if _, err := os.Stat(path); err != nil {
-		return nil, fmt.Errorf("station: no journal in %s: %w", state, err)
-	}
-	l, err := ledger.Open(path, ledger.Options{})
-	if err != nil {
-		return nil, fmt.Errorf("%w (is the daemon running? then leave --state out)", err)
-	}
-	return l, nil
 }
 
 func readJournal(l *ledger.Ledger, f wire.JournalFilter) (wire.JournalPage, error) {
