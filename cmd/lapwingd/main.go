@@ -68,6 +68,7 @@ Sources:
 	f.StringVar(&o.Broker, "broker", "", "MQTT broker instead of the skid file's and without its credentials, e.g. tcp://127.0.0.1:1883")
 	f.StringVar(&o.Listen, "listen", "", "address of the local page instead of the skid file's")
 	f.Uint64Var(&o.Seed, "seed", 1, "seed of a modelled machine")
+	f.BoolVar(&o.Reserve, "reserve", false, "take the tape's whole size on the disk at the start, so that nobody else can fill it")
 	f.BoolVar(&verbose, "verbose", false, "log more")
 	_ = cmd.MarkFlagRequired("skid")
 	_ = cmd.MarkFlagRequired("source")

@@ -33,6 +33,7 @@ type Options struct {
 	JournalMax int              // transitions kept, and as many acts; default 1 000 000, then the oldest are let go and counted
 	Now        func() time.Time // default time.Now
 	LockWait   time.Duration    // for another process that holds the file; default 2 s
+	Room       int64            // bytes to grow by that are taken on the disk with every opening: others may fill it later
 
 	// Fault is for tests: it is asked before every step of a commit, and an error makes the step fail as a bad disk
 	// would. The steps are begin, journal, act, enqueue, document, baseline, count, flush, and done: the disk has it
@@ -88,7 +89,7 @@ func Open(path string, opt Options) (*Ledger, error) {
 		opt.Now = time.Now
 	}
 	db, damage, err := boltfile.Open(path, boltfile.Options{
-		Kind: "ledger", Version: layoutVersion, Timeout: opt.LockWait, Walk: touchAll,
+		Kind: "ledger", Version: layoutVersion, Timeout: opt.LockWait, Walk: touchAll, Room: opt.Room,
 	})
 	if err != nil {
 		return nil, fmt.Errorf("ledger: %w", err)

@@ -378,7 +378,21 @@ func (d *doubter) edges() {
 				"the page listens on %s", d.sk.Panel.Listen)
 		}
 	}
-	if h := d.sk.tapeHours(); h > 0 && h < 1 {
-		d.add("tape.max_gb", "An alarm that comes up slowly finds its beginning already overwritten. The check prints how long the tape lasts.", "the tape holds %.2g hours", h)
+	whole, back := d.sk.tapeHours()
+	if whole > 0 && whole < 1 {
+		d.add("tape.max_gb", "An alarm that comes up slowly finds its beginning already overwritten. The check prints how long the tape lasts.", "the tape holds %.2g hours", whole)
+	}
+	t := &d.sk.Tape
+	if t.Thin.OneIn == 0 {
+		return
+	}
+	const why = "Thinning makes room to look back further, and here it makes none. Compare the hours that the check prints."
+	switch {
+	case back > 0 && back == whole:
+		d.add("tape.thin.whole_h", why, "the tape is full after about %.3g h, before thinning begins", back)
+	case t.MaxAge > 0 && t.MaxAge <= t.Thin.Whole:
+		d.add("tape.thin.whole_h", why, "samples go after %.4g h, before thinning begins", t.MaxAge.Hours())
+	case t.Thin.Hourly > 0 && t.MaxAge > 0 && t.MaxAge <= t.Thin.Hourly:
+		d.add("tape.thin.hourly_after_h", why, "samples go after %.4g h, before they are thinned to a minute an hour", t.MaxAge.Hours())
 	}
 }

@@ -9,7 +9,6 @@ import (
 	"slices"
 	"strconv"
 	"strings"
-	"time"
 )
 
 // The defaults of what a file may leave out. The check prints those in use.
@@ -199,12 +198,32 @@ func (sk *Skid) CheckLimits(names func(subject string) []string) error {
 }
 
 func (r *reader) tape(o *object, t *Tape) {
-	s := o.section("tape", "max_gb", "max_age_h", "pre_s", "post_s", "clips_gb")
+	s := o.section("tape", "max_gb", "max_age_h", "pre_s", "post_s", "clips_gb", "thin")
 	t.MaxBytes = whole64(s.numOr("max_gb", bounds{0.01, 1e5}, defaultTapeGB) * 1e9)
 	t.MaxAge = seconds(3600 * s.numOr("max_age_h", bounds{0.01, 24 * 366}, defaultTapeHours))
 	t.Pre = seconds(s.numOr("pre_s", bounds{0, 3600}, defaultPre))
 	t.Post = seconds(s.numOr("post_s", bounds{0, 3600}, defaultPost))
 	t.ClipBytes = whole64(s.numOr("clips_gb", bounds{0.01, 1e5}, defaultClipsGB) * 1e9)
+	if s.has("thin") {
+		r.thin(s, t)
+	}
+}
+
+// thin reads how older samples are thinned out. Times are hours of age, in ascending order.
+func (r *reader) thin(o *object, t *Tape) {
+	s := o.sub("thin", false, "whole_h", "one_in", "hourly_after_h")
+	if s == nil {
+		return
+	}
+	whole := seconds(3600 * s.num("whole_h", bounds{0.01, 24 * 366}, true))
+	oneIn, _ := s.whole("one_in", 2, 3600, true)
+	t.Thin = Thin{Whole: whole, OneIn: oneIn, Hourly: seconds(3600 * s.num("hourly_after_h", bounds{0.01, 24 * 366}, false))}
+	if whole > 0 && whole < 2*t.Pre {
+		s.wrong("whole_h", "write at least twice pre_s", "an alarm protects the %s before it, and after %s they are thinned out", t.Pre, whole)
+	}
+	if h := t.Thin.Hourly; h > 0 && h <= whole {
+		s.wrong("hourly_after_h", "write more hours than whole_h, or leave it out", "%s h is not after the %s h that are kept whole", short(h.Hours()), short(whole.Hours()))
+	}
 }
 
 func whole64(v float64) int64 {
@@ -289,13 +308,25 @@ func (r *reader) panel(o *object, p *Panel) {
 	p.Listen = v
 }
 
-// tapeHours is how long the tape lasts by its size at the stated rate: 3 bytes a sample uncompressed, which is what a
-// 24-bit converter fills before packing. 0: the rate is not known.
-func (sk *Skid) tapeHours() float64 {
+// tapeHours is how far back the tape reaches by its size at the stated rate, and until when it is whole: 3 bytes a sample
+// uncompressed, which is what a 24-bit converter fills before packing. 0: the rate is not known.
+func (sk *Skid) tapeHours() (whole, back float64) {
 	if sk.Rate <= 0 || len(sk.Channels) == 0 {
-		return 0
+		return 0, 0
 	}
 	const bytesPerSample = 3
 	perSecond := sk.Rate * float64(len(sk.Channels)) * bytesPerSample
-	return time.Duration(float64(sk.Tape.MaxBytes) / perSecond * 1e9).Hours()
+	full := float64(sk.Tape.MaxBytes) / perSecond / 3600
+	h := sk.Tape.Thin
+	if h.OneIn == 0 || full <= h.Whole.Hours() {
+		return full, full
+	}
+	const hourly = 1. / 60
+	share := 1 / float64(h.OneIn)
+	if h.Hourly == 0 {
+		return h.Whole.Hours(), h.Whole.Hours() + (full-h.Whole.Hours())/share
+	}
+	share += hourly * (1 - share) // the minutes that stay for good are kept from the beginning
+	thin := math.Min((full-h.Whole.Hours())/share, h.Hourly.Hours()-h.Whole.Hours())
+	return h.Whole.Hours(), h.Whole.Hours() + thin + (full-h.Whole.Hours()-thin*share)/hourly
 }

@@ -70,10 +70,19 @@ func (p *page) edges(sk *Skid) {
 		rows = append(rows, row("limits", "none; findings come from the baseline"))
 	}
 	tape := f("at most %.4g GB and %.4g h", float64(sk.Tape.MaxBytes)/1e9, sk.Tape.MaxAge.Hours())
-	if h := sk.tapeHours(); h > 0 {
-		tape += f("; full after about %.3g h (3 bytes a sample, before packing)", h)
+	_, back := sk.tapeHours()
+	if back > 0 {
+		tape += f("; full after about %.3g h (3 bytes a sample, before packing)", back)
 	}
-	rows = append(rows, row("tape", tape),
+	rows = append(rows, row("tape", tape))
+	if h := sk.Tape.Thin; h.OneIn > 0 {
+		thin := f("whole for %.4g h, then one second in %d", h.Whole.Hours(), h.OneIn)
+		if h.Hourly > 0 {
+			thin += f(", after %.4g h the first minute of each hour", h.Hourly.Hours())
+		}
+		rows = append(rows, row("", thin))
+	}
+	rows = append(rows,
 		row("clips", f("%s before to %s after an alarm, %.4g GB in all", sk.Tape.Pre, sk.Tape.Post, float64(sk.Tape.ClipBytes)/1e9)))
 	if u := sk.Uplink; u.Broker != "" {
 		rows = append(rows, row("uplink", f("%s as %s, topics %s/%s/…", u.Broker, u.ClientID, u.Root, sk.ID)),

@@ -184,6 +184,14 @@ type Tape struct {
 	MaxAge    time.Duration
 	Pre, Post time.Duration // what an alarm protects before and after it
 	ClipBytes int64         // quota of protected clips
+	Thin      Thin
+}
+
+// Thin is what the buffer keeps of older samples. The zero value: all of them, until they roll away.
+type Thin struct {
+	Whole  time.Duration // everything newer is kept
+	OneIn  int           // of the seconds that are older; 0: no thinning
+	Hourly time.Duration // what is older than that keeps the first minute of each hour; 0: never
 }
 
 // Uplink is the MQTT side. Secrets live in files, never here.

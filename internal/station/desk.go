@@ -372,7 +372,9 @@ func (s *Station) health(at time.Time) wire.Health {
 		h.Line = "measuring only: no baseline yet (declare the machine healthy with --learn)"
 	}
 	h.Channels = s.line.Channels()
-	h.Tape = wire.TapeHealth{Bytes: st.LiveBytes, Limit: s.sk.Tape.MaxBytes, Oldest: st.OldestUTC, Newest: st.NewestUTC, Dropped: int64(st.QueueDroppedBlocks), Clips: st.Clips}
+	h.Tape = wire.TapeHealth{Bytes: st.LiveBytes, Limit: s.sk.Tape.MaxBytes, Oldest: st.OldestUTC, Newest: st.NewestUTC, Dropped: int64(st.QueueDroppedBlocks), Clips: st.Clips,
+		Problems: tapeTroubles(&st, s.info.Rate)}
+	h.Trouble = append(h.Trouble, h.Tape.Problems...)
 	if s.pub != nil {
 		h.Uplink = s.pub.Status()
 	}

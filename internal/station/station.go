@@ -37,6 +37,7 @@ type Options struct {
 	Learn      int  // steady turns from now on that a person has declared healthy; 0: use the kept baseline
 	Broker     string
 	Listen     string
+	Reserve    bool // take the tape's whole size on the disk at the start
 	Seed       uint64
 	Start      time.Time             // UTC of a modelled machine's first sample; zero: now, or after the newest entry of the journal
 	OnTurn     func(*wire.Turn)      // hears of every turn, in the compute goroutine; nil: nobody
@@ -110,7 +111,7 @@ func Open(o Options) (_ *Station, err error) {
 			err = errors.Join(err, s.release())
 		}
 	}()
-	if s.ledger, err = ledger.Open(filepath.Join(o.State, "state.db"), ledger.Options{}); err != nil {
+	if s.ledger, err = ledger.Open(filepath.Join(o.State, "state.db"), ledger.Options{Room: ledgerRoom}); err != nil {
 		return nil, err
 	}
 	s.lastAct = s.ledger.Stats().LastAct
@@ -122,11 +123,10 @@ func Open(o Options) (_ *Station, err error) {
 		return nil, err
 	}
 	s.info = s.src.Info()
-	if s.tape, err = tape.Open(filepath.Join(o.State, "tape.db"), tape.Options{Info: s.info, Skid: s.sk.Raw,
-		MaxBytes: s.sk.Tape.MaxBytes, MaxAge: s.sk.Tape.MaxAge, ClipBytes: s.sk.Tape.ClipBytes}); err != nil {
+	if err := s.openLine(); err != nil {
 		return nil, err
 	}
-	if err := s.openLine(); err != nil {
+	if err := s.openTape(); err != nil {
 		return nil, err
 	}
 	if !s.info.Start.IsZero() && s.info.Start.Before(newest) {

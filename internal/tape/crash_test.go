@@ -3,6 +3,7 @@ package tape
 import (
 	"bufio"
 	"context"
+	"flag"
 	"fmt"
 	"math/rand/v2"
 	"os"
@@ -14,6 +15,8 @@ import (
 	"lapwing/internal/acq"
 )
 
+var kills = flag.Int("kills", 8, "SIGKILLs at random moments")
+
 // runChild is the child of the crash test: it appends segments, asks for a clip now and then, and says after each
 // flush how far it is, until it is killed.
 func runChild() bool {
@@ -21,7 +24,9 @@ func runChild() bool {
 	if dir == "" {
 		return false
 	}
-	tp, err := Open(filepath.Join(dir, "tape.db"), small())
+	opt := small()
+	opt.noSync = false
+	tp, err := Open(filepath.Join(dir, "tape.db"), opt)
 	if err != nil {
 		fmt.Println("error", err)
 		os.Exit(1)
@@ -43,7 +48,7 @@ func runChild() bool {
 }
 
 func TestKilledAtAnyMoment(t *testing.T) {
-	const rounds = 8
+	rounds := *kills
 	exe, err := os.Executable()
 	if err != nil {
 		t.Fatal(err)

@@ -30,7 +30,8 @@ type Options struct {
 
 	LockWait time.Duration // for another process that holds a file; default 2 s
 
-	disk func(kind string) error // tests: called before each commit, to make the disk slow or full
+	disk   func(kind string) error // tests: called before each commit, to make the disk slow or full
+	noSync bool                    // tests of what is kept, not of whether it is kept: no waiting for the disk
 }
 
 func (o Options) withDefaults(path string) (Options, error) {

@@ -3,6 +3,7 @@ package tape
 import (
 	"bytes"
 	"errors"
+	"flag"
 	"math/rand/v2"
 	"os"
 	"path/filepath"
@@ -10,6 +11,11 @@ import (
 	"testing"
 
 	"lapwing/internal/acq"
+)
+
+var (
+	powerCuts = flag.Int("cuts", 60, "simulated power cuts")
+	powerSeed = flag.Uint64("cut-seed", 11, "where they fall")
 )
 
 // sector is what a disk writes whole or not at all.
@@ -101,7 +107,7 @@ func TestPowerGoesDuringACommit(t *testing.T) {
 	}
 
 	opt.disk = nil
-	const seed, rounds = 11, 60
+	seed, rounds := *powerSeed, *powerCuts
 	rnd := rand.New(rand.NewPCG(seed, 2))
 	cuts := map[string]int{}
 	for round := range rounds {

@@ -34,10 +34,11 @@ type Stats struct {
 	QueueDroppedSamples int64  // per channel
 	LostSegments        uint64 // the disk refused them
 	LostSamples         int64
-	Refused             uint64 // appends of a wrong shape, or after Close
+	Refused             uint64 // appends of a wrong shape, after Close, or to no tape
 
 	Damage    []boltfile.Damage // files that were found damaged since Open, and where they are now
 	LastError error
+	Down      error // nothing is kept, for this reason; see Down
 }
 
 // Stats gives a picture of now.
@@ -84,7 +85,7 @@ func (t *Tape) Stats() Stats {
 	t.mu.Lock()
 	h := &t.health
 	s.LostSegments, s.LostSamples, s.Refused, s.LastError = h.lostSegments, h.lostSamples, h.refused, h.lastErr
-	s.ClipsReleased, s.ClipsShort = h.released, h.short
+	s.ClipsReleased, s.ClipsShort, s.Down = h.released, h.short, h.down
 	s.Damage = append([]boltfile.Damage(nil), h.damage...)
 	t.mu.Unlock()
 	return s
@@ -107,6 +108,9 @@ func (t *Tape) Check() error {
 	for _, s := range []*store{t.ring, t.clips} {
 		// bbolt's check reads the free list, so no commit may run meanwhile: it is done in a write transaction, rolled back.
 		err := boltfile.Guard(func() error {
+			if s.db == nil {
+				return os.ErrClosed
+			}
 			tx, err := s.db.Begin(true)
 			if err != nil {
 				return err

@@ -127,6 +127,9 @@ func (s *store) update(f func(*bolt.Tx) error) error {
 				return err
 			}
 		}
+		if s.db == nil {
+			return os.ErrClosed
+		}
 		return s.db.Update(f)
 	})
 	took := time.Since(t0)

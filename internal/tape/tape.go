@@ -48,6 +48,7 @@ type health struct {
 	released     uint64
 	short        uint64
 	lastErr      error
+	down         error // why there is no tape
 }
 
 // Open opens or makes the ring at path and the clips beside it, and starts the writer. A file that is damaged has been
@@ -63,7 +64,7 @@ func Open(path string, opt Options) (*Tape, error) {
 		queue: newQueue(max(opt.samples(opt.Queue), 1)), clip: make(map[string]*Clip),
 	}
 	ring, damage, err := openStore(path, boltfile.Options{
-		Kind: "tape", Version: layoutVersion, MaxBytes: opt.MaxBytes, Timeout: opt.LockWait, Disposable: true, Reserve: opt.Reserve,
+		Kind: "tape", Version: layoutVersion, MaxBytes: opt.MaxBytes, Timeout: opt.LockWait, Disposable: true, Reserve: opt.Reserve, NoSync: opt.noSync,
 	}, opt.disk)
 	if err != nil {
 		return nil, fmt.Errorf("tape: ring: %w", err)
@@ -71,7 +72,7 @@ func Open(path string, opt Options) (*Tape, error) {
 	t.ring = ring
 	t.noteDamage(damage)
 	t.clips, damage, err = openStore(opt.ClipsPath, boltfile.Options{
-		Kind: "clips", Version: layoutVersion, MaxBytes: opt.ClipBytes, Timeout: opt.LockWait, Walk: t.readClips,
+		Kind: "clips", Version: layoutVersion, MaxBytes: opt.ClipBytes, Timeout: opt.LockWait, Walk: t.readClips, NoSync: opt.noSync,
 	}, opt.disk)
 	if err != nil {
 		return nil, errors.Join(fmt.Errorf("tape: clips: %w", err), ring.close())

@@ -136,7 +136,7 @@ func TestRollKeepsTheFileWithinItsBound(t *testing.T) {
 // Segments as a skid's: the figure that counts for the wear of a disk.
 func TestBytesWritten(t *testing.T) {
 	opt := small()
-	opt.Info.Channels, opt.Info.Rate, opt.Segment = 17, 51200, time.Second
+	opt.Info.Channels, opt.Info.Rate, opt.Segment, opt.noSync = 17, 51200, time.Second, false
 	opt.MaxBytes, opt.ClipBytes = 22<<20, 22<<20
 	tp := open(t, t.TempDir(), opt)
 	w := idleWriter(t, tp)

@@ -48,6 +48,8 @@ type Options struct {
 	Timeout    time.Duration        // for the file lock; 0: 2 s
 	Disposable bool                 // unknown versions are moved aside too, and only the newest moved file is kept
 	Reserve    bool                 // take MaxBytes on the disk at once, where it is free and the file system can
+	Room       int64                // so many bytes beyond what is used are taken on the disk with every opening, where it has them
+	NoSync     bool                 // for tests: a commit does not wait for the disk
 	Walk       func(*bolt.Tx) error // first reading; an error or a panic means that the file is damaged; may be nil
 }
 
@@ -75,6 +77,9 @@ func Open(path string, o Options) (*bolt.DB, *Damage, error) {
 		return nil, nil, fmt.Errorf("boltfile: reserve %s: %w", path, err)
 	}
 	db, err := openChecked(path, o)
+	if err == nil && o.Room > 0 {
+		db, err = withRoom(db, path, o)
+	}
 	if err == nil {
 		return db, nil, nil
 	}
@@ -91,7 +96,10 @@ func Open(path string, o Options) (*bolt.DB, *Damage, error) {
 	if err := reserve(path, o); err != nil {
 		return nil, d, fmt.Errorf("boltfile: reserve %s: %w", path, err)
 	}
-	if db, err = openChecked(path, o); err != nil {
+	if db, err = openChecked(path, o); err == nil && o.Room > 0 {
+		db, err = withRoom(db, path, o)
+	}
+	if err != nil {
 		return nil, d, fmt.Errorf("boltfile: open new %s: %w", path, err)
 	}
 	return db, d, nil
@@ -190,6 +198,7 @@ func openChecked(path string, o Options) (*bolt.DB, error) {
 	if err != nil {
 		return nil, err
 	}
+	db.NoSync = o.NoSync
 	if o.MaxBytes > 0 {
 		// bbolt grows a file by AllocSize at a time and counts it against MaxSize.
 		db.AllocSize = min(db.AllocSize, max(int(o.MaxBytes/64)&^4095, 16<<10))

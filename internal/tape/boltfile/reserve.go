@@ -4,6 +4,7 @@ import (
 	"errors"
 	"os"
 
+	bolt "go.etcd.io/bbolt"
 	"golang.org/x/sys/unix"
 )
 
@@ -47,6 +48,32 @@ func reserve(path string, o Options) error {
 		return err
 	}
 	return f.Sync()
+}
+
+// withRoom sees to it that a file can grow by o.Room after the disk has become full. It opens it again where it had to
+// enlarge it, since bbolt cuts a file that others enlarged. A disk that is full already gives none.
+func withRoom(db *bolt.DB, path string, o Options) (*bolt.DB, error) {
+	var used int64
+	err := Guard(func() error {
+		return db.View(func(tx *bolt.Tx) error { used = tx.Size(); return nil })
+	})
+	st, serr := os.Stat(path)
+	if err = errors.Join(err, serr); err != nil {
+		return nil, errors.Join(err, Guard(db.Close))
+	}
+	if st.Size() >= used+o.Room/2 && Allocated(path) >= used+o.Room/2 {
+		return db, nil
+	}
+	if err := Guard(db.Close); err != nil {
+		return nil, err
+	}
+	if f, err := os.OpenFile(path, os.O_RDWR, 0); err == nil {
+		if unix.Fallocate(int(f.Fd()), 0, 0, used+o.Room) == nil {
+			_ = f.Sync() // no promise is made
+		}
+		_ = f.Close()
+	}
+	return openChecked(path, o)
 }
 
 // allocated is how many bytes of the disk a file takes.
