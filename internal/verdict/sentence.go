@@ -207,5 +207,8 @@ func nextWords(c *trial, f *Finding) string {
 	case c.h == hRings && c.kind == Leaking:
 		return "trend it over days; check lubrication, and rings and liner at the next suitable stop"
 	}
+	if slices.ContainsFunc(f.Ambiguous, func(a string) bool { return strings.HasSuffix(a, ".packing") }) {
+		return "look at the packing vent first; " + spoken[c.kind].next
+	}
 	return spoken[c.kind].next
 }
