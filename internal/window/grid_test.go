@@ -16,6 +16,8 @@ import (
 
 var only = flag.String("only", "", "with -sweep: the cases of the rows whose name holds this")
 
+var exact = flag.Bool("exact", false, "with -sweep: steady cases only, with dead centres and passages told as they are")
+
 // tally counts, over a group of cases, what the windows did with the model's impacts while following.
 type tally struct {
 	cases, turns   int
@@ -109,7 +111,7 @@ func (a *tally) add(t *testing.T, c *gridCase, early *tally) {
 		in := c.inputs(sk, tn.Process, k)
 		res := tr.Track(tn.Turn, in)
 		b.count(c.throw, tn, res)
-		if c.steady && b == a && gridTurns == nil {
+		if c.steady && b == a {
 			ledger.turn(t, c, sk, tn, in, res)
 		}
 	})
@@ -166,14 +168,8 @@ func (a *tally) count(throw int, tn windowtest.Turn, res window.Result) {
 
 // each gives the turns of a case, the first three left out.
 func (c *gridCase) each(t *testing.T, use func(windowtest.Turn)) {
-	if gridTurns != nil {
-		gridTurns(t, c, use)
-		return
-	}
 	c.run.Turns(t, 180/c.run.RPM, use)
 }
-
-var gridTurns func(t *testing.T, c *gridCase, use func(windowtest.Turn))
 
 // stranger says whether another event of the throw strikes inside the window.
 func stranger(tn windowtest.Turn, throw, e int, ev window.Event, w window.Window) bool {
@@ -205,6 +201,12 @@ func TestGrid(t *testing.T) {
 	for _, c := range gridCases(t, *sweep) {
 		if *only != "" && !strings.Contains(strings.Join(c.rows, ","), *only) {
 			continue
+		}
+		if *exact {
+			if !c.steady {
+				continue
+			}
+			c.run.Told = windowtest.Told{U: .3}
 		}
 		var one tally
 		one.add(t, &c, &early)
