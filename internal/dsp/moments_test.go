@@ -74,3 +74,26 @@ func BenchmarkMoments(b *testing.B) {
 		})
 	}
 }
+
+// What the table says of eight counts, against counting run by run: run is how long the last count before them went on.
+func TestRunsOfEight(t *testing.T) {
+	for m := range 256 {
+		for _, before := range []int{1, 2, 5, 40} {
+			run, longest := before, before
+			for i := range 8 {
+				if run++; m>>i&1 == 0 {
+					run = 1
+				}
+				longest = max(longest, run)
+			}
+			r := runs[m]
+			end := int(r[2])
+			if m == 255 {
+				end += before
+			}
+			if got := max(before, before+int(r[0]), int(r[1])); got != longest || end != run {
+				t.Fatalf("%08b after a run of %d: longest %d, last %d, want %d and %d", m, before, got, end, longest, run)
+			}
+		}
+	}
+}
