@@ -193,7 +193,7 @@ func happened(tn windowtest.Turn, throw, e int, ev window.Event) (model.Event, b
 }
 
 // TestGrid measures the windows over machines, gases, ratios, speeds and load devices, and prints the table of
-// DEVELOPERS.md. The daily run holds one case to the target for openings; the sweep reports and does not judge.
+// DEVELOPERS.md. The daily run holds one case to the targets for openings; the sweep reports and does not judge.
 func TestGrid(t *testing.T) {
 	var names []string
 	rows := map[string]*tally{}
@@ -240,6 +240,9 @@ func TestGrid(t *testing.T) {
 		return // measured, not judged
 	}
 	all := rows["all of these"]
+	if !(quantile(all.err, .5) <= .4 && quantile(all.err, .95) <= 1.2) {
+		t.Errorf("opening error: median %.2f°, 95 %% %.2f°", quantile(all.err, .5), quantile(all.err, .95))
+	}
 	for _, ev := range []window.Event{window.SuctionOpens, window.DischargeOpens} {
 		if all.seen[ev] == 0 || float64(all.in[ev]) < .999*float64(all.seen[ev]) {
 			t.Errorf("event %d inside: %d of %d", ev, all.in[ev], all.seen[ev])

@@ -115,7 +115,7 @@ func median(x []float64) float64 {
 	return y[len(y)/2]
 }
 
-// Targets of the issue: openings inside ≥ 99 %, closings ≥ 95 %, median opening error ≤ 0.7°.
+// Openings inside ≥ 99.9 %, closings ≥ 98 %, median opening error ≤ 0.4° (issue 4).
 func TestModelSweep(t *testing.T) {
 	names := []string{"full", "pocket", "CE unloaded", "late"}
 	quick := map[[3]int]bool{{0, 0, 0}: true, {1, 1, 3}: true, {2, 1, 2}: true}
@@ -136,13 +136,13 @@ func TestModelSweep(t *testing.T) {
 		}
 	}
 	t.Logf("openings inside %d/%d, closings inside %d/%d, median opening error %.2f°", s.openIn, s.open, s.shutIn, s.shut, median(s.errs))
-	if float64(s.openIn) < .99*float64(s.open) || s.open == 0 {
+	if float64(s.openIn) < .999*float64(s.open) || s.open == 0 {
 		t.Errorf("openings inside their windows: %d of %d", s.openIn, s.open)
 	}
-	if float64(s.shutIn) < .95*float64(s.shut) {
+	if float64(s.shutIn) < .98*float64(s.shut) {
 		t.Errorf("closings inside their windows: %d of %d", s.shutIn, s.shut)
 	}
-	if !(median(s.errs) <= .7) {
+	if !(median(s.errs) <= .4) {
 		t.Errorf("median opening error %.2f°", median(s.errs))
 	}
 }
@@ -166,7 +166,7 @@ func TestModelSwing(t *testing.T) {
 		s.follow(t, fmt.Sprintf("swing %d", i+1), r)
 	}
 	t.Logf("openings inside %d/%d, closings inside %d/%d, median opening error %.2f°", s.openIn, s.open, s.shutIn, s.shut, median(s.errs))
-	if float64(s.openIn) < .99*float64(s.open) || float64(s.shutIn) < .95*float64(s.shut) || s.open == 0 {
+	if float64(s.openIn) < .999*float64(s.open) || float64(s.shutIn) < .98*float64(s.shut) || s.open == 0 {
 		t.Errorf("inside their windows: openings %d of %d, closings %d of %d", s.openIn, s.open, s.shutIn, s.shut)
 	}
 }

@@ -37,7 +37,8 @@ func (r rig) input() []Input {
 
 // The rig's springs close its suction valves up to 16° before the dead centre at 500 rpm (170–195° is usual, methods.md
 // section 4.2): those closings lie outside their windows and are counted.
-// Targets: issue 2 and windows.md section 3 (openings inside ≥ 99 %, closings ≥ 95 %), section 2 (opening error).
+// Targets: openings inside ≥ 99.9 %, opening error median ≤ 0.4° and 95 % ≤ 1.2° (issue 4); closings ≥ 96 %,
+// for the reason above and since hardly any has been heard yet.
 func TestWindowsFollowTheDuty(t *testing.T) {
 	var open, openIn, shut, shutIn int
 	var errs []float64
@@ -88,13 +89,13 @@ func TestWindowsFollowTheDuty(t *testing.T) {
 	sort.Float64s(errs)
 	median, p95 := errs[len(errs)/2], errs[len(errs)*95/100]
 	t.Logf("openings inside %d/%d, closings inside %d/%d, |opening error| median %.2f°, 95 %% %.2f°", openIn, open, shutIn, shut, median, p95)
-	if float64(openIn) < .99*float64(open) {
+	if float64(openIn) < .999*float64(open) {
 		t.Errorf("openings inside their windows: %d of %d", openIn, open)
 	}
-	if float64(shutIn) < .95*float64(shut) {
+	if float64(shutIn) < .96*float64(shut) {
 		t.Errorf("closings inside their windows: %d of %d", shutIn, shut)
 	}
-	if !(median <= .7) {
-		t.Errorf("median opening error %.2f°", median)
+	if !(median <= .4 && p95 <= 1.2) {
+		t.Errorf("opening error: median %.2f°, 95 %% %.2f°", median, p95)
 	}
 }
