@@ -11,16 +11,16 @@ import (
 )
 
 // What the words of a sentence are, by kind: what is wrong, and what people do next on an alert or a finding about a sensor.
-var spoken = map[string]struct{ what, next string }{
-	Leaking:       {"leaking", "plan to inspect this group at the next suitable stop"},
-	ImpactingHard: {"impacting hard (plate or spring broken, or its seat worn)", "plan to inspect this group at the next suitable stop"},
-	OpeningLate:   {"opening late (sticking)", "check oil feed and liquid carry-over; inspect this group for deposits at the next suitable stop"},
-	Fluttering:    {"fluttering", "compare gas and flow with what its springs were chosen for"},
-	DeadCentre:    {"angle reference has moved", "check the shaft mark; until then this throw's pressures accuse no valve"},
-	PressureZero:  {"pressure zero has moved", "check the transmitter and its passage; until then it accuses no valve"},
-	Clearance:     {"clearance is not what it was", "check the pocket's position, then for liquid or deposits; until then this end's pressures accuse no valve"},
-	GasChanged:    {"gas differs from the baseline's", "compare the gas analysis; until then the pressures accuse no valve"},
-	AccelGain:     {"accelerometer sensitivity has changed", "check mounting, cable and sensitivity; until then it accuses no valve"},
+var spoken = map[string]struct{ what, note, next string }{
+	Leaking:       {"leaking", "", "plan to inspect this group at the next suitable stop"},
+	ImpactingHard: {"impacting hard", "plate or spring broken, or a worn seat", "plan to inspect this group at the next suitable stop"},
+	OpeningLate:   {"opening late", "sticking", "check oil feed and liquid carry-over; inspect this group for deposits at the next suitable stop"},
+	Fluttering:    {"fluttering", "", "compare gas and flow with what its springs were chosen for"},
+	DeadCentre:    {"angle reference has moved", "", "check the shaft mark; until then this throw's pressures accuse no valve"},
+	PressureZero:  {"pressure zero has moved", "", "check the transmitter and its passage; until then it accuses no valve"},
+	Clearance:     {"clearance is not what it was", "", "check the pocket's position, then for liquid or deposits; until then this end's pressures accuse no valve"},
+	GasChanged:    {"gas differs from the baseline's", "", "compare the gas analysis; until then the pressures accuse no valve"},
+	AccelGain:     {"accelerometer sensitivity has changed", "", "check mounting, cable and sensitivity; until then it accuses no valve"},
 }
 
 var gradeWords = [...]string{None: "ended", Advisory: "possible", Alert: "confirmed", Danger: "confirmed and severe"}
@@ -43,11 +43,10 @@ func known(l measure.Layout, e Evidence) int {
 // going, and what comes next.
 func sentence(l measure.Layout, b *bench, c *trial, f *Finding) string {
 	var s strings.Builder
-	s.WriteString(f.Subject)
-	if where := b.where(c); where != "" {
-		s.WriteString(" (" + where + ")")
+	s.WriteString(f.Subject + " " + spoken[c.kind].what)
+	if aside := slices.DeleteFunc([]string{b.where(c), spoken[c.kind].note}, func(a string) bool { return a == "" }); len(aside) > 0 {
+		s.WriteString(" (" + strings.Join(aside, "; ") + ")")
 	}
-	s.WriteString(" " + spoken[c.kind].what)
 	if f.Grade == None {
 		return s.String() + ": " + gradeWords[None]
 	}
