@@ -13,7 +13,7 @@ import (
 // reviewed on its own gives the live numbers again.
 type gasBook struct {
 	gas  gas.Gas
-	page map[gasKey]gasPage
+	page map[gasKey]*gasPage
 }
 
 // gasPage is what is known at one duty.
@@ -22,12 +22,14 @@ type gasPage struct {
 	mea   measure.Gas
 }
 
+var noPage gasPage // of a duty that cannot be evaluated; never written
+
 type gasKey struct{ ps, pd, ts int }
 
 const pageLimit = 4096 // duties kept; more than a machine's whole operating field at this rounding
 
 func newGasBook(g skid.Gas) *gasBook {
-	b := &gasBook{page: map[gasKey]gasPage{}}
+	b := &gasBook{page: map[gasKey]*gasPage{}}
 	if g.Mixture != nil {
 		b.gas = g.Mixture
 	} else if g.Fixed != nil {
@@ -49,13 +51,14 @@ func (b *gasBook) measures(ps, ts, pd float64) (measure.Gas, bool) {
 	return p.mea, p.mea.R > 0
 }
 
-func (b *gasBook) read(ps, ts, pd float64) gasPage {
+func (b *gasBook) read(ps, ts, pd float64) *gasPage {
 	if b.gas == nil || !(ps > 0 && pd > 0 && ts > 0) || math.IsInf(ps+pd+ts, 0) {
-		return gasPage{}
+		return &noPage
 	}
 	k := gasKey{int(math.Round(100 * math.Log(ps))), int(math.Round(100 * math.Log(pd))), int(math.Round(ts))}
-	p, known := b.page[k]
-	if !known {
+	p := b.page[k]
+	if p == nil {
+		p = new(gasPage)
 		ps, ts, pd = math.Exp(float64(k.ps)/100), float64(k.ts), math.Exp(float64(k.pd)/100)
 		if props, err := b.gas.Duty(ps, ts, pd); err == nil {
 			p.props = props
