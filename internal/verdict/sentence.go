@@ -59,6 +59,9 @@ func sentence(l measure.Layout, b *bench, c *trial, f *Finding) string {
 		s.WriteString(sep + c.short(e))
 		sep = ", "
 	}
+	if len(f.Evidence) == 0 { // it stands until enough blocks have been without it
+		s.WriteString(": nothing of it in the newest block of turns")
+	}
 	if size := size(c, f); size != "" {
 		s.WriteString("; " + size)
 	}
