@@ -259,6 +259,37 @@ func TestSlowTestSteps(t *testing.T) {
 	}
 }
 
+// Temperatures that lag have no slow test; the block's own deviation stays.
+func TestLateMeasuresHaveNoSlowTest(t *testing.T) {
+	layout := measure.Layout{{Subject: "t1.he", Name: "t_excess_k", Scale: 1}, {Subject: "t1.he.d1", Name: "cover_c", Scale: 1}, {Subject: "t1.he.d1", Name: "cover_above_group_k", Scale: 1}}
+	at := Point{State: Steady, RPM: 750, Ps: 20e5, Pd: 50e5, OwnPs: nan, OwnPd: nan}
+	l := NewLearner(layout, LearnConfig{})
+	v := measure.Vector{V: []float64{1, 1, 1}}
+	for range 60 {
+		v.Turn++
+		l.Add(0, at, &v)
+	}
+	b, err := l.Fit(Header{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	ref, err := b.Reference(layout)
+	if err != nil {
+		t.Fatal(err)
+	}
+	bl := NewBlocks(ref, BlockConfig{})
+	v.V = []float64{99, 99, 99}
+	for range 15 * 8 {
+		v.Turn++
+		if blk, ok := bl.Add(0, at, &v, ref.Deviate(nil, 0, at, &v)); ok && len(blk.Dev) != 3 {
+			t.Fatalf("%+v", blk.Dev)
+		}
+	}
+	if got := bl.SlowTests(); len(got) != 1 || got[0].Name != "cover_above_group_k" {
+		t.Errorf("%+v", got)
+	}
+}
+
 // The slow test goes on over a restart and over a renewal, but not for what the work touched.
 func TestSlowTestsGoOn(t *testing.T) {
 	b := learnt(t, 1, 600, nil, 0, 0)
