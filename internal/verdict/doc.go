@@ -12,4 +12,10 @@
 // two. Pressure speaks through a contrast of whole patterns (reference/methods.md tables 1.3, 3.3 and 3.4): the pattern
 // that explains most takes the evidence and the others must live on what is left, so that one leak does not cry on four
 // groups, and a wrong dead centre or pressure zero is not called a leak.
+//
+// A finding says which part, what is wrong with it, how sure that is, how large (mm², % of throughput, kW, ms, K) and
+// whether it grows, what it cannot be told from, what would settle it and what people usually do next. Explain tells of
+// every hypothesis of the newest block, raised or not: each deviation with its weight before and after caps and rules,
+// and what the next grade would take. No leak is called, by patterns or by noise, where the fit to the closed strokes
+// can see its path and finds nothing there.
 package verdict
