@@ -100,10 +100,11 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 			shift = append(shift, open.Residual)
 			z := open.Z / widen
 			o.hard[h] = vote{llr: llr(z), raw: llr(z)}
-			// Healthy blocks reach 0.23; 0.35 and three spreads is the rule of vibration.md section 4.
+			// Healthy blocks reach 0.23; 0.35 and three spreads is the rule of vibration.md section 4. With late closing on
+			// both ends healthy blocks came to 0.36 and 3.4 spreads (TestSoakHealthy): three spreads do from 0.5 on.
 			if open.Residual < hardLn {
 				o.hard[h].most(0, "the opening is less than 1.42 times as hard as usual")
-			} else if z > 3 {
+			} else if z > 3 && open.Residual >= hardForSure {
 				o.hard[h].least(advisoryClass)
 			}
 			if shut != nil {
@@ -147,6 +148,9 @@ func (o *heard) impacts(p *place, dev []*duty.Deviation, widen float64, noise []
 
 // hardLn is the least rise of an opening's impact, ln, that is called hard.
 const hardLn = 0.35
+
+// hardForSure is the rise that three spreads are enough for.
+const hardForSure = 0.5
 
 // hardShared is the same for the peak of a window that two openings share: with no fault at all it reached 0.5 where the
 // two move through each other (station's TestSoakFaults, head ends late).
