@@ -41,11 +41,10 @@ type Run struct {
 
 // Told is what the line is told of the machine beside the truth.
 type Told struct {
-	U          float64 // degrees, 95 % half-width of angles: the shaft's ripple is then known; 0: it is not
-	LateDeg    float64 // dead centres are told this much too late
-	PassageHz  float64 // factor on the resonance of every gauge passage; 0: as it is
-	PassageQ   float64 // likewise on its damping
-	NoPassages bool    // passages are not told
+	U         float64 // degrees, 95 % half-width of angles: the shaft's ripple is then known; 0: it is not
+	LateDeg   float64 // dead centres are told this much too late
+	PassageHz float64 // factor on the resonance of every gauge passage; 0: as it is
+	PassageQ  float64 // likewise on its damping
 }
 
 // Turn is one valid turn of a run.
@@ -192,9 +191,6 @@ func (k Told) tell(c *turn.Config, ripple []skid.Ripple) {
 		th.DeadCentreDeg = math.Mod(th.DeadCentreDeg+k.LateDeg+360, 360)
 		for e := range th.Pressure {
 			p := &th.Pressure[e].Passage
-			if k.NoPassages {
-				*p = turn.Passage{}
-			}
 			p.Hz, p.Q = p.Hz*factor(k.PassageHz), p.Q*factor(k.PassageQ)
 		}
 	}
