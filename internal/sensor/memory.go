@@ -37,7 +37,8 @@ func (w *Watch) Snapshot() Memory {
 }
 
 // Restore takes it back. Channels that this machine does not have, faults that are not known and levels that cannot be
-// are left out and named in the error. A fault that stood goes on standing until its hold has passed without it.
+// are left out and named in the error. A fault that stood goes on standing until its hold has passed without it; one that
+// was told, until it is told again.
 func (w *Watch) Restore(m Memory) error {
 	var out []string
 	for _, cm := range m.Channels {
@@ -49,7 +50,7 @@ func (w *Watch) Restore(m Memory) error {
 		c.levels = cm.Usual
 		for _, s := range cm.Standing {
 			if k, ok := faultNamed(s.Fault); ok && s.Reason != "" {
-				c.ep[k] = episode{standing: true, reason: s.Reason, last: unknownTurn}
+				c.ep[k] = episode{standing: true, reason: s.Reason, last: unknownTurn, told: k.isTold()}
 			} else {
 				out = append(out, cm.ID+": "+s.Fault)
 			}

@@ -80,6 +80,19 @@ func TestToldStandsUntilItIsToldGone(t *testing.T) {
 	if s := w.State(0); s.Since != 5 || s.Reason != "p has drifted further" {
 		t.Errorf("%+v", s)
 	}
+	again, err := New(Config{Rate: 1000, Channels: []Channel{{ID: "p", Kind: Pressure, PerCount: 1, FullV: 10, Gain: 1}}, Hold: 3})
+	if err != nil || again.Restore(w.Snapshot()) != nil {
+		t.Fatal(err)
+	}
+	for n := range int64(100) {
+		again.Frame(&frame.Frame{Turn: n, Counts: [][]int32{nil}})
+	}
+	if s := again.State(0); s.Fault != Drift || s.Category != MaintenanceRequired {
+		t.Errorf("after a restart: %+v", s)
+	}
+	if again.Tell(0, Drift, 100, 1, ""); again.State(0).Category > Good {
+		t.Errorf("after a restart, told gone: %+v", again.State(0))
+	}
 	if w.Tell(0, Drift, 121, 1210, ""); w.State(0).Category > Good {
 		t.Errorf("%+v", w.State(0))
 	}

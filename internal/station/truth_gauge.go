@@ -342,6 +342,9 @@ func (g *gauges) conclude(c *gauge, t *turn.Turn, s *sensors, at time.Time) {
 	case !f.Valid() && c.gone >= gaugeGone && c.now.Fall > gaugeClear && c.now.Orders < gaugeHarmless/2:
 		why = fmt.Sprintf("%s: the gauge passage does not ring any more at the %.0f Hz that are undone: usually a passage that is partly plugged; pressures then come late and small", c.id, c.now.Hz)
 	}
+	if why == "" && !f.Valid() && c.gone < gaugeGone {
+		return // after a restart what stood goes on standing
+	}
 	s.Tell(c.channel, sensor.Gauge, t.Number, t.Seq0, why)
 }
 

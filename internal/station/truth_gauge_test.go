@@ -2,6 +2,7 @@ package station
 
 import (
 	"math"
+	"os"
 	"slices"
 	"strings"
 	"testing"
@@ -168,7 +169,13 @@ func TestPassageIsFoundFrozenAndWatched(t *testing.T) {
 		{"plugged", piped(told, [2]float64{0, 0}, [2]float64{0, 0}), "does not ring any more"},
 	} {
 		said := ""
-		l := through(t, c.machine, model.Script{}, 5, 22, fresh(LearnPlan{}, base, nil, 1), func(l *Line, o *Output) {
+		seconds := 13.
+		if c.name == "plugged" { // which takes two looks
+			if seconds = 22; os.Getenv("LAPWING_FIELD") == "" {
+				continue
+			}
+		}
+		l := through(t, c.machine, model.Script{}, 5, seconds, fresh(LearnPlan{}, base, nil, 1), func(l *Line, o *Output) {
 			for _, tr := range o.Transitions {
 				if tr.Key == he+"/"+sensorKind && said == "" {
 					said = tr.Sentence

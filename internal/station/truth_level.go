@@ -21,15 +21,14 @@ type levels struct {
 }
 
 type throwLevel struct {
-	level    *sensor.Level
-	channel  [2]int // index in the skid's channels, -1
-	id       [2]string
-	zero     [2]int // features
-	low      [2]int // suction plateau
-	high     [2]int // discharge plateau
-	lags     [2][]int
-	ps       float64
-	sentence [2]string // of a sensitivity that is doubted
+	level   *sensor.Level
+	channel [2]int // index in the skid's channels, -1
+	id      [2]string
+	zero    [2]int // features
+	low     [2]int // suction plateau
+	high    [2]int // discharge plateau
+	lags    [2][]int
+	ps      float64
 }
 
 func newLevels(sk *skid.Skid, layout measure.Layout) *levels {
@@ -165,13 +164,13 @@ func (th *throwLevel) tell(e int, t *turn.Turn, s *sensors) {
 		why = fmt.Sprintf("%s: its zero has drifted by %+.2f bar since the baseline, which is taken off: usually the transducer's temperature; it wants to be zeroed or calibrated at the next stop", th.id[e], th.level.Offset(e)/1e5)
 	}
 	s.Tell(th.channel[e], sensor.Drift, t.Number, t.Seq0, why)
-	why = ""
-	if g, doubt := th.level.Gain(e); doubt {
-		if why = th.sentence[e]; !math.IsNaN(g) {
-			why = fmt.Sprintf("%s reads %.1f %% too %s at both plateaus beside %s on the same lines, with its zero as it was: usually calibration, range setting or amplifier", th.id[e], 100*math.Abs(g), [2]string{"low", "high"}[btoi(g > 0)], th.beside(e))
-		}
+	g, doubt := th.level.Gain(e)
+	if math.IsNaN(g) {
+		return // nothing new; after a restart what stood goes on standing
 	}
-	th.sentence[e] = why
+	if why = ""; doubt {
+		why = fmt.Sprintf("%s reads %.1f %% too %s at both plateaus beside %s on the same lines, with its zero as it was: usually calibration, range setting or amplifier", th.id[e], 100*math.Abs(g), [2]string{"low", "high"}[btoi(g > 0)], th.beside(e))
+	}
 	s.Tell(th.channel[e], sensor.Sensitivity, t.Number, t.Seq0, why)
 }
 

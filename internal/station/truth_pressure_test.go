@@ -3,6 +3,7 @@ package station
 import (
 	"math"
 	"os"
+	"sync"
 	"testing"
 
 	"lapwing/internal/acq"
@@ -28,6 +29,21 @@ type truthRig struct {
 	base *duty.Baseline
 	mem  Memory
 	seed uint64
+}
+
+// learntRig is one for all tests that need one: its learning run is most of their time.
+var learntRig struct {
+	once sync.Once
+	r    *truthRig
+}
+
+func theTruthRig(t testing.TB) *truthRig {
+	t.Helper()
+	learntRig.once.Do(func() { learntRig.r = newTruthRig(t, 3) })
+	if learntRig.r == nil {
+		t.Fatal("nothing was learnt")
+	}
+	return learntRig.r
 }
 
 func newTruthRig(t testing.TB, seed uint64) *truthRig {
@@ -88,7 +104,7 @@ func (r *truthRig) hears(t testing.TB, s model.Script, seconds float64, first in
 // come on within a second after a healthy baseline. Each is said of its own channel, and no valve is named. Three cases
 // always, all 24 in the long runs.
 func TestPressureErrorsAreTheChannels(t *testing.T) {
-	r := newTruthRig(t, 3)
+	r := theTruthRig(t)
 	type wrong struct {
 		what  model.What
 		share float64
@@ -112,11 +128,14 @@ func TestPressureErrorsAreTheChannels(t *testing.T) {
 		if c.what == model.PressureGain {
 			to, want, name = 1+c.share, c.id+"/"+sensorKind, "sensitivity"
 		}
-		first := math.NaN()
-		worst, l := r.hears(t, model.Script{}.Add(5, 1, c.what, c.id, to), 30, 1, func(_ *Line, o *Output) {
+		first, seconds := math.NaN(), 16.
+		if c.what == model.PressureGain {
+			seconds = 28
+		}
+		worst, l := r.hears(t, model.Script{}.Add(3, 1, c.what, c.id, to), seconds, 1, func(_ *Line, o *Output) {
 			for _, tr := range o.Transitions {
 				if tr.Key == want && math.IsNaN(first) {
-					first = o.Record.TimeS - 5
+					first = o.Record.TimeS - 3
 				}
 			}
 		})
@@ -140,7 +159,7 @@ func TestThermalDriftIsTakenOff(t *testing.T) {
 	if os.Getenv("LAPWING_FIELD") == "" {
 		t.Skip("long: set LAPWING_FIELD")
 	}
-	r := newTruthRig(t, 3)
+	r := theTruthRig(t)
 	ch, _ := r.sk.ChannelByID("p1h")
 	to := .006 * (ch.Max - ch.Min)
 	worst, l := r.hears(t, model.Script{}.Add(30, 3600, model.PressureZero, "p1h", to), 3900, 1, nil)

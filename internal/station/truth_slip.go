@@ -39,8 +39,12 @@ func (s *slip) compare(throw int, t *turn.Turn, p duty.Point, devs []duty.Deviat
 	}
 	for i := range devs {
 		if d := &devs[i]; d.Feature == s.feature[throw] && d.Seen && s.Add(throw, t.Number, d.Residual) {
+			deg, doubt := s.Late()
+			if math.IsNaN(deg) {
+				continue // not enough yet; after a restart what stood goes on standing
+			}
 			why := ""
-			if deg, doubt := s.Late(); doubt {
+			if doubt {
 				why = fmt.Sprintf("%s: the dead centres of %s have moved by %.2f° against the marks, which come too %s, since the baseline was learnt: usually the pick-up or its bracket, the wheel or target on the shaft, or the trigger edge",
 					s.id, s.whose(t.Number), math.Abs(deg), [2]string{"late", "early"}[btoi(deg < 0)])
 			}

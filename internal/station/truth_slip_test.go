@@ -13,13 +13,13 @@ import (
 // Marks that come late or early after the baseline was learnt are said of the phase reference, with the angle that the
 // fit finds, and as the throw's dead centre by the judge; no valve is named. One case always, the table in the long runs.
 func TestPhaseSlipIsThePhaseReferences(t *testing.T) {
-	r := newTruthRig(t, 3)
+	r := theTruthRig(t)
 	list := []float64{.5}
 	if os.Getenv("LAPWING_FIELD") != "" {
 		list = []float64{-1.5, -.5, -.2, .2, .5, 1.5}
 	}
 	for _, v := range list {
-		worst, l := r.hears(t, model.Script{}.Add(5, 1, model.PhaseSlip, "", v), 30, 1, nil)
+		worst, l := r.hears(t, model.Script{}.Add(3, 1, model.PhaseSlip, "", v), 21, 1, nil)
 		deg, doubt := l.slip.Late()
 		c := channelNamed(t, l.Channels(), "phase")
 		t.Logf("%+.2f°: %+.3f° found, said is %v; %s %s", v, deg, worst, c.State, c.Reason)
