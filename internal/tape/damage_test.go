@@ -148,7 +148,10 @@ func TestOneMetaPageGoneCostsOneCommit(t *testing.T) {
 	path := filepath.Join(dir, "tape.db")
 	for page := range int64(2) {
 		tp := open(t, dir, opt)
-		feed(tp, page*1000, page*1000+1000)
+		for at := page * 1000; at < page*1000+1000; at += 200 { // a commit each
+			feed(tp, at, at+200)
+			flush(t, tp)
+		}
 		if err := tp.Close(); err != nil {
 			t.Fatal(err)
 		}

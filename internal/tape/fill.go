@@ -70,7 +70,7 @@ func (w *writer) copySegment(c *Clip, g segInfo) (full string) {
 	}
 	for {
 		if !t.clips.full(p.footprint()) {
-			err = t.clips.put(p, nil, skid, false)
+			err = t.clips.put([]*packed{p}, nil, skid, false)
 			if err == nil {
 				return ""
 			}

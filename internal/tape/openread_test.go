@@ -12,6 +12,7 @@ import (
 
 // A tape that its daemon has left is read, exported and left as it was.
 func TestOpenRead(t *testing.T) {
+	t.Parallel() // it waits two seconds for a lock
 	dir := t.TempDir()
 	path := filepath.Join(dir, "tape.db")
 	info := acq.Info{Rate: 1000, Channels: 2, Bits: 24, Name: "bench"}

@@ -173,6 +173,14 @@ func (p *packed) footprint() int64 {
 	return p.payload() + 24*keys + 2048*(keys/2+1) + 4096
 }
 
+// footprint is that of several.
+func footprint(ps []*packed) (sum int64) {
+	for _, p := range ps {
+		sum += p.footprint()
+	}
+	return sum
+}
+
 func bigEndian(key uint64) []byte { return binary.BigEndian.AppendUint64(nil, key) }
 
 func channelKey(c int) []byte { return binary.BigEndian.AppendUint16(nil, uint16(c)) }

@@ -6,6 +6,7 @@ import (
 	"os"
 	"sort"
 	"sync"
+	"syscall"
 	"time"
 
 	bolt "go.etcd.io/bbolt"
@@ -173,29 +174,37 @@ func (s *store) full(need int64) bool {
 	return s.live+2*need > s.bound
 }
 
-// put stores p and removes evict in one transaction. When the file is full none the less, more of the oldest go, each
-// in a commit of its own, and it tries again: give says whether that is allowed.
-func (s *store) put(p *packed, evict []segInfo, skid []byte, give bool) error {
-	p.info.size = p.footprint()
+// put stores some segments and removes evict in one transaction. When the file is full none the less, more of the oldest
+// go, in a commit of their own, and it tries again: give says whether that is allowed.
+func (s *store) put(ps []*packed, evict []segInfo, skid []byte, give bool) error {
+	need := footprint(ps)
+	for _, p := range ps {
+		p.info.size = p.footprint()
+	}
 	var err error
 	for range 16 {
 		err = s.update(func(tx *bolt.Tx) error {
 			if err := remove(tx, evict); err != nil {
 				return err
 			}
-			return p.write(tx, skid)
+			for _, p := range ps {
+				if err := p.write(tx, skid); err != nil {
+					return err
+				}
+			}
+			return nil
 		})
 		if err == nil {
-			s.account(p, evict)
+			s.account(ps, evict)
 			return nil
 		}
-		if errors.Is(err, boltfile.ErrDamaged) || !give {
+		if !give || !noRoom(err) {
 			break
 		}
 		if errors.Is(err, berrors.ErrMaxSizeReached) {
-			s.bound = max(s.bound-p.info.size, s.opt.MaxBytes/2)
+			s.bound = max(s.bound-need, s.opt.MaxBytes/2)
 		}
-		gone := s.oldest(len(evict) + 1)
+		gone := s.oldest(len(evict) + len(ps))
 		if len(gone) == 0 {
 			break
 		}
@@ -204,7 +213,12 @@ func (s *store) put(p *packed, evict []segInfo, skid []byte, give bool) error {
 		}
 		evict = nil
 	}
-	return fmt.Errorf("put segment %d: %w", p.info.key, err)
+	return fmt.Errorf("put segment %d: %w", ps[0].info.key, err)
+}
+
+// noRoom tells errors that giving away the oldest can mend.
+func noRoom(err error) bool {
+	return errors.Is(err, berrors.ErrMaxSizeReached) || errors.Is(err, syscall.ENOSPC) || errors.Is(err, syscall.EDQUOT) || errors.Is(err, syscall.EFBIG)
 }
 
 // drop removes segments in a transaction of their own.
@@ -223,7 +237,7 @@ func (s *store) oldest(n int) []segInfo {
 }
 
 // account brings the index in memory up to what was just committed.
-func (s *store) account(put *packed, gone []segInfo) {
+func (s *store) account(put []*packed, gone []segInfo) {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	for _, g := range gone {
@@ -236,13 +250,13 @@ func (s *store) account(put *packed, gone []segInfo) {
 			}
 		}
 	}
-	if put != nil {
-		i, _ := s.at(put.info.key)
+	for _, p := range put {
+		i, _ := s.at(p.info.key)
 		s.segs = append(s.segs, segInfo{})
 		copy(s.segs[i+1:], s.segs[i:])
-		s.segs[i] = put.info
-		s.live += put.info.size
-		s.stats.kept += put.payload()
+		s.segs[i] = p.info
+		s.live += p.info.size
+		s.stats.kept += p.payload()
 	}
 }
 

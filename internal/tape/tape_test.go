@@ -116,7 +116,7 @@ func TestRollKeepsTheFileWithinItsBound(t *testing.T) {
 		for range 8 {
 			p.chans = append(p.chans, rec[:size])
 		}
-		if err := w.commit(p); err != nil {
+		if err := w.commit([]*packed{p}); err != nil {
 			t.Fatal(err)
 		}
 		if s := tp.Stats(); s.FileBytes > opt.MaxBytes {
@@ -131,51 +131,6 @@ func TestRollKeepsTheFileWithinItsBound(t *testing.T) {
 		segments, s.KeptBytes/opt.MaxBytes, s.FileBytes, opt.MaxBytes, s.LiveBytes, 100*float64(s.LiveBytes)/float64(opt.MaxBytes),
 		float64(s.WrittenBytes)/float64(s.KeptBytes), s.FailedCommits, s.WorstCommit)
 	tp.ring.drop(tp.ring.oldest(1 << 20)) // what is in there is no recording: Check would say so
-}
-
-// Segments as a skid's: the figure that counts for the wear of a disk.
-func TestBytesWritten(t *testing.T) {
-	opt := small()
-	opt.Info.Channels, opt.Info.Rate, opt.Segment, opt.noSync = 17, 51200, time.Second, false
-	opt.MaxBytes, opt.ClipBytes = 22<<20, 22<<20
-	tp := open(t, t.TempDir(), opt)
-	w := idleWriter(t, tp)
-	signals := skidSignals(51200)
-	var recs [][]byte
-	for c := range 4 {
-		recs = append(recs, w.pack.pack(nil, signals[[]string{"pressure", "vibration", "idle", "mark"}[c]], 0))
-	}
-	const seconds = 28
-	before := written()
-	for k := range int64(seconds) {
-		m := segMeta{Run: 1, Seq0: k * 51200, N: 51200, Rate: 51200, Bits: 24, Channels: 17}
-		meta, err := m.encode()
-		if err != nil {
-			t.Fatal(err)
-		}
-		p := &packed{meta: meta, info: segInfo{key: uint64(k + 1), run: 1, n: 51200, seq0: m.Seq0, end: m.end()}}
-		for c := range 17 {
-			p.chans = append(p.chans, numbered(recs[min(c, 2+c%2)%4], m.Seq0))
-		}
-		if err := w.commit(p); err != nil {
-			t.Fatal(err)
-		}
-	}
-	s := tp.Stats()
-	t.Logf("17 inputs at 51.2 kHz, %d s: %.2f MB/s kept of %.2f MB/s sampled (24 bit); %.4f bytes written per byte kept; file %d of %d; worst commit %v",
-		seconds, float64(s.KeptBytes)/seconds/1e6, 17*51200*3/1e6, float64(s.WrittenBytes)/float64(s.KeptBytes), s.FileBytes, opt.MaxBytes, s.WorstCommit)
-	if after := written(); before > 0 {
-		t.Logf("the kernel counts %.4f bytes written per byte kept", float64(after-before)/float64(s.KeptBytes))
-		if float64(after-before) > 1.1*float64(s.KeptBytes) {
-			t.Errorf("%d written, %d kept", after-before, s.KeptBytes)
-		}
-	}
-	if s.FileBytes > opt.MaxBytes || s.OldestSeq == 0 {
-		t.Errorf("file %d of %d, oldest %d", s.FileBytes, opt.MaxBytes, s.OldestSeq)
-	}
-	if float64(s.WrittenBytes) > 1.1*float64(s.KeptBytes) {
-		t.Errorf("%d written, %d kept", s.WrittenBytes, s.KeptBytes)
-	}
 }
 
 func TestAgeRollsToo(t *testing.T) {
@@ -231,6 +186,49 @@ func TestAFullQueueDropsTheOldestAndSaysSo(t *testing.T) {
 	}
 	if !strings.Contains(notes, "queue was full") {
 		t.Errorf("notes say %q", notes)
+	}
+}
+
+// A writer that is behind puts up to four segments into one commit; what the disk refuses together is tried one by one.
+func TestAWriterThatIsBehind(t *testing.T) {
+	for name, c := range map[string]struct{ refused, commits int32 }{
+		"catches up": {-1, 1 + 4}, "is refused once": {2, 1 + 1 + 4 + 3},
+	} {
+		t.Run(name, func(t *testing.T) {
+			opt := small()
+			opt.MaxBytes = 16 << 20
+			reached, goOn := make(chan bool), make(chan bool)
+			var commits atomic.Int32
+			var watch atomic.Bool
+			opt.disk = func(string) error {
+				if !watch.Load() {
+					return nil
+				}
+				switch commits.Add(1) {
+				case 1:
+					reached <- true
+					<-goOn
+				case c.refused:
+					return syscall.EIO
+				}
+				return nil
+			}
+			tp := open(t, t.TempDir(), opt)
+			watch.Store(true)
+			feed(tp, 0, 200)
+			<-reached
+			feed(tp, 200, 17*200)
+			close(goOn)
+			flush(t, tp)
+			watch.Store(false)
+			if n := commits.Load(); n != c.commits {
+				t.Errorf("%d commits, want %d", n, c.commits)
+			}
+			if s := tp.Stats(); s.LostSamples != 0 || s.OldestSeq != 0 {
+				t.Errorf("%d lost, oldest %d", s.LostSamples, s.OldestSeq)
+			}
+			wantSamples(t, func(f func(*acq.Block) error) error { return tp.Read(0, 3400, f) }, 0, 3400)
+		})
 	}
 }
 

@@ -24,6 +24,7 @@ type writer struct {
 	key     uint64      // of the next segment
 	last    *segMeta    // newest segment of an earlier opening, nil for none
 	bad     map[uint64]bool
+	packed  []*packed // seconds that are packed and wait for a commit: more than one only when the writer is behind
 	thin    [2]uint64 // by stage of thinning: number of the next segment to look at
 }
 
@@ -64,8 +65,11 @@ func (w *writer) run() {
 		switch {
 		case ok:
 			w.handle(it)
+		case len(w.packed) > 0:
+			w.commitPacked() // a failure is counted and in Stats
 		case closed:
 			w.cut()
+			w.commitPacked()
 			for w.fillClips(16) {
 			}
 			return
@@ -89,7 +93,7 @@ func (w *writer) handle(it item) {
 	case it.mark != nil:
 		w.cur.Marks = append(w.cur.Marks, *it.mark)
 	case it.flush != nil:
-		err := w.cut()
+		err := errors.Join(w.cut(), w.commitPacked())
 		for w.fillClips(16) {
 		}
 		it.flush <- err
@@ -120,6 +124,9 @@ func (w *writer) add(b *acq.Block) {
 		w.next = b.Seq0 + int64(pos)
 		if off+take == w.t.opt.segmentSamples() {
 			w.cut() // a failure is counted and in Stats; the samples behind it must not wait
+			if !w.behind() {
+				w.commitPacked()
+			}
 		}
 	}
 }
@@ -130,6 +137,7 @@ func (w *writer) gap(b *acq.Block) (lost int64, note string) {
 	w.owed = 0
 	if w.begun && b.Seq0 < w.next { // the source counts anew
 		w.cut()
+		w.commitPacked()
 		w.begun, w.last = false, nil
 	}
 	if !w.begun {
@@ -185,8 +193,24 @@ func (w *writer) event(e event) {
 	w.cur.Events = append(w.cur.Events, e)
 }
 
-// cut commits the open segment. When the ring is found damaged it is set aside and begun anew with this segment; when
-// the disk refuses, the segment is lost and counted, and the next one is tried again.
+// together is how many segments one commit takes at most. Every commit waits for the disk twice: a writer that is behind
+// catches up by waiting less often.
+const together = 4
+
+// behind tells whether the next segment's samples are waiting already and may share a commit with what is packed. A commit
+// must stay small against the ring, as it finds the pages that it frees only with the next one.
+func (w *writer) behind() bool {
+	n := len(w.packed)
+	if n == 0 || n >= together || footprint(w.packed)*(int64(n)+1)/int64(n) > w.t.opt.MaxBytes/32 {
+		return false
+	}
+	q := w.t.queue
+	q.mu.Lock()
+	defer q.mu.Unlock()
+	return q.waiting >= int64(w.t.opt.segmentSamples())
+}
+
+// cut packs the open segment and begins the next.
 func (w *writer) cut() error {
 	n := len(w.counts[0])
 	if n == 0 {
@@ -194,24 +218,9 @@ func (w *writer) cut() error {
 	}
 	p, err := w.packSegment(n)
 	if err == nil {
-		err = w.commit(p)
-	}
-	if errors.Is(err, boltfile.ErrDamaged) {
-		d, renewErr := w.t.ring.renew(err.Error())
-		w.t.noteDamage(d)
-		if err = renewErr; err == nil {
-			err = w.commit(p)
-		}
-	}
-	if err != nil {
-		err = fmt.Errorf("tape: %w", err)
-		w.t.noteError(err)
-		w.t.mu.Lock()
-		w.t.health.lostSegments++
-		w.t.health.lostSamples += int64(n)
-		w.t.mu.Unlock()
+		w.packed = append(w.packed, p)
 	} else {
-		w.t.next.Store(p.info.end)
+		err = w.lost(err, int64(n))
 	}
 	w.key++
 	w.cur = segMeta{}
@@ -221,6 +230,49 @@ func (w *writer) cut() error {
 	for c := range w.counts {
 		w.counts[c] = w.counts[c][:0]
 	}
+	return err
+}
+
+// commitPacked commits what is packed. When the ring is found damaged it is set aside and begun anew with these segments;
+// when the disk refuses them together they are tried one by one, and what it refuses then is lost and counted: the next
+// one is tried again.
+func (w *writer) commitPacked() error {
+	ps := w.packed
+	if len(ps) == 0 {
+		return nil
+	}
+	w.packed = nil
+	err := w.commit(ps)
+	if errors.Is(err, boltfile.ErrDamaged) {
+		d, renewErr := w.t.ring.renew(err.Error())
+		w.t.noteDamage(d)
+		if err = renewErr; err == nil {
+			err = w.commit(ps)
+		}
+	}
+	switch {
+	case err == nil:
+		w.t.next.Store(ps[len(ps)-1].info.end)
+		return nil
+	case len(ps) == 1:
+		return w.lost(err, int64(ps[0].info.n))
+	}
+	var errs []error
+	for _, p := range ps {
+		w.packed = []*packed{p}
+		errs = append(errs, w.commitPacked())
+	}
+	return errors.Join(errs...)
+}
+
+// lost counts what could not be kept.
+func (w *writer) lost(err error, samples int64) error {
+	err = fmt.Errorf("tape: %w", err)
+	w.t.noteError(err)
+	w.t.mu.Lock()
+	defer w.t.mu.Unlock()
+	w.t.health.lostSegments++
+	w.t.health.lostSamples += samples
 	return err
 }
 
@@ -246,14 +298,15 @@ func (w *writer) packSegment(n int) (*packed, error) {
 	return p, nil
 }
 
-func (w *writer) commit(p *packed) error {
-	evict := w.t.ring.room(p.footprint())
-	evict = append(evict, w.tooOld(p.info, len(evict))...)
-	evict = append(evict, without(evict, w.thinned(p.info))...)
+func (w *writer) commit(ps []*packed) error {
+	newest := ps[len(ps)-1].info
+	evict := w.t.ring.room(footprint(ps))
+	evict = append(evict, w.tooOld(newest, len(evict))...)
+	evict = append(evict, without(evict, w.thinned(newest))...)
 	if len(evict) > 0 {
 		w.rescue(evict)
 	}
-	return w.t.ring.put(p, evict, w.t.opt.Skid, true)
+	return w.t.ring.put(ps, evict, w.t.opt.Skid, true)
 }
 
 // tooOld gives the segments, after the first skip ones, that are older than MaxAge when newest is the newest. Those of
