@@ -49,6 +49,7 @@ const (
 	VerbLearnDrop   = "learn-drop"
 	VerbImport      = "baseline-import" // of a file that came with POST /api/v1/baselines
 	VerbRenew       = "renew"
+	VerbRebirth     = "rebirth" // health and standing alarms are sent to the control room again
 )
 
 // Bounds of what an order may hold.
@@ -80,6 +81,7 @@ var verbFields = map[string]struct{ needs, may []string }{
 	VerbLearnDrop:   {nil, []string{"reason"}},
 	VerbImport:      {[]string{"reason"}, nil},
 	VerbRenew:       {[]string{"subject"}, []string{"reason", "turns", "accept"}},
+	VerbRebirth:     {nil, []string{"reason"}},
 }
 
 // Verbs lists the verbs, in alphabetical order.
@@ -95,21 +97,28 @@ func Verbs() []string {
 // the fields say; see Check.
 func ParseOrder(raw []byte) (Order, error) {
 	var o Order
+	if err := strict(raw, &o); err != nil {
+		return Order{}, err
+	}
+	return o, nil
+}
+
+func strict(raw []byte, v any) error {
 	if len(raw) > MaxOrder {
-		return o, fmt.Errorf("wire: %w of more than %d bytes", ErrOrder, MaxOrder)
+		return fmt.Errorf("wire: %w of more than %d bytes", ErrOrder, MaxOrder)
 	}
 	if !utf8.Valid(raw) {
-		return o, fmt.Errorf("wire: %w is not UTF-8", ErrOrder)
+		return fmt.Errorf("wire: %w is not UTF-8", ErrOrder)
 	}
 	dec := json.NewDecoder(bytes.NewReader(raw))
 	dec.DisallowUnknownFields()
-	if err := dec.Decode(&o); err != nil {
-		return Order{}, fmt.Errorf("wire: %w: %w", ErrOrder, err)
+	if err := dec.Decode(v); err != nil {
+		return fmt.Errorf("wire: %w: %w", ErrOrder, err)
 	}
 	if _, err := dec.Token(); !errors.Is(err, io.EOF) {
-		return Order{}, fmt.Errorf("wire: %w: something stands behind it", ErrOrder)
+		return fmt.Errorf("wire: %w: something stands behind it", ErrOrder)
 	}
-	return o, nil
+	return nil
 }
 
 // has tells which fields an order has.
@@ -210,6 +219,7 @@ type Act struct {
 // Receipt is the answer to an order.
 type Receipt struct {
 	Version int    `json:"v"`
+	Request string `json:"request,omitempty"` // of the command, when the order came over MQTT
 	Journal string `json:"journal,omitempty"`
 	Act
 	OnDisk  bool   `json:"on_disk"` // false: done, but lost if the daemon stops before the disk takes it

@@ -30,6 +30,7 @@ func TestOrdersThatAreRight(t *testing.T) {
 		wire.VerbLearnDrop:   nil,
 		wire.VerbImport:      {`"reason":"new computer"`},
 		wire.VerbRenew:       {`"subject":"t1.he.suction"`},
+		wire.VerbRebirth:     nil,
 	}
 	if len(good) != len(wire.Verbs()) {
 		t.Errorf("verbs %v", wire.Verbs())

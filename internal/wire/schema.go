@@ -11,7 +11,7 @@ import (
 var schemas embed.FS
 
 // Schema gives the JSON Schema (draft 2020-12) of a message, an order or a record: alarm, standing, features, health;
-// order, receipt, act; journal, entry, alarms; learning; why, why-block, why-turn; turn,
+// order, command, receipt, act; journal, entry, alarms; learning; why, why-block, why-turn; turn,
 // finding, transition.
 func Schema(name string) ([]byte, error) {
 	b, err := schemas.ReadFile("schema/" + name + ".json")

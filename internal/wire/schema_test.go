@@ -215,7 +215,7 @@ func TestCheckerRefuses(t *testing.T) {
 }
 
 func TestSchemas(t *testing.T) {
-	want := []string{"act", "alarm", "alarms", "entry", "features", "finding", "health", "journal", "learning", "order", "receipt", "standing", "transition", "turn", "why", "why-block", "why-turn"}
+	want := []string{"act", "alarm", "alarms", "command", "entry", "features", "finding", "health", "journal", "learning", "order", "receipt", "standing", "transition", "turn", "why", "why-block", "why-turn"}
 	if got := wire.SchemaNames(); !slices.Equal(got, want) {
 		t.Errorf("schemas %v, want %v", got, want)
 	}
