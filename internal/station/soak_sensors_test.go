@@ -114,7 +114,10 @@ func (m *soaked) misreads(t testing.TB, f soakFault, moves bool) (out misread) {
 				once(&out.valves, g.Subject+"/"+g.Kind+" "+g.Grade.String())
 				out.worst = max(out.worst, g.Grade)
 			} else {
-				once(&out.named, g.Subject+"/"+g.Kind)
+				n := len(out.named)
+				if once(&out.named, g.Subject+"/"+g.Kind); len(out.named) > n {
+					out.text += fmt.Sprintf("turn %d: %s\n", g.Turn, g.Sentence)
+				}
 			}
 		}
 		for _, tr := range o.Transitions {

@@ -154,6 +154,15 @@ func (c *trial) short(text string) string {
 	return strings.ReplaceAll(text, " at this duty", "")
 }
 
+// amiss says how far off a sensor or the geometry is.
+var amiss = map[string]string{
+	"early_deg":               "pressures come about %.2g° early (%.2g to %.2g; minus is late)",
+	"zero_percent_of_suction": "about %.2g %% of suction pressure off (%.2g to %.2g)",
+	"clearance_points_lower":  "clearance about %.2g points lower (%.2g to %.2g; minus is higher)",
+	"exponent_change":         "exponent about %+.3f (%+.3f to %+.3f)",
+	"gain_ratio":              "reads about %.2g times as much (%.2g to %.2g)",
+}
+
 // size is how large a finding is, in words.
 func size(c *trial, f *Finding) string {
 	if s := strings.TrimPrefix(sizedWords(f.Severity), "; "); s != "" {
@@ -165,8 +174,8 @@ func size(c *trial, f *Finding) string {
 		return s
 	}
 	for _, q := range f.Severity {
-		if c.sensor {
-			return fmt.Sprintf("%s about %.3g (%.3g to %.3g)", strings.ReplaceAll(q.Name, "_", " "), q.Value, q.Lo, q.Hi)
+		if say, ok := amiss[q.Name]; ok {
+			return fmt.Sprintf(say, q.Value, q.Lo, q.Hi)
 		}
 		if q.Name == "lost_capacity_percent" {
 			return fmt.Sprintf("about %.1f %% of this end's delivery lost (%.1f to %.1f)", q.Value, q.Lo, q.Hi)
