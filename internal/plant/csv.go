@@ -45,7 +45,7 @@ func names(sk *skid.Skid) []known {
 		}
 	}
 	for _, v := range valves(sk) {
-		all = append(all, known{column{name: strings.ReplaceAll(v, ".", "_") + "_cover_c", what: cover, valve: v}, -100, 400, 1, zeroC})
+		all = append(all, known{column{name: strings.ReplaceAll(v, ".", "_") + "_cover_c", what: coverTemperature, valve: v}, -100, 400, 1, zeroC})
 	}
 	return all
 }

@@ -1,12 +1,11 @@
-// Package plant brings the process values of the plant to the line: fixed ones from the skid file, or a series from a
-// CSV file for work on recordings.
+// Package plant is the traffic with the plant's control system: its process values come in, alarms go out as registers.
 //
-//	Needs: a skid, and for a series the rows of a CSV file in the order of time.
-//	Waits: for nothing; a value is held until the next row.
-//	Emits: the skid.Process at any time on the sample clock, with its age.
+//	Needs: a skid; the devices that its file names, or a CSV file beside a recording; the station's snapshots to show.
+//	Waits: for nothing that others wait for: a value is held until the next, and for no longer than its tag says.
+//	Emits: the skid.Process at any time, with its age; a register map over Modbus TCP.
 //
-// What a file does not give is taken from the skid file; what neither gives is not known: NaN in a line, a missing
-// key among the covers, and, when nothing at all is known, Process.Known false.
+// When it cannot: what a device or file does not give is not known: NaN in a line, a missing key among the covers, and,
+// when nothing at all is known, Process.Known false. What neither names is taken from the skid file.
 package plant
 
 import (
@@ -41,7 +40,7 @@ const (
 	pDischarge
 	tSuction
 	tDischarge
-	cover
+	coverTemperature
 )
 
 // Fixed gives the skid file's process values at every time, always fresh.
@@ -94,21 +93,11 @@ func (s *Series) At(t float64) skid.Process {
 			p.Stages[c.stage].Ts = v
 		case tDischarge:
 			p.Stages[c.stage].Td = v
-		case cover:
-			if math.IsNaN(v) {
-				delete(p.Covers, c.valve)
-				continue
-			}
-			if p.Covers == nil {
-				p.Covers = map[string]float64{}
-			}
-			p.Covers[c.valve] = v
+		case coverTemperature:
+			cover(&p, c.valve, v)
 		}
 	}
-	p.Known = len(p.Covers) > 0
-	for _, l := range p.Stages {
-		p.Known = p.Known || !math.IsNaN(l.Ps) || !math.IsNaN(l.Pd) || !math.IsNaN(l.Ts) || !math.IsNaN(l.Td)
-	}
+	p.Known = anyKnown(&p)
 	if !p.Known {
 		p.Stages = nil
 	}

@@ -64,7 +64,7 @@ func Parse(name string, raw []byte) (*Skid, error) {
 // skid reads the sections in an order in which each finds what it refers to.
 func (r *reader) skid(root *yaml.Node, sk *Skid) {
 	o := r.object(root, "", "lapwing", "id", "name", "site", "machine", "acquisition", "phase", "gas", "throws",
-		"load_steps", "channels", "process", "detection", "limits", "tape", "uplink", "panel")
+		"load_steps", "channels", "process", "detection", "limits", "tape", "uplink", "panel", "modbus")
 	if o == nil {
 		return
 	}
@@ -95,6 +95,7 @@ func (r *reader) skid(root *yaml.Node, sk *Skid) {
 	r.tape(o, &sk.Tape)
 	r.uplink(o, sk)
 	r.panel(o, &sk.Panel)
+	r.modbus(o, sk)
 }
 
 func (r *reader) machine(o *object, m *Machine) {

@@ -32,6 +32,7 @@ type Skid struct {
 	Tape      Tape
 	Uplink    Uplink
 	Panel     Panel
+	Modbus    Modbus
 
 	at        map[string]Place  // where each path of the file stands; for messages after parsing
 	channelAt map[string]string // path of each channel by id: Channels is sorted, the file is not
@@ -202,6 +203,7 @@ type Uplink struct {
 	UserFile, PasswordFile, CAFile, CertFile, KeyFile string
 	FeaturesEvery                                     time.Duration // condensed features, default 10 s
 	HealthEvery                                       time.Duration // default 30 s
+	Commands                                          []string      // orders that the control room may give over MQTT; empty: none
 }
 
 // Panel is the local page.
