@@ -2,7 +2,10 @@
 package main
 
 import (
+	"bufio"
 	"context"
+	"encoding/json"
+	"errors"
 	"fmt"
 	"log/slog"
 	"os"
@@ -14,6 +17,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"lapwing/internal/station"
+	"lapwing/internal/wire"
 )
 
 func main() {
@@ -29,6 +33,7 @@ func main() {
 func command() *cobra.Command {
 	var o station.Options
 	var verbose bool
+	var records string
 	cmd := &cobra.Command{
 		Use:   "lapwingd --skid FILE --source SOURCE",
 		Short: "Watch the valves of a reciprocating compressor and tell the control room",
@@ -55,7 +60,14 @@ Sources:
 				level = slog.LevelDebug
 			}
 			o.Log = slog.New(slog.NewTextHandler(os.Stderr, &slog.HandlerOptions{Level: level}))
-			return run(cmd.Context(), o)
+			if records == "" {
+				return run(cmd.Context(), o)
+			}
+			done, err := writeRecords(records, &o)
+			if err != nil {
+				return err
+			}
+			return errors.Join(run(cmd.Context(), o), done())
 		},
 	}
 	f := cmd.Flags()
@@ -69,10 +81,33 @@ Sources:
 	f.StringVar(&o.Listen, "listen", "", "address of the local page instead of the skid file's")
 	f.Uint64Var(&o.Seed, "seed", 1, "seed of a modelled machine")
 	f.BoolVar(&o.Reserve, "reserve", false, "take the tape's whole size on the disk at the start, so that nobody else can fill it")
+	f.StringVar(&records, "records", "", "write every turn record to this new file too, one JSON object a line: for days of commissioning, as it grows without bound")
 	f.BoolVar(&verbose, "verbose", false, "log more")
 	_ = cmd.MarkFlagRequired("skid")
 	_ = cmd.MarkFlagRequired("source")
 	return cmd
+}
+
+// writeRecords has every turn written to a new file; done says whether all of it could be.
+func writeRecords(path string, o *station.Options) (done func() error, err error) {
+	f, err := os.OpenFile(path, os.O_CREATE|os.O_EXCL|os.O_WRONLY, 0o640)
+	if err != nil {
+		return nil, fmt.Errorf("records: %w", err)
+	}
+	w := bufio.NewWriterSize(f, 1<<20)
+	enc := json.NewEncoder(w)
+	var failed error
+	o.OnTurn = func(t *wire.Turn) {
+		if failed == nil {
+			failed = enc.Encode(t)
+		}
+	}
+	return func() error {
+		if err := errors.Join(failed, w.Flush(), f.Close()); err != nil {
+			return fmt.Errorf("records: %w", err)
+		}
+		return nil
+	}, nil
 }
 
 // run opens the station, tells systemd, and feeds the watchdog from the line's own progress.
