@@ -2,6 +2,7 @@ package skid
 
 import (
 	"math"
+	"strings"
 )
 
 func (p *page) sampling(sk *Skid) {
@@ -87,6 +88,10 @@ func (p *page) edges(sk *Skid) {
 	if u := sk.Uplink; u.Broker != "" {
 		rows = append(rows, row("uplink", f("%s as %s, topics %s/%s/…", u.Broker, u.ClientID, u.Root, sk.ID)),
 			row("", f("features every %s, health every %s", u.FeaturesEvery, u.HealthEvery)))
+		if len(u.Commands) > 0 {
+			rows = append(rows, row("", f("the control room may order: %s; the broker's access list must let nobody else write to %s/%s/command",
+				strings.Join(u.Commands, ", "), u.Root, sk.ID)))
+		}
 	} else {
 		rows = append(rows, row("uplink", "none"))
 	}

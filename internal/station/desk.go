@@ -376,7 +376,9 @@ func (s *Station) health(at time.Time) wire.Health {
 		Problems: tapeTroubles(&st, s.info.Rate)}
 	h.Trouble = append(h.Trouble, h.Tape.Problems...)
 	if s.pub != nil {
-		h.Uplink = s.pub.Status()
+		st := s.pub.Status()
+		h.Uplink = st
+		h.Trouble = append(h.Trouble, s.uplinkTroubles(&st, time.Now())...)
 	}
 	if a := s.line.Alarms(); a.Flood() {
 		said := "alarm flood: more alarms have come within ten minutes than a person can follow"

@@ -107,7 +107,10 @@ func (s *Station) lineNow() time.Time {
 }
 
 // execute carries an order out or refuses it, and books it with everything that it changed in one transaction.
-func (s *Station) execute(o Order) wire.Receipt {
+func (s *Station) execute(o Order) wire.Receipt { return s.decide(o, nil) }
+
+// decide is execute; with a refusal the order is only booked as refused.
+func (s *Station) decide(o Order, refusal error) wire.Receipt {
 	now := s.lineNow()
 	alarms := s.line.Alarms()
 	o = s.named(o)
@@ -119,7 +122,10 @@ func (s *Station) execute(o Order) wire.Receipt {
 		return r
 	}
 	s.lastAct = act.ID
-	err := o.Check()
+	err := refusal
+	if err == nil {
+		err = o.Check()
+	}
 	var d done
 	if err == nil {
 		d, err = s.do(o, now)
@@ -185,6 +191,8 @@ func (s *Station) do(o Order, now time.Time) (done, error) {
 		return one(a.Return(o.Key, o.By, o.Reason, now))
 	case wire.VerbCutClip:
 		return s.cutClip(o, now)
+	case wire.VerbRebirth:
+		return s.rebirth()
 	}
 	return s.learnOrder(o)
 }

@@ -17,7 +17,8 @@ import (
 )
 
 // Config of a publisher or a listener. User, password and keys are files: secrets are never in the skid file, never in
-// the address and never logged. The files are read again for every connection, so a renewed one is taken up.
+// the address and never logged. The files are read again for every connection, so a renewed one is taken up. A name that
+// begins with $CREDENTIALS_DIRECTORY/ is looked for where systemd puts credentials.
 type Config struct {
 	Broker                    string // tcp://host:1883, tls://host:8883
 	ClientID                  string // unique at the broker: two clients with one id push each other out for ever
@@ -32,8 +33,10 @@ type Config struct {
 	// RetryMin and RetryMax bound the pause between attempts; zero: 1 s and 60 s (a listener: 2 s and 30 s).
 	RetryMin, RetryMax time.Duration
 	Log                *slog.Logger
+	Commands           *Commands // publisher only; nil: nobody gives orders over MQTT
 
 	wait limits
+	pace pace
 }
 
 // limits are the times after which a connection is given up; tests shorten them.
@@ -96,13 +99,17 @@ func (c *Config) check(retryMin, retryMax time.Duration) error {
 	}
 	c.RetryMax = max(c.RetryMin, c.RetryMax)
 	c.wait.fill()
+	c.pace.fill()
 	return nil
 }
 
 // unencrypted says whether a password would cross a network in the clear.
-func (c *Config) unencrypted() bool {
+func (c *Config) unencrypted() bool { return c.PasswordFile != "" && c.clear() }
+
+// clear says whether what is sent and received can be read and forged on the way.
+func (c *Config) clear() bool {
 	u, err := url.Parse(c.Broker)
-	if err != nil || c.PasswordFile == "" || (u.Scheme != "tcp" && u.Scheme != "mqtt") {
+	if err != nil || (u.Scheme != "tcp" && u.Scheme != "mqtt") {
 		return false
 	}
 	ip := net.ParseIP(u.Hostname())
@@ -124,7 +131,11 @@ func (c *Config) options() (*mqtt.ClientOptions, error) {
 		if s.file == "" {
 			continue
 		}
-		secret, err := readSecret(s.file)
+		file, err := place(s.file)
+		if err != nil {
+			return nil, fmt.Errorf("uplink: %s file: %w", s.what, err)
+		}
+		secret, err := readSecret(file)
 		if err != nil {
 			return nil, fmt.Errorf("uplink: %s file: %w", s.what, err)
 		}
@@ -168,8 +179,12 @@ func (c *Config) tls() (*tls.Config, error) {
 	if u, err := url.Parse(c.Broker); err == nil {
 		t.ServerName = u.Hostname() // behind a proxy the library would leave it out
 	}
-	if c.CAFile != "" {
-		pem, err := os.ReadFile(c.CAFile)
+	ca, err := place(c.CAFile)
+	if err != nil {
+		return nil, fmt.Errorf("uplink: CA: %w", err)
+	}
+	if ca != "" {
+		pem, err := os.ReadFile(ca)
 		if err != nil {
 			return nil, fmt.Errorf("uplink: CA: %w", err)
 		}
@@ -179,7 +194,12 @@ func (c *Config) tls() (*tls.Config, error) {
 		}
 	}
 	if c.CertFile != "" {
-		cert, err := tls.LoadX509KeyPair(c.CertFile, c.KeyFile)
+		certFile, err1 := place(c.CertFile)
+		keyFile, err2 := place(c.KeyFile)
+		if err := errors.Join(err1, err2); err != nil {
+			return nil, fmt.Errorf("uplink: client certificate: %w", err)
+		}
+		cert, err := tls.LoadX509KeyPair(certFile, keyFile)
 		if err != nil {
 			return nil, fmt.Errorf("uplink: client certificate: %w", err)
 		}

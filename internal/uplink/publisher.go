@@ -38,6 +38,9 @@ type Status struct {
 	Replaced    uint64    `json:"replaced"`          // features and health overtaken by newer ones before they were sent
 	Dropped     uint64    `json:"dropped,omitempty"` // offers given up because too many topics waited
 	Refused     uint64    `json:"refused,omitempty"` // outbox messages with a topic that MQTT does not allow, taken out unsent
+
+	CertUntil time.Time      `json:"cert_until,omitzero"` // when the first certificate of this connection, the broker's or the client's, ends
+	Commands  *CommandStatus `json:"commands,omitempty"`  // never changed, only replaced
 }
 
 // maxTopics bounds the offers that wait for a connection. A skid has one topic per throw and its health.
@@ -53,6 +56,10 @@ type Publisher struct {
 	order  []string // topics of latest, oldest offer first
 	health *Message // newest health ever offered: the first message of every connection
 	status Status
+
+	inbox   *inbox // nil: no commands
+	replies []Message
+	renew   bool
 }
 
 // New checks the configuration; it opens no connection and reads no file.
@@ -66,7 +73,11 @@ func New(cfg Config, box Outbox) (*Publisher, error) {
 	if cfg.unencrypted() {
 		cfg.Log.Warn("uplink: the password crosses the network unencrypted; use tls://", "broker", cfg.Broker)
 	}
-	return &Publisher{cfg: cfg, box: box, wake: make(chan struct{}, 1), latest: map[string]Message{}}, nil
+	p := &Publisher{cfg: cfg, box: box, wake: make(chan struct{}, 1), latest: map[string]Message{}}
+	if err := p.openInbox(); err != nil {
+		return nil, err
+	}
+	return p, nil
 }
 
 // Wake tells the publisher that the outbox has something new. It never blocks.
@@ -164,16 +175,24 @@ const steady = time.Minute
 // Run connects, publishes, and connects again until ctx ends. On a clean stop it gives the outbox a moment to empty
 // and says offline by itself.
 func (p *Publisher) Run(ctx context.Context) {
+	if p.inbox != nil {
+		done := make(chan struct{})
+		go func() { defer close(done); p.inbox.run(ctx) }()
+		defer func() { <-done }()
+	}
 	pause := p.cfg.RetryMin
 	for ctx.Err() == nil {
 		began := time.Now()
 		err := p.session(ctx)
 		p.note(func(s *Status) {
-			s.Connected, s.Since, s.LastError = false, time.Now().UTC(), ""
+			s.Connected, s.Since, s.LastError, s.CertUntil = false, time.Now().UTC(), "", time.Time{}
 			if err != nil && !errors.Is(err, context.Canceled) {
 				s.LastError = err.Error()
 			}
 		})
+		if p.inbox != nil {
+			p.inbox.heard(false, nil)
+		}
 		if ctx.Err() != nil {
 			return
 		}
@@ -220,6 +239,9 @@ func explain(broker string, err error) error {
 		return fmt.Errorf("uplink: %s refuses user or password (check both files and the broker's access list): %w", broker, err)
 	case errors.Is(err, packets.ErrorRefusedIDRejected):
 		return fmt.Errorf("uplink: %s refuses the client id: %w", broker, err)
+	}
+	if why := explainTLS(err); why != "" {
+		return fmt.Errorf("uplink: connect %s: %s: %w", broker, why, err)
 	}
 	return fmt.Errorf("uplink: connect %s: %w", broker, err)
 }

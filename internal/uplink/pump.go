@@ -2,7 +2,10 @@ package uplink
 
 import (
 	"context"
+	"crypto/tls"
 	"fmt"
+	"net"
+	"net/url"
 	"time"
 
 	mqtt "github.com/eclipse/paho.mqtt.golang"
@@ -20,21 +23,29 @@ func (p *Publisher) session(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
+	var until time.Time
 	if p.cfg.Offline != nil {
 		opt.SetBinaryWill(p.cfg.Topics.Health(), p.cfg.Offline(), 1, true)
 	}
 	lost := hearLoss(opt)
+	opt.SetCustomOpenConnectionFn(func(u *url.URL, o mqtt.ClientOptions) (net.Conn, error) {
+		return p.cfg.dial(o, u, func(st *tls.ConnectionState) { until = expiry(o.TLSConfig, st) })
+	})
+	opt.SetOrderMatters(true) // commands come in order, and a flood of them makes no goroutines; their handler never waits
 	c := mqtt.NewClient(opt)
 	if err := wait(ctx, c.Connect(), p.cfg.wait.connect+5*time.Second); err != nil {
 		c.Disconnect(0)
 		return explain(p.cfg.Broker, err)
 	}
 	p.note(func(s *Status) {
-		s.Connected, s.Since, s.LastError, s.Connections = true, time.Now().UTC(), "", s.Connections+1
+		s.Connected, s.Since, s.LastError, s.Connections, s.CertUntil = true, time.Now().UTC(), "", s.Connections+1, until
 	})
 	p.cfg.Log.Info("uplink: connected", "broker", p.cfg.Broker)
 
 	b := pump{p: p, c: c}
+	if p.inbox != nil {
+		b.asking = p.inbox.subscribe(c)
+	}
 	err = b.run(ctx, lost)
 	b.abandon()
 	if ctx.Err() != nil && p.cfg.Offline != nil { // a clean stop: the broker keeps the will to itself
@@ -68,6 +79,7 @@ type pump struct {
 	asked   bool            // for the standing alarms, once on this connection
 	renew   []Message       // standing alarms still to be sent
 	fresh   map[string]bool // retained topics that the outbox itself has sent on this connection: newer than any renewal
+	asking  mqtt.Token      // the subscription to commands, while it is not answered
 	stop    bool            // only the outbox is emptied, then the connection ends
 }
 
@@ -80,11 +92,13 @@ type flight struct {
 
 // run publishes in order until the connection fails or ctx ends. Alarms go first.
 func (b *pump) run(ctx context.Context, lost <-chan error) error {
-	b.fresh = map[string]bool{}
-	if m, ok := b.p.takeHealth(); ok {
-		if err := b.send(&b.others, m, true); err != nil {
-			return err
-		}
+	if err := b.birth(); err != nil {
+		return err
+	}
+	var granted <-chan struct{}
+	var ungranted <-chan time.Time
+	if b.asking != nil {
+		granted, ungranted = b.asking.Done(), time.After(b.p.cfg.wait.ack)
 	}
 	done := ctx.Done()
 	var drained <-chan time.Time
@@ -114,7 +128,18 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 			return fmt.Errorf("uplink: publish: no acknowledgement within %s", b.p.cfg.wait.ack)
 		case err := <-lost:
 			return fmt.Errorf("uplink: connection lost: %w", err)
+		case <-granted:
+			b.p.inbox.granted(b.asking)
+			granted, ungranted = nil, nil
+		case <-ungranted:
+			b.p.inbox.granted(nil)
+			granted, ungranted = nil, nil
 		case <-b.p.wake:
+			if b.p.takeRenew() {
+				if err := b.birth(); err != nil {
+					return err
+				}
+			}
 		case <-again:
 			b.again = time.Time{}
 			b.remove()
@@ -124,6 +149,16 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 			return ctx.Err()
 		}
 	}
+}
+
+// birth begins a connection, or begins it again when that is asked for: health first, and the standing alarms as soon as
+// the outbox is empty.
+func (b *pump) birth() error {
+	b.asked, b.renew, b.fresh = false, nil, map[string]bool{}
+	if m, ok := b.p.takeHealth(); ok {
+		return b.send(&b.others, m, true)
+	}
+	return nil
 }
 
 // next gives what completes when the front of each queue is acknowledged, and the time at which it is too late.
@@ -171,6 +206,15 @@ func (b *pump) fill() (empty bool, err error) {
 		if len(batch) == 0 {
 			empty = true
 			break
+		}
+	}
+	for len(b.others) < otherFlight {
+		m, ok := b.p.takeReply()
+		if !ok {
+			break
+		}
+		if err := b.send(&b.others, m, false); err != nil {
+			return empty, err
 		}
 	}
 	if b.stop || !empty && b.again.IsZero() {
@@ -293,8 +337,11 @@ func (b *pump) trouble(what string, err error) {
 func (b *pump) abandon() {
 	_ = b.settle()
 	for i := len(b.others) - 1; i >= 0; i-- {
-		if b.others[i].offer {
+		switch {
+		case b.others[i].offer:
 			b.p.giveBack(b.others[i].m)
+		case b.others[i].m.Topic == b.p.cfg.Topics.Receipt():
+			b.p.replyAgain(b.others[i].m)
 		}
 	}
 	b.boxed, b.others = nil, nil

@@ -14,6 +14,8 @@ import (
 //	standing/<subject>/<kind>   present state of an alarm that is not normal; retained; empty when it is normal again
 //	features/<throw>            condensed features, newest only
 //	health                      what the daemon knows of itself; retained; the last will says offline
+//	command                     orders of the control room to the daemon, if the skid file allows any
+//	receipt                     what became of each of them
 type Topics struct{ Root, Skid string }
 
 func (t Topics) base() string { return t.Root + "/" + t.Skid }
@@ -29,6 +31,12 @@ func (t Topics) Features(throw string) string { return t.base() + "/features/" +
 
 // Health is the retained topic of the daemon's own state and its last will.
 func (t Topics) Health() string { return t.base() + "/health" }
+
+// Command is the topic on which the daemon hears orders.
+func (t Topics) Command() string { return t.base() + "/command" }
+
+// Receipt is the topic of the answers to them.
+func (t Topics) Receipt() string { return t.base() + "/receipt" }
 
 func (t Topics) check() error {
 	if err := checkRoot(t.Root); err != nil {
