@@ -36,7 +36,7 @@ func TestSystemDemo(t *testing.T) {
 		}
 	}
 	room := strings.Join(received, "\n")
-	for _, want := range []string{`ALERT +quillmere-c1 +#\d+ +t1\.he\.suction/leaking`, `(?m)^ +vibration +\S`, `(?m)^ +pressure +\S`, `t1\.he\.suction \(suction valves, head end of t1\) leaking`,
+	for _, want := range []string{`ALERT +quillmere-c1 +#\d+ +t1\.he\.suction/leaking`, `(?m)^ +vibration +\S`, `(?m)^ +pressure +\S`, `t1\.he\.suction leaking \(suction valves, head end of t1\)`,
 		`raw samples protected as clip \S+`, `isolate, depressurise and lock out`, `health of quillmere-c1: running, watching`} {
 		if !regexp.MustCompile(want).MatchString(room) {
 			t.Errorf("the control room did not receive %s:\n%s", want, room)

@@ -149,7 +149,7 @@ func TestReview(t *testing.T) {
 	if err != nil {
 		t.Fatal(err, bad)
 	}
-	for _, want := range []string{"t1.he windows:  following", "baseline learnt from turns", "t1.he.suction/leaking", "(suction valves, head end of t1) leaking", "lock out"} {
+	for _, want := range []string{"t1.he windows:  following", "baseline learnt from turns", "t1.he.suction/leaking", "t1.he.suction leaking (suction valves, head end of t1)", "lock out"} {
 		if !strings.Contains(said, want) {
 			t.Errorf("the summary lacks %q:\n%s", want, said)
 		}
