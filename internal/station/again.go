@@ -49,7 +49,8 @@ type stateHead struct {
 
 const (
 	stateKind  = "line state 1"
-	stateEvery = 20 * time.Second // a clip begins up to so much earlier than it was asked to
+	stateEvery = 20 * time.Second // a clip begins up to so much earlier than it was asked to, or a sixth of what an alarm protects
+	mostStates = 6                // that reach back: each takes some megabytes
 	mostState  = 1 << 30
 )
 
@@ -71,7 +72,7 @@ func build() string {
 
 // states are the newest states of the line, oldest first.
 type states struct {
-	every time.Duration // between two; 0: stateEvery
+	every time.Duration // between two; 0: by what an alarm protects
 	pack  *zstd.Encoder
 	next  int64
 	kept  []takenState
@@ -94,7 +95,7 @@ func (k *states) note(end int64, rate float64, reach time.Duration, sk *skid.Ski
 	}
 	every := k.every
 	if every == 0 {
-		every = stateEvery
+		every = max(stateEvery, reach/mostStates)
 	}
 	k.next = end + int64(every.Seconds()*rate)
 	began := time.Now()

@@ -174,3 +174,27 @@ func parting(a, b string) string {
 	cut := func(s string) string { return s[max(0, min(i, len(s))-120):min(len(s), i+60)] }
 	return cut(a) + " … live: " + cut(b)
 }
+
+// However far back an alarm reaches, a handful of states is kept, and one of them is old enough.
+func TestStatesKept(t *testing.T) {
+	s := staffed(t)
+	for _, reach := range []time.Duration{0, 30 * time.Second, time.Hour} {
+		k, most := states{}, 0
+		total := 2*reach + 3*time.Minute
+		for at := time.Duration(0); at < total; at += 5 * time.Second {
+			end := int64(at.Seconds() * s.info.Rate)
+			if err := k.note(end, s.info.Rate, reach, s.sk, s.line, newHeld()); err != nil {
+				t.Fatal(err)
+			}
+			most = max(most, len(k.kept))
+			ask := max(0, end-int64(reach.Seconds()*s.info.Rate))
+			st, ok := k.before(ask)
+			if early := time.Duration(float64(ask-st.seq) / s.info.Rate * 1e9); !ok || early > max(stateEvery, reach/mostStates) {
+				t.Fatalf("reach %v, at %v: the state is %v older than asked for (there: %v)", reach, at, early, ok)
+			}
+		}
+		if most > mostStates+3 {
+			t.Errorf("reach %v: %d states in memory", reach, most)
+		}
+	}
+}
