@@ -9,7 +9,8 @@ import (
 )
 
 // Reference clips are what an event is held against later: one a day, of steady running, which gives way when the clips'
-// quota is full, and one with every baseline, which stays.
+// quota is full, and one with every baseline, which stays. Both stay apart from the clips of alarms: a healthy machine's
+// samples with the event in them would be no reference.
 const (
 	referenceLong  = 30 * time.Second
 	referenceID    = "reference-"
@@ -45,7 +46,7 @@ func (s *Station) reference(o *Output) {
 
 func (s *Station) cutReference(id, why, label string, o *Output) {
 	half := int64(referenceLong.Seconds() / 2 * s.info.Rate)
-	c, err := s.cut(tape.Clip{ID: id, Reason: why, From: max(s.first, o.Turn.Seq0-half), To: o.Turn.Seq1 + half})
+	c, err := s.cut(tape.Clip{ID: id, Reason: why, Apart: true, From: max(s.first, o.Turn.Seq0-half), To: o.Turn.Seq1 + half})
 	if err == nil && label != "" && c.Label == "" {
 		err = s.tape.Keep(c.ID, label)
 	}

@@ -17,7 +17,7 @@ var (
 	ErrBadSpan = errors.New("span is empty or of no run")
 )
 
-// Clip is a stretch of samples that the roll does not touch. Protect takes ID, Reason, AlarmID, Run, From, To and
+// Clip is a stretch of samples that the roll does not touch. Protect takes ID, Reason, AlarmID, Run, From, To, Apart and
 // State; the rest is filled in by the tape.
 type Clip struct {
 	ID      string `json:"id"`
@@ -26,6 +26,8 @@ type Clip struct {
 	Run     uint32 `json:"run"`                // 0 in Protect: the run being written
 	From    int64  `json:"from"`               // first sample number
 	To      int64  `json:"to"`                 // after the last; may lie in the future
+
+	Apart bool `json:"apart,omitempty"` // never merged with another one: what it shows must not be mixed
 
 	Label    string   `json:"label,omitempty"`     // given by Keep: such a clip is never released for room
 	Merged   []string `json:"merged,omitempty"`    // ids of overlapping clips that are in this one; they still find it
@@ -40,7 +42,7 @@ type Clip struct {
 
 // Protect asks for a clip. It returns when the wish is on disk; the samples are copied by the writer, and the clip is
 // complete when those up to To have come, after a restart too. A clip that overlaps or touches one of the same run is
-// merged into it as long as the two together are no longer than Options.ClipSpan: the clip returned then has the older
+// merged into it as long as the two together are no longer than Options.ClipSpan and neither is to stay apart: the clip returned then has the older
 // one's ID. Asking again with an ID that exists does no harm.
 //
 // The clips have their own bound. For room the oldest complete clip without a label is released; when only labelled
@@ -78,7 +80,7 @@ func (t *Tape) Protect(c Clip) (Clip, error) {
 		gone, c = append(gone, old.ID), united(*old, c)
 	}
 	for _, old := range t.sortedClips() {
-		if slices.Contains(gone, old.ID) || old.Run != c.Run || old.From > c.To || c.From > old.To ||
+		if c.Apart || old.Apart || slices.Contains(gone, old.ID) || old.Run != c.Run || old.From > c.To || c.From > old.To ||
 			max(old.To, c.To)-min(old.From, c.From) > t.opt.samples(t.opt.ClipSpan) {
 			continue
 		}

@@ -247,3 +247,28 @@ func TestAClipThatTheDiskRefusesIsShortAndTheTapeGoesOn(t *testing.T) {
 		t.Errorf("%+v", s)
 	}
 }
+
+// A clip that is to stay apart shares samples with others on the disk, and nothing else.
+func TestAClipThatStaysApart(t *testing.T) {
+	tp := open(t, t.TempDir(), small())
+	feed(tp, 0, 3000)
+	protect(t, tp, Clip{ID: "healthy", From: 0, To: 1000, Apart: true})
+	protect(t, tp, Clip{ID: "event", From: 400, To: 2000})
+	protect(t, tp, Clip{ID: "healthy too", From: 1500, To: 2500, Apart: true})
+	flush(t, tp)
+	bytes := tp.Stats().ClipLiveBytes
+	for id, want := range map[string][2]int64{"healthy": {0, 1000}, "event": {400, 2000}, "healthy too": {1500, 2500}} {
+		if c := clip(t, tp, id); c.ID != id || c.From != want[0] || c.To != want[1] || len(c.Merged) > 0 {
+			t.Errorf("%+v", c)
+		}
+		wantSamples(t, clipReader(tp, id), want[0], want[1])
+	}
+	if err := tp.Release("event"); err != nil {
+		t.Fatal(err)
+	}
+	wantSamples(t, clipReader(tp, "healthy"), 0, 1000)
+	wantSamples(t, clipReader(tp, "healthy too"), 1500, 2500)
+	if now := tp.Stats().ClipLiveBytes; now >= bytes || now < bytes*10/13-bytes/5 {
+		t.Errorf("%d bytes of clips, %d before", now, bytes)
+	}
+}
