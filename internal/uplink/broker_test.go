@@ -60,8 +60,9 @@ type hostile struct {
 	connects []*packets.ConnectPacket
 	got      []Message // publishes in the order of arrival
 	acked    map[string]bool
-	closed   int // DISCONNECT packets
-	pubacks  int // from the client
+	closed   int     // DISCONNECT packets
+	events   []event // CONNECT, PUBLISH, SUBSCRIBE and DISCONNECT as they came
+	pubacks  int     // from the client
 }
 
 func openHostile(t *testing.T, h *hostile) string {
@@ -100,6 +101,12 @@ func openHostile(t *testing.T, h *hostile) string {
 	return scheme + ln.Addr().String()
 }
 
+// event is a packet of connection n.
+type event struct {
+	n int
+	p packets.ControlPacket
+}
+
 // send writes to connection n as the broker would.
 func (h *hostile) send(n int, p packets.ControlPacket) {
 	h.mu.Lock()
@@ -126,6 +133,12 @@ func (h *hostile) serve(c net.Conn, n int) {
 		p, err := packets.ReadPacket(c)
 		if err != nil {
 			return
+		}
+		switch p.(type) {
+		case *packets.ConnectPacket, *packets.PublishPacket, *packets.SubscribePacket, *packets.DisconnectPacket:
+			h.mu.Lock()
+			h.events = append(h.events, event{n, p})
+			h.mu.Unlock()
 		}
 		switch p := p.(type) {
 		case *packets.ConnectPacket:
@@ -198,7 +211,7 @@ func (h *hostile) publish(c net.Conn, p *packets.PublishPacket) bool {
 		h.acked[string(p.Payload)] = true // before the client can know of it
 	}
 	h.mu.Unlock()
-	if a == ack || a == ackDrop {
+	if p.Qos > 0 && (a == ack || a == ackDrop) {
 		r := packets.NewControlPacket(packets.Puback).(*packets.PubackPacket)
 		r.MessageID = p.MessageID
 		_ = r.Write(c)

@@ -33,7 +33,8 @@ type Config struct {
 	// RetryMin and RetryMax bound the pause between attempts; zero: 1 s and 60 s (a listener: 2 s and 30 s).
 	RetryMin, RetryMax time.Duration
 	Log                *slog.Logger
-	Commands           *Commands // publisher only; nil: nobody gives orders over MQTT
+	Commands           *Commands  // publisher only; nil: nobody gives orders over MQTT
+	Sparkplug          *Sparkplug // publisher only; nil: the JSON dialect
 
 	wait limits
 	pace pace
@@ -44,6 +45,7 @@ type limits struct {
 	keepAlive, ping, connect, write time.Duration
 	ack                             time.Duration // without an acknowledgement
 	drain                           time.Duration // for the outbox at a clean stop
+	birth                           time.Duration // between two births of one connection
 }
 
 func (l *limits) fill() {
@@ -51,7 +53,7 @@ func (l *limits) fill() {
 		to  *time.Duration
 		def time.Duration
 	}{{&l.keepAlive, 30 * time.Second}, {&l.ping, 10 * time.Second}, {&l.connect, 10 * time.Second}, {&l.write, 5 * time.Second},
-		{&l.ack, 20 * time.Second}, {&l.drain, 2 * time.Second}} {
+		{&l.ack, 20 * time.Second}, {&l.drain, 2 * time.Second}, {&l.birth, time.Second}} {
 		if *f.to <= 0 {
 			*f.to = f.def
 		}

@@ -38,6 +38,7 @@ type Status struct {
 	Replaced    uint64    `json:"replaced"`          // features and health overtaken by newer ones before they were sent
 	Dropped     uint64    `json:"dropped,omitempty"` // offers given up because too many topics waited
 	Refused     uint64    `json:"refused,omitempty"` // outbox messages with a topic that MQTT does not allow, taken out unsent
+	Births      uint64    `json:"births,omitempty"`  // of Sparkplug: one a connection, and one whenever a host asks or a metric is new
 
 	CertUntil time.Time      `json:"cert_until,omitzero"` // when the first certificate of this connection, the broker's or the client's, ends
 	Commands  *CommandStatus `json:"commands,omitempty"`  // never changed, only replaced
@@ -57,7 +58,8 @@ type Publisher struct {
 	health *Message // newest health ever offered: the first message of every connection
 	status Status
 
-	inbox   *inbox // nil: no commands
+	inbox   *inbox   // nil: no commands
+	spark   *speaker // nil: the JSON dialect
 	replies []Message
 	renew   bool
 }
@@ -76,6 +78,12 @@ func New(cfg Config, box Outbox) (*Publisher, error) {
 	p := &Publisher{cfg: cfg, box: box, wake: make(chan struct{}, 1), latest: map[string]Message{}}
 	if err := p.openInbox(); err != nil {
 		return nil, err
+	}
+	if cfg.Sparkplug != nil {
+		var err error
+		if p.spark, err = newSpeaker(cfg.Sparkplug, cfg.Topics); err != nil {
+			return nil, err
+		}
 	}
 	return p, nil
 }

@@ -3,9 +3,11 @@ package uplink
 import (
 	"context"
 	"crypto/tls"
+	"errors"
 	"fmt"
 	"net"
 	"net/url"
+	"sync/atomic"
 	"time"
 
 	mqtt "github.com/eclipse/paho.mqtt.golang"
@@ -24,16 +26,31 @@ func (p *Publisher) session(ctx context.Context) error {
 		return err
 	}
 	var until time.Time
-	if p.cfg.Offline != nil {
+	var dialed atomic.Bool
+	switch {
+	case p.spark != nil:
+		w, err := p.spark.will()
+		if err != nil {
+			return err
+		}
+		opt.SetBinaryWill(w.Topic, w.Payload, 1, false)
+		defer p.spark.node.End()
+	case p.cfg.Offline != nil:
 		opt.SetBinaryWill(p.cfg.Topics.Health(), p.cfg.Offline(), 1, true)
 	}
 	lost := hearLoss(opt)
 	opt.SetCustomOpenConnectionFn(func(u *url.URL, o mqtt.ClientOptions) (net.Conn, error) {
-		return p.cfg.dial(o, u, func(st *tls.ConnectionState) { until = expiry(o.TLSConfig, st) })
+		conn, err := p.cfg.dial(o, u, func(st *tls.ConnectionState) { until = expiry(o.TLSConfig, st) })
+		dialed.Store(err == nil)
+		return conn, err
 	})
 	opt.SetOrderMatters(true) // commands come in order, and a flood of them makes no goroutines; their handler never waits
 	c := mqtt.NewClient(opt)
-	if err := wait(ctx, c.Connect(), p.cfg.wait.connect+5*time.Second); err != nil {
+	err = wait(ctx, c.Connect(), p.cfg.wait.connect+5*time.Second)
+	if p.spark != nil && dialed.Load() {
+		p.spark.sent()
+	}
+	if err != nil {
 		c.Disconnect(0)
 		return explain(p.cfg.Broker, err)
 	}
@@ -46,9 +63,19 @@ func (p *Publisher) session(ctx context.Context) error {
 	if p.inbox != nil {
 		b.asking = p.inbox.subscribe(c)
 	}
-	err = b.run(ctx, lost)
+	if p.spark != nil {
+		err = b.greet(ctx, lost)
+	}
+	if err == nil {
+		err = b.run(ctx, lost)
+	}
 	b.abandon()
-	if ctx.Err() != nil && p.cfg.Offline != nil { // a clean stop: the broker keeps the will to itself
+	switch {
+	case p.spark != nil:
+		if ctx.Err() != nil || errors.Is(err, errHostAway) {
+			b.leave()
+		}
+	case ctx.Err() != nil && p.cfg.Offline != nil: // a clean stop: the broker keeps the will to itself
 		c.Publish(p.cfg.Topics.Health(), 1, true, p.cfg.Offline()).WaitTimeout(p.cfg.wait.drain)
 	}
 	c.Disconnect(250)
@@ -76,11 +103,13 @@ type pump struct {
 	after   uint64
 	settled []uint64 // acknowledged by the broker, not yet removed from the outbox
 	again   time.Time
-	asked   bool            // for the standing alarms, once on this connection
-	renew   []Message       // standing alarms still to be sent
-	fresh   map[string]bool // retained topics that the outbox itself has sent on this connection: newer than any renewal
-	asking  mqtt.Token      // the subscription to commands, while it is not answered
-	stop    bool            // only the outbox is emptied, then the connection ends
+	asked   bool             // for the standing alarms, once on this connection
+	renew   []Message        // standing alarms still to be sent
+	fresh   map[string]bool  // retained topics that the outbox itself has sent on this connection: newer than any renewal
+	asking  mqtt.Token       // the subscription to commands, while it is not answered
+	rebirth <-chan time.Time // a host has asked for a birth, which comes then: no data until then
+	bornAt  time.Time
+	stop    bool // only the outbox is emptied, then the connection ends
 }
 
 type flight struct {
@@ -99,6 +128,10 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 	var ungranted <-chan time.Time
 	if b.asking != nil {
 		granted, ungranted = b.asking.Done(), time.After(b.p.cfg.wait.ack)
+	}
+	var bell <-chan struct{}
+	if b.p.spark != nil {
+		bell = b.p.spark.mail.bell
 	}
 	done := ctx.Done()
 	var drained <-chan time.Time
@@ -140,6 +173,14 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 					return err
 				}
 			}
+		case <-bell:
+			if err := b.answer(); err != nil {
+				return err
+			}
+		case <-b.rebirth:
+			if err := b.birth(); err != nil {
+				return err
+			}
 		case <-again:
 			b.again = time.Time{}
 			b.remove()
@@ -155,6 +196,9 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 // the outbox is empty.
 func (b *pump) birth() error {
 	b.asked, b.renew, b.fresh = false, nil, map[string]bool{}
+	if b.p.spark != nil {
+		return b.sayBirth()
+	}
 	if m, ok := b.p.takeHealth(); ok {
 		return b.send(&b.others, m, true)
 	}
@@ -182,6 +226,9 @@ func (b *pump) next() (box, other <-chan struct{}, late <-chan time.Time) {
 // fill sends what there is room for: the outbox, then once the standing alarms, then offers. empty says that the
 // outbox has nothing more to send now.
 func (b *pump) fill() (empty bool, err error) {
+	if b.rebirth != nil {
+		return false, nil
+	}
 	for len(b.boxed) < boxFlight && b.again.IsZero() && len(b.settled) < maxUnsettled {
 		batch, err := b.p.box.Next(b.after, boxFlight-len(b.boxed))
 		if err != nil {
@@ -199,12 +246,22 @@ func (b *pump) fill() (empty bool, err error) {
 			if m.Retain && (!b.asked || len(b.renew) > 0) {
 				b.fresh[m.Topic] = true
 			}
+			if b.p.spark != nil {
+				if err := b.say(b.p.spark.alarm(m)); err != nil {
+					return false, err
+				}
+			}
 			if err := b.send(&b.boxed, m, false); err != nil {
 				return false, err
 			}
 		}
 		if len(batch) == 0 {
 			empty = true
+			if b.p.spark != nil && err == nil {
+				if err := b.say(b.p.spark.caughtUp()); err != nil {
+					return true, err
+				}
+			}
 			break
 		}
 	}
@@ -229,6 +286,15 @@ func (b *pump) fill() (empty bool, err error) {
 		m, ok := b.p.takeLatest()
 		if !ok {
 			break
+		}
+		if b.p.spark != nil {
+			out, also := b.p.spark.offer(m)
+			if err := b.say(out); err != nil {
+				return empty, err
+			}
+			if !also {
+				continue
+			}
 		}
 		if err := b.send(&b.others, m, true); err != nil {
 			return empty, err
