@@ -236,7 +236,7 @@ func whole64(v float64) int64 {
 func (r *reader) uplink(o *object, sk *Skid) {
 	u := &sk.Uplink
 	s := o.section("uplink", "broker", "root", "client_id", "user_file", "password_file", "ca_file", "cert_file", "key_file",
-		"features_every_s", "health_every_s", "commands")
+		"features_every_s", "health_every_s", "commands", "dialect", "sparkplug")
 	if s == nil {
 		return
 	}
@@ -268,6 +268,7 @@ func (r *reader) uplink(o *object, sk *Skid) {
 	u.FeaturesEvery = seconds(s.numOr("features_every_s", bounds{1, 86400}, defaultFeatures))
 	u.HealthEvery = seconds(s.numOr("health_every_s", bounds{1, 86400}, defaultHealth))
 	r.commands(s, u)
+	r.dialect(s, sk)
 }
 
 func (r *reader) broker(s *object, raw string) {

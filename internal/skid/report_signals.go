@@ -88,6 +88,13 @@ func (p *page) edges(sk *Skid) {
 	if u := sk.Uplink; u.Broker != "" {
 		rows = append(rows, row("uplink", f("%s as %s, topics %s/%s/…", u.Broker, u.ClientID, u.Root, sk.ID)),
 			row("", f("features every %s, health every %s", u.FeaturesEvery, u.HealthEvery)))
+		if u.Dialect == DialectSparkplug {
+			said := f("Sparkplug B: edge node %s of group %s, a device for each throw", u.Sparkplug.Node, u.Sparkplug.Group)
+			if u.Sparkplug.PrimaryHost != "" {
+				said += f("; says nothing while the primary host %s is away", u.Sparkplug.PrimaryHost)
+			}
+			rows = append(rows, row("", said))
+		}
 		if len(u.Commands) > 0 {
 			rows = append(rows, row("", f("the control room may order: %s; the broker's access list must let nobody else write to %s/%s/command",
 				strings.Join(u.Commands, ", "), u.Root, sk.ID)))

@@ -204,6 +204,8 @@ type Uplink struct {
 	FeaturesEvery                                     time.Duration // condensed features, default 10 s
 	HealthEvery                                       time.Duration // default 30 s
 	Commands                                          []string      // orders that the control room may give over MQTT; empty: none
+	Dialect                                           string        // json or sparkplug
+	Sparkplug                                         Sparkplug     // with dialect sparkplug only
 }
 
 // Panel is the local page.
