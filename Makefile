@@ -93,6 +93,7 @@ NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox nod
 setup:
 	@missing=""; for n in $(NEED); do \
 	  PATH="$$PATH:/usr/sbin" command -v $${n%%:*} >/dev/null 2>&1 || missing="$$missing $${n##*:}"; done; \
+	/usr/bin/python3 -c 'import pymodbus.client' >/dev/null 2>&1 || missing="$$missing python3-pymodbus python3-serial-asyncio"; \
 	echo '#include <stdlib.h>' | gcc -E - >/dev/null 2>&1 || missing="$$missing libc6-dev"; \
 	[ -s /etc/ssl/certs/ca-certificates.crt ] || missing="$$missing ca-certificates"; \
 	if [ -n "$$missing" ]; then \

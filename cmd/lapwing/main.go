@@ -37,6 +37,7 @@ func root() *cobra.Command {
                  lapwing ack KEY          acknowledge; also reset, shelve, unshelve, out, back
                  lapwing journal          who did what, when and why
                  lapwing why SUBJECT      why something was found, or why nothing was
+                 lapwing registers FILE   the Modbus registers for the control system
   analyst        lapwing cut LABEL        protect the raw samples of the last seconds
                  lapwing pull CLIP        raw samples around an event, as WAV
                  lapwing review REC.wav   the same analysis again, offline
@@ -49,7 +50,7 @@ depressurise and lock out; follow site permits, local codes and licensed practic
 	}
 	cmd.AddCommand(checkCommand(), demoCommand(), reviewCommand(), rippleCommand(), datumCommand(), pullCommand(), chartCommand(), tablesCommand(), listenCommand(), alarmsCommand(), journalCommand(), whyCommand())
 	cmd.AddCommand(orderCommands()...)
-	cmd.AddCommand(baselineCommand())
+	cmd.AddCommand(baselineCommand(), registersCommand())
 	return cmd
 }
 

@@ -252,9 +252,13 @@ func (s *Station) publish(o *Output, at time.Time) {
 	}
 	n := &wire.Now{Skid: s.sk.ID, Name: s.sk.Name, Site: s.sk.Site, At: at, Latest: d.latest, Findings: d.findings,
 		Standing: d.standing(), Journal: slices.Clone(d.journal), Clips: s.clips(), Caution: wire.Caution}
+	points := d.points
 	d.mu.Unlock()
 	n.Health = s.health(at)
 	s.now.Store(n)
+	if s.registers != nil {
+		s.registers.Show(n, points.Points, points.Flood)
+	}
 	s.showLearning(at)
 	for i := range renewed {
 		if b, err := json.Marshal(renewed[i]); err == nil && s.pub != nil {
@@ -375,6 +379,9 @@ func (s *Station) health(at time.Time) wire.Health {
 	h.Tape = wire.TapeHealth{Bytes: st.LiveBytes, Limit: s.sk.Tape.MaxBytes, Oldest: st.OldestUTC, Newest: st.NewestUTC, Dropped: int64(st.QueueDroppedBlocks), Clips: st.Clips,
 		Problems: tapeTroubles(&st, s.info.Rate)}
 	h.Trouble = append(h.Trouble, h.Tape.Problems...)
+	if s.plant != nil {
+		h.Trouble = append(h.Trouble, s.plant.Troubles(time.Now())...)
+	}
 	if s.pub != nil {
 		st := s.pub.Status()
 		h.Uplink = st

@@ -21,6 +21,7 @@ import (
 	"lapwing/internal/duty"
 	"lapwing/internal/ledger"
 	"lapwing/internal/panel"
+	"lapwing/internal/plant"
 	"lapwing/internal/skid"
 	"lapwing/internal/tape"
 	"lapwing/internal/uplink"
@@ -59,6 +60,9 @@ type Station struct {
 	pub    *uplink.Publisher
 	panel  *panel.Panel
 	topics uplink.Topics
+
+	plant     *plant.Poller // nil: no process values over Modbus
+	registers *plant.Server // nil: no register map for others
 
 	now      atomic.Pointer[wire.Now]
 	progress atomic.Int64 // samples through the line
@@ -120,6 +124,9 @@ func Open(o Options) (_ *Station, err error) {
 		return nil, err
 	}
 	if s.src, s.proc, err = openSource(&o, s.sk, newest); err != nil {
+		return nil, err
+	}
+	if err := s.openPlant(); err != nil {
 		return nil, err
 	}
 	s.info = s.src.Info()
@@ -225,6 +232,9 @@ func (s *Station) baseline() (*duty.Baseline, error) {
 
 func (s *Station) openEdges() (err error) {
 	s.topics = uplink.Topics{Root: s.sk.Uplink.Root, Skid: s.sk.ID}
+	if err := s.openRegisters(); err != nil {
+		return err
+	}
 	s.publish(&Output{}, time.Time{})
 	broker := s.sk.Uplink.Broker
 	if s.o.Broker != "" {
@@ -292,6 +302,17 @@ func (s *Station) Run(ctx context.Context) error {
 		})
 		edges.Go(func() { <-inner.Done(); _ = s.panel.Close() })
 	}
+	if s.registers != nil {
+		edges.Go(func() {
+			if err := s.registers.Serve(); err != nil {
+				s.log.Error("Modbus server", "err", err)
+			}
+		})
+		edges.Go(func() { <-inner.Done(); _ = s.registers.Close() })
+	}
+	if s.plant != nil {
+		edges.Go(func() { s.plant.Run(inner) })
+	}
 	pubDone := make(chan struct{})
 	if s.pub != nil {
 		edges.Go(func() { s.pub.Run(inner); close(pubDone) })
@@ -339,7 +360,7 @@ func (s *Station) read(ctx context.Context, queue chan<- *parcel) error {
 		s.tape.Append(&b)
 		p := &parcel{block: cloneBlock(&b), rows: clock.rows(&b, s.info.Rate, s.proc)}
 		for _, r := range p.rows {
-			s.tape.Process(r.seq, r.proc)
+			s.tape.Process(r.seq, onTape(r.proc))
 		}
 		p.block.Lost += lostHere
 		if s.o.Fast {
@@ -472,6 +493,9 @@ func (s *Station) release() error {
 	}
 	if s.panel != nil {
 		errs = append(errs, s.panel.Close())
+	}
+	if s.registers != nil {
+		errs = append(errs, s.registers.Close())
 	}
 	if s.src != nil {
 		errs = append(errs, s.src.Close())
