@@ -42,7 +42,7 @@ func advice(c *trial, f *Finding) (settle, next []string) {
 			}
 		}
 		if f.Grade == Advisory {
-			next = append([]string{"One kind of signal only: watch it, do not open the machine on this alone."}, next...)
+			next = append([]string{"Not sure enough yet: watch it, do not open the machine on this alone."}, next...)
 		}
 	case ImpactingHard:
 		settle = []string{"See whether the same group starts to leak: a broken plate does.", "Look at the raw trace of the opening for extra hits."}
