@@ -148,7 +148,8 @@ func (x *examined) group(b *Baseline, end, g int) (Doubt, bool) {
 			continue
 		}
 		name := o.x.throwID() + part + "." + groupNames[g]
-		more := (area - their) / apartPercent
+		mine, others := x.perStroke(own, o.x, part)
+		more := (area*mine - their*others) / apartPercent
 		ev := []string{fmt.Sprintf("leak area reads %.1f %% of throughput, %s %.1f %%", area, name, their)}
 		say := func(scales float64, format string, a ...any) {
 			if scales >= witness {
@@ -168,6 +169,17 @@ func (x *examined) group(b *Baseline, end, g int) (Doubt, bool) {
 		}
 	}
 	return d, false
+}
+
+// perStroke gives what the areas of two ends, per cent of each end's own throughput, are to be taken times before they
+// are held against each other: wall heat goes with what an end sweeps, and an end with its pocket open delivers less of
+// that.
+func (x *examined) perStroke(own string, o *examined, part string) (mine, others float64) {
+	a, b := x.at(own, "ve_suction_percent"), o.at(part, "ve_suction_percent")
+	if !(a > 0 && b > 0) {
+		return 1, 1
+	}
+	return a / max(a, b), b / max(a, b)
 }
 
 // alone holds the groups of an end that has no like against each other. The rings of a single-acting cylinder leak as
