@@ -118,7 +118,7 @@
 //	mean_pressure_bar [bar, pressure] mean effective pressure: work over swept volume
 //		source: worked/ex2. there when: always. uncertain by: as indicated_power_kw
 //	ve_suction_percent [%, pressure] volumetric efficiency by suction: (V_trapped − V_opens)/V_swept; V_trapped where the compression line meets the suction plateau: it holds for early, full and late closing
-//		source: methods.md 1.1. there when: suction opening found. uncertain by: ve_suction_u_percent for the angle; turn 0.01 to 0.06 points
+//		source: methods.md 1.1. there when: suction opening and compression line found. uncertain by: ve_suction_u_percent for the angle; turn 0.01 to 0.06 points
 //	ve_discharge_percent [%, pressure] volumetric efficiency by discharge: (V_opens − V_clearance)/V_swept
 //		source: methods.md 1.1. there when: discharge opening found. uncertain by: ve_discharge_u_percent for the angle; clearance does not enter
 //	capacity_suction_kg_h [kg/h, pressure] capacity by suction: VE_s V_swept p_s/(Zs R Ts) n; suction plateau, line temperature
@@ -185,8 +185,8 @@
 //		source: DIN 1343, from memory. there when: gas and suction temperature known. uncertain by: as capacity_suction_kg_h
 //	capacity_discharge_nm3_h [Nm³/h, pressure] capacity by discharge as normal volume: likewise
 //		source: DIN 1343, from memory. there when: gas and a temperature known. uncertain by: as capacity_discharge_kg_h
-//	delivered_kg_h [kg/h, pressure] gas delivered, leaks taken off: capacity by suction less the room that the fitted leaks take: through the suction valves, and past rings and discharge valves while suction is open, by T/Ts of the leaking gas; signed as fitted
-//		source: mass balance of an end. there when: leak fit, gas and suction temperature known. uncertain by: median of 13 turns 1.6 % at 95 % on the model, see the figures above; a turn 0.3 to 0.9 %
+//	delivered_kg_h [kg/h, pressure] gas delivered: taken in by the end's energy balance, heat and leaks taken off: Δ(pV)/KV + (KV−1)/KV ∫p dV from the expansion to the compression line over Zs R Ts, less heat and leaks by a fit with priors to the bends of the closed strokes
+//		source: first law for an open system; Woschni 1967 (from memory) for the film's exponents. there when: both closed strokes found, gas and suction temperature known. uncertain by: delivered_u_percent; median of 13 turns 1.4 % at 95 % on the model, see the figures above; a turn 0.1 to 0.6 %
 //	delivered_nm3_h [Nm³/h, pressure] gas delivered as normal volume: as capacity_suction_nm3_h
 //		source: DIN 1343, from memory. there when: as delivered_kg_h. uncertain by: as delivered_kg_h
 //	isentropic_efficiency_percent [%, pressure] isentropic efficiency from line to line: delivered mass times the real gas's isentropic enthalpy rise between the lines, over indicated power
@@ -199,6 +199,8 @@
 //		source: first order. there when: as ve_suction_percent. uncertain by: –
 //	ve_discharge_u_percent [points, pressure] what the angle scale leaves open in ve_discharge_percent: likewise
 //		source: first order. there when: as ve_discharge_percent. uncertain by: –
+//	delivered_u_percent [%, pressure] what stays open in delivered_kg_h, of it: the standard deviation that the fit of heat and leaks leaves
+//		source: linear least squares with priors. there when: as delivered_kg_h. uncertain by: –
 //
 // # Features: leak path
 //

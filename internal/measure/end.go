@@ -298,14 +298,13 @@ func (m *Measurer) flows(c *throwCtx, e, at int, w *window.End) {
 	swept, clear := cyl.Swept(e), cyl.ClearanceVolume(e)
 	s, d := &w.W[window.SuctionOpens], &w.W[window.DischargeOpens]
 	veS, veD := math.NaN(), math.NaN()
-	if from := opened(s); math.IsNaN(from) {
+	if from, full := opened(s), w.Trapped[window.Compression]; math.IsNaN(from) {
 		c.dst.absent(at+eVeS, s.Why)
 		c.dst.absent(at+eVeSU, s.Why)
+	} else if math.IsNaN(full) { // the dead centre's would be up to twice too much under late closing
+		c.dst.absent(at+eVeS, whyTrapped)
+		c.dst.absent(at+eVeSU, whyTrapped)
 	} else {
-		full := w.Trapped[window.Compression]
-		if math.IsNaN(full) {
-			full = clear + swept
-		}
 		veS = (full - cyl.Volume(e, from)) / swept
 		c.dst.set(at+eVeS, veS)
 		c.dst.set(at+eVeSU, c.openingShare(e, from))

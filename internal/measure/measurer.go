@@ -57,6 +57,7 @@ type Measurer struct {
 	back   []float64
 	mix    mix
 	pairs  []mixture
+	in     takeIn
 }
 
 // shape caches the volumes of a throw's cylinder on the grid.
@@ -101,6 +102,7 @@ const (
 	whyNoPlateau    = "no plateau pressure"
 	whyNotDeliver   = "the end does not deliver"
 	whyFewPoints    = "closed stroke too short"
+	whyTrapped      = "no compression line: what suction traps is not known"
 	whyNoPrediction = "no prediction for a sealed cylinder"
 	whyNoDischargeT = "discharge temperature not known"
 	whyOtherEnd     = "the other end has no pressure channel"
