@@ -254,6 +254,7 @@ func (s *Station) openEdges() (err error) {
 		if err != nil {
 			return err
 		}
+		s.offerHealth() // the first message: or the last will's word would stand until health is due
 	}
 	listen := s.sk.Panel.Listen
 	if s.o.Listen != "" {

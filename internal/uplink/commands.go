@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"slices"
+	"strings"
 	"time"
 
 	mqtt "github.com/eclipse/paho.mqtt.golang"
@@ -191,6 +192,7 @@ func (in *inbox) take(ctx context.Context, m Received) {
 		in.retained = string(m.Payload)
 		err = errors.New("it is retained, so that it would come again with every connection: send commands without retain, and clear this topic")
 	case err != nil:
+		err = errors.New(strings.TrimPrefix(err.Error(), "wire: "))
 	case !slices.Contains(in.cmd.Allowed, c.Verb):
 		err = errors.New("this skid file does not allow it over MQTT (uplink.commands)")
 	}
