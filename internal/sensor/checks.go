@@ -12,6 +12,9 @@ const (
 	flatShare   = 0.9   // of a turn: no live signal, whatever its resolution
 	railRun     = 4     // samples at an extreme (same source)
 	railSame    = 2e-3  // of the peak-to-peak value: the same rail again
+	shelfQuiet  = 0.25  // of the least usual noise: what the amplifier cuts off has lost the transmitter's noise
+	shelfRun    = 16    // longest usual stretch of one code up to which the converter shows that noise at all
+	shelfLeast  = 20    // samples of a part from which its noise can be told
 	biasV       = 0.5   // V (same source), but not more than biasShare of full scale
 	biasShare   = 0.1
 	cableShare  = 0.6 // of the variance in mains lines (same source)
@@ -143,7 +146,7 @@ func (w *Watch) range_(c *watched, f *frame.Frame, raise func(Fault)) {
 }
 
 // rails: several samples at an extreme, and at the same one again. A pressure may stand still at its plateaus, so its
-// rail must be the converter's end, or beyond the valid range, or far longer than usual.
+// rail must be the converter's end, or beyond the valid range, or far longer than usual, or without the usual noise.
 func (w *Watch) rails(c *watched, raise func(Fault)) {
 	s := &c.scan
 	least := railRun
@@ -153,6 +156,10 @@ func (w *Watch) rails(c *watched, raise func(Fault)) {
 	full := c.FullV / c.PerCount
 	at := [2]float64{math.NaN(), math.NaN()}
 	for k, code := range [2]float64{float64(s.railHi), float64(s.railLo)} {
+		if level, flat := c.shelf(k); flat {
+			at[k] = level
+			continue
+		}
 		if [2]int{s.top, s.bottom}[k] < least {
 			continue
 		}
@@ -175,6 +182,15 @@ func (w *Watch) rails(c *watched, raise func(Fault)) {
 	if math.IsNaN(at[0]) && math.IsNaN(at[1]) && w.frames-c.ep[Clipped].tick[0] >= confirmWithin {
 		c.rail = at
 	}
+}
+
+// shelf: a pressure stands at its extreme for a sixteenth of a turn, flat, without the noise that it always had: an
+// amplifier that saturates below the converter's end, with the converter's own few counts on top.
+func (c *watched) shelf(side int) (level float64, flat bool) {
+	s := &c.scan
+	q := &s.flats[side]
+	return q.level, c.Kind == Pressure && c.levels.N > 0 && c.levels.Run <= shelfRun && s.n >= shelfLeast*parts &&
+		q.noise < shelfQuiet*c.levels.Quiet[0] && q.reach <= railSame*(float64(s.max)-float64(s.min))
 }
 
 func (w *Watch) long(run int, c *watched) bool {

@@ -126,6 +126,12 @@ func faultCases() []faultCase {
 		{name: "input range too small for a pressure", id: "p1h", want: Clipped, cat: OutOfSpecification, do: func(w *wire, a, b float64) {
 			w.change("p1h", a, b, func(_, v float64) float64 { return min(3.1*w.perV, v) })
 		}},
+		{name: "amplifier of a pressure saturates, with a few counts of noise", id: "p1h", want: Clipped, cat: OutOfSpecification, do: func(w *wire, a, b float64) {
+			w.change("p1h", a, b, func(_, v float64) float64 { return min(3.1*w.perV, v) + 4*quietNoise(w) })
+		}},
+		{name: "amplifier saturates at the low end, with a few counts of noise", id: "p1c", want: Clipped, cat: OutOfSpecification, do: func(w *wire, a, b float64) {
+			w.change("p1c", a, b, func(_, v float64) float64 { return max(1.9*w.perV, v) + 4*quietNoise(w) })
+		}},
 		{name: "open cable, 50 Hz", id: "a1", want: OpenCable, cat: Failure, do: func(w *wire, a, b float64) {
 			w.change("a1", a, b, func(t, _ float64) float64 { return w.hum(t, 50, 0.01) + 0.001*w.perV*w.r.NormFloat64() })
 		}},

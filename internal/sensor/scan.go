@@ -23,6 +23,14 @@ type scan struct {
 	first          float64 // share of the variance in the first harmonic of the turn
 	peak           float64 // where that harmonic peaks, degrees after the frame's mark
 	railHi, railLo int32   // codes of top and bottom
+	flats          [2]shelf
+}
+
+// shelf is the quietest stretch of two parts at an extreme, high or low.
+type shelf struct {
+	level float64 // code, mean
+	reach float64 // codes from its least to its greatest
+	noise float64 // white, rms; infinite when no stretch of this length stays near the extreme
 }
 
 // railShare is how near to the extreme a sample counts as standing at the rail, of the peak-to-peak value: an
@@ -58,7 +66,26 @@ func (s *scan) take(x []int32) {
 	}
 	s.quiet, s.white = math.Sqrt(third(&white)), math.Sqrt(sdd/n/6)
 	s.rails(x, &bottoms, &tops)
+	s.shelves(m.Base(), &bottoms, &tops, &means, &white)
 	s.harmonic(&means, v)
+}
+
+// shelves finds the quietest neighbours among the parts that stay near an extreme.
+func (s *scan) shelves(base float64, bottoms, tops *[parts]int32, means, white *[parts]float64) {
+	near := railSame * (float64(s.max) - float64(s.min))
+	for side := range s.flats {
+		q := shelf{level: math.NaN(), reach: math.NaN(), noise: math.Inf(1)}
+		for k := range parts - 1 {
+			hi, lo := float64(min(tops[k], tops[k+1])), float64(max(bottoms[k], bottoms[k+1]))
+			if side == 0 && hi < float64(s.max)-near || side == 1 && lo > float64(s.min)+near {
+				continue
+			}
+			if n := math.Sqrt(max(white[k], white[k+1])); n < q.noise {
+				q = shelf{base + (means[k]+means[k+1])/2, float64(max(tops[k], tops[k+1])) - float64(min(bottoms[k], bottoms[k+1])), n}
+			}
+		}
+		s.flats[side] = q
+	}
 }
 
 // third is the third smallest of a turn's parts: steadier than the smallest, and still away from the valves.

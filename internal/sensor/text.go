@@ -38,6 +38,11 @@ func (w *Watch) say(c *watched, k Fault) string {
 }
 
 func clippedAt(c *watched) float64 {
+	for side := range c.scan.flats {
+		if level, flat := c.shelf(side); flat {
+			return level
+		}
+	}
 	if c.scan.top >= c.scan.bottom {
 		return float64(c.scan.railHi)
 	}

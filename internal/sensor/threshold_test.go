@@ -23,6 +23,13 @@ func margins() []margin {
 	long := func(s *scan) float64 { return float64(max(s.top, s.bottom)) }
 	return []margin{
 		{"samples at an extreme", "one rail", railRun - 0.5, false, func(_ *Watch, c *watched) float64 { return long(&c.scan) }},
+		{"noise of a flat top over least usual", "amplifier of a pressure saturates, with a few counts of noise", shelfQuiet, true, func(_ *Watch, c *watched) float64 { return c.scan.flats[0].noise / c.levels.Quiet[0] }},
+		{"reach of a flat top over peak to peak", "amplifier of a pressure saturates, with a few counts of noise", railSame, true, func(_ *Watch, c *watched) float64 {
+			if c.scan.n == 0 || math.IsNaN(c.scan.flats[0].reach) {
+				return math.Inf(1)
+			}
+			return c.scan.flats[0].reach / (float64(c.scan.max) - float64(c.scan.min))
+		}},
 		{"longest one code, share of a turn", "transmitter stuck", flatShare, false, func(_ *Watch, c *watched) float64 { return float64(c.scan.run) / float64(c.scan.n) }},
 		{"longest one code, ms", "converter repeats codes for 6 ms of every 80", 1000 * flatFor, false, func(w *Watch, c *watched) float64 { return 1000 * float64(c.scan.run) / w.cfg.Rate }},
 		{"share of mains, quick", "open cable, 50 Hz", cableShare, false, func(w *Watch, c *watched) float64 {
