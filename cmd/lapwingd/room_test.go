@@ -150,7 +150,7 @@ func TestSystemControlRoom(t *testing.T) {
 
 // namesTheLeak: the alarm says which valve group, on pressure and vibration.
 func namesTheLeak(a said) bool {
-	if a.Subject != "t1.he.suction" || a.Kind != "leaking" || a.Detail == nil || !strings.Contains(a.Sentence, "(suction valves, head end of t1) leaking") {
+	if a.Subject != "t1.he.suction" || a.Kind != "leaking" || a.Detail == nil || !strings.Contains(a.Sentence, "t1.he.suction leaking (suction valves, head end of t1)") {
 		return false
 	}
 	has := func(class string) bool {

@@ -24,6 +24,26 @@ type Amount struct {
 	High  *float64 `json:"high,omitempty"`
 }
 
+// Trend is where a finding's size is going, in the unit of the amount that it is of (and per hour). It is absent while that is not known.
+type Trend struct {
+	Way     string   `json:"way"` // rising, steady, falling
+	Of      string   `json:"of"`  // the amount's name
+	PerHour *float64 `json:"per_hour,omitempty"`
+	Low     *float64 `json:"per_hour_low,omitempty"`
+	High    *float64 `json:"per_hour_high,omitempty"`
+	From    *float64 `json:"from,omitempty"`
+	To      *float64 `json:"to,omitempty"`
+	Over    *float64 `json:"over_s,omitempty"` // that it goes over
+}
+
+func fromTrend(t verdict.Trend) *Trend {
+	if t.Way == "" || t.Way == verdict.Unknown || t.Quantity == "" {
+		return nil
+	}
+	six := func(x float64) *float64 { return opt(figures(x, 6)) }
+	return &Trend{Way: string(t.Way), Of: t.Quantity, PerHour: six(t.PerHour), Low: six(t.Lo), High: six(t.Hi), From: six(t.From), To: six(t.To), Over: six(3600 * t.Hours)}
+}
+
 // Finding is a verdict.Finding as it goes over the wire and into the journal.
 type Finding struct {
 	Subject   string   `json:"subject"`
@@ -34,6 +54,7 @@ type Finding struct {
 	SinceTurn int64    `json:"since_turn"`
 	Turn      int64    `json:"turn"`
 	Amounts   []Amount `json:"amounts,omitempty"`
+	Trend     *Trend   `json:"trend,omitempty"`
 	Evidence  []Reason `json:"evidence"`
 	NotApart  []string `json:"cannot_tell_from,omitempty"`
 	Settle    []string `json:"to_settle_it,omitempty"`
@@ -46,7 +67,7 @@ func FromFinding(f *verdict.Finding, layout measure.Layout) Finding {
 	w := Finding{
 		Subject: f.Subject, Kind: f.Kind, Valve: f.Valve, Grade: f.Grade.String(), Odds: opt(round(f.Odds, 2)),
 		SinceTurn: f.SinceTurn, Turn: f.Turn, NotApart: f.Ambiguous, Settle: f.Settle, Next: f.Next, Sentence: f.Sentence,
-		Evidence: []Reason{},
+		Trend: fromTrend(f.Trend), Evidence: []Reason{},
 	}
 	for _, q := range f.Severity {
 		if x := opt(figures(q.Value, 6)); x != nil {
