@@ -132,6 +132,10 @@ func drawFinding(rt *rapid.T, l measure.Layout) *verdict.Finding {
 		Odds: wild().Draw(rt, "odds"), SinceTurn: 7, Turn: 90, Sentence: plain().Draw(rt, "sentence"),
 		Severity: []verdict.Quantity{{Name: "leak_area_mm2", Value: wild().Draw(rt, "area"), Lo: wild().Draw(rt, "lo"), Hi: wild().Draw(rt, "hi")}},
 	}
+	if w := rapid.SampledFrom([]verdict.Way{"", verdict.Unknown, verdict.Rising, verdict.Steady, verdict.Falling}).Draw(rt, "way"); w != "" {
+		f.Trend = verdict.Trend{Way: w, Quantity: rapid.SampledFrom([]string{"leak_area_mm2", ""}).Draw(rt, "of"), PerHour: wild().Draw(rt, "rate"), Lo: wild().Draw(rt, "rate lo"),
+			Hi: wild().Draw(rt, "rate hi"), From: wild().Draw(rt, "from"), To: wild().Draw(rt, "to"), Hours: math.Abs(wild().Draw(rt, "hours"))}
+	}
 	for range rapid.IntRange(0, 4).Draw(rt, "reasons") {
 		f.Evidence = append(f.Evidence, verdict.Evidence{Class: measure.Class(rapid.IntRange(0, 3).Draw(rt, "class")), Text: plain().Draw(rt, "text"), Feature: rapid.IntRange(-1, len(l)).Draw(rt, "feature"),
 			Value: wild().Draw(rt, "value"), Expected: wild().Draw(rt, "expected"), Z: wild().Draw(rt, "z"), LLR: wild().Draw(rt, "llr")})
@@ -153,6 +157,13 @@ func TestFinding(t *testing.T) {
 		}
 		if (len(back.Amounts) == 1) != finite(f.Severity[0].Value) {
 			rt.Fatalf("amount %v came back as %v", f.Severity[0].Value, back.Amounts)
+		}
+		known := f.Trend.Quantity != "" && f.Trend.Way != "" && f.Trend.Way != verdict.Unknown
+		if tr := back.Trend; (tr != nil) != known {
+			rt.Fatalf("trend %+v came back as %+v", f.Trend, tr)
+		} else if known && (tr.Way != string(f.Trend.Way) || tr.Of != f.Trend.Quantity || (tr.PerHour != nil) != finite(f.Trend.PerHour) ||
+			tr.PerHour != nil && !near(*tr.PerHour, f.Trend.PerHour, 1e-5) || (tr.Over != nil) != finite(3600*f.Trend.Hours)) {
+			rt.Fatalf("trend %+v came back as %+v", f.Trend, tr)
 		}
 		for i, e := range f.Evidence {
 			r := back.Evidence[i]
@@ -421,7 +432,7 @@ func TestUnitsInNames(t *testing.T) {
 	}
 	// numbers with a decimal point in our own structures: counts, turns and identifiers need no unit, these do
 	pure := map[string]bool{"confidence": true, "weight": true, "spreads": true,
-		"value": true, "expected": true, "low": true, "high": true} // the unit is in the feature's or amount's name beside them
+		"value": true, "expected": true, "low": true, "high": true, "per_hour": true, "per_hour_low": true, "per_hour_high": true, "from": true, "to": true} // the unit is in the feature's or amount's name beside them
 	var walk func(reflect.Type)
 	seen := map[reflect.Type]bool{}
 	walk = func(ty reflect.Type) {
