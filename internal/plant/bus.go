@@ -11,7 +11,7 @@ import (
 )
 
 const (
-	longestBackoff = 30 * time.Second // between two attempts at a device that does not answer
+	longestBackoff = 30 * time.Second // between two attempts at a device that does not answer; sixteen of its intervals where that is less
 	refusedAgain   = 5 * time.Minute  // until a register that a device does not have is asked for again: somebody may have changed it
 )
 
@@ -62,7 +62,7 @@ func (b *bus) run(ctx context.Context) {
 
 // backoff doubles from the usual interval on.
 func backoff(every time.Duration, fails int) time.Duration {
-	return max(every, min(longestBackoff, every<<min(fails-1, 20)))
+	return max(every, min(longestBackoff, every<<min(fails-1, 4)))
 }
 
 // jitter keeps many daemons from asking one gateway in step.
@@ -101,16 +101,15 @@ func (b *bus) round(ctx context.Context, d *device) error {
 		words, err := b.read(blk)
 		now := time.Now()
 		switch {
-		case len(blk.tags) == 0 && (refused(err) || exception(err)):
-			err = fmt.Errorf("the canary cannot be read, so nothing from this device is believed: %w", err)
+		case blk.guard != noGuard && (refused(err) || exception(err)):
+			err = fmt.Errorf("%s cannot be read, so nothing from this device is believed: %w", [...]string{canary: "the canary", heartbeat: "the heartbeat"}[blk.guard], err)
 			if b.serial {
 				b.close()
 			}
 			b.note(d, nil, err.Error())
 			return err
-		case err == nil && len(blk.tags) == 0:
-			if v, derr := decode(d.Canary.Type, d.Canary.Order, words); derr != nil || v != d.Canary.Is {
-				err = fmt.Errorf("the canary reads %g instead of %g: nothing from this device is believed", v, d.Canary.Is)
+		case err == nil && blk.guard != noGuard:
+			if err = d.watch(blk.guard, words, now); err != nil {
 				b.close()
 				b.forget(d, err.Error(), now)
 				return err
@@ -171,6 +170,28 @@ func (b *bus) round(ctx context.Context, d *device) error {
 		}
 	}
 	return first
+}
+
+// watch says what is wrong by a guard.
+func (d *device) watch(g guard, words []uint16, now time.Time) error {
+	if g == canary {
+		if v, err := decode(d.Canary.Type, d.Canary.Order, words); err != nil || v != d.Canary.Is {
+			return fmt.Errorf("the canary reads %g instead of %g: nothing from this device is believed", v, d.Canary.Is)
+		}
+		return nil
+	}
+	h := d.Heartbeat
+	v, err := decode(h.Type, h.Order, words)
+	if err != nil {
+		return fmt.Errorf("the heartbeat is no number: nothing from this device is believed")
+	}
+	if d.beatAt.IsZero() || v != d.beat {
+		d.beat, d.beatAt = v, now
+	}
+	if still := now.Sub(d.beatAt); still > h.Within {
+		return fmt.Errorf("the heartbeat stands still at %g: what is behind this device has stopped, and nothing from it is believed", v)
+	}
+	return nil
 }
 
 func (d *device) takeApart(i int) {

@@ -118,7 +118,7 @@ func (m *Map) draw(n *wire.Now, points []wire.Point, flood bool, beat uint16, ac
 			}
 		}
 		w[at+gValve] = valve(n.Findings, g)
-		m.fill(w[at+gValid:], member{g, withSubject(groupNumbers, g)}, rec)
+		m.fill(w[at+gValid:], member{g, withSubject(groupNumbers, g)}, rec, n.Findings)
 	}
 	for i := range m.ends {
 		at := endsAt + endSize*i
@@ -129,7 +129,7 @@ func (m *Map) draw(n *wire.Now, points []wire.Point, flood bool, beat uint16, ac
 		var own [4]uint16
 		m.alarms(own[:], []string{m.ends[i].subject}, points, judging)
 		w[at+1], w[at+2] = own[gState], own[gSeverity]
-		m.fill(w[at+3:], m.ends[i], rec)
+		m.fill(w[at+3:], m.ends[i], rec, nil)
 	}
 	for i := range m.throws {
 		at := throwsAt + throwSize*i
@@ -143,7 +143,7 @@ func (m *Map) draw(n *wire.Now, points []wire.Point, flood bool, beat uint16, ac
 		var own [4]uint16
 		m.alarms(own[:], []string{m.throws[i].subject, m.throws[i].subject + ".rings"}, points, judging)
 		w[at+2], w[at+3] = own[gState], own[gSeverity]
-		m.fill(w[at+4:], m.throws[i], rec)
+		m.fill(w[at+4:], m.throws[i], rec, nil)
 	}
 	for i, id := range m.channels {
 		w[channelsAt+i] = unknown
@@ -233,10 +233,14 @@ func valve(fs []wire.Finding, group string) uint16 {
 }
 
 // fill writes a validity register and the numbers behind it.
-func (m *Map) fill(w []uint16, of member, rec *wire.Turn) {
+func (m *Map) fill(w []uint16, of member, rec *wire.Turn, findings []wire.Finding) {
 	for i, n := range of.names {
 		v := quietNaN
-		if x, ok := numberOf(rec, n.subject, n.name); ok && !math.IsNaN(x) && math.Abs(x) <= math.MaxFloat32 {
+		x, ok := numberOf(rec, n.subject, n.name)
+		if name, found := strings.CutPrefix(n.name, foundPrefix); found {
+			x, ok = foundOf(findings, n.subject, name)
+		}
+		if ok && !math.IsNaN(x) && math.Abs(x) <= math.MaxFloat32 {
 			v = float32(x)
 			w[0] |= 1 << i
 		}
@@ -277,6 +281,21 @@ func endOf(rec *wire.Turn, subject string) *wire.TurnEnd {
 		}
 	}
 	return nil
+}
+
+// foundOf is an amount of the leak that is found at a subject.
+func foundOf(fs []wire.Finding, subject, name string) (float64, bool) {
+	for i := range fs {
+		if fs[i].Subject != subject || fs[i].Kind != "leaking" {
+			continue
+		}
+		for _, a := range fs[i].Amounts {
+			if a.Name == name {
+				return a.Value, true
+			}
+		}
+	}
+	return 0, false
 }
 
 // numberOf finds a measure in a turn record: of the throw, of an end, or of a leak path.

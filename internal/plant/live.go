@@ -23,7 +23,6 @@ func (p *Poller) At(base skid.Process, now time.Time) skid.Process {
 	for id, k := range base.Covers {
 		cover(&out, id, k)
 	}
-	stepless := false
 	for _, d := range p.devices {
 		st := d.state.Load()
 		for i := range d.Tags {
@@ -31,11 +30,9 @@ func (p *Poller) At(base skid.Process, now time.Time) skid.Process {
 			v, age, _, _ := current(t, &st.tags[i], st.link, now)
 			switch t.What {
 			case skid.PlantLoadStep:
-				if math.IsNaN(v) {
-					stepless = len(p.sk.Steps) > 1
-					continue
+				if !math.IsNaN(v) {
+					out.Step = int(v)
 				}
-				out.Step = int(v)
 			case skid.PlantSuctionPressure:
 				out.Stages[t.Stage].Ps = v
 			case skid.PlantDischargePressure:
@@ -52,7 +49,7 @@ func (p *Poller) At(base skid.Process, now time.Time) skid.Process {
 			}
 		}
 	}
-	if stepless {
+	if p.stepless(now) {
 		for i := range out.Stages {
 			out.Stages[i] = skid.Line{Ps: nan, Pd: nan, Ts: nan, Td: nan}
 		}
@@ -60,6 +57,20 @@ func (p *Poller) At(base skid.Process, now time.Time) skid.Process {
 	}
 	out.Known = anyKnown(&out)
 	return out
+}
+
+// stepless: of several load steps, it is not known which is in force.
+func (p *Poller) stepless(now time.Time) bool {
+	for _, d := range p.devices {
+		st := d.state.Load()
+		for i := range d.Tags {
+			if t := &d.Tags[i]; t.What == skid.PlantLoadStep {
+				v, _, _, _ := current(t, &st.tags[i], st.link, now)
+				return math.IsNaN(v) && len(p.sk.Steps) > 1
+			}
+		}
+	}
+	return false
 }
 
 // cover sets a cover temperature, or takes it out.
@@ -130,6 +141,9 @@ func (p *Poller) Troubles(now time.Time) (out []string) {
 			}
 			out = append(out, fmt.Sprintf("process values of %s (%s, unit %d) are not used %s: %s: %s", d.Name, d.URL, d.Unit, when, strings.Join(values[why], ", "), why))
 		}
+	}
+	if p.stepless(now) {
+		out = append(out, "process values: while the load step is not known, none of them is used; load step and pressures are read off the cylinders' traces")
 	}
 	return out
 }

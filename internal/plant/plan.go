@@ -18,11 +18,21 @@ const (
 type block struct {
 	function int
 	first, n int
-	tags     []int // indices of the device's tags in it; none: the canary
+	guard    guard
+	tags     []int // indices of the device's tags in it; none in a guard's
 }
 
-// plan groups a device's tags into as few requests as go with the bounds. The canary has one of its own and comes first,
-// so that nothing is believed before it was right.
+// guard is what a block is read for beside values.
+type guard int
+
+const (
+	noGuard guard = iota
+	canary
+	heartbeat
+)
+
+// plan groups a device's tags into as few requests as go with the bounds. The guards have blocks of their own and
+// come first, so that nothing is believed before they were right.
 func plan(d *skid.ModbusDevice) []block {
 	order := make([]int, len(d.Tags))
 	for i := range order {
@@ -34,7 +44,10 @@ func plan(d *skid.ModbusDevice) []block {
 	})
 	var out []block
 	if c := d.Canary; c != nil {
-		out = append(out, block{function: c.Function, first: c.Address, n: c.Words()})
+		out = append(out, block{function: c.Function, first: c.Address, n: c.Words(), guard: canary})
+	}
+	if h := d.Heartbeat; h != nil {
+		out = append(out, block{function: h.Function, first: h.Address, n: h.Words(), guard: heartbeat})
 	}
 	for _, i := range order {
 		t := &d.Tags[i]
@@ -42,7 +55,7 @@ func plan(d *skid.ModbusDevice) []block {
 		if t.Function <= 2 {
 			most, gap = mostBits, gapBits
 		}
-		if n := len(out); n > 0 && len(out[n-1].tags) > 0 && out[n-1].function == t.Function {
+		if n := len(out); n > 0 && out[n-1].guard == noGuard && out[n-1].function == t.Function {
 			b := &out[n-1]
 			end := max(b.first+b.n, t.Address+t.Words())
 			if t.Address <= b.first+b.n+gap && end-b.first <= most {

@@ -35,6 +35,8 @@ type device struct {
 	asked  []time.Time // by block: not to be asked again before; after the device has refused it
 	due    time.Time
 	fails  int // rounds without a good answer, in a row
+	beat   float64
+	beatAt time.Time // when the heartbeat was first seen at beat; zero: never seen
 	said   string
 }
 

@@ -124,6 +124,7 @@ func TestBadDevices(t *testing.T) {
 // A late answer on a line whose answers carry no number would be taken for the answer to the next question, and so on for
 // ever. Registers 10 and 30 cannot be asked for at once; the answer for 10 comes late once.
 func TestALateAnswerOnASerialLineShiftsNothing(t *testing.T) {
+	t.Parallel()
 	f := &fake{serial: true}
 	late := make(chan struct{}, 1)
 	f.script = func(n int, q request) reply {
@@ -164,6 +165,7 @@ func TestALateAnswerOnASerialLineShiftsNothing(t *testing.T) {
 }
 
 func TestTheCanaryTakesEverythingBack(t *testing.T) {
+	t.Parallel()
 	f := newFake(t, &fake{})
 	f.set(3, 10, 8000)
 	f.set(3, 0, 4711)
@@ -178,7 +180,42 @@ func TestTheCanaryTakesEverythingBack(t *testing.T) {
 	until(t, "the value is back", func() bool { return same(now(t, p).Stages[0].Ps, 8e5) })
 }
 
+// A gateway answers with the last values of a controller that has stopped: only a register that moves tells.
+func TestAHeartbeatThatStandsStill(t *testing.T) {
+	t.Parallel()
+	f := newFake(t, &fake{})
+	f.set(3, 10, 8000)
+	f.set(3, 0, 1)
+	beating := make(chan struct{})
+	var beat uint16
+	f.script = func(_ int, q request) reply {
+		select {
+		case <-beating:
+		default:
+			if q.first == 0 {
+				beat++
+				f.words[3<<16] = beat
+			}
+		}
+		return reply{}
+	}
+	p := polling(t, withModbus(t, one("tcp://"+f.addr(), "      heartbeat: {function: 3, address: 0, within_s: 0.3}\n", tagPs)))
+	until(t, "the value is there", func() bool { return same(now(t, p).Stages[0].Ps, 8e5) })
+	until(t, "and has been read often", func() bool { return len(f.requests()) > 12 })
+	if !same(now(t, p).Stages[0].Ps, 8e5) {
+		t.Error("gone, with a heart that beats")
+	}
+	close(beating)
+	until(t, "the value has gone", func() bool { return math.IsNaN(now(t, p).Stages[0].Ps) })
+	if said := strings.Join(p.Troubles(time.Now()), ""); !strings.Contains(said, "heartbeat stands still at") {
+		t.Errorf("%q", said)
+	}
+	f.set(3, 0, 9999)
+	until(t, "the value is back, if only for a while", func() bool { return same(now(t, p).Stages[0].Ps, 8e5) })
+}
+
 func TestStaleValuesLeaveAreNamedAndComeBack(t *testing.T) {
+	t.Parallel()
 	f := newFake(t, &fake{})
 	f.set(3, 10, 8000)
 	f.set(3, 11, 22000)
@@ -237,6 +274,7 @@ func TestEachValueHasAnAgeOfItsOwn(t *testing.T) {
 }
 
 func TestAValueThatIsNotBelievedIsGoneAtOnce(t *testing.T) {
+	t.Parallel()
 	f := newFake(t, &fake{})
 	f.set(3, 10, 8000)
 	f.set(4, 0, 1)

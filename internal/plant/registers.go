@@ -57,10 +57,18 @@ type member struct {
 // named is one number: a value of the newest turn record.
 type named struct{ subject, name, unit, meaning string }
 
-var groupNumbers = []named{
-	{name: "leak_area_mm2", unit: "mm²", meaning: "effective leak area, of the newest turn"},
-	{name: "leak_percent", unit: "%", meaning: "gas through it, per cent of the group's throughput"},
+var pathNumbers = []named{
+	{name: "leak_area_mm2", unit: "mm²", meaning: "effective leak area, of the newest turn; single turns scatter"},
+	{name: "leak_percent", unit: "%", meaning: "gas through it, per cent of the path's throughput"},
 }
+
+// foundPrefix marks a number of a finding that stands, by the name of its amount.
+const foundPrefix = "found_"
+
+var groupNumbers = append(slices.Clone(pathNumbers),
+	named{name: foundPrefix + "leak_area_mm2", unit: "mm²", meaning: "of the leak that is found, above the healthy machine's; not known while none is"},
+	named{name: foundPrefix + "leak_percent", unit: "%", meaning: "likewise, per cent of the group's throughput"},
+	named{name: foundPrefix + "lost_power_kw", unit: "kW", meaning: "spent on the gas that goes round"})
 
 var endNumbers = []named{
 	{name: "p_suction_bar_abs", unit: "bar", meaning: "suction plateau in the cylinder"},
@@ -187,7 +195,7 @@ func NewMap(sk *skid.Skid) *Map {
 		m.add(at+3, 1, "u16", th.ID, "alarm_severity", "", severityMeaning)
 		numbers := slices.Clone(throwNumbers)
 		if th.Ends[crank.HE].Works && th.Ends[crank.CE].Works {
-			for _, n := range groupNumbers {
+			for _, n := range pathNumbers {
 				numbers = append(numbers, named{th.ID + ".rings", n.name, n.unit, n.meaning})
 			}
 		}

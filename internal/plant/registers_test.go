@@ -112,7 +112,7 @@ func TestTheTableSaysWhatTheImageHolds(t *testing.T) {
 		"unacknowledged": 1, "standing": 2, "standing_advisory": 1, "standing_alert": 1, "standing_danger": 0, "alarm_flood": 1,
 		"channels_not_good": 1, "troubles": 1, "turns": 70001, "turns_not_valid": 3, "speed_rpm": 740.5, "speed_known": 1, "time_s": 1767225600,
 		"t1.he.suction state": 2, "t1.he.suction severity": 2, "t1.he.suction kind": 1, "t1.he.suction open_points": 1, "t1.he.suction valve": 2,
-		"t1.he.suction known": 3, "t1.he.suction leak_area_mm2": 12.5, "t1.he.suction leak_percent": 1.75,
+		"t1.he.suction known": 1 | 2 | 4 | 16, "t1.he.suction found_leak_area_mm2": 11.25, "t1.he.suction found_lost_power_kw": 0.5, "t1.he.suction found_leak_percent": math.NaN(), "t1.he.suction leak_area_mm2": 12.5, "t1.he.suction leak_percent": 1.75,
 		"t1.he.discharge state": 1, "t1.he.discharge known": 0, "t1.he.discharge leak_area_mm2": math.NaN(),
 		"t1.ce.suction state": 5, "t1.ce.suction severity": 0,
 		"t1.he state": 1, "t1.he p_suction_bar_abs": 8.125, "t1.he ratio_plateau": math.NaN(), "t1.he known": 1, "t1.he alarm_state": 1,
@@ -137,12 +137,13 @@ func TestTheTableSaysWhatTheImageHolds(t *testing.T) {
 	}
 }
 
+// What was measured goes with the turns; what was found stands on.
 func TestAMachineThatStandsHasNoMeasures(t *testing.T) {
 	m := NewMap(machine(t, "biomethane-two-throw.yaml"))
 	n, points := snapshot()
 	n.Health.State, n.Health.RPM = "standstill", nil
 	w := m.draw(n, points, false, 1, false).words
-	if w[groupsAt+gValid] != 0 || w[groupsAt+gNumbers] != 0x7FC0 || w[rRPMValid] != 0 || w[groupsAt] != 2 {
+	if w[groupsAt+gValid] != 4|16 || w[groupsAt+gNumbers] != 0x7FC0 || w[rRPMValid] != 0 || w[groupsAt] != 2 {
 		t.Errorf("% x", w[groupsAt:groupsAt+groupSize])
 	}
 }
@@ -153,7 +154,7 @@ func snapshot() (*wire.Now, []wire.Point) {
 	n := &wire.Now{At: time.Date(2026, 1, 1, 0, 0, 0, 0, time.UTC), Health: wire.Health{State: "running", Learned: true, Turns: 70001, BadTurns: 3, RPM: &rpm, Trouble: []string{"x"},
 		Channels: []wire.Channel{{ID: "p1h", State: "good"}, {ID: "a1", State: "failure"}}},
 		Standing: []wire.Alarm{{Key: "t1.he.suction/leaking", Severity: "alert"}, {Key: "t1/reversal", Severity: "advisory"}},
-		Findings: []wire.Finding{{Subject: "t1.he.suction", Kind: "leaking", Valve: "t1.he.s2"}},
+		Findings: []wire.Finding{{Subject: "t1.he.suction", Kind: "leaking", Valve: "t1.he.s2", Amounts: []wire.Amount{{Name: "leak_area_mm2", Value: 11.25}, {Name: "lost_power_kw", Value: 0.5}}}},
 		Latest: &wire.Turn{Type: "turn", Valid: true, Throws: []wire.TurnThrow{{ID: "t1", Duty: "steady", Step: 2, Values: map[string]float64{"rod_load_max_kn": 55.5},
 			Ends:  []wire.TurnEnd{{End: "he", State: "following", Values: map[string]float64{"p_suction_bar_abs": 8.125}}},
 			Paths: map[string]map[string]float64{"t1.he.suction": {"leak_area_mm2": 12.5, "leak_percent": 1.75}, "t1.rings": {"leak_area_mm2": -0.5}}}}},

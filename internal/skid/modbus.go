@@ -20,6 +20,7 @@ type ModbusDevice struct {
 	WorstAnswer               time.Duration // how late an answer can still come in: so long a serial line rests after an error
 	CAFile, CertFile, KeyFile string        // tcp+tls only
 	Canary                    *ModbusCanary // nil: none
+	Heartbeat                 *ModbusBeat   // nil: none
 	Tags                      []ModbusTag
 }
 
@@ -27,6 +28,13 @@ type ModbusDevice struct {
 type ModbusCanary struct {
 	Register
 	Is float64
+}
+
+// ModbusBeat is a register that moves while what stands behind the device is alive: a gateway goes on answering with the
+// last values of a controller that has stopped. When it stands still for longer, nothing from the device is believed.
+type ModbusBeat struct {
+	Register
+	Within time.Duration
 }
 
 // Register is a value's place in a device and its form there.

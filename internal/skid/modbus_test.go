@@ -88,6 +88,7 @@ func TestModbusMistakes(t *testing.T) {
 		"an address list of words":       {"[192.0.2.7, 198", "[office, 198", "office", "server.allow[0]", "neither", "198.51.100.0/24"},
 		"anybody may acknowledge":        {"    allow: [192.0.2.7, 198.51.100.0/24]\n", "", "", "server.acknowledge", "anybody who reaches", "allow"},
 		"half a certificate":             {"acknowledge: yes", "acknowledge: yes\n    cert_file: c.pem", "", "server", "half of a TLS", "key_file"},
+		"a heartbeat seen too rarely":    {"canary: {function: 3, address: 0, is: 4711}", "heartbeat: {function: 3, address: 0, within_s: 1}", "1}", "devices[0].heartbeat.within_s", "not read often enough", "more than 2 s"},
 		"a canary that says nothing":     {"is: 4711", "order: abcd", "", "devices[0].canary.is", "missing", "is"},
 		"a device without tags":          {", tags: [{value: t1.he.d1.cover, function: 4, address: 0, unit: k}]", "", "", "devices[1].tags", "missing", "list the tags"},
 		"a misspelt key":                 {"every_s: 1\n", "evry_s: 1\n", "evry_s", "devices[0].evry_s", "unknown key", "every_s"},

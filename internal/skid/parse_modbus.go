@@ -69,7 +69,7 @@ func (r *reader) modbus(o *object, sk *Skid) {
 
 func (r *reader) device(sk *Skid, n *yaml.Node, path string, given map[string]string) *ModbusDevice {
 	s := r.object(n, path, "name", "url", "unit", "baud", "data_bits", "stop_bits", "parity", "timeout_ms", "every_s", "worst_answer_ms",
-		"ca_file", "cert_file", "key_file", "canary", "tags")
+		"ca_file", "cert_file", "key_file", "canary", "heartbeat", "tags")
 	if s == nil {
 		return nil
 	}
@@ -98,6 +98,9 @@ func (r *reader) device(sk *Skid, n *yaml.Node, path string, given map[string]st
 	r.certificates(s, d)
 	if s.has("canary") {
 		d.Canary = r.canary(s)
+	}
+	if s.has("heartbeat") {
+		d.Heartbeat = r.heartbeat(s, d)
 	}
 	for i, n := range s.list("tags", 1, mostTags, true, tagFix) {
 		t := r.tag(sk, n, fmt.Sprintf("%s.tags[%d]", path, i), d)
@@ -223,6 +226,22 @@ func (r *reader) canary(o *object) *ModbusCanary {
 		return nil
 	}
 	return &ModbusCanary{g, is}
+}
+
+func (r *reader) heartbeat(o *object, d *ModbusDevice) *ModbusBeat {
+	s := o.sub("heartbeat", false, "function", "address", "type", "order", "within_s")
+	if s == nil {
+		return nil
+	}
+	g, ok := r.register(s)
+	within := s.numOr("within_s", bounds{0.2, 600}, math.Max(defaultMaxAge, 3*d.Every.Seconds()))
+	if least := d.Every + d.Timeout; within <= least.Seconds() {
+		s.wrong("within_s", fmt.Sprintf("write more than %s s (every_s and timeout_ms of the device)", short(least.Seconds())), "it is not read often enough to be seen moving within %s s", short(within))
+	}
+	if !ok || math.IsNaN(within) {
+		return nil
+	}
+	return &ModbusBeat{g, seconds(within)}
 }
 
 func (r *reader) tag(sk *Skid, n *yaml.Node, path string, d *ModbusDevice) *ModbusTag {

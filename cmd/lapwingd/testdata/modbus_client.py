@@ -1,4 +1,5 @@
-# An independent Modbus client (pymodbus, from Debian) for the system tests.
+# An independent Modbus client and device (pymodbus, from Debian) for the system tests.
+#   modbus_client.py serve PORT ADDRESS VALUE        a device with one holding register, RTU frames over TCP
 #   modbus_client.py look PORT PAGE FIRST:COUNT...   registers and page of one moment, as JSON
 #   modbus_client.py write PORT COIL                 a coil set to 1
 import json
@@ -9,6 +10,16 @@ import urllib.request
 from pymodbus.client import ModbusTcpClient
 
 what, port = sys.argv[1], int(sys.argv[2])
+if what == "serve":
+    from pymodbus.datastore import ModbusSequentialDataBlock, ModbusServerContext, ModbusSlaveContext
+    from pymodbus.server import StartTcpServer
+    from pymodbus.transaction import ModbusRtuFramer
+
+    block = ModbusSequentialDataBlock(int(sys.argv[3]), [int(sys.argv[4])])
+    context = ModbusServerContext(slaves={3: ModbusSlaveContext(hr=block, zero_mode=True)}, single=False)
+    StartTcpServer(context=context, framer=ModbusRtuFramer, address=("127.0.0.1", port))
+    sys.exit(0)
+
 client = ModbusTcpClient("127.0.0.1", port=port, timeout=30)
 if not client.connect():
     sys.exit("no connection")
