@@ -39,7 +39,7 @@ const (
 //	GET /api/v1/baselines/{id}    one of them as the file that lapwing baseline import and lapwing review take
 //	POST /api/v1/baselines        such a file, to wait for a person's word; by, reason and other_skid=yes in the query;
 //	                              guarded and answered as an order
-func learning(mux *http.ServeMux, src Source, log *slog.Logger) {
+func learning(mux router, src Source, log *slog.Logger) {
 	l, ok := src.(Learner)
 	if !ok {
 		return

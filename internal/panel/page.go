@@ -1,9 +1,7 @@
 package panel
 
 import (
-	"crypto/sha256"
-	_ "embed"
-	"encoding/base64"
+	"embed"
 	"fmt"
 	"html/template"
 	"strconv"
@@ -13,30 +11,56 @@ import (
 	"lapwing/internal/wire"
 )
 
-//go:embed page.html
-var pageHTML string
+//go:embed pages
+var files embed.FS
 
-// styleHash lets the one style block through the content security policy.
-var styleHash = func() string {
-	_, rest, _ := strings.Cut(pageHTML, "<style>")
-	css, _, _ := strings.Cut(rest, "</style>")
-	sum := sha256.Sum256([]byte(css))
-	return base64.StdEncoding.EncodeToString(sum[:])
+// pages are the templates by name; each has its own main in the common layout.
+var pages = func() map[string]*template.Template {
+	base := template.Must(template.New("layout").Funcs(template.FuncMap{
+		"clock":     clock,
+		"iso":       func(t time.Time) string { return t.UTC().Format(time.RFC3339Nano) },
+		"num":       num,
+		"fig":       fig,
+		"mib":       func(b int64) string { return fmt.Sprintf("%.1f MiB", float64(b)/(1<<20)) },
+		"val":       val,
+		"tone":      tone,
+		"condition": condition,
+		"mark":      mark,
+		"words":     inWords,
+		"unit":      unit,
+		"amount":    amount,
+		"join":      func(s []string) string { return strings.Join(s, ", ") },
+		"semi":      func(s []string) string { return strings.Join(s, "; ") },
+		"weight":    weight,
+		"keepable":  func(c wire.Clip) bool { return c.Complete && !c.From.IsZero() && c.To.After(c.From) },
+		"dict": func(_ string, a act, _ string, key string) map[string]any {
+			return map[string]any{"Act": a, "Key": key}
+		},
+	}).ParseFS(files, "pages/layout.html"))
+	out := map[string]*template.Template{}
+	for _, name := range []string{"machine", "cylinder", "findings", "journal", "tape", "channels", "channel"} {
+		out[name] = template.Must(template.Must(base.Clone()).ParseFS(files, "pages/"+name+".html"))
+	}
+	return out
 }()
 
-var page = template.Must(template.New("page").Funcs(template.FuncMap{
-	"clock":     clock,
-	"num":       num,
-	"mib":       func(b int64) string { return fmt.Sprintf("%.1f MiB", float64(b)/(1<<20)) },
-	"val":       val,
-	"tone":      tone,
-	"condition": condition,
-	"mark":      mark,
-	"words":     inWords,
-	"unit":      unit,
-	"amount":    amount,
-	"join":      func(s []string) string { return strings.Join(s, ", ") },
-}).Parse(pageHTML))
+// fig writes a value in four figures.
+func fig(p *float64) string {
+	if p == nil {
+		return "–"
+	}
+	return strings.Replace(strconv.FormatFloat(*p, 'g', 4, 64), "-", "−", 1)
+}
+
+// weight is what a class of evidence weighs in a hypothesis.
+func weight(c wire.WhyCase, class string) string {
+	for _, k := range c.Classes {
+		if k.Class == class {
+			return num(k.Median)
+		}
+	}
+	return "–"
+}
 
 func clock(t time.Time) string {
 	if t.IsZero() {

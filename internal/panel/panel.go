@@ -26,7 +26,6 @@
 package panel
 
 import (
-	"bytes"
 	"context"
 	"encoding/json"
 	"errors"
@@ -70,6 +69,9 @@ type Panel struct {
 	ln    net.Listener
 	srv   *http.Server
 	pulls *pulls
+
+	ended chan struct{} // closed once: pages stop listening
+	once  sync.Once
 }
 
 // Open binds the address, which must be loopback.
@@ -93,8 +95,9 @@ func Open(listen string, src Source, log *slog.Logger) (*Panel, error) {
 		log = slog.New(slog.DiscardHandler)
 	}
 	pulls := newPulls(src, log)
-	p := &Panel{ln: ln, pulls: pulls, srv: &http.Server{
-		Handler:           guard(routesWith(src, pulls, log)),
+	ended := make(chan struct{})
+	p := &Panel{ln: ln, pulls: pulls, ended: ended, srv: &http.Server{
+		Handler:           guard(routesWith(src, pulls, log, ended)),
 		ReadHeaderTimeout: 5 * time.Second, ReadTimeout: 10 * time.Second, WriteTimeout: 30 * time.Second, IdleTimeout: time.Minute, MaxHeaderBytes: 16 << 10,
 		ErrorLog: slog.NewLogLogger(log.Handler(), slog.LevelDebug),
 	}}
@@ -117,6 +120,7 @@ func (p *Panel) Close() error {
 	ctx, cancel := context.WithTimeout(context.Background(), 2*time.Second)
 	defer cancel()
 	defer p.pulls.close()
+	p.once.Do(func() { close(p.ended) })
 	if err := p.srv.Shutdown(ctx); err != nil {
 		return p.srv.Close()
 	}
@@ -129,12 +133,15 @@ func loopback(host string) bool {
 	return strings.EqualFold(host, "localhost") || ip != nil && ip.IsLoopback()
 }
 
+// contentPolicy lets pages load nothing but what this server has, and run nothing but its own script file.
+const contentPolicy = "default-src 'none'; style-src 'self'; script-src 'self'; img-src 'self'; connect-src 'self'; form-action 'self'; frame-ancestors 'none'; base-uri 'none'"
+
 // guard refuses what a browser on this machine could be tricked into: foreign host names, writes, and requests to the
 // API that another site's page makes.
 func guard(next http.Handler) http.Handler {
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
 		h := w.Header()
-		h.Set("Content-Security-Policy", "default-src 'none'; style-src 'sha256-"+styleHash+"'; frame-ancestors 'none'; base-uri 'none'; form-action 'none'")
+		h.Set("Content-Security-Policy", contentPolicy)
 		h.Set("X-Content-Type-Options", "nosniff")
 		h.Set("Referrer-Policy", "no-referrer")
 		h.Set("Cross-Origin-Resource-Policy", "same-origin")
@@ -158,7 +165,7 @@ func guard(next http.Handler) http.Handler {
 			http.Error(w, "read only", http.StatusMethodNotAllowed)
 			return
 		}
-		if r.Header.Get("Sec-Fetch-Site") == "cross-site" && r.URL.Path != "/" {
+		if r.Header.Get("Sec-Fetch-Site") == "cross-site" && (strings.HasPrefix(r.URL.Path, "/api/") || r.URL.Path == "/metrics") {
 			http.Error(w, "not for other sites' pages", http.StatusForbidden)
 			return
 		}
@@ -167,23 +174,26 @@ func guard(next http.Handler) http.Handler {
 }
 
 func routes(src Source, log *slog.Logger) http.Handler {
-	return routesWith(src, newPulls(src, log), log)
+	return routesWith(src, newPulls(src, log), log, make(chan struct{}))
 }
 
-func routesWith(src Source, pulls *pulls, log *slog.Logger) http.Handler {
+func routesWith(src Source, pulls *pulls, log *slog.Logger, ended chan struct{}) http.Handler {
 	mux := http.NewServeMux()
-	var seen newest
-	mux.HandleFunc("GET /{$}", func(w http.ResponseWriter, r *http.Request) {
-		n := src.Now()
-		var b bytes.Buffer
-		if err := page.Execute(&b, arrange(n, seen.age(n, time.Now()))); err != nil {
-			log.Error("panel: page", "err", err)
-			http.Error(w, "the page could not be drawn; see the log", http.StatusInternalServerError)
-			return
-		}
-		w.Header().Set("Content-Type", "text/html; charset=utf-8")
-		_, _ = w.Write(b.Bytes())
-	})
+	routeAll(mux, src, pulls, log, ended)
+	return mux
+}
+
+// routeAll tells the mux of every page and of the whole API.
+func routeAll(mux router, src Source, pulls *pulls, log *slog.Logger, ended chan struct{}) {
+	seen := &newest{}
+	s := &site{src: src, seen: seen, log: log}
+	if l, ok := src.(Looker); ok {
+		s.look = &looking{pics: newPictures(l), log: log}
+		s.look.routes(mux)
+	}
+	s.routes(mux)
+	mux.HandleFunc("GET /api/v1/events", newStream(src, seen, ended).serve)
+	mux.HandleFunc("GET /api/v1/openapi.json", openAPI)
 	mux.HandleFunc("GET /api/v1/now", func(w http.ResponseWriter, r *http.Request) {
 		n := *src.Now()
 		n.Findings, n.Standing, n.Journal, n.Clips = list(n.Findings), list(n.Standing), list(n.Journal), list(n.Clips)
@@ -203,6 +213,7 @@ func routesWith(src Source, pulls *pulls, log *slog.Logger) http.Handler {
 		w.Header().Set("Content-Type", "application/schema+json")
 		_, _ = w.Write(b)
 	})
+
 	mux.HandleFunc("GET /api/v1/why", why(src, log))
 	mux.HandleFunc("GET /api/v1/journal", journal(src, log))
 	mux.HandleFunc("POST "+ordersPath, order(src, log))
@@ -210,7 +221,6 @@ func routesWith(src Source, pulls *pulls, log *slog.Logger) http.Handler {
 	pulls.routes(mux)
 	c := clipper{src: src, log: log, busy: make(chan struct{}, exports)}
 	mux.HandleFunc("GET /api/v1/clips/{id}", c.send)
-	return mux
 }
 
 // newest remembers since when a snapshot has been the newest one, as far as the page was asked for: a line that stands

@@ -172,7 +172,7 @@ func TestGuard(t *testing.T) {
 				t.Errorf("status %d, want %d", resp.StatusCode, c.want)
 			}
 			for k, want := range map[string]string{"X-Content-Type-Options": "nosniff", "Referrer-Policy": "no-referrer", "Cache-Control": "no-store", "Cross-Origin-Resource-Policy": "same-origin",
-				"Content-Security-Policy": "default-src 'none'; style-src 'sha256-" + styleHash + "'; frame-ancestors 'none'; base-uri 'none'; form-action 'none'"} {
+				"Content-Security-Policy": "default-src 'none'; style-src 'self'; script-src 'self'; img-src 'self'; connect-src 'self'; form-action 'self'; frame-ancestors 'none'; base-uri 'none'"} {
 				if got := resp.Header.Get(k); got != want {
 					t.Errorf("%s is %q, want %q", k, got, want)
 				}

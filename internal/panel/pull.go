@@ -52,7 +52,7 @@ func newPulls(src Puller, log *slog.Logger) *pulls {
 	return &pulls{src: src, log: log, now: time.Now, held: map[string]*heldPull{}}
 }
 
-func (p *pulls) routes(mux *http.ServeMux) {
+func (p *pulls) routes(mux router) {
 	mux.HandleFunc("GET /api/v1/pull", p.ask)
 	mux.HandleFunc("GET /api/v1/pull/{key}/{file}", p.file)
 }

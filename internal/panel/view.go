@@ -3,6 +3,9 @@ package panel
 import (
 	"encoding/json"
 	"fmt"
+	"maps"
+	"math"
+	"slices"
 	"strings"
 	"time"
 
@@ -16,6 +19,7 @@ type view struct {
 	Cards  []card
 	Seen   []wire.Finding // findings behind no standing alarm
 	Valves []throwMap
+	Others []wire.Channel // channels of no throw
 }
 
 // banner is the one line that is read from across the room.
@@ -36,6 +40,9 @@ type card struct {
 	Where   string // the subject in words
 	State   string
 	For     string // how long it has stood; empty: not known
+
+	Cylinder string // the throw to look at, if any
+	Acts     []act
 }
 
 // throwMap is one throw drawn as a table: ends down, valve groups across.
@@ -44,6 +51,7 @@ type throwMap struct {
 	Step     int
 	Whole    cell // what concerns the throw as a whole
 	Rows     []mapRow
+	Sensors  []wire.Channel
 }
 
 type mapRow struct {
@@ -57,6 +65,8 @@ type cell struct {
 	Class string
 	Words string
 	Opens string // where it opens and the window that follows it
+
+	Covers string // cover temperatures of its valves
 }
 
 // arrange prepares a snapshot that has been the newest one for age.
@@ -66,7 +76,8 @@ func arrange(n *wire.Now, age time.Duration) view {
 	for i := range n.Standing {
 		a := &n.Standing[i]
 		alarmed[a.Key] = true
-		v.Cards = append(v.Cards, card{Alarm: *a, Finding: findingOf(n, a), Where: inWords(a.Subject), State: stateInWords(a.To), For: lasted(a.At, n.At)})
+		v.Cards = append(v.Cards, card{Alarm: *a, Finding: findingOf(n, a), Where: inWords(a.Subject), State: stateInWords(a.To), For: lasted(a.At, n.At),
+			Cylinder: throwOf(n, a.Subject), Acts: actsFor(a.To)})
 	}
 	for i := range n.Findings {
 		if f := &n.Findings[i]; !alarmed[f.Subject+"/"+f.Kind] {
@@ -77,6 +88,22 @@ func arrange(n *wire.Now, age time.Duration) view {
 		for i := range n.Latest.Throws {
 			v.Valves = append(v.Valves, drawThrow(n, &n.Latest.Throws[i]))
 		}
+	}
+	mine := func(c *wire.Channel, throw string) bool {
+		return c.Place == throw || strings.HasPrefix(c.Place, throw+".")
+	}
+	for i := range n.Health.Channels {
+		c, of := n.Health.Channels[i], -1
+		for k := range v.Valves {
+			if mine(&c, v.Valves[k].ID) {
+				of = k
+			}
+		}
+		if of < 0 {
+			v.Others = append(v.Others, c)
+			continue
+		}
+		v.Valves[of].Sensors = append(v.Valves[of].Sensors, c)
 	}
 	return v
 }
@@ -274,6 +301,7 @@ func drawThrow(n *wire.Now, t *wire.TurnThrow) throwMap {
 					c.Opens = fmt.Sprintf("opens at %.1f°, window %.1f° to %.1f°", *ev.Angle, ev.Window[0], ev.Window[1])
 				}
 			}
+			c.Covers = strings.Join(covers(t, base+group[:1]), "; ")
 			row.Cells[g] = c
 		}
 		m.Rows = append(m.Rows, row)
@@ -308,3 +336,34 @@ func quiet(n *wire.Now, end string) (class, words string) {
 	}
 	return "good", "no alarm"
 }
+
+// covers tells the cover temperatures of one valve group, valve by valve.
+func covers(t *wire.TurnThrow, prefix string) (out []string) {
+	for _, id := range slices.Sorted(maps.Keys(t.Paths)) {
+		c, ok := t.Paths[id]["cover_c"]
+		if !ok || !strings.HasPrefix(id, prefix) || !digits(id[len(prefix):]) {
+			continue
+		}
+		s := fmt.Sprintf("%s cover %.0f °C", id[strings.LastIndex(id, ".")+1:], c)
+		if d, ok := t.Paths[id]["cover_above_group_k"]; ok {
+			s += strings.Replace(fmt.Sprintf(", %+.0f K", math.Round(d)+0), "-", "−", 1) // + 0: no minus zero
+		}
+		out = append(out, s)
+	}
+	return out
+}
+
+// throwOf is the throw of the newest turn that a subject belongs to; empty when it is none's.
+func throwOf(n *wire.Now, subject string) string {
+	if n.Latest != nil {
+		for i := range n.Latest.Throws {
+			if id := n.Latest.Throws[i].ID; wire.Within(subject, id) {
+				return id
+			}
+		}
+	}
+	return ""
+}
+
+// Owner is throwOf for the pages.
+func (v *view) Owner(subject string) string { return throwOf(v.Now, subject) }

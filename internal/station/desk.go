@@ -93,6 +93,7 @@ func (d *desk) note(a wire.Alarm) {
 func (s *Station) take(o *Output) error {
 	err := s.book(o)
 	s.reference(o)
+	s.portray(o)
 	s.publish(o, o.At)
 	if s.o.OnTurn != nil && o.Record.Type != "" {
 		s.o.OnTurn(&o.Record)

@@ -70,6 +70,7 @@ type Station struct {
 	desk     desk
 	states   states
 
+	gallery    *gallery
 	referenced referenced
 	learning   learningDesk
 	orders     chan *request
@@ -171,6 +172,7 @@ func (s *Station) openLine() error {
 	}
 	s.line.crew = newCrew()
 	s.line.reasons = newReasons(len(s.sk.Throws))
+	s.gallery = newGallery(len(s.sk.Throws))
 	s.line.marked = func(turn int64, at float64) { s.tape.Mark(tape.Mark{Turn: turn, At: at}) }
 	if s.o.OnTurn == nil {
 		s.line.records = Newest
@@ -443,6 +445,7 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		if err := s.line.Add(&p.block, emit); err != nil {
 			return fmt.Errorf("station: line: %w", err)
 		}
+		s.overhear(&p.block)
 		s.progress.Add(int64(p.block.N))
 		end := p.block.Seq0 + int64(p.block.N)
 		s.pass(p.block.Seq0, end)
