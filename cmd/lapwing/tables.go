@@ -54,6 +54,7 @@ skids written to one folder are one table. Times are UTC.`,
 	f.StringVar(&what, "what", "measures,events,alarms", "tables, separated by commas: "+strings.Join(station.TableNames, ", "))
 	f.StringVar(&o.Review.ProcessCSV, "process", "", "process values over time (CSV); without it the skid file's")
 	f.StringVar(&learn, "learn", "", "turns declared healthy, FIRST:END (END not included)")
+	f.BoolVar(&o.Review.Cold, "cold", false, "start without the state beside a pulled clip, as lapwing review --cold does")
 	f.StringVar(&o.Review.Baseline, "baseline", "", "baseline file to judge by (JSON), instead of learning")
 	_ = cmd.MarkFlagRequired("skid")
 	_ = cmd.MarkFlagRequired("to")

@@ -16,6 +16,8 @@ const (
 	litres   = 1e3
 )
 
+const windowKey = "\nwindows: solid edge, event found in this turn; broken edge, moved by the model; stroke, where it was found; triangle, where valves that seal would do it"
+
 // Angle draws cylinder pressures over crank angle, below them the valves' windows in one lane an end, and below these
 // each accelerometer on the same axis.
 func Angle(p Picture, o Options) (*Drawing, error) {
@@ -23,7 +25,7 @@ func Angle(p Picture, o Options) (*Drawing, error) {
 	if err != nil {
 		return nil, err
 	}
-	d, err := newDrawing(o, now.Name+": pressure and vibration over crank angle", now.About, 240, 110+28*float64(len(now.Vib)))
+	d, err := newDrawing(o, now.Name+": pressure and vibration over crank angle", now.About+windowKey, 240, 110+28*float64(len(now.Vib)))
 	if err != nil {
 		return nil, err
 	}
@@ -176,7 +178,7 @@ func (d *Drawing) pressures(p Picture, from, to float64) (*plot.Plot, error) {
 	if s.empty() {
 		return nil, fmt.Errorf("chart: %s has no pressure in this turn", p.Turns[0].Name)
 	}
-	pl.Y.Min, pl.Y.Max = s.wide(.04, .2)
+	pl.Y.Min, pl.Y.Max = s.wide(.04, .38) // the legend stands above the curves
 	d.frame(pl, true)
 	now := &p.Turns[0]
 	for e, end := range now.Ends {
@@ -195,6 +197,7 @@ func (d *Drawing) pressures(p Picture, from, to float64) (*plot.Plot, error) {
 			break
 		}
 	}
+	pl.Add(backing{d.p.ground})
 	return pl, nil
 }
 

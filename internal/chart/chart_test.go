@@ -70,7 +70,7 @@ func all() []drawer {
 		{"angle", func(o chart.Options) (*chart.Drawing, error) { return chart.Angle(p, o) },
 			[]string{"pressure, bar abs", "a1, g peak", "head end", "crank end", "reference", "1 more turns", "s opens", "d closes (shared)", "crank angle after head-end dead centre, degrees"}},
 		{"pv", func(o chart.Options) (*chart.Drawing, error) { return chart.PV(p, o) }, []string{"volume, litres", "pressure, bar abs"}},
-		{"logpv", func(o chart.Options) (*chart.Drawing, error) { return chart.LogPV(p, o) }, []string{"compression n = 1.300"}},
+		{"logpv", func(o chart.Options) (*chart.Drawing, error) { return chart.LogPV(p, o) }, []string{"HE compression n = 1.300", "CE compression n = 1.300"}},
 		{"load", func(o chart.Options) (*chart.Drawing, error) { return chart.RodLoad(p, o) },
 			[]string{"reversal 150°, lesser peak 80 % of the greater", "rated", "gas alone", "load, kN (compression of the rod is positive)"}},
 		{"trend", tr.Over, []string{"expected at this duty, ±3 spreads", "alert: t1.he.suction leaking", "UTC, from 2031-05-04 03:02:01"}},
@@ -233,5 +233,32 @@ func TestTrendSpans(t *testing.T) {
 		if err := d.Write(io.Discard, chart.SVG); err != nil {
 			t.Errorf("%v: %v", span, err)
 		}
+	}
+}
+
+// Two turns out of a thousand that a load step has spoilt do not flatten the rest: they run off the axis, and are counted.
+func TestALoneValueDoesNotFlattenATrend(t *testing.T) {
+	t0 := time.Date(2031, 5, 4, 3, 2, 1, 0, time.UTC)
+	tr := chart.Trend{Title: "t1.he.suction/leak_area_mm2", Unit: "leak area, mm²"}
+	for i := range 1000 {
+		v := chart.TrendPoint{At: t0.Add(time.Duration(i) * time.Second), Value: 2 + float64(i%3), Expected: math.NaN(), Spread: math.NaN()}
+		if i == 300 || i == 600 {
+			v.Value = 500
+		}
+		tr.Points = append(tr.Points, v)
+	}
+	d, err := tr.Over(chart.Options{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if y := d.Areas[0].Y; y[1] > 10 || y[0] > 2 || y[1] < 4 {
+		t.Errorf("axis from %g to %g", y[0], y[1])
+	}
+	var svg bytes.Buffer
+	if err := d.Write(&svg, chart.SVG); err != nil {
+		t.Fatal(err)
+	}
+	if !strings.Contains(svg.String(), "2 of 1000 values lie beyond the axis") {
+		t.Error("the chart does not say what it leaves out")
 	}
 }

@@ -51,7 +51,7 @@ func RodLoad(p Picture, o Options) (*Drawing, error) {
 	if p.Reference != nil && p.Reference.Load != nil {
 		s.all(p.Reference.Load.Pin, kN)
 	}
-	pl.Y.Min, pl.Y.Max = s.wide(.05, .18)
+	pl.Y.Min, pl.Y.Max = s.wide(.05, .38) // the legend stands above the curves
 	for _, r := range signs(l.Pin) { // where the rod is pulled
 		pl.Add(box{x0: now.Lo + r[0]*now.Step, x1: now.Lo + r[1]*now.Step, y0: pl.Y.Min, y1: 0, fill: thin(d.p.end[0], .1)})
 	}
@@ -76,6 +76,7 @@ func RodLoad(p Picture, o Options) (*Drawing, error) {
 	if len(limits) > 0 {
 		pl.Legend.Add("rated", rated)
 	}
+	pl.Add(backing{d.p.ground})
 	d.rows = []row{{name: "load_kn", plot: pl, share: 1}}
 	d.lay(draw.New(nowhere(d)), false)
 	return d, nil

@@ -112,6 +112,8 @@ type label struct {
 	style text.Style
 	dx    vg.Length
 	dy    vg.Length
+
+	ground color.Color // under the words; nil: none
 }
 
 // Plot implements plot.Plotter.
@@ -127,8 +129,32 @@ func (l label) Plot(c draw.Canvas, p *plot.Plot) {
 		at.X = min(max(at.X, c.Min.X+w/2), c.Max.X-w/2)
 	case draw.XLeft:
 		at.X = min(at.X, c.Max.X-w)
+	case draw.XRight:
+		at.X = max(at.X, c.Min.X+w+2)
+	}
+	if l.ground != nil {
+		box := l.style.Rectangle(l.text).Add(at)
+		c.FillPolygon(l.ground, []vg.Point{box.Min, {X: box.Max.X, Y: box.Min.Y}, box.Max, {X: box.Min.X, Y: box.Max.Y}})
 	}
 	c.FillText(l.style, at, l.text)
+}
+
+// backing lies under the legend, so that no line runs through its words. It is the last thing added to a panel.
+type backing struct{ ground color.Color }
+
+// Plot implements plot.Plotter.
+func (b backing) Plot(c draw.Canvas, p *plot.Plot) {
+	r := p.Legend.Rectangle(c)
+	if r.Size().X <= 0 || r.Size().Y <= 0 {
+		return
+	}
+	const edge = 2
+	x0, x1 := c.Min.X, c.Min.X+r.Size().X+edge // the library's rectangle lies on the other side than its legend
+	if !p.Legend.Left {
+		x0, x1 = c.Max.X-r.Size().X-edge, c.Max.X
+	}
+	y0, y1 := r.Min.Y-2*edge, c.Max.Y
+	c.FillPolygon(b.ground, []vg.Point{{X: x0, Y: y0}, {X: x1, Y: y0}, {X: x1, Y: y1}, {X: x0, Y: y1}})
 }
 
 // pointer is a small hollow triangle that points up at a place from below.

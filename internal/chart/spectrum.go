@@ -36,11 +36,14 @@ func (s Spectrum) Draw(o Options) (*Drawing, error) {
 	pl.Y.Min = math.Max(y.lo/2, pl.Y.Max*1e-6)
 	pl.Y.Tick.Marker = powers{}
 	for _, b := range s.Bands {
-		pl.Add(box{x0: b[0] / 1000, x1: b[1] / 1000, y0: nan, y1: nan, fill: thin(d.p.end[0], .1)})
+		band := box{x0: b[0] / 1000, x1: b[1] / 1000, y0: nan, y1: nan, fill: thin(d.p.end[0], .1)}
+		pl.Add(band)
+		pl.Legend.Add("in use, "+plain(b[0]/1000)+" to "+plain(b[1]/1000)+" kHz", box{fill: thin(d.p.end[0], .25)})
 	}
 	d.p.thinGrid(pl, true, true)
 	pl.Add(curve{x: func(i int) float64 { return s.Hz[i] / 1000 }, y: func(i int) float64 { return math.Max(s.Density[i], pl.Y.Min) }, n: len(s.Hz),
 		style: draw.LineStyle{Color: d.p.ink, Width: vg.Points(.8)}})
+	pl.Add(backing{d.p.ground})
 	d.rows = []row{{name: "spectrum", plot: pl, share: 1}}
 	d.lay(draw.New(nowhere(d)), false)
 	return d, nil

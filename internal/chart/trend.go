@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"time"
 
 	"gonum.org/v1/plot"
@@ -25,11 +26,7 @@ func (t Trend) Over(o Options) (*Drawing, error) {
 	pl := d.p.blank()
 	pl.Y.Label.Text = t.Unit
 	pl.Y.Tick.Marker = few(6)
-	s := noSpan()
-	for _, p := range t.Points {
-		s.take(p.Value)
-		s.take(p.Expected)
-	}
+	s := t.most()
 	if s.empty() {
 		return nil, fmt.Errorf("chart: %s was not known at any time asked for", t.Title)
 	}
@@ -44,6 +41,15 @@ func (t Trend) Over(o Options) (*Drawing, error) {
 		pl.X.Max = 1
 	}
 	pl.Y.Min, pl.Y.Max = s.wide(.06, .25)
+	beyond := 0
+	for _, p := range t.Points {
+		if p.Value < pl.Y.Min || p.Value > pl.Y.Max {
+			beyond++
+		}
+	}
+	if beyond > 0 {
+		d.about += fmt.Sprintf("\n%d of %d values lie beyond the axis", beyond, len(t.Points))
+	}
 	pl.X.Tick.Marker = clock{zero}
 	pl.X.Label.Text = "UTC, from " + zero.UTC().Format("2006-01-02 15:04:05")
 	band := thin(d.p.end[0], .16)
@@ -65,17 +71,57 @@ func (t Trend) Over(o Options) (*Drawing, error) {
 		pl.Legend.Add("expected at this duty, ±3 spreads", box{fill: thin(d.p.end[0], .4)})
 	}
 	pl.Legend.Left = true
+	var marks []label
 	for k, m := range t.Marks {
 		c := d.p.severity[min(max(m.Severity, 0), 3)]
 		if m.Severity < 1 {
 			c = hex(0x8a9299)
 		}
-		pl.Add(rules{x: []float64{at(m.At)}, style: draw.LineStyle{Color: c, Width: vg.Points(1.2)}})
-		pl.Add(label{x: at(m.At), y: pl.Y.Max, text: m.Text, style: d.p.words(7.5, c, draw.XLeft, draw.YTop), dx: vg.Points(3), dy: -vg.Points(2 + 9*float64(k%3))})
+		line := draw.LineStyle{Color: c, Width: vg.Points(1.2)}
+		switch m.Severity { // told apart without colours too
+		case 1:
+			line.Dashes = []vg.Length{vg.Points(1.5), vg.Points(1.5)}
+		case 2:
+			line.Dashes = []vg.Length{vg.Points(6), vg.Points(2)}
+		case 3:
+			line.Width = vg.Points(2)
+		}
+		pl.Add(rules{x: []float64{at(m.At)}, style: line})
+		marks = append(marks, label{x: at(m.At), y: pl.Y.Max, text: m.Text, style: d.p.words(7.5, d.p.ink, draw.XLeft, draw.YTop), dx: vg.Points(3), dy: -vg.Points(2 + 9*float64(k%3)), ground: d.p.ground})
 	}
+	for i := range marks {
+		pl.Add(marks[i])
+	}
+	pl.Add(backing{d.p.ground})
 	d.rows = []row{{name: "trend", plot: pl, share: 1}}
 	d.lay(draw.New(nowhere(d)), false)
 	return d, nil
+}
+
+// lone is the share of values that may lie beyond an axis: single turns in which the load steps over.
+const lone = .005
+
+// most is what nearly all values lie within, and all that was expected.
+func (t *Trend) most() span {
+	var v []float64
+	for _, p := range t.Points {
+		if finite(p.Value) {
+			v = append(v, p.Value)
+		}
+	}
+	slices.Sort(v)
+	s := noSpan()
+	cut := int(lone * float64(len(v)))
+	s.all(v[cut:len(v)-cut], 1)
+	whole := noSpan()
+	whole.all(v, 1)
+	if whole.hi-whole.lo < 2*(s.hi-s.lo) { // nothing stands alone
+		s = whole
+	}
+	for _, p := range t.Points {
+		s.take(p.Expected)
+	}
+	return s
 }
 
 // bandRuns cuts the points where nothing is expected.

@@ -94,6 +94,7 @@ func overVolume(p Picture, o Options, log bool) (*Drawing, error) {
 			}
 		}
 	}
+	pl.Add(backing{d.p.ground})
 	d.rows = []row{{name: name, plot: pl, share: 1, log: log}}
 	d.lay(draw.New(nowhere(d)), false)
 	return d, nil
@@ -122,13 +123,13 @@ func (d *Drawing) fitted(pl *plot.Plot, end *End, s Stroke, stroke, e int) {
 		style: draw.LineStyle{Color: d.p.ink, Width: vg.Points(.7)}})
 	along := [2]float64{.62, .38}[e] // the two ends' words at different heights, for their lines lie close together
 	mid := v.lo * math.Pow(v.hi/v.lo, along)
-	name := [2]string{"compression", "expansion"}[stroke]
+	name := [2]string{"HE", "CE"}[e] + [2]string{" compression", " expansion"}[stroke]
 	style := d.p.words(7.5, d.p.end[e], draw.XLeft, draw.YBottom)
 	dx, dy := vg.Points(5), vg.Points(3)
 	if stroke == 1 {
 		style.XAlign, style.YAlign, dx, dy = draw.XRight, draw.YTop, -dx, -dy
 	}
-	pl.Add(label{x: mid * litres, y: at(mid), text: fmt.Sprintf("%s n = %s", name, number(s.N, 3)), style: style, dx: dx, dy: dy})
+	pl.Add(label{x: mid * litres, y: at(mid), text: fmt.Sprintf("%s n = %s", name, number(s.N, 3)), style: style, dx: dx, dy: dy, ground: d.p.ground})
 }
 
 // oneTurn gives the grid points from 0° to 360°, both included as far as they are there.

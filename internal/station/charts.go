@@ -105,7 +105,11 @@ func (o *ChartOptions) turns(ctx context.Context, sk *skid.Skid) (*chart.Drawing
 	if o.Reference >= 0 && o.Against == "" {
 		want[o.Reference] = true
 	}
-	got, last, err := gatherPictures(ctx, o.Review, throw, want, o.Turn < 0)
+	pick := newest
+	if o.Turn >= 0 {
+		pick = nil
+	}
+	got, last, err := gatherPictures(ctx, o.Review, throw, want, pick)
 	if err != nil {
 		return nil, err
 	}
@@ -117,17 +121,22 @@ func (o *ChartOptions) turns(ctx context.Context, sk *skid.Skid) (*chart.Drawing
 	if !ok {
 		return nil, noTurn(o.Review.Recording, turn, last)
 	}
-	p := chart.Picture{Turns: []chart.Cylinder{now}}
+	p := chart.Picture{Turns: []chart.Cylinder{now.Cylinder}}
 	for n := o.Turns[0]; n < o.Turns[1]; n++ {
 		if c, ok := got[n]; ok && n != turn {
-			p.Turns = append(p.Turns, c)
+			p.Turns = append(p.Turns, c.Cylinder)
 		}
 	}
+	var reference *pictured
 	switch {
 	case o.Against != "":
 		r := o.Review
 		r.Recording, r.ProcessCSV = o.Against, besideOf(o.Against, r.ProcessCSV)
-		got, last, err := gatherPictures(ctx, r, throw, map[int64]bool{o.Reference: true}, o.Reference < 0)
+		pick := now.unlike
+		if o.Reference >= 0 {
+			pick = nil
+		}
+		got, last, err := gatherPictures(ctx, r, throw, map[int64]bool{o.Reference: true}, pick)
 		if err != nil {
 			return nil, err
 		}
@@ -139,16 +148,20 @@ func (o *ChartOptions) turns(ctx context.Context, sk *skid.Skid) (*chart.Drawing
 		if !ok {
 			return nil, noTurn(o.Against, n, last)
 		}
-		p.Reference = &c
+		reference = c
 	case o.Reference >= 0:
 		c, ok := got[o.Reference]
 		if !ok {
 			return nil, noTurn(o.Review.Recording, o.Reference, last)
 		}
-		p.Reference = &c
+		reference = c
 	}
-	if p.Reference != nil {
-		p.Turns[0].About += "\nreference: " + p.Reference.About
+	if reference != nil {
+		p.Reference = &reference.Cylinder
+		p.Turns[0].About += "\nreference: " + reference.About
+		if now.unlike(reference) > alike {
+			p.Turns[0].About += "\nthe reference is of ANOTHER DUTY: the curves differ by that alone"
+		}
 	}
 	return map[string]func(chart.Picture, chart.Options) (*chart.Drawing, error){
 		"angle": chart.Angle, "pv": chart.PV, "logpv": chart.LogPV, "load": chart.RodLoad}[o.Kind](p, o.Draw)
@@ -173,31 +186,74 @@ func noTurn(file string, n, last int64) error {
 	return fmt.Errorf("chart: %s has no turn %d that can be measured; the last one is %d", file, n, last)
 }
 
-// gatherPictures plays a recording and keeps the turns wanted, and the last good one when newest is set.
-func gatherPictures(ctx context.Context, r ReviewOptions, throw int, want map[int64]bool, newest bool) (got map[int64]chart.Cylinder, last int64, err error) {
-	got, last = map[int64]chart.Cylinder{}, -1
+// pictured is what charts show of a turn, and its duty.
+type pictured struct {
+	chart.Cylinder
+	step        int
+	steady      bool
+	rpm, ps, pd float64
+}
+
+// alike is how far apart two duties may be for their curves to be held against each other, see unlike.
+const alike = .1
+
+// unlike is how far apart the duties of two turns are: the relative differences of speed and line pressures added up,
+// another load step counting more than any, a turn of unsteady running a little.
+func (p *pictured) unlike(q *pictured) float64 {
+	d := 0.0
+	for _, r := range [][2]float64{{p.rpm, q.rpm}, {p.ps, q.ps}, {p.pd, q.pd}} {
+		if x := math.Abs(math.Log(r[0] / r[1])); !math.IsNaN(x) {
+			d += x
+		}
+	}
+	if p.step != q.step {
+		d += 10
+	}
+	if !q.steady {
+		d += alike / 2
+	}
+	return d
+}
+
+// newest prefers any later turn.
+func newest(*pictured) float64 { return 0 }
+
+// gatherPictures plays a recording and keeps the turns wanted, and of all good ones the last among those with the least
+// distance; best is its number. Without a distance best is the last good turn, which need not be kept.
+func gatherPictures(ctx context.Context, r ReviewOptions, throw int, want map[int64]bool, distance func(*pictured) float64) (got map[int64]*pictured, best int64, err error) {
+	got, best = map[int64]*pictured{}, -1
+	least := math.Inf(1)
 	r.each = func(l *Line, o *Output) {
 		if o.Turn == nil || !o.Turn.Valid() {
 			return
 		}
 		n := o.Turn.Number
-		if want[n] || newest {
-			c, perr := l.Picture(o, throw)
-			if perr != nil {
-				return
-			}
-			if !want[last] {
-				delete(got, last)
-			}
-			got[n] = c
+		if !want[n] && distance == nil {
+			best = n
+			return
 		}
-		last = n
+		c, perr := l.Picture(o, throw)
+		if perr != nil {
+			return
+		}
+		p := &pictured{Cylinder: c, step: o.Points[throw].Step, steady: o.Points[throw].State == duty.Steady, rpm: o.Points[throw].RPM, ps: o.Points[throw].Ps, pd: o.Points[throw].Pd}
+		if want[n] {
+			got[n] = p
+		}
+		if distance == nil {
+			best = n
+		} else if d := distance(p); d <= least {
+			if !want[best] {
+				delete(got, best)
+			}
+			got[n], best, least = p, n, d
+		}
 	}
 	err = Review(ctx, r)
 	if err != nil && len(got) > 0 && ctx.Err() == nil {
 		err = nil // a damaged recording is drawn as far as it can be read
 	}
-	return got, last, err
+	return got, best, err
 }
 
 // trend draws a measure over the recording, against its baseline when there is one.
@@ -207,7 +263,7 @@ func (o *ChartOptions) trend(ctx context.Context, sk *skid.Skid) (*chart.Drawing
 		return nil, fmt.Errorf("chart: trend %q: write <subject>/<measure>, e.g. %s.he/n_comp_late", o.Subject, sk.Throws[0].ID)
 	}
 	subject, name := o.Subject[:at], o.Subject[at+1:]
-	tr := chart.Trend{Title: o.Subject, Unit: name}
+	tr := chart.Trend{Title: o.Subject, Unit: axisWords(name)}
 	feature, unknown := -1, false
 	var devs []duty.Deviation
 	r := o.Review
@@ -249,6 +305,17 @@ func (o *ChartOptions) trend(ctx context.Context, sk *skid.Skid) (*chart.Drawing
 		return nil, fmt.Errorf("chart: this machine has no measure %s: DEVELOPERS.md lists them, and the values of a turn record show the names", o.Subject)
 	}
 	return tr.Over(o.Draw)
+}
+
+// axisWords makes words of a measure's name, whose end is its unit: leak_area_mm2 reads leak area, mm².
+func axisWords(name string) string {
+	for _, u := range [][2]string{{"bar_abs", "bar abs"}, {"kg_h", "kg/h"}, {"bar_s", "bar/s"}, {"mm2", "mm²"}, {"cm3", "cm³"}, {"percent", "%"}, {"deg", "°"}, {"kn", "kN"}, {"kw", "kW"}, {"db", "dB"},
+		{"bar", "bar"}, {"ms", "ms"}, {"ln", "ln"}, {"g", "g"}, {"c", "°C"}, {"k", "K"}} {
+		if stem, ok := strings.CutSuffix(name, "_"+u[0]); ok {
+			return strings.ReplaceAll(stem, "_", " ") + ", " + u[1]
+		}
+	}
+	return strings.ReplaceAll(name, "_", " ")
 }
 
 // Spectra are averaged over segments of about so many samples, over at most so many seconds.
