@@ -52,7 +52,7 @@ func RodLoad(p Picture, o Options) (*Drawing, error) {
 		s.all(p.Reference.Load.Pin, kN)
 	}
 	pl.Y.Min, pl.Y.Max = s.wide(.05, .38) // the legend stands above the curves
-	for _, r := range signs(l.Pin) { // where the rod is pulled
+	for _, r := range signs(l.Pin) {      // where the rod is pulled
 		pl.Add(box{x0: now.Lo + r[0]*now.Step, x1: now.Lo + r[1]*now.Step, y0: pl.Y.Min, y1: 0, fill: thin(d.p.end[0], .1)})
 	}
 	d.frame(pl, true)
