@@ -63,7 +63,7 @@ func TestAClipReviewedIsTheLiveLineAgain(t *testing.T) {
 	same, transitions := 0, 0
 	for _, c := range clips {
 		dir := t.TempDir()
-		if err := ExportFrom(ctx, state, c.ID, dir); err != nil {
+		if err := PullFrom(state, wire.PullQuery{Clip: c.ID}, dir); err != nil {
 			t.Fatal(err)
 		}
 		wavs, _ := filepath.Glob(filepath.Join(dir, "*.wav"))

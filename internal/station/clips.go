@@ -1,7 +1,6 @@
 package station
 
 import (
-	"context"
 	"fmt"
 	"os"
 	"path/filepath"
@@ -31,14 +30,4 @@ func ClipsIn(state string) ([]wire.Clip, error) {
 	}
 	defer t.Close()
 	return wireClips(t, t.Info().Rate, t.Info().Start), nil
-}
-
-// ExportFrom writes a clip of a daemon that is down into dir.
-func ExportFrom(_ context.Context, state, clip, dir string) error {
-	t, err := openState(state)
-	if err != nil {
-		return err
-	}
-	defer t.Close()
-	return exportClip(t, clip, dir)
 }

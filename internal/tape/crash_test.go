@@ -95,7 +95,7 @@ func TestKilledAtAnyMoment(t *testing.T) {
 		if len(s.Damage) > 0 || s.NewestSeq < acked || s.NewestSeq > acked+300 {
 			t.Fatalf("round %d: newest %d, flushed %d, damage %v", round, s.NewestSeq, acked, s.Damage)
 		}
-		wantSamples(t, func(f func(*acq.Block) error) error { return tp.Read(0, s.NewestSeq, f) }, 0, s.NewestSeq)
+		wantSamples(t, func(f func(*acq.Block) error) error { return tp.Read(s.OldestSeq, s.NewestSeq, f) }, s.OldestSeq, s.NewestSeq) // it rolls after some 70 kills
 		for _, c := range tp.Clips() {
 			if c.Complete && c.Short == "" {
 				wantSamples(t, clipReader(tp, c.ID), c.From, c.To)
