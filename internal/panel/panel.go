@@ -17,6 +17,7 @@
 //	GET  /api/v1/clips           protected raw samples; /api/v1/clips/{id} one of them as tar
 //	GET  /api/v1/pull            see pulls: by clip, time or turns, resumable
 //	GET  /api/v1/learning        see learning; /api/v1/baselines lists and gives baselines, POST takes one
+//	GET  /metrics                the daemon's own measures in the Prometheus text format; see station/metrics.go for the list
 //	GET  /api/v1/schemas         names of the JSON Schemas of all this; /api/v1/schemas/{name} one of them
 //
 // An order is carried out between two turns, also while the machine stands, and is in the journal whether it was carried
@@ -55,6 +56,8 @@ type Source interface {
 	Alarms() wire.Alarms
 	// Why says why a subject (empty: all) was found to be as it is by the block of a turn (0: the newest).
 	Why(ctx context.Context, subject string, turn int64) (wire.Why, error)
+	// Metrics gives what a scrape is told; it must not make the line wait.
+	Metrics() []Family
 	Puller
 }
 
@@ -214,6 +217,7 @@ func routeAll(mux router, src Source, pulls *pulls, log *slog.Logger, ended chan
 		_, _ = w.Write(b)
 	})
 
+	mux.HandleFunc("GET /metrics", scrape(src, log))
 	mux.HandleFunc("GET /api/v1/why", why(src, log))
 	mux.HandleFunc("GET /api/v1/journal", journal(src, log))
 	mux.HandleFunc("POST "+ordersPath, order(src, log))

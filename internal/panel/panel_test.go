@@ -36,6 +36,7 @@ type still struct {
 	ordered []wire.Order
 	journal func(f wire.JournalFilter) (wire.JournalPage, error)
 	asked   []wire.JournalFilter
+	metrics []Family
 }
 
 func (s *still) Now() *wire.Now { return s.now }
@@ -72,6 +73,8 @@ func (s *still) Why(_ context.Context, subject string, turn int64) (wire.Why, er
 }
 
 func (s *still) Alarms() wire.Alarms { return wire.Alarms{Version: 1, Points: []wire.Point{}} }
+
+func (s *still) Metrics() []Family { return s.metrics }
 
 func open(t *testing.T, src Source) string {
 	t.Helper()

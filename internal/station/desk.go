@@ -403,6 +403,7 @@ func (s *Station) health(at time.Time) wire.Health {
 	if n := s.dropped.Load(); n > 0 {
 		h.Trouble = append(h.Trouble, fmt.Sprintf("the line was too slow for %d blocks: the tape has them, they were not analysed", n))
 	}
+	s.tellOfSelf(&h, &st)
 	return h
 }
 

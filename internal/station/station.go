@@ -67,6 +67,8 @@ type Station struct {
 	now      atomic.Pointer[wire.Now]
 	progress atomic.Int64 // samples through the line
 	dropped  atomic.Int64 // blocks the line had no room for
+	meter    meter
+	logged   *logged
 	desk     desk
 	states   states
 
@@ -101,7 +103,9 @@ func Open(o Options) (_ *Station, err error) {
 	if o.Log == nil {
 		o.Log = slog.New(slog.DiscardHandler)
 	}
-	s := &Station{o: o, log: o.Log, orders: make(chan *request, ordersWait), ended: make(chan struct{})}
+	log, logged := thin(o.Log.Handler(), time.Now)
+	o.Log = log
+	s := &Station{o: o, log: log, logged: logged, orders: make(chan *request, ordersWait), ended: make(chan struct{})}
 	if s.sk, err = skid.Load(o.SkidFile); err != nil {
 		return nil, err
 	}
@@ -322,6 +326,7 @@ func (s *Station) Run(ctx context.Context) error {
 	}
 
 	queue := make(chan *parcel, queueLen)
+	s.meter.watch(queue)
 	srcErr := make(chan error, 1)
 	reading, stopReading := context.WithCancel(ctx)
 	defer stopReading()
@@ -407,13 +412,14 @@ func (s *Station) compute(queue <-chan *parcel) error {
 	stateless := false
 	var failing error // of the last turn: said once when it begins, and at the end if it lasts
 	emit := func(o *Output) {
-		err := s.take(o)
+		err := s.meter.kept(func() error { return s.take(o) })
 		if err != nil && failing == nil {
 			s.log.Error("results cannot be kept; trying again with every turn", "err", err)
 		}
 		failing = err
 	}
 	lastHealth := time.Now()
+	s.meter.began = lastHealth
 	var shown int64
 	silent := time.NewTicker(time.Second) // for a source that gives nothing
 	defer silent.Stop()
@@ -426,6 +432,10 @@ func (s *Station) compute(queue <-chan *parcel) error {
 			s.carryOut(a)
 			continue
 		case <-silent.C:
+			if t := time.Now(); s.silent() >= silentAfter && t.Sub(lastHealth) > s.sk.Uplink.HealthEvery {
+				lastHealth = t
+				s.offerHealth() // a source that gives nothing is told of too
+			}
 			if err := s.expire(); err != nil && failing == nil {
 				failing = err
 				s.log.Error("results cannot be kept; trying again with every turn", "err", err)
@@ -435,6 +445,7 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		if !more {
 			break
 		}
+		began := time.Now()
 		for _, r := range p.rows {
 			h.put(r)
 		}
@@ -442,6 +453,7 @@ func (s *Station) compute(queue <-chan *parcel) error {
 			stateless = true // clips without a state are clips all the same
 			s.log.Error("clips begin without the state of the line", "err", err)
 		}
+		s.meter.inStates = time.Since(began)
 		if err := s.line.Add(&p.block, emit); err != nil {
 			return fmt.Errorf("station: line: %w", err)
 		}
@@ -455,13 +467,18 @@ func (s *Station) compute(queue <-chan *parcel) error {
 		}
 		if t := time.Now(); t.Sub(lastHealth) > s.sk.Uplink.HealthEvery {
 			lastHealth = t
-			s.offerHealth()
-			if err := s.ledger.PutDoc(docLine, s.line.Memory()); err != nil {
+			_ = s.meter.kept(func() error {
+				s.offerHealth()
+				return nil
+			})
+			if err := s.meter.kept(func() error { return s.ledger.PutDoc(docLine, s.line.Memory()) }); err != nil {
 				s.log.Warn("what the line has learnt is not on disk", "err", err)
 			}
 		}
+		s.measured(p.block.N, time.Since(began), h)
 	}
 	s.offerHealth() // before the flush, which forgets the shaft
+	s.showMeasured(h)
 	s.line.Flush(emit)
 	return failing
 }

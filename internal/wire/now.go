@@ -23,22 +23,30 @@ type Now struct {
 // Health is what the daemon knows of itself. State is that of the shaft ("running",
 // "coasting", "starting", "standstill", "lost", "unknown") or "offline".
 type Health struct {
-	Version     int        `json:"v"`
-	Skid        string     `json:"skid"`
-	At          time.Time  `json:"at,omitzero"` // UTC
-	State       string     `json:"state"`
-	Line        string     `json:"line"` // one clause for people: learning, watching, why not
-	Turns       int64      `json:"turns"`
-	BadTurns    int64      `json:"turns_not_valid"`
-	RPM         *float64   `json:"speed_rpm,omitempty"`
-	Learned     bool       `json:"baseline"`
-	LearnLeft   int        `json:"learning_turns_left"`
-	SamplesLost int64      `json:"samples_lost"`
-	QueueFull   int64      `json:"blocks_dropped_before_line"`
-	Channels    []Channel  `json:"channels,omitempty"`
-	Tape        TapeHealth `json:"tape"`
-	Uplink      any        `json:"uplink,omitempty"`
-	Trouble     []string   `json:"trouble,omitempty"` // what somebody should look at, in plain words
+	Version     int              `json:"v"`
+	Skid        string           `json:"skid"`
+	At          time.Time        `json:"at,omitzero"` // UTC
+	State       string           `json:"state"`
+	Line        string           `json:"line"`                      // one clause for people: learning, watching, why not
+	Category    string           `json:"category"`                  // of the daemon as a whole, NAMUR NE 107
+	CategoryWhy string           `json:"category_reason,omitempty"` // why it is not good
+	Turns       int64            `json:"turns"`
+	BadTurns    int64            `json:"turns_not_valid"`
+	BadBy       map[string]int64 `json:"turns_not_valid_by_reason,omitempty"`
+	RPM         *float64         `json:"speed_rpm,omitempty"`
+	Learned     bool             `json:"baseline"`
+	LearnLeft   int              `json:"learning_turns_left"`
+	SamplesLost int64            `json:"samples_lost"`
+	QueueFull   int64            `json:"blocks_dropped_before_line"`
+	Load        *float64         `json:"line_load_percent,omitempty"`       // time the line was at work over the time the samples took, last minute of samples
+	LoadWorst   *float64         `json:"line_load_worst_percent,omitempty"` // the same of the minute's slowest second
+	Queue       int              `json:"line_queue_blocks"`                 // blocks that wait for the line
+	QueueMost   int              `json:"line_queue_most_blocks"`            // most that waited within the last minute of samples
+	QueueLimit  int              `json:"line_queue_limit_blocks"`           // beyond it blocks are dropped
+	Channels    []Channel        `json:"channels,omitempty"`
+	Tape        TapeHealth       `json:"tape"`
+	Uplink      any              `json:"uplink,omitempty"`
+	Trouble     []string         `json:"trouble,omitempty"` // what somebody should look at, in plain words
 }
 
 // Channel is how one input is doing. State is a category of NAMUR NE 107, and "good" or "function check" otherwise: a
@@ -57,11 +65,12 @@ type Channel struct {
 // even since when.
 func Offline(skid string) []byte {
 	b, err := json.Marshal(struct {
-		Version int    `json:"v"`
-		Skid    string `json:"skid"`
-		State   string `json:"state"`
-		Line    string `json:"line"`
-	}{1, skid, "offline", "the monitor is not connected: nobody watches the valves"})
+		Version  int    `json:"v"`
+		Skid     string `json:"skid"`
+		State    string `json:"state"`
+		Line     string `json:"line"`
+		Category string `json:"category"`
+	}{1, skid, "offline", "the monitor is not connected: nobody watches the valves", "failure"})
 	if err != nil {
 		panic(err) // a struct of strings always encodes
 	}
@@ -76,6 +85,8 @@ type TapeHealth struct {
 	Newest   time.Time `json:"newest,omitzero"`
 	Dropped  int64     `json:"blocks_dropped"`
 	Clips    int       `json:"clips"`
+	Rate     *float64  `json:"written_bytes_per_s,omitempty"` // to the disk, over the last ten seconds or more
+	Behind   *float64  `json:"not_on_disk_s,omitempty"`       // samples that have come and are not committed
 	Problems []string  `json:"problems,omitempty"`
 }
 

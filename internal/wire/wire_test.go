@@ -242,16 +242,18 @@ func TestStandingPoint(t *testing.T) {
 
 func TestHealth(t *testing.T) {
 	s := loadSchema(t, "health")
-	rpm := 742.5
+	rpm, share, rate := 742.5, 0.0625, 4e6
 	for name, h := range map[string]wire.Health{
-		"bare": {Version: 1, Skid: "heron-meadow", State: "standstill", Line: "watching"},
+		"bare": {Version: 1, Skid: "heron-meadow", State: "standstill", Line: "watching", Category: "good"},
 		"full": {Version: 1, Skid: "heron-meadow", At: time.Unix(1e9, 0).UTC(), State: "running", Line: "watching", Turns: 9, BadTurns: 1, RPM: &rpm, Learned: true,
-			Tape:   wire.TapeHealth{Bytes: 3, Limit: 9, Oldest: time.Unix(1e9, 0).UTC(), Newest: time.Unix(2e9, 0).UTC(), Dropped: 1, Clips: 2, Problems: []string{"x"}},
+			Category: "out of specification", CategoryWhy: "p1h is not used", BadBy: map[string]int64{"samples missing": 1}, Load: &share, LoadWorst: &share,
+			Queue: 1, QueueMost: 2, QueueLimit: 256,
+			Tape:   wire.TapeHealth{Rate: &rate, Behind: &share, Bytes: 3, Limit: 9, Oldest: time.Unix(1e9, 0).UTC(), Newest: time.Unix(2e9, 0).UTC(), Dropped: 1, Clips: 2, Problems: []string{"x"}},
 			Uplink: uplink.Status{Connected: true, Since: time.Unix(1e9, 0).UTC(), LastError: "x", Connections: 4, Sent: 9, Replaced: 1}, Trouble: []string{"look"},
 			Channels: []wire.Channel{{ID: "phase", Kind: "phase", State: "good"}, {ID: "p1h", Kind: "pressure", Place: "t1.he", State: "out of specification", Fault: "hum", Reason: "p1h carries hum", SinceTurn: 7}}},
-		"uplink with commands": {Version: 1, Skid: "heron-meadow", State: "running", Uplink: uplink.Status{Connected: true, CertUntil: time.Unix(2e9, 0).UTC(),
+		"uplink with commands": {Version: 1, Skid: "heron-meadow", State: "running", Category: "good", Uplink: uplink.Status{Connected: true, CertUntil: time.Unix(2e9, 0).UTC(),
 			Commands: &uplink.CommandStatus{Allowed: []string{"acknowledge"}, Hearing: true, Accepted: 3, Refused: 2, Repeated: 1, TooMany: 1, LastError: "x"}}},
-		"uplink not yet up": {Version: 1, Skid: "heron-meadow", State: "starting", Uplink: uplink.Status{}},
+		"uplink not yet up": {Version: 1, Skid: "heron-meadow", State: "starting", Category: "function check", Uplink: uplink.Status{}},
 	} {
 		t.Run(name, func(t *testing.T) {
 			raw := string(fits(t, s, h))
@@ -271,7 +273,7 @@ func TestOffline(t *testing.T) {
 	if err := json.Unmarshal(raw, &h); err != nil {
 		t.Fatal(err)
 	}
-	if h["state"] != "offline" || h["skid"] != "heron \"meadow\"" || len(h) != 4 {
+	if h["state"] != "offline" || h["skid"] != "heron \"meadow\"" || h["category"] != "failure" || len(h) != 5 {
 		t.Errorf("a daemon that is gone still says %s", raw)
 	}
 }
