@@ -92,11 +92,12 @@ func trials(t testing.TB) []trial {
 		add(p, 2.5, 1, windowtest.Full, "leaks of about 5 %", model.Change{What: model.ValveLeak, Where: "t1.ce.d1", To: hole / 2})
 		add(p, 2.5, 1, windowtest.Full, "leaks of about 5 %", model.Change{What: model.RingLeak, Where: "t1", To: hole})
 	}
-	// Nothing in the package was set by these.
+	// Drawn anew after the last constant of the package was set: machine, gas, and a duty at each load step.
+	names := gas.Names()
 	for seed := range uint64(8) {
-		rng := rand.New(rand.NewPCG(seed, 41))
+		rng := rand.New(rand.NewPCG(7001+seed, 19))
 		between := func(lo, hi float64) float64 { return lo + (hi-lo)*rng.Float64() }
-		p := plant{name: "drawn at random", gas: []string{"biomethane", "synthesis-gas", "nitrogen", "hydrogen", "biogas", "oxygen", "pipeline-gas", "argon"}[seed],
+		p := plant{name: "drawn at random", gas: names[rng.IntN(len(names))],
 			rated: 250 * math.Pow(7.2, rng.Float64()), ps: between(3, 25) * 1e5, ts: between(285, 320)}
 		c := &p.cyl
 		c.Stroke = between(3.5, 5) * 30 / p.rated
@@ -104,8 +105,11 @@ func trials(t testing.TB) []trial {
 		c.ConRod, c.PistonRod = c.Stroke*between(2, 3), c.Bore*between(.18, .3)
 		c.Clearance = [2]float64{between(.1, .25), between(.1, .25)}
 		c.MassPiston, c.MassCrosshead = 2e3*c.Bore*c.Bore*c.Stroke, 1.5e3*c.Bore*c.Bore*c.Stroke
-		for range 3 {
-			add(p, between(1.4, 4), between(.5, 1.1), []int{windowtest.Full, windowtest.Pocket}[rng.IntN(2)], p.gas)
+		for step, row := range []string{"drawn, full load", "drawn, pocket", "drawn, crank end idle", "drawn, late closing to 55°"} {
+			left := []float64{1, .75, 1, .75}[step] // of the stroke, for what the clearance holds to expand into
+			room := max(c.Clearance[0], c.Clearance[1]) + []float64{0, .25, 0, 0}[step]
+			most := math.Pow(1+.8*left/room, 1.2) // some gas must be left to deliver
+			add(p, min(between(1.3, 5), most), between(.5, 1.1), step, row)
 		}
 	}
 	return out
@@ -241,8 +245,8 @@ func TestAccuracy(t *testing.T) {
 		if how.off > 0 {
 			continue // measured, not judged
 		}
-		// 0.3 %, 2 % and 1° are asked for. Two of the ends miss 2 %: see DEVELOPERS.
-		for k, most := range map[int]float64{0: .3, 3: 2.4, 5: 1} {
+		// 0.3 %, 2 % and 1° are asked for.
+		for k, most := range map[int]float64{0: .3, 3: 2, 5: 1} {
 			for _, x := range rows["all"][k] { // those drawn at random are shown
 				if !(math.Abs(x) <= most) {
 					t.Errorf("%s is off by %.2f", faultNames[k], x)

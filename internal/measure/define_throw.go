@@ -25,6 +25,7 @@ const (
 	tDeliveredNorm
 	tEfficiency
 	tSpecific
+	tReversalU
 	throwCount
 )
 
@@ -32,7 +33,7 @@ func throwDefs() [throwCount]def {
 	const (
 		both   = "both ends' pressures, or one blind by design"
 		loadU  = "gain of the transmitters, masses; turn 0.1 to 0.2 %"
-		turnsU = "U; turn 0.01 to 0.05°; 3° where the load stays near zero for long"
+		turnsU = "U; turn 0.01 to 0.05°; 3° where the load stays near zero for long, see reversal_u_deg"
 		sumU   = "as those of the ends"
 	)
 	return [throwCount]def{
@@ -45,7 +46,7 @@ func throwDefs() [throwCount]def {
 		tGasMin: {name: "gas_load_min_kn", unit: "kN", class: Pressure, scale: kilo, what: "least gas rod load, tension negative",
 			how: "likewise", source: srcAPI, valid: both, unc: "gain of the transmitters"},
 		tReversal: {name: "reversal_deg", unit: "°", class: Pressure, scale: one, what: "longest unbroken stay of the pin load in its shorter direction",
-			how: "at least 15° are asked for", source: srcAPI, valid: both, unc: turnsU},
+			how: "at least 15° are asked for", source: srcAPI, valid: both, unc: "reversal_u_deg; turn 0.01 to 0.05°"},
 		tReversalShare: {name: "reversal_percent", unit: "%", class: Pressure, scale: percent, what: "peak of the pin load's lesser direction over that of the greater",
 			how: "at least 3 % are asked for", source: srcAPI, valid: both, unc: loadU},
 		tPinPulls: {name: "pin_pulls_deg", unit: "°", class: Pressure, scale: one, what: "the pin load turns from compression to tension",
@@ -73,7 +74,7 @@ func throwDefs() [throwCount]def {
 			source: srcBrun, valid: "every delivering end known", unc: sumU, eye: true},
 		tLossShare: {name: "valve_loss_percent", unit: "%", class: Pressure, scale: percent, what: "valves' share of power_kw",
 			source: srcBrun, valid: "every delivering end known", unc: sumU, eye: true},
-		tDelivered: {name: "delivered_kg_h", unit: "kg/h", class: Pressure, scale: perHour, what: "gas delivered by both ends, leaks taken off",
+		tDelivered: {name: "delivered_kg_h", unit: "kg/h", class: Pressure, scale: perHour, what: "gas delivered by both ends, heat and leaks taken off",
 			how: "an idle end counts nothing", source: "mass balance of the ends", valid: "every delivering end known", unc: sumU, eye: true},
 		tDeliveredNorm: {name: "delivered_nm3_h", unit: "Nm³/h", class: Pressure, scale: perHour, what: "gas delivered by both ends as normal volume",
 			how: "0 °C, 101.325 kPa (DIN 1343), real gas", source: "DIN 1343, from memory", valid: "every delivering end known", unc: sumU, eye: true},
@@ -81,5 +82,7 @@ func throwDefs() [throwCount]def {
 			how: "as of an end; idle ends' power counts", source: srcBrun + " p. 209", valid: "every delivering end and the lines known", unc: sumU, eye: true},
 		tSpecific: {name: "specific_energy_kwh_1000nm3", unit: "kWh/1000 Nm³", class: Pressure, scale: 1 / 3600.0, what: "indicated energy for gas delivered",
 			how: "power_kw over delivered_nm3_h", source: "trade usage", valid: "every delivering end known", unc: sumU, eye: true},
+		tReversalU: {name: "reversal_u_deg", unit: "°", class: Pressure, scale: one, what: "what transmitters and the angle scale leave open in reversal_deg",
+			how: "95 %: reversal taken anew with zeros off by 0.3 % of suction pressure, gains by 0.2 %, the angle by half of U, each in turn to either side; root of the sum of squares, twice", source: "first order, jumps in it", valid: both, unc: "–", eye: true},
 	}
 }

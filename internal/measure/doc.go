@@ -43,13 +43,13 @@
 //	gas_load_min_kn [kN, pressure] least gas rod load, tension negative: likewise
 //		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters
 //	reversal_deg [°, pressure] longest unbroken stay of the pin load in its shorter direction: at least 15° are asked for
-//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long
+//		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: reversal_u_deg; turn 0.01 to 0.05°
 //	reversal_percent [%, pressure] peak of the pin load's lesser direction over that of the greater: at least 3 % are asked for
 //		source: API 618 6.6 (handbook.md 1). there when: both ends' pressures, or one blind by design. uncertain by: gain of the transmitters, masses; turn 0.1 to 0.2 %
 //	pin_pulls_deg [°, pressure] the pin load turns from compression to tension
-//		source: vibration.md 2. there when: once a turn. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long
+//		source: vibration.md 2. there when: once a turn. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long, see reversal_u_deg
 //	pin_pushes_deg [°, pressure] the pin load turns from tension to compression
-//		source: vibration.md 2. there when: once a turn. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long
+//		source: vibration.md 2. there when: once a turn. uncertain by: U; turn 0.01 to 0.05°; 3° where the load stays near zero for long, see reversal_u_deg
 //	power_kw [kW, pressure] indicated power of both ends: idle ends with what they take
 //		source: methods.md 1.1. there when: every working end known. uncertain by: as those of the ends
 //	capacity_kg_h [kg/h, pressure] capacity by suction of both ends: an idle end counts nothing
@@ -70,7 +70,7 @@
 //		source: Brun & Kurz 2019. there when: every delivering end known. uncertain by: as those of the ends
 //	valve_loss_percent [%, pressure] valves' share of power_kw
 //		source: Brun & Kurz 2019. there when: every delivering end known. uncertain by: as those of the ends
-//	delivered_kg_h [kg/h, pressure] gas delivered by both ends, leaks taken off: an idle end counts nothing
+//	delivered_kg_h [kg/h, pressure] gas delivered by both ends, heat and leaks taken off: an idle end counts nothing
 //		source: mass balance of the ends. there when: every delivering end known. uncertain by: as those of the ends
 //	delivered_nm3_h [Nm³/h, pressure] gas delivered by both ends as normal volume: 0 °C, 101.325 kPa (DIN 1343), real gas
 //		source: DIN 1343, from memory. there when: every delivering end known. uncertain by: as those of the ends
@@ -78,6 +78,8 @@
 //		source: Brun & Kurz 2019 p. 209. there when: every delivering end and the lines known. uncertain by: as those of the ends
 //	specific_energy_kwh_1000nm3 [kWh/1000 Nm³, pressure] indicated energy for gas delivered: power_kw over delivered_nm3_h
 //		source: trade usage. there when: every delivering end known. uncertain by: as those of the ends
+//	reversal_u_deg [°, pressure] what transmitters and the angle scale leave open in reversal_deg: 95 %: reversal taken anew with zeros off by 0.3 % of suction pressure, gains by 0.2 %, the angle by half of U, each in turn to either side; root of the sum of squares, twice
+//		source: first order, jumps in it. there when: both ends' pressures, or one blind by design. uncertain by: –
 //
 // # Features: end
 //

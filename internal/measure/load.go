@@ -54,7 +54,9 @@ func (m *Measurer) loadsOf(c *throwCtx) {
 	m.shares(c)
 	c.dst.set(at+tReversalShare, crank.Reverse(m.loads.Pin).Share)
 	smooth := m.smooth(m.loads.Pin, int(math.Round(calmDeg/g.Step)))
-	c.dst.set(at+tReversal, crank.Reverse(smooth).Longest)
+	reversal := crank.Reverse(smooth).Longest
+	c.dst.set(at+tReversal, reversal)
+	c.dst.set(at+tReversalU, m.reversalU(c, p, smooth, reversal))
 	pulls, pushes, ok := signChanges(smooth, g.Step)
 	c.dst.absent(at+tPinPulls, whySigns)
 	c.dst.absent(at+tPinPushes, whySigns)
@@ -62,6 +64,42 @@ func (m *Measurer) loadsOf(c *throwCtx) {
 		c.dst.set(at+tPinPulls, g.At(c.i0)+pulls)
 		c.dst.set(at+tPinPushes, g.At(c.i0)+pushes)
 	}
+}
+
+// Errors of an installation that reversal is tried with, one standard deviation each.
+const (
+	zeroShare = .003 // of suction pressure
+	gainShare = .002 // of the reading
+)
+
+// reversalU gives what transmitters and the angle scale leave open in the reversal, 95 %: it is taken anew with each of
+// their errors in turn, to either side. Where the pin load lies near zero for long, or two stays nearly meet, it is much.
+func (m *Measurer) reversalU(c *throwCtx, p [2]crank.Pressure, load []float64, reversal float64) float64 {
+	sum, n := 0.0, len(load)
+	m.tried = append(m.tried[:0], load...)
+	try := func(off func(i int) float64) {
+		most := 0.0
+		for _, sign := range [2]float64{-1, 1} {
+			for i := range load {
+				m.tried[i] = load[i] + sign*off(i)
+			}
+			most = max(most, math.Abs(crank.Reverse(m.tried).Longest-reversal))
+		}
+		sum += most * most
+	}
+	for e := range p {
+		if p[e].P == nil {
+			continue
+		}
+		area := c.in.Cylinder.Area(e)
+		if ps := c.w.Ends[e].Ps; known(ps) {
+			try(func(int) float64 { return zeroShare * area * ps })
+		}
+		try(func(i int) float64 { return gainShare * area * p[e].P[i] })
+	}
+	gas, late := m.loads.Gas, c.th.U/2/(2*c.th.Grid.Step)
+	try(func(i int) float64 { return late * (gas[(i+1)%n] - gas[(i+n-1)%n]) })
+	return 2 * math.Sqrt(sum)
 }
 
 // shares gives the load in the piston rod, and the pin's as shares of the rated loads.
@@ -81,7 +119,7 @@ func (m *Measurer) shares(c *throwCtx) {
 }
 
 func (m *Measurer) noLoads(c *throwCtx, why string) {
-	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalShare, tPinPulls, tPinPushes,
+	for _, k := range []int{tRodMax, tRodMin, tGasMax, tGasMin, tReversal, tReversalU, tReversalShare, tPinPulls, tPinPushes,
 		tPistonMax, tPistonMin, tRatedComp, tRatedTens} {
 		c.dst.absent(c.ix.throw+k, why)
 	}

@@ -58,6 +58,7 @@ type Measurer struct {
 	mix    mix
 	pairs  []mixture
 	in     takeIn
+	tried  []float64
 }
 
 // shape caches the volumes of a throw's cylinder on the grid.

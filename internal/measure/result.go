@@ -59,9 +59,6 @@ func (c *throwCtx) known(i int, x float64) {
 	c.dst.set(i, x)
 }
 
-// roomStep is the step of sums over a whole turn: their parts bend little.
-const roomStep = 4.0 // degrees
-
 // delivered sets what an end delivers.
 func (c *throwCtx) delivered(f *takeIn, e, at int) {
 	if f.why[e] != "" {

@@ -19,18 +19,18 @@ import (
 // in the closed strokes, and cost suction much the same: which of them it is stays open, what they cost is known far
 // better. Priors keep apart what the strokes do not.
 
-// Unknowns of the fit. Leaks are shares of the mean mass of a turn; the last ones are errors.
+// Unknowns of the fit. The first five are leaks, HS HD CS CD RG as in the leak package, as shares of the mean mass of a
+// turn; the last ones are errors.
 const (
-	inLeaks    = 0 // HS HD CS CD RG
 	inHeat     = 5 // heat by temperature difference
-	inWall     = 6 // heat by wall temperature
-	inZero     = 7 // both ends
+	inWall     = 6 // heat by wall temperature, beside inWallT
+	inZero     = 7 // both ends, shares of suction pressure
 	inPhase    = 9
 	inExponent = 10
 	inCount    = 11
 )
 
-// inPrior is what each unknown is given beforehand, one standard deviation. A leak of 5 % is rare, one of 10 % is not excluded.
+// inPrior is what each unknown is given beforehand, one standard deviation. A leak of 5 % is rare, one of 10 % not excluded.
 // Walls lie between the lines' temperatures, and where is not known better than by a sixth of the rise: with usual heat
 // that is 0.02. Transmitters: a stated error of 0.3 % of suction pressure. KV: the equation of state and the bend of the
 // real path. The phase is given by the turn's own uncertainty, degrees.
@@ -76,7 +76,7 @@ func (m *Measurer) takeIn(c *throwCtx) *takeIn {
 		switch {
 		case at < 0 || c.th.P[e] == nil || c.th.Bad[e] != "" || w.NotPresent || w.State == window.Idle || w.State == window.NotDelivering || w.State == window.Lost:
 			continue
-		case !known(c.in.Ts, c.in.Gas.R, c.in.Gas.Zs) || !(k > 1):
+		case !known(c.in.Ts, c.in.Gas.R, c.in.Gas.Zs, c.in.Gas.KT) || !(k > 1):
 			f.why[e] = whyGas
 			continue
 		case !math.IsNaN(w.Clearance):

@@ -6,11 +6,14 @@ import (
 	"lapwing/internal/window"
 )
 
+// roomStep is the step of sums over a whole turn: their parts bend little.
+const roomStep = 4.0 // degrees
+
 // climate is what the flows of an end are reckoned with.
 type climate struct {
 	ps, pd, critical, span, hot float64
 	area, perimeter             float64 // of both faces m², of the liner m
-	size, per                   float64 // usual wall m²; grid degrees per turn
+	size                        float64 // usual wall m²
 }
 
 // warm is T/Ts of gas compressed to p: the adiabatic curve by a parabola, within 3 % of the rise.
@@ -136,13 +139,26 @@ func (m *Measurer) stroke(c *throwCtx, f *takeIn, e int, kv float64, k *climate,
 	}
 }
 
-// solve adds the priors and solves by Gauss and Jordan's elimination; the matrix is positive definite and small.
+// inPasses is how often the fit is made: a leak that turns out larger than its prior is given a prior of its own size the
+// next time, so that large leaks are not drawn towards none.
+const inPasses = 3
+
 func (f *takeIn) solve(phase float64) {
-	a := f.ata
-	for j, s := range inPrior(phase) {
-		a[j][j] += 1 / (s * s)
+	prior := inPrior(phase)
+	for range inPasses {
+		f.solveWith(&prior)
+		for j := range inHeat {
+			prior[j] = max(prior[j], math.Abs(f.x[j]))
+		}
 	}
-	for j := range f.cov {
+}
+
+// solveWith adds priors and solves by Gauss and Jordan's elimination; the matrix is positive definite and small.
+func (f *takeIn) solveWith(prior *[inCount]float64) {
+	a := f.ata
+	f.cov, f.x = [inCount][inCount]float64{}, [inCount]float64{}
+	for j, s := range prior {
+		a[j][j] += 1 / (s * s)
 		f.cov[j][j] = 1
 	}
 	for j := range a {
