@@ -75,7 +75,7 @@ func (l *logged) take(r *slog.Record, with string) (held int, say bool) {
 		l.lines[r.Level]++
 		return 0, true
 	}
-	now, key := l.now(), alike(r, with)
+	now, key := l.now(), sameSaying(r, with)
 	p := l.said[key]
 	switch {
 	case p == nil:
@@ -99,9 +99,9 @@ func (l *logged) take(r *slog.Record, with string) (held int, say bool) {
 	return held, true
 }
 
-// alike is a line without what changes from one time to the next: numbers, durations, and the digits within an error, where
+// sameSaying is a line without what changes from one time to the next: numbers, durations, and the digits within an error, where
 // ports and times stand. Names stay: two devices are two troubles.
-func alike(r *slog.Record, with string) string {
+func sameSaying(r *slog.Record, with string) string {
 	var b strings.Builder
 	fmt.Fprintf(&b, "%s %s %s", r.Level, with, r.Message)
 	r.Attrs(func(a slog.Attr) bool {
