@@ -6,7 +6,7 @@ GO         ?= go
 STATICCHECK = honnef.co/go/tools/cmd/staticcheck@v0.8.2
 SHARED     ?= $(abspath ../shared)
 
-.PHONY: field soak demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
+.PHONY: field soak endure latency fleet demo test build check-format vet lint unit fuzz system bench bench-setup setup clean
 
 build: bin/lapwing bin/lapwingd
 
@@ -70,6 +70,23 @@ RUNS     ?= 3
 soak:
 	LAPWING_SOAK=$(SOAK) SEED=$(SEED) MACHINES=$(MACHINES) TURNS=$(TURNS) RUNS=$(RUNS) FAULT="$(FAULT)" LOAD="$(LOAD)" \
 	  nice -n 19 $(GO) test -count=1 -timeout 12h -v -run '^TestSoak' ./internal/station
+
+# The way to the control room, for a long time and for many. Opt-in; loopback only. endure: 200 troubles of broker,
+# network and daemon, and a day without a broker. latency: from the turn to the message. fleet: the uplinks of 500 skids
+# against one mosquitto and against three nats-servers, which are built into out/fleet and are in nobody's go.mod.
+endure: build
+	LAPWING_ENDURE=200 LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" $(GO) test -count=1 -timeout 30m -v -run 'TestSystemEndurance|TestSystemBrokerAway' ./cmd/lapwingd
+
+latency: build
+	LAPWING_LATENCY=100s LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" $(GO) test -count=1 -timeout 10m -v -run TestSystemLatency ./cmd/lapwingd
+
+NATS := github.com/nats-io/nats-server/v2@v2.15.3
+fleet: out/fleet/nats-server
+	$(GO) run ./testdata/fleet -skids 500
+	$(GO) run ./testdata/fleet -skids 500 -broker nats -nats out/fleet/nats-server -every 8s
+
+out/fleet/nats-server:
+	GOBIN="$(CURDIR)/out/fleet" $(GO) install $(NATS)
 
 # Figures, never a test: every room's benchmarks; the line stage by stage; the line against scipy in one run.
 PYTHON  ?= /usr/bin/python3

@@ -431,6 +431,12 @@ func (s *Station) standing() []uplink.Message {
 			out = append(out, uplink.Message{Topic: s.topics.Standing(a.Key), Payload: b, Retain: true})
 		}
 	}
+	// And nothing for the others: a broker that was killed may have forgotten that it was told so.
+	for i := range s.desk.points.Points {
+		if key := s.desk.points.Points[i].Key; s.desk.open[key].Key == "" {
+			out = append(out, uplink.Message{Topic: s.topics.Standing(key), Retain: true})
+		}
+	}
 	return out
 }
 

@@ -27,8 +27,9 @@ type Config struct {
 	CAFile, CertFile, KeyFile string
 	// Offline gives the last will and the message of a clean stop.
 	Offline func() []byte
-	// Standing gives the retained standing-alarm messages, renewed once after each connect because the broker may have
-	// forgotten them. It must be as new as what has been put in the outbox, or a little older, never newer.
+	// Standing gives the retained standing-alarm messages, empty ones for points that do not stand, renewed once after each
+	// connect because the broker may have forgotten what it was told. It must be as new as what has been put in the outbox,
+	// or a little older, never newer.
 	Standing func() []Message
 	// RetryMin and RetryMax bound the pause between attempts; zero: 1 s and 60 s (a listener: 2 s and 30 s).
 	RetryMin, RetryMax time.Duration
