@@ -256,7 +256,7 @@ func (s *Station) openEdges() (err error) {
 			id = "lapwing-" + s.sk.ID
 		}
 		s.pub, err = uplink.New(uplink.Config{Broker: broker, ClientID: id, Topics: s.topics, UserFile: u.UserFile, PasswordFile: u.PasswordFile,
-			CAFile: u.CAFile, CertFile: u.CertFile, KeyFile: u.KeyFile, Offline: s.offline, Standing: s.standing, Log: s.log, Commands: s.commands()}, outbox{s.ledger})
+			CAFile: u.CAFile, CertFile: u.CertFile, KeyFile: u.KeyFile, Offline: s.offline, Standing: s.standing, Log: s.log, Commands: s.commands(), Sparkplug: s.sparkplug()}, outbox{s.ledger})
 		if err != nil {
 			return err
 		}

@@ -174,6 +174,9 @@ func healthMetrics(h *wire.Health, unknown bool) (out []sparkplug.Metric) {
 		rpm = *h.RPM
 	}
 	put("speed_rpm", sparkplug.Double, rpm)
+	put("heartbeat_s", sparkplug.Double, h.Heartbeat)
+	put("category", sparkplug.String, h.Category)
+	put("category_reason", sparkplug.String, h.CategoryWhy)
 	put("turns", sparkplug.Int64, h.Turns)
 	put("turns_not_valid", sparkplug.Int64, h.BadTurns)
 	put("baseline", sparkplug.Boolean, h.Learned)
@@ -186,7 +189,8 @@ func healthMetrics(h *wire.Health, unknown bool) (out []sparkplug.Metric) {
 	put("trouble", sparkplug.String, strings.Join(h.Trouble, "\n"))
 	for i := range h.Channels {
 		c := &h.Channels[i]
-		m := sparkplug.Metric{Name: "Channels/" + folders(c.ID), Type: sparkplug.String, Value: c.State, At: h.At}
+		m := ChannelMetric(c.ID)
+		m.Value, m.At = c.State, h.At
 		for _, p := range [][2]string{{"place", c.Place}, {"fault", c.Fault}, {"reason", c.Reason}} {
 			if p[1] != "" {
 				m.Props = append(m.Props, sparkplug.Property{Key: p[0], Type: sparkplug.String, Value: p[1]})
@@ -195,6 +199,11 @@ func healthMetrics(h *wire.Health, unknown bool) (out []sparkplug.Metric) {
 		out = append(out, m)
 	}
 	return out
+}
+
+// ChannelMetric is the metric of a channel's state, without a value.
+func ChannelMetric(id string) sparkplug.Metric {
+	return sparkplug.Metric{Name: "Channels/" + folders(id), Type: sparkplug.String}
 }
 
 // unheard tells whether nothing of a throw can be known: the shaft reference is lost, or every one of its channels has

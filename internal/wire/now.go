@@ -28,6 +28,7 @@ type Health struct {
 	At          time.Time        `json:"at,omitzero"` // UTC
 	State       string           `json:"state"`
 	Line        string           `json:"line"`                      // one clause for people: learning, watching, why not
+	Heartbeat   float64          `json:"heartbeat_s,omitempty"`     // s; the message comes again by then
 	Category    string           `json:"category"`                  // of the daemon as a whole, NAMUR NE 107
 	CategoryWhy string           `json:"category_reason,omitempty"` // why it is not good
 	Turns       int64            `json:"turns"`
