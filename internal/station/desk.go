@@ -360,7 +360,7 @@ func wireFindings(fs []verdict.Finding, l *Line) []wire.Finding {
 func (s *Station) health(at time.Time) wire.Health {
 	st, c := s.tape.Stats(), s.line.Count()
 	phase := s.line.Phase()
-	h := wire.Health{Version: 1, Skid: s.sk.ID, At: at, State: phase.State.String(), Turns: c.Turns, BadTurns: c.Invalid,
+	h := wire.Health{Version: 1, Skid: s.sk.ID, At: at, Heartbeat: s.sk.Uplink.HealthEvery.Seconds(), State: phase.State.String(), Turns: c.Turns, BadTurns: c.Invalid,
 		SamplesLost: c.Lost, QueueFull: s.dropped.Load(), Learned: s.line.Judging()}
 	if !math.IsNaN(phase.RPM) {
 		rpm := math.Round(phase.RPM*10) / 10
