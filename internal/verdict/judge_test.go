@@ -112,6 +112,7 @@ func TestHealthyMachineRaisesNothing(t *testing.T) {
 
 // Leaks of 1 to 5 % on every path, at constant duty and under random loads: the right subject and no other.
 func TestLeaksAreBookedToTheirPath(t *testing.T) {
+	learnt := map[string]int{"steady": 500, "swings": 1200}
 	for _, load := range []string{"steady", "swings"} {
 		healthy := newSynth(1)
 		move := func(s *synth) func(int) {
@@ -122,7 +123,7 @@ func TestLeaksAreBookedToTheirPath(t *testing.T) {
 				}
 			}
 		}
-		baseline := commission(t, healthy, map[bool]int{false: 1200, true: 2000}[*sweep], move(healthy))
+		baseline := commission(t, healthy, map[bool]int{false: learnt[load], true: 2000}[*sweep], move(healthy))
 		turns := map[string]int{"steady": 180, "swings": 375}[load] // some duties of the swings were never learnt
 		for _, subject := range []string{"t1.he.suction", "t1.he.discharge", "t1.ce.suction", "t1.ce.discharge", "t1.rings"} {
 			for _, g := range []float64{1, 2, 5} {
