@@ -77,8 +77,8 @@ soak:
 endure: build
 	LAPWING_ENDURE=200 LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" $(GO) test -count=1 -timeout 30m -v -run 'TestSystemEndurance|TestSystemBrokerAway' ./cmd/lapwingd
 
-latency: build
-	LAPWING_LATENCY=100s LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" $(GO) test -count=1 -timeout 10m -v -run TestSystemLatency ./cmd/lapwingd
+latency:
+	LAPWING_LATENCY=100s $(GO) test -count=1 -timeout 10m -v -run TestLatency ./internal/station
 
 NATS := github.com/nats-io/nats-server/v2@v2.15.3
 fleet: out/fleet/nats-server

@@ -258,6 +258,20 @@ func TestCommandsThatCannotBeAllowed(t *testing.T) {
 	}
 }
 
+func TestReaderShowsReceipts(t *testing.T) {
+	var out strings.Builder
+	r := Reader{W: &out, Root: topics.Root}
+	for topic, payload := range map[string]string{
+		topics.Command(): `{"request":"a","verb":"trip"}`,
+		topics.Receipt(): `{"request":"desk-1","verb":"acknowledge","by":"A\u001b[2J","accepted":true,"said":"now acknowledged"}`,
+	} {
+		r.Show(Received{Topic: topic, Payload: []byte(payload)})
+	}
+	if want := "heron-meadow: order acknowledge of desk-1 by A?[2J carried out: now acknowledged\n"; out.String() != want {
+		t.Errorf("%q, want %q", out.String(), want)
+	}
+}
+
 // pipe is a connection of bytes that are there.
 type pipe struct {
 	net.Conn

@@ -47,6 +47,9 @@ func (r *Reader) Show(m Received) {
 		if r.Features {
 			r.showFeatures(skid, rest, m)
 		}
+	case "receipt":
+		r.showReceipt(skid, m)
+	case "command":
 	default:
 		r.say("%s: %d bytes on a topic that this version does not know\n", m.Topic, len(m.Payload))
 	}
