@@ -67,6 +67,7 @@ func doubtsAt(sk *Skid, ds []duty) []Problem {
 	d.duty()
 	d.limits()
 	d.edges()
+	d.modbus()
 	sortProblems(d.out)
 	return d.out
 }

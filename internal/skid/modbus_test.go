@@ -2,6 +2,7 @@ package skid
 
 import (
 	"math"
+	"os"
 	"strings"
 	"testing"
 	"time"
@@ -123,4 +124,121 @@ func TestModbusMistakes(t *testing.T) {
 			}
 		})
 	}
+}
+
+func TestTheCheckSaysWhatIsReadOverModbus(t *testing.T) {
+	sk := parsed(t, example(t)+goodModbus)
+	var out strings.Builder
+	if err := Report(&out, sk, 0); err != nil {
+		t.Fatal(err)
+	}
+	said := strings.Join(strings.Fields(out.String()), " ")
+	for _, want := range []string{
+		"plc tcp://192.0.2.10:502, unit 1, every 1s, an answer within 1s", "canary: holding register 0, u16 is 4711",
+		"stage1.p_suction: input register 100, f32 cdab in bar_gauge, believed from 2 to 16, for 4s",
+		"t1.he.s1.cover: holding register 200, i16 times 0.1 plus 0 in c", "load_step: coil 5, for 5s",
+		"rtu:///dev/ttyS1, unit 3, every 1s, an answer within 300ms; 9600 baud, 8 data bits, parity even, 1 stop bits; rests 600ms after an error",
+		"192.0.2.20:502, unit 1, for 192.0.2.7/32, 198.51.100.0/24; at most 32 connections, 4 from one address", "read only but for the acknowledge coils",
+	} {
+		if !strings.Contains(said, want) {
+			t.Errorf("the check does not say %q", want)
+		}
+	}
+	out.Reset()
+	if err := Report(&out, parsed(t, example(t)), 0); err != nil || strings.Contains(out.String(), "\nModbus\n") {
+		t.Errorf("a file without the section: %v", err)
+	}
+}
+
+func TestDoubtsAboutModbus(t *testing.T) {
+	doubts := func(old, with string) (all string) {
+		section, _ := swap(t, goodModbus, old, with)
+		for _, d := range Doubts(parsed(t, example(t)+section)) {
+			if strings.HasPrefix(d.Path, "modbus") {
+				all += d.Error() + "\n"
+			}
+		}
+		return all
+	}
+	for name, c := range map[string][3]string{
+		"no load step": {"        - {value: load_step, function: 1, address: 5}\n", "", "the load step is not, though the machine has 4"},
+		"one pressure": {"every_s: 1", "every_s: 1 ", "one of the line pressures"},
+		"anybody":      {"    allow: [192.0.2.7, 198.51.100.0/24]\n    acknowledge: yes\n", "", "listens on 192.0.2.20:502 for anybody"},
+	} {
+		if got := doubts(c[0], c[1]); !strings.Contains(got, c[2]) {
+			t.Errorf("%s: %q", name, got)
+		}
+	}
+	if got := doubts("        - {value: TT-1111", "        - {value: stage1.p_discharge, function: 4, address: 102, type: f32, unit: bar_gauge}\n        - {value: TT-1111"); got != "" {
+		t.Errorf("doubts about a sound section: %q", got)
+	}
+}
+
+// The sections that the examples show behind comment signs are as good as they look.
+func TestTheModbusExamplesAreGood(t *testing.T) {
+	found := 0
+	for _, f := range configs(t) {
+		raw, err := os.ReadFile(f)
+		if err != nil {
+			t.Fatal(err)
+		}
+		before, section, ok := strings.Cut(string(raw), "\n# modbus:")
+		if !ok {
+			continue
+		}
+		found++
+		lines := strings.Split("# modbus:"+section, "\n")
+		for i := range lines {
+			lines[i] = strings.TrimPrefix(lines[i], "# ")
+		}
+		sk, err := Parse(f, []byte(before+"\n"+strings.Join(lines, "\n")))
+		if err != nil {
+			t.Error(err)
+			continue
+		}
+		if len(sk.Modbus.Devices) != 1 || len(sk.Modbus.Devices[0].Tags) < 6 {
+			t.Errorf("%s: %+v", f, sk.Modbus)
+		}
+		for _, d := range Doubts(sk) {
+			if strings.HasPrefix(d.Path, "modbus") {
+				t.Errorf("%s: %v", f, d)
+			}
+		}
+	}
+	if found < 2 {
+		t.Errorf("%d examples show the section", found)
+	}
+}
+
+func FuzzParseModbus(f *testing.F) {
+	f.Add(goodModbus)
+	f.Add("\nmodbus: {devices: [{name: a, url: 'rtu:///dev/ttyS0?baud=1', tags: [{value: load_step}]}], server: {listen: ':502'}}\n")
+	f.Add("\nmodbus: []\n")
+	base := example(f)
+	f.Fuzz(func(t *testing.T, section string) {
+		sk, err := Parse("m.yaml", []byte(base+section))
+		if (sk == nil) == (err == nil) {
+			t.Fatal("neither or both")
+		}
+		for _, p := range Problems(err) {
+			if p.Line < 1 || p.Col < 1 {
+				t.Fatalf("without a place: %v", p)
+			}
+		}
+		if sk == nil {
+			return
+		}
+		for i := range sk.Modbus.Devices {
+			d := &sk.Modbus.Devices[i]
+			if d.Every <= 0 || d.Timeout <= 0 || len(d.Tags) == 0 {
+				t.Fatalf("%+v", d)
+			}
+			for _, x := range d.Tags {
+				if x.Factor == 0 || x.Address < 0 || x.Address+x.Words() > 65536 || !(x.Min < x.Max) || x.MaxAge <= d.Every || x.Stage >= sk.Stages() {
+					t.Fatalf("%+v", x)
+				}
+			}
+		}
+		_ = Doubts(sk)
+	})
 }

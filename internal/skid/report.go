@@ -32,6 +32,7 @@ func Report(w io.Writer, sk *Skid, rate float64) error {
 	p.sampling(sk)
 	p.channels(sk)
 	p.edges(sk)
+	p.modbus(sk)
 	p.defaults(sk)
 	p.doubts(sk, ds)
 	if _, err := w.Write(b.Bytes()); err != nil {
