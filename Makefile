@@ -46,10 +46,10 @@ fuzz:
 
 # The programs as their users run them: real broker, real clients, other programs opening what we wrote.
 system: build out/strangers/.made
-	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_STRANGERS="$(CURDIR)/out/strangers" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/...
+	LAPWING_SYSTEM=1 LAPWING_BIN="$(CURDIR)/bin" LAPWING_STRANGERS="$(CURDIR)/out/strangers" LAPWING_SHARED="$(SHARED)" $(GO) test -count=1 -timeout 15m ./cmd/... ./internal/panel
 
 # Programs of others that open what ours write, from the npm registry.
-STRANGERS := @duckdb/node-api@1.5.6-r.1 sparkplug-payload@1.0.3
+STRANGERS := @duckdb/node-api@1.5.6-r.1 sparkplug-payload@1.0.3 ajv@8.20.0 ajv-formats@3.0.1 axe-core@4.14.1
 out/strangers/.made: Makefile
 	mkdir -p out/strangers
 	npm install --prefix out/strangers --no-save --no-package-lock --no-audit --no-fund --loglevel=error $(STRANGERS)
@@ -106,7 +106,7 @@ bench-setup:
 	apt-get install -y -q --no-install-recommends python3-scipy
 
 # Tools that the tests need and a plain Debian with Go, make and git has not.
-NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox node:nodejs npm:npm
+NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox node:nodejs npm:npm chromium:chromium
 setup:
 	@missing=""; for n in $(NEED); do \
 	  PATH="$$PATH:/usr/sbin" command -v $${n%%:*} >/dev/null 2>&1 || missing="$$missing $${n##*:}"; done; \

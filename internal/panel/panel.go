@@ -216,7 +216,6 @@ func routeAll(mux router, src Source, pulls *pulls, log *slog.Logger, ended chan
 		w.Header().Set("Content-Type", "application/schema+json")
 		_, _ = w.Write(b)
 	})
-
 	mux.HandleFunc("GET /metrics", scrape(src, log))
 	mux.HandleFunc("GET /api/v1/why", why(src, log))
 	mux.HandleFunc("GET /api/v1/journal", journal(src, log))

@@ -7,8 +7,10 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 	"sync"
 	"time"
+	"unicode/utf8"
 
 	"lapwing/internal/chart"
 	"lapwing/internal/dsp"
@@ -19,7 +21,7 @@ const (
 	looksHeld    = 24              // turns per throw: a frozen one stays as long as it is asked for
 	drawingsHeld = 64              // drawings, of some 100 KiB
 	newestFor    = time.Second     // how long a turn goes on being handed out as the newest
-	lookWait     = 1 * time.Second // for a first picture after nobody has looked
+	lookWait     = 2 * time.Second // for a first picture, or second of signal, after nobody has looked
 )
 
 var (
@@ -41,7 +43,7 @@ type pictures struct {
 	one chan struct{} // one drawing at a time, so that pages never take more than one core
 }
 
-// view says what is drawn how.
+// drawingOf says what is drawn how.
 type drawingOf struct {
 	throw     string // or a channel
 	turn      int64  // or a sample number
@@ -180,8 +182,11 @@ func options(of drawingOf, vibs int) chart.Options {
 		}
 	case "narrow":
 		o.WidthMM, o.HeightMM = 105, 100
-		if of.kind == "angle" {
-			o.HeightMM = 90 + 24*float64(vibs)
+		switch of.kind {
+		case "angle": // it is pushed sideways: its words do not fit a phone
+			o.WidthMM, o.HeightMM = 165, 100+24*float64(vibs)
+		case "load":
+			o.HeightMM = 120
 		}
 	}
 	return o
@@ -196,7 +201,9 @@ func (p *pictures) throwChart(ctx context.Context, of drawingOf, now, reference 
 			pic.Reference = &r
 			pic.Turns[0].About += "\nreference: " + r.About
 		}
-		return drawers[of.kind](pic, options(of, len(now.Picture.Vib)))
+		o := options(of, len(now.Picture.Vib))
+		pic.Turns[0].About = folded(pic.Turns[0].About, o.WidthMM)
+		return drawers[of.kind](pic, o)
 	})
 }
 
@@ -217,12 +224,34 @@ func (p *pictures) channelChart(ctx context.Context, of drawingOf, s *Signal) (*
 		}
 		psd := make([]float64, w.Bins())
 		w.PSD(psd, level(s.V))
-		sp := chart.Spectrum{Title: s.Channel + ": spectrum", About: long + fmt.Sprintf("; mean taken off, Hann window, %.1f Hz a bin", s.Rate/float64(n)), Unit: s.Density, Bands: s.Bands, Density: psd}
+		long = folded(long, options(of, 0).WidthMM)
+		sp := chart.Spectrum{Title: s.Channel + ": spectrum", About: long + fmt.Sprintf("\nmean taken off, Hann window, %.1f Hz a bin", s.Rate/float64(n)), Unit: s.Density, Bands: s.Bands, Density: psd}
 		for i := range psd {
 			sp.Hz = append(sp.Hz, float64(i)*s.Rate/float64(n))
 		}
 		return sp.Draw(options(of, 0))
 	})
+}
+
+// folded breaks lines at commas, so that they fit a drawing of a width; 0: the chart's own, which is wide.
+func folded(s string, widthMM float64) string {
+	const perMM = .64 // characters of the small type
+	most := int(widthMM * perMM)
+	if most == 0 {
+		return s
+	}
+	var out []string
+	for _, line := range strings.Split(s, "\n") {
+		row := ""
+		for _, piece := range strings.SplitAfter(line, ", ") {
+			if row != "" && utf8.RuneCountInString(row+piece) > most {
+				out, row = append(out, strings.TrimSpace(row)), ""
+			}
+			row += piece
+		}
+		out = append(out, row)
+	}
+	return strings.Join(out, "\n")
 }
 
 // level takes the mean off: a pressure's would hide all else behind the window's skirts.

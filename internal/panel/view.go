@@ -78,6 +78,9 @@ func arrange(n *wire.Now, age time.Duration) view {
 		alarmed[a.Key] = true
 		v.Cards = append(v.Cards, card{Alarm: *a, Finding: findingOf(n, a), Where: inWords(a.Subject), State: stateInWords(a.To), For: lasted(a.At, n.At),
 			Cylinder: throwOf(n, a.Subject), Acts: actsFor(a.To)})
+		if c := &v.Cards[i]; c.Finding != nil && slices.ContainsFunc(n.Findings, func(f wire.Finding) bool { return c.Finding.Sentence == f.Sentence }) {
+			c.Sentence = c.Finding.Sentence // the amounts below it are of now, and so are its words
+		}
 	}
 	for i := range n.Findings {
 		if f := &n.Findings[i]; !alarmed[f.Subject+"/"+f.Kind] {

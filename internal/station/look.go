@@ -130,6 +130,9 @@ func (s *Station) overhear(b *acq.Block) {
 	for len(g.recent) > 1 && end-g.recent[1].Seq0 >= int64(s.info.Rate) {
 		g.recent = g.recent[1:]
 	}
+	if end-g.recent[0].Seq0 < int64(s.info.Rate) {
+		return // a second is promised
+	}
 	if now := time.Now(); now.Sub(g.spread) >= lookEvery {
 		g.spread = now
 		g.heard.Store(&stretch{blocks: slices.Clone(g.recent), at: s.line.utc(float64(end) / s.info.Rate)})

@@ -46,6 +46,9 @@ func (s *Station) Look(throw string) *panel.Look {
 		return nil
 	}
 	t := &s.gallery.looks[i]
+	if !s.gallery.wanted(&t.asked) {
+		t.shown.Store(nil) // of when somebody last looked, perhaps long ago
+	}
 	s.gallery.ask(&t.asked)
 	return t.shown.Load()
 }
