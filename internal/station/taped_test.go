@@ -13,6 +13,7 @@ import (
 	"testing"
 	"time"
 
+	bolt "go.etcd.io/bbolt"
 	"golang.org/x/sys/unix"
 
 	"lapwing/internal/acq"
@@ -132,4 +133,66 @@ func TestReserveWithoutRoom(t *testing.T) {
 	if h := s.health(time.Time{}); !slices.ContainsFunc(h.Trouble, func(x string) bool { return strings.Contains(x, "that the tape was to reserve") }) {
 		t.Errorf("trouble %q", h.Trouble)
 	}
+}
+
+// What a daemon says of files that it finds damaged, or that a later version has written.
+func TestTapeFilesAmiss(t *testing.T) {
+	first := staffed(t)
+	o := first.o
+	if err := first.Close(); err != nil {
+		t.Fatal(err)
+	}
+	o.Listen = "none"
+	for name, c := range map[string]struct {
+		file, head string // the head's words; "": the file is rubbish
+		says       string // in health, or in the error
+		starts     bool
+	}{
+		"a damaged ring":          {"tape.db", "", "tape.db was unusable", true},
+		"damaged clips":           {"clips.db", "", "clips.db was unusable", true},
+		"a ring of a later day":   {"tape.db", "lapwing tape layout 2", "layout 2", true},
+		"clips of a later day":    {"clips.db", "lapwing clips layout 9", "layout version not known to this program", false},
+		"clips in the ring's way": {"tape.db", "lapwing clips layout 1", "not a file of this kind", false},
+	} {
+		t.Run(name, func(t *testing.T) {
+			o.State = t.TempDir()
+			path := filepath.Join(o.State, c.file)
+			err := os.WriteFile(path, []byte(strings.Repeat("rubbish ", 8192)), 0o600)
+			if c.head != "" {
+				err = errors.Join(os.Remove(path), withHead(path, c.head))
+			}
+			if err != nil {
+				t.Fatal(err)
+			}
+			s, err := Open(o)
+			if !c.starts {
+				if err == nil || !strings.Contains(err.Error(), c.says) || !strings.Contains(err.Error(), path) {
+					t.Errorf("%v does not say %q of %s", err, c.says, path)
+				}
+				return
+			}
+			if err != nil {
+				t.Fatal(err)
+			}
+			defer s.Close()
+			if h := s.health(time.Time{}); !slices.ContainsFunc(h.Trouble, func(x string) bool { return strings.Contains(x, c.says) && strings.Contains(x, ".corrupt-") }) {
+				t.Errorf("trouble %q", h.Trouble)
+			}
+		})
+	}
+}
+
+// withHead makes a database that says what it is.
+func withHead(path, head string) error {
+	db, err := bolt.Open(path, 0o600, nil)
+	if err != nil {
+		return err
+	}
+	return errors.Join(db.Update(func(tx *bolt.Tx) error {
+		b, err := tx.CreateBucket([]byte("head"))
+		if err != nil {
+			return err
+		}
+		return b.Put([]byte("format"), []byte(head))
+	}), db.Close())
 }
