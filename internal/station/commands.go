@@ -56,6 +56,9 @@ func (s *Station) uplinkTroubles(st *uplink.Status, now time.Time) (out []string
 	if !st.Connected && st.LastError != "" {
 		out = append(out, fmt.Sprintf("the control room does not hear this monitor: %s; %d messages wait", st.LastError, waiting))
 	}
+	if st.Unheard != "" {
+		out = append(out, "it is not sure that the control room hears this monitor: "+st.Unheard)
+	}
 	if lost > 0 {
 		out = append(out, fmt.Sprintf("%d messages to the control room gave way to newer ones while the broker was away; their transitions are in the journal", lost))
 	}

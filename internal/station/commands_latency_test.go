@@ -8,6 +8,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"regexp"
 	"slices"
 	"strings"
 	"sync"
@@ -68,7 +69,8 @@ func TestLatency(t *testing.T) {
 			limits += fmt.Sprintf("  - {of: %s, measure: %s, deadband: 0.1, on_delay_s: 0.5, off_delay_s: 0.5, severity: alert}\n", end, l)
 		}
 	}
-	text := strings.Replace(strings.Replace(string(raw), "limits:\n", limits, 1), "max_gb: 20", "max_gb: 0.2", 1)
+	text := regexp.MustCompile(`(?m)^limits:.*\n`).ReplaceAllLiteralString(string(raw), limits)
+	text = strings.Replace(text, "max_gb: 20", "max_gb: 0.2", 1)
 	file := filepath.Join(t.TempDir(), "skid.yaml")
 	if err := os.WriteFile(file, []byte(text), 0o600); err != nil {
 		t.Fatal(err)

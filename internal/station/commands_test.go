@@ -78,6 +78,7 @@ func TestUplinkTroubles(t *testing.T) {
 		{uplink.Status{Connected: true, CertUntil: now.Add(31 * 24 * time.Hour)}, ""},
 		{uplink.Status{LastError: "no route"}, "does not hear this monitor: no route; 4 messages wait"},
 		{uplink.Status{Connected: true, CertUntil: now.Add(29 * 24 * time.Hour)}, "ends on 2030-01-30"},
+		{uplink.Status{Connected: true, Unheard: "thrown away"}, "not sure that the control room hears this monitor: thrown away"},
 		{uplink.Status{Connected: true, Commands: &uplink.CommandStatus{LastError: "refused"}}, "not heard: refused"},
 	} {
 		got := s.uplinkTroubles(&c.st, now)

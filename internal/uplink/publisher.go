@@ -42,6 +42,8 @@ type Status struct {
 
 	CertUntil time.Time      `json:"cert_until,omitzero"` // when the first certificate of this connection, the broker's or the client's, ends
 	Commands  *CommandStatus `json:"commands,omitempty"`  // never changed, only replaced
+	Unheard   string         `json:"unheard,omitempty"`   // the broker acknowledges what it throws away
+	Echoes    uint64         `json:"-"`                   // of health, which the broker has given back
 }
 
 // maxTopics bounds the offers that wait for a connection. A skid has one topic per throw and its health.
@@ -193,7 +195,7 @@ func (p *Publisher) Run(ctx context.Context) {
 		began := time.Now()
 		err := p.session(ctx)
 		p.note(func(s *Status) {
-			s.Connected, s.Since, s.LastError, s.CertUntil = false, time.Now().UTC(), "", time.Time{}
+			s.Connected, s.Since, s.LastError, s.CertUntil, s.Unheard = false, time.Now().UTC(), "", time.Time{}, ""
 			if err != nil && !errors.Is(err, context.Canceled) {
 				s.LastError = err.Error()
 			}

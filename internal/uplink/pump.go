@@ -109,6 +109,7 @@ type pump struct {
 	asking  mqtt.Token       // the subscription to commands, while it is not answered
 	rebirth <-chan time.Time // a host has asked for a birth, which comes then: no data until then
 	bornAt  time.Time
+	echo    echo
 	stop    bool // only the outbox is emptied, then the connection ends
 }
 
@@ -200,6 +201,7 @@ func (b *pump) birth() error {
 		return b.sayBirth()
 	}
 	if m, ok := b.p.takeHealth(); ok {
+		b.listen()
 		return b.send(&b.others, m, true)
 	}
 	return nil
@@ -401,6 +403,7 @@ func (b *pump) trouble(what string, err error) {
 
 // abandon ends with the connection: what was offered and not acknowledged is offered again, newest first to win.
 func (b *pump) abandon() {
+	b.echo.end()
 	_ = b.settle()
 	for i := len(b.others) - 1; i >= 0; i-- {
 		switch {

@@ -251,7 +251,7 @@ func TestHealth(t *testing.T) {
 			Tape:   wire.TapeHealth{Rate: &rate, Behind: &share, Bytes: 3, Limit: 9, Oldest: time.Unix(1e9, 0).UTC(), Newest: time.Unix(2e9, 0).UTC(), Dropped: 1, Clips: 2, Problems: []string{"x"}},
 			Uplink: uplink.Status{Connected: true, Since: time.Unix(1e9, 0).UTC(), LastError: "x", Connections: 4, Sent: 9, Replaced: 1}, Trouble: []string{"look"},
 			Channels: []wire.Channel{{ID: "phase", Kind: "phase", State: "good"}, {ID: "p1h", Kind: "pressure", Place: "t1.he", State: "out of specification", Fault: "hum", Reason: "p1h carries hum", SinceTurn: 7}}},
-		"uplink with commands": {Version: 1, Skid: "heron-meadow", State: "running", Category: "good", Uplink: uplink.Status{Connected: true, CertUntil: time.Unix(2e9, 0).UTC(),
+		"uplink with commands": {Version: 1, Skid: "heron-meadow", State: "running", Category: "good", Uplink: uplink.Status{Connected: true, Unheard: "x", CertUntil: time.Unix(2e9, 0).UTC(),
 			Commands: &uplink.CommandStatus{Allowed: []string{"acknowledge"}, Hearing: true, Accepted: 3, Refused: 2, Repeated: 1, TooMany: 1, LastError: "x"}}},
 		"uplink not yet up": {Version: 1, Skid: "heron-meadow", State: "starting", Category: "function check", Uplink: uplink.Status{}},
 	} {
