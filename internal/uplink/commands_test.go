@@ -237,6 +237,20 @@ func TestRenewSendsHealthAndStandingAgain(t *testing.T) {
 	}
 }
 
+// A node of a cluster can lose a retained message and leave the connection up.
+func TestStandingIsRenewedFromTimeToTime(t *testing.T) {
+	h := &hostile{}
+	cfg := config(openHostile(t, h))
+	cfg.wait.renew = 10 * time.Millisecond
+	x := topics.Standing("t1.he.suction/leaking")
+	cfg.Standing = func() []Message { return []Message{{Topic: x, Payload: []byte("stands")}} }
+	start(t, cfg, &store{})
+	await(t, "five times", func() bool { return len(h.seen()) >= 5 })
+	if h.connected() != 1 {
+		t.Errorf("%d connections", h.connected())
+	}
+}
+
 func TestCommandsThatCannotBeAllowed(t *testing.T) {
 	take := (&crew{}).take
 	for want, c := range map[string]*Commands{

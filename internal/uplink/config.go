@@ -46,6 +46,7 @@ type limits struct {
 	keepAlive, ping, connect, write time.Duration
 	ack                             time.Duration // without an acknowledgement
 	drain                           time.Duration // for the outbox at a clean stop
+	renew                           time.Duration // of health and standing alarms while a connection lasts
 	birth                           time.Duration // between two births of one connection
 }
 
@@ -54,7 +55,7 @@ func (l *limits) fill() {
 		to  *time.Duration
 		def time.Duration
 	}{{&l.keepAlive, 30 * time.Second}, {&l.ping, 10 * time.Second}, {&l.connect, 10 * time.Second}, {&l.write, 5 * time.Second},
-		{&l.ack, 20 * time.Second}, {&l.drain, 2 * time.Second}, {&l.birth, time.Second}} {
+		{&l.ack, 20 * time.Second}, {&l.drain, 2 * time.Second}, {&l.birth, time.Second}, {&l.renew, 15 * time.Minute}} {
 		if *f.to <= 0 {
 			*f.to = f.def
 		}

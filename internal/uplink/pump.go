@@ -134,6 +134,12 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 	if b.p.spark != nil {
 		bell = b.p.spark.mail.bell
 	}
+	var renew <-chan time.Time
+	if b.p.spark == nil { // a birth would be news to every Sparkplug host
+		t := time.NewTicker(b.p.cfg.wait.renew)
+		defer t.Stop()
+		renew = t.C
+	}
 	done := ctx.Done()
 	var drained <-chan time.Time
 	for {
@@ -168,6 +174,10 @@ func (b *pump) run(ctx context.Context, lost <-chan error) error {
 		case <-ungranted:
 			b.p.inbox.granted(nil)
 			granted, ungranted = nil, nil
+		case <-renew: // a broker's node that dies can take a retained message with it and leave the connection up
+			if err := b.birth(); err != nil {
+				return err
+			}
 		case <-b.p.wake:
 			if b.p.takeRenew() {
 				if err := b.birth(); err != nil {

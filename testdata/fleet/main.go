@@ -5,6 +5,7 @@ package main
 
 import (
 	"context"
+	"errors"
 	"flag"
 	"fmt"
 	"math/rand/v2"
@@ -137,7 +138,18 @@ func run(kind, nats string, n int, every, length time.Duration, kills int, rng *
 	if err := sub.verdict(f, len(nodes) == 1); err != nil {
 		return err
 	}
-	return late("tcp://"+door.addr(), f)
+	if bad, err := late("tcp://"+door.addr(), f); err != nil || bad == 0 {
+		return err
+	}
+	// A node that dies can take a retained message with it. Daemons renew them with every connection, on demand, and every
+	// quarter of an hour; this is the demand.
+	f.renew()
+	time.Sleep(5 * time.Second)
+	bad, err := late("tcp://"+door.addr(), f)
+	if err == nil && bad > 0 {
+		err = errors.New("standing alarms are wrong after they were renewed")
+	}
+	return err
 }
 
 func within(limit time.Duration, what string, ok func() bool) error {

@@ -123,6 +123,12 @@ func (f *fleet) connect(ctx context.Context) {
 	}
 }
 
+func (f *fleet) renew() {
+	for _, s := range f.skids {
+		s.pub.Renew()
+	}
+}
+
 func (f *fleet) stop() { f.end(); f.wg.Wait() }
 
 // make has every skid make a transition in every period, spread evenly.
