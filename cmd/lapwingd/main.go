@@ -50,6 +50,13 @@ steady running become the baseline. It is kept in the state folder and used from
 
 Sources:
   wav:FILE       play a recording, paced in real time (add --fast for as fast as it goes)
+  exec:FORMAT:PROGRAM ARGUMENT…
+                 any program that writes interleaved samples to its standard output, for example
+                 exec:format=s24_3le,channels=8:arecord -q -D hw:1 -t raw -f S24_3LE -c 8 -r 51200
+                 Formats are those of ALSA (s16_le, s24_le, s24_3le, s32_le, or _be); rate=N where it
+                 is not the skid file's, bits=N where fewer are significant, once where the program's
+                 end is the end. No shell comes between: where an argument holds a blank, run a script.
+                 A program that dies or gives nothing for 5 s is started anew.
   model:NAME     a modelled machine that plays a scripted scenario: ` + station.Scenarios(),
 		Args:          cobra.NoArgs,
 		SilenceUsage:  true,

@@ -32,6 +32,7 @@ func (s *Station) Metrics() []panel.Family {
 		c.line(p)
 		c.machine(s, p)
 	}
+	c.capture(s)
 	c.channels(n)
 	c.alarms(s, n)
 	c.tape(s)

@@ -92,6 +92,7 @@ func (c *condition) category() (sensor.Category, string) {
 // tellOfSelf completes a health message with the daemon's category and what it measures of itself. Compute goroutine.
 func (s *Station) tellOfSelf(h *wire.Health, st *tape.Stats) {
 	m, c := &s.meter, s.line.Count()
+	h.Trouble = append(h.Trouble, captureTrouble(s.src, time.Now())...)
 	_, want := s.line.Learnt()
 	k := condition{silent: s.silent(), shaft: s.line.Phase().State, turns: c.Turns, channels: h.Channels, unsaid: len(s.unsaid), judging: s.line.Judging(),
 		learning: want > 0, stuck: s.line.readings.stuck, lately: m.lately(s.info.Rate), troubles: h.Trouble}

@@ -1,12 +1,14 @@
 package station
 
 import (
+	"context"
 	"fmt"
 	"os"
 	"strings"
 	"time"
 
 	"lapwing/internal/acq"
+	"lapwing/internal/acq/exec"
 	"lapwing/internal/acq/model"
 	"lapwing/internal/acq/wav"
 	"lapwing/internal/plant"
@@ -38,11 +40,12 @@ func firstSecond(w *wav.Source) float64 { return float64(w.Meta().Seq0) / w.Info
 func openSource(o *Options, sk *skid.Skid, newest time.Time) (acq.Source, processAt, error) {
 	kind, arg, ok := strings.Cut(o.Source, ":")
 	if !ok || arg == "" {
-		return nil, nil, fmt.Errorf("station: source %q: write wav:FILE or model:NAME", o.Source)
+		return nil, nil, fmt.Errorf("station: source %q: write wav:FILE, model:NAME or %s", o.Source, exec.Help)
 	}
 	var src acq.Source
 	var proc processAt
 	var start float64
+	live := false // it comes at its own pace
 	switch kind {
 	case "wav":
 		w, err := wav.Open(arg, wav.Options{})
@@ -67,8 +70,19 @@ func openSource(o *Options, sk *skid.Skid, newest time.Time) (acq.Source, proces
 			return nil, nil, err
 		}
 		src, proc = m, m.Process
+	case "exec":
+		c, err := exec.Parse(arg, sk.Rate)
+		if err != nil {
+			return nil, nil, fmt.Errorf("station: source: %w", err)
+		}
+		c.Log = o.Log
+		x, err := exec.Open(context.Background(), c)
+		if err != nil {
+			return nil, nil, fmt.Errorf("station: source: %w", err)
+		}
+		src, proc, live = x, fixed(sk), true
 	default:
-		return nil, nil, fmt.Errorf("station: source %q: %q is not a kind of source; write wav:FILE or model:NAME", o.Source, kind)
+		return nil, nil, fmt.Errorf("station: source %q: %q is not a kind of source; write wav:FILE, model:NAME or %s", o.Source, kind, exec.Help)
 	}
 	if o.ProcessCSV != "" {
 		p, err := readProcess(o.ProcessCSV, sk)
@@ -82,7 +96,7 @@ func openSource(o *Options, sk *skid.Skid, newest time.Time) (acq.Source, proces
 		_ = src.Close()
 		return nil, nil, fmt.Errorf("station: source %s has %d channels, the skid file uses input %d (inputs count from 0)", src.Info().Name, src.Info().Channels, n-1)
 	}
-	if !o.Fast {
+	if !o.Fast && !live {
 		src = acq.Paced(src, acq.WallClock{})
 	}
 	return src, proc, nil

@@ -32,7 +32,7 @@ import (
 type Options struct {
 	SkidFile   string
 	State      string // folder for tape.db, clips.db and state.db
-	Source     string // wav:FILE or model:NAME
+	Source     string // wav:FILE, model:NAME or exec:FORMAT:PROGRAM
 	ProcessCSV string
 	Fast       bool // as fast as it goes: the source waits for the line instead of the line losing blocks
 	Learn      int  // steady turns from now on that a person has declared healthy; 0: use the kept baseline

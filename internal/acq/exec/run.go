@@ -93,7 +93,7 @@ func (s *Source) listen(r io.Reader) (last string) {
 		if line != "" {
 			last = line
 			if low := strings.ToLower(line); strings.Contains(low, "overrun") || strings.Contains(low, "xrun") {
-				s.count(func(st *Stats) { st.Overruns++ })
+				s.count(func(st *Stats) { st.Overruns++; st.LastAt = s.c.Clock.Now() })
 			}
 			s.c.Log.Warn("acquisition: capture program", "program", s.c.Command[0], "says", saying(line))
 		}

@@ -59,6 +59,7 @@ type Stats struct {
 	Lost      int64   // samples per channel, of all kinds
 	DriftPPM  float64 // how much faster the converter is than its stated rate, by this machine's clock; NaN before ten minutes
 	LastError string
+	LastAt    time.Time // of the newest restart, loss or overrun; zero: none
 }
 
 var _ acq.Source = (*Source)(nil)
@@ -176,7 +177,7 @@ func (s *Source) feed(ctx context.Context) {
 		if err != nil {
 			said = err.Error()
 		}
-		s.count(func(st *Stats) { st.LastError = said })
+		s.count(func(st *Stats) { st.LastError = said; st.LastAt = s.c.Clock.Now() })
 		if !s.begun { // a program that gives nothing at its first start is a mistake in the configuration
 			s.ready <- fmt.Errorf("no block of samples: %s", said)
 			s.end(ErrClosed)
@@ -242,7 +243,7 @@ func (s *Source) take(ctx context.Context, raw []byte, anew bool) {
 		case s.blocks <- b:
 			s.lost = 0
 		default:
-			s.count(func(st *Stats) { st.Full++; st.Lost += int64(n) })
+			s.count(func(st *Stats) { st.Full++; st.Lost += int64(n); st.LastAt = now })
 			s.lost += int64(n)
 			s.note = "blocks were not taken in time"
 		}
@@ -263,5 +264,5 @@ func (s *Source) lose(k int64, note string) {
 	s.next += k
 	s.lost += k
 	s.note = note
-	s.count(func(st *Stats) { st.Lost += k })
+	s.count(func(st *Stats) { st.Lost += k; st.LastAt = s.c.Clock.Now() })
 }

@@ -143,7 +143,7 @@ func TestProgramDies(t *testing.T) {
 			t.Errorf("block %d: sample %d, %d lost, %q; want %d, %d", i, b.Seq0, b.Lost, b.Note, seq, lost)
 		}
 	}
-	if st := s.Stats(); st.Starts != 3 || st.Lost != 11000 || st.Overruns != 3 || !strings.Contains(st.LastError, "exit status 3") {
+	if st := s.Stats(); st.Starts != 3 || st.Lost != 11000 || st.Overruns != 3 || !st.LastAt.Equal(time.Unix(1e9, 0).Add(1500*time.Millisecond)) || !strings.Contains(st.LastError, "exit status 3") {
 		t.Errorf("%+v", st)
 	}
 	if err := s.Close(); err != nil {
