@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"math"
 	"net/http"
-	"strconv"
 	"strings"
 
 	"lapwing/internal/wire"
@@ -99,11 +98,11 @@ func cellOf(m wire.WhyMeasure) (c numberCell) {
 		return c
 	}
 	c.Expected = fig(m.Expected)
-	if m.Spread != nil {
-		c.Expected += " ± " + strconv.FormatFloat(*m.Spread, 'g', 2, 64)
+	if m.Spread != nil && *m.Spread > 0 {
+		c.Value, c.Expected = beside(*m.Value, *m.Spread), beside(*m.Expected, *m.Spread)+" ± "+beside(*m.Spread, *m.Spread)
 	}
 	if m.Spreads != nil {
-		c.Expected += ", " + strings.Replace(fmt.Sprintf("%+.1f", *m.Spreads), "-", "−", 1)
+		c.Expected += ", " + minus(fmt.Sprintf("%+.1f", math.Round(*m.Spreads*10)/10+0))
 		c.Far = math.Abs(*m.Spreads) > farOff
 	}
 	return c

@@ -4,6 +4,7 @@ import (
 	"embed"
 	"fmt"
 	"html/template"
+	"math"
 	"strconv"
 	"strings"
 	"time"
@@ -32,6 +33,7 @@ var pages = func() map[string]*template.Template {
 		"join":      func(s []string) string { return strings.Join(s, ", ") },
 		"semi":      func(s []string) string { return strings.Join(s, "; ") },
 		"weight":    weight,
+		"lasted":    lasted,
 		"keepable":  func(c wire.Clip) bool { return c.Complete && !c.From.IsZero() && c.To.After(c.From) },
 		"dict": func(_ string, a act, _ string, key string) map[string]any {
 			return map[string]any{"Act": a, "Key": key}
@@ -49,7 +51,25 @@ func fig(p *float64) string {
 	if p == nil {
 		return "–"
 	}
-	return strings.Replace(strconv.FormatFloat(*p, 'g', 4, 64), "-", "−", 1)
+	return minus(strconv.FormatFloat(*p, 'g', 4, 64))
+}
+
+// minus gives a figure a true minus sign.
+func minus(s string) string {
+	if strings.HasPrefix(s, "-") {
+		return "−" + s[1:]
+	}
+	return s
+}
+
+// beside writes a value with as many decimals as its spread is worth, two figures of it.
+func beside(v, spread float64) string {
+	decimals := max(0, 1-int(math.Floor(math.Log10(spread))))
+	if !(spread > 0) || decimals > 6 {
+		return fig(&v)
+	}
+	k := math.Pow(10, float64(decimals))
+	return minus(strconv.FormatFloat(math.Round(v*k)/k+0, 'f', decimals, 64))
 }
 
 // weight is what a class of evidence weighs in a hypothesis.
@@ -73,7 +93,7 @@ func num(p *float64) string {
 	if p == nil {
 		return "–"
 	}
-	return fmt.Sprintf("%.1f", *p)
+	return minus(fmt.Sprintf("%.1f", math.Round(*p*10)/10+0)) // + 0: no minus zero
 }
 
 func val(m map[string]float64, name, format string) string {
@@ -136,7 +156,10 @@ func amount(a wire.Amount) string {
 		if x >= 1000 || x <= -1000 {
 			return strconv.FormatFloat(x, 'f', 0, 64)
 		}
-		return strconv.FormatFloat(x, 'g', 3, 64)
+		if x < 5e-3 && x > -5e-3 {
+			return "0"
+		}
+		return minus(strconv.FormatFloat(x, 'g', 3, 64))
 	}
 	sign := ""
 	for _, u := range units {

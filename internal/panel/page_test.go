@@ -214,6 +214,27 @@ func TestEmptyPages(t *testing.T) {
 	}
 }
 
+// What is shelved or out of service must not look like health, nor what is found and raises no alarm.
+func TestHiddenIsNotHealthy(t *testing.T) {
+	n := full()
+	n.Standing, n.Findings, n.Health.Trouble = nil, n.Findings[2:], nil
+	v := arrange(n, 0)
+	v.hidden([]wire.Point{{Key: "t1.he.suction/leaking", Subject: "t1.he.suction", Kind: "leaking", State: "shelved", Level: "alert"}, {Key: "t1.ce.d1/x", Subject: "t1.ce.d1", Kind: "x", State: "out-of-service", Level: "none"},
+		{Key: "t1.ce.s1/y", Subject: "t1.ce.s1", Kind: "y", State: "suppressed", Level: "none"}, {Key: "t1.he.discharge/z", Subject: "t1.he.discharge", Kind: "z", State: "normal"}})
+	for _, c := range []struct {
+		got          cell
+		class, words string
+	}{{v.Valves[0].Rows[0].Cells[0], "mute", "leaking: shelved"}, {v.Valves[0].Rows[1].Cells[1], "mute", "x: out of service"}, {v.Valves[0].Rows[1].Cells[0], "good", "no alarm"}, {v.Valves[0].Rows[0].Cells[1], "good", "no alarm"},
+		{v.Valves[1].Rows[0].Cells[0], "advisory", "advisory: opening-late, no alarm stands on it"}} {
+		if c.got.Class != c.class || c.got.Words != c.words {
+			t.Errorf("%+v, want %s %q", c.got, c.class, c.words)
+		}
+	}
+	if b := v.Banner; b.Class != "mute" || !strings.Contains(b.Text, "one is hidden") || !strings.HasSuffix(b.More, "t1.he.suction/leaking is shelved, behind it: alert; t1.ce.d1/x is out of service") {
+		t.Errorf("%+v", b)
+	}
+}
+
 // Silence must not look like health.
 func TestBanner(t *testing.T) {
 	good := func() *wire.Now {
@@ -297,7 +318,7 @@ func TestValveMap(t *testing.T) {
 	if idle.Class != "mute" || !strings.Contains(idle.Words, "not judged") || idle.Opens != "" {
 		t.Errorf("an idle end shows %+v", idle)
 	}
-	n.Health.Learned, n.Standing = false, nil
+	n.Health.Learned, n.Standing, n.Findings = false, nil, nil
 	if c := arrange(n, 0).Valves[0].Rows[0].Cells[0]; c.Class != "mute" || c.Words != "measured, not judged" {
 		t.Errorf("without a baseline a valve shows %+v", c)
 	}
@@ -329,7 +350,7 @@ func TestWords(t *testing.T) {
 	}{
 		{wire.Amount{Name: "leak_area_mm2", Value: 38.24, Low: ptr(31), High: ptr(46)}, "leak area", "38.2 mm² (31 to 46)"},
 		{wire.Amount{Name: "lost_capacity_kg_h", Value: 123456}, "lost capacity", "123456 kg/h"},
-		{wire.Amount{Name: "odd_thing", Value: -0.5, Low: ptr(1)}, "odd thing", "-0.5"},
+		{wire.Amount{Name: "odd_thing", Value: -0.5, Low: ptr(1)}, "odd thing", "−0.5"},
 	} {
 		if u, s := unit(c.a.Name), amount(c.a); u != c.unit || s != c.text {
 			t.Errorf("%s: %q %q", c.a.Name, u, s)

@@ -176,7 +176,7 @@ func TestCylinderPage(t *testing.T) {
 	page := drawPage(t, src, "/cylinder/t1")
 	keep(t, "cylinder", page)
 	contains(t, page, `<a href="/cylinder/t1" aria-current="page">Throw t1</a>`, `/api/v1/throws/t1/charts/angle.svg?turn=7&amp;size=screen&amp;theme=night`, `<h2 id="numbers">Turn 7 in numbers</h2>`,
-		`suction plateau<small class="soft">bar abs</small></th><td><span>5.02</span><small class="soft">5 ± 0.01, &#43;2.0</small></td>`, `<td class="advisory"><span class="tone">● 1.2</span>`, "All 4 measures", "t1.he.suction.opens", "t1.he.discharge.opens", "298.4 to 314.4")
+		`suction plateau<small class="soft">bar abs</small></th><td><span>5.020</span><small class="soft">5.000 ± 0.010, &#43;2.0</small></td>`, `<td class="advisory"><span class="tone">● 1.200</span>`, "All 4 measures", "t1.he.suction.opens", "t1.he.discharge.opens", "298.4 to 314.4")
 	lacks(t, page, `data-kind="load"`)
 	for _, path := range []string{"/cylinder/t9", "/channels/none"} {
 		w := httptest.NewRecorder()

@@ -61,6 +61,7 @@ type picture struct{ Kind, Name, Alt string }
 type point struct {
 	wire.Point
 	Shown   string // colour class
+	Tag     string // severity, or state where it has none
 	InWords string
 	Why     string
 	Acts    []act
@@ -105,6 +106,7 @@ func (s *site) page(name, title string, fill func(r *http.Request, p *sheet) (st
 	return func(w http.ResponseWriter, r *http.Request) {
 		n := s.src.Now()
 		p := &sheet{view: arrange(n, s.seen.age(n, time.Now())), Page: name, Title: title}
+		p.hidden(s.src.Alarms().Points)
 		if fill != nil {
 			if status := fill(r, p); status != 0 {
 				http.Error(w, "there is no such page", status)
@@ -204,7 +206,10 @@ func (s *site) journal(r *http.Request, p *sheet) int {
 	q := r.URL.Query()
 	p.Severities, p.AskSeverity = []string{"advisory", "alert", "danger"}, q.Get("severity")
 	for _, k := range s.src.Alarms().Points {
-		pt := point{Point: k, Shown: tone(k.Severity), InWords: stateInWords(k.State), Acts: actsFor(k.State)}
+		pt := point{Point: k, Shown: tone(k.Severity), Tag: k.Severity, InWords: stateInWords(k.State), Acts: actsFor(k.State)}
+		if pt.Shown == "mute" {
+			pt.Tag = strings.ReplaceAll(k.State, "-", " ")
+		}
 		switch {
 		case k.Shelf != nil:
 			pt.Why = "by " + k.Shelf.By + " until " + clock(k.Shelf.Until) + ": " + k.Shelf.Reason

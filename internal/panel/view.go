@@ -58,6 +58,7 @@ type mapRow struct {
 	End   string
 	State string
 	Cells [2]cell // suction, discharge
+	short string  // he, ce
 }
 
 // cell is one valve group: its worst standing alarm, or why there is nothing to say.
@@ -290,12 +291,14 @@ func drawThrow(n *wire.Now, t *wire.TurnThrow) throwMap {
 	names := map[string]string{"he": "head end", "ce": "crank end"}
 	for i := range t.Ends {
 		e := &t.Ends[i]
-		row := mapRow{End: names[e.End], State: e.State}
+		row := mapRow{End: names[e.End], State: e.State, short: e.End}
 		for g, group := range []string{"suction", "discharge"} {
 			base := t.ID + "." + e.End + "."
-			c := worst(n, func(s string) bool {
-				return s == base+group || strings.HasPrefix(s, base+group+".") || strings.HasPrefix(s, base+group[:1]) && digits(s[len(base)+1:])
-			})
+			mine := func(s string) bool { return inGroup(s, base, group) }
+			c := worst(n, mine)
+			if c.Class == "" {
+				c = seen(n, mine)
+			}
 			if c.Class == "" {
 				c.Class, c.Words = quiet(n, e.State)
 			}
@@ -370,3 +373,60 @@ func throwOf(n *wire.Now, subject string) string {
 
 // Owner is throwOf for the pages.
 func (v *view) Owner(subject string) string { return throwOf(v.Now, subject) }
+
+// inGroup tells whether a subject is a valve group, one of its events or one of its valves; base is t1.he. .
+func inGroup(s, base, group string) bool {
+	return s == base+group || strings.HasPrefix(s, base+group+".") || strings.HasPrefix(s, base+group[:1]) && digits(s[len(base)+1:])
+}
+
+// seen gives the worst finding that no standing alarm shows: it is too little for one, or its point is hidden.
+func seen(n *wire.Now, match func(subject string) bool) (c cell) {
+	for i := range n.Findings {
+		if f := &n.Findings[i]; match(f.Subject) && (c.Class == "" || ranks[f.Grade] > ranks[c.Class]) {
+			c = cell{Class: tone(f.Grade), Words: f.Grade + ": " + f.Kind + ", no alarm stands on it"}
+		}
+	}
+	return c
+}
+
+// hidden says which alarm points cannot show: what is shelved must not look like health.
+func (v *view) hidden(points []wire.Point) {
+	var words []string
+	behind := false
+	for i := range points {
+		p := &points[i]
+		if p.State != "shelved" && p.State != "suppressed" && p.State != "out-of-service" {
+			continue
+		}
+		stands := ranks[p.Level] > 0
+		if p.State == "suppressed" && !stands {
+			continue // by design, and nothing is lost by it
+		}
+		behind = behind || stands
+		said := p.Key + " is " + strings.ReplaceAll(p.State, "-", " ")
+		if stands {
+			said += ", behind it: " + p.Level
+		}
+		words = append(words, said)
+		for k := range v.Valves {
+			for r := range v.Valves[k].Rows {
+				row := &v.Valves[k].Rows[r]
+				for g, group := range []string{"suction", "discharge"} {
+					if c := &row.Cells[g]; c.Class == "good" && inGroup(p.Subject, v.Valves[k].ID+"."+row.short+".", group) {
+						c.Class, c.Words = "mute", p.Kind+": "+strings.ReplaceAll(p.State, "-", " ")
+					}
+				}
+			}
+		}
+	}
+	if len(words) == 0 {
+		return
+	}
+	if v.Banner.More != "" {
+		v.Banner.More += "; "
+	}
+	v.Banner.More += strings.Join(words, "; ")
+	if behind && v.Banner.Class == "good" {
+		v.Banner.Class, v.Banner.Title, v.Banner.Text = "mute", "an alarm is hidden", "No alarm is shown, but one is hidden"
+	}
+}
