@@ -124,10 +124,10 @@ func (b *bus) round(ctx context.Context, d *device) error {
 					got[k] = reading{why: verr.Error(), since: now}
 				}
 			}
-		case refused(err) && len(blk.tags) > 1 && !b.serial: // a hole within the block, perhaps
-			d.takeApart(i)
+		case (refused(err) || errors.Is(err, modbus.ErrServerDeviceFailure)) && len(blk.tags) > 1 && !b.serial:
+			d.takeApart(i) // a hole within the block, perhaps, or more at once than the device gives
 			i--
-		case refused(err):
+		case refused(err) || errors.Is(err, modbus.ErrServerDeviceFailure) && len(blk.tags) > 1:
 			if len(blk.tags) > 1 {
 				d.takeApart(i)
 			} else {

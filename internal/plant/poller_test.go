@@ -60,15 +60,33 @@ func TestValuesComeInTheirUnits(t *testing.T) {
 	}
 }
 
+// Devices refuse to read across registers that they do not have, or more at once than they like, with one exception or
+// another, and some of them sit on a serial line.
 func TestADeviceThatRefusesAcrossAHoleIsReadTagByTag(t *testing.T) {
-	f := newFake(t, &fake{})
-	f.set(3, 10, 8000)
-	f.set(3, 14, 22000) // 11 to 13 do not exist
-	p := polling(t, withModbus(t, one("tcp://"+f.addr(), "", tagPs, strings.Replace(tagPd, "address: 11", "address: 14", 1))))
-	until(t, "both values are there", func() bool {
-		l := now(t, p).Stages[0]
-		return same(l.Ps, 8e5) && same(l.Pd, 22e5)
-	})
+	for _, serial := range []bool{false, true} {
+		for _, exception := range []byte{1, 2, 3, 4} {
+			t.Run(fmt.Sprint(serial, exception), func(t *testing.T) {
+				t.Parallel()
+				f := newFake(t, &fake{serial: serial, script: func(_ int, q request) reply {
+					if q.n > 1 {
+						return reply{exception: exception}
+					}
+					return reply{}
+				}})
+				f.set(3, 10, 8000)
+				f.set(3, 14, 22000)
+				url := "tcp://"
+				if serial {
+					url = "rtuovertcp://"
+				}
+				p := polling(t, withModbus(t, one(url+f.addr(), "", strings.Replace(tagPs, "0.5", "20", 1), strings.Replace(strings.Replace(tagPd, "address: 11", "address: 14", 1), "0.5", "20", 1))))
+				until(t, "both values are there", func() bool {
+					l := now(t, p).Stages[0]
+					return same(l.Ps, 8e5) && same(l.Pd, 22e5)
+				})
+			})
+		}
+	}
 }
 
 // What a device does wrong, one at a time: the values of that device leave, others stay, the line never waits, and the
