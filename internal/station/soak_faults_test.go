@@ -151,9 +151,17 @@ func TestSoakFaults(t *testing.T) {
 	}
 	var all []soakRun
 	for seed := first; seed < first+machines; seed++ {
-		m := soakMachine(t, uint64(seed), soakSteps...)
+		var steps []int // only what is asked for is learnt
+		for _, step := range soakSteps {
+			for _, load := range soakLoads {
+				if load.step == step && strings.Contains(load.name, os.Getenv("LOAD")) && !slices.Contains(steps, step) {
+					steps = append(steps, step)
+				}
+			}
+		}
+		m := soakMachine(t, uint64(seed), steps...)
 		for _, f := range soakFaults() {
-			if !strings.Contains(f.name, os.Getenv("FAULT")) {
+			if only := strings.Split(os.Getenv("FAULT"), ","); !slices.ContainsFunc(only, func(a string) bool { return strings.Contains(f.name, a) }) {
 				continue
 			}
 			per := 1.0
@@ -177,6 +185,15 @@ func TestSoakFaults(t *testing.T) {
 		}
 	}
 	t.Log("\n" + soakTable(all))
+	right := 0
+	for _, r := range all {
+		if r.Advisory > 0 {
+			right++
+		}
+	}
+	if 100*right < 95*len(all) {
+		t.Errorf("the right part and kind in %d of %d runs", right, len(all))
+	}
 }
 
 // fails plays one fault.
