@@ -123,6 +123,12 @@ func TestLatency(t *testing.T) {
 			whole, line = append(whole, now.Sub(from)), append(line, told[turn].Sub(from))
 		}
 	}
+	var quiet []time.Duration // turns that change nothing: no commit
+	for turn, now := range told {
+		if from, ok := src.at(ends[turn]); ok && arrived[turn].IsZero() {
+			quiet = append(quiet, now.Sub(from))
+		}
+	}
 	if len(whole) == 0 {
 		t.Fatal("no transition came")
 	}
@@ -134,6 +140,7 @@ func TestLatency(t *testing.T) {
 	t.Logf("%d turns with transitions, of %d; a turn takes %s", len(whole), len(ends), q(turns, 0.5))
 	t.Logf("from the turn's last sample to the message at a subscriber: p50 %s, p90 %s, p99 %s, largest %s", q(whole, 0.5), q(whole, 0.9), q(whole, 0.99), q(whole, 1))
 	t.Logf("of that to the end of the line, journal on the disk: p50 %s, p90 %s, p99 %s, largest %s", q(line, 0.5), q(line, 0.9), q(line, 0.99), q(line, 1))
+	t.Logf("other turns, to the end of the line: p50 %s, p90 %s, p99 %s, largest %s; the ledger's worst commit %s", q(quiet, 0.5), q(quiet, 0.9), q(quiet, 0.99), q(quiet, 1), s.ledger.Stats().WorstCommit.Round(time.Millisecond))
 }
 
 // startMosquitto runs a broker of the test's own on loopback.

@@ -77,6 +77,7 @@ func New(cfg Config, box Outbox) (*Publisher, error) {
 	if cfg.unencrypted() {
 		cfg.Log.Warn("uplink: the password crosses the network unencrypted; use tls://", "broker", cfg.Broker)
 	}
+	cfg.warnReadable()
 	p := &Publisher{cfg: cfg, box: box, wake: make(chan struct{}, 1), latest: map[string]Message{}}
 	if err := p.openInbox(); err != nil {
 		return nil, err

@@ -31,10 +31,16 @@ func place(file string) (string, error) {
 	return filepath.Join(dir, name), nil
 }
 
-// readable warns of a secret that everybody on this computer can read.
-func (c *Config) readable(what, file string) {
-	if st, err := os.Stat(file); err == nil && st.Mode().Perm()&0o004 != 0 {
-		c.Log.Warn("uplink: everybody on this computer can read the "+what+" file", "file", file)
+// warnReadable warns of secrets that everybody on this computer can read.
+func (c *Config) warnReadable() {
+	for _, s := range [][2]string{{"password", c.PasswordFile}, {"key", c.KeyFile}} {
+		file, err := place(s[1])
+		if err != nil || file == "" {
+			continue
+		}
+		if st, err := os.Stat(file); err == nil && st.Mode().Perm()&0o004 != 0 {
+			c.Log.Warn("uplink: everybody on this computer can read the "+s[0]+" file", "file", file)
+		}
 	}
 }
 
