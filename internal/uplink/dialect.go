@@ -70,19 +70,30 @@ func newSpeaker(cfg *Sparkplug, t Topics) (*speaker, error) {
 		return nil, err
 	}
 	s := &speaker{cfg: cfg, node: n, topics: t, now: func() time.Time { return time.Now().UTC() }, open: map[string]int32{}, mail: mailbox{bell: make(chan struct{}, 1)}}
-	n.Define("", cfg.Known...)
-	n.Define("", healthMetrics(&wire.Health{}, true)...)
-	n.Define("", sparkplug.Metric{Name: worstName, Type: sparkplug.Int32, Value: int32(0)})
-	for _, key := range cfg.Alarms {
-		n.Define("", normalAlarm(key, time.Time{}))
-	}
+	told := Vocabulary(cfg)
+	n.Define("", told[""]...)
 	for _, d := range cfg.Devices {
-		n.Define(d.ID, throwMetrics(&wire.Features{Throw: d.ID}, nil)...)
-		for _, m := range d.Measures {
-			n.Define(d.ID, sparkplug.Metric{Name: measureName(d.ID, m[0], m[1]), Type: sparkplug.Double})
-		}
+		n.Define(d.ID, told[d.ID]...)
 	}
 	return s, nil
+}
+
+// Vocabulary gives the metrics that are told from the first birth on, by device; "" is the node. Values are those before
+// anything is known.
+func Vocabulary(cfg *Sparkplug) map[string][]sparkplug.Metric {
+	node := slices.Concat(cfg.Known, healthMetrics(&wire.Health{}, true), []sparkplug.Metric{{Name: worstName, Type: sparkplug.Int32, Value: int32(0)}})
+	for _, key := range cfg.Alarms {
+		node = append(node, normalAlarm(key, time.Time{}))
+	}
+	told := map[string][]sparkplug.Metric{"": node}
+	for _, d := range cfg.Devices {
+		ms := throwMetrics(&wire.Features{Throw: d.ID}, nil)
+		for _, m := range d.Measures {
+			ms = append(ms, sparkplug.Metric{Name: measureName(d.ID, m[0], m[1]), Type: sparkplug.Double})
+		}
+		told[d.ID] = ms
+	}
+	return told
 }
 
 // will begins a connection.

@@ -108,18 +108,18 @@ func (h *Host) Hear(topic string, qos byte, retain bool, payload []byte) {
 	if ofDevice {
 		device = f[4]
 	}
-	if retain {
-		h.breach("payloads-"+strings.ToLower(f[2])+"-retain", "retained")
-	}
 	if kind == sparkplug.NDeath {
+		if retain {
+			h.breach("payloads-ndeath-will-message-retain", "retained")
+		}
 		if n := h.death(payload); n != h.bdSeq {
 			h.breach("operational-behavior-edge-node-intentional-disconnect-ndeath", "bdSeq %d, born with %d", n, h.bdSeq)
 		}
 		h.online = false
 		return
 	}
-	if qos != 0 {
-		h.breach("payloads-"+strings.ToLower(f[2])+"-qos", "QoS %d", qos)
+	if qos != 0 || retain {
+		h.breach("topics-"+strings.ToLower(f[2])+"-mqtt", "QoS %d, retained %v", qos, retain)
 	}
 	p, err := sparkplug.Decode(payload)
 	if err != nil {
