@@ -6,8 +6,11 @@ import (
 	"lapwing/internal/window"
 )
 
-// roomStep is the step of sums over a whole turn: their parts bend little.
-const roomStep = 4.0 // degrees
+// Steps in degrees of sums over a whole turn, whose parts bend little, and along a closed line.
+const (
+	roomStep = 4.0
+	lineStep = 1.0
+)
 
 // climate is what the flows of an end are reckoned with.
 type climate struct {
@@ -91,24 +94,26 @@ func (m *Measurer) strokes(c *throwCtx, f *takeIn, e int, kv float64) {
 
 // stroke adds one closed stroke, reduced to a few points, its own constant taken out.
 func (m *Measurer) stroke(c *throwCtx, f *takeIn, e int, kv float64, k *climate, scale *[inCount]float64, run window.Run) {
-	n := run.I1 - run.I0
+	every := max(1, int(math.Round(lineStep/c.th.Grid.Step)))
+	n := (run.I1 - run.I0 + every - 1) / every
 	bins := min(inBins, n/3)
 	if bins < 3 {
 		return
 	}
-	energy := kv * c.in.Gas.Zs * c.in.Gas.R * c.in.Ts * c.th.Grid.Step
+	energy := kv * c.in.Gas.Zs * c.in.Gas.R * c.in.Ts * c.th.Grid.Step * float64(every)
 	var rows [inBins][inCount + 1]float64
 	var sum, mean [inCount + 1]float64
 	p, v := c.th.P[e], c.v[e]
 	var count [inBins]float64
-	for i := run.I0; i < run.I1; i++ {
+	for at := range n {
+		i := run.I0 + at*every
 		r := c.rates(k, e, i)
 		per := energy / (p[i] * v[i])
 		row := [inCount + 1]float64{inHeat: r.heat, inWall: r.wall}
 		row[2*e], row[2*e+1] = -r.suction*r.warm, r.discharge*(1+k.hot)
 		row[4] = r.in*r.other - r.out*r.warm
-		b := &rows[(i-run.I0)*bins/n]
-		count[(i-run.I0)*bins/n]++
+		b := &rows[at*bins/n]
+		count[at*bins/n]++
 		for j := range inZero {
 			sum[j] += row[j] * scale[j] * per
 			b[j] += sum[j]
