@@ -61,7 +61,7 @@ func tables(t *testing.T, base string) {
 	for _, r := range events {
 		angle, err1 := strconv.ParseFloat(r["angle_deg"], 64)
 		expected, err2 := strconv.ParseFloat(r["expected_deg"], 64)
-		if key := r["throw"] + "." + r["end"]; r["event"] == "discharge.opens" && err1 == nil && err2 == nil {
+		if key := r["throw"] + "." + r["cylinder_end"]; r["event"] == "discharge.opens" && err1 == nil && err2 == nil {
 			if w, ok := worst[key]; !ok || angle-expected > w {
 				worst[key] = angle - expected
 			}
@@ -86,7 +86,7 @@ func tables(t *testing.T, base string) {
 	for _, c := range got.Types {
 		types[c.Name] = c.Type
 	}
-	if types["value"] != "DOUBLE" || types["turn"] != "BIGINT" || !strings.HasPrefix(types["at"], "TIMESTAMP") {
+	if types["value"] != "DOUBLE" || types["turn"] != "BIGINT" || !strings.HasPrefix(types["time_utc"], "TIMESTAMP") {
 		t.Errorf("types %v", types)
 	}
 }

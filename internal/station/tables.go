@@ -105,7 +105,7 @@ func col(name string, t table.Type, note string) table.Column {
 
 func (w *tableWriter) turn(l *Line, o *Output) error {
 	alarms, err := w.table("alarms", func() []table.Column {
-		return []table.Column{col("at", table.Instant, "sample clock"), col("id", table.Whole, ""), col("key", table.Text, ""), col("subject", table.Text, ""), col("kind", table.Text, ""),
+		return []table.Column{col("time_utc", table.Instant, "sample clock"), col("id", table.Whole, ""), col("key", table.Text, ""), col("subject", table.Text, ""), col("kind", table.Text, ""),
 			col("from_state", table.Text, "IEC 62682"), col("to_state", table.Text, "IEC 62682"), col("severity", table.Text, ""), col("turn", table.Whole, ""), col("first_sample", table.Whole, ""), col("end_sample", table.Whole, "not included"), col("sentence", table.Text, "")}
 	})
 	if err != nil {
@@ -126,7 +126,7 @@ func (w *tableWriter) turn(l *Line, o *Output) error {
 
 func (w *tableWriter) measures(l *Line, o *Output) error {
 	t, err := w.table("measures", func() []table.Column {
-		return []table.Column{col("at", table.Instant, "head-end dead centre of the first throw"), col("turn", table.Whole, ""), col("throw", table.Text, ""), col("duty", table.Text, ""), col("load_step", table.Whole, ""),
+		return []table.Column{col("time_utc", table.Instant, "head-end dead centre of the first throw"), col("turn", table.Whole, ""), col("throw", table.Text, ""), col("duty", table.Text, ""), col("load_step", table.Whole, ""),
 			col("speed_rpm", table.Number, ""), col("subject", table.Text, "throw, end, valve group, valve, leak path or event"), col("name", table.Text, "with its unit"), col("value", table.Number, ""),
 			col("expected", table.Number, "at this duty by the baseline; absent where it has not seen the duty"), col("spread", table.Number, "robust standard deviation of a turn when healthy")}
 	})
@@ -169,7 +169,7 @@ func (w *tableWriter) measures(l *Line, o *Output) error {
 
 func (w *tableWriter) events(o *Output) error {
 	t, err := w.table("events", func() []table.Column {
-		return []table.Column{col("at", table.Instant, ""), col("turn", table.Whole, ""), col("throw", table.Text, ""), col("end", table.Text, ""), col("event", table.Text, ""), col("state", table.Text, ""),
+		return []table.Column{col("time_utc", table.Instant, ""), col("turn", table.Whole, ""), col("throw", table.Text, ""), col("cylinder_end", table.Text, ""), col("event", table.Text, ""), col("state", table.Text, ""),
 			col("angle_deg", table.Number, "where the pressure leaves the closed line"), col("crossing_deg", table.Number, "closed line extended to the plateau"), col("expected_deg", table.Number, "of a sealed cylinder between this turn's plateaus"),
 			col("window_low_deg", table.Number, ""), col("window_high_deg", table.Number, ""), col("why", table.Text, "")}
 	})
@@ -206,7 +206,7 @@ func (w *tableWriter) angles(l *Line, o *Output) error {
 		}
 	}
 	t, err := w.table("angles", func() []table.Column {
-		c := []table.Column{col("at", table.Instant, "of the turn"), col("turn", table.Whole, ""), col("throw", table.Text, ""), col("angle_deg", table.Number, "after the throw's head-end dead centre"),
+		c := []table.Column{col("time_utc", table.Instant, "of the turn"), col("turn", table.Whole, ""), col("throw", table.Text, ""), col("angle_deg", table.Number, "after the throw's head-end dead centre"),
 			col("p_he_bar_abs", table.Number, ""), col("p_ce_bar_abs", table.Number, ""), col("v_he_l", table.Number, ""), col("v_ce_l", table.Number, "")}
 		for _, id := range ids {
 			c = append(c, col(id+"_peak_g", table.Number, "largest value in the bin, impact band"))
@@ -256,7 +256,7 @@ func (w *tableWriter) samples(ctx context.Context) error {
 	}
 	defer src.Close()
 	info := src.Info()
-	cols := []table.Column{col("sample", table.Whole, "number of the sample in its run"), col("at", table.Instant, "sample clock")}
+	cols := []table.Column{col("sample", table.Whole, "number of the sample in its run"), col("time_utc", table.Instant, "sample clock")}
 	for i := range info.Channels {
 		c := col(fmt.Sprintf("input_%d", i), table.Whole, "counts")
 		for k := range w.sk.Channels {

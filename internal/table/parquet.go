@@ -19,8 +19,8 @@ const (
 type parquetSheet struct {
 	f     *os.File
 	buf   *bufio.Writer
-	w     *parquet.Writer
-	place []int // of each of our columns among the file's, which are in order of name
+	w     *parquet.GenericWriter[any] // rows by the schema given
+	place []int                       // of each of our columns among the file's, which are in order of name
 	rows  []parquet.Row
 	n     int // in the row group
 }
@@ -51,7 +51,7 @@ func newParquet(f *os.File, at *Place, cols []Column) (sheet, error) {
 	for _, n := range names {
 		s.place = append(s.place, slices.Index(sorted, n))
 	}
-	s.w = parquet.NewWriter(s.buf, options...)
+	s.w = parquet.NewGenericWriter[any](s.buf, options...)
 	return s, nil
 }
 

@@ -12,8 +12,8 @@ const ask = async (sql) => (await db.runAndReadAll(sql)).getRowObjectsJson();
 console.log(JSON.stringify({
   partitions: await ask(`select site, skid, cast(date as varchar) as day, count(*) as rows from ${table('measures')} group by all order by all`),
   // Which turn of each day had its discharge valves open latest, against a sealed cylinder?
-  worst: await ask(`select cast(date as varchar) as day, throw, "end", max(angle_deg - expected_deg) as late, arg_max(turn, angle_deg - expected_deg) as turn
-    from ${table('events')} where event = 'discharge.opens' and angle_deg is not null and expected_deg is not null group by all order by throw, "end"`),
+  worst: await ask(`select cast(date as varchar) as day, throw, cylinder_end as "end", max(angle_deg - expected_deg) as late, arg_max(turn, angle_deg - expected_deg) as turn
+    from ${table('events')} where event = 'discharge.opens' and angle_deg is not null and expected_deg is not null group by all order by throw, cylinder_end`),
   // What did the head end's late compression exponent do around each alarm?
   around: await ask(`select a.id, a.key, count(*) as turns, avg(m.value) as mean, min(m.turn) as first, max(m.turn) as last
     from ${table('alarms')} a join ${table('measures')} m on m.turn between a.turn - 20 and a.turn + 20
