@@ -101,10 +101,12 @@ func newInbox(p *Publisher) *inbox {
 	return &inbox{cmd: p.cfg.Commands, p: p, queue: make(chan Received, commandQueue), answered: map[string]answered{}, tokens: float64(p.cfg.pace.burst)}
 }
 
-// subscribe asks the broker for commands. Nobody waits for the answer: alarms go out meanwhile.
+// subscribe asks the broker for commands. Nobody waits for the answer: alarms go out meanwhile. At QoS 0: a command that is
+// lost brings no receipt and is sent again under the same request, and a cluster that keeps a replicated queue for every
+// QoS 1 subscription is not asked for one by each skid.
 func (in *inbox) subscribe(c mqtt.Client) mqtt.Token {
 	in.heard(false, nil)
-	return c.Subscribe(in.p.cfg.Topics.Command(), 1, func(_ mqtt.Client, m mqtt.Message) {
+	return c.Subscribe(in.p.cfg.Topics.Command(), 0, func(_ mqtt.Client, m mqtt.Message) {
 		select {
 		case in.queue <- Received{m.Topic(), m.Payload(), m.Retained()}:
 		default: // the library must not be held up

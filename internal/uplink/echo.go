@@ -11,7 +11,7 @@ import (
 // throw it away: MQTT 3.1.1 has no word for that (section 3.3.5). So the daemon reads its own health, which must come back.
 type echo struct{ late *time.Timer }
 
-// listen subscribes once on a connection, before the health is sent whose echo is awaited.
+// listen subscribes once on a connection, before the health is sent whose echo is awaited. At QoS 0, as for commands.
 func (b *pump) listen() {
 	if b.echo.late != nil {
 		return
@@ -23,7 +23,7 @@ func (b *pump) listen() {
 		p.note(func(s *Status) { s.Unheard = why })
 	})
 	b.echo.late = late
-	b.c.Subscribe(topic, 1, func(_ mqtt.Client, m mqtt.Message) {
+	b.c.Subscribe(topic, 0, func(_ mqtt.Client, m mqtt.Message) {
 		if m.Retained() { // of an earlier connection
 			return
 		}
