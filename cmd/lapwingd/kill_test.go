@@ -68,7 +68,7 @@ func TestSystemKilledAgainAndAgain(t *testing.T) {
 	}
 
 	p := boot("--source", "model:swings", "--learn", "200")
-	p.until(90*time.Second, "a baseline is learnt", func() bool { return strings.Contains(p.err.String(), `msg="baseline learnt"`) })
+	p.until(90*time.Second, "a baseline is learnt", func() bool { return strings.Contains(p.err.String(), `msg="baseline in force"`) })
 	if code := p.terminate(20 * time.Second); code != 0 {
 		t.Fatalf("exit %d after the learning run", code)
 	}
