@@ -41,6 +41,7 @@ type Look struct {
 	At       time.Time
 	Picture  chart.Cylinder
 	Measures []wire.WhyMeasure // what is known of it in this turn, in the order of the layout, with what was expected
+	Record   *wire.TurnThrow   // its part of the turn's record, with the events; nil: not known
 	Against  string            // why there are no expected values; empty: there are
 }
 

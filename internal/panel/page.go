@@ -33,6 +33,7 @@ var pages = func() map[string]*template.Template {
 		"join":      func(s []string) string { return strings.Join(s, ", ") },
 		"semi":      func(s []string) string { return strings.Join(s, "; ") },
 		"weight":    weight,
+		"span":      span,
 		"lasted":    lasted,
 		"keepable":  func(c wire.Clip) bool { return c.Complete && !c.From.IsZero() && c.To.After(c.From) },
 		"dict": func(_ string, a act, _ string, key string) map[string]any {
@@ -52,6 +53,14 @@ func fig(p *float64) string {
 		return "–"
 	}
 	return minus(strconv.FormatFloat(*p, 'g', 4, 64))
+}
+
+// span is a window.
+func span(w *[2]float64) string {
+	if w == nil {
+		return "–"
+	}
+	return num(&w[0]) + " to " + num(&w[1])
 }
 
 // minus gives a figure a true minus sign.

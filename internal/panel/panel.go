@@ -1,7 +1,7 @@
 // Package panel is the local status page and the HTTP API behind it.
 //
-// needs: the present snapshot and a way to hand out clips; waits: for requests, on loopback only; emits: one page,
-// the snapshot as JSON, clips as tar. It reads what is there and slows nobody. When nothing is judged, or
+// needs: the present snapshot and a way to hand out clips and pictures; waits: for requests, on loopback only; emits: the
+// pages, the snapshot as JSON, charts, clips as tar. It reads what is there and slows nobody. When nothing is judged, or
 // nothing new comes, it says so: silence must not look like health. A network address is refused until the page has a
 // login.
 //
@@ -18,6 +18,9 @@
 //	GET  /api/v1/pull            see pulls: by clip, time or turns, resumable
 //	GET  /api/v1/learning        see learning; /api/v1/baselines lists and gives baselines, POST takes one
 //	GET  /metrics                the daemon's own measures in the Prometheus text format; see station/metrics.go for the list
+//	GET  /api/v1/events          server-sent: what has changed, at most once a second
+//	GET  /api/v1/throws          see looking: turns over crank angle, charts, and the newest second of a channel
+//	GET  /api/v1/openapi.json    all this as OpenAPI 3.1
 //	GET  /api/v1/schemas         names of the JSON Schemas of all this; /api/v1/schemas/{name} one of them
 //
 // An order is carried out between two turns, also while the machine stands, and is in the journal whether it was carried

@@ -75,7 +75,8 @@ func pose(turn int64) *Look {
 	c.Vib = []chart.Vib{{Channel: "a1", Peak: make([]float64, n)}}
 	c.Vib[0].Peak[300] = 98.0665
 	x := 5.02
-	return &Look{Throw: "t1", Turn: turn, At: at, Picture: c, Measures: []wire.WhyMeasure{
+	rec := throw("t1", "following")
+	return &Look{Throw: "t1", Turn: turn, At: at, Picture: c, Record: &rec, Measures: []wire.WhyMeasure{
 		{Measure: "t1.he/p_suction_bar_abs", Value: &x, Expected: ptr(5), Spread: ptr(.01), Spreads: ptr(2)}, {Measure: "t1.ce/flow_balance", Value: ptr(1.2), Expected: ptr(1), Spread: ptr(.02), Spreads: ptr(10)},
 		{Measure: "t1/reversal_deg", Value: ptr(80)}, {Measure: "t1.he.suction.opens/peak_g", Value: ptr(11)}}}
 }

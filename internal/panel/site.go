@@ -19,14 +19,13 @@ type sheet struct {
 	Page, Title string
 	Nav         []link
 
-	Throw      string // cylinder
-	Turn       int64
-	Looks      []picture
-	NoLook     string
-	Numbers    *numberTable
-	Against    string
-	Record     *wire.TurnThrow
-	RecordTurn int64
+	Throw   string // cylinder
+	Turn    int64
+	Looks   []picture
+	NoLook  string
+	Numbers *numberTable
+	Against string
+	Record  *wire.TurnThrow
 
 	Subject string // findings
 	Found   []wire.Finding
@@ -157,20 +156,13 @@ func (s *site) cylinder(r *http.Request, p *sheet) int {
 	if err != nil {
 		p.NoLook = strings.ToUpper(err.Error()[:1]) + err.Error()[1:] + "."
 	} else {
-		p.Turn, p.Against = l.Turn, l.Against
+		p.Turn, p.Against, p.Record = l.Turn, l.Against, l.Record
 		for _, k := range kinds {
 			if k != "load" || l.Picture.Load != nil {
 				p.Looks = append(p.Looks, pictureNames[k])
 			}
 		}
 		p.Numbers = tabulate(l)
-	}
-	if t := p.Latest; t != nil && t.Valid {
-		for i := range t.Throws {
-			if t.Throws[i].ID == p.Throw {
-				p.Record, p.RecordTurn = &t.Throws[i], t.Turn
-			}
-		}
 	}
 	return 0
 }

@@ -105,6 +105,13 @@ func (l *Line) lookAt(o *Output, throw int, devs *[]duty.Deviation) *panel.Look 
 			}
 		}
 	}
+	rec := o.Record.Throws
+	if len(rec) == 0 { // not every turn has a whole record
+		rec = l.record.Record(o.Turn, o.Windows, o.Vector, o.Points).Throws
+	}
+	if throw < len(rec) {
+		p.Record = &rec[throw]
+	}
 	for i := range *devs {
 		p.Measures = append(p.Measures, wire.FromDeviation(&(*devs)[i], l.layout))
 	}

@@ -31,7 +31,7 @@ func TestPicturesOnDemand(t *testing.T) {
 	}
 	h.turns(t, 1)
 	l := h.Look("t1")
-	if l == nil || l.Throw != "t1" || l.Picture.Ends[0] == nil || len(l.Picture.Vib) == 0 || len(l.Measures) < 50 || l.Against == "" {
+	if l == nil || l.Throw != "t1" || l.Picture.Ends[0] == nil || len(l.Picture.Vib) == 0 || len(l.Measures) < 50 || l.Against == "" || l.Record == nil || l.Record.ID != "t1" || len(l.Record.Ends) != 2 {
 		t.Fatalf("%+v", l)
 	}
 	if h.gallery.looks[1].shown.Load() != nil {

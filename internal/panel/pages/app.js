@@ -4,7 +4,8 @@
 (() => {
 const $ = (q, from = document) => from.querySelector(q), all = (q, from = document) => [...from.querySelectorAll(q)];
 const page = document.body.dataset.page;
-let frozen = false, busy = false, reference = "";
+let frozen = false, busy = false, reference = "", shown = 0;
+let next = () => {}; // exchanges the charts of this page, if it has any
 
 // Names and orders.
 const who = $("#who");
@@ -36,14 +37,16 @@ async function renew(force) {
   if (busy || document.hidden) return;
   busy = true;
   try {
-    const r = await fetch(location.href, {headers: {Accept: "text/html"}});
+    const u = new URL(location);
+    if (shown) u.searchParams.set("turn", shown); // the numbers of the turn that the charts show
+    const r = await fetch(u, {headers: {Accept: "text/html"}});
     if (!r.ok) return;
-    const next = new DOMParser().parseFromString(await r.text(), "text/html");
-    document.title = next.title;
-    const parts = all("[data-live]"), same = parts.length === all("[data-live]", next).length;
-    if (!same && !typing()) { $("main").replaceChildren(...$("main", next).childNodes); restore(); return; }
+    const fresh = new DOMParser().parseFromString(await r.text(), "text/html");
+    document.title = fresh.title;
+    const parts = all("[data-live]"), same = parts.length === all("[data-live]", fresh).length;
+    if (!same && !typing()) { $("main").replaceChildren(...$("main", fresh).childNodes); restore(); return; }
     for (const old of parts) {
-      const neu = $(`[data-live="${old.dataset.live}"]`, next);
+      const neu = $(`[data-live="${old.dataset.live}"]`, fresh);
       if (!neu || old.outerHTML === neu.outerHTML || old.contains(document.activeElement) && !force || typing(old)) continue;
       const open = all("details[open]", old).map(d => d.dataset.keep), scroll = all(".wide", old).map(w => w.scrollLeft);
       old.replaceWith(neu);
@@ -64,7 +67,7 @@ function listen() {
     const n = JSON.parse(e.data), now = Date.now();
     if (now - told < 1800) return;
     const mine = n.refresh.includes(page) || n.refresh.includes("machine");
-    if (mine && !frozen) { told = now; renew(false); if (page === "cylinder") turn(); if (page === "channel") signal(); }
+    if (mine && !frozen) { told = now; Promise.resolve(next()).then(() => renew(false)); }
   });
   s.onerror = () => { $("#offline").hidden = false; };
   addEventListener("pagehide", () => s.close());
@@ -89,7 +92,7 @@ async function exchange(edit) {
   }
 }
 const freeze = $("#freeze");
-freeze.addEventListener("click", () => { frozen = !frozen; freeze.setAttribute("aria-pressed", frozen); freeze.textContent = frozen ? "Frozen: go on" : "Freeze"; if (!frozen) renew(false); });
+freeze.addEventListener("click", () => { frozen = !frozen; freeze.setAttribute("aria-pressed", frozen); freeze.textContent = frozen ? "Frozen: go on" : "Freeze"; if (!frozen) told = 0; });
 
 let drawing = false;
 async function signal() {
@@ -98,6 +101,7 @@ async function signal() {
   await exchange(u => u.searchParams.set("at", Date.now()));
   drawing = false;
 }
+if (page === "channel") next = signal;
 if (page !== "cylinder") return;
 
 // One throw: the numbers behind the charts, one cursor for all of them.
@@ -110,9 +114,10 @@ async function turn(number) {
   try {
     const r = await fetch(`/api/v1/throws/${encodeURIComponent(throwID)}/look` + (number ? `?turn=${number}` : ""));
     if (r.ok) {
-      const next = await r.json();
-      await exchange(u => { u.searchParams.set("turn", next.turn); if (reference) u.searchParams.set("reference", reference); else u.searchParams.delete("reference"); });
-      look = next;
+      const news = await r.json();
+      await exchange(u => { u.searchParams.set("turn", news.turn); if (reference) u.searchParams.set("reference", reference); else u.searchParams.delete("reference"); });
+      look = news;
+      shown = look.turn;
       slider.min = Math.max(0, look.from_deg);
       await measureCharts();
       point();
@@ -189,5 +194,6 @@ $("#hold").addEventListener("click", () => {
   over.value = o.value;
   over.dispatchEvent(new Event("change"));
 });
+next = () => turn();
 turn();
 })();
