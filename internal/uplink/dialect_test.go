@@ -272,6 +272,12 @@ func TestPrimaryHost(t *testing.T) {
 	before := len(h.seen())
 	h.state(1, true, 12)
 	await(t, "the alarm of meanwhile", func() bool { return box.len() == 0 })
+	h.hangUp() // what the host said on another connection is of no use on this one
+	await(t, "a connection that waits again", func() bool {
+		return h.connected() == 3 && strings.Contains(p.Status().LastError, "waits for the primary host")
+	})
+	h.state(2, true, 12)
+	await(t, "a birth after it", func() bool { return h.published("spBv1.0/compressors/NBIRTH/") == 3 })
 	stop()
 	if after := h.seen(); after[before].Topic != "spBv1.0/compressors/NBIRTH/heron-meadow" {
 		t.Errorf("the first that the host hears is %s", after[before].Topic)
@@ -340,6 +346,31 @@ func TestRebirth(t *testing.T) {
 	await(t, "the daemon takes its leave", func() bool { h.mu.Lock(); defer h.mu.Unlock(); return h.closed == 1 })
 	if host.Alive("") {
 		t.Error("the node left without its death")
+	}
+}
+
+// What a broker keeps of old commands is passed over: it would come again with every connection.
+func TestRetainedCommands(t *testing.T) {
+	p, err := New(speaking("tcp://127.0.0.1:1", &counter{}), &store{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	b := pump{p: p}
+	for _, retained := range []bool{true, false} {
+		p.spark.mail.put(Received{Topic: p.spark.node.Topic(sparkplug.NCmd, ""), Payload: ncmd("Node Control/Rebirth", 1), Retained: retained})
+		if b.hear() == retained {
+			t.Errorf("retained %v, obeyed %v", retained, !retained)
+		}
+	}
+	for range 2 * mailKept { // a flood takes no memory, and of a flood the newest counts
+		p.spark.mail.put(Received{Topic: "spBv1.0/STATE/x", Payload: []byte(`{"online":false,"timestamp":1}`)})
+	}
+	p.spark.mail.put(Received{Topic: "spBv1.0/STATE/x", Payload: []byte(`{"online":true,"timestamp":2}`)})
+	if n := len(p.spark.mail.got); n != mailKept {
+		t.Errorf("%d messages are kept", n)
+	}
+	if b.hear(); !p.spark.host.Online() {
+		t.Error("the newest was lost")
 	}
 }
 

@@ -81,7 +81,9 @@ func TestNoRuleIsBroken(t *testing.T) {
 				var ms []sparkplug.Metric
 				for range rapid.IntRange(0, 3).Draw(rt, "n") {
 					m := draw(rt)
-					m.At = now
+					if rapid.Bool().Draw(rt, "dated") {
+						m.At = now
+					}
 					ms = append(ms, m)
 					truth[d][m.Name] = m.Value
 				}
