@@ -15,7 +15,7 @@ import (
 	"lapwing/internal/acq"
 )
 
-var kills = flag.Int("kills", 8, "SIGKILLs at random moments")
+var kills = flag.Int("kills", 5, "SIGKILLs at random moments")
 
 // runChild is the child of the crash test: it appends segments, asks for a clip now and then, and says after each
 // flush how far it is, until it is killed.

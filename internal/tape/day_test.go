@@ -21,11 +21,11 @@ import (
 )
 
 var (
-	daySeconds = flag.Int("day", 20, "seconds of 17 inputs at 51.2 kHz that go through the ring; a day is 86400")
+	daySeconds = flag.Int("day", 16, "seconds of 17 inputs at 51.2 kHz that go through the ring; a day is 86400")
 	dayQuota   = flag.Int64("day-quota", 22<<20, "bound of the ring")
 	dayDir     = flag.String("day-dir", "", "folder on the disk to be measured")
 	dayPack    = flag.Bool("day-pack", false, "pack every second anew, through Append, instead of writing seconds that are packed already")
-	dayGroup   = flag.Int("day-together", together, "seconds in one commit: 1 is the daemon's way in real time, more the way of a writer that is behind")
+	dayGroup   = flag.Int("day-together", 1, "seconds in one commit: 1 is the way of a daemon in real time, 4 that of a writer that is behind")
 	dayPlain   = flag.Bool("day-plain", true, "write the same bytes to plain files in turns with it, for comparison")
 )
 

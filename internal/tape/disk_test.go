@@ -38,7 +38,7 @@ func smallDisk(t *testing.T, bytes string) (dir string, remount func(flags uintp
 // A disk that others have filled: the ring stays smaller than its bound and rolls within what there is, the newest is
 // always there, and when room comes back it grows again.
 func TestARingOnAFullDiskIsShorter(t *testing.T) {
-	dir, _ := smallDisk(t, "4m")
+	dir, _ := smallDisk(t, "2m")
 	opt := small()
 	opt.Segment = 4 * time.Second
 	tp, err := Open(filepath.Join(dir, "tape.db"), opt)
@@ -51,17 +51,17 @@ func TestARingOnAFullDiskIsShorter(t *testing.T) {
 		}
 	}()
 	ballast := filepath.Join(dir, "others")
-	if err := os.WriteFile(ballast, make([]byte, 3<<20), 0o600); err != nil {
+	if err := os.WriteFile(ballast, make([]byte, 1536<<10), 0o600); err != nil {
 		t.Fatal(err)
 	}
-	const second = 200_000 // 1.8 MB, twice what fits
+	const second = 100_000 // 0.9 MB, twice what fits
 	feed(tp, 0, second)
 	_ = tp.Flush(t.Context()) // may have lost a segment: counted
 	s := tp.Stats()
 	if s.NewestSeq != second || s.OldestSeq == 0 || s.LostSamples > 2000 {
 		t.Errorf("%d to %d there, %d lost; last error %v", s.OldestSeq, s.NewestSeq, s.LostSamples, s.LastError)
 	}
-	t.Logf("1 MB left: the newest %d samples are there, %d segments lost, %d commits refused", s.NewestSeq-s.OldestSeq, s.LostSegments, s.FailedCommits)
+	t.Logf("half a MB left: the newest %d samples are there, %d segments lost, %d commits refused", s.NewestSeq-s.OldestSeq, s.LostSegments, s.FailedCommits)
 	if err := os.Remove(ballast); err != nil {
 		t.Fatal(err)
 	}

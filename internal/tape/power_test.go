@@ -14,7 +14,7 @@ import (
 )
 
 var (
-	powerCuts = flag.Int("cuts", 30, "simulated power cuts")
+	powerCuts = flag.Int("cuts", 20, "simulated power cuts")
 	powerSeed = flag.Uint64("cut-seed", 11, "where they fall")
 )
 
