@@ -78,24 +78,39 @@ var errStall = errors.New("it gave no samples")
 // saying is a line of the program's: a log that drops repeats looks past the digits of what is no plain string.
 type saying string
 
-// longLine bounds what is logged of one line.
-const longLine = 500
+const (
+	longLine = 500 // bytes logged of one line
+	chatter  = 20  // lines logged in a minute
+)
 
 // listen passes standard error on, and gives its last line.
 func (s *Source) listen(r io.Reader) (last string) {
 	b := bufio.NewReaderSize(r, longLine)
+	began, lines := s.c.Clock.Now(), 0
+	more := func() {
+		if lines > chatter {
+			s.c.Log.Warn("acquisition: capture program said more than is logged", "program", s.c.Command[0], "lines", lines-chatter)
+		}
+	}
+	defer more()
 	for {
-		raw, more, err := b.ReadLine()
+		raw, longer, err := b.ReadLine()
 		line := strings.TrimSpace(strings.ToValidUTF8(string(raw), "?"))
-		for more && err == nil { // the rest of a line that is too long
-			_, more, err = b.ReadLine()
+		for longer && err == nil { // the rest of a line that is too long
+			_, longer, err = b.ReadLine()
 		}
 		if line != "" {
 			last = line
 			if low := strings.ToLower(line); strings.Contains(low, "overrun") || strings.Contains(low, "xrun") {
 				s.count(func(st *Stats) { st.Overruns++; st.LastAt = s.c.Clock.Now() })
 			}
-			s.c.Log.Warn("acquisition: capture program", "program", s.c.Command[0], "says", saying(line))
+			if now := s.c.Clock.Now(); now.Sub(began) > time.Minute {
+				more()
+				began, lines = now, 0
+			}
+			if lines++; lines <= chatter {
+				s.c.Log.Warn("acquisition: capture program", "program", s.c.Command[0], "says", saying(line))
+			}
 		}
 		if err != nil {
 			return last

@@ -154,6 +154,21 @@ func TestProgramDies(t *testing.T) {
 	}
 }
 
+// What a program says on standard error is logged, cut where it is too much: a log that is full of it holds nothing else.
+func TestProgramTalks(t *testing.T) {
+	var log bytes.Buffer
+	c := program(t, "say:"+strings.Repeat("x", 3000)+strings.Repeat(" say:tick", 300)+" frames:200 exit:0")
+	c.Once, c.Clock, c.Log = true, newHands(0), slog.New(slog.NewTextHandler(&log, nil))
+	s := opened(t, c)
+	if _, err := acqtest.Drain(s); err != nil {
+		t.Fatal(err)
+	}
+	said := log.String()
+	if strings.Count(said, "says=tick") != chatter-1 || !strings.Contains(said, "lines=281") || strings.Contains(said, strings.Repeat("x", longLine+1)) || !strings.Contains(said, strings.Repeat("x", 400)) {
+		t.Errorf("the log says:\n%s", said)
+	}
+}
+
 // A program that goes on without giving anything is ended and started anew, also when it does not listen to SIGTERM.
 func TestProgramStalls(t *testing.T) {
 	for _, plan := range []string{"frames:200 hang", "deaf frames:200 hang"} {
