@@ -137,8 +137,6 @@ func (b *broker) as(a *authority, user, cert string) []string {
 		"--cafile", a.file("ca.crt"), "--cert", a.file(cert + ".crt"), "--key", a.file(cert + ".key")}
 }
 
-func (b *broker) logged(text string) bool { return strings.Contains(b.p.err.String(), text) }
-
 // uplinkKeys are the lines of a skid file for a secured broker.
 func uplinkKeys(extra ...string) string {
 	return "lapwing\n  " + strings.Join(extra, "\n  ")
