@@ -4,7 +4,8 @@
 // and the newest features and health as they come; waits: for nothing, everything here is best effort and slows
 // nobody; emits: MQTT 3.1.1 messages at QoS 1. A transition leaves the outbox on the broker's acknowledgement only,
 // so a receiver may see it twice and drops the repeat by its id. While the broker is away, transitions wait in
-// the outbox and only the newest features and health are kept.
+// the outbox and only the newest features and health are kept. In the dialect of Sparkplug B (see Sparkplug) the same
+// goes out as births and data at QoS 0, each transition with its JSON right behind it, whose acknowledgement counts.
 //
 // Where a skid file allows it, orders of the control room come in on Topics.Command (JSON, at most wire.MaxOrder bytes, 30
 // at once and one a second, each with a request that makes a repeat harmless) and are answered on Topics.Receipt.
