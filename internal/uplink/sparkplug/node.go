@@ -206,7 +206,8 @@ func (n *Node) Set(device string, ms []Metric, now time.Time) []Message {
 			if m.Historical { // what it is now is not known by this
 				first.Value, first.Props, first.At = nil, nil, time.Time{}
 			}
-			i, fresh = n.define(t, first), true
+			n.define(t, first)
+			fresh = true
 			if m.Historical {
 				changed = append(changed, k)
 			}
