@@ -106,7 +106,7 @@ bench-setup:
 	apt-get install -y -q --no-install-recommends python3-scipy
 
 # Tools that the tests need and a plain Debian with Go, make and git has not.
-NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox node:nodejs npm:npm chromium:chromium
+NEED := gcc:gcc mosquitto:mosquitto mosquitto_sub:mosquitto-clients soxi:sox node:nodejs npm:npm chromium:chromium arecord:alsa-utils
 setup:
 	@missing=""; for n in $(NEED); do \
 	  PATH="$$PATH:/usr/sbin" command -v $${n%%:*} >/dev/null 2>&1 || missing="$$missing $${n##*:}"; done; \
