@@ -239,3 +239,35 @@ func TestPicturesAreShared(t *testing.T) {
 		t.Error("a turn nobody asked for is still held")
 	}
 }
+
+// A pressure's spectrum ends where its gauge passage has nothing to say; an accelerometer's at half the rate.
+func TestSpectrumsReach(t *testing.T) {
+	for kind, want := range map[string]float64{"pressure": 3, "acceleration": 10} {
+		s := *posed().signal
+		s.Kind = kind
+		d, err := newPictures(posed()).channelChart(t.Context(), drawingOf{throw: s.Channel, kind: "spectrum", format: chart.SVG}, &s)
+		if err != nil || math.Abs(d.areas[0].X[1]-want) > .02 {
+			t.Errorf("%s: %v, %+v, want %g kHz", kind, err, d, want)
+		}
+	}
+}
+
+// Whatever is asked for: either it says what is wrong, or it is one of the drawings that there are.
+func FuzzChartQuery(f *testing.F) {
+	for _, s := range []string{"angle.svg?turn=7", "pv.json?size=narrow&theme=night", "logpv.pdf?reference=7", "load.svg", ".svg?turn=-1", "angle?reference=clip", "angle.svg?turn=99999999999999999999", "pv.svg?size=&theme=&turn="} {
+		f.Add(s)
+	}
+	f.Fuzz(func(t *testing.T, s string) {
+		file, query, _ := strings.Cut(s, "?")
+		r := httptest.NewRequest(http.MethodGet, "http://127.0.0.1/", nil)
+		r.SetPathValue("file", file)
+		r.URL.RawQuery = query
+		of, areas, err := parseDrawing(r, kinds)
+		if err == nil && (drawers[of.kind] == nil || mediaTypes[of.format] == "" || areas != strings.HasSuffix(file, ".json") || of.theme > chart.Night) {
+			t.Errorf("%q is taken for %+v", s, of)
+		}
+		if n, err := turnOf(r.URL.Query().Get("turn")); err == nil && n < 0 {
+			t.Errorf("%q is turn %d", s, n)
+		}
+	})
+}

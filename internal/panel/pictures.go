@@ -214,7 +214,10 @@ func (p *pictures) channelChart(ctx context.Context, of drawingOf, s *Signal) (*
 		if of.kind == "signal" {
 			return chart.Signal{Title: s.Channel + ": signal as sampled", About: long, Unit: s.Unit, Rate: s.Rate, V: s.V, Full: s.Full}.Draw(options(of, 0))
 		}
-		n := 4096
+		n, most := 4096, s.Rate/2
+		if s.Kind == "pressure" { // a gauge passage rings at some hundred hertz, and little lies above
+			n, most = 16384, min(most, 3000)
+		}
 		for n > len(s.V) && n > 8 {
 			n /= 2
 		}
@@ -226,9 +229,10 @@ func (p *pictures) channelChart(ctx context.Context, of drawingOf, s *Signal) (*
 		w.PSD(psd, level(s.V))
 		long = folded(long, options(of, 0).WidthMM)
 		sp := chart.Spectrum{Title: s.Channel + ": spectrum", About: long + fmt.Sprintf("\nmean taken off, Hann window, %.1f Hz a bin", s.Rate/float64(n)), Unit: s.Density, Bands: s.Bands, Density: psd}
-		for i := range psd {
+		for i := 0; i < len(psd) && float64(i)*s.Rate/float64(n) <= most; i++ {
 			sp.Hz = append(sp.Hz, float64(i)*s.Rate/float64(n))
 		}
+		sp.Density = psd[:len(sp.Hz)]
 		return sp.Draw(options(of, 0))
 	})
 }
