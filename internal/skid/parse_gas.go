@@ -81,7 +81,8 @@ func (r *reader) moisture(s *object, g *Gas, atm float64) {
 		w.wrong("at_temperature_c", "delete it", "a dew point is a temperature by itself")
 		return
 	}
-	share, t := 1.0, math.NaN()
+	share := 1.0
+	var t float64
 	if dew {
 		t = w.num("dew_point_c", bounds{-100, 200}, true)
 	} else {
