@@ -77,7 +77,7 @@ type Act struct {
 	Subject     string    `json:"subject,omitempty"` // valve group, baseline …, for orders that are not about an alarm point
 	By          string    `json:"by"`
 	Reason      string    `json:"reason,omitempty"`
-	Via         string    `json:"via"` // page, api, tool, mqtt
+	Via         string    `json:"via"` // page, api, tool, mqtt, modbus
 	Accepted    bool      `json:"accepted"`
 	Said        string    `json:"said"`                  // what was done, or why it was refused
 	Transitions []uint64  `json:"transitions,omitempty"` // ids of what it changed

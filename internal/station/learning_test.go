@@ -37,7 +37,6 @@ type player struct {
 	line  *Line
 	rows  *held
 	clock rowClock
-	last  *Output
 }
 
 func play(t testing.TB, sk *skid.Skid, s model.Script, seconds float64) *player {
