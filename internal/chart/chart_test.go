@@ -72,7 +72,7 @@ func all() []drawer {
 		{"pv", func(o chart.Options) (*chart.Drawing, error) { return chart.PV(p, o) }, []string{"volume, litres", "pressure, bar abs"}},
 		{"logpv", func(o chart.Options) (*chart.Drawing, error) { return chart.LogPV(p, o) }, []string{"HE compression n = 1.300", "CE compression n = 1.300"}},
 		{"load", func(o chart.Options) (*chart.Drawing, error) { return chart.RodLoad(p, o) },
-			[]string{"reversal 150°, lesser peak 80 % of the greater", "rated", "gas alone", "load, kN (compression of the rod is positive)"}},
+			[]string{"reversal 150°, lesser peak 80 % of the greater", "rated", "gas alone", "kN, compression positive"}},
 		{"trend", tr.Over, []string{"expected at this duty, ±3 spreads", "alert: t1.he.suction leaking", "UTC, from 2031-05-04 03:02:01"}},
 		{"spectrum", sp.Draw, []string{"density, g²/Hz", "frequency, kHz"}},
 	}

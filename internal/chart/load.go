@@ -33,7 +33,7 @@ func RodLoad(p Picture, o Options) (*Drawing, error) {
 	pl := d.p.blank()
 	d.angleAxis(pl, from, to)
 	d.bottom(pl)
-	pl.Y.Label.Text = "load, kN (compression of the rod is positive)"
+	pl.Y.Label.Text = "kN, compression positive"
 	pl.Y.Tick.Marker = few(8)
 	s := noSpan()
 	s.take(0)

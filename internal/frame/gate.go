@@ -44,6 +44,7 @@ type gate struct {
 	lost   bool // marks stopped coming at full speed
 	hist   periods
 	coast  coast
+	ebbing bool    // it was running down when marks began to seem missing: they may only have come late
 	expect float64 // samples: the next period, when locked
 
 	cand      pulse // in its time, but not the best it could be: wait for a better one
@@ -175,6 +176,11 @@ func (g *gate) accept() (cut, bool) {
 	g.hasCand = false
 	c := g.close(p, k)
 	period := (c.b.pos - c.a.pos) / float64(k)
+	if k == 1 {
+		g.ebbing = false
+	} else if g.coast.coasting() || g.hist.slowing() {
+		g.ebbing = true
+	}
 	if k > 1 {
 		c.q |= Missing
 		g.nMissing += int64(k - 1)
@@ -302,6 +308,7 @@ func (g *gate) unlock() {
 	g.locked, g.open, g.hasCand, g.lowered, g.weak = false, false, false, false, false
 	g.nr, g.sinceMark = 0, 0
 	g.coast.reset()
+	g.ebbing = false
 	g.extras = g.extras[:0]
 	g.due = math.Inf(1)
 	g.det.unlock()
@@ -346,7 +353,7 @@ func (g *gate) tick(j float64) (cut, bool) {
 // abrupt reports whether marks stopped coming while the machine ran at speed. A shaft slows down before it stands;
 // a cable does not.
 func (g *gate) abrupt() bool {
-	if g.expect > g.maxT/3 || g.hist.slowing() {
+	if g.expect > g.maxT/3 || g.hist.slowing() || g.ebbing {
 		return false
 	}
 	return g.sinceMark == 0 || g.recent[g.nr-1].pos-g.m.pos < 1.05*g.expect

@@ -46,6 +46,9 @@ func (s *Station) reference(o *Output) {
 
 func (s *Station) cutReference(id, why, label string, o *Output) {
 	half := int64(referenceLong.Seconds() / 2 * s.info.Rate)
+	if old, err := s.tape.Clip(id); err == nil && old.Run != s.tape.Run() {
+		return // of this day there is one, from before a restart
+	}
 	c, err := s.cut(tape.Clip{ID: id, Reason: why, Apart: true, From: max(s.first, o.Turn.Seq0-half), To: o.Turn.Seq1 + half})
 	if err == nil && label != "" && c.Label == "" {
 		err = s.tape.Keep(c.ID, label)

@@ -63,7 +63,7 @@ func lived(r func(int) float64) *machine {
 	m.view = m.hist[3:7]
 	m.pairs = []pair{{r(1), "x"}, {r(2), ""}, {math.NaN(), "z"}}
 	m.element = &m.pairs[1]
-	m.empty = []int{}
+	m.empty, m.none = []int{}, nil
 	k := &knot{name: "k", value: r(3)}
 	k.next, k.twin = &knot{name: "next", twin: k}, k // a ring
 	m.first, m.again = k, k
@@ -159,7 +159,7 @@ func TestLeave(t *testing.T) {
 
 func TestRefused(t *testing.T) {
 	type bad struct{ p uintptr }
-	if _, err := still.Take(&bad{}, still.Rules{}); err == nil || !strings.Contains(err.Error(), "bad.p") {
+	if _, err := still.Take(&bad{p: 1}, still.Rules{}); err == nil || !strings.Contains(err.Error(), "bad.p") {
 		t.Errorf("%v", err)
 	}
 	type box struct{ v any }

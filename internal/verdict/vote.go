@@ -26,9 +26,3 @@ func (v *vote) most(limit float64, why string) {
 
 // least holds a vote up: what is cold or still may be so for many reasons.
 func (v *vote) least(limit float64) { v.llr = math.Max(limit, v.llr) }
-
-// add strengthens a vote by a weaker witness of the same class.
-func (v *vote) add(l float64) {
-	v.raw += l
-	v.llr = capped(v.llr + l)
-}

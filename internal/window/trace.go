@@ -163,7 +163,7 @@ func (tr *trace) opening(stroke int, l dsp.Line, from int) (at, rise float64) {
 	floor := math.Max(sigmas*l.Sigma, openResidual)
 	last, need := tr.index(limit), tr.points(openLasting)
 	prev, count := 0.0, 0
-	at, rise = math.NaN(), math.NaN()
+	at = math.NaN()
 	for i := from; i <= last; i++ {
 		r := sense * (tr.lnP[i] - l.At(tr.lnV[i]))
 		if r <= floor {
