@@ -11,6 +11,7 @@ type coast struct {
 const (
 	coastTurns = 6
 	coastFall  = 0.05
+	ebbFall    = 0.04
 	coastStep  = 0.001 // of the period: the least by which a turn is slower
 )
 
@@ -24,6 +25,9 @@ func (c *coast) push(period float64) {
 }
 
 func (c *coast) reset() { *c = coast{} }
+
+// ebbing is an earlier sign of it, good enough to doubt a mark that seems to be missing: two turns, a twenty-fifth slower.
+func (c *coast) ebbing() bool { return c.turns >= 2 && c.last > c.fastest*(1+ebbFall) }
 
 func (c *coast) coasting() bool {
 	return c.turns >= coastTurns && c.last > c.fastest*(1+coastFall)

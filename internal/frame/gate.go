@@ -178,7 +178,7 @@ func (g *gate) accept() (cut, bool) {
 	period := (c.b.pos - c.a.pos) / float64(k)
 	if k == 1 {
 		g.ebbing = false
-	} else if g.coast.coasting() || g.hist.slowing() {
+	} else if g.coast.ebbing() || g.hist.slowing() {
 		g.ebbing = true
 	}
 	if k > 1 {

@@ -248,3 +248,41 @@ func TestStates(t *testing.T) {
 		t.Errorf("%d samples held", n)
 	}
 }
+
+// A shaft that stops within three seconds or more has not lost its marks; quicker still, it may be taken for lost. At low speed the next mark comes later than
+// any steady shaft's would.
+func TestAQuickStopIsNotALostMark(t *testing.T) {
+	const rate = 10000
+	for _, from := range []float64{385, 740, 1200} {
+		for _, seconds := range []float64{3, 4, 5, 6.5, 8} {
+			for _, shift := range []float64{0, .3, .7} {
+				var x []int32
+				phase := shift
+				for i := range int((6 + seconds + 8) * rate) {
+					at := float64(i) / rate
+					rpm := from * min(1, max(0, (6+seconds-at)/seconds))
+					phase += rpm / 60 / rate
+					v := int32(100 + 17*i%7)
+					if d := (phase - math.Floor(phase)) * 360; d < 6 {
+						v += 5000
+					}
+					x = append(x, v)
+				}
+				a, err := New(Config{Rate: rate, Inputs: 1, Auto: true, MaxRPM: 1500})
+				if err != nil {
+					t.Fatal(err)
+				}
+				for at := 0; at < len(x); at += 500 {
+					n := min(500, len(x)-at)
+					if err := a.Add(&acq.Block{Seq0: int64(at), N: n, Counts: [][]int32{x[at : at+n]}}, func(*Frame) {}); err != nil {
+						t.Fatal(err)
+					}
+					if s := a.Status().State; s == StateLost {
+						t.Errorf("%g rpm, stopped in %g s, phase %g: %v after %.1f s", from, seconds, shift, s, float64(at+n)/rate)
+						break
+					}
+				}
+			}
+		}
+	}
+}
