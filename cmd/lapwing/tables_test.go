@@ -31,7 +31,7 @@ func tables(t *testing.T, base string) {
 	if strangers == "" {
 		t.Fatal("LAPWING_STRANGERS is not set: run make system, which fetches the programs that open what we write")
 	}
-	out, errs, code := run(t, 2*time.Minute, tool(t, "node"), script, filepath.Join(strangers, "node_modules"), lake)
+	out, errs, code := run(t, 2*time.Minute, tool(t, "node"), script, filepath.Join(strangers, "node_modules"), lake, flat)
 	if code != 0 {
 		t.Fatalf("the query engine: exit %d\n%s", code, errs)
 	}
@@ -44,6 +44,10 @@ func tables(t *testing.T, base string) {
 		Around []struct {
 			ID, Key, Turns string
 			Mean           float64
+		}
+		CSV, Parquet []struct {
+			Rows, Turns string
+			Mean        float64
 		}
 		Types []struct {
 			Name string `json:"column_name"`
@@ -74,6 +78,10 @@ func tables(t *testing.T, base string) {
 		if math.Abs(w.Late-worst[w.Throw+"."+w.End]) > 1e-9 {
 			t.Errorf("%s.%s: latest discharge opening %.6f°, by CSV %.6f°", w.Throw, w.End, w.Late, worst[w.Throw+"."+w.End])
 		}
+	}
+	if len(got.CSV) != 1 || len(got.Parquet) != 1 || got.CSV[0].Rows != got.Parquet[0].Rows || got.CSV[0].Turns != got.Parquet[0].Turns ||
+		math.Abs(got.CSV[0].Mean-got.Parquet[0].Mean) > 1e-6*math.Abs(got.Parquet[0].Mean) {
+		t.Errorf("the engine finds %+v in the CSV tables and %+v in the Parquet ones", got.CSV, got.Parquet)
 	}
 	leak := false
 	for _, a := range got.Around {

@@ -136,3 +136,49 @@ func TestOnePercentLeakIsHeard(t *testing.T) {
 		}
 	}
 }
+
+// The same while the load swings: the same script with and without the leak, turn by turn. What is 1 % at the base duty is
+// less or more of what an end delivers at others; that share is logged.
+func TestOnePercentLeakIsHeardWhileTheLoadSwings(t *testing.T) {
+	if !*sweep {
+		t.Skip("long: -args -sweep; at one duty TestOnePercentLeakIsHeard runs always")
+	}
+	const seconds = 30
+	paths := []struct{ valve, subject string }{{"t1.he.s1", "t1.he.suction"}, {"t1.he.d1", "t1.he.discharge"}, {"t1.ce.s1", "t1.ce.suction"}, {"t1.ce.d1", "t1.ce.discharge"}}
+	type heard struct{ noise, leaked, delivered float64 }
+	listen := func(i int, area float64) map[int64]heard {
+		run := swinging(11, seconds)
+		if area > 0 {
+			run.Changes = append(run.Changes, model.Change{What: model.ValveLeak, Where: paths[i].valve, To: area})
+		}
+		out := map[int64]heard{}
+		each(t, run, func(n int64, tn windowtest.Turn, _ window.Result, v *measure.Vector, l measure.Layout) {
+			tr := &tn.Truth[0][i/2]
+			h := heard{noise: v.V[l.Find(paths[i].subject, "leak_noise_db")], leaked: tr.Leaked.Suction, delivered: tr.Delivered}
+			if i%2 == 1 {
+				h.leaked = tr.Leaked.Discharge
+			}
+			if tr.Rev >= 0 && !math.IsNaN(h.noise) {
+				out[n] = h
+			}
+		})
+		return out
+	}
+	for i, p := range paths {
+		healthy, leaky := listen(i, 0), listen(i, onePercent[i]*model.MM2)
+		var rise, share []float64
+		for n, h := range healthy {
+			if x, ok := leaky[n]; ok {
+				rise, share = append(rise, x.noise-h.noise), append(share, 100*(x.leaked-h.leaked)/h.delivered)
+			}
+		}
+		if len(rise) < 150 {
+			t.Fatalf("%s: %d turns", p.subject, len(rise))
+		}
+		m := dsp.Median(rise)
+		t.Logf("%s: %d turns, %.2f %% lost in the median, dwell noise %+.1f dB in the median", p.subject, len(rise), dsp.Median(share), m)
+		if m < 2 {
+			t.Errorf("%s: the noise rises by %.1f dB in the median", p.subject, m)
+		}
+	}
+}

@@ -1,8 +1,8 @@
 // Asks an existing query engine the analyst's questions of the tables that lapwing wrote.
-//   node ask.mjs FOLDER_OF_NODE_MODULES TABLES
+//   node ask.mjs FOLDER_OF_NODE_MODULES PARQUET_TABLES CSV_TABLES
 // Prints one JSON object.
 import { createRequire } from 'node:module';
-const [, , strangers, lake] = process.argv;
+const [, , strangers, lake, flat] = process.argv;
 const { DuckDBInstance } = createRequire(strangers + '/')('@duckdb/node-api');
 
 const db = await (await DuckDBInstance.create(':memory:')).connect();
@@ -19,4 +19,7 @@ console.log(JSON.stringify({
     from ${table('alarms')} a join ${table('measures')} m on m.turn between a.turn - 20 and a.turn + 20
     where m.subject = 't1.he' and m.name = 'n_comp_late' group by all order by a.id`),
   types: await ask(`select column_name, column_type from (describe select * from ${table('measures')}) order by 1`),
+  // The CSV tables are the same ones.
+  csv: await ask(`select count(*) as rows, sum(turn) as turns, avg(value) as mean from read_csv('${flat}/measures/*/*/*/*.csv', hive_partitioning = true)`),
+  parquet: await ask(`select count(*) as rows, sum(turn) as turns, avg(value) as mean from ${table('measures')}`),
 }));
