@@ -19,6 +19,7 @@ import (
 // A pulled clip, reviewed, gives the live turn records again, bit for bit, from its first whole turn on: turn numbers,
 // times, windows, measures, duty, findings and transitions. The recording learns, has a leak, another load step and a gap.
 func TestAClipReviewedIsTheLiveLineAgain(t *testing.T) {
+	t.Parallel()
 	r := recorded(t)
 	raw, err := os.ReadFile(r.skid)
 	if err != nil {

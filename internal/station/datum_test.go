@@ -67,6 +67,7 @@ func walkedRecording(t *testing.T, sk *skid.Skid) (wavFile, csvFile string) {
 // From a recording to what a person reads: the machine's own dead centre, clearance and passage come out of the report
 // although the skid file is wrong about them.
 func TestDatumReport(t *testing.T) {
+	t.Parallel()
 	quick := func(s string) string {
 		for _, c := range [][2]string{{"sampling_hz: 51200", "sampling_hz: 20480"}, {"impact_band_hz: [2000, 20000]", "impact_band_hz: [2000, 8000]"},
 			{"leak_band_hz: [10000, 20000]", "leak_band_hz: [5000, 8000]"}} {

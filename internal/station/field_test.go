@@ -22,6 +22,7 @@ const (
 
 // While both line pressures, the speed and the load step move, every valve event lies in its window.
 func TestFieldWindowsFollow(t *testing.T) {
+	t.Parallel()
 	sk := fieldSkid(t)
 	s := begin(sk, fieldDuty{1.8, 1000, 8, 0}).Add(2, 2, model.DischargePressure, "1", 28.8e5).Add(3, 2, model.Speed, "", 820).
 		Add(5.3, 0, model.LoadStep, "", 1).Add(6.6, 1, model.SuctionPressure, "1", 9e5).Add(6.8, 0, model.LoadStep, "", 2)
@@ -33,6 +34,7 @@ func TestFieldWindowsFollow(t *testing.T) {
 // turn: that group is named, confirmed by pressure and vibration together, and no other. Then sensors that go wrong: they
 // are named, and no valve.
 func TestFieldNamesWhatIsWrong(t *testing.T) {
+	t.Parallel()
 	sk := firstThrow(fieldSkid(t))
 	at := fieldDuty{2.6, 1000, 8, 0}
 	healthy := trial{machine: sk, seed: 1, script: begin(sk, at), seconds: 9.5, steady: 70}.run(t)

@@ -88,6 +88,7 @@ func (h *hand) state(t *testing.T, want string) *wire.Learning {
 // Learning by orders: a run that is on begins anew after a restart, one that waits goes on waiting, what is withheld
 // stays withheld, and the baseline can be taken out, checked and put in again.
 func TestLearningOutlivesARestart(t *testing.T) {
+	t.Parallel()
 	o := journalled(t, orderStart)
 	o.Source, o.Start = "model:grow", orderStart.Add(time.Hour)
 	h := byHand(t, o)

@@ -115,6 +115,7 @@ func refused(t testing.TB, err error, part string) {
 // A run is proposed, and changes nothing before it is accepted; a renewal withholds what the work has touched, and that
 // alone; thrown away, the older baseline is whole again.
 func TestLearningRunFromOrderToJudgement(t *testing.T) {
+	t.Parallel()
 	sk := firstThrow(fieldSkid(t))
 	p := play(t, sk, begin(sk, fieldDuty{2.6, 1000, 8, 0}), 40)
 	l := p.line
@@ -288,6 +289,7 @@ func doubtsOf(b *duty.Baseline) (out []string) {
 // A machine that leaks while it is learnt is doubted by name; a healthy one is not. TestFieldContaminatedLearning has
 // every path of three machines.
 func TestContaminatedLearningIsSaid(t *testing.T) {
+	t.Parallel()
 	sk := firstThrow(fieldSkid(t))
 	s := begin(sk, fieldDuty{2.6, 1000, 8, 0})
 	healthy, _ := contaminated(t, sk, s, 1, "", 0, nil)

@@ -181,6 +181,7 @@ func reviewed(t *testing.T, o ReviewOptions) (turns []wire.Turn, others map[stri
 // The whole line on measured cycles of a machine that is no compressor: right where no valve law is needed, and no
 // judgement where there is nothing to judge.
 func TestMotoredReview(t *testing.T) {
+	t.Parallel()
 	m, sk := loadMotored(t), rig(t)
 	path := m.record(t, sk)
 	turns, others, summary, err := reviewed(t, ReviewOptions{SkidFile: sk.File, Recording: path, LearnFrom: 10, LearnTo: 110})

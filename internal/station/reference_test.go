@@ -10,6 +10,7 @@ import (
 
 // A run that learns has its reference clips afterwards: one of the day, one of the baseline, the second labelled.
 func TestReferenceClips(t *testing.T) {
+	t.Parallel()
 	r := recorded(t)
 	state := t.TempDir()
 	s, err := Open(Options{SkidFile: r.skid, State: state, Source: "wav:" + r.wav, ProcessCSV: r.csv, Fast: true, Learn: takeLearn, Listen: "none"})

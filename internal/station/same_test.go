@@ -240,6 +240,7 @@ func differ(a, b []string) string {
 // TestLiveAndOfflineAreTheSame: the daemon fed with a recording, and the review of it, give the same turn records byte
 // for byte, and the same alarms.
 func TestLiveAndOfflineAreTheSame(t *testing.T) {
+	t.Parallel()
 	r := recorded(t)
 	turns, journal, learnt := r.live(t, takeLearn)
 	off := r.lines(t, ReviewOptions{LearnFrom: 0, LearnTo: learnt + 1})

@@ -102,6 +102,7 @@ func (w *wired) play(t *testing.T, l *Line, counts [][]int32) (out []told) {
 
 // Whatever is done to a channel, the channel is named and no valve is: the line says <channel>/sensor and nothing else.
 func TestChannelsAreNotValves(t *testing.T) {
+	t.Parallel()
 	w := solder(t)
 	at := func(s float64) int { return int(s * w.info.Rate) }
 	input := func(id string) int { c, _ := w.sk.ChannelByID(id); return c.Input }

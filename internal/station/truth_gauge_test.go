@@ -93,6 +93,7 @@ func channelNamed(t testing.TB, list []wire.Channel, id string) wire.Channel {
 // the baseline and over a restart; once a baseline is in force another resonance is a state of the channel and nothing
 // that is undone changes.
 func TestPassageIsFoundFrozenAndWatched(t *testing.T) {
+	t.Parallel()
 	told := smallSkid(t)
 	he, ce := told.Throws[0].Ends[crank.HE].Pressure, told.Throws[0].Ends[crank.CE].Pressure
 	machine := piped(told, [2]float64{480, 0}, [2]float64{9, 0})

@@ -104,6 +104,7 @@ func (r *truthRig) hears(t testing.TB, s model.Script, seconds float64, first in
 // come on within a second after a healthy baseline. Each is said of its own channel, and no valve is named. Three cases
 // always, all 24 in the long runs.
 func TestPressureErrorsAreTheChannels(t *testing.T) {
+	t.Parallel()
 	r := theTruthRig(t)
 	type wrong struct {
 		what  model.What

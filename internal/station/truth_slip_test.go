@@ -13,6 +13,7 @@ import (
 // Marks that come late or early after the baseline was learnt are said of the phase reference, with the angle that the
 // fit finds, and as the throw's dead centre by the judge; no valve is named. One case always, the table in the long runs.
 func TestPhaseSlipIsThePhaseReferences(t *testing.T) {
+	t.Parallel()
 	r := theTruthRig(t)
 	list := []float64{.5}
 	if os.Getenv("LAPWING_FIELD") != "" {

@@ -100,6 +100,7 @@ func edited(t *testing.T, edits ...string) string {
 // runs as step 1 says stands right in step 1 and wrong in step 0; and the records are the same bytes however the stream
 // was cut.
 func TestTheLoadStepBringsItsOwnRipple(t *testing.T) {
+	t.Parallel()
 	shaft := []skid.Ripple{{Order: 1, Amp: 0.005, Phase: 140}, {Order: 2, Amp: 0.012, Phase: -60}}
 	file := edited(t, "  - code: 1\n", "  - code: 1\n    ripple: [{order: 1, amplitude_percent: 0.5, phase_deg: 140}, {order: 2, amplitude_percent: 1.2, phase_deg: -60}]\n")
 	s := model.Script{RPM: 900}.Add(2.2, 0, model.LoadStep, "", 1)

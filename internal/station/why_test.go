@@ -24,6 +24,7 @@ func strict(t *testing.T, line string, v any) {
 
 // A review's reasons and the daemon's answers are the same, and both agree with the findings that were raised.
 func TestWhy(t *testing.T) {
+	t.Parallel()
 	r := recorded(t)
 	file := filepath.Join(t.TempDir(), "why.jsonl")
 	out := r.lines(t, ReviewOptions{LearnTo: 60, WhyFile: file})

@@ -154,6 +154,28 @@ func TestSparkplugOnAHostileBroker(t *testing.T) {
 	c := &counter{next: 250} // and over 255
 	cfg := speaking(openHostile(t, h), c)
 	cfg.wait.ack = 50 * time.Millisecond
+	var mu sync.Mutex
+	stands := map[string]Message{} // as the annunciator has it: what a birth says of a point that the outbox is done with
+	cfg.Standing = func() (out []Message) {
+		mu.Lock()
+		defer mu.Unlock()
+		for _, key := range points {
+			if m, ok := stands[key]; ok {
+				out = append(out, m)
+			}
+		}
+		return out
+	}
+	put := func(box *store, a wire.Alarm) {
+		mu.Lock()
+		m := Message{Topic: topics.Standing(a.Key), Retain: true}
+		if a.To != "normal" {
+			m.Payload = jsonOf(t, a)
+		}
+		stands[a.Key] = m
+		mu.Unlock()
+		putAlarm(t, box, a)
+	}
 	box := &store{}
 	box.onAck = func(m Message) {
 		if !h.hasAcked(string(m.Payload)) {
@@ -161,11 +183,11 @@ func TestSparkplugOnAHostileBroker(t *testing.T) {
 		}
 	}
 	for id := uint64(1); id <= n/2; id++ {
-		putAlarm(t, box, said(id))
+		put(box, said(id))
 	}
 	p, stop := start(t, cfg, box)
 	for id := uint64(n/2 + 1); id <= n; id++ {
-		putAlarm(t, box, said(id))
+		put(box, said(id))
 		p.Wake()
 		v := float64(id)
 		p.Offer(topics.Features("t1"), jsonOf(t, wire.Features{Version: 1, Throw: "t1", At: dayOf.Add(time.Duration(id) * time.Second), Turn: int64(id), RPM: &v, Duty: "steady",
@@ -212,6 +234,9 @@ func TestSparkplugOnAHostileBroker(t *testing.T) {
 	for i, key := range points {
 		last := said(n - uint64((n-i)%3))
 		got := host.Values[""][alarmName(key)]
+		if last.To == "normal" && got.Value == uint32(0) && got.Props["id"].Value == nil {
+			continue // a birth after its transition says of a point that does not stand that it is normal, and no more
+		}
 		if got.Value != uint32(severityOf(&last)) || got.Props["id"].Value != last.ID || !got.At.Equal(last.At) {
 			t.Errorf("%s is %v of transition %v, in truth of %d", key, got.Value, got.Props["id"].Value, last.ID)
 		}

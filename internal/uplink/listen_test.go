@@ -65,6 +65,7 @@ func TestListen(t *testing.T) {
 	cfg.ClientID = "control-room"
 	e := listen(t, cfg)
 	await(t, "the subscription", func() bool { return len(e.said()) == 1 })
+	await(t, "what stands", func() bool { return len(e.heard()) == 1 }) // brokers send it apart from what comes new
 	for i := 1; i <= 100; i++ {
 		box.put(topics.Alarm(), fmt.Sprint(i), false)
 	}
