@@ -22,7 +22,7 @@ const soft = 0.002
 // square is ψ² of the pressure ratio r = downstream/upstream ≤ 1 and a = r^(1/k): the flow is A p ψ/√(RT), with
 // ψ² = 2k/(k−1)·a·(a − r), choked at the critical ratio and smoothed.
 func (n *nozzle) square(r, a float64) float64 {
-	d := 1 - r
+	d := max(1-r, 0) // rounding may put r over one where pressures are equal
 	if r < n.critical {
 		r, a = n.critical, n.criticalA
 	}

@@ -71,3 +71,15 @@ func TestShapeShifted(t *testing.T) {
 		}
 	}
 }
+
+// Where the pressures on both sides are equal nothing flows, whatever rounding makes of their ratio.
+func TestEqualPressuresPassNothing(t *testing.T) {
+	for ps := 1e5; ps < 5e6; ps *= 1.0137 {
+		in := Input{K: 1.05, RZ: 100, Ts: 250, Ps: ps, Pd: ps * 5, Td: 250}
+		st := in.states()
+		own := st.at(in.Pd, true)
+		if g := st.rate(&own, &st.discharge, 1); !(math.Abs(g) < 1e-6*math.Sqrt(in.RZ*in.Td)) {
+			t.Fatalf("at %g Pa on both sides: %g", in.Pd, g)
+		}
+	}
+}
