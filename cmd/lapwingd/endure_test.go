@@ -29,14 +29,14 @@ func troubles(t *testing.T) int {
 	return n
 }
 
-// startSender starts the sending half of a daemon; see TestEndureSender.
+// startSender starts the sending half of a daemon; see TestMain.
 func startSender(t *testing.T, state, broker string, more ...string) *program {
 	t.Helper()
 	self, err := os.Executable()
 	if err != nil {
 		t.Fatal(err)
 	}
-	return start(t, append([]string{"LAPWING_ENDURE_STATE=" + state, "LAPWING_ENDURE_BROKER=" + broker}, more...), self, "-test.run", "^TestEndureSender$", "-test.timeout", "30m")
+	return start(t, append([]string{"LAPWING_ENDURE_STATE=" + state, "LAPWING_ENDURE_BROKER=" + broker}, more...), self)
 }
 
 // bookedAndWaiting reads a state file of a sender that is down.

@@ -1,14 +1,12 @@
 package station
 
 import (
-	"bytes"
 	"context"
 	"math"
 	"strings"
 	"testing"
 	"time"
 
-	"lapwing/configs"
 	"lapwing/internal/acq"
 	acqmodel "lapwing/internal/acq/model"
 	"lapwing/internal/alarm"
@@ -19,24 +17,7 @@ import (
 // The same shaft through one mark with its ripple stated, and through a ring gear of 90 teeth beside a sensor with one mark
 // a turn and no word of the ripple, gives the same dead centres; nothing is said of either channel.
 func TestLineWithAMarkApart(t *testing.T) {
-	raw, err := configs.Files.ReadFile("biomethane-two-throw.yaml")
-	if err != nil {
-		t.Fatal(err)
-	}
-	parse := func(cuts ...[2]string) *skid.Skid {
-		file := raw
-		for _, c := range cuts {
-			if !bytes.Contains(file, []byte(c[0])) {
-				t.Fatalf("the example has no %q", c[0])
-			}
-			file = bytes.Replace(file, []byte(c[0]), []byte(c[1]), 1)
-		}
-		sk, err := skid.Parse("gear.yaml", file)
-		if err != nil {
-			t.Fatal(err)
-		}
-		return sk
-	}
+	parse := func(cuts ...[2]string) *skid.Skid { return exampleWith(t, cuts...) }
 	one := parse()
 	gear := parse([2]string{"  channel: phase\n", "  channel: phase\n  teeth: 90\n  index_channel: once\n"},
 		[2]string{"  - {id: phase, input: 0,", "  - {id: once, input: 7, kind: phase, range_v: 10}\n  - {id: phase, input: 0,"})
@@ -95,7 +76,7 @@ func TestLineWithAMarkApart(t *testing.T) {
 		"teeth is not given":                {"  channel: phase\n", "  channel: phase\n  index_channel: phase\n"},
 		"the index is one or the other":     {"  channel: phase\n", "  channel: phase\n  teeth: 60\n  missing: 2\n  index_channel: a1\n"},
 	} {
-		if _, err := skid.Parse("gear.yaml", bytes.Replace(raw, []byte(edit[0]), []byte(edit[1]), 1)); err == nil || !strings.Contains(err.Error(), want) {
+		if _, err := skid.Parse("gear.yaml", exampleText(t, edit)); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("wanted %q, got %v", want, err)
 		}
 	}

@@ -10,7 +10,6 @@ import (
 	"testing"
 	"time"
 
-	"lapwing/configs"
 	"lapwing/internal/acq"
 	acqmodel "lapwing/internal/acq/model"
 	"lapwing/internal/alarm"
@@ -80,20 +79,13 @@ func uneven(t *testing.T, file string, ripple []skid.Ripple, s model.Script, blo
 
 func edited(t *testing.T, edits ...string) string {
 	t.Helper()
-	raw, err := configs.Files.ReadFile("biomethane-two-throw.yaml")
-	if err != nil {
-		t.Fatal(err)
-	}
-	file := string(raw)
 	edits = append(edits, "sampling_hz: 51200", "sampling_hz: 20480", "impact_band_hz: [2000, 20000]", "impact_band_hz: [2000, 8000]",
 		"leak_band_hz: [10000, 20000]", "leak_band_hz: [5000, 8000]")
+	var cuts [][2]string
 	for i := 0; i < len(edits); i += 2 {
-		if !strings.Contains(file, edits[i]) {
-			t.Fatalf("the example has no %q", edits[i])
-		}
-		file = strings.Replace(file, edits[i], edits[i+1], 1)
+		cuts = append(cuts, [2]string{edits[i], edits[i+1]})
 	}
-	return file
+	return string(exampleText(t, cuts...))
 }
 
 // The load step in force decides which ripple a turn gets, by the process values at the turn's own time: a shaft that

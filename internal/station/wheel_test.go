@@ -1,7 +1,6 @@
 package station
 
 import (
-	"bytes"
 	"context"
 	"errors"
 	"io"
@@ -9,7 +8,6 @@ import (
 	"testing"
 	"time"
 
-	"lapwing/configs"
 	"lapwing/internal/acq"
 	acqmodel "lapwing/internal/acq/model"
 	"lapwing/internal/alarm"
@@ -20,24 +18,7 @@ import (
 // TestLineWithAToothedWheel: the same shaft seen through one mark with its ripple stated, and through a 60-2 wheel with no
 // word of the ripple, gives the same dead centres and the same opening angles.
 func TestLineWithAToothedWheel(t *testing.T) {
-	raw, err := configs.Files.ReadFile("biomethane-two-throw.yaml")
-	if err != nil {
-		t.Fatal(err)
-	}
-	parse := func(cuts ...[2]string) *skid.Skid {
-		file := raw
-		for _, c := range cuts {
-			if !bytes.Contains(file, []byte(c[0])) {
-				t.Fatalf("the example has no %q", c[0])
-			}
-			file = bytes.Replace(file, []byte(c[0]), []byte(c[1]), 1)
-		}
-		sk, err := skid.Parse("wheel.yaml", file)
-		if err != nil {
-			t.Fatal(err)
-		}
-		return sk
-	}
+	parse := func(cuts ...[2]string) *skid.Skid { return exampleWith(t, cuts...) }
 	one := parse()
 	wheel := parse([2]string{"  channel: phase\n", "  channel: phase\n  teeth: 60\n  missing: 2\n"})
 	seen := func(sk *skid.Skid) (at []float64, opens []float64) {
