@@ -73,6 +73,7 @@ func (j *Judge) sized(p pathPlace, common float64) (area, aSD, loss, lSD float64
 func sizedWords(severity []Quantity) string {
 	area, loss := "", ""
 	for _, q := range severity {
+		q.Value, q.Lo = max(0, q.Value), max(0, q.Lo) // for people only: the record keeps its sign
 		switch q.Name {
 		case "leak_area_mm2":
 			area = fmt.Sprintf("; leak area %s mm² (%s to %s)", figure(q.Value), figure(q.Lo), figure(q.Hi))
